@@ -1,0 +1,1 @@
+"""The session: ledger, views, saving and export."""
