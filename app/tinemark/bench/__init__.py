@@ -1,0 +1,1 @@
+"""Measured sweeps beside the model."""

@@ -1,0 +1,1 @@
+"""Orbit densities: counts, Lyapunov strip, periods and the tones they are shown in."""

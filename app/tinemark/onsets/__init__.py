@@ -1,0 +1,1 @@
+"""Cycles, branches, onsets with their proofs, ladders and their scaling."""

@@ -1,0 +1,207 @@
+"""Straight-line statements from formulas, with shared sub-expressions computed once.
+
+Two dialects print the same tree: "native" for numba (scalar or lane code), whose function calls are
+the names of `systems/lane_math.py`, and "ball" for python-flint, whose comparisons must be decided.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from fractions import Fraction
+from typing import Literal
+
+from tinemark.systems.errors import FormulaError
+from tinemark.systems.expression import ZERO, Call, Cond, Expr, Name, Num, Pi
+
+Dialect = Literal["native", "ball"]
+
+_INFIX = {"add": "+", "sub": "-", "mul": "*", "div": "/"}
+_LONGEST_INLINE = 160
+"""Characters of a nested operand; beyond, it gets a variable (compilers limit nesting)."""
+_Key = tuple[object, ...]
+
+
+def emit(
+    targets: Sequence[tuple[str, Expr]], bind: Mapping[str, str], dialect: Dialect, prefix: str = "u"
+) -> list[str]:
+    """Print statements that assign every target.
+
+    Parameters
+    ----------
+    targets
+        (variable, expression) pairs. All right-hand sides are computed before the first target
+        is assigned, so a target may be a variable that the formulas read.
+    bind
+        What each name of the formulas is called in the code.
+    dialect
+        "native" or "ball".
+    prefix
+        Start of the temporaries' names; must be free in the surrounding code.
+
+    Returns
+    -------
+    list of str
+        Statements, one a line, not indented.
+    """
+    printer = _Printer(bind, dialect, prefix)
+    numbers = [printer.number_of(expr) for _, expr in targets]
+    return printer.statements([name for name, _ in targets], numbers)
+
+
+class _Printer:
+    """Value numbering: equal sub-expressions get one number (Cocke and Schwartz, 1970)."""
+
+    def __init__(self, bind: Mapping[str, str], dialect: Dialect, prefix: str) -> None:
+        self.bind = bind
+        self.ball = dialect == "ball"
+        self.prefix = prefix
+        self.numbers: dict[_Key, int] = {}
+        self.keys: list[_Key] = []
+        self.memo: dict[int, int] = {}
+        self.kept: list[Expr] = []  # keeps ids alive while they serve as keys
+
+    def intern(self, *key: object) -> int:
+        if key not in self.numbers:
+            self.numbers[key] = len(self.keys)
+            self.keys.append(key)
+        return self.numbers[key]
+
+    def number_of(self, expr: Expr) -> int:
+        known = self.memo.get(id(expr))
+        if known is not None:
+            return known
+        number = self.visit(expr)
+        self.memo[id(expr)] = number
+        self.kept.append(expr)
+        return number
+
+    def visit(self, expr: Expr) -> int:
+        match expr:
+            case Num(value):
+                return self.intern("num", value)
+            case Name(name):
+                return self.intern("name", self.bind[name])
+            case Pi():
+                return self.intern("pi")
+            case Cond(left, op, right, then, other):
+                parts = [self.number_of(part) for part in (left, right, then, other)]
+                return self.intern("cond", op, *parts)
+            case Call("pow", (base, Num(power))) if power.denominator == 1:
+                return self.power(self.number_of(base), int(power))
+            case Call("pow", (base, Num(power))) if power == Fraction(1, 2):
+                return self.intern("sqrt", self.number_of(base))
+            case Call(fn, args):
+                numbers = [self.number_of(arg) for arg in args]
+                folded = self.folded(fn, numbers)
+                if folded is not None:
+                    return self.intern("num", folded)
+                if fn in ("add", "mul"):
+                    numbers.sort()  # commutative: a*b and b*a are one value
+                return self.intern(fn, *numbers)
+        raise TypeError(f"no expression: {expr!r}")
+
+    def folded(self, fn: str, operands: list[int]) -> Fraction | None:
+        """Exact value of an operation on two constants: whole numbers must not meet as Python's own."""
+        keys = [self.keys[operand] for operand in operands]
+        if fn not in (*_INFIX, "neg") or any(key[0] != "num" for key in keys):
+            return None
+        first, *others = (Fraction(str(key[1])) for key in keys)
+        match fn:
+            case "add":
+                return first + others[0]
+            case "sub":
+                return first - others[0]
+            case "mul":
+                return first * others[0]
+            case "neg":
+                return -first
+        if others[0] == 0:
+            raise FormulaError("division by zero")
+        return first / others[0]
+
+    def power(self, base: int, power: int) -> int:
+        if power == 0:
+            return self.intern("num", Fraction(1))
+        if power < 0:
+            return self.intern("div", self.intern("num", Fraction(1)), self.power(base, -power))
+        if power == 1:
+            return base
+        half = self.power(base, power // 2)
+        square = self.intern("mul", half, half)
+        return self.intern("mul", *sorted((square, base))) if power % 2 else square
+
+    def statements(self, names: list[str], wanted: list[int]) -> list[str]:
+        uses = [0] * len(self.keys)
+        needed = [False] * len(self.keys)
+        for number in wanted:
+            needed[number] = True
+            uses[number] += 1
+        for number in reversed(range(len(self.keys))):
+            if needed[number]:
+                for operand in self.operands(number):
+                    needed[operand] = True
+                    uses[operand] += 1
+        text: dict[int, str] = {}
+        lines: list[str] = []
+        for number in range(len(self.keys)):
+            if not needed[number]:
+                continue
+            printed = self.printed(number, text)
+            leaf = self.keys[number][0] in ("num", "name", "pi")
+            if leaf or (uses[number] == 1 and len(printed) <= _LONGEST_INLINE):
+                text[number] = printed
+            else:
+                variable = f"{self.prefix}{len(lines)}"
+                lines.append(f"{variable} = {printed}")
+                text[number] = variable
+        if len(wanted) == 1:
+            lines.append(f"{names[0]} = {text[wanted[0]]}")
+            return lines
+        # Results first, then targets: a target may be read by another formula.
+        return [*lines, f"{', '.join(names)} = {', '.join(text[number] for number in wanted)}"]
+
+    def operands(self, number: int) -> list[int]:
+        kind, *rest = self.keys[number]
+        if kind in ("num", "name", "pi"):
+            return []
+        if kind == "cond":
+            rest = rest[1:]
+        return [operand for operand in rest if isinstance(operand, int)]
+
+    def printed(self, number: int, text: Mapping[int, str]) -> str:
+        kind, *rest = self.keys[number]
+        if kind == "num":
+            return self.constant(rest[0])
+        if kind == "name":
+            return str(rest[0])
+        if kind == "pi":
+            return "ball_pi()" if self.ball else "3.141592653589793"
+        operands = [text[operand] for operand in self.operands(number)]
+        if kind in _INFIX:
+            return f"({operands[0]} {_INFIX[str(kind)]} {operands[1]})"
+        if kind == "neg":
+            return f"(-{operands[0]})"
+        if kind == "cond":
+            left, right, then, other = operands
+            op = str(rest[0])
+            if not self.ball:
+                return f"({then} if {left} {op} {right} else {other})"
+            # On a surface itself no piece holds, so < and <= are decided alike.
+            low, high = (left, right) if op in ("<", "<=") else (right, left)
+            return f"({then} if ball_less({low}, {high}) else {other})"
+        stem = "ball" if self.ball else "lane"
+        return f"{stem}_{kind}({', '.join(operands)})"
+
+    def constant(self, value: object) -> str:
+        assert isinstance(value, Fraction)
+        if not self.ball:
+            number = float(value)
+            return repr(number) if number >= 0 else f"({number!r})"
+        if value.denominator == 1:
+            return str(value) if value >= 0 else f"({value})"
+        return f"fmpq({value.numerator}, {value.denominator})"
+
+
+def is_zero(expr: Expr) -> bool:
+    """Whether an expression is the constant zero."""
+    return expr == ZERO

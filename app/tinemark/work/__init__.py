@@ -1,0 +1,1 @@
+"""Jobs that run off the window's thread."""
