@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from tinemark.onsets.results import Onset
+from tinemark.systems.exact import fraction_text
 from tinemark.systems.system import System
 
 
@@ -19,8 +20,9 @@ class Place:
     parameter
         Name of the swept parameter.
     fixed
-        (name, decimal text) of every other parameter, in the system's order. The key does not
-        hold values, and onsets found at different values of another parameter are different onsets.
+        (name, decimal text) of every other parameter, sorted by name, each value written one way
+        (0.30 as 0.3). The key does not hold values, and onsets found at different values of another
+        parameter are different onsets.
     """
 
     system_key: str
@@ -30,7 +32,9 @@ class Place:
 
 def place_of(system: System, parameter: str) -> Place:
     """Place of the onsets of `system` in `parameter`, the other parameters at their present values."""
-    fixed = tuple((p.name, p.value.text) for p in system.parameters if p.name != parameter)
+    fixed = tuple(
+        sorted((p.name, fraction_text(p.value.fraction)) for p in system.parameters if p.name != parameter)
+    )
     return Place(system.key, parameter, fixed)
 
 

@@ -65,8 +65,8 @@ class Session:
     parameter: str
     observe: str
     view: View
-    history: ViewHistory = ViewHistory()
-    picture: PictureSettings = PictureSettings()
+    history: ViewHistory = field(default_factory=ViewHistory)
+    picture: PictureSettings = field(default_factory=PictureSettings)
     ledger: Ledger = field(default_factory=Ledger)
     probe: Fraction | None = None
     title: str = ""
