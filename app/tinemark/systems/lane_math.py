@@ -18,7 +18,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from fractions import Fraction
-from typing import Any, TypeVar
+from typing import Any, TypeAlias, TypeVar
 
 import numba
 import numpy as np
@@ -26,6 +26,8 @@ from numba.core import types
 from numba.extending import intrinsic
 
 Function = TypeVar("Function", bound=Callable[..., Any])
+Real: TypeAlias = Any
+"""A double; what numba and NumPy make of it is known to neither type checker nor reader."""
 
 
 def _lane(function: Function) -> Function:
@@ -47,10 +49,10 @@ def _fma_exactly(a: float, b: float, c: float) -> float:
 
 
 @intrinsic
-def _fma_fused(typing_context, a, b, c):  # type: ignore[no-untyped-def]
+def _fma_fused(_typing, _a, _b, _c):  # type: ignore[no-untyped-def]
     signature = types.float64(types.float64, types.float64, types.float64)
 
-    def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
+    def generate(_context, builder, _signature, arguments):  # type: ignore[no-untyped-def]
         return builder.fma(*arguments)
 
     return signature, generate
@@ -83,10 +85,10 @@ _TWO_THIRDS, _TWO_THIRDS_REST = 0.6666666666666666, 3.700743415417188e-17
 
 
 @_lane
-def _exp_parts(x: float, rest: float, doublings: float) -> float:
+def _exp_parts(x: Real, rest: Real, doublings: Real) -> Real:
     """exp(x + rest) * 2**doublings; the scaling is done in two halves, so that subnormals are kept."""
-    c = 712.0 if x > 712.0 else x
-    c = -747.0 if c < -747.0 else c
+    c = 712.0 if x > 712.0 else x  # noqa: FURB136  # keeps nan
+    c = -747.0 if c < -747.0 else c  # noqa: FURB136
     n = (c * _LOG2_E + _ROUND) - _ROUND
     r = _fma(-n, _LN2, c)
     r = _fma(-n, _LN2_REST, r) + rest
@@ -108,13 +110,13 @@ def _exp_parts(x: float, rest: float, doublings: float) -> float:
 
 
 @_lane
-def lane_exp(x: float) -> float:
+def lane_exp(x: Real) -> Real:
     """Exponential."""
     return _exp_parts(x, 0.0, 0.0)
 
 
 @_lane
-def lane_log(x: float) -> float:
+def lane_log(x: Real) -> Real:
     """Natural logarithm: -inf at 0, nan below."""
     tiny = x < _SMALLEST_NORMAL
     y = x * 18014398509481984.0 if tiny else x
@@ -136,13 +138,12 @@ def lane_log(x: float) -> float:
     small = _fma(s, _fma(z, q, h), k * _LN2_SHORT_REST)
     result = _fma(k, _LN2_SHORT, f - (h - small))
     result = result if x < np.inf else x
-    result = result if x > 0.0 else (-np.inf if x == 0.0 else np.nan)
-    return result
+    return result if x > 0.0 else (-np.inf if x == 0.0 else np.nan)
 
 
 @_lane
-def lane_pow(x: float, y: float) -> float:
-    """x to the power y; nan where x is negative and y is not whole."""
+def lane_pow(x: Real, y: Real) -> Real:
+    """Power x**y; nan where x is negative and y is not whole."""
     a = abs(x)
     tiny = a < _SMALLEST_NORMAL
     v = a * 18014398509481984.0 if tiny else a
@@ -169,21 +170,21 @@ def lane_pow(x: float, y: float) -> float:
     q = _fma(q, z, 0.22222222217533655)
     q = _fma(q, z, 0.28571428571445123)
     q = _fma(q, z, 0.3999999999999998)
-    high = 2.0 * s + t
-    low = t - (high - 2.0 * s)
-    low = low + (2.0 * s_rest + t_rest + c * z * q)
+    top: Real = 2.0 * s + t
+    tail = t - (top - 2.0 * s)
+    tail = tail + (2.0 * s_rest + t_rest + c * z * q)
     whole = k * _LN2_SHORT
-    log_high = whole + high
-    log_low = high - (log_high - whole)
-    log_low = log_low + _fma(k, _LN2_SHORT_REST, low)
+    log_high = whole + top
+    log_low = top - (log_high - whole)
+    log_low = log_low + _fma(k, _LN2_SHORT_REST, tail)
     fold = log_high + log_low
     log_low = log_low - (fold - log_high)
     log_high = fold
     finite = (a > 0.0) and (a < np.inf)
-    log_high = log_high if finite else (-np.inf if a == 0.0 else a)
-    log_low = log_low if finite else 0.0
-    p = y * log_high
-    rest = _fma(y, log_high, -p) + y * log_low
+    high: Real = log_high if finite else (-np.inf if a == 0.0 else a)
+    low: Real = log_low if finite else 0.0
+    p = y * high
+    rest = _fma(y, high, -p) + y * low
     rest = rest if abs(p) < 800.0 else 0.0
     size = _exp_parts(p, rest, 0.0)
     size = 1.0 if a == 1.0 else size
@@ -193,12 +194,11 @@ def lane_pow(x: float, y: float) -> float:
     result = size if x >= 0.0 else (-size if odd else (size if y_whole else np.nan))
     # A negative zero under an odd power keeps its sign only by 1/x; orbits do not need it.
     result = x + y if (x != x or y != y) else result
-    result = 1.0 if (y == 0.0 or x == 1.0) else result
-    return result
+    return 1.0 if (y == 0.0 or x == 1.0) else result
 
 
 @_lane
-def _sin_reduced(r: float) -> float:
+def _sin_reduced(r: Real) -> Real:
     """Sine on [-pi/2, pi/2]."""
     z = r * r
     q = _fma(-7.983954704028787e-18, z, 2.810231358891844e-15)
@@ -213,7 +213,7 @@ def _sin_reduced(r: float) -> float:
 
 
 @_lane
-def lane_sin(x: float) -> float:
+def lane_sin(x: Real) -> Real:
     """Sine; nan beyond 2**51."""
     t = _fma(x, _PI_INVERSE, _ROUND)
     n = t - _ROUND
@@ -226,7 +226,7 @@ def lane_sin(x: float) -> float:
 
 
 @_lane
-def lane_cos(x: float) -> float:
+def lane_cos(x: Real) -> Real:
     """Cosine; nan beyond 2**51."""
     # cos(r + (m + 1/2) pi) = -(-1)**m sin(r)
     t = _fma(x, _PI_INVERSE, -0.5) + _ROUND
@@ -240,13 +240,13 @@ def lane_cos(x: float) -> float:
 
 
 @_lane
-def lane_tan(x: float) -> float:
+def lane_tan(x: Real) -> Real:
     """Tangent; nan beyond 2**51."""
     return lane_sin(x) / lane_cos(x)
 
 
 @_lane
-def _atan_positive(a: float) -> float:
+def _atan_positive(a: Real) -> Real:
     """Arc tangent of a >= 0, infinity included."""
     far = a > 2.414213562373095
     near = a <= 0.4142135623730951
@@ -270,13 +270,13 @@ def _atan_positive(a: float) -> float:
 
 
 @_lane
-def lane_atan(x: float) -> float:
+def lane_atan(x: Real) -> Real:
     """Arc tangent."""
     return np.copysign(_atan_positive(abs(x)), x)
 
 
 @_lane
-def lane_atan2(y: float, x: float) -> float:
+def lane_atan2(y: Real, x: Real) -> Real:
     """Angle of the point (x, y), in (-pi, pi]."""
     a, b = abs(y), abs(x)
     low, high = (a, b) if a < b else (b, a)
@@ -291,7 +291,7 @@ def lane_atan2(y: float, x: float) -> float:
 
 
 @_lane
-def _asin_small(t: float, z: float) -> float:
+def _asin_small(t: Real, z: Real) -> Real:
     """Arc sine of |t| <= 1/2, with z = t**2."""
     q = _fma(0.031981585691168476, z, -0.016326550514871814)
     q = _fma(q, z, 0.019594254802977138)
@@ -308,7 +308,7 @@ def _asin_small(t: float, z: float) -> float:
 
 
 @_lane
-def lane_asin(x: float) -> float:
+def lane_asin(x: Real) -> Real:
     """Arc sine; nan outside [-1, 1]."""
     a = abs(x)
     inner = a <= 0.5
@@ -318,7 +318,7 @@ def lane_asin(x: float) -> float:
 
 
 @_lane
-def lane_acos(x: float) -> float:
+def lane_acos(x: Real) -> Real:
     """Arc cosine; nan outside [-1, 1]."""
     a = abs(x)
     inner = a <= 0.5
@@ -329,7 +329,7 @@ def lane_acos(x: float) -> float:
 
 
 @_lane
-def lane_sinh(x: float) -> float:
+def lane_sinh(x: Real) -> Real:
     """Hyperbolic sine."""
     a = abs(x)
     e = _exp_parts(a, 0.0, -1.0)
@@ -345,14 +345,14 @@ def lane_sinh(x: float) -> float:
 
 
 @_lane
-def lane_cosh(x: float) -> float:
+def lane_cosh(x: Real) -> Real:
     """Hyperbolic cosine."""
     e = _exp_parts(abs(x), 0.0, -1.0)
     return e + 0.25 / e
 
 
 @_lane
-def lane_tanh(x: float) -> float:
+def lane_tanh(x: Real) -> Real:
     """Hyperbolic tangent."""
     a = abs(x)
     far = 1.0 - 2.0 / (lane_exp(a + a) + 1.0)
@@ -371,30 +371,30 @@ def lane_tanh(x: float) -> float:
 
 
 @_lane
-def lane_sqrt(x: float) -> float:
+def lane_sqrt(x: Real) -> Real:
     """Square root; nan below 0."""
     return np.sqrt(x)
 
 
 @_lane
-def lane_abs(x: float) -> float:
+def lane_abs(x: Real) -> Real:
     """Absolute value."""
     return abs(x)
 
 
 @_lane
-def lane_floor(x: float) -> float:
+def lane_floor(x: Real) -> Real:
     """Largest whole number not above x, as a float."""
     return np.floor(x)
 
 
 @_lane
-def lane_min(x: float, y: float) -> float:
+def lane_min(x: Real, y: Real) -> Real:
     """Smaller of two; nan when either is."""
     return x if (x < y or x != x) else y
 
 
 @_lane
-def lane_max(x: float, y: float) -> float:
+def lane_max(x: Real, y: Real) -> Real:
     """Larger of two; nan when either is."""
     return x if (x > y or x != x) else y
