@@ -14,6 +14,7 @@ class Kind(Enum):
 
     FLIP = "flip"
     FOLD = "fold"
+    UNKNOWN = "unknown"  # only of a pick read by eye, until it is refined
 
 
 class Status(Enum):
