@@ -1,4 +1,5 @@
-"""The style sheet: flat surfaces, thin outlines, a focus ring that is always seen. Lengths are device-independent."""
+"""The style sheet: flat surfaces, thin outlines, a focus ring that is always seen. Lengths are device-
+independent."""
 
 from __future__ import annotations
 
@@ -49,8 +50,8 @@ QLineEdit:focus, QPlainTextEdit:focus, QTextEdit:focus, QAbstractSpinBox:focus, 
 QLineEdit:disabled, QAbstractSpinBox:disabled, QComboBox:disabled { color: $edge; border-color: $line; }
 QLineEdit:read-only, QTextBrowser { background: $surface; }
 QLineEdit[invalid="true"] { border: 2px solid $error; padding: 2px 5px; }
-QComboBox QAbstractItemView { background: $raised; border: 1px solid $edge; selection-background-color: $accent_soft;
-    selection-color: $text; }
+QComboBox QAbstractItemView { background: $raised; border: 1px solid $edge; selection-background-color:
+$accent_soft; selection-color: $text; }
 
 QAbstractItemView { background: $raised; alternate-background-color: $surface; border: none; outline: none;
     selection-background-color: $accent_soft; selection-color: $text; }
@@ -61,11 +62,10 @@ QTableCornerButton::section { background: $surface; border: none; }
 QScrollArea { background: transparent; border: none; }
 QScrollBar:vertical { background: transparent; width: 11px; margin: 0; }
 QScrollBar:horizontal { background: transparent; height: 11px; margin: 0; }
-QScrollBar::handle { background: $edge; border-radius: 3px; margin: 2px 3px; min-height: 24px; min-width: 24px; }
-QScrollBar::handle:horizontal { margin: 3px 2px; }
-QScrollBar::handle:hover { background: $muted; }
-QScrollBar::add-line, QScrollBar::sub-line { width: 0; height: 0; }
-QScrollBar::add-page, QScrollBar::sub-page { background: transparent; }
+QScrollBar::handle { background: $edge; border-radius: 3px; margin: 2px 3px; min-height: 24px; min-width:
+24px; } QScrollBar::handle:horizontal { margin: 3px 2px; } QScrollBar::handle:hover { background: $muted; }
+QScrollBar::add-line, QScrollBar::sub-line { width: 0; height: 0; } QScrollBar::add-page, QScrollBar::sub-
+page { background: transparent; }
 
 QProgressBar { background: $sunken; border: none; border-radius: 3px; max-height: 6px; min-height: 6px; }
 QProgressBar::chunk { background: $accent; border-radius: 3px; }

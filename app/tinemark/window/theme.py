@@ -1,8 +1,9 @@
-"""The look: two palettes of named tokens, and the one place that turns them into Qt's palette and style sheet.
+"""The look: two palettes of named tokens, and the one place that turns them into Qt's palette and style
+sheet.
 
-Cool picture, warm accent: orbit densities are drawn in blues, everything that is *said about* them (marks, selection,
-focus) in one copper accent, a pair that stays apart for colour-blind readers. Other rooms of the window use tokens, never
-colours of their own.
+Cool picture, warm accent: orbit densities are drawn in blues, everything that is *said about* them (marks,
+selection, focus) in one copper accent, a pair that stays apart for colour-blind readers. Other rooms of the
+window use tokens, never colours of their own.
 """
 
 from __future__ import annotations
@@ -37,6 +38,8 @@ class Theme:
         The one accent, text upon it, and its tint for selected rows.
     warning, error, good
         For words and signs that also say it in words or shape.
+    cool
+        The hue of the picture, for the strip below it.
     picture
         Name of the colour map that suits the ground.
     """
@@ -57,6 +60,7 @@ class Theme:
     warning: str
     error: str
     good: str
+    cool: str
     picture: str
 
 
@@ -77,6 +81,7 @@ LIGHT = Theme(
     warning="#7a5200",
     error="#a3123a",
     good="#2c6140",
+    cool="#2f5f8f",
     picture="ink",
 )
 
@@ -97,6 +102,7 @@ DARK = Theme(
     warning="#e6b655",
     error="#ff8fa3",
     good="#8fd0a4",
+    cool="#86b6e6",
     picture="glow",
 )
 
@@ -123,7 +129,8 @@ def system_theme() -> Theme:
 
 
 def apply_theme(app: QApplication, theme: Theme) -> None:
-    """Dress the application. Widgets that paint for themselves get a `PaletteChange` and read `current_theme`."""
+    """Dress the application. Widgets that paint for themselves get a `PaletteChange` and read
+    `current_theme`."""
     app.setProperty(THEME_PROPERTY, theme.name)
     if app.style().objectName().lower() != "fusion":
         app.setStyle(QStyleFactory.create("Fusion"))
@@ -169,7 +176,7 @@ def mono_font(scale: float = 1.0) -> QFont:
     font = QFontDatabase.systemFont(QFontDatabase.SystemFont.FixedFont)
     font.setStyleHint(QFont.StyleHint.Monospace)
     font.setFixedPitch(True)
-    size = cast(QFont, QApplication.font()).pointSizeF()
+    size = cast("QFont", QApplication.font()).pointSizeF()
     if size > 0:
         font.setPointSizeF(size * scale)
     return font
@@ -191,7 +198,8 @@ def heading_font() -> QFont:
 
 
 def contrast(one: str, other: str) -> float:
-    """Contrast ratio of two colours, 1 to 21 (relative luminance after ITU-R BT.709 and sRGB, as WCAG 2 defines it)."""
+    """Contrast ratio of two colours, 1 to 21 (relative luminance after ITU-R BT.709 and sRGB, as WCAG 2
+    defines it)."""
     bright, dim = sorted((_luminance(one), _luminance(other)), reverse=True)
     return (bright + 0.05) / (dim + 0.05)
 

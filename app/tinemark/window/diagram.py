@@ -1,0 +1,392 @@
+"""The diagram: picture, axes, Lyapunov strip, period labels and ledger marks in one widget that paints for
+itself.
+
+It is shown values and says what the hand wants; it asks nobody for pictures and changes no session. All
+signals are emitted on the window's thread.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+
+from PySide6.QtCore import QEvent, QPointF, QRectF, QSize, QSizeF, Qt, Signal
+from PySide6.QtGui import (
+    QFontMetricsF,
+    QHelpEvent,
+    QImage,
+    QMouseEvent,
+    QPainter,
+    QPaintEvent,
+    QPen,
+    QResizeEvent,
+    QWheelEvent,
+)
+from PySide6.QtWidgets import QSizePolicy, QToolTip, QWidget
+
+from tinemark.density.field import Field
+from tinemark.density.request import View
+from tinemark.window import diagram_paint as paint
+from tinemark.window.axis import paint_bottom_axis, paint_left_axis
+from tinemark.window.callout import Callout, Choice
+from tinemark.window.diagram_layout import DiagramLayout, lay_out
+from tinemark.window.gestures import Gestures
+from tinemark.window.marks import Mark, mark_at, paint_marks
+from tinemark.window.theme import color, current_theme, mono_font
+from tinemark.window.view_navigation import place, reading, unit_x, unit_y
+
+UNIT_VIEW = View(Fraction(0), Fraction(1), Fraction(0), Fraction(1))
+TOOLS = ("pick", "read", "probe")
+TOOL_WORDS = {"pick": "Pick", "read": "Read by eye", "probe": "Probe"}
+
+
+@dataclass(frozen=True)
+class Labels:
+    """Names and units at the axes."""
+
+    parameter: str = ""
+    observe: str = ""
+    parameter_unit: str = ""
+    observe_unit: str = ""
+
+
+class Diagram(QWidget):
+    """The diagram.
+
+    Signals
+    -------
+    view_wanted : View, bool
+        Another view; True when it goes on with the gesture of the one before.
+    picked, read_by_eye, probe_wanted : Fraction, Fraction
+        Parameter and observed quantity under a click with one of the tools.
+    pointed : Fraction | None, Fraction | None
+        What the pointer is on; None outside the plot.
+    mark_chosen : str
+        A click on a mark: its ledger row.
+    resized : int, int
+        Columns and rows of the plot in device pixels.
+    """
+
+    view_wanted = Signal(object, bool)
+    picked = Signal(object, object)
+    read_by_eye = Signal(object, object)
+    probe_wanted = Signal(object, object)
+    pointed = Signal(object, object)
+    mark_chosen = Signal(str)
+    resized = Signal(int, int)
+
+    def __init__(self, parent: QWidget | None = None) -> None:
+        super().__init__(parent)
+        self.view = UNIT_VIEW
+        self.labels = Labels()
+        self.tool = "pick"
+        self.field: Field | None = None
+        self.image: QImage | None = None
+        self.image_view = UNIT_VIEW
+        self.marks: tuple[Mark, ...] = ()
+        self.selected = ""
+        self.hovered = ""
+        self.probe: Fraction | None = None
+        self.notice = ""
+        self.pending: dict[int, tuple[Fraction, Fraction, str]] = {}
+        self.cursor_place: tuple[float, float] | None = None
+        self.gestures = Gestures(self)
+        self.callout: Callout | None = None
+        self.parts = lay_out(QSizeF(640, 480), 1.0, QFontMetricsF(self._font()))
+        self.setMouseTracking(True)
+        self.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
+        self.setContextMenuPolicy(Qt.ContextMenuPolicy.PreventContextMenu)
+        self.setSizePolicy(QSizePolicy.Policy.Expanding, QSizePolicy.Policy.Expanding)
+        self.setMinimumSize(320, 260)
+        self.setAccessibleName("Bifurcation diagram")
+        self.setAccessibleDescription(
+            "Arrow keys pan, plus and minus zoom, Shift with arrow keys moves a cursor, Enter picks at the
+            cursor." ) self.setCursor(Qt.CursorShape.CrossCursor)
+
+    # --- what is shown -------------------------------------------------------------------------------------
+
+    def show_view(self, view: View) -> None:
+        """Show another view at once, with whatever has been drawn of it so far."""
+        if view != self.view:
+            self.view = view
+            self.close_callout()
+            self.update()
+
+    def show_picture(self, image: QImage, field: Field, view: View) -> None:
+        """Replace the picture by one drawn for `view`."""
+        self.image, self.field, self.image_view = image, field, view
+        self.update()
+
+    def forget_picture(self) -> None:
+        """Drop a picture that belongs to another system."""
+        self.image, self.field = None, None
+        self.update()
+
+    def show_labels(self, labels: Labels) -> None:
+        """Name the axes."""
+        self.labels = labels
+        self.update()
+
+    def show_marks(self, marks: Sequence[Mark], selected: str) -> None:
+        """Show the ledger's rows, one of them emphasised."""
+        self.marks, self.selected = tuple(marks), selected
+        if all(mark.row != self.hovered for mark in marks):
+            self.hovered = ""
+        self.update()
+
+    def show_probe(self, value: Fraction | None) -> None:
+        """Show where the probed orbit lies, or nothing."""
+        self.probe = value
+        self.update()
+
+    def show_notice(self, words: str) -> None:
+        """Say something calm over the plot; an empty text removes it."""
+        if words != self.notice:
+            self.notice = words
+            self.update()
+
+    def set_tool(self, tool: str) -> None:
+        """Choose what a plain click does: one of `TOOLS`."""
+        self.tool = tool
+        self.update()
+
+    def add_pending(self, number: int, parameter: Fraction, observed: Fraction, words: str) -> None:
+        """Mark the place of a click that is being worked on."""
+        self.pending[number] = (parameter, observed, words)
+        self.update()
+
+    def remove_pending(self, number: int) -> None:
+        """Take the mark of a click away."""
+        if self.pending.pop(number, None) is not None:
+            self.update()
+
+    def show_callout(
+        self, parameter: Fraction, observed: Fraction, words: str, choices: Sequence[Choice] = ()
+    ) -> None:
+        """Say something at a place of the plot, with buttons to choose from if there are any."""
+        self.close_callout()
+        self.callout = Callout(self, words, choices)
+        self.callout.closed.connect(self._callout_closed)
+        self.callout.point_at(self.point(parameter, observed), self.parts.plot)
+
+    def close_callout(self) -> None:
+        """Take the callout away, if there is one."""
+        if self.callout is not None:
+            self.callout.dismiss()
+
+    def _callout_closed(self) -> None:
+        self.callout = None
+        self.setFocus(Qt.FocusReason.OtherFocusReason)
+
+    # --- places --------------------------------------------------------------------------------------------
+
+    def place_at(self, position: QPointF) -> tuple[float, float]:
+        """(u, v) of a position, clamped to the plot."""
+        plot = self.parts.plot
+        u = (position.x() - plot.left()) / plot.width()
+        v = (plot.bottom() - position.y()) / plot.height()
+        return min(max(u, 0.0), 1.0), min(max(v, 0.0), 1.0)
+
+    def values_at(self, position: QPointF) -> tuple[Fraction, Fraction]:
+        """Parameter and observed quantity at a position."""
+        return place(self.view, *self.place_at(position))
+
+    def point(self, parameter: Fraction, observed: Fraction) -> QPointF:
+        """Position of a pair of values."""
+        plot = self.parts.plot
+        return QPointF(
+            plot.left() + unit_x(self.view, parameter) * plot.width(),
+            plot.bottom() - unit_y(self.view, observed) * plot.height(),
+        )
+
+    def words_at(self, parameter: Fraction, observed: Fraction) -> str:
+        """Both coordinates in the digits that the view can tell apart."""
+        across = reading(parameter, self.view.width, self.parts.columns)
+        up = reading(observed, self.view.height, self.parts.rows)
+        return f"{self.labels.parameter} {across}   {self.labels.observe} {up}"
+
+    def mark_under(self, position: QPointF) -> Mark | None:
+        """The mark that a position is on."""
+        return mark_at(self.marks, self.view, self.parts.plot, position, self.parts.marks)
+
+    # --- Qt ------------------------------------------------------------------------------------------------
+
+    def sizeHint(self) -> QSize:  # noqa: D102
+        return QSize(820, 640)
+
+    def _font(self):
+        return mono_font(0.92)
+
+    def lay_out_parts(self) -> None:
+        """Divide the widget anew, and say so when the picture's size changes."""
+        before: DiagramLayout = self.parts
+        self.parts = lay_out(QSizeF(self.size()), self.devicePixelRatioF(), QFontMetricsF(self._font()))
+        if (before.columns, before.rows) != (self.parts.columns, self.parts.rows):
+            self.resized.emit(self.parts.columns, self.parts.rows)
+
+    def resizeEvent(self, event: QResizeEvent) -> None:  # noqa: D102
+        super().resizeEvent(event)
+        self.close_callout()
+        self.lay_out_parts()
+
+    def changeEvent(self, event: QEvent) -> None:  # noqa: D102
+        super().changeEvent(event)
+        if event.type() in (QEvent.Type.PaletteChange, QEvent.Type.FontChange, QEvent.Type.StyleChange):
+            self.lay_out_parts()
+            self.update()
+
+    def event(self, event: QEvent) -> bool:  # noqa: D102
+        if event.type() == QEvent.Type.ToolTip and isinstance(event, QHelpEvent):
+            mark = self.mark_under(QPointF(event.pos()))
+            if mark:
+                QToolTip.showText(event.globalPos(), mark.words, self)
+            else:
+                QToolTip.hideText()
+                event.ignore()
+            return True
+        if event.type() == QEvent.Type.DevicePixelRatioChange:
+            self.lay_out_parts()
+        return super().event(event)
+
+    def mousePressEvent(self, event: QMouseEvent) -> None:  # noqa: D102
+        self.close_callout()
+        self.gestures.press(event)
+
+    def mouseMoveEvent(self, event: QMouseEvent) -> None:  # noqa: D102
+        self.gestures.move(event)
+
+    def mouseReleaseEvent(self, event: QMouseEvent) -> None:  # noqa: D102
+        self.gestures.release(event)
+
+    def wheelEvent(self, event: QWheelEvent) -> None:  # noqa: D102
+        self.gestures.wheel(event)
+
+    def leaveEvent(self, event: QEvent) -> None:  # noqa: D102
+        super().leaveEvent(event)
+        self.gestures.leave()
+
+    def focusInEvent(self, event) -> None:  # noqa: D102
+        super().focusInEvent(event)
+        self.update()
+
+    def focusOutEvent(self, event) -> None:  # noqa: D102
+        super().focusOutEvent(event)
+        self.update()
+
+    # --- painting ------------------------------------------------------------------------------------------
+
+    def paintEvent(self, event: QPaintEvent) -> None:  # noqa: ARG002, D102
+        painter = QPainter(self)
+        painter.setFont(self._font())
+        self._paint_ground(painter)
+        self._paint_picture(painter)
+        self._paint_over(painter)
+        painter.end()
+
+    def _paint_ground(self, painter: QPainter) -> None:
+        theme, parts = current_theme(), self.parts
+        painter.fillRect(self.rect(), color(theme.surface))
+        painter.fillRect(parts.plot, color(theme.plot))
+
+    def _picture_extent(self) -> tuple[float, float]:
+        """Left edge and width of the drawn columns on the screen."""
+        plot = self.parts.plot
+        left, right = unit_x(self.view, self.image_view.left), unit_x(self.view, self.image_view.right)
+        return plot.left() + left * plot.width(), (right - left) * plot.width()
+
+    def _paint_picture(self, painter: QPainter) -> None:
+        theme, parts = current_theme(), self.parts
+        left, width = self._picture_extent()
+        field = None if self.notice else self.field
+        if self.image is not None and not self.notice:
+            exact = (
+                self.image_view == self.view
+                and self.image.width() == parts.columns
+                and self.image.height() == parts.rows
+            )
+            paint.paint_picture(painter, parts.plot, self.view, self.image, self.image_view, exact=exact)
+        if field is not None:
+            paint.paint_escaped(painter, theme, parts.plot, field.escaped, left, width)
+            paint.paint_periods(painter, theme, parts.periods, field.period, left, width)
+        paint.paint_strip(painter, theme, parts.strip, field.lyapunov if field else None, left, width)
+
+    def _paint_over(self, painter: QPainter) -> None:
+        theme, parts, view, labels = current_theme(), self.parts, self.view, self.labels
+        paint_left_axis(
+            painter,
+            theme,
+            parts.plot,
+            parts.names,
+            view.bottom,
+            view.top,
+            labels.observe,
+            labels.observe_unit,
+        )
+        paint_bottom_axis(
+            painter, theme, parts.axis, view.left, view.right, labels.parameter, labels.parameter_unit
+        )
+        self._paint_strip_name(painter)
+        if self.probe is not None and view.left <= self.probe <= view.right:
+            x = parts.plot.left() + unit_x(view, self.probe) * parts.plot.width()
+            painter.setPen(QPen(color(theme.text, 0.8), 1.0, Qt.PenStyle.DashDotLine))
+            painter.drawLine(QPointF(x, parts.plot.top()), QPointF(x, parts.strip.bottom()))
+            paint.paint_tag(painter, theme, parts.plot, QPointF(x + 5, parts.plot.bottom() - 6), "probe")
+        paint_marks(
+            painter,
+            theme,
+            self.marks,
+            view,
+            parts.plot,
+            parts.marks,
+            parts.strip.bottom(),
+            self.selected,
+            self.hovered,
+        )
+        if self.notice:
+            self._paint_notice(painter)
+        for parameter, observed, words in self.pending.values():
+            self._paint_pending(painter, self.point(parameter, observed), words)
+        self.gestures.paint(painter, theme)
+        if self.hasFocus():
+            painter.setPen(QPen(color(theme.accent), 1.5))
+            painter.setBrush(Qt.BrushStyle.NoBrush)
+            painter.drawRect(parts.plot.adjusted(-1, -1, 1, 1))
+
+    def _paint_strip_name(self, painter: QPainter) -> None:
+        theme, strip = current_theme(), self.parts.strip
+        metrics = QFontMetricsF(painter.font())
+        words = "Lyapunov exponent"
+        tag = QRectF(
+            strip.left() + 4, strip.bottom() - metrics.height() - 3, metrics.horizontalAdvance(words) + 6, 0
+        )
+        tag.setHeight(metrics.height())
+        painter.fillRect(tag, color(theme.plot, 0.8))
+        painter.setPen(color(theme.muted))
+        painter.drawText(tag, Qt.AlignmentFlag.AlignCenter, words)
+
+    def _paint_notice(self, painter: QPainter) -> None:
+        theme, plot = current_theme(), self.parts.plot
+        metrics = QFontMetricsF(painter.font())
+        wide = min(metrics.horizontalAdvance(self.notice) + 40, plot.width() - 40)
+        card = QRectF(0, 0, wide, metrics.height() * 3.2)
+        card.moveCenter(plot.center())
+        painter.setPen(QPen(color(theme.line), 1.0))
+        painter.setBrush(color(theme.raised))
+        painter.drawRoundedRect(card, 6, 6)
+        painter.setPen(color(theme.text))
+        flags = Qt.AlignmentFlag.AlignCenter | Qt.TextFlag.TextWordWrap
+        painter.drawText(card.adjusted(12, 2, -12, -2), int(flags), self.notice)
+
+    def _paint_pending(self, painter: QPainter, point: QPointF, words: str) -> None:
+        theme, plot = current_theme(), self.parts.plot
+        if not plot.contains(point):
+            return
+        painter.save()
+        painter.setRenderHint(QPainter.RenderHint.Antialiasing)
+        painter.setPen(QPen(color(theme.accent), 1.6))
+        painter.setBrush(Qt.BrushStyle.NoBrush)
+        painter.drawEllipse(point, 7, 7)
+        painter.drawEllipse(point, 1.2, 1.2)
+        painter.restore()
+        paint.paint_tag(painter, theme, plot, QPointF(point.x() + 11, point.y() - 9), words)
