@@ -1,5 +1,6 @@
 """The diagram's two axes: a line, few short ticks, labels in the tabular face, the common offset written
-once."""
+once.
+"""
 
 from __future__ import annotations
 
@@ -17,7 +18,7 @@ TICK = 5.0
 
 @dataclass(frozen=True)
 class AxisTicks:
-    """Ticks of one axis as (share of the axis from its low end, label), and the offset common to all labels."""
+    """Ticks of one axis as (share of the axis, label), and the offset common to all labels."""
 
     marks: tuple[tuple[float, str], ...]
     offset: str

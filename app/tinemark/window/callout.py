@@ -1,5 +1,6 @@
 """A few words at the place they are about, with buttons where there is something to choose. Never a box in
-the way."""
+the way.
+"""
 
 from __future__ import annotations
 

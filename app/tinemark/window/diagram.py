@@ -101,8 +101,10 @@ class Diagram(QWidget):
         self.setMinimumSize(320, 260)
         self.setAccessibleName("Bifurcation diagram")
         self.setAccessibleDescription(
-            "Arrow keys pan, plus and minus zoom, Shift with arrow keys moves a cursor, Enter picks at the
-            cursor." ) self.setCursor(Qt.CursorShape.CrossCursor)
+            "Arrow keys pan, plus and minus zoom, Shift with arrow keys moves a cursor, "
+            "Enter picks at the cursor."
+        )
+        self.setCursor(Qt.CursorShape.CrossCursor)
 
     # --- what is shown -------------------------------------------------------------------------------------
 

@@ -1,5 +1,6 @@
 """The hand on the diagram: drags, clicks, wheel, and the keyboard's cursor. Turns them into the diagram's
-signals."""
+signals.
+"""
 
 from __future__ import annotations
 

@@ -11,7 +11,7 @@ from tinemark.window.marks import Mark
 
 
 def marks_of(ledger: Ledger, place: Place, observe: str) -> tuple[Mark, ...]:
-    """Marks of the rows that belong to what the diagram shows: same mathematics, parameter and fixed values."""
+    """Marks of the rows that belong to the diagram: same mathematics, parameter and fixed values."""
     return tuple(mark_of(row, observe) for row in ledger.rows if row.place == place)
 
 

@@ -1,5 +1,6 @@
 """The rail at the left edge: one upright tab for each panel that folds away. A tab says whether its panel
-is open."""
+is open.
+"""
 
 from __future__ import annotations
 

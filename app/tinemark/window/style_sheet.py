@@ -1,5 +1,6 @@
 """The style sheet: flat surfaces, thin outlines, a focus ring that is always seen. Lengths are device-
-independent."""
+independent.
+"""
 
 from __future__ import annotations
 

@@ -130,7 +130,8 @@ def system_theme() -> Theme:
 
 def apply_theme(app: QApplication, theme: Theme) -> None:
     """Dress the application. Widgets that paint for themselves get a `PaletteChange` and read
-    `current_theme`."""
+    `current_theme`.
+    """
     app.setProperty(THEME_PROPERTY, theme.name)
     if app.style().objectName().lower() != "fusion":
         app.setStyle(QStyleFactory.create("Fusion"))
@@ -199,7 +200,8 @@ def heading_font() -> QFont:
 
 def contrast(one: str, other: str) -> float:
     """Contrast ratio of two colours, 1 to 21 (relative luminance after ITU-R BT.709 and sRGB, as WCAG 2
-    defines it)."""
+    defines it).
+    """
     bright, dim = sorted((_luminance(one), _luminance(other)), reverse=True)
     return (bright + 0.05) / (dim + 0.05)
 

@@ -21,7 +21,7 @@ def place(view: View, u: float, v: float) -> tuple[Fraction, Fraction]:
 
 
 def unit_x(view: View, parameter: Fraction) -> float:
-    """Place across of a parameter value; beyond 0 to 1 outside the view, clamped to a range floats can paint."""
+    """Place across of a parameter value; clamped far outside the view, so that floats can paint it."""
     return _clamped((parameter - view.left) / view.width)
 
 
