@@ -1,0 +1,243 @@
+"""Newton polishing of an onset in high precision, then its proof: from a rough place to an `Onset`.
+
+One pass with all derivatives gives a Newton step and an inverse Jacobian. Further corrections come
+from the much cheaper rigorous evaluation at a point, through the same inverse (chord steps); the last
+of them is already the -C F(m) that the Krawczyk test needs.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Generator
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Any
+
+from flint import arb
+
+from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, in_chunks, precision
+from tinemark.onsets.decimals import GUARD_DIGITS, decimal_places, enclosure_texts, fixed_text, rounded
+from tinemark.onsets.one_map import OneMap
+from tinemark.onsets.proofs import (
+    TARGETS,
+    Inverse,
+    NotProved,
+    Proof,
+    box_around,
+    correction_at,
+    inverse_of,
+    prove,
+)
+from tinemark.onsets.results import Criticality, Kind, Onset, Status, Step
+from tinemark.systems.errors import SwitchingTouched
+
+ATTEMPTS = 4
+MOST_STEPS = 40
+
+
+@dataclass(frozen=True)
+class Rough:
+    """Where an onset is thought to be: kind, period of the cycle, a cycle point, the parameter."""
+
+    kind: Kind
+    period: int
+    x: Fraction
+    r: Fraction
+
+
+@dataclass(frozen=True)
+class Settled:
+    """An onset with the exact cycle point and parameter it was polished to, for what follows on it."""
+
+    onset: Onset
+    x: Fraction
+    r: Fraction
+
+
+class Lost(Exception):
+    """Newton's method left the neighbourhood or went to another cycle; says why."""
+
+
+def settle_onset(
+    one: OneMap, rough: Rough, digits: int, *, reach: Fraction | None = None
+) -> Generator[Step, None, Settled]:
+    """Polish an onset from a rough place and prove it.
+
+    Parameters
+    ----------
+    digits
+        Significant digits wanted of the parameter value.
+    reach
+        How far from the rough parameter value the onset may lie; beyond, the search counts as lost.
+
+    Returns
+    -------
+    Settled
+        With status proved, or estimated with the reason.
+
+    Raises
+    ------
+    Lost
+        There is no such onset in reach.
+    """
+    loops = ball_loops(one)
+    places = decimal_places(rough.r, digits + GUARD_DIGITS)
+    wanted = Fraction(1, 10) ** (places + 1)
+    bits = first_bits(rough, places)
+    reason = ""
+    point: tuple[Any, Any] | None = None
+    last_step = 0.0
+    for _ in range(ATTEMPTS):
+        try:
+            polished = yield from _polish(loops, rough, float(wanted), bits, reach)
+        except SwitchingTouched as error:
+            reason = error.message
+            break
+        except NotProved as error:
+            raise Lost(error.reason) from error
+        point, last_step = (polished.x, polished.r), polished.last_step
+        rough = Rough(rough.kind, rough.period, fraction_of(polished.x), fraction_of(polished.r))
+        try:
+            correction = polished.correction
+            box = box_around(polished.x, polished.r, correction, polished.inverse, bits)
+            proof = yield from prove(
+                loops, rough.kind, rough.period, box, polished.inverse, correction, bits
+            )
+        except SwitchingTouched as error:
+            reason = error.message
+            break
+        except NotProved as error:
+            if error.refuted:
+                raise Lost(error.reason) from error
+            reason = error.reason
+            bits = bits * 3 // 2
+            continue
+        if proof.parameter[1] - proof.parameter[0] > wanted:
+            reason = "the enclosure stayed wider than the digits asked for"
+            bits = bits * 3 // 2
+            continue
+        return Settled(_onset_of(one, rough, proof, digits, places), rough.x, rough.r)
+    if point is None:
+        point = (None, None)
+    return Settled(_estimate_of(one, rough, digits, places, last_step, reason), rough.x, rough.r)
+
+
+def first_bits(rough: Rough, places: int) -> int:
+    """Precision for a first attempt: the digits wanted, and room for what a long cycle loses."""
+    return math.ceil(max(places, 10) * math.log2(10)) + 40 + 3 * rough.period.bit_length()
+
+
+@dataclass(frozen=True)
+class _Polished:
+    x: Any
+    r: Any
+    inverse: Inverse
+    correction: Any
+    last_step: float
+
+
+def _polish(
+    loops: BallLoops, rough: Rough, wanted: float, bits: int, reach: Fraction | None
+) -> Generator[Step, None, _Polished]:
+    with precision(bits):
+        x, r = ball_of(rough.x).mid(), ball_of(rough.r).mid()
+        start_r = r
+        far = None if reach is None else ball_of(reach)
+    text = f"polishing the {rough.kind.value} of period {rough.period}"
+    previous = math.inf
+    for _ in range(MOST_STEPS):
+        x, r, inverse, step = yield from newton_step(loops, rough.kind, rough.period, x, r, bits, text)
+        if far is not None and not abs(r - start_r) < far:
+            raise Lost("Newton's method left the neighbourhood")
+        # Chord steps: each shrinks the error by about the relative size of the step before it.
+        while True:
+            correction = yield from correction_at(loops, rough.kind, rough.period, x, r, inverse, bits)
+            size = correction.sizes()[1]
+            if size <= wanted / 8 or size >= previous:
+                break
+            if not size < step / 8:
+                break
+            previous = step = size
+            with precision(bits):
+                x, r = (x + correction.x).mid(), (r + correction.r).mid()
+        if size <= wanted / 8:
+            return _Polished(x, r, inverse, correction, size)
+        if math.isnan(size):
+            raise NotProved("the orbit left the domain of the formula")
+        if size >= previous and previous < math.inf:
+            # No progress: either at the rounding level, where the caller adds bits, or not converging.
+            return _Polished(x, r, inverse, correction, size)
+        previous = math.inf if step > wanted else step
+    raise Lost("Newton's method did not converge")
+
+
+def newton_step(
+    loops: BallLoops, kind: Kind, period: int, x: Any, r: Any, bits: int, text: str
+) -> Generator[Step, None, tuple[Any, Any, Inverse, float]]:
+    """One Newton step on the defining system; gives the new point, the inverse, and |dr|."""
+    with precision(bits):
+        zero = arb(0)
+        state = (x, arb(1), zero, zero, zero)
+    state = yield from in_chunks(
+        lambda now, n: loops.newton(now[0], r, *now[1:], n), state, period, bits, text
+    )
+    with precision(bits):
+        end, u, v, w, z = state
+        inverse = inverse_of(u, v, w, z)
+        shift_x, shift_r = inverse.times(end - x, u.mid() - TARGETS[kind])
+        if not (shift_x.is_finite() and shift_r.is_finite()):
+            raise NotProved("the orbit escaped")
+        return (x - shift_x).mid(), (r - shift_r).mid(), inverse, abs(float(shift_r))
+
+
+def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int) -> Onset:
+    texts = enclosure_texts(*proof.parameter, places)
+    flip = rough.kind is Kind.FLIP
+    middle = sum(proof.state, Fraction(0)) / 2
+    return Onset(
+        parameter=one.parameter,
+        kind=rough.kind,
+        period_before=rough.period if flip else 0,
+        period_after=2 * rough.period if flip else rough.period,
+        criticality=proof.criticality,
+        value=texts.value,
+        lower=texts.lower,
+        upper=texts.upper,
+        digits=digits,
+        status=Status.ESTIMATED if proof.degenerate else Status.PROVED,
+        reason=proof.degenerate,
+        states=((one.state, state_text(middle, digits)),),
+        evidence=proof.evidence,
+    )
+
+
+def state_text(value: Fraction, digits: int) -> str:
+    """A state value to a number of significant digits."""
+    places = decimal_places(value, digits)
+    return fixed_text(rounded(value, places), places)
+
+
+def _estimate_of(
+    one: OneMap, rough: Rough, digits: int, places: int, last_step: float, reason: str
+) -> Onset:
+    """An onset that could not be proved, with an error estimate from the last correction."""
+    flip = rough.kind is Kind.FLIP
+    half = max(Fraction(last_step) * 4, abs(rough.r) * Fraction(1, 10**9))
+    if 0 < last_step:
+        half = max(Fraction(last_step) * 4, Fraction(1, 10) ** places)
+    shown = min(places, decimal_places(half, 2)) if half else places
+    texts = enclosure_texts(rough.r - half, rough.r + half, shown)
+    return Onset(
+        parameter=one.parameter,
+        kind=rough.kind,
+        period_before=rough.period if flip else 0,
+        period_after=2 * rough.period if flip else rough.period,
+        criticality=Criticality.UNDECIDED if flip else Criticality.NOT_APPLICABLE,
+        value=texts.value,
+        lower=texts.lower,
+        upper=texts.upper,
+        digits=min(digits, max(1, shown + 1)),
+        status=Status.ESTIMATED,
+        reason=reason,
+        states=((one.state, state_text(rough.x, 12)),),
+    )
