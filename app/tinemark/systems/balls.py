@@ -109,6 +109,11 @@ _TOOLS: dict[str, Any] = {
 _TOOLS.update({f"ball_{name}": _method(name) for name in ARITIES if f"ball_{name}" not in _TOOLS})
 
 
+def ball_tools() -> dict[str, Any]:
+    """The names that code printed by `emit` in the "ball" dialect calls, as a fresh namespace."""
+    return dict(_TOOLS)
+
+
 @lru_cache(maxsize=256)
 def ball_function(expressions: tuple[Expr, ...], names: tuple[str, ...]) -> BallFunction:
     """Compile expressions to one Python function over balls.
