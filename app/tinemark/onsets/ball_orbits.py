@@ -16,6 +16,7 @@ from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 from typing import Any
 
 import flint
@@ -60,6 +61,8 @@ def fraction_of(exact: arb) -> Fraction:
 class BallLoops:
     """Generated loops of one map; each takes and returns its whole state, n steps further.
 
+    orbit(x, r, n)
+        Midpoint orbit alone.
     newton(x, r, u, v, w, z, n)
         Midpoint orbit with the first derivatives u, v of f^n in x and r, and w = u_x, z = u_r.
     point(X, r, u, n)
@@ -69,16 +72,19 @@ class BallLoops:
         `spread` is R - r_m.
     """
 
+    orbit: Callable[..., Any]
     newton: Callable[..., tuple[Any, ...]]
     point: Callable[..., tuple[Any, ...]]
     box: Callable[..., tuple[Any, ...]]
 
 
+@lru_cache(maxsize=64)
 def ball_loops(one: OneMap) -> BallLoops:
     """Generate and compile the loops of a map."""
     exprs = one.exact_derivatives
     space: dict[str, Any] = ball_tools()
-    source = "\n".join([*_newton_source(one, exprs), *_point_source(one, exprs), *_box_source(one, exprs)])
+    sources = (_orbit_source, _newton_source, _point_source, _box_source)
+    source = "\n".join(line for part in sources for line in part(one, exprs))
 
     def hoist(match: re.Match[str]) -> str:
         label = f"q{match[1].replace('-', 'm')}_{match[2]}"
@@ -88,7 +94,7 @@ def ball_loops(one: OneMap) -> BallLoops:
     source = _RATIONAL.sub(hoist, source)
     # The source is our own print of checked nodes: no text of the user passes through.
     exec(compile(source, "<ball loops>", "exec"), space)
-    return BallLoops(space["newton"], space["point"], space["box"])
+    return BallLoops(space["orbit"], space["newton"], space["point"], space["box"])
 
 
 def _split(
@@ -129,6 +135,11 @@ def _chain(exprs: Mapping[str, Expr]) -> list[str]:
         f"v = {_sum('fx*v', 'fr' if exprs['fr'] != ZERO else '')}",
         "u = fx*u",
     ]
+
+
+def _orbit_source(one: OneMap, exprs: Mapping[str, Expr]) -> list[str]:
+    bind = {one.state: "x", one.parameter: "r"}
+    return _loop("orbit(x, r, n)", [], [*emit([("f", exprs["f"])], bind, "ball", "t"), "x = f.mid()"], "x")
 
 
 def _newton_source(one: OneMap, exprs: Mapping[str, Expr]) -> list[str]:

@@ -64,6 +64,7 @@ class OneMap:
         return self.observe == Name(self.state)
 
 
+@lru_cache(maxsize=64)
 def one_map(system: System, parameter: str) -> OneMap:
     """The one-state map of a system along a parameter.
 

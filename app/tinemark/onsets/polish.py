@@ -59,7 +59,7 @@ class Lost(Exception):
 
 
 def settle_onset(
-    one: OneMap, rough: Rough, digits: int, *, reach: Fraction | None = None
+    one: OneMap, rough: Rough, digits: int, *, reach: Fraction | None = None, show_after: int = 0
 ) -> Generator[Step, None, Settled]:
     """Polish an onset from a rough place and prove it.
 
@@ -69,6 +69,8 @@ def settle_onset(
         Significant digits wanted of the parameter value.
     reach
         How far from the rough parameter value the onset may lie; beyond, the search counts as lost.
+    show_after
+        Steps from the rough cycle point to the one that the onset shows.
 
     Returns
     -------
@@ -85,7 +87,6 @@ def settle_onset(
     wanted = Fraction(1, 10) ** (places + 1)
     bits = first_bits(rough, places)
     reason = ""
-    point: tuple[Any, Any] | None = None
     last_step = 0.0
     for _ in range(ATTEMPTS):
         try:
@@ -95,7 +96,7 @@ def settle_onset(
             break
         except NotProved as error:
             raise Lost(error.reason) from error
-        point, last_step = (polished.x, polished.r), polished.last_step
+        last_step = polished.last_step
         rough = Rough(rough.kind, rough.period, fraction_of(polished.x), fraction_of(polished.r))
         try:
             correction = polished.correction
@@ -116,9 +117,8 @@ def settle_onset(
             reason = "the enclosure stayed wider than the digits asked for"
             bits = bits * 3 // 2
             continue
-        return Settled(_onset_of(one, rough, proof, digits, places), rough.x, rough.r)
-    if point is None:
-        point = (None, None)
+        shown = yield from _shown_state(loops, proof, show_after, bits)
+        return Settled(_onset_of(one, rough, proof, digits, places, shown), rough.x, rough.r)
     return Settled(_estimate_of(one, rough, digits, places, last_step, reason), rough.x, rough.r)
 
 
@@ -190,10 +190,20 @@ def newton_step(
         return (x - shift_x).mid(), (r - shift_r).mid(), inverse, abs(float(shift_r))
 
 
-def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int) -> Onset:
+def _shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Generator[Step, None, Fraction]:
+    """The cycle point that an onset shows: middle of the proved one, some steps on."""
+    with precision(bits):
+        x = ball_of(sum(proof.state, Fraction(0)) / 2).mid()
+        r = ball_of(sum(proof.parameter, Fraction(0)) / 2).mid()
+    x = yield from in_chunks(lambda now, n: loops.orbit(now, r, n), x, steps, bits, "following the cycle")
+    return fraction_of(x)
+
+
+def _onset_of(
+    one: OneMap, rough: Rough, proof: Proof, digits: int, places: int, middle: Fraction
+) -> Onset:
     texts = enclosure_texts(*proof.parameter, places)
     flip = rough.kind is Kind.FLIP
-    middle = sum(proof.state, Fraction(0)) / 2
     return Onset(
         parameter=one.parameter,
         kind=rough.kind,
