@@ -152,10 +152,12 @@ def test_the_text_of_an_onset() -> None:
     assert rounding.onset_text(proved).endswith(rounding.ELLIPSIS)
     assert rounding.onset_text(proved, full=True, grouped=False) == "3.449489742783178098"
     wide = make(Status.PROVED, "0.35", "0.3", "0.4")
-    assert rounding.onset_text(wide, grouped=False) == "0.350(50)"
+    assert rounding.onset_text(wide, grouped=False) == "0.350 ± 0.050"
     estimated = make(Status.ESTIMATED, "3.44949", "3.44937", "3.44961")
-    assert rounding.onset_text(estimated, grouped=False) == "3.44949(12)"
+    assert rounding.onset_text(estimated, grouped=False) == "3.449490(60)"
     assert rounding.onset_text(estimated, full=True, grouped=False) == "3.44949 ± 0.00012"
+    eye = make(Status.READ_BY_EYE, "3.44949", "3.44937", "3.44961")
+    assert rounding.onset_text(eye, grouped=False) == "3.44949(12)"
 
 
 def test_hundreds_of_digits() -> None:

@@ -172,7 +172,12 @@ def _exact_text(value: Fraction) -> str:
 
 
 def _finish(text: str, grouped: bool) -> str:
-    return group_digits(text).replace("-", MINUS) if grouped else text
+    return minus_sign(group_digits(text)) if grouped else text
+
+
+def minus_sign(text: str) -> str:
+    """The text with the true minus sign before its number."""
+    return MINUS + text[1:] if text.startswith("-") else text
 
 
 def held_digits(lower: Fraction, upper: Fraction, *, most: int | None = None) -> str:
@@ -254,8 +259,9 @@ def onset_text(onset: Onset, *, full: bool = False, grouped: bool = True) -> str
     """The value of an onset as the ledger shows it.
 
     A proved value shows digits that hold: the first `SHORT_DIGITS` and an ellipsis, or all of
-    them with `full`. Any other value is rounded to its uncertainty, 3.569 945 67(12); with `full` it
-    is written with its long form, value ± uncertainty.
+    them with `full`. An estimated or measured value is rounded to its uncertainty: the standard one in
+    brackets, 3.569 945 67(12), or with `full` the expanded one (95 % coverage), value ± uncertainty
+    (JCGM 100:2008, 7.2.2 and 7.2.4). A value read by eye carries half a pixel in both.
     """
     lower, upper = Fraction(onset.lower), Fraction(onset.upper)
     proved = onset.status is Status.PROVED
@@ -264,5 +270,7 @@ def onset_text(onset: Onset, *, full: bool = False, grouped: bool = True) -> str
         text = everything if full else _cut_to(everything, SHORT_DIGITS)
         more = ELLIPSIS if grouped and text != everything else ""
         return _finish(text, grouped) + more
-    form = plus_minus if full else concise
-    return form(onset.value_fraction, onset.half_width, grouped=grouped, rigorous=proved)
+    if full or proved:
+        return plus_minus(onset.value_fraction, onset.half_width, grouped=grouped, rigorous=proved)
+    eye = onset.status is Status.READ_BY_EYE
+    return concise(onset.value_fraction, onset.half_width / (1 if eye else 2), grouped=grouped)

@@ -1,0 +1,202 @@
+"""Grouping in ladders, with onsets of real systems in every order."""
+
+from __future__ import annotations
+
+import random
+from collections.abc import Sequence
+from itertools import combinations
+
+import onset_samples as known
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from tinemark.document.ladders import grouped
+from tinemark.document.row import Row, row_id
+from tinemark.onsets.results import Kind, Onset, Status
+
+
+def rows_of(onsets: Sequence[Onset]) -> list[Row]:
+    return [
+        Row(row_id(n), onset, known.PLACE.system_key, known.PLACE.fixed) for n, onset in enumerate(onsets, 1)
+    ]
+
+
+def ladders(onsets: Sequence[Onset]) -> set[tuple[int, tuple[tuple[int, str], ...]]]:
+    """Each ladder as its base period, and its levels with their values."""
+    found: dict[str, list[tuple[int, str]]] = {}
+    bases: dict[str, int] = {}
+    for row in grouped(rows_of(onsets)):
+        if row.ladder:
+            assert row.level is not None
+            assert row.base_period is not None
+            assert bases.setdefault(row.ladder, row.base_period) == row.base_period
+            found.setdefault(row.ladder, []).append((row.level, row.onset.value))
+    return {(bases[name], tuple(sorted(levels))) for name, levels in found.items()}
+
+
+def ladder(base: int, values: Sequence[str], first: int = 1) -> tuple[int, tuple[tuple[int, str], ...]]:
+    return base, tuple(enumerate(values, first))
+
+
+CASCADES = {
+    "logistic": known.LOGISTIC,
+    "gaussian 6.2 rising": known.GAUSSIAN_RISING,
+    "gaussian 4.9 rising": known.GAUSSIAN_RISING_49,
+    "gaussian 6.2 falling": known.GAUSSIAN_FALLING,
+    "hassell": known.HASSELL,
+    "quartic": known.QUARTIC,
+    "henon": known.HENON,
+    "conservative": known.CONSERVATIVE_HENON,
+}
+
+
+@pytest.mark.parametrize("name", CASCADES)
+def test_every_choice_of_levels_is_one_ladder(name: str) -> None:
+    onsets = known.flips(CASCADES[name])[:6]
+    for count in range(1, len(onsets) + 1):
+        for chosen in combinations(onsets, count):
+            expected = tuple((o.period_before.bit_length(), o.value) for o in chosen)
+            assert ladders(chosen) == {(1, expected)}
+
+
+def test_out_of_order_with_a_level_missing() -> None:
+    onsets = known.flips(known.LOGISTIC)
+    del onsets[2]
+    random.Random(2).shuffle(onsets)
+    ((base, levels),) = ladders(onsets)
+    assert base == 1
+    assert [level for level, _ in levels] == [1, 2, 4, 5, 6, 7, 8, 9]
+
+
+def test_both_ends_of_the_gaussian_are_two_ladders() -> None:
+    both = known.flips(known.GAUSSIAN_RISING) + known.flips(known.GAUSSIAN_FALLING)
+    expected = {ladder(1, known.GAUSSIAN_RISING), ladder(1, known.GAUSSIAN_FALLING)}
+    for seed in range(5):
+        random.Random(seed).shuffle(both)
+        assert ladders(both) == expected
+
+
+@given(st.data())
+def test_both_ends_with_holes(data: st.DataObject) -> None:
+    """At least three levels of each end, any others missing: still the same two ladders."""
+    levels = st.sets(st.integers(0, 4), min_size=3)
+    rising = sorted(data.draw(levels))
+    falling = sorted(data.draw(levels))
+    both = [known.flip(known.GAUSSIAN_RISING[n], 1 << n) for n in rising]
+    both += [known.flip(known.GAUSSIAN_FALLING[n], 1 << n) for n in falling]
+    assert ladders(data.draw(st.permutations(both))) == {
+        (1, tuple((n + 1, known.GAUSSIAN_RISING[n]) for n in rising)),
+        (1, tuple((n + 1, known.GAUSSIAN_FALLING[n]) for n in falling)),
+    }
+
+
+def everything_logistic() -> list[Onset]:
+    onsets = known.flips(known.LOGISTIC)
+    for period, fold_at, values in known.WINDOWS:
+        onsets += [known.fold(fold_at, period), *known.flips(values, period)]
+    return onsets
+
+
+def test_windows_are_told_apart_by_position() -> None:
+    expected = {ladder(1, known.LOGISTIC)}
+    expected |= {ladder(period, (fold_at, *values), first=0) for period, fold_at, values in known.WINDOWS}
+    onsets = everything_logistic()
+    for seed in range(4):
+        random.Random(seed).shuffle(onsets)
+        assert ladders(onsets) == expected
+
+
+def test_windows_without_their_folds() -> None:
+    onsets = [onset for onset in everything_logistic() if onset.kind is not Kind.FOLD]
+    expected = {ladder(1, known.LOGISTIC)}
+    for period, _, values in known.WINDOWS:
+        # Without its fold a window of period 6 cannot be told from the second level of period 3.
+        expected.add(ladder(3, values, first=2) if period == 6 else ladder(period, values))
+    assert ladders(onsets) == expected
+
+
+def test_first_flips_of_windows_are_ladders_of_their_own() -> None:
+    firsts = [known.flip(values[0], period) for period, _, values in known.WINDOWS if period == 5]
+    assert ladders(firsts) == {ladder(5, (onset.value,)) for onset in firsts}
+
+
+def test_an_onset_of_another_family_between_two_flips_parts_them() -> None:
+    # First flip of one period-5 window and second of another, with the period-3 fold in between.
+    first, second = known.WINDOWS[1][2][0], known.WINDOWS[2][2][1]
+    pair = [known.flip(first, 5), known.flip(second, 10)]
+    assert ladders(pair) == {(5, ((1, first), (2, second)))}
+    assert ladders([*pair, known.fold(known.WINDOWS[0][1], 3)]) == {
+        (5, ((1, first),)),
+        (5, ((2, second),)),
+    }
+
+
+def test_a_fold_alone_or_far_off_heads_nothing() -> None:
+    period, fold_at, _ = known.WINDOWS[1]
+    assert ladders([known.fold(fold_at, period)]) == set()
+    other = known.flips(known.WINDOWS[3][2], 5)
+    assert ladders([known.fold(fold_at, period), *other]) == {ladder(5, known.WINDOWS[3][2])}
+
+
+def test_the_henon_ladder_begins_at_its_fold() -> None:
+    # a = -(1-b)^2/4 opens period 1 at b = 0.3; its distance to the first flip is less than the first gap.
+    onsets = [known.fold(known.HENON_FOLD, 1), *known.flips(known.HENON)]
+    assert ladders(onsets) == {ladder(1, (known.HENON_FOLD, *known.HENON), first=0)}
+
+
+def test_a_stated_base_period_is_respected() -> None:
+    rows = rows_of(known.flips(known.WINDOWS[4][2], 6))
+    stated = [Row(r.id, r.onset, r.system_key, r.fixed, stated_base=6) for r in rows]
+    assert {row.level for row in grouped(rows)} == {2, 3, 4, 5}
+    assert {row.level for row in grouped(stated)} == {1, 2, 3, 4}
+    assert {row.base_period for row in grouped(stated)} == {6}
+    # One stated row carries its ladder.
+    mixed = [stated[0], *rows[1:]]
+    assert {row.base_period for row in grouped(mixed)} == {6}
+
+
+def test_values_read_by_eye_join_and_give_way() -> None:
+    onsets = known.flips(known.LOGISTIC[:4])
+    onsets += known.flips(("3.5688", "3.5697"), 16, width="1e-4", status=Status.READ_BY_EYE)  # type: ignore[arg-type]
+    assert [level for level, _ in next(iter(ladders(onsets)))[1]] == [1, 2, 3, 4, 5, 6]
+    # A reading of a level that is proved already stands beside the ladder, not in it.
+    onsets = [
+        known.flip("3.5440", 4, width="1e-6", status=Status.READ_BY_EYE),
+        *known.flips(known.LOGISTIC[:5]),
+    ]
+    assert ladder(1, known.LOGISTIC[:5]) in ladders(onsets)
+
+
+def test_readings_too_coarse_to_shrink_still_join() -> None:
+    # Half a pixel of 2e-4 covers gaps 6 and 7 of the logistic ladder.
+    coarse = ("3.5687", "3.5698", "3.5697")
+    onsets = known.flips(known.LOGISTIC[:4])
+    onsets += known.flips(coarse, 16, width="2e-4", status=Status.READ_BY_EYE)  # type: ignore[arg-type]
+    assert len(ladders(onsets)) == 1
+
+
+def test_other_places_are_other_ladders() -> None:
+    rows = rows_of(known.flips(known.HENON))
+    other = [Row(row_id(row.number + 50), row.onset, row.system_key, (("b", "0.3"),)) for row in rows]
+    names = {row.id: row.ladder for row in grouped([*rows, *other])}
+    assert {names[row.id] for row in rows} == {"L1"}
+    assert {names[row.id] for row in other} == {"L51"}
+
+
+def test_unknown_kinds_and_periods_stand_alone() -> None:
+    unknown = known.onset(Kind.UNKNOWN, "3.2", 0, 0, "0.01", Status.READ_BY_EYE)
+    tripling = known.onset(Kind.FLIP, "3.2", 1, 3, "0.01", Status.ESTIMATED)
+    assert ladders([unknown, tripling]) == set()
+
+
+@given(st.permutations(everything_logistic()[:24]), st.integers(0, 24))
+def test_grouping_forgets_order_and_history(onsets: list[Onset], cut: int) -> None:
+    rows = rows_of(onsets)
+    whole = {row.id: (row.ladder, row.level, row.base_period) for row in grouped(rows)}
+    again = {
+        row.id: (row.ladder, row.level, row.base_period)
+        for row in grouped([*grouped(rows[:cut]), *rows[cut:]][::-1])
+    }
+    assert again == whole
+    assert ladders(onsets) == ladders(sorted(onsets, key=lambda onset: onset.value_fraction))
