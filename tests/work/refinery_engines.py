@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import time
-from collections.abc import Iterator
+from collections.abc import Generator
 from fractions import Fraction
 
 from tinemark.onsets.results import (
@@ -28,13 +28,12 @@ def onset(value: str) -> Onset:
     return Onset("r", Kind.FLIP, 1, 2, Criticality.SUPERCRITICAL, value, value, value, 20, Status.PROVED)
 
 
-def engine(request: RefineRequest | LadderRequest) -> Iterator[object]:
+def engine(request: RefineRequest | LadderRequest) -> Generator[object, None, object]:
     yield Step("looking", 0.0)
     if isinstance(request, LadderRequest):
         levels = [LadderLevel(n, onset(str(n))) for n in range(1, request.levels + 1)]
         yield from levels
-        yield LadderResult(request.base_period, tuple(levels), str(os.getpid()))
-        return
+        return LadderResult(request.base_period, tuple(levels), str(os.getpid()))
     match request.digits:
         case 21:
             raise NoOnsetFound("no onset within the view", what_to_do="zoom out")
@@ -49,7 +48,7 @@ def engine(request: RefineRequest | LadderRequest) -> Iterator[object]:
             while True:
                 yield Step("still looking")
     yield Step("polishing", 0.5)
-    yield RefineResult((onset(str(request.near)),), str(os.getpid()))
+    return RefineResult((onset(str(request.near)),), str(os.getpid()))
 
 
 def click(system, digits: int = ANSWER, near: Fraction = Fraction(3)) -> RefineRequest:

@@ -7,11 +7,9 @@ importable function and one frozen request.
 from __future__ import annotations
 
 import multiprocessing
-from collections import deque
 from collections.abc import Iterable, Iterator
 from concurrent.futures import Executor, Future, ProcessPoolExecutor, as_completed
 
-from tinemark.onsets.results import LadderResult, RefineResult
 from tinemark.work.jobs import OnsetRequest, OnsetResult
 from tinemark.work.worker import engine_steps
 
@@ -30,10 +28,13 @@ def solve(request: OnsetRequest) -> OnsetResult:
     TinemarkError
         As the engine says.
     """
-    last = next(iter(deque(engine_steps(request), maxlen=1)), None)
-    if not isinstance(last, RefineResult | LadderResult):
-        raise RuntimeError("the engine ended without a result")
-    return last
+    steps = engine_steps(request)
+    while True:
+        try:
+            next(steps)
+        except StopIteration as end:
+            result: OnsetResult = end.value
+            return result
 
 
 def solve_all(

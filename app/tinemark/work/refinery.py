@@ -53,6 +53,7 @@ class _Process:
     requests: Connection
     events: Connection
     ready: bool = False
+    hurried: bool = False
     running: _Running | None = None
 
 
@@ -183,7 +184,13 @@ class Refinery:
                 return
             self._start_worker()
         worker_ = self._worker
-        if worker_ is None or not worker_.ready or worker_.running is not None:
+        if worker_ is None or worker_.running is not None:
+            return
+        if not worker_.ready:
+            if self._queue and not worker_.hurried:
+                # A warming that goes on gives way at its next step.
+                worker_.hurried = True
+                self._send(worker_, ("hurry",))
             return
         if self._queue:
             id_, request = self._queue.popleft()
@@ -243,7 +250,7 @@ class Refinery:
 
     def _hear(self, worker_: _Process, message: tuple[Any, ...]) -> None:
         if message == ("ready",):
-            worker_.ready = True
+            worker_.ready, worker_.hurried = True, False
             self._failed_starts = 0
             return
         running = worker_.running

@@ -4,7 +4,7 @@
 one job runs at a time. Messages are small tuples, both ways:
 
 =====================  ==========================================
-to the worker          ("run", id, request), ("cancel", id), ("warm", system), ("stop",)
+to the worker          ("run", id, request), ("cancel", id), ("warm", system), ("hurry",), ("stop",)
 from the worker        ("ready",) at first and after a warming, ("step", id, item),
                        ("done", id, result), ("error", id, error), ("cancelled", id)
 =====================  ==========================================
@@ -13,32 +13,40 @@ from the worker        ("ready",) at first and after a warming, ("step", id, ite
 from __future__ import annotations
 
 import contextlib
+import importlib
 import signal
 import time
 from collections import deque
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Generator
+from fractions import Fraction
 from multiprocessing.connection import Connection
-from typing import Any
+from typing import Any, TypeAlias
 
-from tinemark.onsets.results import LadderRequest, LadderResult, RefineRequest, RefineResult, Step
+from tinemark.onsets.results import LadderLevel, RefineRequest, Step
 from tinemark.systems.errors import TinemarkError
-from tinemark.work.jobs import OnsetRequest
+from tinemark.systems.system import System
+from tinemark.work.jobs import OnsetRequest, OnsetResult
 
 STEP_INTERVAL = 0.04
 """Seconds between two steps that are passed on; an engine may yield many more than anyone can read."""
 
-Engine = Callable[[OnsetRequest], Iterator[Any]]
+Steps: TypeAlias = Generator[Step | LadderLevel, None, OnsetResult]
+Engine: TypeAlias = Callable[[OnsetRequest], Steps]
 
 
-def engine_steps(request: OnsetRequest) -> Iterator[Any]:
-    """Steps of the engine that a request asks for; the last item is its result."""
+def engine_steps(request: OnsetRequest) -> Steps:
+    """Run of the engine that a request asks for: steps, and the result as the generator's value.
+
+    Raises
+    ------
+    TinemarkError
+        As the engine says, at some step.
+    """
     from tinemark.onsets import engine
 
     if isinstance(request, RefineRequest):
-        return iter(engine.refine(request))
-    if isinstance(request, LadderRequest):
-        return iter(engine.ladder(request))
-    raise TypeError(f"no engine for {type(request).__name__}")
+        return (yield from engine.refine(request))
+    return (yield from engine.ladder(request))
 
 
 def serve(requests: Connection, events: Connection, engine: Engine = engine_steps) -> None:
@@ -59,12 +67,12 @@ def _serve(requests: Connection, events: Connection, engine: Engine) -> None:
             case ("run", id_, request):
                 _run(id_, request, requests, events, waiting, engine)
             case ("warm", system):
-                _warm(system)
+                _warm(system, requests)
                 events.send(("ready",))
             case ("stop",):
                 return
-            case ("cancel", _):
-                # It crossed the answer of a job that had just ended.
+            case ("cancel", _) | ("hurry",):
+                # It crossed the end of what it was meant for.
                 pass
 
 
@@ -76,29 +84,27 @@ def _run(
     waiting: deque[tuple[Any, ...]],
     engine: Engine,
 ) -> None:
+    told = float("-inf")
     try:
         steps = engine(request)
-        result = None
-        told = float("-inf")
-        for item in steps:
+        while True:
+            try:
+                item = next(steps)
+            except StopIteration as end:
+                events.send(("done", id_, end.value))
+                return
             while requests.poll():
                 message = requests.recv()
                 if message == ("cancel", id_):
-                    close = getattr(steps, "close", None)
-                    if close is not None:
-                        close()
+                    steps.close()
                     events.send(("cancelled", id_))
                     return
                 waiting.append(message)
-            if isinstance(item, (RefineResult, LadderResult)):
-                result = item
-            elif not isinstance(item, Step):
+            if not isinstance(item, Step):
                 events.send(("step", id_, item))
             elif time.monotonic() - told >= STEP_INTERVAL:
                 told = time.monotonic()
                 events.send(("step", id_, item))
-        if result is None:
-            raise RuntimeError("the engine ended without a result")
     except TinemarkError as error:
         events.send(("error", id_, error))
     except (EOFError, BrokenPipeError, ConnectionResetError):
@@ -107,16 +113,25 @@ def _run(
         text = f"the refinement failed on a defect of Tinemark ({type(error).__name__}: {error})"
         defect = TinemarkError(text, what_to_do="please report it together with the system file")
         events.send(("error", id_, defect))
-    else:
-        events.send(("done", id_, result))
 
 
-def _warm(system: Any) -> None:
-    """Load the engines and build the evaluators of a system, so that the first click finds them ready."""
-    # A system that cannot be built says so when it is asked for.
+def _warm(system: System | None, requests: Connection) -> None:
+    """Load the engines, and run a click of our own on a system, so that the first real one finds all built.
+
+    Gives up as soon as anything is asked.
+    """
+    # What cannot be built or found says so when it is asked for.
     with contextlib.suppress(Exception):
         from tinemark.onsets import engine
 
-        prepare = getattr(engine, "prepare", None)
-        if system is not None and prepare is not None:
-            prepare(system)
+        if system is None:
+            importlib.import_module("tinemark.onsets.clicks")
+            return
+        parameter = system.parameter(system.diagram_parameter)
+        near, width = parameter.value.fraction, abs(parameter.value.fraction) / 10 or Fraction(1)
+        if parameter.range is not None:
+            low, high = parameter.range
+            near, width = (low.fraction + high.fraction) / 2, high.fraction - low.fraction
+        for _ in engine.refine(RefineRequest(system, parameter.name, near, width)):
+            if requests.poll():
+                return
