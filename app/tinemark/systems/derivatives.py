@@ -13,6 +13,7 @@ sympy is imported on first use: it takes half a second that a picture already in
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
 from itertools import combinations_with_replacement
@@ -92,12 +93,22 @@ def partials(
     return found
 
 
+@dataclass(frozen=True)
+class _Plan:
+    """The piece that ends at a node: nodes, degree, and which operands lie beyond it."""
+
+    size: int
+    degree: int
+    beyond: frozenset[int] = frozenset()
+
+
 class _Forest:
     """Expressions of one computation, equal ones kept as one object, with their derivatives."""
 
     def __init__(self) -> None:
         self.nodes: dict[tuple[object, ...], Expr] = {}
         self.names: dict[int, frozenset[str]] = {}
+        self.plans: dict[int, _Plan] = {}
         self.known: dict[tuple[int, str], Expr] = {}
 
     # Building. Every node of the forest comes from `unique`, so identity is equality.
@@ -119,6 +130,7 @@ class _Forest:
             self.nodes[key] = node
             own = frozenset({node.name}) if isinstance(node, Name) else frozenset()
             self.names[id(node)] = own.union(*(self.names[id(child)] for child in children(node)))
+            self.plans[id(node)] = _plan(node, [self.plans[id(child)] for child in children(node)])
         return self.nodes[key]
 
     def whole(self, expr: Expr) -> Expr:
@@ -145,6 +157,8 @@ class _Forest:
                 return other
             case ("sub", (other, Num(value))) if value == 0:
                 return other
+            case ("sub", (Num(value), other)) if value == 0:
+                return self.call("neg", other)
             case ("mul", (Num(value), other)) | ("mul", (other, Num(value))) if value in (0, 1):
                 return other if value else self.number(0)
             case ("div", (other, Num(value))) if value == 1:
@@ -231,12 +245,10 @@ class _Piece:
         self.variable = sympy.Symbol("v")
         self.symbols: dict[int, Any] = {}
         self.held: list[Expr] = []
-        self.sizes: dict[int, tuple[int, int]] = {}
 
     def derivative(self, node: Expr) -> Expr:
         """Derivative of a node that sympy has the rule for."""
-        operands = self.fit(node)
-        expression = self.apply(node, operands)
+        expression = self.apply(node)
         total = expression.diff(self.variable)
         for place in range(len(self.held)):
             inner = self.forest.derivative(self.held[place], self.name)
@@ -244,34 +256,17 @@ class _Piece:
                 total += expression.diff(self.symbol(place)) * self.leaf(inner)
         return self.back(total)
 
-    # Into sympy. Each step gives the expression, its number of nodes and its degree.
+    # Into sympy.
 
-    def fit(self, node: Expr) -> list[Any]:
-        """Operands of a node, the largest held back until the piece is small enough."""
-        parts = [self.enter(child) for child in children(node)]
-        order = sorted(range(len(parts)), key=lambda place: -parts[place][1])
-        for place in order:
-            size = 1 + sum(part[1] for part in parts)
-            if size <= MAX_PIECE and _degree(node, [part[2] for part in parts]) <= MAX_DEGREE:
-                break
-            parts[place] = (self.hold(children(node)[place]), 1, 1)
-        self.sizes[id(node)] = (1 + sum(p[1] for p in parts), _degree(node, [p[2] for p in parts]))
-        return [part[0] for part in parts]
-
-    def enter(self, node: Expr) -> tuple[Any, int, int]:
-        if not isinstance(node, Call | Name) or not self.forest.varies(node, self.name):
-            return (self.leaf(node), 1, 0 if isinstance(node, Num) else 1)
+    def enter(self, node: Expr) -> Any:
+        """The node for sympy, with what lies beyond its piece held."""
+        if not self.forest.varies(node, self.name):
+            return self.leaf(node)
         if isinstance(node, Name):
-            return (self.variable, 1, 1)
-        if self.is_ours(node):
-            return (self.hold(node), 1, 1)
-        operands = self.fit(node)
-        return (self.apply(node, operands), *self.sizes[id(node)])
-
-    def is_ours(self, node: Call) -> bool:
-        if node.fn == "pow":
-            return not isinstance(node.args[1], Num)
-        return node.fn in ("abs", "min", "max", "floor", "atan2")
+            return self.variable
+        if _is_ours(node):
+            return self.hold(node)
+        return self.apply(node)
 
     def leaf(self, node: Expr) -> Any:
         """A short rational as itself, any other node held."""
@@ -290,8 +285,12 @@ class _Piece:
     def symbol(self, place: int) -> Any:
         return self.sympy.Symbol(f"h{place}")
 
-    def apply(self, node: Expr, operands: list[Any]) -> Any:
+    def apply(self, node: Expr) -> Any:
         assert isinstance(node, Call)
+        beyond = self.forest.plans[id(node)].beyond
+        operands = [
+            self.hold(arg) if place in beyond else self.enter(arg) for place, arg in enumerate(node.args)
+        ]
         match node.fn, operands:
             case "add", (a, b):
                 return a + b
@@ -382,8 +381,33 @@ class _Piece:
         return self.forest.call(fn, self.join(fn, parts[:middle]), self.join(fn, parts[middle:]))
 
 
-def _degree(node: Expr, degrees: list[int]) -> int:
+def _is_ours(node: Expr) -> bool:
+    """Whether sympy does not see into the node: its derivative follows a rule of ours."""
+    match node:
+        case Call("pow", (_, exponent)):
+            return not isinstance(exponent, Num)
+        case Call(fn, _):
+            return fn in ("abs", "min", "max", "floor", "atan2")
+    return True
+
+
+def _plan(node: Expr, parts: list[_Plan]) -> _Plan:
+    """How much of a node sympy sees: its largest operands stay outside until the piece is small."""
+    if _is_ours(node):
+        return _Plan(1, 0 if isinstance(node, Num) else 1)
     assert isinstance(node, Call)
+    sizes = [part.size for part in parts]
+    degrees = [part.degree for part in parts]
+    beyond = set()
+    for place in sorted(range(len(parts)), key=lambda place: -sizes[place]):
+        if 1 + sum(sizes) <= MAX_PIECE and _degree(node, degrees) <= MAX_DEGREE:
+            break
+        beyond.add(place)
+        sizes[place] = degrees[place] = 1
+    return _Plan(1 + sum(sizes), _degree(node, degrees), frozenset(beyond))
+
+
+def _degree(node: Call, degrees: list[int]) -> int:
     match node.fn:
         case "mul" | "div":
             return sum(degrees)

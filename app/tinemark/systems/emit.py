@@ -11,7 +11,7 @@ from fractions import Fraction
 from typing import Literal
 
 from tinemark.systems.errors import FormulaError
-from tinemark.systems.expression import ZERO, Call, Cond, Expr, Name, Num, Pi
+from tinemark.systems.expression import ZERO, Call, Cond, Expr, Name, Num, Pi, walk
 
 Dialect = Literal["native", "ball"]
 
@@ -67,13 +67,12 @@ class _Printer:
         return self.numbers[key]
 
     def number_of(self, expr: Expr) -> int:
-        known = self.memo.get(id(expr))
-        if known is not None:
-            return known
-        number = self.visit(expr)
-        self.memo[id(expr)] = number
-        self.kept.append(expr)
-        return number
+        # Operands first: a formula with hundreds of terms must not nest as many calls.
+        for node in () if id(expr) in self.memo else walk(expr):
+            if id(node) not in self.memo:
+                self.memo[id(node)] = self.visit(node)
+                self.kept.append(node)
+        return self.memo[id(expr)]
 
     def visit(self, expr: Expr) -> int:
         match expr:

@@ -10,7 +10,7 @@ from tinemark.systems.errors import NumberError
 
 MAX_DIGITS = 200
 MAX_EXPONENT = 300
-_DECIMAL = re.compile(r"[+-]?(?:(\d+)(?:\.(\d*))?|\.(\d+))(?:[eE]([+-]?\d{1,6}))?")
+_DECIMAL = re.compile(r"[+-]?(?:(\d+)(?:\.(\d*))?|\.(\d+))(?:[eE]([+-]?\d{1,6}))?", re.ASCII)
 
 
 @dataclass(frozen=True)
@@ -45,6 +45,7 @@ def exact(value: str | int | float | Fraction, *, where: str = "") -> Exact:
     match = _DECIMAL.fullmatch(text) if len(text) <= 4 * MAX_DIGITS else None
     if match is None:
         shown = text if len(text) <= 40 else text[:37] + "..."
+        shown = shown if shown.isprintable() else ascii(shown)[1:-1]
         hint = (
             "write a decimal point, not a comma"
             if "," in text

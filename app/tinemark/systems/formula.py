@@ -148,13 +148,16 @@ class _Reader:
     def column(self, node: ast.expr) -> int:
         return self.shift + node.col_offset
 
-    def build(self, node: ast.expr, depth: int) -> Expr:
+    def count(self, column: int) -> None:
         self.nodes += 1
+        if self.nodes > MAX_NODES:
+            self.fail("the formula is too long", column, f"use at most {MAX_NODES} operations and operands")
+
+    def build(self, node: ast.expr, depth: int) -> Expr:
         column = self.column(node)
         if depth > MAX_DEPTH:
             self.fail("the formula is nested too deeply", column, f"use at most {MAX_DEPTH} levels")
-        if self.nodes > MAX_NODES:
-            self.fail("the formula is too long", column, f"use at most {MAX_NODES} operations and operands")
+        self.count(column)
         match node:
             case ast.Constant():
                 return self.number(node)
@@ -166,7 +169,7 @@ class _Reader:
             case ast.UnaryOp(op=ast.UAdd(), operand=operand):
                 return self.build(operand, depth + 1)
             case ast.BinOp(op=op) if type(op) in _BINARY:
-                return self.binary(node, _BINARY[type(op)], depth)
+                return self.row(node, depth)
             case ast.Call():
                 return self.call(node, depth)
             case ast.IfExp():
@@ -208,8 +211,18 @@ class _Reader:
         hint = f'did you mean "{close[0]}"?' if close else f"known names: {known}"
         self.fail(f'"{shown}" is neither a state nor a parameter', column, hint)
 
-    def binary(self, node: ast.BinOp, fn: str, depth: int) -> Expr:
-        left = self.build(node.left, depth + 1)
+    def row(self, node: ast.BinOp, depth: int) -> Expr:
+        """A sum or product: its terms stand side by side, so a long one is not a deep one."""
+        links = [node]
+        while isinstance(links[-1].left, ast.BinOp) and _alike(links[-1].left.op, node.op):
+            links.append(links[-1].left)
+            self.count(self.column(links[-1].right))
+        result = self.build(links[-1].left, depth + 1)
+        for link in reversed(links):
+            result = self.binary(link, _BINARY[type(link.op)], result, depth)
+        return result
+
+    def binary(self, node: ast.BinOp, fn: str, left: Expr, depth: int) -> Expr:
         right = self.build(node.right, depth + 1)
         column = self.column(node.right)
         if fn == "div" and isinstance(right, Num) and right.value == 0:
@@ -275,6 +288,13 @@ class _Reader:
                 )
             expr = Cond(operands[place], op, operands[place + 1], expr, other)
         return expr
+
+
+def _alike(first: ast.operator, second: ast.operator) -> bool:
+    return any(
+        isinstance(first, pair) and isinstance(second, pair)
+        for pair in ((ast.Add, ast.Sub), (ast.Mult, ast.Div))
+    )
 
 
 def _fold(fn: str, left: Fraction, right: Fraction) -> Fraction | None:
