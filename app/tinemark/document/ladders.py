@@ -25,6 +25,9 @@ STEEPEST = 40
 _LEAST_FOLD_SHARE = 4
 """A fold may stand closer to the first flip than that to the second, but not this many times."""
 
+MAX_LEVEL = 60
+"""Deepest level that a period of at most 2**53 can have, and some more."""
+
 _NEIGHBOURS = 12  # pairs tried on each side of a row
 _PASSES = 4  # what could not join a pair may still fit a longer chain, so the pairs are tried again
 

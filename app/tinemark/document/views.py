@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from fractions import Fraction
 
 from tinemark.density.request import View
+from tinemark.document.rounding import decimal_text
+from tinemark.systems.errors import NumberError
 
 MAX_VIEWS = 200
 
@@ -58,3 +61,69 @@ def _tidy_pair(low: Fraction, high: Fraction) -> tuple[Fraction, Fraction]:
     while step * 10 <= extent / 2_000_000:
         step *= 10
     return round(low / step) * step, round(high / step) * step
+
+
+# Exact texts
+
+MAX_TEXT = 1200
+_DECIMAL = re.compile(r"-?\d{1,700}(?:\.\d{1,500})?")
+_RATIO = re.compile(r"(-?\d{1,600})/(\d{1,600})")
+
+
+@dataclass(frozen=True)
+class ViewText:
+    """A view as texts; see `number_text`."""
+
+    left: str
+    right: str
+    bottom: str
+    top: str
+
+
+def number_text(value: Fraction) -> str:
+    """Exact text of a rational: a decimal where it is a finite one, else numerator/denominator."""
+    rest, twos, fives = value.denominator, 0, 0
+    while rest % 2 == 0:
+        rest, twos = rest // 2, twos + 1
+    while rest % 5 == 0:
+        rest, fives = rest // 5, fives + 1
+    places = max(twos, fives)
+    if rest == 1 and places <= 400:
+        return decimal_text(value, places)
+    return f"{value.numerator}/{value.denominator}"
+
+
+def number_of(text: str) -> Fraction:
+    """The rational of a text that `number_text` wrote.
+
+    Raises
+    ------
+    NumberError
+        The text is neither a decimal nor numerator/denominator, or is longer than any view needs.
+    """
+    ratio = _RATIO.fullmatch(text)
+    if ratio is not None and int(ratio[2]) != 0:
+        return Fraction(int(ratio[1]), int(ratio[2]))
+    if _DECIMAL.fullmatch(text) is None:
+        shown = text if len(text) <= 40 else text[:37] + "..."
+        raise NumberError(f'"{shown}" is not a number', what_to_do="write a decimal such as 3.45")
+    return Fraction(text)
+
+
+def view_text(view: View) -> ViewText:
+    """The view as exact texts."""
+    return ViewText(*(number_text(edge) for edge in (view.left, view.right, view.bottom, view.top)))
+
+
+def view_of(text: ViewText) -> View:
+    """The view of exact texts.
+
+    Raises
+    ------
+    NumberError
+        An edge is no number, or the view has no width or height.
+    """
+    left, right, bottom, top = (number_of(edge) for edge in (text.left, text.right, text.bottom, text.top))
+    if not (left < right and bottom < top):
+        raise NumberError("the view has no width or no height", what_to_do="left < right and bottom < top")
+    return View(left, right, bottom, top)
