@@ -93,7 +93,7 @@ def ball_loops(one: OneMap) -> BallLoops:
 
     source = _RATIONAL.sub(hoist, source)
     # The source is our own print of checked nodes: no text of the user passes through.
-    exec(compile(source, "<ball loops>", "exec"), space)
+    exec(compile(source, "<ball loops>", "exec"), space)  # noqa: S102
     return BallLoops(space["orbit"], space["newton"], space["point"], space["box"])
 
 

@@ -28,18 +28,37 @@ class CycleMap(Protocol):
     one: OneMap
     coincident: float
 
-    def number(self, value: Fraction | float) -> Any: ...
-    def exact(self, value: Any) -> Fraction: ...
-    def offset(self, value: Any, origin: Fraction) -> float: ...
-    def midway(self, a: Any, b: Any) -> Any: ...
-    def newton(self, x: Any, r: Any, period: int, target: float | None) -> CycleStep | None: ...
-    def slopes(self, x: Any, r: Any, period: int) -> tuple[float, float, float, float]: ...
-    def points(self, x: Any, r: Any, count: int) -> Any: ...
-    def observed_offsets(self, points: Any, r: Any, origin: Fraction) -> npt.NDArray[np.float64]: ...
+    def number(self, value: Fraction | float) -> Any:
+        """A parameter or state value in this map's arithmetic."""
+
+    def exact(self, value: Any) -> Fraction:
+        """A number of this map's arithmetic as the rational it is."""
+
+    def offset(self, value: Any, origin: Fraction) -> float:
+        """How far a number lies from an exact one."""
+
+    def midway(self, a: Any, b: Any) -> Any:
+        """The middle of two numbers."""
+
+    def newton(self, x: Any, r: Any, period: int, target: float | None) -> CycleStep | None:
+        """One Newton step for a cycle, at a fixed parameter or with a multiplier as target."""
+
+    def slopes(self, x: Any, r: Any, period: int) -> tuple[float, float, float, float]:
+        """Derivatives of f^p: in x, in r, twice in x, mixed."""
+
+    def points(self, x: Any, r: Any, count: int) -> Any:
+        """Orbit of `count` points, from x on."""
+
+    def observed_offsets(self, points: Any, r: Any, origin: Fraction) -> npt.NDArray[np.float64]:
+        """How far the observed quantity lies from an exact value, at each state."""
+
     def settle(
         self, xs: Sequence[Any], rs: Sequence[Any], transient: int, most: int
-    ) -> tuple[Any, npt.NDArray[np.int64]]: ...
-    def critical_points(self, r: Any) -> list[Any]: ...
+    ) -> tuple[Any, npt.NDArray[np.int64]]:
+        """Run orbits, then look for returns."""
+
+    def critical_points(self, r: Any) -> list[Any]:
+        """Turning points of the map at a parameter value."""
 
 
 @dataclass(frozen=True)
@@ -183,7 +202,7 @@ def crossings_from(
     if flip is not None:
         found.append(crossing_at(cycles, flip, Kind.FLIP))
     high = cycles.offset(start.r, origin)
-    born = _birth(cycles, start, origin, reach)
+    born = birth_flip(cycles, start, origin, reach)
     if born is not None:
         found.append(born)
         high = cycles.offset(born.r, origin)
@@ -195,7 +214,7 @@ def crossings_from(
     return crossings, (min(low, high), max(low, high))
 
 
-def _birth(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Crossing | None:
+def birth_flip(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Crossing | None:
     """The flip at which a cycle of even period appeared, if it did at one."""
     if start.period % 2:
         return None

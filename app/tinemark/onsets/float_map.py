@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
@@ -58,6 +58,20 @@ def orbit(x, r, q, points):
         points[place] = x
         {step}
     return x
+
+
+@jit
+def nearest_turning(x, r, q, n):
+    {unpack}
+    place = 0
+    least = np.inf
+    for count in range(n):
+        {slope}
+        if abs(fx) < least * abs(fxx):
+            least = abs(fx) / abs(fxx)
+            place = count
+        x = f
+    return place
 
 
 @jit
@@ -184,6 +198,13 @@ class FloatMap:
         self.module.orbit(x, r, self.fixed, points)
         return points
 
+    def nearest_turning(self, x: float, r: float, count: int) -> int:
+        """Steps from x to the point, of `count` on its orbit, that is nearest a turning point of the map.
+
+        The distance is |f_x / f_xx|, Newton's estimate: a flat tail of the map does not count as near.
+        """
+        return int(self.module.nearest_turning(x, r, self.fixed, count))
+
     def observed_offsets(self, points: Floats, r: float, origin: Fraction) -> Floats:
         """How far the observed quantity lies from an exact value, at each state."""
         if self.one.observes_state:
@@ -208,14 +229,24 @@ class FloatMap:
         returns = np.zeros((len(xs), len(RETURN_TOLERANCES)), dtype=np.int64)
         tolerances = np.array(RETURN_TOLERANCES) * self.one.scale
         self.module.settle(
-            np.array(xs, dtype=float), np.array(rs, dtype=float), self.fixed, transient, most, tolerances, ends, returns
+            np.array(xs, dtype=float),
+            np.array(rs, dtype=float),
+            self.fixed,
+            transient,
+            most,
+            tolerances,
+            ends,
+            returns,
         )
         return ends, returns
 
     def critical_points(self, r: float, count: int = 257) -> list[float]:
         """Turning points of the map at a parameter value, where its extent shows a change of slope's sign."""
         low, high = self._extent(r)
-        slope = lambda x: self.module.bundle(x, r, self.fixed, 1)[1]  # noqa: E731
+
+        def slope(x: float) -> float:
+            return float(self.module.bundle(x, r, self.fixed, 1)[1])
+
         grid = np.linspace(low, high, count)
         found = []
         left, left_slope = grid[0], slope(grid[0])
@@ -239,7 +270,7 @@ class FloatMap:
         return low - room, high + room
 
 
-def _bisect(slope: Any, left: float, right: float) -> float:
+def _bisect(slope: Callable[[float], float], left: float, right: float) -> float:
     rising = slope(left) < 0
     for _ in range(60):
         middle = 0.5 * (left + right)
@@ -264,6 +295,7 @@ def _module(one: OneMap) -> ModuleType:
     parts = {
         "unpack": [f"q{place} = q[{place}]" for place in range(len(one.fixed))] or ["pass"],
         "all_derivatives": emit([(name, exprs[name]) for name in wanted], bind, "native", "t"),
+        "slope": emit([(name, exprs[name]) for name in ("f", "fx", "fxx")], bind, "native", "t"),
         "step": emit([("x", exprs["f"])], bind, "native", "t"),
         "observe": emit([("f", one.observe)], bind, "native", "t"),
     }

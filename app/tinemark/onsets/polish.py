@@ -16,7 +16,15 @@ from typing import Any
 from flint import arb
 
 from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, in_chunks, precision
-from tinemark.onsets.decimals import GUARD_DIGITS, decimal_places, enclosure_texts, fixed_text, rounded
+from tinemark.onsets.decimals import (
+    GUARD_DIGITS,
+    decimal_places,
+    enclosure_texts,
+    fixed_text,
+    leading_power,
+    rounded,
+)
+from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
 from tinemark.onsets.proofs import (
     TARGETS,
@@ -87,7 +95,7 @@ def settle_onset(
     wanted = Fraction(1, 10) ** (places + 1)
     bits = first_bits(rough, places)
     reason = ""
-    last_step = 0.0
+    last_step: float | None = None
     for _ in range(ATTEMPTS):
         try:
             polished = yield from _polish(loops, rough, float(wanted), bits, reach)
@@ -101,9 +109,7 @@ def settle_onset(
         try:
             correction = polished.correction
             box = box_around(polished.x, polished.r, correction, polished.inverse, bits)
-            proof = yield from prove(
-                loops, rough.kind, rough.period, box, polished.inverse, correction, bits
-            )
+            proof = yield from prove(loops, rough.kind, rough.period, box, polished.inverse, correction, bits)
         except SwitchingTouched as error:
             reason = error.message
             break
@@ -119,7 +125,8 @@ def settle_onset(
             continue
         shown = yield from _shown_state(loops, proof, show_after, bits)
         return Settled(_onset_of(one, rough, proof, digits, places, shown), rough.x, rough.r)
-    return Settled(_estimate_of(one, rough, digits, places, last_step, reason), rough.x, rough.r)
+    half = _half_width(one, rough, wanted, last_step)
+    return Settled(_estimate_of(one, rough, digits, half, reason), rough.x, rough.r)
 
 
 def first_bits(rough: Rough, places: int) -> int:
@@ -199,9 +206,7 @@ def _shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Gener
     return fraction_of(x)
 
 
-def _onset_of(
-    one: OneMap, rough: Rough, proof: Proof, digits: int, places: int, middle: Fraction
-) -> Onset:
+def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int, middle: Fraction) -> Onset:
     texts = enclosure_texts(*proof.parameter, places)
     flip = rough.kind is Kind.FLIP
     return Onset(
@@ -227,16 +232,12 @@ def state_text(value: Fraction, digits: int) -> str:
     return fixed_text(rounded(value, places), places)
 
 
-def _estimate_of(
-    one: OneMap, rough: Rough, digits: int, places: int, last_step: float, reason: str
-) -> Onset:
-    """An onset that could not be proved, with an error estimate from the last correction."""
+def _estimate_of(one: OneMap, rough: Rough, digits: int, half: Fraction, reason: str) -> Onset:
+    """An onset that could not be proved, with an error estimate."""
     flip = rough.kind is Kind.FLIP
-    half = max(Fraction(last_step) * 4, abs(rough.r) * Fraction(1, 10**9))
-    if 0 < last_step:
-        half = max(Fraction(last_step) * 4, Fraction(1, 10) ** places)
-    shown = min(places, decimal_places(half, 2)) if half else places
-    texts = enclosure_texts(rough.r - half, rough.r + half, shown)
+    places = decimal_places(half, 2)
+    texts = enclosure_texts(rough.r - half, rough.r + half, places)
+    hold = leading_power(rough.r) - leading_power(half) if rough.r else 1
     return Onset(
         parameter=one.parameter,
         kind=rough.kind,
@@ -246,8 +247,19 @@ def _estimate_of(
         value=texts.value,
         lower=texts.lower,
         upper=texts.upper,
-        digits=min(digits, max(1, shown + 1)),
+        digits=min(digits, max(1, hold)),
         status=Status.ESTIMATED,
         reason=reason,
-        states=((one.state, state_text(rough.x, 12)),),
+        states=((one.state, state_text(rough.x, min(digits, 12))),),
     )
+
+
+def _half_width(one: OneMap, rough: Rough, wanted: Fraction, polished: float | None) -> Fraction:
+    """Error estimate of an onset without proof: a multiple of what Newton's method would still correct."""
+    size = max(abs(rough.r), Fraction(1, 10**6))
+    if polished is not None and math.isfinite(polished):
+        return max(4 * Fraction(polished), 10 * wanted)
+    # Only doubles got there: a formula that switches at the cycle has no derivative to polish with.
+    step = float_map(one).newton(float(rough.x), float(rough.r), rough.period, TARGETS[rough.kind])
+    shift = Fraction(abs(step.shift_r)) if step is not None else Fraction(0)
+    return max(10 * shift, size / 10**8)

@@ -100,7 +100,12 @@ def inverse_of(u: Any, v: Any, w: Any, z: Any) -> Inverse:
     determinant = (u - 1) * z - v * w
     if not determinant.is_finite() or determinant.contains(0):
         raise NotProved("the equations of the onset are singular there")
-    return Inverse(*(entry.mid() for entry in (z / determinant, -v / determinant, -w / determinant, (u - 1) / determinant)))
+    return Inverse(
+        *(
+            entry.mid()
+            for entry in (z / determinant, -v / determinant, -w / determinant, (u - 1) / determinant)
+        )
+    )
 
 
 def correction_at(
@@ -196,7 +201,10 @@ def _least_period(period: int, first: Any, visited: list[tuple[int, Any]]) -> li
     for steps, point in visited:
         gap = (point - first).abs_lower()
         if not gap > 0:
-            raise NotProved(f"the cycle closes after {steps} steps already: its least period is not {period}", refuted=True)
+            raise NotProved(
+                f"the cycle closes after {steps} steps already: its least period is not {period}",
+                refuted=True,
+            )
         gaps.append(float(gap))
     finding = f"points at least {min(gaps):.2g} apart" if gaps else "a fixed point"
     return [(f"least period exactly {period}", finding)]

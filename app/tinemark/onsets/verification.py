@@ -1,0 +1,73 @@
+"""Checking a printed onset afresh: its own decimals are the claim, and are proved or refused."""
+
+from __future__ import annotations
+
+from collections.abc import Generator
+from fractions import Fraction
+
+from flint import arb
+
+from tinemark.onsets.ball_orbits import ball_loops, ball_of, precision
+from tinemark.onsets.decimals import decimal_places
+from tinemark.onsets.one_map import one_map
+from tinemark.onsets.polish import Rough, first_bits, newton_step
+from tinemark.onsets.proofs import Box, NotProved, Proof, correction_at, prove
+from tinemark.onsets.results import Kind, Onset, Step
+from tinemark.systems.system import System
+
+STATE_UNITS = 50
+"""Half-width of the state's box, in units of its last printed digit."""
+
+
+def verify_onset(system: System, onset: Onset) -> Generator[Step, None, Proof]:
+    """Prove that exactly one onset lies between the printed lower and upper end.
+
+    Nothing is searched for or repaired: the box is the printed one, and the interval Newton test
+    must map that box into itself.
+
+    Returns
+    -------
+    Proof
+        As the generator's value.
+
+    Raises
+    ------
+    NotProved
+        The claim does not hold, or could not be shown; says which part.
+    SwitchingTouched
+        The orbit's box touches a switching surface.
+    """
+    one = one_map(system, onset.parameter)
+    states = dict(onset.states)
+    if one.state not in states:
+        raise NotProved("the claim names no cycle point", refuted=True)
+    period = onset.period_before if onset.kind is Kind.FLIP else onset.period_after
+    if period < 1 or (onset.kind is Kind.FLIP and onset.period_after != 2 * period):
+        raise NotProved("the periods before and after do not belong to such an onset", refuted=True)
+    lower, upper = Fraction(onset.lower), Fraction(onset.upper)
+    if not lower < upper:
+        raise NotProved("the printed interval is empty", refuted=True)
+    text = states[one.state]
+    x, r = Fraction(text), (lower + upper) / 2
+    half_x = STATE_UNITS * _last_unit(text)
+    places = decimal_places((upper - lower) / 2, 6)
+    bits = 2 * first_bits(Rough(onset.kind, period, x, r), places)
+    loops = ball_loops(one)
+    with precision(bits):
+        box = Box(ball_of(x).mid(), ball_of(r).mid(), _below(half_x), _below((upper - lower) / 2))
+    _, _, inverse, _ = yield from newton_step(loops, onset.kind, period, box.x, box.r, bits, "verifying")
+    correction = yield from correction_at(loops, onset.kind, period, box.x, box.r, inverse, bits)
+    proof = yield from prove(loops, onset.kind, period, box, inverse, correction, bits)
+    if onset.kind is Kind.FLIP and proof.criticality is not onset.criticality:
+        raise NotProved(f"the flip is {proof.criticality.value}, not {onset.criticality.value}", refuted=True)
+    return proof
+
+
+def _last_unit(text: str) -> Fraction:
+    _, _, decimals = text.partition(".")
+    return Fraction(1, 10 ** len(decimals))
+
+
+def _below(half: Fraction) -> arb:
+    """A little less than a half-width, so that rounding the middle stays inside the claim."""
+    return ball_of(half * Fraction(999, 1000)).abs_lower()
