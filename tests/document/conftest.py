@@ -1,8 +1,12 @@
-"""Makes the sample onsets beside this file importable."""
+"""Makes the samples beside this file importable, and lets hypothesis draw the same examples in every run."""
 
 from __future__ import annotations
 
 import sys
 from pathlib import Path
 
+from hypothesis import settings
+
 sys.path.insert(0, str(Path(__file__).parent))
+settings.register_profile("the same in every run", derandomize=True, deadline=None)
+settings.load_profile("the same in every run")

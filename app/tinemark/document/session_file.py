@@ -9,7 +9,6 @@ sizes, names and shapes are checked before they are used, and every fault is a
 from __future__ import annotations
 
 import io
-import json
 import stat
 import zipfile
 import zlib
@@ -38,6 +37,7 @@ _UNDAMAGED = "open an undamaged copy"
 Migration = Callable[[dict[str, Any]], dict[str, Any]]
 MIGRATIONS: Mapping[int, Migration] = {}
 """For each old schema version the step to the next one. Version 1 is the first, so there is none yet."""
+OLDEST_VERSION = 1
 
 
 # Saving
@@ -219,9 +219,9 @@ def _checked(content: bytes, file: str) -> PlainSession:
             )
         if version == VERSION:
             return msgspec.json.decode(content, type=PlainSession)
-        if version < 1:
+        if version < OLDEST_VERSION:
             raise _fault(f"{version} is no schema version", file, "version")
-        return msgspec.convert(migrated(json.loads(content), version), type=PlainSession)
+        return msgspec.convert(migrated(msgspec.json.decode(content), version), type=PlainSession)
     except msgspec.ValidationError as error:
         reason, _, place = str(error).partition(" - at `$")
         raise _fault(_lower(reason), file, place.strip("`").removeprefix(".")) from error
@@ -239,7 +239,7 @@ def _lower(text: str) -> str:
 def migrated(
     plain: dict[str, Any],
     version: int,
-    migrations: Mapping[int, Migration] = MIGRATIONS,
+    migrations: Mapping[int, Migration] | None = None,
     present: int = VERSION,
 ) -> dict[str, Any]:
     """Plain data of an older schema version, brought to the present one step by step.
@@ -247,14 +247,18 @@ def migrated(
     Raises
     ------
     SessionFileError
-        A step from that version is not known.
+        A step from that version is not known, or the data are not what it expects.
     """
+    steps = MIGRATIONS if migrations is None else migrations
     while version < present:
-        step = migrations.get(version)
+        step = steps.get(version)
         if step is None:
             raise _fault(f"schema version {version} is not read any more", "", "version")
         version += 1
-        plain = {**step(plain), "version": version}
+        try:
+            plain = {**step(plain), "version": version}
+        except (LookupError, TypeError, ValueError, AttributeError) as error:
+            raise _fault("does not hold what its schema version promises", "", MEMBER) from error
     return plain
 
 
