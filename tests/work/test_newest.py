@@ -23,7 +23,7 @@ def desk():
             stop.wait(60)
         log.put(("stopped" if stop.is_set() else "ended", request))
 
-    desk = NewestWins("test desk", run)
+    desk = NewestWins("test desk", run, threading.Event)
     yield desk, log
     desk.close()
 
@@ -50,7 +50,7 @@ def test_requests_in_between_are_dropped() -> None:
         began.set()
         held.wait(30)
 
-    desk = NewestWins("test desk", run)
+    desk = NewestWins("test desk", run, threading.Event)
     try:
         desk.submit("first")
         assert began.wait(30)

@@ -5,14 +5,27 @@ from __future__ import annotations
 import sys
 import threading
 from collections.abc import Callable
-from typing import Generic, TypeVar
+from typing import Generic, Protocol, TypeVar
 
 from tinemark.work.jobs import Numbers
 
 Request = TypeVar("Request")
 
 
-class NewestWins(Generic[Request]):
+class Stop(Protocol):
+    """What `threading.Event` and `density.stopping.StopFlag` share."""
+
+    def set(self) -> None:
+        """Ask for the end."""
+
+    def is_set(self) -> bool:
+        """Whether the end was asked for."""
+
+
+StopKind = TypeVar("StopKind", bound=Stop)
+
+
+class NewestWins(Generic[Request, StopKind]):
     """Runs one request at a time on a thread of its own; a newer one stops it.
 
     Parameters
@@ -22,15 +35,20 @@ class NewestWins(Generic[Request]):
     run
         run(id, request, stop), on that thread. It returns soon once `stop` is set, and from then
         on tells nobody anything.
+    make_stop
+        Makes the flag of one run.
     """
 
-    def __init__(self, name: str, run: Callable[[int, Request, threading.Event], None]) -> None:
+    def __init__(
+        self, name: str, run: Callable[[int, Request, StopKind], None], make_stop: Callable[[], StopKind]
+    ) -> None:
         self._run = run
+        self._make_stop = make_stop
         self._numbers = Numbers()
         self._change = threading.Condition()
         # All below is guarded by `_change`.
         self._next: tuple[int, Request] | None = None
-        self._stop = threading.Event()
+        self._stop: Stop = make_stop()
         self._busy = False
         self._closed = False
         self._thread = threading.Thread(target=self._work, name=name, daemon=True)
@@ -77,7 +95,7 @@ class NewestWins(Generic[Request]):
                     return
                 (id_, request), self._next = self._next, None
                 self._busy = True
-                self._stop = stop = threading.Event()
+                self._stop = stop = self._make_stop()
             try:
                 self._run(id_, request, stop)
             except Exception:  # noqa: BLE001 - one bad request must not leave the later ones without a thread

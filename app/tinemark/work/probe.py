@@ -143,7 +143,9 @@ class ProbeDesk:
 
     def __init__(self, on_event: Callable[[ProbeEvent], None]) -> None:
         self._on_event = on_event
-        self._desk: NewestWins[ProbeRequest] = NewestWins("probe", self._run)
+        self._desk: NewestWins[ProbeRequest, threading.Event] = NewestWins(
+            "probe", self._run, threading.Event
+        )
 
     def request(self, request: ProbeRequest) -> int:
         """Ask for an orbit; returns the id that its event carries. Any thread, at once."""

@@ -1,0 +1,336 @@
+"""The command line: arguments, and how every run ends. No Qt here.
+
+Exit codes: 0 done; 1 the question has no answer there; 2 bad input, and nothing was written.
+"""
+
+from __future__ import annotations
+
+import argparse
+import difflib
+import os
+import re
+import signal
+import sys
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import NoReturn
+
+from tinemark import __version__
+from tinemark.systems.errors import NoOnsetFound, TinemarkError
+from tinemark.systems.exact import Exact, exact
+
+DONE, NO_ANSWER, BAD_INPUT = 0, 1, 2
+DEFECT, STOPPED, PIPE_CLOSED = 70, 128 + signal.SIGINT, 141
+
+MAX_LEVELS = 40
+MAX_DIGITS = 150
+MAX_BASE_PERIOD = 4096
+MIN_SIDE, MAX_SIDE, MAX_PIXELS = 16, 20_000, 100_000_000
+
+_NEGATIVE = re.compile(r"-(?:\d|\.\d|inf|nan)", re.IGNORECASE)
+
+
+class _UsageError(TinemarkError):
+    """Arguments that cannot be understood."""
+
+
+class _Parser(argparse.ArgumentParser):
+    def error(self, message: str) -> NoReturn:
+        raise _UsageError(message, what_to_do=f"see: {self.prog} --help")
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the program.
+
+    Parameters
+    ----------
+    arguments
+        Without the program's name; None for those of the process.
+
+    Returns
+    -------
+    int
+        The exit code.
+    """
+    words = list(sys.argv[1:] if arguments is None else arguments)
+    _tolerate_plain_terminals()
+    try:
+        code = _dispatch(words)
+        sys.stdout.flush()
+        return code
+    except NoOnsetFound as error:
+        return _end(str(error), NO_ANSWER)
+    except TinemarkError as error:
+        return _end(str(error), BAD_INPUT)
+    except KeyboardInterrupt:
+        return _end("stopped", STOPPED)
+    except BrokenPipeError:
+        # Whoever read our output has had enough; the interpreter must not complain about it either.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return PIPE_CLOSED
+    except SystemExit as end:  # --help and --version
+        return end.code if isinstance(end.code, int) else DONE
+    except Exception as error:  # the last stop: a sentence instead of a page of code
+        if os.environ.get("TINEMARK_TRACEBACK"):
+            raise
+        text = f"a defect of Tinemark ({type(error).__name__}: {error})"
+        return _end(f"{text}; please report it, with TINEMARK_TRACEBACK=1 set for the details", DEFECT)
+
+
+def _end(text: str, code: int) -> int:
+    print(f"tinemark: {text}", file=sys.stderr, flush=True)
+    return code
+
+
+def _tolerate_plain_terminals() -> None:
+    for stream in (sys.stdout, sys.stderr):
+        reconfigure = getattr(stream, "reconfigure", None)
+        if reconfigure is not None:
+            reconfigure(errors="replace")
+
+
+def _dispatch(words: list[str]) -> int:
+    if words and words[0] in COMMANDS:
+        parser, run = COMMANDS[words[0]]
+        # A number may be negative: with a space before it, it is not taken for an option.
+        values = [f" {word}" if _NEGATIVE.match(word) else word for word in words[1:]]
+        run(parser().parse_args(values))
+        return DONE
+    if words and words[0].startswith("-") and words[0] != "--":
+        _top_parser().parse_args(words)
+    return _open(words[1:] if words[:1] == ["--"] else words)
+
+
+def _open(words: list[str]) -> int:
+    """Open the window, or do its job where there is no display."""
+    if len(words) > 1:
+        raise _UsageError(f'"{_short(words[1])}" was not expected', what_to_do="see: tinemark --help")
+    path = Path(words[0]) if words else None
+    if path is not None:
+        _check_names_a_file(words[0])
+    from tinemark import commands
+
+    if not has_display():
+        commands.without_display(path)
+        return DONE
+    # Whatever is wrong with the file is said here, before a window appears.
+    session = commands.session_of(path) if path is not None else None
+    del session
+    try:
+        from tinemark.window.app import open_window
+    except ImportError as error:
+        raise TinemarkError(
+            f"the window cannot be opened ({error})",
+            what_to_do="start with scripts/run.py, which names what is missing",
+        ) from error
+    return int(open_window(path))
+
+
+def has_display() -> bool:
+    """Whether there is a screen to open a window on."""
+    if sys.platform in ("win32", "darwin"):
+        return True
+    return bool(os.environ.get("DISPLAY") or os.environ.get("WAYLAND_DISPLAY"))
+
+
+def _check_names_a_file(word: str) -> None:
+    try:
+        there = Path(word).exists()
+    except (OSError, ValueError):
+        there = False
+    if there:
+        return
+    close = difflib.get_close_matches(word[:60], COMMANDS, 1)
+    hint = f'did you mean "{close[0]}"?' if close else "commands: " + ", ".join(COMMANDS)
+    raise _UsageError(f'"{_short(word)}" is neither a file nor a command', what_to_do=hint)
+
+
+def _short(text: str) -> str:
+    shown = text.encode("unicode_escape").decode("ascii") if not text.isprintable() else text
+    return shown if len(shown) <= 60 else shown[:57] + "..."
+
+
+# Arguments
+
+
+def _top_parser() -> argparse.ArgumentParser:
+    parser = _Parser(
+        prog="tinemark",
+        usage="tinemark [FILE]\n       tinemark COMMAND ...",
+        description="Where a periodically operated system stops repeating, as proved numbers.",
+        epilog="commands: "
+        + "; ".join(f"{name} ({first_line(run)})" for name, (_, run) in COMMANDS.items())
+        + ". Each has --help of its own. Without a command the window opens, with the demo or with FILE.",
+        allow_abbrev=False,
+    )
+    parser.add_argument("--version", action="version", version=f"tinemark {__version__}")
+    return parser
+
+
+def first_line(function: Callable[..., object]) -> str:
+    """First line of a function's docstring, as a phrase."""
+    line = (function.__doc__ or "").partition("\n")[0].rstrip(".")
+    return line[:1].lower() + line[1:]
+
+
+def _parser(name: str, description: str) -> argparse.ArgumentParser:
+    parser = _Parser(prog=f"tinemark {name}", description=description, allow_abbrev=False)
+    if name != "inspect":
+        parser.add_argument(
+            "system", metavar="SYSTEM", help="name of a built-in system, or path of a TOML file"
+        )
+    return parser
+
+
+def _add_output(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("--digits", default="20", help="significant digits wanted (default 20)")
+    parser.add_argument(
+        "--json", metavar="FILE", help="also write the onsets as JSON; - for standard output only"
+    )
+
+
+def _ladder_parser() -> argparse.ArgumentParser:
+    parser = _parser("ladder", "Follow a cascade of period doublings level by level.")
+    parser.add_argument("--parameter", metavar="P", help="swept parameter (default: the diagram's)")
+    parser.add_argument(
+        "--from", dest="start", metavar="A", help="where to start (default: the parameter's range)"
+    )
+    parser.add_argument(
+        "--to", dest="stop", metavar="B", help="where to stop (default: the parameter's range)"
+    )
+    parser.add_argument(
+        "--base-period", default="1", metavar="N", help="period that splits first (default 1)"
+    )
+    parser.add_argument("--levels", default="8", metavar="N", help="how many onsets (default 8)")
+    _add_output(parser)
+    return parser
+
+
+def _refine_parser() -> argparse.ArgumentParser:
+    parser = _parser("refine", "Find the onset nearest to a place, as a click in the diagram does.")
+    parser.add_argument("--near", required=True, metavar="VALUE[,OBSERVED]", help="where the click falls")
+    parser.add_argument(
+        "--window", required=True, metavar="WIDTH", help="width of the parameter range searched"
+    )
+    _add_output(parser)
+    return parser
+
+
+def _picture_parser() -> argparse.ArgumentParser:
+    parser = _parser("picture", "Write the diagram as a PNG picture.")
+    parser.add_argument("--range", nargs=2, required=True, metavar=("A", "B"), help="ends of the sweep")
+    parser.add_argument("--size", default="1600x1000", metavar="WxH", help="pixels (default 1600x1000)")
+    parser.add_argument("-o", "--output", required=True, metavar="FILE.png", help="file to write")
+    return parser
+
+
+def _inspect_parser() -> argparse.ArgumentParser:
+    parser = _parser("inspect", "Say what a file of Tinemark's is, or what is wrong with it and where.")
+    parser.add_argument("file", metavar="FILE")
+    return parser
+
+
+def _ladder(given: argparse.Namespace) -> None:
+    """Follow a cascade."""
+    from tinemark import commands
+
+    commands.ladder(
+        commands.LadderOptions(
+            system=given.system,
+            parameter=given.parameter,
+            start=None if given.start is None else _number(given.start, "--from"),
+            stop=None if given.stop is None else _number(given.stop, "--to"),
+            base_period=_whole(given.base_period, "--base-period", MAX_BASE_PERIOD),
+            levels=_whole(given.levels, "--levels", MAX_LEVELS),
+            digits=_whole(given.digits, "--digits", MAX_DIGITS),
+            json=given.json,
+        )
+    )
+
+
+def _refine(given: argparse.Namespace) -> None:
+    """Find the onset nearest to a place."""
+    from tinemark import commands
+
+    near, *observed = given.near.split(",")
+    if len(observed) > 1:
+        raise _UsageError(
+            f'"{_short(given.near)}" is not VALUE or VALUE,OBSERVED',
+            where="--near",
+            what_to_do="write 3.45 or 3.45,0.85",
+        )
+    window = _number(given.window, "--window")
+    if window.fraction <= 0:
+        raise _UsageError("the width must be above zero", where="--window")
+    commands.refine(
+        commands.RefineOptions(
+            system=given.system,
+            near=_number(near, "--near"),
+            observed=_number(observed[0], "--near") if observed else None,
+            window=window,
+            digits=_whole(given.digits, "--digits", MAX_DIGITS),
+            json=given.json,
+        )
+    )
+
+
+def _picture(given: argparse.Namespace) -> None:
+    """Write the diagram as a PNG."""
+    from tinemark import commands
+
+    start, stop = (_number(text, "--range") for text in given.range)
+    if start.fraction == stop.fraction:
+        raise _UsageError("both ends are the same", where="--range", what_to_do="give two different ends")
+    output = Path(given.output)
+    if output.suffix.lower() != ".png":
+        raise _UsageError(
+            "a picture is written as PNG", where="--output", what_to_do="name the file FILE.png"
+        )
+    commands.picture(commands.PictureOptions(given.system, start, stop, _size(given.size), output))
+
+
+def _inspect(given: argparse.Namespace) -> None:
+    """Say what a file is."""
+    from tinemark import commands
+
+    commands.inspect(Path(given.file))
+
+
+def _number(text: str, option: str) -> Exact:
+    return exact(text, where=option)
+
+
+def _whole(text: str, option: str, most: int) -> int:
+    if not re.fullmatch(r"\d{1,9}", text.strip()) or not 1 <= int(text) <= most:
+        raise _UsageError(
+            f'"{_short(text.strip())}" is not a whole number from 1 to {most}',
+            where=option,
+            what_to_do="change it",
+        )
+    return int(text)
+
+
+def _size(text: str) -> tuple[int, int]:
+    match = re.fullmatch(r"(\d{1,6})[xX](\d{1,6})", text.strip())
+    if match is None:
+        raise _UsageError(
+            f'"{_short(text)}" is not a size', where="--size", what_to_do="write it as 1600x1000"
+        )
+    width, height = int(match[1]), int(match[2])
+    if not (
+        min(width, height) >= MIN_SIDE and max(width, height) <= MAX_SIDE and width * height <= MAX_PIXELS
+    ):
+        raise _UsageError(
+            f"{width} x {height} pixels cannot be drawn",
+            where="--size",
+            what_to_do=f"stay between {MIN_SIDE} and {MAX_SIDE} a side, and below a hundred million in all",
+        )
+    return width, height
+
+
+COMMANDS: dict[str, tuple[Callable[[], argparse.ArgumentParser], Callable[[argparse.Namespace], None]]] = {
+    "ladder": (_ladder_parser, _ladder),
+    "refine": (_refine_parser, _refine),
+    "picture": (_picture_parser, _picture),
+    "inspect": (_inspect_parser, _inspect),
+}
