@@ -1,0 +1,299 @@
+"""The probe: the orbit at one parameter value, as a time series and as a return plot."""
+
+from __future__ import annotations
+
+import numpy as np
+import numpy.typing as npt
+import pyqtgraph as pg
+from PySide6.QtCore import QEvent, Qt, Signal
+from PySide6.QtGui import QColor
+from PySide6.QtWidgets import (
+    QComboBox,
+    QHBoxLayout,
+    QLabel,
+    QLineEdit,
+    QSplitter,
+    QStackedLayout,
+    QToolButton,
+    QVBoxLayout,
+    QWidget,
+)
+
+from tinemark.systems.errors import NumberError
+from tinemark.systems.exact import exact, fraction_text
+from tinemark.window.panel_plot import PanelPlot, line_pen
+from tinemark.window.theme import current_theme, mono_font
+from tinemark.work.probe import ProbeOrbit
+
+Floats = npt.NDArray[np.float64]
+SETTLED_STEPS = 60
+EARLY_STEPS = 60
+EMPTY = (
+    "No probe yet.\n"
+    "Click in the diagram with the probe tool, or type a parameter value above and press Enter."
+)
+
+
+class ProbePanel(QWidget):
+    """Shows one orbit.
+
+    Signals
+    -------
+    probe_closed
+        The user has finished with the probe.
+    value_entered : str
+        A parameter value typed into the panel, valid as an exact decimal.
+    """
+
+    probe_closed = Signal()
+    value_entered = Signal(str)
+
+    def __init__(self, parent: QWidget | None = None) -> None:
+        super().__init__(parent)
+        self.setWindowTitle("Probe")
+        self.setAccessibleName("Probe")
+        self._orbit: ProbeOrbit | None = None
+        self._words = ""
+        self._build_bar()
+        self.series = PanelPlot(
+            across="step", up="observed", whole_across=True, name="Time series of the orbit"
+        )
+        self.returns = PanelPlot(across="this step", up="next step", name="Return plot of the orbit")
+        self._plots = QSplitter(Qt.Orientation.Horizontal)
+        self._plots.setChildrenCollapsible(False)
+        self._plots.addWidget(self.series)
+        self._plots.addWidget(self.returns)
+        self._plots.setStretchFactor(0, 3)
+        self._plots.setStretchFactor(1, 2)
+        self._empty = QLabel(EMPTY)
+        self._empty.setAlignment(Qt.AlignmentFlag.AlignCenter)
+        self._empty.setWordWrap(True)
+        self._empty.setProperty("rank", "second")
+        self._stack = QStackedLayout()
+        self._stack.addWidget(self._empty)
+        self._stack.addWidget(self._plots)
+        outer = QVBoxLayout(self)
+        outer.setContentsMargins(10, 8, 10, 8)
+        outer.setSpacing(6)
+        outer.addLayout(self._bar)
+        outer.addLayout(self._stack, 1)
+
+    def _build_bar(self) -> None:
+        self._bar = QHBoxLayout()
+        self._bar.setSpacing(8)
+        self.name = QLabel("Parameter value")
+        self.value = QLineEdit()
+        self.value.setFont(mono_font())
+        self.value.setAccessibleName("Parameter value of the probe")
+        self.value.setPlaceholderText("for example 3.5")
+        self.value.setMaximumWidth(self.value.fontMetrics().horizontalAdvance("0" * 24))
+        self.value.returnPressed.connect(self._enter_value)
+        self.value.textEdited.connect(lambda: self._mark_value(""))
+        self.name.setBuddy(self.value)
+        self.words = QLabel()
+        self.words.setTextInteractionFlags(Qt.TextInteractionFlag.TextSelectableByMouse)
+        self.words.setProperty("rank", "second")
+        self.part = QComboBox()
+        self.part.addItem("settled orbit", "settled")
+        self.part.addItem("from the start", "early")
+        self.part.addItem("all steps", "all")
+        self.part.setAccessibleName("Steps shown")
+        self.part.currentIndexChanged.connect(self._draw)
+        self.close_button = QToolButton()
+        self.close_button.setText("Close probe")
+        self.close_button.clicked.connect(self.probe_closed)
+        for widget in (self.name, self.value):
+            self._bar.addWidget(widget)
+        self._bar.addWidget(self.words, 1)
+        for widget in (self.part, self.close_button):
+            self._bar.addWidget(widget)
+
+    def show_orbit(
+        self,
+        orbit: ProbeOrbit | None,
+        *,
+        parameter: str = "",
+        value: str = "",
+        observe: str = "",
+        state: str = "",
+        words: str = "",
+    ) -> None:
+        """Show an orbit, or the empty state for None.
+
+        Parameters
+        ----------
+        parameter, value
+            Name and decimal text of the swept parameter.
+        observe, state
+            Names for the axes: the observed quantity, and the state of a one-state map.
+        words
+            A sentence on period and multiplier, where they are known; without an orbit, why there is none.
+        """
+        self._orbit = orbit
+        if parameter:
+            self.name.setText(parameter)
+        shown = value or (fraction_text(orbit.parameter_value, 30) if orbit is not None else "")
+        if orbit is not None and not self.value.hasFocus():
+            self.value.setText(shown)
+            self._mark_value("")
+        self._words = words
+        self._names = (observe or "observed", state or observe or "observed")
+        self._draw()
+
+    def _draw(self) -> None:
+        orbit = self._orbit
+        if orbit is None:
+            self._stack.setCurrentWidget(self._empty)
+            # Without an orbit, words say why there is none.
+            self._empty.setText(self._words or EMPTY)
+            self.words.clear()
+            return
+        self._stack.setCurrentWidget(self._plots)
+        observed, escaped = finite_part(np.asarray(orbit.observed, dtype=np.float64))
+        one_state = orbit.states.ndim == 2 and orbit.states.shape[1] == 1
+        stepped = finite_part(np.asarray(orbit.states[:, 0], dtype=np.float64))[0] if one_state else observed
+        part = steps_shown(len(observed), str(self.part.currentData()))
+        observe, state = self._names
+        self.series.set_labels(across="step", up=observe)
+        across = state if one_state else observe
+        self.returns.set_labels(across=f"{across} at step n", up=f"{across} at step n + 1")
+        self._draw_series(observed, part)
+        self._draw_returns(stepped[part.start : part.stop], orbit.map_curve if one_state else None)
+        said = [self._words] if self._words else []
+        if escaped:
+            said.append(f"The orbit escapes after {len(observed)} steps.")
+        self.words.setText(" ".join(said))
+
+    def _draw_series(self, observed: Floats, part: range) -> None:
+        theme = current_theme()
+        plot = self.series.plotItem
+        plot.clear()
+        values = observed[part.start : part.stop]
+        steps = np.arange(part.start, part.stop, dtype=np.float64)
+        if not len(values):
+            return
+        dense = len(values) > 200
+        plot.plot(
+            steps, values, pen=line_pen(theme.edge, 1.0, alpha=0.35 if dense else 0.8), antialias=not dense
+        )
+        plot.plot(
+            steps,
+            values,
+            pen=None,
+            symbol="o",
+            symbolSize=3 if dense else 6,
+            antialias=True,
+            symbolPen=None,
+            symbolBrush=QColor(theme.accent),
+        )
+        _fit(self.series, float(steps[0]), float(steps[-1]), values)
+
+    def _draw_returns(self, values: Floats, curve: tuple[Floats, Floats] | None) -> None:
+        theme = current_theme()
+        plot = self.returns.plotItem
+        plot.clear()
+        if not len(values):
+            return
+        reach = [values]
+        if curve is not None:
+            across, up = (np.asarray(side, dtype=np.float64) for side in curve)
+            keep = np.isfinite(across) & np.isfinite(up)
+            across, up = across[keep], up[keep]
+            plot.plot(across, up, pen=line_pen(theme.text, 1.6), antialias=True)
+            reach += [across, up]
+        low, high = _span(np.concatenate(reach))
+        plot.plot([low, high], [low, high], pen=line_pen(theme.edge, 1.0, dashed=True), antialias=True)
+        if curve is not None and len(values) > 1:
+            plot.plot(*cobweb(values), pen=line_pen(theme.accent, 1.2, alpha=0.75))
+        if len(values) > 1:
+            plot.plot(
+                values[:-1],
+                values[1:],
+                pen=None,
+                symbol="o",
+                symbolSize=3 if len(values) > 200 else 5,
+                antialias=True,
+                symbolPen=None,
+                symbolBrush=QColor(theme.accent),
+            )
+        self.returns.setRange(xRange=(low, high), yRange=(low, high), padding=0.03)
+
+    def _enter_value(self) -> None:
+        try:
+            typed = exact(self.value.text())
+        except NumberError as error:
+            self._mark_value(str(error))
+            return
+        self._mark_value("")
+        self.value_entered.emit(typed.text)
+
+    def _mark_value(self, trouble: str) -> None:
+        self.value.setProperty("invalid", bool(trouble))
+        self.value.style().unpolish(self.value)
+        self.value.style().polish(self.value)
+        self.words.setProperty("rank", "error" if trouble else "second")
+        self.words.style().unpolish(self.words)
+        self.words.style().polish(self.words)
+        if trouble:
+            self.words.setText(trouble)
+        elif self.words.text() != self._words:
+            self.words.setText(self._words)
+
+    def changeEvent(self, event: QEvent) -> None:
+        """Redraw in the new theme."""
+        super().changeEvent(event)
+        if event.type() in (QEvent.Type.PaletteChange, QEvent.Type.FontChange) and hasattr(self, "_stack"):
+            self.value.setFont(mono_font())
+            self.series.redress()
+            self.returns.redress()
+            self._draw()
+
+
+def finite_part(values: Floats) -> tuple[Floats, bool]:
+    """The values before the first that is no finite number, and whether there was one."""
+    bad = np.flatnonzero(~np.isfinite(values))
+    return (values[: bad[0]], True) if len(bad) else (values, False)
+
+
+def steps_shown(steps: int, part: str) -> range:
+    """Steps to draw: the "settled" end of the orbit, its "early" part, or "all"."""
+    if part == "early":
+        return range(min(steps, EARLY_STEPS))
+    if part == "settled":
+        return range(max(0, steps - SETTLED_STEPS), steps)
+    return range(steps)
+
+
+def cobweb(values: Floats) -> tuple[Floats, Floats]:
+    """Corners of the cobweb path: up to the curve, across to the diagonal, and so on.
+
+    Parameters
+    ----------
+    values
+        Orbit of a one-state map, shape (n,).
+
+    Returns
+    -------
+    across, up
+        Shapes (2n - 1,).
+    """
+    across = np.repeat(values, 2)[: 2 * len(values) - 1]
+    up = np.repeat(values, 2)[1:]
+    return across, up
+
+
+def _span(values: Floats) -> tuple[float, float]:
+    low, high = float(values.min()), float(values.max())
+    if high <= low:
+        pad = abs(low) * 0.1 or 1.0
+        return low - pad, high + pad
+    return low, high
+
+
+def _fit(plot: pg.PlotWidget, left: float, right: float, values: Floats) -> None:
+    low, high = _span(values)
+    # A steady orbit that has settled to its last digit is a level line, not noise filling the plot.
+    floor = 1e-3 * max(abs(low), abs(high))
+    if high - low < floor:
+        low, high = (low + high - floor) / 2, (low + high + floor) / 2
+    plot.setRange(xRange=(left, max(right, left + 1)), yRange=(low, high), padding=0.06)

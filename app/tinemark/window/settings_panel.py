@@ -1,0 +1,269 @@
+"""How the diagram is drawn: sweep rule, settling, starts, quality and colours, each in plain words."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import ArrayLike
+from PySide6.QtCore import QEvent, QSize, Qt, Signal
+from PySide6.QtGui import QIcon, QImage, QPixmap, QWheelEvent
+from PySide6.QtWidgets import QFrame, QLabel, QPushButton, QScrollArea, QSpinBox, QVBoxLayout, QWidget
+
+from tinemark.density.request import SweepRule
+from tinemark.document.session import BUDGETS, TONES, PictureSettings
+from tinemark.window.field_editors import QuietCombo
+from tinemark.window.theme import current_theme, heading_font
+
+MOST_TRANSIENT = 1_000_000
+MOST_STARTS = 64
+SWATCH = QSize(72, 12)
+
+RULE_WORDS = {
+    SweepRule.FRESH: "Each column begins at the system's own start values, whatever its neighbours do.",
+    SweepRule.FORWARD: "Each column goes on from the one to its left, as in a slow sweep upwards.",
+    SweepRule.BACKWARD: "Each column goes on from the one to its right, as in a slow sweep downwards.",
+    SweepRule.SEVERAL: "Each column is drawn from several scattered starts, so that rival attractors show.",
+}
+TONE_NAMES = {"linear": "Linear", "log": "Logarithmic", "equalised": "Equalised"}
+TONE_WORDS = {
+    "linear": "Colour in proportion to how often a value is visited.",
+    "log": "Lifts faint branches: equal steps of colour for equal factors of visits.",
+    "equalised": "Spreads all counts evenly over the colours and shows the most.",
+}
+
+
+def theme_palettes() -> Mapping[str, ArrayLike]:
+    """The colour maps of the density room: name -> table of 256 colours."""
+    from tinemark.density.tone import palettes
+
+    return palettes()
+
+
+class CalmSpin(QSpinBox):
+    """A number that does not change under a passing wheel, and tells of a change once it is complete."""
+
+    def __init__(self, name: str, low: int, high: int, step: int) -> None:
+        super().__init__()
+        self.setAccessibleName(name)
+        self.setRange(low, high)
+        self.setSingleStep(step)
+        self.setButtonSymbols(QSpinBox.ButtonSymbols.NoButtons)
+        self.setKeyboardTracking(False)
+        self.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
+
+    def wheelEvent(self, event: QWheelEvent) -> None:
+        """Turn only with the focus."""
+        if self.hasFocus():
+            super().wheelEvent(event)
+        else:
+            event.ignore()
+
+
+class SettingsPanel(QScrollArea):
+    """Shows and changes `document.session.PictureSettings`.
+
+    Signals
+    -------
+    settings_changed : PictureSettings
+        What the user has chosen, whole.
+    """
+
+    settings_changed = Signal(object)
+
+    def __init__(
+        self,
+        parent: QWidget | None = None,
+        *,
+        load_palettes: Callable[[], Mapping[str, ArrayLike]] = theme_palettes,
+    ) -> None:
+        super().__init__(parent)
+        self.setWindowTitle("Picture settings")
+        self.setAccessibleName("Picture settings")
+        self.setWidgetResizable(True)
+        self.setHorizontalScrollBarPolicy(Qt.ScrollBarPolicy.ScrollBarAlwaysOff)
+        self.setFocusPolicy(Qt.FocusPolicy.NoFocus)
+        self._settings = PictureSettings()
+        self._load_palettes = load_palettes
+        self._palettes: Mapping[str, ArrayLike] | None = None
+        page = QWidget()
+        self._page = QVBoxLayout(page)
+        self._page.setContentsMargins(10, 8, 10, 8)
+        self._page.setSpacing(4)
+        self.setWidget(page)
+        self._build()
+        self.show_settings(self._settings)
+
+    def _build(self) -> None:
+        self._heading("Orbits")
+        self.rule = self._combo("Sweep rule", [(rule.value.capitalize(), rule.name) for rule in SweepRule])
+        self.rule_words = self._words()
+        self.starts = CalmSpin("Starts in each column", 1, MOST_STARTS, 1)
+        self._field("Starts in each column", self.starts)
+        self.starts_words = self._words("Only the rule “several starts” has more than one.")
+        self.transient = CalmSpin("Steps thrown away first", 0, MOST_TRANSIENT, 100)
+        self._field("Steps thrown away first", self.transient)
+        self._words("An orbit needs time to settle, most of all near a split. More steps draw it crisper.")
+        self._heading("Quality")
+        self.budget = self._combo("Picture improves up to", [(_budget_words(name), name) for name in BUDGETS])
+        self._words("The first picture appears at once in every case; it gets finer while the view rests.")
+        self._heading("Colour")
+        self.tone = self._combo("Tone", [(TONE_NAMES.get(tone, tone.capitalize()), tone) for tone in TONES])
+        self.tone_words = self._words()
+        self.palette_choice = self._combo("Colour map", [("As the theme", "")])
+        self.palette_choice.setIconSize(SWATCH)
+        self._words("All maps are even to the eye and safe for colour-blind readers.")
+        self._page.addSpacing(8)
+        self.reset_button = QPushButton("Back to the defaults")
+        self.reset_button.clicked.connect(self._reset)
+        self._page.addWidget(self.reset_button, 0, Qt.AlignmentFlag.AlignLeft)
+        self._page.addStretch(1)
+        for combo in (self.rule, self.budget, self.tone, self.palette_choice):
+            combo.activated.connect(self._changed)
+        for spin in (self.starts, self.transient):
+            spin.valueChanged.connect(self._changed)
+
+    def _heading(self, words: str) -> None:
+        if self._page.count():
+            self._page.addSpacing(10)
+            rule = QFrame()
+            rule.setProperty("rank", "rule")
+            self._page.addWidget(rule)
+            self._page.addSpacing(4)
+        label = QLabel(words)
+        label.setFont(heading_font())
+        self._page.addWidget(label)
+
+    def _field(self, words: str, editor: QWidget) -> None:
+        label = QLabel(words)
+        label.setBuddy(editor)
+        self._page.addSpacing(4)
+        self._page.addWidget(label)
+        self._page.addWidget(editor)
+
+    def _combo(self, words: str, items: list[tuple[str, str]]) -> QuietCombo:
+        combo = QuietCombo()
+        combo.setAccessibleName(words)
+        combo.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
+        for shown, data in items:
+            combo.addItem(shown, data)
+        self._field(words, combo)
+        return combo
+
+    def _words(self, text: str = "") -> QLabel:
+        label = QLabel(text)
+        label.setWordWrap(True)
+        label.setProperty("rank", "second")
+        self._page.addWidget(label)
+        return label
+
+    # -- what others ask -------------------------------------------------------------------
+
+    def show_settings(self, settings: PictureSettings) -> None:
+        """Show settings; nothing is emitted."""
+        self._settings = settings
+        editors = (self.rule, self.starts, self.transient, self.budget, self.tone, self.palette_choice)
+        for editor in editors:
+            editor.blockSignals(True)
+        _select(self.rule, settings.rule.name)
+        self.starts.setValue(settings.starts)
+        self.transient.setValue(settings.transient_steps)
+        _select(self.budget, settings.budget)
+        _select(self.tone, settings.tone)
+        if settings.palette:
+            self._fill_palettes()
+        _select(self.palette_choice, settings.palette)
+        for editor in editors:
+            editor.blockSignals(False)
+        self._refresh()
+
+    @property
+    def settings(self) -> PictureSettings:
+        """What is shown."""
+        return self._settings
+
+    # -- inside ----------------------------------------------------------------------------
+
+    def _changed(self) -> None:
+        rule = SweepRule[str(self.rule.currentData())]
+        chosen = replace(
+            self._settings,
+            rule=rule,
+            starts=self._starts_for(rule),
+            transient_steps=self.transient.value(),
+            budget=str(self.budget.currentData()),
+            tone=str(self.tone.currentData()),
+            palette=str(self.palette_choice.currentData() or ""),
+        )
+        if chosen != self._settings:
+            self.show_settings(chosen)
+            self.settings_changed.emit(chosen)
+
+    def _starts_for(self, rule: SweepRule) -> int:
+        if rule is not SweepRule.SEVERAL:
+            return 1
+        fresh = self._settings.rule is not SweepRule.SEVERAL
+        return max(self.starts.value(), 8) if fresh else self.starts.value()
+
+    def _reset(self) -> None:
+        fresh = PictureSettings()
+        if fresh != self._settings:
+            self.show_settings(fresh)
+            self.settings_changed.emit(fresh)
+
+    def _refresh(self) -> None:
+        several = self._settings.rule is SweepRule.SEVERAL
+        self.rule_words.setText(RULE_WORDS[self._settings.rule])
+        self.tone_words.setText(TONE_WORDS.get(self._settings.tone, ""))
+        self.starts.setEnabled(several)
+        self.starts_words.setVisible(not several)
+        self.reset_button.setEnabled(self._settings != PictureSettings())
+
+    def showEvent(self, event: QEvent) -> None:
+        """The colour maps are read when they are first to be seen, not at the start of the program."""
+        super().showEvent(event)
+        self._fill_palettes()
+
+    def _fill_palettes(self) -> None:
+        if self._palettes is not None:
+            return
+        self._palettes = self._load_palettes()
+        chosen = self._settings.palette
+        self.palette_choice.blockSignals(True)
+        for name, table in self._palettes.items():
+            self.palette_choice.addItem(swatch(table), name.replace("_", " ").capitalize(), name)
+        self._paint_theme_swatch()
+        _select(self.palette_choice, chosen)
+        self.palette_choice.blockSignals(False)
+
+    def _paint_theme_swatch(self) -> None:
+        table = (self._palettes or {}).get(current_theme().picture)
+        if table is not None:
+            self.palette_choice.setItemIcon(0, swatch(table))
+
+    def changeEvent(self, event: QEvent) -> None:
+        """The theme's own colour map changes with it."""
+        super().changeEvent(event)
+        if event.type() == QEvent.Type.PaletteChange and hasattr(self, "reset_button"):
+            self._paint_theme_swatch()
+
+
+def swatch(table: ArrayLike) -> QIcon:
+    """A strip of a colour map, lowest counts at the left."""
+    colours = np.asarray(table)[:, :3]
+    if colours.dtype.kind == "f":
+        colours = np.rint(colours * 255)
+    strip = np.ascontiguousarray(np.repeat(colours[None].astype(np.uint8), SWATCH.height(), axis=0))
+    height, width = strip.shape[:2]
+    image = QImage(strip.tobytes(), width, height, 3 * width, QImage.Format.Format_RGB888).copy()
+    return QIcon(QPixmap.fromImage(image.scaled(SWATCH * 2)))
+
+
+def _budget_words(name: str) -> str:
+    return f"{name.capitalize()}: {BUDGETS[name]:,} steps a column".replace(",", "\u2009")
+
+
+def _select(combo: QuietCombo, data: str) -> None:
+    place = combo.findData(data)
+    combo.setCurrentIndex(max(place, 0))
