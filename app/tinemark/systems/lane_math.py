@@ -3,12 +3,14 @@
 A loop over lanes becomes vector code only when nothing in it branches or calls a library. Each
 function here is one straight line: argument reduction in two or three fused parts (Cody and
 Waite, 1980), a polynomial fitted by Remez's exchange, and selections at the end for the special
-cases. Errors against exact values stay below 1 unit in the last place for exp and log and below 2 for the
-others, 3 for tan; tests/density/test_lane_math.py measures them.
+cases. Errors against exact values stay below 1 unit in the last place for exp and log, below 2 for
+the others, 3 for tan; the angle functions have |x|*1e-33 on top, which shows only beside their
+zeros. tests/density/test_lane_math.py measures all of it.
 
-Not-a-number goes in and comes out, infinities behave as in the C library, and subnormal numbers
-are kept. One limit differs from a library: the angle functions give nan beyond 2**51, where the
-spacing of doubles is a sizeable part of a turn; an orbit out there counts as escaped.
+Not-a-number goes in and comes out, and infinities behave as in the C library. Two limits differ
+from a library's: exp gives 0 below the smallest normal number, and the angle functions give nan
+beyond 2**51, where the spacing of doubles is a sizeable part of a turn; an orbit out there counts
+as escaped.
 
 The compiler must neither re-associate nor fuse what is written here, so these functions carry no
 fast-math flags whatever the calling kernel allows itself.
@@ -22,6 +24,7 @@ from typing import Any, TypeAlias, TypeVar
 
 import numba
 import numpy as np
+from llvmlite import ir
 from numba.core import types
 from numba.extending import intrinsic
 
@@ -58,7 +61,29 @@ def _fma_fused(_typing, _a, _b, _c):  # type: ignore[no-untyped-def]
     return signature, generate
 
 
+def _truncated_slowly(x: float) -> np.uint32:
+    return np.uint32(int(x) % 2**32) if -2147483649.0 < x < 2147483648.0 else np.uint32(0x80000000)
+
+
+@intrinsic
+def _truncated_fused(_typing, _x):  # type: ignore[no-untyped-def]
+    signature = types.uint32(types.float64)
+
+    def generate(_context, builder, _signature, arguments):  # type: ignore[no-untyped-def]
+        whole = builder.fptosi(arguments[0], ir.IntType(32))
+        # Out of range the conversion gives no value at all in the compiler's eyes; frozen, it is some
+        # number, which the caller's clamp then brings inside whatever it is.
+        frozen = ir.instructions.Instruction(builder.block, whole.type, "freeze", [whole])
+        builder._insert(frozen)  # noqa: SLF001 - llvmlite has no builder method for it
+        return frozen
+
+    return signature, generate
+
+
 _fma: Any = _fma_exactly if numba.config.DISABLE_JIT else _fma_fused
+lane_whole: Any = _truncated_slowly if numba.config.DISABLE_JIT else _truncated_fused
+"""Truncation to an unsigned 32-bit number. Negative, huge and undefined arguments give some large
+number, or 0 for nan on some processors: clamp the result before it is used as an index."""
 
 # Adding this rounds to a whole number, which then stands in the low bits of the sum.
 _ROUND = 6755399441055744.0  # 1.5 * 2**52
@@ -78,7 +103,7 @@ _LOG2_E = 1.4426950408889634
 _LN2, _LN2_REST = 0.6931471805599453, 2.3190468138462996e-17
 _LN2_SHORT, _LN2_SHORT_REST = 0.6931471805592082, 7.371002565167799e-13  # short one: 40 bits
 _PI_INVERSE = 0.3183098861837907
-_PI, _PI_REST, _PI_LAST = 3.141592653589793, 1.2246467991473532e-16, -2.9947698097183397e-33
+_PI, _PI_REST = 3.141592653589793, 1.2246467991473532e-16
 _HALF_PI, _QUARTER_PI, _QUARTER_PI_REST = 1.5707963267948966, 0.7853981633974483, 3.061616997868383e-17
 _HALF_PI_REST = 6.123233995736766e-17
 _TWO_THIRDS, _TWO_THIRDS_REST = 0.6666666666666666, 3.700743415417188e-17
@@ -111,8 +136,27 @@ def _exp_parts(x: Real, rest: Real, doublings: Real) -> Real:
 
 @_lane
 def lane_exp(x: Real) -> Real:
-    """Exponential."""
-    return _exp_parts(x, 0.0, 0.0)
+    """Exponential; 0 where the result would be below the smallest normal number."""
+    t = _fma(x, _LOG2_E, _ROUND)
+    n = t - _ROUND
+    r = _fma(-n, _LN2, x)
+    r = _fma(-n, _LN2_REST, r)
+    q = _fma(2.5117989767413088e-08, r, 2.763129238959598e-07)
+    q = _fma(q, r, 2.755721592313393e-06)
+    q = _fma(q, r, 2.4801489911924246e-05)
+    q = _fma(q, r, 0.00019841269917766636)
+    q = _fma(q, r, 0.0013888888947042072)
+    q = _fma(q, r, 0.008333333333307045)
+    q = _fma(q, r, 0.04166666666651533)
+    q = _fma(q, r, 0.166666666666667)
+    q = _fma(q, r, 0.5000000000000012)
+    q = _fma(q, r, 1.0)
+    p = _fma(q, r, 1.0)
+    # The whole number in the low bits of t goes straight onto the exponent field.
+    power = np.float64(t).view(np.uint64) << _SHIFT
+    scaled = np.uint64(np.float64(p).view(np.uint64) + power).view(np.float64)
+    result = scaled if x > -708.3964185322641 else 0.0
+    return result if x < 709.782712893384 else x + np.inf
 
 
 @_lane
@@ -201,13 +245,12 @@ def lane_pow(x: Real, y: Real) -> Real:
 def _sin_reduced(r: Real) -> Real:
     """Sine on [-pi/2, pi/2]."""
     z = r * r
-    q = _fma(-7.983954704028787e-18, z, 2.810231358891844e-15)
-    q = _fma(q, z, -7.647128569381511e-13)
-    q = _fma(q, z, 1.6059043228638833e-10)
-    q = _fma(q, z, -2.5052108378959182e-08)
-    q = _fma(q, z, 2.7557319223944155e-06)
-    q = _fma(q, z, -0.0001984126984126969)
-    q = _fma(q, z, 0.008333333333333333)
+    q = _fma(2.722249449528847e-15, z, -7.643097193994393e-13)
+    q = _fma(q, z, 1.6058943921093008e-10)
+    q = _fma(q, z, -2.5052106960004334e-08)
+    q = _fma(q, z, 2.7557319212129985e-06)
+    q = _fma(q, z, -0.00019841269841215273)
+    q = _fma(q, z, 0.008333333333333212)
     q = _fma(q, z, -0.16666666666666666)
     return _fma(r * z, q, r)
 
@@ -219,7 +262,6 @@ def lane_sin(x: Real) -> Real:
     n = t - _ROUND
     r = _fma(-n, _PI, x)
     r = _fma(-n, _PI_REST, r)
-    r = _fma(-n, _PI_LAST, r)
     turn = np.float64(t).view(np.uint64) << _SIGN
     result = np.uint64(np.float64(_sin_reduced(r)).view(np.uint64) ^ turn).view(np.float64)
     return result if abs(x) < _FURTHEST_ANGLE else np.nan
@@ -233,7 +275,6 @@ def lane_cos(x: Real) -> Real:
     n = (t - _ROUND) + 0.5
     r = _fma(-n, _PI, x)
     r = _fma(-n, _PI_REST, r)
-    r = _fma(-n, _PI_LAST, r)
     turn = (np.float64(t).view(np.uint64) + _ONE) << _SIGN
     result = np.uint64(np.float64(_sin_reduced(r)).view(np.uint64) ^ turn).view(np.float64)
     return result if abs(x) < _FURTHEST_ANGLE else np.nan
