@@ -7,7 +7,7 @@ every event of an older one.
 from __future__ import annotations
 
 import itertools
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import TypeAlias
 
 from tinemark.onsets.results import LadderLevel, LadderRequest, LadderResult, RefineRequest, RefineResult
@@ -93,12 +93,12 @@ ENDS = (Finished, Failed, Cancelled, Crashed)
 """Events after which nothing more comes of their job."""
 
 
-@dataclass
-class Numbers:
-    """Ids for requests: whole numbers from 1, each given once. May be shared between threads."""
+_numbers = itertools.count(1)
 
-    _next: itertools.count[int] = field(default_factory=lambda: itertools.count(1))
 
-    def take(self) -> int:
-        """The next id."""
-        return next(self._next)
+def new_id() -> int:
+    """An id for a request: whole numbers from 1, each given once in this process, whatever is asked.
+
+    Events of all desks may therefore share one listener. Any thread.
+    """
+    return next(_numbers)

@@ -7,7 +7,7 @@ import threading
 from collections.abc import Callable
 from typing import Generic, Protocol, TypeVar
 
-from tinemark.work.jobs import Numbers
+from tinemark.work.jobs import new_id
 
 Request = TypeVar("Request")
 
@@ -44,7 +44,6 @@ class NewestWins(Generic[Request, StopKind]):
     ) -> None:
         self._run = run
         self._make_stop = make_stop
-        self._numbers = Numbers()
         self._change = threading.Condition()
         # All below is guarded by `_change`.
         self._next: tuple[int, Request] | None = None
@@ -59,7 +58,7 @@ class NewestWins(Generic[Request, StopKind]):
         with self._change:
             if self._closed:
                 raise RuntimeError("this desk is closed")
-            id_ = self._numbers.take()
+            id_ = new_id()
             self._next = (id_, request)
             self._stop.set()
             self._change.notify_all()

@@ -28,10 +28,10 @@ from tinemark.work.jobs import (
     Failed,
     Finished,
     LevelFound,
-    Numbers,
     OnsetRequest,
     Progressed,
     Started,
+    new_id,
 )
 
 ANSWER_TIME = 0.3
@@ -73,7 +73,6 @@ class Refinery:
     ) -> None:
         self._on_event = on_event
         self._engine = engine
-        self._numbers = Numbers()
         self._closed = False
         # What other threads post, and the pipe that wakes the refinery's thread for it.
         self._posted: deque[tuple[Any, ...]] = deque()
@@ -105,7 +104,7 @@ class Refinery:
         """Queue a request of either kind; returns the id that its events carry. Any thread."""
         if self._closed:
             raise RuntimeError("the refinery is closed")
-        id_ = self._numbers.take()
+        id_ = new_id()
         self._post(("run", id_, request))
         return id_
 

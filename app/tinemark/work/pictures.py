@@ -1,0 +1,135 @@
+"""The picture desk: draws the newest request on its own thread and hands out better and better fields."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, TypeAlias
+
+from tinemark.density.field import Field
+from tinemark.density.request import PictureRequest
+from tinemark.density.stopping import StopFlag
+from tinemark.systems.errors import TinemarkError
+from tinemark.work.newest import NewestWins
+
+if TYPE_CHECKING:
+    from tinemark.density.renderer import Drawing
+
+BUDGET_STEPS = 20_000
+"""Steps a column after which a picture rests, where nothing else is asked."""
+
+
+@dataclass(frozen=True)
+class PictureDone:
+    """A picture has reached its budget; no field of that id follows."""
+
+    id: int
+    request: PictureRequest
+    steps: int
+
+
+@dataclass(frozen=True)
+class PictureFailed:
+    """There is no picture, and why; no field of that id follows."""
+
+    id: int
+    request: PictureRequest
+    error: TinemarkError
+
+
+PictureEvent: TypeAlias = PictureDone | PictureFailed
+
+
+class PictureDesk:
+    """Draws pictures on a thread of its own; the newest request wins.
+
+    Columns that the last picture has in common with the new one are kept, so that panning by whole
+    columns draws only what is new, and asking for more steps goes on from where the orbits were.
+
+    Parameters
+    ----------
+    on_field
+        Called with an id and each field, on the desk's thread. Fields of a request that has been
+        replaced are not handed out; one may cross the replacement by a hair: keep the newest id.
+    on_event
+        Called when a picture is done or cannot be drawn, on the desk's thread.
+    threads
+        Drawing threads; None for all cores.
+    """
+
+    def __init__(
+        self,
+        on_field: Callable[[int, Field], None],
+        on_event: Callable[[PictureEvent], None] | None = None,
+        threads: int | None = None,
+    ) -> None:
+        self._on_field = on_field
+        self._on_event = on_event or _no_listener
+        self._threads = threads
+        # Touched by the desk's thread alone.
+        self._drawing: Drawing | None = None
+        self._desk: NewestWins[tuple[PictureRequest, int], StopFlag] = NewestWins(
+            "pictures", self._run, StopFlag
+        )
+
+    def request(self, request: PictureRequest, budget_steps: int = BUDGET_STEPS) -> int:
+        """Ask for a picture in place of every earlier one; returns its id. Any thread, at once."""
+        return self._desk.submit((request, budget_steps))
+
+    def cancel(self) -> None:
+        """Stop drawing; what has been drawn stays for a later request of it. Any thread, at once."""
+        self._desk.cancel()
+
+    def wait_idle(self, timeout: float | None = None) -> bool:
+        """Wait until nothing is drawn; False when that took longer than `timeout` seconds."""
+        return self._desk.wait_idle(timeout)
+
+    def close(self) -> None:
+        """Stop drawing and end the thread. Any thread but the desk's."""
+        self._desk.close()
+
+    def _run(self, id_: int, asked: tuple[PictureRequest, int], stop: StopFlag) -> None:
+        # The compiler is loaded here and not with the window.
+        from tinemark.density import renderer
+
+        request, budget_steps = asked
+        steps = 0
+        try:
+            if not renderer.columns_distinct(request):
+                raise TinemarkError(
+                    "the columns are closer than double precision can tell, so nothing is drawn",
+                    what_to_do="a click there still refines, in higher precision",
+                )
+            drawing = self._kept(request) or renderer.create(request)
+            self._drawing = drawing
+            if drawing.level:
+                # What is kept is shown before anything is added to it.
+                field = renderer.snapshot(drawing)
+                steps = field.steps
+                self._hand_out(id_, field, stop)
+            fields = renderer.progressive(drawing, budget_steps, stop, self._threads)
+            for field in fields:
+                steps = field.steps
+                self._hand_out(id_, field, stop)
+        except TinemarkError as error:
+            if not stop.is_set():
+                self._on_event(PictureFailed(id_, request, error))
+            return
+        if not stop.is_set():
+            self._on_event(PictureDone(id_, request, steps))
+
+    def _kept(self, request: PictureRequest) -> Drawing | None:
+        from tinemark.density import renderer
+
+        drawing = self._drawing
+        if drawing is None or drawing.request == request:
+            return drawing
+        return renderer.shifted(drawing, request)
+
+    def _hand_out(self, id_: int, field: Field, stop: StopFlag) -> None:
+        if not stop.is_set():
+            self._on_field(id_, field)
+
+
+def _no_listener(event: PictureEvent) -> None:
+    """For a desk whose owner looks at fields alone."""
