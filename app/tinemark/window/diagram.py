@@ -83,6 +83,7 @@ class Diagram(QWidget):
         self.tool = "pick"
         self.field: Field | None = None
         self.image: QImage | None = None
+        self._pixels: object = None
         self.image_view = UNIT_VIEW
         self.marks: tuple[Mark, ...] = ()
         self.selected = ""
@@ -115,9 +116,12 @@ class Diagram(QWidget):
             self.close_callout()
             self.update()
 
-    def show_picture(self, image: QImage, field: Field, view: View) -> None:
-        """Replace the picture by one drawn for `view`."""
-        self.image, self.field, self.image_view = image, field, view
+    def show_picture(self, image: QImage, pixels: object, field: Field, view: View) -> None:
+        """Replace the picture by one drawn for `view`. `pixels` is the memory that `image` looks at."""
+        # The order counts: the old memory must outlive the old image.
+        self.image = image
+        self._pixels = pixels
+        self.field, self.image_view = field, view
         self.update()
 
     def forget_picture(self) -> None:

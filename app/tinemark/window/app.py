@@ -1,0 +1,70 @@
+"""Starting the window: on screen first, everything heavy after."""
+
+from __future__ import annotations
+
+import signal
+import sys
+from pathlib import Path
+
+from PySide6.QtCore import QTimer
+from PySide6.QtWidgets import QApplication
+
+from tinemark import __version__
+from tinemark.systems.errors import TinemarkError
+from tinemark.window.icons import program_icon
+from tinemark.window.layout_memory import LayoutMemory
+from tinemark.window.main_window import MainWindow
+from tinemark.window.new_session import demo_session
+from tinemark.window.session_keeper import SessionKeeper
+
+
+def application() -> QApplication:
+    """The running application, made where there is none."""
+    app = QApplication.instance()
+    if not isinstance(app, QApplication):
+        app = QApplication([sys.argv[0] or "tinemark"])
+    app.setApplicationName("tinemark")
+    app.setApplicationDisplayName("Tinemark")
+    app.setApplicationVersion(__version__)
+    app.setDesktopFileName("tinemark")
+    app.setWindowIcon(program_icon())
+    return app
+
+
+def make_window(memory: LayoutMemory | None = None) -> MainWindow:
+    """The main window with the demonstration, not yet shown and with nothing running."""
+    return MainWindow(SessionKeeper(demo_session()), memory or LayoutMemory.open())
+
+
+def open_window(path: str | Path | None = None) -> int:
+    """Open the window and run until it is closed.
+
+    Parameters
+    ----------
+    path
+        A session or system file; None opens the demonstration.
+
+    Returns
+    -------
+    int
+        The program's exit code. A file that cannot be opened leaves the window with the demonstration and says
+        what is wrong; the code is 0 all the same, as the window has been of use.
+    """
+    app = application()
+    window = make_window()
+    window.show()
+    if path is not None:
+        try:
+            window.open_path(Path(path))
+        except TinemarkError as error:
+            window.say_trouble(str(error))
+    # The first paint comes before the first import of a compiler.
+    QTimer.singleShot(0, window.workers.start)
+    # Ctrl-C in the terminal closes the window as its cross does; Python sees signals only between two turns.
+    signal.signal(signal.SIGINT, lambda *_: window.close())
+    pulse = QTimer()
+    pulse.timeout.connect(lambda: None)
+    pulse.start(250)
+    code = app.exec()
+    pulse.stop()
+    return code

@@ -1,0 +1,119 @@
+"""From a view to its picture: what is asked of the drawing desk, and which answer is shown."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Protocol
+
+from PySide6.QtCore import QObject, QTimer
+
+from tinemark.density.request import PictureRequest
+from tinemark.document.session import BUDGETS, Session
+from tinemark.systems.system import System
+from tinemark.window.bridge import Bridge, Painted
+from tinemark.window.diagram import Diagram
+from tinemark.window.picture_tones import Tones
+from tinemark.window.status_line import StatusLine
+from tinemark.window.theme import current_theme
+
+TOO_DEEP = "Columns are closer than double precision can tell; a click still refines."
+
+
+KEPT = 8
+
+
+class DeskLike(Protocol):
+    """What is needed of `work.pictures.PictureDesk`."""
+
+    def request(self, request: PictureRequest, budget_steps: int) -> int: ...  # noqa: D102
+    def cancel(self) -> None: ...  # noqa: D102
+
+
+class PictureJobs(QObject):
+    """Asks for pictures of what the session shows; the newest wins, and a stale answer is dropped."""
+
+    def __init__(
+        self, diagram: Diagram, status: StatusLine, bridge: Bridge, parent: QObject | None = None
+    ) -> None:
+        super().__init__(parent)
+        self._diagram = diagram
+        self._status = status
+        self._bridge = bridge
+        self.desk: DeskLike | None = None
+        self.columns_distinct: Callable[[PictureRequest], bool] | None = None
+        self._wanted: tuple[PictureRequest, int] | None = None
+        self._asked: dict[int, PictureRequest] = {}
+        self._newest_shown = 0
+        self._shown_system = ""
+        self._tones: Tones | None = None
+        # Everything that happens in one turn of the event loop asks for one picture.
+        self._soon = QTimer(self)
+        self._soon.setSingleShot(True)
+        self._soon.setInterval(0)
+        self._soon.timeout.connect(self._ask)
+
+    def attach(self, desk: DeskLike, columns_distinct: Callable[[PictureRequest], bool]) -> None:
+        """The drawing desk is there."""
+        self.desk, self.columns_distinct = desk, columns_distinct
+        self._soon.start()
+
+    def show(self, session: Session, system: System) -> None:
+        """Have the session's picture drawn, if it is another one than is being drawn."""
+        picture, parts = session.picture, self._diagram.parts
+        request = PictureRequest(
+            system=system,
+            parameter=session.parameter,
+            observe=session.observe,
+            view=session.view,
+            columns=parts.columns,
+            rows=parts.rows,
+            rule=picture.rule,
+            transient_steps=picture.transient_steps,
+            starts=picture.starts,
+        )
+        identity = f"{system!r}{session.parameter}{session.observe}"
+        if identity != self._shown_system:
+            self._shown_system = identity
+            self._asked.clear()
+            self._diagram.forget_picture()
+        self._set_tones(session)
+        wanted = (request, BUDGETS[picture.budget])
+        if wanted != self._wanted:
+            self._wanted = wanted
+            self._soon.start()
+
+    def _set_tones(self, session: Session) -> None:
+        theme = current_theme()
+        tones = Tones(session.picture.tone, session.picture.palette or theme.picture, theme.plot, theme.dark)
+        if tones == self._tones:
+            return
+        self._tones = tones
+        self._bridge.set_tones(tones)
+        if self._diagram.field is not None and self._asked:
+            self._bridge.on_field(self._newest_shown, self._diagram.field)
+
+    def _ask(self) -> None:
+        if self.desk is None or self.columns_distinct is None or self._wanted is None:
+            return
+        request, budget = self._wanted
+        if not self.columns_distinct(request):
+            self.desk.cancel()
+            self._asked.clear()
+            self._diagram.show_notice(TOO_DEEP)
+            self._status.show_steps(0)
+            return
+        self._diagram.show_notice("")
+        number = self.desk.request(request, budget)
+        self._asked[number] = request
+        for old in sorted(self._asked)[:-KEPT]:
+            del self._asked[old]
+
+    def take(self, painted: Painted) -> None:
+        """A picture has come, on the window's thread."""
+        # While the hand moves, a picture of a moment ago is shown where it belongs; an older one never follows.
+        request = self._asked.get(painted.number)
+        if request is None or painted.number < self._newest_shown:
+            return
+        self._newest_shown = painted.number
+        self._diagram.show_picture(painted.image, painted.pixels, painted.field, request.view)
+        self._status.show_steps(painted.field.steps)

@@ -1,0 +1,75 @@
+"""From the ledger to its estimates: worked out off the window's thread, kept while a ladder stays the same."""
+
+from __future__ import annotations
+
+from PySide6.QtCore import QObject
+
+from tinemark.document.estimates import LadderEstimates
+from tinemark.document.ledger import Ledger, estimates, ladder_ids, ladder_rows
+from tinemark.document.row import Row
+from tinemark.window.bridge import Bridge
+from tinemark.window.ledger_panel import LedgerPanel
+from tinemark.window.ratio_panel import RatioPanel
+
+Known = dict[tuple[Row, ...], LadderEstimates]
+
+
+class RatioJobs(QObject):
+    """Feeds the ledger's table and the ratio panel."""
+
+    def __init__(
+        self, bridge: Bridge, table: LedgerPanel, ratios: RatioPanel, parent: QObject | None = None
+    ) -> None:
+        super().__init__(parent)
+        self._bridge, self._table, self._ratios = bridge, table, ratios
+        self._ledger = Ledger()
+        self._system_key = ""
+        self._selected = ""
+        self._known: Known = {}
+
+    def show(self, ledger: Ledger, system_key: str, selected: str) -> None:
+        """Show a ledger at once, and its estimates as soon as they are there."""
+        self._ledger, self._system_key, self._selected = ledger, system_key, selected
+        self._show()
+        ladders = {ladder_rows(ledger, name): name for name in ladder_ids(ledger)}
+        missing = {rows: name for rows, name in ladders.items() if rows not in self._known}
+        self._known = {rows: found for rows, found in self._known.items() if rows in ladders}
+        if missing:
+            self._bridge.call("ratios", lambda: _estimated(ledger, missing), self._take, self._fail)
+
+    def select(self, row: str) -> None:
+        """Show the ratios of the ladder that a row belongs to."""
+        self._selected = row
+        self._show_ratios()
+
+    def _take(self, found: object) -> None:
+        assert isinstance(found, dict)
+        self._known.update(found)
+        self._show()
+
+    def _fail(self, error: BaseException) -> None:
+        self._table.show_message(f"The ratios could not be worked out: {error}", "error")
+
+    def _show(self) -> None:
+        names = ladder_ids(self._ledger)
+        rows = [ladder_rows(self._ledger, name) for name in names]
+        found = [self._known[ladder] for ladder in rows if ladder in self._known]
+        self._table.show_ledger(self._ledger, found, system_key=self._system_key)
+        self._show_ratios()
+
+    def _show_ratios(self) -> None:
+        chosen = self._ledger.row(self._selected)
+        ladder = chosen.ladder if chosen is not None and chosen.ladder else self._longest()
+        self._ratios.show_estimates(self._known.get(ladder_rows(self._ledger, ladder)) if ladder else None)
+
+    def _longest(self) -> str:
+        """The ladder with most rows stands for the ledger while none is selected."""
+        return max(
+            ladder_ids(self._ledger), key=lambda name: len(ladder_rows(self._ledger, name)), default=""
+        )
+
+
+def _estimated(ledger: Ledger, ladders: dict[tuple[Row, ...], str]) -> Known:
+    """Estimates of the named ladders. The errands' thread."""
+    found = ((rows, estimates(ledger, name)) for rows, name in ladders.items())
+    return {rows: value for rows, value in found if value is not None}

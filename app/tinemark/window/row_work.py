@@ -1,0 +1,180 @@
+"""What is done with the ledger's rows: keeping, selecting, refining, removing, copying, following ladders."""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from typing import TYPE_CHECKING
+
+from PySide6.QtCore import QObject
+from PySide6.QtGui import QGuiApplication
+
+from tinemark.document import ledger as ledgers
+from tinemark.document.row import Row
+from tinemark.onsets.results import LadderResult, Onset, Status
+from tinemark.systems.system import System
+from tinemark.window.ladder_questions import further_levels, ladder_question, ladder_request
+from tinemark.window.ledger_marks import marks_of
+from tinemark.window.onset_jobs import Job
+
+if TYPE_CHECKING:
+    from tinemark.window.main_window import MainWindow
+
+ELSEWHERE = (
+    "Rows of another system, parameter or setting, and measured ones, are left as they are; "
+    "open their system to refine them."
+)
+
+
+class RowWork(QObject):
+    """Works on the rows of one window's session."""
+
+    def __init__(self, window: MainWindow) -> None:
+        super().__init__(window)
+        self._window, self._keeper = window, window.keeper
+        self.selected = ""
+
+    def connect_parts(self) -> None:
+        """Listen to the ledger's panel, the diagram and the answers of the refinery."""
+        window, panel = self._window, self._window.ledger_panel
+        window.diagram.picked.connect(self.pick)
+        window.diagram.read_by_eye.connect(self.read_by_eye)
+        window.diagram.mark_chosen.connect(self.select)
+        window.onsets.onsets_found.connect(self._keep_onsets)
+        window.onsets.ladder_found.connect(self._keep_ladder)
+        panel.row_selected.connect(self._selection_changed)
+        panel.refine_requested.connect(self.refine)
+        panel.remove_requested.connect(self.remove)
+        panel.note_edited.connect(self._note_edited)
+        panel.copy_requested.connect(self.copy)
+        panel.extend_ladder_requested.connect(self.extend_ladder)
+
+    # --- selection -----------------------------------------------------------------------------------------
+
+    @property
+    def selected_row(self) -> Row | None:
+        """The row that is selected."""
+        return self._keeper.session.ledger.row(self.selected)
+
+    def select(self, row: str) -> None:
+        """Select a row in the ledger, on the diagram and for the ratios; empty for none."""
+        self._window.ledger_panel.set_selected(row)
+        self._selection_changed(row)
+
+    def _selection_changed(self, row: str) -> None:
+        self.selected = row
+        self.show_marks()
+        self._window.ratios.select(row)
+        self._window.refresh_actions()
+
+    def show(self) -> None:
+        """Show the session's ledger."""
+        ledger = self._keeper.session.ledger
+        if ledger.row(self.selected) is None:
+            self.selected = ""
+        self._window.ratios.show(ledger, self._keeper.system.key, self.selected)
+
+    def show_marks(self) -> None:
+        """Show the rows that belong to the diagram as marks."""
+        session = self._keeper.session
+        place = ledgers.place_of(self._keeper.system, session.parameter)
+        marks = marks_of(session.ledger, place, session.observe)
+        self._window.diagram.show_marks(marks, self.selected)
+
+    # --- new rows ------------------------------------------------------------------------------------------
+
+    def pick(self, parameter: Fraction, observed: Fraction) -> None:
+        """A click: find its onset."""
+        session = self._keeper.session
+        self._window.onsets.pick(self._keeper.system, session.parameter, session.view, parameter, observed)
+        self._window.hint.picked()
+
+    def read_by_eye(self, parameter: Fraction, _observed: Fraction) -> None:
+        """A reading from the crosshair, uncertain by half a pixel."""
+        session, diagram = self._keeper.session, self._window.diagram
+        half = session.view.width / diagram.parts.columns / 2
+        onset = ledgers.eye_pick(session.parameter, parameter, half)
+        place = ledgers.place_of(self._keeper.system, session.parameter)
+        ledger, row = ledgers.add(session.ledger, onset, place)
+        self._keeper.set_ledger("read by eye", ledger)
+        self.select(row)
+        words = f"Read by eye: {session.parameter} = {diagram.gestures.by_eye(parameter)}"
+        self._window.status.show_words(words)
+
+    def _keep_onsets(self, system: System, row: str, onsets: tuple[Onset, ...]) -> None:
+        ledger = self._keeper.session.ledger
+        place = ledgers.place_of(system, onsets[0].parameter)
+        if row and ledger.row(row) is not None:
+            self._keeper.set_ledger("refine a row", ledgers.replace_onset(ledger, row, onsets[0]))
+        else:
+            for onset in onsets:
+                ledger, row = ledgers.add(ledger, onset, place)
+            if ledger == self._keeper.session.ledger:
+                self._window.status.show_words("This onset is in the ledger already; its row is selected.")
+            label = "pick an onset" if len(onsets) == 1 else f"pick {len(onsets)} onsets"
+            self._keeper.set_ledger(label, ledger)
+        self.select(row)
+
+    def _keep_ladder(self, system: System, result: LadderResult) -> None:
+        if result.levels:
+            place = ledgers.place_of(system, result.levels[0].onset.parameter)
+            ledger = ledgers.add_ladder(self._keeper.session.ledger, result, place)
+            self._keeper.set_ledger("follow the ladder", ledger)
+
+    # --- changes -------------------------------------------------------------------------------------------
+
+    def refine(self, rows: list[str]) -> None:
+        """Work out rows that were read by eye or estimated."""
+        session = self._keeper.session
+        place = ledgers.place_of(self._keeper.system, session.parameter)
+        view, skipped = session.view, False
+        for name in rows:
+            row = session.ledger.row(name)
+            if row is None or row.onset.status is Status.MEASURED or row.place != place:
+                skipped = True
+                continue
+            middle = (view.bottom + view.top) / 2
+            self._window.onsets.refine_row(self._keeper.system, row, view, middle)
+        if skipped:
+            self._window.status.show_words(ELSEWHERE, "warning")
+
+    def refine_selected(self) -> None:
+        """Work out the selected rows."""
+        self.refine(self._window.ledger_panel.selected_ids() or [self.selected])
+
+    def remove(self, rows: list[str]) -> None:
+        """Take rows out of the ledger."""
+        ledger = ledgers.remove(self._keeper.session.ledger, rows)
+        self._keeper.set_ledger("remove a row" if len(rows) == 1 else f"remove {len(rows)} rows", ledger)
+
+    def remove_selected(self) -> None:
+        """Take the selected rows out of the ledger."""
+        self.remove(self._window.ledger_panel.selected_ids() or [self.selected])
+
+    def _note_edited(self, row: str, text: str) -> None:
+        self._keeper.set_ledger("edit a note", ledgers.note(self._keeper.session.ledger, row, text))
+
+    def copy(self, form: str) -> None:
+        """Put the ledger on the clipboard as "tsv", "markdown" or "latex"."""
+        from tinemark.document.export import ledger_text
+
+        ledger = self._keeper.session.ledger
+        QGuiApplication.clipboard().setText(ledger_text(ledger, form))
+        count = len(ledger.rows)
+        self._window.status.show_words(f"Copied {count} row{'' if count == 1 else 's'}.")
+
+    # --- ladders -------------------------------------------------------------------------------------------
+
+    def ask_ladder(self) -> None:
+        """Ask from where to where, then follow the ladder."""
+        session = self._keeper.session
+        question = ladder_question(self._window, session, self.selected_row, self._window.diagram.field)
+        if question is not None:
+            self._window.onsets.ask(Job(ladder_request(self._keeper.system, session, question)))
+
+    def extend_ladder(self, ladder: str) -> None:
+        """Find further levels of a ladder of the ledger."""
+        request = further_levels(self._keeper.system, self._keeper.session, ladder)
+        if isinstance(request, str):
+            self._window.status.show_words(request, "warning")
+        else:
+            self._window.onsets.ask(Job(request))
