@@ -170,7 +170,8 @@ class FloatMap:
         CycleStep or None
             None where the equations are singular or the orbit escaped.
         """
-        end, u, v, w, z = self.module.bundle(x, r, self.fixed, period)
+        x, r = float(x), float(r)
+        end, u, v, w, z = map(float, self.module.bundle(x, r, self.fixed, period))
         gap = end - x
         if target is None:
             if u == 1 or not math.isfinite(u) or not math.isfinite(gap):
