@@ -22,7 +22,7 @@ from tinemark.onsets.acceleration import ONE, ZERO, eliminate, levin_t, wynn_eps
 from tinemark.onsets.class_values import CascadeClass
 from tinemark.onsets.ladder_points import COVERAGE, Estimate, LadderPoint, decimal, estimate
 
-SAFETY = Decimal(5)
+SAFETY = Decimal(6)
 """Factor between a sequence's last move and the uncertainty, from five levels on."""
 SAFETY_FOUR_LEVELS = Decimal(5)
 """The same for the limit from four levels, where two formulas exist and neither has a history."""

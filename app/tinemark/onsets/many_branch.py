@@ -1,0 +1,228 @@
+"""Branches of cycles of several states, followed along the parameter and around folds.
+
+Pseudo-arclength continuation (Keller 1977) with all points of the cycle as unknowns. Along the way the
+multipliers are watched: a crossing of -1 is a flip, a turn of the branch a fold, and a complex pair that
+crosses the unit circle a Neimark-Sacker point.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Generator, Sequence
+from dataclasses import dataclass
+from enum import Enum
+
+import numpy as np
+
+from tinemark.onsets.many_cycles import Cycle, multipliers, newton, tangent
+from tinemark.onsets.many_map import FloatManyMap, Floats
+from tinemark.onsets.results import Step
+
+FIRST_STEP = 0.02
+LARGEST_STEP = 0.08
+SMALLEST_STEP = 1e-7
+MOST_POINTS = 400
+LARGEST_TURN = 0.3
+"""A critical multiplier may move by this much a step (of itself or of 1, whichever is larger)."""
+
+
+FARTHEST = 20.0
+"""A branch is not followed farther than this many scaled lengths from where it began."""
+MOST_UNSTABLE = 1e7
+
+
+class Crossing(Enum):
+    """What happens between two neighbouring points of a branch."""
+
+    FLIP = "flip"
+    FOLD = "fold"
+    NEIMARK_SACKER = "Neimark-Sacker"
+
+
+@dataclass(frozen=True)
+class BranchPoint:
+    """A cycle on a branch, with its multipliers and the branch's tangent there (points, parameter)."""
+
+    cycle: Cycle
+    multipliers: tuple[complex, ...]
+    moves: Floats
+    move_r: float
+
+    @property
+    def flip_test(self) -> float:
+        """Product of (1 + multiplier): changes sign where one of them passes -1."""
+        return float(np.real(np.prod([1 + value for value in self.multipliers])))
+
+    @property
+    def circle_test(self) -> float:
+        """`circle_test` of the multipliers here."""
+        return circle_test(self.multipliers)
+
+
+def circle_test(values: Sequence[complex]) -> float:
+    """Product of (multiplier i times multiplier j - 1): zero where a pair has product 1."""
+    pairs = [values[i] * values[j] - 1 for i in range(len(values)) for j in range(i)]
+    return float(np.real(np.prod(pairs)))
+
+
+@dataclass(frozen=True)
+class Event:
+    """A crossing, bracketed by the two branch points next to it."""
+
+    kind: Crossing
+    before: BranchPoint
+    after: BranchPoint
+
+    @property
+    def share(self) -> float:
+        """Where between the two the crossing lies, from 0 to 1, by the secant of its test."""
+        a, b = _test(self.kind, self.before), _test(self.kind, self.after)
+        return a / (a - b) if a != b else 0.5
+
+    @property
+    def rough(self) -> Cycle:
+        """A cycle near the crossing."""
+        return between(self.before.cycle, self.after.cycle, self.share)
+
+
+@dataclass(frozen=True)
+class Window:
+    """Where a branch is followed.
+
+    Attributes
+    ----------
+    low, high
+        Ends of the parameter interval.
+    width
+        Length of the parameter that counts as 1.
+    scales
+        Length of each state that counts as 1.
+    """
+
+    low: float
+    high: float
+    width: float
+    scales: Floats
+
+
+def between(a: Cycle, b: Cycle, share: float) -> Cycle:
+    """Linear interpolation of two neighbouring cycles of a branch."""
+    return Cycle(a.points + share * (b.points - a.points), a.r + share * (b.r - a.r))
+
+
+def branch_point(
+    float_map: FloatManyMap, cycle: Cycle, window: Window, before: BranchPoint | None = None
+) -> BranchPoint | None:
+    """A cycle with its multipliers and tangent; the tangent goes on from the point before."""
+    values = multipliers(float_map, cycle)
+    if not values:
+        return None
+    moves, move_r = tangent(float_map, cycle, window.scales, window.width)
+    if before is not None and _cosine(before.moves, before.move_r, moves, move_r, window) < 0:
+        moves, move_r = -moves, -move_r
+    return BranchPoint(cycle, tuple(values), moves, move_r)
+
+
+def follow(
+    float_map: FloatManyMap,
+    start: BranchPoint,
+    window: Window,
+    direction: int,
+    *,
+    most: int = MOST_POINTS,
+    first_step: float = FIRST_STEP,
+) -> Generator[Step, None, tuple[list[BranchPoint], list[Event]]]:
+    """Follow a branch until it leaves the window, closes, or cannot be followed.
+
+    Parameters
+    ----------
+    direction
+        1: first towards larger parameter values; -1: towards smaller.
+    most
+        Branch points at most.
+    """
+    sign = direction if start.move_r >= 0 else -direction
+    here = BranchPoint(start.cycle, start.multipliers, sign * start.moves, sign * start.move_r)
+    trace, events = [here], []
+    step = first_step
+    while len(trace) < most:
+        following = _advance(float_map, here, window, step)
+        if following is None or not _close_enough(here, following, window, step):
+            step /= 2
+            if step < SMALLEST_STEP:
+                break
+            continue
+        events += _events(here, following)
+        trace.append(following)
+        here = following
+        if len(trace) % 8 == 0:
+            yield Step(f"following the branch of period {here.cycle.period}")
+        if not window.low <= here.cycle.r <= window.high or _is_lost(here, start, window):
+            break
+        step = min(step * 1.6, LARGEST_STEP)
+    return trace, events
+
+
+def _is_lost(here: BranchPoint, start: BranchPoint, window: Window) -> bool:
+    """Whether a branch runs off to infinity or becomes too unstable to be followed in doubles."""
+    away = np.abs(here.cycle.points - start.cycle.points) / window.scales
+    return bool(np.max(away) > FARTHEST) or max(map(abs, here.multipliers)) > MOST_UNSTABLE
+
+
+def _advance(float_map: FloatManyMap, here: BranchPoint, window: Window, step: float) -> BranchPoint | None:
+    guess = Cycle(here.cycle.points + step * here.moves, here.cycle.r + step * here.move_r)
+    along = here.moves / window.scales**2 / len(here.moves)
+    along_r = here.move_r / window.width**2
+    target = float(np.sum(along * guess.points)) + along_r * guess.r
+    cycle = newton(float_map, guess, window.scales, along=along, along_r=along_r, target=target)
+    if cycle is None:
+        return None
+    missed = float(np.max(np.abs(cycle.points - guess.points) / window.scales))
+    if missed > step or abs(cycle.r - guess.r) > step * window.width:
+        return None
+    return branch_point(float_map, cycle, window, here)
+
+
+def _close_enough(here: BranchPoint, following: BranchPoint, window: Window, step: float) -> bool:
+    if step < 1e-5:
+        return True
+    if _cosine(here.moves, here.move_r, following.moves, following.move_r, window) < 0.7:
+        return False
+    for before, after in ((here, following), (following, here)):
+        for value in before.multipliers:
+            if abs(abs(value) - 1) < 0.5:
+                nearest = min(abs(value - other) for other in after.multipliers)
+                if nearest > LARGEST_TURN:
+                    return False
+    return True
+
+
+def _events(a: BranchPoint, b: BranchPoint) -> list[Event]:
+    found = []
+    if a.move_r * b.move_r < 0:
+        found.append(Event(Crossing.FOLD, a, b))
+    if a.flip_test * b.flip_test < 0:
+        found.append(Event(Crossing.FLIP, a, b))
+    if len(a.multipliers) > 1 and a.circle_test * b.circle_test < 0 and _pair_crosses(a, b):
+        found.append(Event(Crossing.NEIMARK_SACKER, a, b))
+    return found
+
+
+def _pair_crosses(a: BranchPoint, b: BranchPoint) -> bool:
+    # A real pair with product 1 is a neutral saddle, where nothing splits.
+    def outside(point: BranchPoint) -> int:
+        return sum(1 for value in point.multipliers if value.imag > 1e-9 and abs(value) > 1)
+
+    def complex_pairs(point: BranchPoint) -> int:
+        return sum(1 for value in point.multipliers if value.imag > 1e-9)
+
+    return complex_pairs(a) == complex_pairs(b) and outside(a) != outside(b)
+
+
+def _test(kind: Crossing, point: BranchPoint) -> float:
+    if kind is Crossing.FLIP:
+        return point.flip_test
+    return point.move_r if kind is Crossing.FOLD else point.circle_test
+
+
+def _cosine(a: Floats, a_r: float, b: Floats, b_r: float, window: Window) -> float:
+    return float(np.sum(a * b / window.scales**2) / len(a) + a_r * b_r / window.width**2)

@@ -1,0 +1,291 @@
+"""A click on the diagram of a map of several states: the flip or fold nearest to it, to many digits."""
+
+from __future__ import annotations
+
+from collections.abc import Generator, Iterator
+from dataclasses import dataclass
+from itertools import pairwise
+
+import numpy as np
+
+from tinemark.onsets.many_branch import (
+    BranchPoint,
+    Crossing,
+    Event,
+    Window,
+    between,
+    branch_point,
+    circle_test,
+    follow,
+)
+from tinemark.onsets.many_cycles import Cycle, multipliers, newton, same_cycle
+from tinemark.onsets.many_ladder import ladder_many
+from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
+from tinemark.onsets.many_onset import Settled, settle_onset
+from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.many_search import Place, cycles_around
+from tinemark.onsets.results import Kind, RefineRequest, RefineResult, Step
+
+__all__ = ["ladder_many", "refine_many"]
+
+MOST_BRANCHES = 6
+CLOSE = 1.5
+"""A second onset is shown when it lies no farther than this many times the nearest one's distance …"""
+CLOSE_FLOOR = 0.02
+"""… or within this much of the screen."""
+IN_REACH = 0.75
+"""Farther on the screen than this an onset does not count as what was meant."""
+LEAST_VISIBLE = 0.0015
+"""Stable stretches shorter than this share of the view, about two pixels, cannot have been aimed at."""
+NEUTRAL = 1e-6
+"""Multipliers may exceed 1 by this much and count as stable: area-preserving maps have them at 1."""
+GOOD_ENOUGH = 0.03
+"""With an onset this near, branches that start farther away are not followed any more."""
+
+
+@dataclass(frozen=True)
+class _Candidate:
+    """Something that happens on a branch near the click.
+
+    Attributes
+    ----------
+    stable_share
+        Length of the stable stretch beside it, in widths of the view: what can be seen of it.
+    """
+
+    kind: Crossing
+    rough: Cycle
+    event: Event
+    distance: float
+    stable_share: float
+
+    @property
+    def rank(self) -> tuple[bool, float]:
+        """What can be seen comes first, then what is near."""
+        return self.stable_share < LEAST_VISIBLE, self.distance
+
+
+def refine_many(request: RefineRequest) -> Iterator[Step | RefineResult]:
+    """The flips and folds nearest to a click.
+
+    Orbits are settled around the click, the cycles they lead to are followed through the view by
+    continuation, their unstable parts and folds included, and the crossings nearest to the click on the
+    screen are polished. Values are estimated: proofs for maps of several states are not made yet.
+
+    Yields
+    ------
+    Step or RefineResult
+        Progress, at least every few ten milliseconds; the result last. A result without onsets says why.
+    """
+    yield Step("reading the map")
+    many = many_map(request.system, request.parameter)
+    float_map = float_many_map(many)
+    place = Place(
+        float(request.near),
+        None if request.observed is None else float(request.observed),
+        float(request.width),
+        None if request.height is None else float(request.height),
+    )
+    if not _doubles_tell_apart(place):
+        yield RefineResult(
+            (), "the view is narrower than doubles can tell apart; zoom out one step and click again"
+        )
+        return
+    full_scales = float_map.scales(place.r)
+    cycles = yield from cycles_around(float_map, place, full_scales)
+    if not cycles:
+        yield RefineResult((), "no orbit around the click settles on a cycle or comes close to one")
+        return
+    window = _window(place, full_scales, request)
+    candidates = yield from _candidates(float_map, cycles, place, window)
+    yield from _settle(float_map, candidates, place, window, request.digits)
+
+
+def _doubles_tell_apart(place: Place) -> bool:
+    return place.width > 1e-11 * max(abs(place.r), 1e-3)
+
+
+def _window(place: Place, scales: Floats, request: RefineRequest) -> Window:
+    lengths = scales
+    if place.height and request.system.observe in request.system.state_names:
+        # A view zoomed in on a state: what counts as one length shrinks with it.
+        at = request.system.state_names.index(request.system.observe)
+        lengths = np.minimum(scales, np.maximum(place.height / scales[at], 1e-6) * scales)
+    return Window(place.r - place.width, place.r + place.width, place.width, lengths)
+
+
+def _candidates(
+    float_map: FloatManyMap, cycles: list[Cycle], place: Place, window: Window
+) -> Generator[Step, None, list[_Candidate]]:
+    """Crossings on the branches through the cycles, nearest to the click first."""
+    traces: list[list[BranchPoint]] = []
+    found: list[_Candidate] = []
+    followed = 0
+    for cycle in cycles:
+        seen = (candidate.distance for candidate in found if candidate.stable_share >= LEAST_VISIBLE)
+        nearest = min(seen, default=np.inf)
+        if followed >= MOST_BRANCHES or (nearest < GOOD_ENOUGH and followed >= 2):
+            break
+        start = branch_point(float_map, cycle, window)
+        if start is None or _is_on(float_map, cycle, traces, window.scales):
+            continue
+        followed += 1
+        onward, events = yield from follow(float_map, start, window, 1)
+        backward, more = yield from follow(float_map, start, window, -1)
+        traces += [onward, backward]
+        for event in (*events, *more):
+            share = _stable_stretch(onward, backward, event) / window.width
+            rough = event.rough
+            found.append(_Candidate(event.kind, rough, event, place.distance(float_map, rough), share))
+        yield Step("looking at the crossings found")
+    return sorted(found, key=lambda candidate: candidate.rank)
+
+
+def _stable_stretch(onward: list[BranchPoint], backward: list[BranchPoint], event: Event) -> float:
+    """Length in the parameter of the stable part of the branch that ends at a crossing, on either side."""
+    whole = [*backward[:0:-1], *onward]
+    order = {id(point): place for place, point in enumerate(whole)}
+    order[id(backward[0])] = order[id(onward[0])]
+    sides = sorted((order[id(event.before)], order[id(event.after)]))
+    at = event.rough.r
+    lengths = []
+    for place, step in ((sides[0], -1), (sides[1], 1)):
+        end = at
+        while 0 <= place < len(whole) and max(map(abs, whole[place].multipliers)) <= 1 + NEUTRAL:
+            end = whole[place].cycle.r
+            place += step
+        lengths.append(abs(end - at))
+    return max(lengths)
+
+
+def _is_on(float_map: FloatManyMap, cycle: Cycle, traces: list[list[BranchPoint]], scales: Floats) -> bool:
+    """Whether a cycle lies on a branch that was followed already."""
+    for trace in traces:
+        if trace[0].cycle.period != cycle.period:
+            continue
+        for a, b in pairwise(trace):
+            low, high = sorted((a.cycle.r, b.cycle.r))
+            if low <= cycle.r <= high and high > low:
+                guess = between(a.cycle, b.cycle, (cycle.r - a.cycle.r) / (b.cycle.r - a.cycle.r))
+                there = newton(float_map, Cycle(guess.points, cycle.r), scales)
+                if there is not None and same_cycle(there, cycle, scales):
+                    return True
+    return False
+
+
+def _settle(
+    float_map: FloatManyMap, candidates: list[_Candidate], place: Place, window: Window, digits: int
+) -> Iterator[Step | RefineResult]:
+    """Polish the nearest candidates and put the result into words."""
+    settled: list[tuple[float, Settled]] = []
+    rotation: _Candidate | None = None
+    for candidate in candidates:
+        if candidate.distance > IN_REACH or _far_beyond(settled, candidate.distance):
+            continue
+        if settled and candidate.stable_share < LEAST_VISIBLE:
+            break
+        if candidate.kind is Crossing.NEIMARK_SACKER:
+            if rotation is None:
+                rotation = candidate
+            continue
+        onset = yield from _onset_at(float_map, candidate, place, window, digits)
+        if onset is None or any(_same(onset, other) for _, other in settled):
+            continue
+        distance = place.distance(float_map, onset.cycle)
+        if distance <= IN_REACH:
+            settled.append((distance, onset))
+    settled.sort(key=lambda item: item[0])
+    shown = [item for item in settled[:2] if not _far_beyond(settled[:1], item[0])]
+    yield RefineResult(
+        tuple(item.onset for _, item in shown),
+        _message(
+            float_map.many.parameter, shown, None if rotation is None else _at(float_map, rotation, place)
+        ),
+    )
+
+
+def _at(float_map: FloatManyMap, candidate: _Candidate, place: Place) -> tuple[float, float, int]:
+    """Distance on the screen, parameter and period of a Neimark-Sacker crossing, by the secant method."""
+    cycle = candidate.rough
+    low, high = candidate.event.before, candidate.event.after
+    ends = [(low.cycle.r, low.circle_test), (high.cycle.r, high.circle_test)]
+    for _ in range(6):
+        (r0, t0), (r1, t1) = ends
+        if t0 == t1:
+            break
+        r = r1 - t1 * (r1 - r0) / (t1 - t0)
+        there = newton(float_map, Cycle(cycle.points, r), np.maximum(np.abs(cycle.points).max(axis=0), 1e-9))
+        if there is None:
+            break
+        cycle = there
+        ends = [ends[1], (r, circle_test(multipliers(float_map, there)))]
+    return place.distance(float_map, cycle), cycle.r, cycle.period
+
+
+def _far_beyond(settled: list[tuple[float, Settled]], distance: float) -> bool:
+    return bool(settled) and distance > max(CLOSE * settled[0][0], CLOSE_FLOOR)
+
+
+def _onset_at(
+    float_map: FloatManyMap, candidate: _Candidate, place: Place, window: Window, digits: int
+) -> Generator[Step, None, Settled | None]:
+    rough = _turned(float_map, candidate.rough, place)
+    bracket = abs(candidate.event.before.cycle.r - candidate.event.after.cycle.r)
+    reach = 3 * bracket + 0.02 * window.width
+    try:
+        if candidate.kind is Crossing.FLIP:
+            return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, window.scales, reach))
+        half = rough.period // 2
+        if rough.period % 2 == 0:
+            # A branch of doubled cycles turns round where it joins the branch it split from: a flip.
+            mean = Cycle((rough.points[:half] + rough.points[half:]) / 2, rough.r)
+            spread = float(np.max(np.abs(rough.points[:half] - rough.points[half:]) / window.scales))
+            apart = float(
+                np.max(
+                    np.abs(candidate.event.before.cycle.points - candidate.event.after.cycle.points)
+                    / window.scales
+                )
+            )
+            if spread <= 2 * apart:
+                return (yield from settle_onset(float_map, Kind.FLIP, mean, digits, window.scales, reach))
+        return (yield from settle_onset(float_map, Kind.FOLD, rough, digits, window.scales, reach))
+    except NotFound:
+        return None
+
+
+def _same(a: Settled, b: Settled) -> bool:
+    same_kind = a.onset.kind is b.onset.kind and a.onset.period_after == b.onset.period_after
+    apart = abs(a.onset.value_fraction - b.onset.value_fraction)
+    if not same_kind or apart > 2 * (a.onset.half_width + b.onset.half_width):
+        return False
+    return same_cycle(a.cycle, b.cycle, np.maximum(np.abs(a.cycle.points).max(axis=0), 1e-3))
+
+
+def _turned(float_map: FloatManyMap, cycle: Cycle, place: Place) -> Cycle:
+    """The cycle begun at the point nearest to the click, so that the states given are the clicked ones."""
+    if place.observed is None:
+        return cycle
+    apart = np.abs(float_map.observed(cycle.points, cycle.r) - place.observed)
+    return Cycle(np.roll(cycle.points, -int(np.argmin(apart)), axis=0), cycle.r)
+
+
+def _message(
+    parameter: str, shown: list[tuple[float, Settled]], rotation: tuple[float, float, int] | None
+) -> str:
+    sentences = []
+    for share, item in shown:
+        onset = item.onset
+        words = f"fold that opens period {onset.period_after}"
+        if onset.kind is Kind.FLIP:
+            words = f"flip from period {onset.period_before} to {onset.period_after}"
+        sentences.append(f"{words}, {share:.2g} of the view from the click")
+    if rotation is not None and (not shown or rotation[0] < shown[0][0]):
+        where = f"{parameter} = {rotation[1]:.9g} (period {rotation[2]})"
+        sentences.append(
+            f"the change nearest to the click is a Neimark-Sacker onset at {where}, "
+            "a kind that is not refined yet"
+        )
+    if not sentences:
+        return "no flip or fold of the cycles around the click lies within reach; click nearer to a split"
+    text = "; ".join(sentences)
+    return text[0].upper() + text[1:]

@@ -1,0 +1,322 @@
+"""A cascade of flips of a map of several states, followed level by level.
+
+Level n is the flip of the cycle of period base * 2**(n - 1). From each flip the doubled cycle is taken up by
+its amplitude along the critical vector (Keller 1977), followed by its amplitude's square, which is nearly
+linear in the parameter, until its own multiplier passes -1, and polished there.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Generator, Iterator
+from dataclasses import dataclass
+
+import numpy as np
+
+from tinemark.onsets.many_branch import Crossing, Event, Window, between, branch_point, follow
+from tinemark.onsets.many_cycles import (
+    Cycle,
+    least_period,
+    multipliers,
+    newton,
+    orbit_ends,
+    returns,
+    same_cycle,
+)
+from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
+from tinemark.onsets.many_onset import Settled, settle_onset
+from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.many_search import TOLERANCES, parents, scattered_cycles
+from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Step
+
+TRANSIENT = 4000
+DELTA_GUESS = 4.67
+FIRST_SHARE = 0.02
+"""Where a doubled cycle is taken up, as a share of the gap expected to its own flip."""
+GROWTH = 1.5
+MOST_POINTS = 200
+RESOLUTION = 1e-12
+"""Gaps below this share of the parameter are too narrow for doubles to follow."""
+NEUTRAL = 1e-6
+
+
+@dataclass(frozen=True)
+class _Doubled:
+    """A doubled cycle with its test for a flip of its own."""
+
+    cycle: Cycle
+    values: tuple[complex, ...]
+
+    @property
+    def flip_test(self) -> float:
+        return float(np.real(np.prod([1 + value for value in self.values])))
+
+
+def ladder_many(request: LadderRequest) -> Iterator[Step | LadderLevel | LadderResult]:
+    """Follow a cascade of flips from `start` towards `stop`.
+
+    Yields
+    ------
+    Step, LadderLevel or LadderResult
+        Progress, each level as it is found, and the result last. Its message says why a ladder ended
+        before the levels asked for.
+    """
+    yield Step("reading the map")
+    many = many_map(request.system, request.parameter)
+    float_map = float_many_map(many)
+    start, stop = float(request.start), float(request.stop)
+    base = request.base_period
+    levels: list[LadderLevel] = []
+
+    def result(message: str = "") -> LadderResult:
+        return LadderResult(base, tuple(levels), message)
+
+    if start == stop:
+        yield result("the ladder starts and stops at the same value")
+        return
+    scales = float_map.scales(start)
+    cycle = yield from _base_cycle(float_map, start, base, scales)
+    if cycle is None:
+        yield result(f"no cycle of period {base} was found at {many.parameter} = {start:.12g}")
+        return
+    first = yield from _first_flip(float_map, cycle, stop, scales, request.digits)
+    if isinstance(first, str):
+        yield result(first)
+        return
+    settled, before = first, None
+    for level in range(1, request.levels + 1):
+        found = LadderLevel(level, settled.onset)
+        levels.append(found)
+        yield found
+        if level == request.levels:
+            break
+        following = yield from _next_flip(float_map, settled, before, stop, scales, request.digits)
+        if isinstance(following, str):
+            yield result(following)
+            return
+        before, settled = settled, following
+    yield result()
+
+
+def _base_cycle(
+    float_map: FloatManyMap, start: float, base: int, scales: Floats
+) -> Generator[Step, None, Cycle | None]:
+    """A cycle of the base period at the start; settled ones first, then any, stable ones first."""
+    text = f"looking for a cycle of period {base}"
+    states = np.array([[float(value)] for value in float_map.many.starts])
+    lanes = np.array([start])
+    for _ in range(8):
+        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // 8, 1)
+        states = history[-1]
+        yield Step(text)
+    history, lanes = orbit_ends(float_map, states, lanes, 0, 4 * base + 65)
+    for periods in returns(history, scales, TOLERANCES):
+        for period in periods:
+            cycle = newton(float_map, Cycle(history[-period:, :, 0].copy(), start), scales)
+            if cycle is None:
+                continue
+            cycle = Cycle(cycle.points[: least_period(cycle.points, scales)], start)
+            for candidate in (cycle, *parents(float_map, cycle, scales)):
+                if candidate.period == base:
+                    return candidate
+    yield Step(text)
+    best: tuple[float, Cycle] | None = None
+    for cycle in scattered_cycles(float_map, start, scales, (base,)):
+        yield Step(text)
+        if cycle.period != base:
+            continue
+        size = max(map(abs, multipliers(float_map, cycle)), default=np.inf)
+        if best is None or size < best[0] - NEUTRAL:
+            best = (size, cycle)
+    return best[1] if best else None
+
+
+def _first_flip(
+    float_map: FloatManyMap, cycle: Cycle, stop: float, scales: Floats, digits: int
+) -> Generator[Step, None, Settled | str]:
+    """The first flip of the base cycle on the way to the stop, or why there is none."""
+    start = cycle.r
+    width = abs(stop - start)
+    window = Window(min(start, stop), max(start, stop), width, scales)
+    point = branch_point(float_map, cycle, window)
+    if point is None:
+        return "the base cycle cannot be followed"
+    direction = 1 if stop > start else -1
+    trace, events = yield from follow(float_map, point, window, direction)
+    rotation = next((e for e in events if e.kind is Crossing.NEIMARK_SACKER), None)
+    for event in events:
+        if event.kind is not Crossing.FLIP or not window.low <= event.rough.r <= window.high:
+            continue
+        bracket = abs(event.before.cycle.r - event.after.cycle.r)
+        try:
+            return (
+                yield from settle_onset(
+                    float_map, Kind.FLIP, event.rough, digits, scales, 2 * bracket + 1e-9 * width
+                )
+            )
+        except NotFound:
+            continue
+    name = float_map.many.parameter
+    ended = f"the cycle of period {cycle.period} was followed to {name} = {trace[-1].cycle.r:.6g}"
+    if rotation is not None:
+        where = f"near {name} = {rotation.rough.r:.6g}"
+        return f"{ended}; it loses its stability in a Neimark-Sacker onset {where}, not in a flip"
+    if _turns(events):
+        return f"{ended}; it ends in a fold and shows no flip before it"
+    return f"{ended} and shows no flip"
+
+
+def _turns(events: list[Event]) -> bool:
+    return any(event.kind is Crossing.FOLD for event in events)
+
+
+def _next_flip(
+    float_map: FloatManyMap,
+    settled: Settled,
+    before: Settled | None,
+    stop: float,
+    scales: Floats,
+    digits: int,
+) -> Generator[Step, None, Settled | str]:
+    """The flip of the doubled cycle that a flip leads to, or why there is none."""
+    origin = settled.cycle
+    gap = abs(stop - origin.r) / 4
+    if before is not None:
+        gap = min(abs(origin.r - before.cycle.r) / DELTA_GUESS, gap)
+    name = float_map.many.parameter
+    if gap < RESOLUTION * max(abs(origin.r), 1e-3):
+        return f"the next level lies within {gap:.1e} of the last, closer than doubles can follow"
+    here = yield from _take_up(float_map, settled, gap, scales)
+    if here is None:
+        what = f"the doubled cycle of period {2 * origin.period}"
+        return f"{what} could not be taken up beyond {name} = {origin.r:.12g}"
+    crossed = yield from _follow_doubled(float_map, origin, here, stop, scales)
+    if isinstance(crossed, str):
+        return crossed
+    low, high = crossed
+    rough = _closed_in(float_map, low, high, scales)
+    reach = 2 * abs(high.cycle.r - low.cycle.r) + 1e-12 * abs(origin.r)
+    if (stop - origin.r) * (stop - rough.r) < 0:
+        return f"the next flip lies beyond the end of the sweep, near {name} = {rough.r:.12g}"
+    try:
+        return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, _finer(rough, scales), reach))
+    except NotFound as error:
+        return f"the flip of period {rough.period} near {name} = {rough.r:.12g} was lost: {error}"
+
+
+def _finer(cycle: Cycle, scales: Floats) -> Floats:
+    """Scales of a long cycle: the share of the range that its nearest points are apart."""
+    half = cycle.period // 2
+    apart = np.max(np.abs(cycle.points - np.roll(cycle.points, -half, axis=0)) / scales)
+    return scales * float(min(1.0, max(apart, 1e-9)))
+
+
+def _take_up(
+    float_map: FloatManyMap, settled: Settled, gap: float, scales: Floats
+) -> Generator[Step, None, _Doubled | None]:
+    """A doubled cycle soon after its flip, with positive flip test."""
+    origin = settled.cycle
+    vectors = settled.vector / np.max(np.abs(settled.vector) / scales)
+    twice = np.concatenate([origin.points, origin.points])
+    shape = np.concatenate([vectors, -vectors])
+    along = shape / np.sum(shape**2)
+    amplitude = 0.02 if origin.period == 1 else 0.02 / origin.period**0.5
+    for _ in range(40):
+        yield Step(f"taking up the cycle of period {2 * origin.period}")
+        guess = Cycle(twice + amplitude * shape, origin.r)
+        target = float(np.sum(along * guess.points))
+        cycle = newton(float_map, guess, scales * amplitude, along=along, target=target)
+        if cycle is None:
+            amplitude /= 3
+            continue
+        apart = abs(cycle.r - origin.r)
+        share = apart / gap
+        here = _doubled(float_map, cycle)
+        if here is not None and here.flip_test > 0 and FIRST_SHARE / 8 < share < 8 * FIRST_SHARE:
+            return here
+        if amplitude < 1e-9:
+            return here if here is not None and here.flip_test > 0 else None
+        amplitude *= float(np.clip(np.sqrt(FIRST_SHARE / share) if share > 0 else 4.0, 0.2, 5.0))
+    return None
+
+
+def _doubled(float_map: FloatManyMap, cycle: Cycle) -> _Doubled | None:
+    values = multipliers(float_map, cycle)
+    return _Doubled(cycle, tuple(values)) if values else None
+
+
+def _follow_doubled(
+    float_map: FloatManyMap, origin: Cycle, here: _Doubled, stop: float, scales: Floats
+) -> Generator[Step, None, tuple[_Doubled, _Doubled] | str]:
+    """Two doubled cycles between which the multiplier passes -1, or why there are none."""
+    name = float_map.many.parameter
+    offset, step = here.cycle.r - origin.r, (GROWTH - 1) * (here.cycle.r - origin.r)
+    previous: _Doubled | None = None
+    for _ in range(MOST_POINTS):
+        yield Step(f"following the cycle of period {here.cycle.period}")
+        following = _doubled_at(float_map, origin, previous, here, offset + step, scales)
+        if following is None:
+            step /= 3
+            if abs(step) < 1e-6 * abs(offset):
+                return (
+                    f"the cycle of period {here.cycle.period} could not be followed beyond "
+                    f"{name} = {here.cycle.r:.12g}: it may end in a fold there"
+                )
+            continue
+        if following.flip_test <= 0:
+            return here, following
+        if (stop - origin.r) * (stop - following.cycle.r) <= 0:
+            return f"the cycle of period {here.cycle.period} shows no flip up to {name} = {stop:.12g}"
+        previous, here = here, following
+        offset = here.cycle.r - origin.r
+        step = (GROWTH - 1) * offset
+    return f"the cycle of period {here.cycle.period} was followed far beyond where its flip was expected"
+
+
+def _doubled_at(
+    float_map: FloatManyMap,
+    origin: Cycle,
+    previous: _Doubled | None,
+    here: _Doubled,
+    offset: float,
+    scales: Floats,
+) -> _Doubled | None:
+    """The doubled cycle at a distance from its flip, predicted from the ones before."""
+    now = here.cycle.r - origin.r
+    twice = np.concatenate([origin.points, origin.points])
+    if previous is None:
+        start, past = twice, 0.0
+    else:
+        start, past = previous.cycle.points, previous.cycle.r - origin.r
+    # Linear in the square root of the distance: the amplitude's own scale near a flip.
+    roots = [np.sqrt(max(value / now, 0.0)) for value in (past, offset)]
+    slope = (here.cycle.points - start) / (1 - roots[0])
+    guess = Cycle(here.cycle.points + (roots[1] - 1) * slope, origin.r + offset)
+    cycle = newton(float_map, guess, scales)
+    if cycle is None:
+        return None
+    amplitude = float(np.max(np.abs(here.cycle.points - twice) / scales))
+    if float(np.max(np.abs(cycle.points - guess.points) / scales)) > 0.5 * amplitude:
+        return None
+    halves_apart = np.max(np.abs(cycle.points - np.roll(cycle.points, -origin.period, 0)) / scales)
+    if halves_apart < 1e-3 * amplitude:
+        return None  # Newton fell back to the cycle it split from
+    return _doubled(float_map, cycle)
+
+
+def _closed_in(float_map: FloatManyMap, low: _Doubled, high: _Doubled, scales: Floats) -> Cycle:
+    """A cycle near the flip between two, by the secant of the flip test kept inside the bracket."""
+    for _ in range(8):
+        share = low.flip_test / (low.flip_test - high.flip_test)
+        share = min(max(share, 0.05), 0.95)
+        guess = between(low.cycle, high.cycle, share)
+        cycle = newton(float_map, guess, scales)
+        middle = _doubled(float_map, cycle) if cycle is not None else None
+        if middle is None:
+            break
+        if middle.flip_test > 0:
+            low = middle
+        else:
+            high = middle
+        if abs(middle.flip_test) < 1e-3:
+            return middle.cycle
+    return low.cycle if abs(low.flip_test) < abs(high.flip_test) else high.cycle

@@ -1,0 +1,146 @@
+"""What a polished flip or fold of several states is like: multipliers, crossing speed, criticality.
+
+Flip (Kuznetsov, Elements of Applied Bifurcation Theory, 5.4.2): with A q = -q, p A = -p, <p, q> = 1,
+c = <p, C(q, q, q) + 3 B(q, (I - A)^-1 B(q, q))> / 6. On the curve x_0 + e q + e^2 (I - A)^-1 B(q, q) / 2 the
+third-order term of f^p is exactly the bracket over 6, so c comes from two differences of f^p along curves,
+taken in high precision. c > 0: the doubled cycle appears softly, on the far side of the onset.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from flint import arb, arb_mat
+
+from tinemark.onsets.ball_orbits import precision
+from tinemark.onsets.many_map import Floats, ManyMap, ball_evaluators
+from tinemark.onsets.many_polish import Polished
+from tinemark.onsets.results import Criticality, Kind
+
+DIFFERENCE_BITS = 40
+"""Steps of the differences are the state's scale times 2**-this."""
+ON_THE_CIRCLE = 1e-6
+DEFECTIVE = 1e-6
+"""Left and right critical vectors whose cosine is smaller than this mean a double multiplier."""
+ONE_SIGN = 1e-9
+
+
+@dataclass(frozen=True)
+class Findings:
+    """What was found of an onset.
+
+    Attributes
+    ----------
+    critical
+        The critical multiplier.
+    others
+        The other multipliers.
+    is_simple
+        Whether the critical multiplier is the only one of its value, and no other lies on the unit circle.
+    doubled
+        Whether two multipliers meet at the critical value, as they must where the map preserves areas.
+    crossing
+        Flip: derivative of the critical multiplier in the parameter. Fold: <p, df^p/dr>.
+    coefficient
+        Flip: c of the normal form. Fold: <p, B(q, q)> / 2. None where it is not defined.
+    criticality
+        From the sign of c where it is clearly one sign.
+    """
+
+    critical: complex
+    others: tuple[complex, ...]
+    is_simple: bool
+    doubled: bool
+    crossing: float
+    coefficient: float | None
+    criticality: Criticality
+
+
+def findings(many: ManyMap, kind: Kind, found: Polished, scales: Floats) -> Findings:
+    """Check a polished onset."""
+    target = -1.0 if kind is Kind.FLIP else 1.0
+    n = many.size
+    matrix = _floats(found.monodromy)
+    values = [complex(value) for value in np.linalg.eigvals(matrix)]
+    values.sort(key=lambda value: abs(value - target))
+    critical, others = values[0], tuple(values[1:])
+    q = np.array([float(value) for value in found.vectors[0]])
+    left = _left_null(matrix - target * np.eye(n))
+    cosine = float(left @ q) / float(np.linalg.norm(left) * np.linalg.norm(q))
+    near = [value for value in others if abs(value - target) < 1e-3]
+    doubled = bool(near) or abs(cosine) < DEFECTIVE
+    is_simple = not doubled and all(abs(abs(value) - 1) > ON_THE_CIRCLE for value in others)
+    if doubled:
+        return Findings(critical, others, False, True, 0.0, None, _undecided(kind))
+    turn, turn_r = _floats(found.turn), np.array([float(value) for value in found.turn_r])
+    slope = np.array([float(value) for value in found.slope])
+    size = float(np.linalg.norm(q / scales))
+    p = left / float(left @ q)
+    if kind is Kind.FOLD:
+        bend = float(p @ turn @ q) / 2 / size
+        crossing = float(p @ slope) * size
+        return Findings(critical, others, is_simple, False, crossing, bend, Criticality.NOT_APPLICABLE)
+    drift = np.linalg.solve(np.eye(n) - matrix, slope)
+    crossing = float(p @ (turn @ drift + turn_r))
+    coefficient, spread = _flip_coefficient(many, found, matrix, p * size, q / size)
+    clear = abs(coefficient) > ONE_SIGN and spread < abs(coefficient) / 10
+    criticality = Criticality.UNDECIDED
+    if clear and is_simple:
+        criticality = Criticality.SUPERCRITICAL if coefficient > 0 else Criticality.SUBCRITICAL
+    return Findings(critical, others, is_simple, False, crossing, coefficient, criticality)
+
+
+def _undecided(kind: Kind) -> Criticality:
+    return Criticality.UNDECIDED if kind is Kind.FLIP else Criticality.NOT_APPLICABLE
+
+
+def _flip_coefficient(
+    many: ManyMap, found: Polished, matrix: Floats, p: Floats, q: Floats
+) -> tuple[float, float]:
+    """Coefficient for a critical vector of length 1 in scaled states, and how far two step sizes disagree."""
+    coefficients = []
+    for extra in (0, 5):
+        # Long cycles are fine structures: their points lie closer the longer they are.
+        finer = DIFFERENCE_BITS + extra + 3 * len(found.points).bit_length()
+        bits = max(found.bits, 5 * finer + 60)
+        with precision(bits):
+            step = arb(2) ** (-finer)
+            coefficients.append(_third_order(many, found, matrix, p, q, step))
+    return coefficients[1], abs(coefficients[1] - coefficients[0])
+
+
+def _third_order(many: ManyMap, found: Polished, matrix: Floats, p: Floats, q: Floats, h: Any) -> float:
+    n, count = many.size, len(found.points)
+    x0 = found.points[0]
+    step = ball_evaluators(many).step
+    direction = [arb(float(value)) for value in q]
+
+    def image(e: Any, second: list[Any]) -> list[Any]:
+        point = [(x0[i] + e * direction[i] + e * e * second[i]).mid() for i in range(n)]
+        for _ in range(count):
+            point = [arb(value).mid() for value in step(*point, found.r)]
+        return point
+
+    straight = [arb(0)] * n
+    plus, middle, minus = image(h, straight), image(arb(0), straight), image(-h, straight)
+    half_bend = [((plus[i] - 2 * middle[i] + minus[i]) / (2 * h * h)).mid() for i in range(n)]
+    system = arb_mat(
+        n, n, [(1 if i == j else 0) - arb(float(matrix[i, j])) for i in range(n) for j in range(n)]
+    )
+    second = system.solve(arb_mat(n, 1, half_bend), algorithm="approx")
+    curve = [second[i, 0].mid() for i in range(n)]
+    far, near, back, far_back = (image(k * h, curve) for k in (2, 1, -1, -2))
+    third = [(far[i] - 2 * near[i] + 2 * back[i] - far_back[i]) / (12 * h**3) for i in range(n)]
+    return float(sum((arb(float(p[i])) * third[i] for i in range(n)), arb(0)))
+
+
+def _left_null(matrix: Floats) -> Floats:
+    left: Floats = np.linalg.svd(matrix)[0][:, -1]
+    return left
+
+
+def _floats(matrix: Any) -> Floats:
+    rows, columns = matrix.nrows(), matrix.ncols()
+    return np.array([[float(matrix[i, j]) for j in range(columns)] for i in range(rows)])

@@ -1,0 +1,152 @@
+"""Cycles of maps of several states around a click: settled orbits, close returns, what they split from."""
+
+from __future__ import annotations
+
+from collections.abc import Generator, Iterator, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from tinemark.onsets.many_cycles import Cycle, least_period, newton, orbit_ends, returns, same_cycle
+from tinemark.onsets.many_map import FloatManyMap, Floats
+from tinemark.onsets.results import Step
+
+OFFSETS = (0.0, 0.004, -0.004, 0.012, -0.012, 0.03, -0.03, 0.07, -0.07, 0.15, -0.15, 0.3, -0.3, 0.5, -0.5)
+"""Where orbits are settled, in widths of the view from the click."""
+SCATTERED_STARTS = 3
+SCATTERED_FOR_NEWTON = 24
+TRANSIENT = 1500
+LONGEST_PERIOD = 128
+TOLERANCES = (1e-9, 1e-6, 1e-4, 3e-3)
+CLOSE_RETURN = 0.05
+LONGEST_CLOSE_RETURN = 8
+SEED = 20240229
+
+
+@dataclass(frozen=True)
+class Place:
+    """A click: parameter, observed quantity or None, and the lengths that count as 1 on the screen."""
+
+    r: float
+    observed: float | None
+    width: float
+    height: float | None
+
+    def distance(self, float_map: FloatManyMap, cycle: Cycle) -> float:
+        """Distance on the screen from the click to the nearest point of a cycle."""
+        across = (cycle.r - self.r) / self.width
+        if self.observed is None or not self.height:
+            return abs(across)
+        up = (float_map.observed(cycle.points, cycle.r) - self.observed) / self.height
+        return float(np.hypot(across, np.min(np.abs(up))))
+
+
+def cycles_around(
+    float_map: FloatManyMap, place: Place, scales: Floats
+) -> Generator[Step, None, list[Cycle]]:
+    """Distinct cycles at parameters around a click, nearest on the screen first."""
+    yield Step("settling orbits around the click")
+    rs = place.r + place.width * np.array(OFFSETS)
+    starts = _starts(float_map)
+    states = np.repeat(starts, len(rs), axis=1)
+    lanes = np.tile(rs, starts.shape[1])
+    history: Floats | None = None
+    for _ in range(5):
+        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // 5, 1)
+        yield Step("settling orbits around the click")
+        states = history[-1]
+    history, lanes = orbit_ends(float_map, states, lanes, 0, LONGEST_PERIOD + 1)
+    found: list[Cycle] = []
+    for place_, periods in enumerate(returns(history, scales, TOLERANCES)):
+        for period in periods:
+            _keep(
+                found,
+                _polished(float_map, history[-period:, :, place_], float(lanes[place_]), scales),
+                scales,
+            )
+    yield Step("settling orbits around the click")
+    if not found:
+        for guess, r in _close_returns(history, lanes, scales):
+            _keep(found, _polished(float_map, guess, r, scales), scales)
+        yield Step("looking for cycles that orbits come close to")
+    if not found:
+        # Nothing settles, as where the map preserves areas: Newton's method from scattered places.
+        for cycle in scattered_cycles(float_map, place.r, scales):
+            _keep(found, cycle, scales)
+            yield Step("looking for cycles from scattered starts")
+    for cycle in found.copy():
+        for parent in parents(float_map, cycle, scales):
+            _keep(found, parent, scales)
+    yield Step("ordering the cycles found")
+    return sorted(found, key=lambda cycle: (place.distance(float_map, cycle), cycle.period))
+
+
+def parents(float_map: FloatManyMap, cycle: Cycle, scales: Floats) -> Iterator[Cycle]:
+    """Cycles of half the period that a cycle may have split from: the means of opposite points."""
+    while cycle.period % 2 == 0:
+        half = cycle.period // 2
+        mean = (cycle.points[:half] + cycle.points[half:]) / 2
+        parent = _polished(float_map, mean, cycle.r, scales)
+        if parent is None or parent.period != half:
+            return
+        yield parent
+        cycle = parent
+
+
+def scattered_cycles(
+    float_map: FloatManyMap, r: float, scales: Floats, periods: Sequence[int] = (1, 2, 3, 4)
+) -> Iterator[Cycle]:
+    """Cycles that Newton's method finds from scattered starts, whether orbits settle on them or not."""
+    for start in _starts(float_map, SCATTERED_FOR_NEWTON).T:
+        for period in periods:
+            points = np.empty((period, float_map.size))
+            state = start[:, None]
+            for place in range(period):
+                points[place] = state[:, 0]
+                state = float_map.step(state, r)
+            cycle = _polished(float_map, points, r, scales)
+            if cycle is not None:
+                yield cycle
+
+
+def _starts(float_map: FloatManyMap, scattered_starts: int = SCATTERED_STARTS) -> Floats:
+    """Own start of the system and a few scattered in the states' ranges; shape (n, starts)."""
+    many = float_map.many
+    own = np.array([float(value) for value in many.starts])
+    random = np.random.default_rng(SEED)
+    columns = [own]
+    for _ in range(scattered_starts):
+        scattered = [
+            random.uniform(float(extent[0]), float(extent[1]))
+            if extent
+            else value * (1 + 0.3 * random.uniform(-1, 1))
+            for extent, value in zip(many.extents, own, strict=True)
+        ]
+        columns.append(np.array(scattered))
+    return np.array(columns).T
+
+
+def _polished(float_map: FloatManyMap, points: Floats, r: float, scales: Floats) -> Cycle | None:
+    cycle = newton(float_map, Cycle(np.ascontiguousarray(points), r), scales)
+    if cycle is None:
+        return None
+    return Cycle(cycle.points[: least_period(cycle.points, scales)], r)
+
+
+def _keep(found: list[Cycle], cycle: Cycle | None, scales: Floats) -> None:
+    if cycle is None:
+        return
+    if not any(cycle.r == other.r and same_cycle(cycle, other, scales) for other in found):
+        found.append(cycle)
+
+
+def _close_returns(history: Floats, lanes: Floats, scales: Floats) -> Iterator[tuple[Floats, float]]:
+    """Stretches of orbits that nearly close, the closest of each length and parameter."""
+    for period in range(1, LONGEST_CLOSE_RETURN + 1):
+        gaps = np.max(np.abs(history[period:] - history[:-period]) / scales[:, None], axis=1)
+        best = np.argmin(gaps, axis=0)
+        order = np.argsort(gaps[best, np.arange(len(lanes))])
+        for lane in order[:6]:
+            start = int(best[lane])
+            if gaps[start, lane] < CLOSE_RETURN:
+                yield history[start : start + period, :, lane], float(lanes[lane])
