@@ -176,6 +176,14 @@ def test_readings_too_coarse_to_shrink_still_join() -> None:
     assert len(ladders(onsets)) == 1
 
 
+def test_measured_onsets_make_a_ladder_of_their_own() -> None:
+    model = known.flips(known.LOGISTIC[:4])
+    bench = known.flips(("3.01", "3.46", "3.55"), width="0.01", status=Status.MEASURED)  # type: ignore[arg-type]
+    expected = {ladder(1, known.LOGISTIC[:4]), ladder(1, ("3.01", "3.46", "3.55"))}
+    assert ladders(model + bench) == expected
+    assert ladders(bench[1:] + model[:1]) == {ladder(1, known.LOGISTIC[:1]), ladder(1, ("3.46", "3.55"), 2)}
+
+
 def test_other_places_are_other_ladders() -> None:
     rows = rows_of(known.flips(known.HENON))
     other = [Row(row_id(row.number + 50), row.onset, row.system_key, (("b", "0.3"),)) for row in rows]

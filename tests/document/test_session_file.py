@@ -12,6 +12,7 @@ import struct
 import warnings
 import zipfile
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -23,6 +24,7 @@ from session_samples import CUBIC_TEXT, full_session, pick, sessions
 
 from tinemark.document import atomic_file, session_file
 from tinemark.document import session as ses
+from tinemark.document.ladders import grouped
 from tinemark.document.session import Session
 from tinemark.document.session_file import open_session, read_session, save_session, session_bytes
 from tinemark.systems.errors import SessionFileError
@@ -67,9 +69,18 @@ def test_rows_keep_the_text_of_their_system() -> None:
 
 def test_the_version_1_file_still_opens() -> None:
     """Written once by schema version 1 and never again: a change of the format must not lose it."""
-    session = open_session(FILES / "version_1.tinemark")
-    assert session == full_session()
-    assert session_bytes(session) == (FILES / "version_1.tinemark").read_bytes()
+    opened, expected = open_session(FILES / "version_1.tinemark"), full_session()
+    # How rows are grouped may improve; what they are may not change.
+    regrouped = [
+        replace(s, ledger=replace(s.ledger, rows=grouped(s.ledger.rows))) for s in (opened, expected)
+    ]
+    assert regrouped[0] == regrouped[1]
+
+
+def test_the_present_version_is_written_to_the_byte() -> None:
+    """A change of what is written needs a new schema version: then this file gets a younger brother."""
+    data = (FILES / "version_1.tinemark").read_bytes()
+    assert session_bytes(read_session(data)) == data
 
 
 def test_a_repacked_session_opens(tmp_path: Path) -> None:

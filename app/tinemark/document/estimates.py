@@ -144,8 +144,8 @@ def estimates_of(ladder: str, rows: Sequence[Row]) -> LadderEstimates:
     rows
         Rows of one ladder, at least one, in any order. The fold at its head carries no ratio.
     """
-    flips = {row.level: row for row in reversed(rows) if row.level and row.onset.kind is Kind.FLIP}
-    found = _scaling(tuple(_point(row) for row in flips.values()))
+    flips = _flips(rows)
+    found = scaling_of(rows)
     levels = tuple(
         LevelEstimate(
             level=item.level,
@@ -180,6 +180,15 @@ def estimates_of(ladder: str, rows: Sequence[Row]) -> LadderEstimates:
         class_limit=_taken(found.class_limit),
         used_levels=found.used_levels,
     )
+
+
+def scaling_of(rows: Sequence[Row]) -> Scaling:
+    """The same as the engine's own result."""
+    return _scaling(tuple(_point(row) for row in _flips(rows).values()))
+
+
+def _flips(rows: Sequence[Row]) -> dict[int, Row]:
+    return {row.level: row for row in reversed(rows) if row.level and row.onset.kind is Kind.FLIP}
 
 
 @lru_cache(maxsize=64)

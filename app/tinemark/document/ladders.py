@@ -66,8 +66,9 @@ _Chain = tuple[_Link, ...]  # by order
 
 
 def _chains(rows: Sequence[Row]) -> list[_Chain]:
-    families: dict[tuple[Place, int], list[_Link]] = defaultdict(list)
-    others: dict[Place, list[tuple[int, Fraction]]] = defaultdict(list)
+    # Measured onsets make ladders of their own, to be compared with the model's.
+    families: dict[tuple[Place, bool, int], list[_Link]] = defaultdict(list)
+    others: dict[tuple[Place, bool], list[tuple[int, Fraction]]] = defaultdict(list)
     for row in rows:
         onset = row.onset
         period = onset.period_after if onset.kind is Kind.FOLD else onset.period_before
@@ -79,11 +80,12 @@ def _chains(rows: Sequence[Row]) -> list[_Chain]:
         order = Fraction((period & -period).bit_length() - 1)
         if onset.kind is Kind.FOLD:
             order -= Fraction(1, 2)
-        families[row.place, odd].append(_Link(row, order, onset.value_fraction, onset.half_width))
-        others[row.place].append((odd, onset.value_fraction))
+        measured = onset.status is Status.MEASURED
+        families[row.place, measured, odd].append(_Link(row, order, onset.value_fraction, onset.half_width))
+        others[row.place, measured].append((odd, onset.value_fraction))
     chains: list[_Chain] = []
-    for (place, odd), links in families.items():
-        foreign = sorted(value for other, value in others[place] if other != odd)
+    for (place, measured, odd), links in families.items():
+        foreign = sorted(value for other, value in others[place, measured] if other != odd)
         chains += _join(links, foreign)
     # A fold alone opens no ladder yet.
     return [chain for chain in chains if not all(link.is_fold for link in chain)]
@@ -93,7 +95,7 @@ def _join(links: list[_Link], foreign: list[Fraction]) -> list[_Chain]:
     """Single linkage: calculated rows first, so that a coarse reading cannot take a proved one's place."""
     links = sorted(links, key=lambda link: (link.value, link.row.number))
     chain_of: dict[str, _Chain] = {link.row.id: (link,) for link in links}
-    calculated = [link for link in links if link.row.onset.status in (Status.PROVED, Status.ESTIMATED)]
+    calculated = [link for link in links if link.row.onset.status is not Status.READ_BY_EYE]
     refused: set[tuple[str, int, str, int]] = set()
     for members in (calculated, links):
         pairs = _pairs(members)

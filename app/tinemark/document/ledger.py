@@ -217,7 +217,8 @@ def ladder_title(ledger: Ledger, ladder_id: str) -> str:
         return ""
     fixed = ", ".join(f"{name} = {value}" for name, value in rows[0].fixed)
     way = {1: ", rising", -1: ", falling", 0: ""}[direction(rows)]
-    title = f"period {rows[0].base_period} in {rows[0].onset.parameter}{way}"
+    measured = "measured " if rows[0].onset.status is Status.MEASURED else ""
+    title = f"{measured}period {rows[0].base_period} in {rows[0].onset.parameter}{way}"
     return f"{title}, at {fixed}" if fixed else title
 
 
