@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator
+from collections.abc import Generator
 from dataclasses import dataclass
 from itertools import pairwise
 
@@ -25,6 +25,7 @@ from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.many_search import Place, cycles_around
 from tinemark.onsets.results import Kind, RefineRequest, RefineResult, Step
+from tinemark.systems.errors import NoOnsetFound
 
 __all__ = ["ladder_many", "refine_many"]
 
@@ -65,7 +66,7 @@ class _Candidate:
         return self.stable_share < LEAST_VISIBLE, self.distance
 
 
-def refine_many(request: RefineRequest) -> Iterator[Step | RefineResult]:
+def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     """The flips and folds nearest to a click.
 
     Orbits are settled around the click, the cycles they lead to are followed through the view by
@@ -74,8 +75,18 @@ def refine_many(request: RefineRequest) -> Iterator[Step | RefineResult]:
 
     Yields
     ------
-    Step or RefineResult
-        Progress, at least every few ten milliseconds; the result last. A result without onsets says why.
+    Step
+        Progress, at least every few ten milliseconds.
+
+    Returns
+    -------
+    RefineResult
+        As the generator's value.
+
+    Raises
+    ------
+    NoOnsetFound
+        No flip or fold in reach; says what was looked at, and what else lies there.
     """
     yield Step("reading the map")
     many = many_map(request.system, request.parameter)
@@ -87,18 +98,20 @@ def refine_many(request: RefineRequest) -> Iterator[Step | RefineResult]:
         None if request.height is None else float(request.height),
     )
     if not _doubles_tell_apart(place):
-        yield RefineResult(
-            (), "the view is narrower than doubles can tell apart; zoom out one step and click again"
+        raise NoOnsetFound(
+            "the view is narrower than doubles can tell apart",
+            what_to_do="zoom out a step and click again",
         )
-        return
     full_scales = float_map.scales(place.r)
     cycles = yield from cycles_around(float_map, place, full_scales)
     if not cycles:
-        yield RefineResult((), "no orbit around the click settles on a cycle or comes close to one")
-        return
+        raise NoOnsetFound(
+            "no orbit around the click settles on a cycle or comes close to one",
+            what_to_do="click nearer to a split, or check the start values of the states",
+        )
     window = _window(place, full_scales, request)
     candidates = yield from _candidates(float_map, cycles, place, window)
-    yield from _settle(float_map, candidates, place, window, request.digits)
+    return (yield from _settle(float_map, candidates, place, window, request.digits))
 
 
 def _doubles_tell_apart(place: Place) -> bool:
@@ -175,7 +188,7 @@ def _is_on(float_map: FloatManyMap, cycle: Cycle, traces: list[list[BranchPoint]
 
 def _settle(
     float_map: FloatManyMap, candidates: list[_Candidate], place: Place, window: Window, digits: int
-) -> Iterator[Step | RefineResult]:
+) -> Generator[Step, None, RefineResult]:
     """Polish the nearest candidates and put the result into words."""
     settled: list[tuple[float, Settled]] = []
     rotation: _Candidate | None = None
@@ -196,12 +209,12 @@ def _settle(
             settled.append((distance, onset))
     settled.sort(key=lambda item: item[0])
     shown = [item for item in settled[:2] if not _far_beyond(settled[:1], item[0])]
-    yield RefineResult(
-        tuple(item.onset for _, item in shown),
-        _message(
-            float_map.many.parameter, shown, None if rotation is None else _at(float_map, rotation, place)
-        ),
+    message = _message(
+        float_map.many.parameter, shown, None if rotation is None else _at(float_map, rotation, place)
     )
+    if not shown:
+        raise NoOnsetFound(message, what_to_do="click nearer to a split")
+    return RefineResult(tuple(item.onset for _, item in shown), message)
 
 
 def _at(float_map: FloatManyMap, candidate: _Candidate, place: Place) -> tuple[float, float, int]:
@@ -286,6 +299,6 @@ def _message(
             "a kind that is not refined yet"
         )
     if not sentences:
-        return "no flip or fold of the cycles around the click lies within reach; click nearer to a split"
+        return "no flip or fold of the cycles around the click lies within reach"
     text = "; ".join(sentences)
     return text[0].upper() + text[1:]

@@ -7,7 +7,7 @@ linear in the parameter, until its own multiplier passes -1, and polished there.
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator
+from collections.abc import Generator
 from dataclasses import dataclass
 
 import numpy as np
@@ -20,13 +20,13 @@ from tinemark.onsets.many_cycles import (
     newton,
     orbit_ends,
     returns,
-    same_cycle,
 )
 from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
 from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.many_search import TOLERANCES, parents, scattered_cycles
 from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Step
+from tinemark.systems.errors import NoOnsetFound
 
 TRANSIENT = 4000
 DELTA_GUESS = 4.67
@@ -51,50 +51,50 @@ class _Doubled:
         return float(np.real(np.prod([1 + value for value in self.values])))
 
 
-def ladder_many(request: LadderRequest) -> Iterator[Step | LadderLevel | LadderResult]:
+def ladder_many(request: LadderRequest) -> Generator[Step | LadderLevel, None, LadderResult]:
     """Follow a cascade of flips from `start` towards `stop`.
 
     Yields
     ------
-    Step, LadderLevel or LadderResult
-        Progress, each level as it is found, and the result last. Its message says why a ladder ended
-        before the levels asked for.
+    Step or LadderLevel
+        Progress, and each level as it is found.
+
+    Returns
+    -------
+    LadderResult
+        As the generator's value. Its message says why a ladder ended before the levels asked for.
+
+    Raises
+    ------
+    NoOnsetFound
+        There is no first level on the way; says what was looked at.
     """
     yield Step("reading the map")
     many = many_map(request.system, request.parameter)
     float_map = float_many_map(many)
     start, stop = float(request.start), float(request.stop)
     base = request.base_period
-    levels: list[LadderLevel] = []
-
-    def result(message: str = "") -> LadderResult:
-        return LadderResult(base, tuple(levels), message)
-
     if start == stop:
-        yield result("the ladder starts and stops at the same value")
-        return
+        raise NoOnsetFound("the ladder starts and stops at the same value", what_to_do="give two values")
     scales = float_map.scales(start)
     cycle = yield from _base_cycle(float_map, start, base, scales)
     if cycle is None:
-        yield result(f"no cycle of period {base} was found at {many.parameter} = {start:.12g}")
-        return
-    first = yield from _first_flip(float_map, cycle, stop, scales, request.digits)
-    if isinstance(first, str):
-        yield result(first)
-        return
-    settled, before = first, None
-    for level in range(1, request.levels + 1):
-        found = LadderLevel(level, settled.onset)
-        levels.append(found)
-        yield found
-        if level == request.levels:
-            break
+        raise NoOnsetFound(
+            f"no cycle of period {base} was found at {many.parameter} = {start:.12g}",
+            what_to_do="start where the system settles on it",
+        )
+    settled = yield from _first_flip(float_map, cycle, stop, scales, request.digits)
+    before: Settled | None = None
+    levels: list[LadderLevel] = []
+    while True:
+        levels.append(LadderLevel(len(levels) + 1, settled.onset))
+        yield levels[-1]
+        if len(levels) >= request.levels:
+            return LadderResult(base, tuple(levels))
         following = yield from _next_flip(float_map, settled, before, stop, scales, request.digits)
         if isinstance(following, str):
-            yield result(following)
-            return
+            return LadderResult(base, tuple(levels), following)
         before, settled = settled, following
-    yield result()
 
 
 def _base_cycle(
@@ -132,14 +132,14 @@ def _base_cycle(
 
 def _first_flip(
     float_map: FloatManyMap, cycle: Cycle, stop: float, scales: Floats, digits: int
-) -> Generator[Step, None, Settled | str]:
-    """The first flip of the base cycle on the way to the stop, or why there is none."""
+) -> Generator[Step, None, Settled]:
+    """The first flip of the base cycle on the way to the stop."""
     start = cycle.r
     width = abs(stop - start)
     window = Window(min(start, stop), max(start, stop), width, scales)
     point = branch_point(float_map, cycle, window)
     if point is None:
-        return "the base cycle cannot be followed"
+        raise NoOnsetFound("the base cycle cannot be followed")
     direction = 1 if stop > start else -1
     trace, events = yield from follow(float_map, point, window, direction)
     rotation = next((e for e in events if e.kind is Crossing.NEIMARK_SACKER), None)
@@ -159,10 +159,12 @@ def _first_flip(
     ended = f"the cycle of period {cycle.period} was followed to {name} = {trace[-1].cycle.r:.6g}"
     if rotation is not None:
         where = f"near {name} = {rotation.rough.r:.6g}"
-        return f"{ended}; it loses its stability in a Neimark-Sacker onset {where}, not in a flip"
+        raise NoOnsetFound(
+            f"{ended}; it loses its stability in a Neimark-Sacker onset {where}, not in a flip"
+        )
     if _turns(events):
-        return f"{ended}; it ends in a fold and shows no flip before it"
-    return f"{ended} and shows no flip"
+        raise NoOnsetFound(f"{ended}; it turns round in a fold and shows no flip")
+    raise NoOnsetFound(f"{ended} and shows no flip", what_to_do="widen the range")
 
 
 def _turns(events: list[Event]) -> bool:
