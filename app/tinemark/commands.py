@@ -217,8 +217,6 @@ def _swept_over(system: System, left: Fraction, right: Fraction) -> System:
 
 def _draw(session: Session, system: System, size: tuple[int, int], output: Path) -> int:
     """Draw a session's view to its budget and write it; returns the steps drawn."""
-    import threading
-
     from tinemark.density import renderer
     from tinemark.density.png import picture_png
     from tinemark.density.request import PictureRequest
@@ -245,7 +243,7 @@ def _draw(session: Session, system: System, size: tuple[int, int], output: Path)
     field = None
     try:
         for field in renderer.progressive(
-            request, BUDGETS[settings.budget], threading.Event(), os.cpu_count() or 1
+            request, BUDGETS[settings.budget]
         ):
             progress.step(f"{field.steps} steps drawn")
     finally:
@@ -279,8 +277,8 @@ def without_display(path: Path | None) -> None:
     from tinemark.document.ledger import ladder_title
     from tinemark.document.session import system_of
 
-    _say("there is no display, so the job runs without the window")
     session = session_of(path)
+    _say("there is no display, so the job runs without the window")
     system = system_of(session)
     print(session.title or system.title)
     if not session.ledger.rows:
