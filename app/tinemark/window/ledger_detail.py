@@ -119,7 +119,10 @@ class LedgerDetail(QScrollArea):
             (self.ratio, found.ratio if found else None, found.ratio_reason if found else ""),
         ):
             full = full_text(estimate)
-            label.show_number(grouped(full) if full else reason or "none", full or reason or "none")
+            if full:
+                label.show_number(grouped(full), full)
+            else:
+                label.show_words(_sentence(reason) if found else "None outside a ladder.")
         self._show_states(onset.states)
         meaning = f"{onset.status.value}. {STATUS_MEANING[onset.status]}"
         self.status.setText(f"{meaning} {_sentence(onset.reason)}".strip())

@@ -143,7 +143,8 @@ def _ladder_lines(
 
 def _heading(rows: Sequence[Row], ledger: Ledger, current_key: str) -> str:
     first = rows[0]
-    text = f"Ladder from period {first.base_period or first.onset.period_before}, parameter {first.onset.parameter}"
+    base = first.base_period or first.onset.period_before
+    text = f"Ladder from period {base}, parameter {first.onset.parameter}"
     # Other parameters are named where they tell this ladder from another.
     others = {row.fixed for row in ledger.rows if row.system_key == first.system_key}
     if len(others) > 1 and first.fixed:

@@ -93,6 +93,7 @@ class LedgerPanel(QWidget):
         self._parts.setStretchFactor(0, 3)
         self._parts.setStretchFactor(1, 2)
         self._parts.setCollapsible(0, False)
+        self._parts.setSizes([300, 210])
         self._stack = QStackedLayout()
         self._stack.addWidget(self._empty)
         self._stack.addWidget(self._parts)
@@ -224,7 +225,7 @@ class LedgerPanel(QWidget):
         self._fit_columns()
 
     def show_message(self, words: str, rank: str = "second") -> None:
-        """A sentence above the table; `rank` is "second", or "warning" or "error" where something went wrong."""
+        """A sentence above the table; `rank` is "second", or "warning" or "error" for something wrong."""
         self.message.setText(words)
         self.message.setProperty("rank", rank)
         self.message.style().unpolish(self.message)
@@ -291,6 +292,7 @@ class LedgerPanel(QWidget):
         self.extend_button.setEnabled(bool(self._selected_ladder()))
         self.refine_button.setEnabled(any(e.row.onset.status in REFINABLE for e in entries))
         self.remove_button.setEnabled(bool(ids))
+        self.detail_button.setEnabled(bool(self.model.entries))
         current = self.current_id()
         shown = next((e for e in entries if e.row.id == current), entries[0] if entries else None)
         self.detail.show_entry(shown)

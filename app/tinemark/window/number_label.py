@@ -6,7 +6,7 @@ from PySide6.QtCore import QEvent, Qt, Signal
 from PySide6.QtGui import QAction, QContextMenuEvent, QGuiApplication, QKeyEvent, QKeySequence
 from PySide6.QtWidgets import QLabel, QMenu, QWidget
 
-from tinemark.window.theme import mono_font
+from tinemark.window.theme import mono_font, small_font
 
 THIN_SPACES = "\u2009\u202f\u2007\u200a"
 
@@ -34,9 +34,8 @@ class NumberLabel(QLabel):
             Qt.TextInteractionFlag.TextSelectableByMouse | Qt.TextInteractionFlag.TextSelectableByKeyboard
         )
         self.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
-        self.setProperty("rank", "number")
-        self.setFont(mono_font())
         self.setAccessibleName(name)
+        self._dress("number")
 
     @property
     def full(self) -> str:
@@ -49,6 +48,23 @@ class NumberLabel(QLabel):
         self.setText(shown)
         self.setToolTip(self._full if self._full != plain_number(shown) else "")
         self.setAccessibleName(f"{self._name} {self._full}".strip())
+        if self._rank != "number":
+            self._dress("number")
+
+    def show_words(self, words: str) -> None:
+        """Show why there is no number, in the face of words."""
+        self._full = words
+        self.setText(words)
+        self.setToolTip("")
+        self.setAccessibleName(f"{self._name} {words}".strip())
+        self._dress("second")
+
+    def _dress(self, rank: str) -> None:
+        self._rank = rank
+        self.setProperty("rank", rank)
+        self.setFont(mono_font() if rank == "number" else small_font(1.0))
+        self.style().unpolish(self)
+        self.style().polish(self)
 
     def copy(self) -> None:
         """Put the selected part, or all digits, on the clipboard."""
@@ -83,4 +99,4 @@ class NumberLabel(QLabel):
         """Keep the tabular face at the interface's size."""
         super().changeEvent(event)
         if event.type() == QEvent.Type.ApplicationFontChange:
-            self.setFont(mono_font())
+            self._dress(self._rank)

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 
 import pyqtgraph as pg
 from PySide6.QtCore import QEvent, Qt
-from PySide6.QtGui import QColor, QFontMetricsF, QPen
+from PySide6.QtGui import QColor, QFontMetricsF, QGuiApplication, QPen
 
 from tinemark.window.theme import Theme, color, current_theme, small_font
 
@@ -80,6 +80,9 @@ class PanelPlot(pg.PlotWidget):
         self._labels = {"left": up, "bottom": across}
         self.setAccessibleName(name)
         self.hideButtons()
+        # pyqtgraph makes a menu even where none is wanted, as a window of its own that outlives the plot.
+        menu = self.plotItem.ctrlMenu
+        menu.setParent(self, menu.windowFlags())
         self.setMouseEnabled(x=False, y=False)
         self.setFrameShape(self.Shape.NoFrame)
         self.setFocusPolicy(Qt.FocusPolicy.NoFocus)
@@ -123,9 +126,10 @@ class PanelPlot(pg.PlotWidget):
 
 
 def line_pen(token: str, width: float = 1.0, *, dashed: bool = False, alpha: float = 1.0) -> QPen:
-    """A pen of constant width on screen in a token's colour."""
+    """A pen of constant width on screen, in device-independent pixels, in a token's colour."""
     pen = QPen(color(token, alpha))
-    pen.setWidthF(width)
+    # A cosmetic pen counts the screen's own pixels.
+    pen.setWidthF(width * QGuiApplication.instance().devicePixelRatio())
     pen.setCosmetic(True)
     pen.setCapStyle(Qt.PenCapStyle.FlatCap)
     if dashed:

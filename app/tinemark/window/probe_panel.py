@@ -133,7 +133,7 @@ class ProbePanel(QWidget):
         if parameter:
             self.name.setText(parameter)
         shown = value or (fraction_text(orbit.parameter_value, 30) if orbit is not None else "")
-        if orbit is not None and not self.value.hasFocus():
+        if orbit is not None and not (self.value.hasFocus() and self.value.isModified()):
             self.value.setText(shown)
             self._mark_value("")
         self._words = words

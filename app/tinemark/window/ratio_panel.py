@@ -224,6 +224,9 @@ class RatioPanel(QWidget):
         grid.setVerticalSpacing(4)
         grid.setColumnStretch(1, 1)
         self.limit = self._number(grid, "limit", "Where the ladder accumulates and the cascade ends")
+        self.class_limit_name, self.class_limit = self._named_number(
+            grid, "limit given the class", "The limit if the class is taken for granted"
+        )
         self.delta = self._number(grid, "delta", "What the ratios tend to")
         self.next_name, self.next = self._named_number(grid, "next onset", "Where to look for the next split")
         outer.addLayout(grid)
@@ -274,6 +277,10 @@ class RatioPanel(QWidget):
         )
         self.verdict.setText(_sentence(estimates.verdict))
         _show(self.limit, estimates.limit, estimates.limit_reason, estimates.parameter)
+        for widget in (self.class_limit_name, self.class_limit):
+            widget.setVisible(estimates.class_limit is not None)
+        if estimates.class_limit is not None:
+            _show(self.class_limit, estimates.class_limit, "", estimates.parameter)
         _show(self.delta, estimates.delta, estimates.delta_reason, "")
         if estimates.predictions:
             first = estimates.predictions[0]
@@ -282,8 +289,12 @@ class RatioPanel(QWidget):
         else:
             self.next_name.setText("next onset")
             _show(self.next, None, estimates.limit_reason, "")
-        known = any((estimates.limit, estimates.delta, estimates.predictions))
-        self.coverage.setVisible(known)
+        self.coverage.setVisible(any((estimates.limit, estimates.delta, estimates.predictions)))
+        if estimates.used_levels:
+            levels = ", ".join(str(level) for level in estimates.used_levels)
+            self.verdict.setToolTip(f"Limit, delta and predictions rest on levels {levels}.")
+        else:
+            self.verdict.setToolTip("")
 
     def changeEvent(self, event: QEvent) -> None:
         """Take fonts anew."""
@@ -306,15 +317,11 @@ def no_ratio_words(estimates: LadderEstimates) -> str:
 
 def _show(label: NumberLabel, estimate: Estimate | None, reason: str, name: str) -> None:
     if estimate is None:
-        label.show_number(_sentence(reason) or "Nothing can be said yet", reason)
-        label.setProperty("rank", "second")
-    else:
-        prefix = f"{name} = " if name else ""
-        label.show_number(prefix + estimate_text(estimate), full_text(estimate))
-        label.setToolTip(grouped(full_text(estimate)))
-        label.setProperty("rank", "number")
-    label.style().unpolish(label)
-    label.style().polish(label)
+        label.show_words(_sentence(reason) or "Nothing can be said yet")
+        return
+    prefix = f"{name} = " if name else ""
+    label.show_number(prefix + estimate_text(estimate), full_text(estimate))
+    label.setToolTip(grouped(full_text(estimate)))
 
 
 def _sentence(words: str) -> str:
