@@ -159,7 +159,8 @@ def follow_to_multiplier(
         away = target - now.multiplier
         goal = target if abs(away) <= longest else now.multiplier + math.copysign(longest, away)
         found = cycle_with_multiplier(cycles, now.x, now.r, now.period, goal)
-        if found is None:
+        # A cycle of lower period, run through several times, solves the same equations.
+        if found is None or least_period(cycles, found[0], found[1], now.period) != now.period:
             stride /= 2
             if stride < 0.03:
                 return None, cycles.offset(now.r, origin)

@@ -16,6 +16,10 @@ from tinemark.onsets.results import (
     RefineResult,
     Step,
 )
+from tinemark.systems.errors import TinemarkError
+
+MOST_DIGITS = 300
+"""Significant digits that may be asked for."""
 
 
 def refine(request: RefineRequest) -> Generator[Step, None, RefineResult]:
@@ -36,6 +40,7 @@ def refine(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     NoOnsetFound
         Nothing in reach; says what was looked at.
     """
+    _check(request.digits)
     if len(request.system.states) == 1:
         from tinemark.onsets.clicks import refine_one
 
@@ -63,6 +68,9 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
     NoOnsetFound
         The cascade has no first level there; says what was looked at.
     """
+    _check(request.digits)
+    if request.base_period < 1 or request.levels < 1:
+        raise TinemarkError("a ladder has a base period and levels of 1 or more")
     if len(request.system.states) == 1:
         from tinemark.onsets.ladder import ladder_one
 
@@ -70,3 +78,10 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
     from tinemark.onsets.many_engine import ladder_many
 
     return (yield from ladder_many(request))
+
+
+def _check(digits: int) -> None:
+    if not 1 <= digits <= MOST_DIGITS:
+        raise TinemarkError(
+            f"{digits} digits cannot be asked for", what_to_do=f"ask for 1 to {MOST_DIGITS} digits"
+        )

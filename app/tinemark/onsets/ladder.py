@@ -97,7 +97,7 @@ def ladder_one(request: LadderRequest) -> Generator[Step | LadderLevel, None, La
             message = f"the ladder ends at level {number - 1}: {following}"
             break
         levels.append(LadderLevel(number, following.onset))
-        found.append((yield from _anchored(course, following, period)))
+        found.append(following)
         yield levels[-1]
     return LadderResult(request.base_period, tuple(levels), message)
 
@@ -138,11 +138,10 @@ def _scan(course: _Course, columns: int, seen: set[int]) -> Generator[Step, None
     request, cycles = course.request, course.cycles
     start, stop = float(request.start), float(request.stop)
     tried: list[tuple[float, float]] = []
-    turning = cycles.critical_points(0.5 * (start + stop))[:6]
     block = 25
     for first in range(0, columns + 1, block):
         rs = [start + (stop - start) * k / columns for k in range(first, min(first + block, columns + 1))]
-        starts = [*turning, float(course.one.start)]
+        starts = [*cycles.critical_points(rs[len(rs) // 2])[:6], float(course.one.start)]
         jobs = [(x, r) for r in rs for x in starts]
         ends, returns = cycles.settle(
             [x for x, _ in jobs], [r for _, r in jobs], 3000, 8 * request.base_period + 64
@@ -220,7 +219,8 @@ def _next_level(
         return f"the flip of the period-{period} cycle could not be solved for: {error}"
     if (settled.r - course.request.stop) * course.direction > 0:
         return f"the flip of period {period} lies beyond {fraction_text(course.request.stop, 10)}"
-    return settled
+    # A predicted level is at the right cycle point already, and more precisely than doubles could find it.
+    return (yield from _anchored(course, settled, period))
 
 
 def _predicted(found: Sequence[Settled]) -> tuple[Fraction, Fraction] | None:

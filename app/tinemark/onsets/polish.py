@@ -41,6 +41,8 @@ from tinemark.systems.errors import SwitchingTouched
 
 ATTEMPTS = 4
 MOST_STEPS = 40
+LEAST_SIZE = Fraction(1, 10**40)
+"""An onset at zero has no significant digits: those of this size are given instead."""
 
 
 @dataclass(frozen=True)
@@ -91,9 +93,9 @@ def settle_onset(
         There is no such onset in reach.
     """
     loops = ball_loops(one)
-    places = decimal_places(rough.r, digits + GUARD_DIGITS)
+    places = decimal_places(max(abs(rough.r), LEAST_SIZE), digits + GUARD_DIGITS)
     wanted = Fraction(1, 10) ** (places + 1)
-    bits = first_bits(rough, places)
+    bits = first_bits(rough, max(places, digits))
     reason = ""
     last_step: float | None = None
     for _ in range(ATTEMPTS):
@@ -125,6 +127,9 @@ def settle_onset(
             continue
         shown = yield from _shown_state(loops, proof, show_after, bits)
         return Settled(_onset_of(one, rough, proof, digits, places, shown), rough.x, rough.r)
+    if last_step is not None and not last_step <= wanted:
+        # Slow convergence is what a pitchfork or a transcritical point looks like: no onset of this kind.
+        raise Lost("Newton's method found no isolated onset of this kind")
     half = _half_width(one, rough, wanted, last_step)
     return Settled(_estimate_of(one, rough, digits, half, reason), rough.x, rough.r)
 

@@ -15,6 +15,8 @@ from tinemark.onsets.results import RefineRequest, Step
 
 PIXEL = 1 / 1280
 """The share of a view that a pixel takes, for what can be seen in it."""
+ASPECT = 0.625
+"""Height of a view over its width, as on a screen."""
 LANES = 16
 
 
@@ -36,7 +38,7 @@ DEEP_WIDE = Sweep(tuple(k / 16 for k in sorted(range(-8, 9), key=abs)), 3000, 60
 
 @dataclass(frozen=True)
 class Candidate:
-    """An onset in reach: how far from the click, as a share of the view, and how it ranks."""
+    """An onset in reach: how far from the click, as a share of the view's width, and how it ranks."""
 
     crossing: Crossing
     distance: float
@@ -89,7 +91,7 @@ class Search:
         points = self.cycles.points(crossing.x, crossing.r, crossing.period)
         gaps = np.abs(self.cycles.observed_offsets(points, crossing.r, request.observed))
         place = int(np.argmin(gaps))
-        return float(gaps[place]) / float(request.height), place
+        return ASPECT * float(gaps[place]) / float(request.height), place
 
     def ranked(self) -> list[Candidate]:
         """Candidates, nearest first."""
