@@ -205,15 +205,20 @@ def compilers_named(source: str) -> set[str]:
     return found
 
 
+# The one decorator, and that of the elementary functions it inlines, which must not be re-associated.
+COMPILING = {"systems/native.py", "systems/lane_math.py"}
+
+
 def test_there_is_one_jit_decorator() -> None:
-    users = {
-        path.relative_to(APP).as_posix(): compilers_named(path.read_text(encoding="utf-8"))
-        for path in APP.rglob("*.py")
-        if path != APP / "systems" / "native.py"
+    sources = {
+        path.relative_to(APP).as_posix(): path.read_text(encoding="utf-8") for path in APP.rglob("*.py")
     }
-    assert {path: names for path, names in users.items() if names} == {}
-    assert compilers_named((APP / "systems" / "native.py").read_text(encoding="utf-8"))
+    users = {path: names for path, source in sources.items() if (names := compilers_named(source))}
+    assert users == {path: {"numba.njit"} for path in COMPILING}
+    assert all(sources[path].count("numba.njit(") == 1 for path in COMPILING)
+    assert "fastmath=False" in sources["systems/lane_math.py"]
     assert compilers_named("import numba\n@numba.njit\ndef f(): pass") == {"numba.njit"}
+    assert compilers_named("SOURCE = '@njit(parallel=True)'") == {"@njit"}
 
 
 def test_no_module_is_named_for_nothing() -> None:

@@ -108,14 +108,14 @@ def _open(words: list[str]) -> int:
     path = Path(words[0]) if words else None
     if path is not None:
         _check_names_a_file(words[0])
-    from tinemark import commands
+    from tinemark.commands import sessions
 
     if not has_display():
-        commands.without_display(path)
+        sessions.without_display(path)
         return DONE
-    # Whatever is wrong with the file is said here, before a window appears.
-    session = commands.session_of(path) if path is not None else None
-    del session
+    if path is not None:
+        # Whatever is wrong with the file is said here, before a window appears.
+        sessions.session_of(path)
     try:
         from tinemark.window.app import open_window
     except ImportError as error:
@@ -232,10 +232,10 @@ def _inspect_parser() -> argparse.ArgumentParser:
 
 def _ladder(given: argparse.Namespace) -> None:
     """Follow a cascade."""
-    from tinemark import commands
+    from tinemark.commands import onsets
 
-    commands.ladder(
-        commands.LadderOptions(
+    onsets.ladder(
+        onsets.LadderOptions(
             system=given.system,
             parameter=given.parameter,
             start=None if given.start is None else _number(given.start, "--from"),
@@ -250,7 +250,7 @@ def _ladder(given: argparse.Namespace) -> None:
 
 def _refine(given: argparse.Namespace) -> None:
     """Find the onset nearest to a place."""
-    from tinemark import commands
+    from tinemark.commands import onsets
 
     near, *observed = given.near.split(",")
     if len(observed) > 1:
@@ -262,8 +262,8 @@ def _refine(given: argparse.Namespace) -> None:
     window = _number(given.window, "--window")
     if window.fraction <= 0:
         raise _UsageError("the width must be above zero", where="--window")
-    commands.refine(
-        commands.RefineOptions(
+    onsets.refine(
+        onsets.RefineOptions(
             system=given.system,
             near=_number(near, "--near"),
             observed=_number(observed[0], "--near") if observed else None,
@@ -276,7 +276,7 @@ def _refine(given: argparse.Namespace) -> None:
 
 def _picture(given: argparse.Namespace) -> None:
     """Write the diagram as a PNG."""
-    from tinemark import commands
+    from tinemark.commands import pictures
 
     start, stop = (_number(text, "--range") for text in given.range)
     if start.fraction == stop.fraction:
@@ -286,14 +286,14 @@ def _picture(given: argparse.Namespace) -> None:
         raise _UsageError(
             "a picture is written as PNG", where="--output", what_to_do="name the file FILE.png"
         )
-    commands.picture(commands.PictureOptions(given.system, start, stop, _size(given.size), output))
+    pictures.picture(pictures.PictureOptions(given.system, start, stop, _size(given.size), output))
 
 
 def _inspect(given: argparse.Namespace) -> None:
     """Say what a file is."""
-    from tinemark import commands
+    from tinemark.commands import sessions
 
-    commands.inspect(Path(given.file))
+    sessions.inspect(Path(given.file))
 
 
 def _number(text: str, option: str) -> Exact:

@@ -263,12 +263,12 @@ def test_a_missing_library_of_the_window_is_told(tinemark, monkeypatch) -> None:
 
 
 def test_a_defect_is_a_sentence(tinemark, monkeypatch) -> None:
-    from tinemark import commands
+    from tinemark.commands import sessions
 
     def broken(path: object) -> None:
         raise ZeroDivisionError("oops")
 
-    monkeypatch.setattr(commands, "inspect", broken)
+    monkeypatch.setattr(sessions, "inspect", broken)
     ended = tinemark("inspect", "anything")
     assert ended.code == 70
     assert "ZeroDivisionError: oops" in ended.err

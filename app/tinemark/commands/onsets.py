@@ -1,0 +1,173 @@
+"""`ladder` and `refine`: onsets found in this process, printed and kept."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import TYPE_CHECKING
+
+from tinemark.commands.output import check_json, print_onsets
+from tinemark.commands.progress import Progress, run_steps, say
+from tinemark.systems.errors import NoOnsetFound, TinemarkError
+from tinemark.systems.exact import Exact
+
+if TYPE_CHECKING:
+    from tinemark.document.onsets_file import Found
+    from tinemark.onsets.results import LadderLevel, LadderRequest, Step
+    from tinemark.onsets.scaling import Scaling
+    from tinemark.systems.system import System
+
+
+@dataclass(frozen=True)
+class LadderOptions:
+    """Arguments of `ladder`."""
+
+    system: str
+    parameter: str | None
+    start: Exact | None
+    stop: Exact | None
+    base_period: int
+    levels: int
+    digits: int
+    json: str | None
+
+
+@dataclass(frozen=True)
+class RefineOptions:
+    """Arguments of `refine`."""
+
+    system: str
+    near: Exact
+    observed: Exact | None
+    window: Exact
+    digits: int
+    json: str | None
+
+
+def ladder(options: LadderOptions) -> None:
+    """Follow a cascade and print it.
+
+    Raises
+    ------
+    NoOnsetFound
+        There is no cascade there.
+    TinemarkError
+        Bad input.
+    """
+    from tinemark.onsets.results import LadderRequest
+    from tinemark.systems.library import find_system
+
+    check_json(options.json)
+    system = find_system(options.system)
+    parameter = options.parameter or system.diagram_parameter
+    start, stop = _sweep(system, parameter, options.start, options.stop)
+    request = LadderRequest(
+        system, parameter, start, stop, options.base_period, options.levels, options.digits
+    )
+    found, scaled, message = follow(request)
+    if not found:
+        raise NoOnsetFound(message or "no cascade was found there", where=options.system)
+    print_onsets(options.system, parameter, found, scaled, options.json)
+    if message:
+        say(message)
+
+
+def _sweep(
+    system: System, parameter: str, start: Exact | None, stop: Exact | None
+) -> tuple[Fraction, Fraction]:
+    swept = system.parameter(parameter)
+    if (start is None or stop is None) and swept.range is None:
+        option = "--from" if start is None else "--to"
+        raise TinemarkError(
+            f"is needed, since the system gives {parameter} no range",
+            where=option,
+            what_to_do=f"add {option} VALUE, or a range under [parameters.{parameter}]",
+        )
+    first = start if start is not None else swept.range[0] if swept.range else None
+    last = stop if stop is not None else swept.range[1] if swept.range else None
+    assert first is not None
+    assert last is not None
+    if first.fraction == last.fraction:
+        raise TinemarkError("is the same as --from", where="--to", what_to_do="give two different ends")
+    return first.fraction, last.fraction
+
+
+def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
+    """Run a ladder in this process, with its progress on standard error.
+
+    Returns
+    -------
+    found, scaled, message
+        The levels, what they say together (None without levels), and why the ladder ended early if it did.
+
+    Raises
+    ------
+    NoOnsetFound
+        There is no first level.
+    """
+    from tinemark.onsets import engine
+    from tinemark.onsets.results import Step
+    from tinemark.onsets.scaling import points_of, scaling
+
+    levels: list[LadderLevel] = []
+    progress = Progress()
+
+    def hear(item: Step | LadderLevel) -> None:
+        if isinstance(item, Step):
+            progress.step(item.text)
+            return
+        levels.append(item)
+        onset = item.onset
+        progress.line(f"level {item.level}: {onset.parameter} = {onset.value} ({onset.status.value})")
+
+    message = ""
+    try:
+        result = run_steps(engine.ladder(request), hear)
+        levels, message = list(result.levels), result.message
+    except NoOnsetFound as error:
+        # What was found before it gave out still counts.
+        if not levels:
+            raise
+        message = str(error)
+    finally:
+        progress.clear()
+    found: list[Found] = [(item.level, item.onset) for item in levels]
+    return found, scaling(points_of(levels)) if levels else None, message
+
+
+def refine(options: RefineOptions) -> None:
+    """Find what a click would, and print it.
+
+    Raises
+    ------
+    NoOnsetFound
+        There is no onset within the window.
+    TinemarkError
+        Bad input.
+    """
+    from tinemark.commands.pictures import swept_over
+    from tinemark.document.first_view import first_view
+    from tinemark.onsets import engine
+    from tinemark.onsets.results import RefineRequest
+    from tinemark.systems.library import find_system
+
+    check_json(options.json)
+    system = find_system(options.system)
+    near, width = options.near.fraction, options.window.fraction
+    observed, height = None, None
+    if options.observed is not None:
+        # On screen a click has a height too: that of a diagram of this window.
+        observed = options.observed.fraction
+        height = first_view(swept_over(system, near - width / 2, near + width / 2)).height
+    request = RefineRequest(system, system.diagram_parameter, near, width, observed, height, options.digits)
+    progress = Progress()
+    try:
+        result = run_steps(engine.refine(request), lambda item: progress.step(item.text))
+    finally:
+        progress.clear()
+    if not result.onsets:
+        raise NoOnsetFound(result.message or "no onset was found there", where=options.system)
+    found: list[Found] = [(None, onset) for onset in result.onsets]
+    print_onsets(options.system, system.diagram_parameter, found, None, options.json)
+    if result.message:
+        say(result.message)

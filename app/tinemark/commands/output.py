@@ -1,0 +1,74 @@
+"""Where results go: tables on standard output, files whole or not at all."""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from tinemark.systems.errors import TinemarkError
+
+if TYPE_CHECKING:
+    from tinemark.document.onsets_file import Found
+    from tinemark.onsets.scaling import Scaling
+
+
+def print_onsets(
+    system: str, parameter: str, found: Sequence[Found], scaled: Scaling | None, json: str | None
+) -> None:
+    """Print onsets as a table, or as JSON alone where `json` is "-"; else `json` names a file for it as well."""
+    from tinemark.document.onsets_file import onsets_file, write_onsets_text
+    from tinemark.document.text_table import onsets_table, scaling_lines
+
+    if json is not None:
+        text = write_onsets_text(onsets_file(system, parameter, found, scaled))
+        if json == "-":
+            sys.stdout.write(text)
+            return
+        _write(Path(json), text.encode())
+    print(onsets_table(found, scaled))
+    for reason in dict.fromkeys(onset.reason for _, onset in found if onset.reason):
+        print(f"not proved: {reason}")
+    if scaled is not None:
+        print("\n" + "\n".join(scaling_lines(scaled, parameter)))
+
+
+def check_json(json: str | None) -> None:
+    """As `check_target`, for the argument of --json."""
+    if json is not None and json != "-":
+        check_target(Path(json))
+
+
+def check_target(path: Path) -> None:
+    """Make sure, before any work, that a file can be written there."""
+    if path.is_dir():
+        raise TinemarkError("is a folder", where=str(path), what_to_do="name a file in it")
+    if not path.parent.is_dir():
+        raise TinemarkError(
+            "cannot be written: its folder does not exist",
+            where=str(path),
+            what_to_do="make the folder first",
+        )
+    if not os.access(path if path.exists() else path.parent, os.W_OK):
+        raise TinemarkError(
+            "cannot be written: no permission", where=str(path), what_to_do="name another file or folder"
+        )
+
+
+def _write(path: Path, data: bytes) -> None:
+    from tinemark.document.atomic_file import write_whole
+
+    try:
+        write_whole(path, data)
+    except OSError as error:
+        raise not_written(path, error) from error
+
+
+def not_written(path: Path, error: OSError) -> TinemarkError:
+    """The system's refusal in our words."""
+    reason = (error.strerror or str(error)).lower()
+    return TinemarkError(
+        f"cannot be written ({reason})", where=str(path), what_to_do="name another file or folder"
+    )
