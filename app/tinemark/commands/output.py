@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 def print_onsets(
     system: str, parameter: str, found: Sequence[Found], scaled: Scaling | None, json: str | None
 ) -> None:
-    """Print onsets as a table, or as JSON alone where `json` is "-"; else `json` names a file for it as well."""
+    """Print onsets as a table; where `json` names a file write that too, where it is "-" print JSON alone."""
     from tinemark.document.onsets_file import onsets_file, write_onsets_text
     from tinemark.document.text_table import onsets_table, scaling_lines
 
