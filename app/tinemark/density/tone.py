@@ -107,6 +107,8 @@ _SOURCES = {
     "ember": ("linear_kryw_5_100_c67", 0.14, 1.0),
 }
 
+PALETTE_NAMES = tuple(_SOURCES)
+
 DARK_FIRST = frozenset({"glow", "silver", "amber", "ember"})
 """Palettes made for a dark ground; the others are made for a light one."""
 
