@@ -9,6 +9,7 @@ import onset_samples as known
 from hypothesis import strategies as st
 
 from tinemark.density.request import SweepRule, View
+from tinemark.density.tone import PALETTE_NAMES
 from tinemark.document import ledger as led
 from tinemark.document import session as ses
 from tinemark.document.session import PictureSettings, Session
@@ -65,7 +66,7 @@ def full_session() -> Session:
     session = ses.with_view(session, View(Fraction("3.4"), Fraction("3.45"), Fraction(0), Fraction(1)))
     session = ses.view_back(session)
     session = ses.with_picture(
-        session, PictureSettings(SweepRule.SEVERAL, 1500, 8, "thorough", "equalised", "fire")
+        session, PictureSettings(SweepRule.SEVERAL, 1500, 8, "thorough", "equalised", "ember")
     )
     session = ses.with_probe(session, Fraction("3.83"))
     return ses.with_words(session, title='Growth "A" \\ β', notes="line 1\nline 2\t<&>\u2028")
@@ -88,7 +89,7 @@ pictures = st.builds(
     starts=st.integers(1, 10_000),
     budget=st.sampled_from(list(ses.BUDGETS)),
     tone=st.sampled_from(ses.TONES),
-    palette=texts,
+    palette=st.sampled_from(["", *PALETTE_NAMES]),
 )
 onsets = st.one_of(
     st.sampled_from(known.flips(known.LOGISTIC)),

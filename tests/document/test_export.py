@@ -9,7 +9,7 @@ from fractions import Fraction
 
 import onset_samples as known
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from session_samples import full_session
 
@@ -85,6 +85,7 @@ def test_a_note_stays_one_cell_and_is_no_formula() -> None:
         assert [r["Note"] for r in read_tsv(tsv_text(ledger_with(note))) if r["Note"]] == [cell]
 
 
+@settings(max_examples=30)
 @given(st.text(max_size=40))
 def test_any_note_keeps_the_tables_whole(note: str) -> None:
     ledger = ledger_with(note)

@@ -271,6 +271,7 @@ BAD: dict[str, tuple[Callable[[], bytes], str]] = {
     "wrong type": (lambda: put("title", value=3), "title: expected `str`"),
     "unknown rule": (lambda: put("picture", "rule", value="backwards"), r"picture\.rule: invalid enum"),
     "unknown tone": (lambda: put("picture", "tone", value="loud"), r"picture\.tone"),
+    "unknown palette": (lambda: put("picture", "palette", value="mud"), r"picture\.palette"),
     "unknown budget": (lambda: put("picture", "budget", value="endless"), r"picture\.budget"),
     "too many starts": (lambda: put("picture", "starts", value=10**9), r"picture\.starts"),
     "NaN": (lambda: put("view", "left", value="nan"), 'view: "nan" is not a number'),

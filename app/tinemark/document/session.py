@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from functools import lru_cache
@@ -65,7 +66,8 @@ class Session:
         All picks.
     systems
         (key, TOML text) of every system that a row of the ledger belongs to, so that no row is
-        left without its formulas when the system is edited or changed.
+        left without its formulas when the system is edited or changed. Kept complete by itself,
+        however a session is made.
     probe
         Parameter value at which the orbit is shown; None when the probe is closed.
     title, notes
@@ -83,6 +85,21 @@ class Session:
     probe: Fraction | None = None
     title: str = ""
     notes: str = ""
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "systems", _needed_systems(self))
+
+
+def _needed_systems(session: Session) -> tuple[tuple[str, str], ...]:
+    """Texts of the systems that rows belong to: the session's own as it now reads, others as kept."""
+    needed = dict.fromkeys(row.system_key for row in session.ledger.rows)
+    if not needed:
+        return ()
+    texts = dict(session.systems)
+    # A text that is no system is not found out here, but when the system is asked for.
+    with contextlib.suppress(TinemarkError):
+        texts[read_system(session.system_text).key] = session.system_text
+    return tuple((key, texts[key]) for key in needed if key in texts)
 
 
 # Beginning
@@ -260,13 +277,8 @@ def with_probe(session: Session, value: Fraction | None) -> Session:
 
 
 def with_ledger(session: Session, ledger: Ledger) -> Session:
-    """The session with another ledger, and the texts of all systems that its rows belong to."""
-    key = read_system(session.system_text).key
-    # Of rows of the present system the latest text counts: it may have better notes and ranges.
-    texts = dict(session.systems) | {key: session.system_text}
-    needed = dict.fromkeys(row.system_key for row in ledger.rows)
-    kept = tuple((name, texts[name]) for name in needed if name in texts)
-    return replace(session, ledger=ledger, systems=kept)
+    """The session with another ledger."""
+    return replace(session, ledger=ledger)
 
 
 def with_words(session: Session, *, title: str | None = None, notes: str | None = None) -> Session:

@@ -125,7 +125,7 @@ def read_session(data: bytes, *, file: str = "") -> Session:
         session = from_plain(plain)
     except Misfit as error:
         raise _fault(error.message, file, error.key) from error
-    _check_systems(session, file)
+    _check_systems(plain, file)
     return session
 
 
@@ -262,22 +262,22 @@ def migrated(
     return plain
 
 
-def _check_systems(session: Session, file: str) -> None:
+def _check_systems(plain: PlainSession, file: str) -> None:
     """The session's systems can be read, and fit the diagram and the ledger."""
     try:
-        system = read_system(session.system_text)
-        system.with_diagram(session.parameter, session.observe)
+        system = read_system(plain.system)
+        system.with_diagram(plain.parameter, plain.observe)
     except TinemarkError as error:
         raise _inside("system", error, file) from error
     seen: set[str] = set()
-    for n, (key, text) in enumerate(session.systems):
+    for n, kept in enumerate(plain.systems):
         try:
-            found = read_system(text).key
+            found = read_system(kept.text).key
         except TinemarkError as error:
             raise _inside(f"systems[{n}]", error, file) from error
-        if found != key or key in seen:
+        if found != kept.key or kept.key in seen:
             raise _fault("the key is not that of the text", file, f"systems[{n}].key")
-        seen.add(key)
+        seen.add(kept.key)
 
 
 def _inside(key: str, error: TinemarkError, file: str) -> SessionFileError:

@@ -13,6 +13,7 @@ import msgspec
 from msgspec import Meta
 
 from tinemark.density.request import SweepRule, View
+from tinemark.density.tone import PALETTE_NAMES
 from tinemark.document.ladders import MAX_LEVEL
 from tinemark.document.ledger import MAX_ROWS, Ledger
 from tinemark.document.row import Row
@@ -222,6 +223,8 @@ def from_plain(plain: PlainSession) -> Session:
         raise Misfit("picture.budget", f'"{picture.budget[:40]}" is not one of {", ".join(BUDGETS)}')
     if picture.tone not in TONES:
         raise Misfit("picture.tone", f'"{picture.tone[:40]}" is not one of {", ".join(TONES)}')
+    if picture.palette not in ("", *PALETTE_NAMES):
+        raise Misfit("picture.palette", f'"{picture.palette[:40]}" is not one of {", ".join(PALETTE_NAMES)}')
     if len(plain.system) + sum(len(system.text) for system in plain.systems) > MAX_SYSTEM_TEXT:
         raise Misfit("systems", f"the texts have more than {MAX_SYSTEM_TEXT} characters together")
     return Session(
