@@ -8,12 +8,12 @@ crosses the unit circle a Neimark-Sacker point.
 from __future__ import annotations
 
 from collections.abc import Generator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import Enum
 
 import numpy as np
 
-from tinemark.onsets.many_cycles import Cycle, multipliers, newton, tangent
+from tinemark.onsets.many_cycles import Cycle, condensed, eigenvalues, least_period, newton, tangent
 from tinemark.onsets.many_map import FloatManyMap, Floats
 from tinemark.onsets.results import Step
 
@@ -25,6 +25,11 @@ LARGEST_TURN = 0.3
 """A critical multiplier may move by this much a step (of itself or of 1, whichever is larger)."""
 
 
+JOINED = 1e-7
+"""A doubled cycle whose opposite points are closer than this has joined the branch it split from."""
+AFTER_EVENT = 12
+"""Points for which a branch is followed beyond its first crossing."""
+ON_THE_CIRCLE = 1e-8
 FARTHEST = 20.0
 """A branch is not followed farther than this many scaled lengths from where it began."""
 MOST_UNSTABLE = 1e7
@@ -66,11 +71,19 @@ def circle_test(values: Sequence[complex]) -> float:
 
 @dataclass(frozen=True)
 class Event:
-    """A crossing, bracketed by the two branch points next to it."""
+    """A crossing, bracketed by the two branch points next to it.
+
+    Attributes
+    ----------
+    joined_from
+        Where a branch of doubled cycles joins the one it split from, the two points beside the flip are of
+        that other branch; this is the last point of the doubled one. None otherwise.
+    """
 
     kind: Crossing
     before: BranchPoint
     after: BranchPoint
+    joined_from: BranchPoint | None = None
 
     @property
     def share(self) -> float:
@@ -113,10 +126,11 @@ def branch_point(
     float_map: FloatManyMap, cycle: Cycle, window: Window, before: BranchPoint | None = None
 ) -> BranchPoint | None:
     """A cycle with its multipliers and tangent; the tangent goes on from the point before."""
-    values = multipliers(float_map, cycle)
+    parts = condensed(float_map, cycle.points, cycle.r)
+    values = eigenvalues(parts.monodromy)
     if not values:
         return None
-    moves, move_r = tangent(float_map, cycle, window.scales, window.width)
+    moves, move_r = tangent(parts, window.scales, window.width)
     if before is not None and _cosine(before.moves, before.move_r, moves, move_r, window) < 0:
         moves, move_r = -moves, -move_r
     return BranchPoint(cycle, tuple(values), moves, move_r)
@@ -143,7 +157,7 @@ def follow(
     sign = direction if start.move_r >= 0 else -direction
     here = BranchPoint(start.cycle, start.multipliers, sign * start.moves, sign * start.move_r)
     trace, events = [here], []
-    step = first_step
+    step, seen = first_step, 0
     while len(trace) < most:
         following = _advance(float_map, here, window, step)
         if following is None or not _close_enough(here, following, window, step):
@@ -151,12 +165,20 @@ def follow(
             if step < SMALLEST_STEP:
                 break
             continue
+        if least_period(following.cycle.points, window.scales, JOINED) < here.cycle.period:
+            events += _joins(float_map, here, following, window)
+            break
         events += _events(here, following)
         trace.append(following)
         here = following
         if len(trace) % 8 == 0:
             yield Step(f"following the branch of period {here.cycle.period}")
-        if not window.low <= here.cycle.r <= window.high or _is_lost(here, start, window):
+        seen += bool(events)
+        if (
+            seen > AFTER_EVENT
+            or not window.low <= here.cycle.r <= window.high
+            or _is_lost(here, start, window)
+        ):
             break
         step = min(step * 1.6, LARGEST_STEP)
     return trace, events
@@ -207,15 +229,31 @@ def _events(a: BranchPoint, b: BranchPoint) -> list[Event]:
     return found
 
 
+def _joins(float_map: FloatManyMap, a: BranchPoint, b: BranchPoint, window: Window) -> list[Event]:
+    """The flip at which a branch of doubled cycles was left for the one it split from."""
+    half = a.cycle.period // 2
+    if a.cycle.period % 2 or least_period(b.cycle.points, window.scales, JOINED) > half:
+        return []
+    ends = []
+    for cycle in (a.cycle, b.cycle):
+        mean = Cycle((cycle.points[:half] + cycle.points[half:]) / 2, cycle.r)
+        parent = newton(float_map, mean, window.scales)
+        point = None if parent is None else branch_point(float_map, parent, window)
+        if point is None:
+            return []
+        ends.append(point)
+    return [replace(event, joined_from=a) for event in _events(*ends) if event.kind is Crossing.FLIP]
+
+
 def _pair_crosses(a: BranchPoint, b: BranchPoint) -> bool:
-    # A real pair with product 1 is a neutral saddle, where nothing splits.
-    def outside(point: BranchPoint) -> int:
-        return sum(1 for value in point.multipliers if value.imag > 1e-9 and abs(value) > 1)
+    # A real pair with product 1 is a neutral saddle, where nothing splits. Where the map preserves areas
+    # pairs stay on the circle, inside and outside by rounding alone.
+    def sizes(point: BranchPoint) -> list[float]:
+        pairs = sorted(abs(value) for value in point.multipliers if value.imag > 1e-9)
+        return [0.0 if abs(size - 1) < ON_THE_CIRCLE else size - 1 for size in pairs]
 
-    def complex_pairs(point: BranchPoint) -> int:
-        return sum(1 for value in point.multipliers if value.imag > 1e-9)
-
-    return complex_pairs(a) == complex_pairs(b) and outside(a) != outside(b)
+    before, after = sizes(a), sizes(b)
+    return len(before) == len(after) and any(x * y < 0 for x, y in zip(before, after, strict=True))
 
 
 def _test(kind: Crossing, point: BranchPoint) -> float:

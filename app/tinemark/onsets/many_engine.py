@@ -41,7 +41,7 @@ LEAST_VISIBLE = 0.0015
 NEUTRAL = 1e-6
 """Multipliers may exceed 1 by this much and count as stable: area-preserving maps have them at 1."""
 GOOD_ENOUGH = 0.03
-"""With an onset this near, branches that start farther away are not followed any more."""
+"""Branches that start farther from the click than this, and than the nearest onset, are left out."""
 
 
 @dataclass(frozen=True)
@@ -124,7 +124,7 @@ def _window(place: Place, scales: Floats, request: RefineRequest) -> Window:
         # A view zoomed in on a state: what counts as one length shrinks with it.
         at = request.system.state_names.index(request.system.observe)
         lengths = np.minimum(scales, np.maximum(place.height / scales[at], 1e-6) * scales)
-    return Window(place.r - place.width, place.r + place.width, place.width, lengths)
+    return Window(place.r - IN_REACH * place.width, place.r + IN_REACH * place.width, place.width, lengths)
 
 
 def _candidates(
@@ -137,7 +137,7 @@ def _candidates(
     for cycle in cycles:
         seen = (candidate.distance for candidate in found if candidate.stable_share >= LEAST_VISIBLE)
         nearest = min(seen, default=np.inf)
-        if followed >= MOST_BRANCHES or (nearest < GOOD_ENOUGH and followed >= 2):
+        if followed >= MOST_BRANCHES or place.distance(float_map, cycle) > max(nearest, GOOD_ENOUGH):
             break
         start = branch_point(float_map, cycle, window)
         if start is None or _is_on(float_map, cycle, traces, window.scales):
@@ -159,10 +159,11 @@ def _stable_stretch(onward: list[BranchPoint], backward: list[BranchPoint], even
     whole = [*backward[:0:-1], *onward]
     order = {id(point): place for place, point in enumerate(whole)}
     order[id(backward[0])] = order[id(onward[0])]
-    sides = sorted((order[id(event.before)], order[id(event.after)]))
+    beside = [event.joined_from] if event.joined_from else [event.before, event.after]
+    sides = sorted(order[id(point)] for point in beside)
     at = event.rough.r
     lengths = []
-    for place, step in ((sides[0], -1), (sides[1], 1)):
+    for place, step in ((sides[0], -1), (sides[-1], 1)):
         end = at
         while 0 <= place < len(whole) and max(map(abs, whole[place].multipliers)) <= 1 + NEUTRAL:
             end = whole[place].cycle.r
@@ -213,7 +214,7 @@ def _settle(
         float_map.many.parameter, shown, None if rotation is None else _at(float_map, rotation, place)
     )
     if not shown:
-        raise NoOnsetFound(message, what_to_do="click nearer to a split")
+        raise NoOnsetFound(message, what_to_do="" if rotation else "click nearer to a split")
     return RefineResult(tuple(item.onset for _, item in shown), message)
 
 

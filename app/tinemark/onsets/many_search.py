@@ -18,6 +18,8 @@ SCATTERED_FOR_NEWTON = 24
 TRANSIENT = 1500
 LONGEST_PERIOD = 128
 TOLERANCES = (1e-9, 1e-6, 1e-4, 3e-3)
+PARENTS_OF = 6
+"""Of this many cycles, nearest in the parameter, the ones they may have split from are looked for."""
 CLOSE_RETURN = 0.05
 LONGEST_CLOSE_RETURN = 8
 SEED = 20240229
@@ -74,7 +76,8 @@ def cycles_around(
         for cycle in scattered_cycles(float_map, place.r, scales):
             _keep(found, cycle, scales)
             yield Step("looking for cycles from scattered starts")
-    for cycle in found.copy():
+    nearest = sorted(found, key=lambda cycle: abs(cycle.r - place.r))[:PARENTS_OF]
+    for cycle in nearest:
         for parent in parents(float_map, cycle, scales):
             _keep(found, parent, scales)
     yield Step("ordering the cycles found")
