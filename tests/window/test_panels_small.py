@@ -188,7 +188,7 @@ def test_settings_shown_are_not_emitted(settings, qtbot):
     with qtbot.assertNotEmitted(settings.settings_changed, wait=0):
         settings.show_settings(wanted)
     assert settings.settings == wanted
-    assert settings.starts.value() == 5
+    assert settings.starts.count == 5
     assert settings.palette_choice.currentData() == "glow"
     assert settings.rule.currentText() == "Several starts"
 
@@ -216,19 +216,32 @@ def test_several_starts_open_their_number(settings, qtbot):
     with qtbot.waitSignal(settings.settings_changed) as told:
         settings.rule.activated.emit(settings.rule.currentIndex())
     assert settings.starts.isEnabled()
-    assert told.args[0].starts == settings.starts.value() > 1
+    assert told.args[0].starts == settings.starts.count > 1
     settings.rule.setCurrentIndex(settings.rule.findData("FRESH"))
     settings.rule.activated.emit(settings.rule.currentIndex())
     assert settings.settings.starts == 1
 
 
 def test_steps_are_typed_and_the_defaults_come_back(settings, qtbot):
-    settings.transient.setValue(2500)
+    settings.transient.setText("2 500")
+    press(settings.transient, Qt.Key.Key_Return)
     assert settings.settings.transient_steps == 2500
+    press(settings.transient, Qt.Key.Key_Up)
+    assert settings.settings.transient_steps == 2600
     with qtbot.waitSignal(settings.settings_changed) as told:
         settings.reset_button.click()
     assert told.args == [PictureSettings()]
     assert not settings.reset_button.isEnabled()
+
+
+@pytest.mark.parametrize("typed", ["", "many", "-3", "2000000", "9" * 40, "1.5"])
+def test_impossible_numbers_of_steps_are_said_and_kept(settings, qtbot, typed):
+    settings.transient.setText(typed)
+    with qtbot.assertNotEmitted(settings.settings_changed, wait=0):
+        press(settings.transient, Qt.Key.Key_Return)
+    assert "whole number" in settings.transient.trouble.text()
+    assert settings.transient.text() == typed
+    assert settings.settings.transient_steps == 500
 
 
 def test_every_budget_says_its_steps(settings):
@@ -283,8 +296,10 @@ def test_caution_stands_in_full():
     for sentence in (
         "Results hold for the model as written, not for a device, a machine or a patient.",
         "Driving hardware or tissue past an onset can overheat, overstress or injure.",
-        "Hardware limits, interlocks, local codes and a qualified, licensed practitioner decide; "
-        "Tinemark's numbers are one input to that decision.",
+        (
+            "Hardware limits, interlocks, local codes and a qualified, licensed practitioner decide; "
+            "Tinemark's numbers are one input to that decision."
+        ),
     ):
         assert sentence in text
 

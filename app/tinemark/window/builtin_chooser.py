@@ -7,8 +7,9 @@ from dataclasses import dataclass
 
 from PySide6.QtCore import QModelIndex, QPersistentModelIndex, QRectF, QSize, Qt, Signal
 from PySide6.QtGui import QFontMetrics, QFontMetricsF, QPainter
-from PySide6.QtWidgets import QComboBox, QStyle, QStyledItemDelegate, QStyleOptionViewItem, QWidget
+from PySide6.QtWidgets import QComboBox, QStyle, QStyledItemDelegate, QStyleOptionViewItem
 
+from tinemark.window.field_editors import QuietCombo
 from tinemark.window.theme import color, current_theme, small_font
 
 Index = QModelIndex | QPersistentModelIndex
@@ -38,17 +39,20 @@ def library_builtins() -> tuple[BuiltIn, ...]:
 
 
 class _TwoLines(QStyledItemDelegate):
-    """A title, and under it the sentence, wrapped."""
+    """A title, and under it the sentence, wrapped to `width`."""
+
+    width = 400
 
     def _sentence_height(self, text: str, width: int) -> int:
         flags = Qt.TextFlag.TextWordWrap
         return QFontMetrics(small_font()).boundingRect(0, 0, width, 10_000, flags, text).height()
 
     def sizeHint(self, option: QStyleOptionViewItem, index: Index) -> QSize:
-        width = self.parent().width() if isinstance(self.parent(), QWidget) else 300
+        # The list asks before it has its own width, so the width is set by the chooser.
+        width = self.width
         text = str(index.data(SENTENCE) or "")
         height = QFontMetrics(option.font).height() + 12
-        return QSize(width, height + (self._sentence_height(text, width - 36) if text else 0))
+        return QSize(width, height + (self._sentence_height(text, width - 40) if text else 0))
 
     def paint(self, painter: QPainter, option: QStyleOptionViewItem, index: Index) -> None:
         theme = current_theme()
@@ -70,7 +74,7 @@ class _TwoLines(QStyledItemDelegate):
         painter.restore()
 
 
-class BuiltinChooser(QComboBox):
+class BuiltinChooser(QuietCombo):
     """The chooser. Its list is read when it is first opened.
 
     Signals
@@ -90,7 +94,8 @@ class BuiltinChooser(QComboBox):
         self.setSizeAdjustPolicy(QComboBox.SizeAdjustPolicy.AdjustToMinimumContentsLengthWithIcon)
         self.setMinimumContentsLength(12)
         self.setMaxVisibleItems(8)
-        self.view().setItemDelegate(_TwoLines(self.view()))
+        self._lines = _TwoLines(self.view())
+        self.view().setItemDelegate(self._lines)
         self.view().setTextElideMode(Qt.TextElideMode.ElideRight)
         self.activated.connect(self._activated)
 
@@ -120,7 +125,8 @@ class BuiltinChooser(QComboBox):
     def showPopup(self) -> None:
         """Open the list, wide enough to read."""
         self.fill()
-        self.view().setMinimumWidth(max(self.width(), QFontMetrics(self.font()).averageCharWidth() * 56))
+        self._lines.width = max(self.width(), QFontMetrics(self.font()).averageCharWidth() * 66)
+        self.view().setMinimumWidth(self._lines.width)
         super().showPopup()
 
     def keyPressEvent(self, event: object) -> None:

@@ -2,20 +2,31 @@
 
 from __future__ import annotations
 
-from PySide6.QtCore import QEvent, QLocale, Signal
-from PySide6.QtGui import QFocusEvent, QFontMetrics, QWheelEvent
+from PySide6.QtCore import QEvent, QLocale, QPointF, Qt, Signal
+from PySide6.QtGui import (
+    QFocusEvent,
+    QFontMetrics,
+    QKeyEvent,
+    QPainter,
+    QPaintEvent,
+    QPen,
+    QPolygonF,
+    QWheelEvent,
+)
 from PySide6.QtWidgets import (
     QComboBox,
     QFrame,
     QGridLayout,
     QLabel,
     QLineEdit,
+    QMenu,
     QPlainTextEdit,
+    QToolButton,
     QVBoxLayout,
     QWidget,
 )
 
-from tinemark.window.theme import mono_font
+from tinemark.window.theme import color, current_theme, mono_font
 
 
 class FieldEdit(QLineEdit):
@@ -52,7 +63,26 @@ class FieldEdit(QLineEdit):
 
 
 class QuietCombo(QComboBox):
-    """A chooser that leaves the wheel to the page around it until it has the focus."""
+    """A chooser that leaves the wheel to the page until it has the focus, and draws its own arrow."""
+
+    def __init__(self) -> None:
+        super().__init__()
+        # The base style's drop-down is a raised box, which has no place on a flat outline.
+        self.setStyleSheet("QComboBox::drop-down { border: none; width: 20px; }")
+
+    def paintEvent(self, event: QPaintEvent) -> None:
+        """The chooser, then its arrow."""
+        super().paintEvent(event)
+        theme = current_theme()
+        painter = QPainter(self)
+        painter.setRenderHint(QPainter.RenderHint.Antialiasing)
+        pen = QPen(color(theme.muted if self.isEnabled() else theme.edge), 1.6)
+        pen.setCapStyle(Qt.PenCapStyle.RoundCap)
+        pen.setJoinStyle(Qt.PenJoinStyle.RoundJoin)
+        painter.setPen(pen)
+        x, y = self.width() - 14.0, self.height() / 2
+        painter.drawPolyline(QPolygonF([QPointF(x - 4, y - 2), QPointF(x, y + 2), QPointF(x + 4, y - 2)]))
+        painter.end()
 
     def wheelEvent(self, event: QWheelEvent) -> None:
         """Choose by wheel only with the focus."""
@@ -60,6 +90,81 @@ class QuietCombo(QComboBox):
             super().wheelEvent(event)
         else:
             event.ignore()
+
+
+class MenuButton(QToolButton):
+    """A flat button that opens a menu, its arrow beside the word."""
+
+    def __init__(self, words: str, menu: QMenu) -> None:
+        super().__init__()
+        self.setText(words)
+        self.setMenu(menu)
+        menu.setParent(self, menu.windowFlags())
+        self.setPopupMode(QToolButton.ToolButtonPopupMode.InstantPopup)
+        self.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
+        self.setStyleSheet(
+            "QToolButton { padding-right: 18px; } "
+            "QToolButton::menu-indicator "
+            "{ subcontrol-origin: border; subcontrol-position: right center; right: 5px; }"
+        )
+
+
+class CountEdit(FieldEdit):
+    """A whole number between two bounds, checked when it is complete; the arrow keys step it.
+
+    Signals
+    -------
+    counted : int
+        A new number, within the bounds.
+    """
+
+    counted = Signal(int)
+
+    def __init__(self, name: str, low: int, high: int, step: int) -> None:
+        super().__init__(name, digits=8)
+        self.low, self.high, self.step = low, high, step
+        self._count = low
+        self.trouble = QLabel()
+        self.trouble.setProperty("rank", "error")
+        self.trouble.setWordWrap(True)
+        self.trouble.hide()
+        self.setToolTip(f"{low} to {high}")
+        self.editingFinished.connect(self._complete)
+
+    @property
+    def count(self) -> int:
+        """The last good number."""
+        return self._count
+
+    def show_count(self, count: int) -> None:
+        """Show a number; nothing is emitted."""
+        self._count = count
+        self.setText(str(count))
+        self._say("")
+
+    def keyPressEvent(self, event: QKeyEvent) -> None:
+        """Step by the arrow keys."""
+        way = {Qt.Key.Key_Up.value: 1, Qt.Key.Key_Down.value: -1}.get(event.key(), 0)
+        if way:
+            self.setText(str(min(max(self._count + way * self.step, self.low), self.high)))
+            self._complete()
+            return
+        super().keyPressEvent(event)
+
+    def _complete(self) -> None:
+        digits = "".join(self.text().split())
+        if not digits.isdecimal() or len(digits) > 12 or not self.low <= int(digits) <= self.high:
+            self._say(f"Write a whole number from {self.low} to {self.high}.")
+            return
+        self._say("")
+        if int(digits) != self._count:
+            self._count = int(digits)
+            self.counted.emit(self._count)
+
+    def _say(self, words: str) -> None:
+        self.trouble.setText(words)
+        self.trouble.setVisible(bool(words))
+        show_as(self, words)
 
 
 class NotesEdit(QPlainTextEdit):

@@ -22,6 +22,7 @@ from PySide6.QtWidgets import (
 from tinemark.document.estimates import LadderEstimates
 from tinemark.document.ledger import Ledger, estimates, ladder_ids
 from tinemark.onsets.results import Status
+from tinemark.window.field_editors import MenuButton
 from tinemark.window.ledger_detail import LedgerDetail
 from tinemark.window.ledger_model import (
     HEADERS,
@@ -138,13 +139,10 @@ class LedgerPanel(QWidget):
         self._bar = QHBoxLayout()
         self._bar.setContentsMargins(6, 4, 6, 2)
         self._bar.setSpacing(2)
-        self.copy_button = QToolButton()
-        self.copy_button.setText("Copy as")
-        self.copy_button.setToolTip("Copy the ledger for a spreadsheet, a note or a paper")
-        self.copy_button.setPopupMode(QToolButton.ToolButtonPopupMode.InstantPopup)
-        menu = QMenu(self.copy_button)
+        menu = QMenu()
         self._add_copies(menu)
-        self.copy_button.setMenu(menu)
+        self.copy_button = MenuButton("Copy as", menu)
+        self.copy_button.setToolTip("Copy the ledger for a spreadsheet, a note or a paper")
         self.extend_button = self._tool(
             "Follow further", "Find the next levels of the selected ladder", self._extend
         )

@@ -8,7 +8,6 @@ import pyqtgraph as pg
 from PySide6.QtCore import QEvent, Qt, Signal
 from PySide6.QtGui import QColor
 from PySide6.QtWidgets import (
-    QComboBox,
     QHBoxLayout,
     QLabel,
     QLineEdit,
@@ -21,6 +20,7 @@ from PySide6.QtWidgets import (
 
 from tinemark.systems.errors import NumberError
 from tinemark.systems.exact import exact, fraction_text
+from tinemark.window.field_editors import QuietCombo
 from tinemark.window.panel_plot import PanelPlot, line_pen
 from tinemark.window.theme import current_theme, mono_font
 from tinemark.work.probe import ProbeOrbit
@@ -93,7 +93,7 @@ class ProbePanel(QWidget):
         self.words = QLabel()
         self.words.setTextInteractionFlags(Qt.TextInteractionFlag.TextSelectableByMouse)
         self.words.setProperty("rank", "second")
-        self.part = QComboBox()
+        self.part = QuietCombo()
         self.part.addItem("settled orbit", "settled")
         self.part.addItem("from the start", "early")
         self.part.addItem("all steps", "all")

@@ -8,12 +8,12 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import ArrayLike
 from PySide6.QtCore import QEvent, QSize, Qt, Signal
-from PySide6.QtGui import QIcon, QImage, QPixmap, QWheelEvent
-from PySide6.QtWidgets import QFrame, QLabel, QPushButton, QScrollArea, QSpinBox, QVBoxLayout, QWidget
+from PySide6.QtGui import QIcon, QImage, QPixmap
+from PySide6.QtWidgets import QFrame, QLabel, QPushButton, QScrollArea, QVBoxLayout, QWidget
 
 from tinemark.density.request import SweepRule
 from tinemark.document.session import BUDGETS, TONES, PictureSettings
-from tinemark.window.field_editors import QuietCombo
+from tinemark.window.field_editors import CountEdit, QuietCombo
 from tinemark.window.theme import current_theme, heading_font
 
 MOST_TRANSIENT = 1_000_000
@@ -39,26 +39,6 @@ def theme_palettes() -> Mapping[str, ArrayLike]:
     from tinemark.density.tone import palettes
 
     return palettes()
-
-
-class CalmSpin(QSpinBox):
-    """A number that does not change under a passing wheel, and tells of a change once it is complete."""
-
-    def __init__(self, name: str, low: int, high: int, step: int) -> None:
-        super().__init__()
-        self.setAccessibleName(name)
-        self.setRange(low, high)
-        self.setSingleStep(step)
-        self.setButtonSymbols(QSpinBox.ButtonSymbols.NoButtons)
-        self.setKeyboardTracking(False)
-        self.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
-
-    def wheelEvent(self, event: QWheelEvent) -> None:
-        """Turn only with the focus."""
-        if self.hasFocus():
-            super().wheelEvent(event)
-        else:
-            event.ignore()
 
 
 class SettingsPanel(QScrollArea):
@@ -99,10 +79,10 @@ class SettingsPanel(QScrollArea):
         self._heading("Orbits")
         self.rule = self._combo("Sweep rule", [(rule.value.capitalize(), rule.name) for rule in SweepRule])
         self.rule_words = self._words()
-        self.starts = CalmSpin("Starts in each column", 1, MOST_STARTS, 1)
+        self.starts = CountEdit("Starts in each column", 1, MOST_STARTS, 1)
         self._field("Starts in each column", self.starts)
         self.starts_words = self._words("Only the rule “several starts” has more than one.")
-        self.transient = CalmSpin("Steps thrown away first", 0, MOST_TRANSIENT, 100)
+        self.transient = CountEdit("Steps thrown away first", 0, MOST_TRANSIENT, 100)
         self._field("Steps thrown away first", self.transient)
         self._words("An orbit needs time to settle, most of all near a split. More steps draw it crisper.")
         self._heading("Quality")
@@ -121,8 +101,8 @@ class SettingsPanel(QScrollArea):
         self._page.addStretch(1)
         for combo in (self.rule, self.budget, self.tone, self.palette_choice):
             combo.activated.connect(self._changed)
-        for spin in (self.starts, self.transient):
-            spin.valueChanged.connect(self._changed)
+        for count in (self.starts, self.transient):
+            count.counted.connect(self._changed)
 
     def _heading(self, words: str) -> None:
         if self._page.count():
@@ -141,6 +121,8 @@ class SettingsPanel(QScrollArea):
         self._page.addSpacing(4)
         self._page.addWidget(label)
         self._page.addWidget(editor)
+        if isinstance(editor, CountEdit):
+            self._page.addWidget(editor.trouble)
 
     def _combo(self, words: str, items: list[tuple[str, str]]) -> QuietCombo:
         combo = QuietCombo()
@@ -167,8 +149,8 @@ class SettingsPanel(QScrollArea):
         for editor in editors:
             editor.blockSignals(True)
         _select(self.rule, settings.rule.name)
-        self.starts.setValue(settings.starts)
-        self.transient.setValue(settings.transient_steps)
+        self.starts.show_count(settings.starts)
+        self.transient.show_count(settings.transient_steps)
         _select(self.budget, settings.budget)
         _select(self.tone, settings.tone)
         if settings.palette:
@@ -191,7 +173,7 @@ class SettingsPanel(QScrollArea):
             self._settings,
             rule=rule,
             starts=self._starts_for(rule),
-            transient_steps=self.transient.value(),
+            transient_steps=self.transient.count,
             budget=str(self.budget.currentData()),
             tone=str(self.tone.currentData()),
             palette=str(self.palette_choice.currentData() or ""),
@@ -204,7 +186,7 @@ class SettingsPanel(QScrollArea):
         if rule is not SweepRule.SEVERAL:
             return 1
         fresh = self._settings.rule is not SweepRule.SEVERAL
-        return max(self.starts.value(), 8) if fresh else self.starts.value()
+        return max(self.starts.count, 8) if fresh else self.starts.count
 
     def _reset(self) -> None:
         fresh = PictureSettings()

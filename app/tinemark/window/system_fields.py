@@ -20,7 +20,15 @@ from PySide6.QtWidgets import (
 )
 
 from tinemark.systems.formula import NAME
-from tinemark.window.field_editors import FieldEdit, NotesEdit, QuietCombo, field_grid, field_label, show_as
+from tinemark.window.field_editors import (
+    FieldEdit,
+    MenuButton,
+    NotesEdit,
+    QuietCombo,
+    field_grid,
+    field_label,
+    show_as,
+)
 from tinemark.window.system_draft import Draft, DraftParameter, DraftState, Trouble
 from tinemark.window.theme import heading_font, mono_font
 
@@ -248,14 +256,11 @@ class SystemFields(QWidget):
         grid.addWidget(self._error("diagram.parameter"), 1, 0, 1, 5)
         observe = self._line("diagram.observe", "Observed quantity, a state or a formula", digits=10)
         observe.setToolTip("A state, or a formula in the states")
-        choose = QToolButton()
-        choose.setText("Choose")
-        choose.setAccessibleName("Choose a state to observe")
-        menu = QMenu(choose)
+        menu = QMenu()
         for state in draft.states:
             menu.addAction(state.name, _choice(self, state.name, observe))
-        choose.setMenu(menu)
-        choose.setPopupMode(QToolButton.ToolButtonPopupMode.InstantPopup)
+        choose = MenuButton("Choose", menu)
+        choose.setAccessibleName("Choose a state to observe")
         line = QHBoxLayout()
         line.setSpacing(4)
         line.addWidget(observe, 1)
