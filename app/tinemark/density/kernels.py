@@ -23,7 +23,7 @@ from tinemark.systems.system import System
 LANES = 64
 """Columns of a block; loops of this fixed length become vector code."""
 
-BUFFER = 64
+BUFFER = 128
 """Steps noted before they are counted. Passes are whole buffers, so that a picture does not depend on how
 its steps were divided into passes."""
 
@@ -43,8 +43,8 @@ class Kernels:
     ----------
     advance, advance_counting
         Move columns on and count; the first also adds up the growth of a tangent vector.
-        ``(states, tangents, growth, swept, fixed, counts, first, columns, steps, counted, scale,
-        offset, stop) -> steps done``.
+        ``(states, tangents, growth, swept, fixed, counts, first, columns, steps, counted, measured,
+        scale, offset, stop) -> steps done``; growth is added up where `measured`.
     trace
         Note the states of the next steps without moving: ``(states, swept, fixed, first, columns,
         noted)``, noted of shape (columns, states, steps).
@@ -182,7 +182,7 @@ class _Template:
         lines.append("return done")
         arguments = (
             "states, tangents, growth, swept, fixed, counts, "
-            "first, columns, steps, counted, scale, offset, stop"
+            "first, columns, steps, counted, measured, scale, offset, stop"
         )
         return self.function(name, arguments, lines)
 
@@ -215,7 +215,7 @@ class _Template:
             ]
             lines += ["    V0[l] = V0[l] * back if length > 0.0 else 1.0"]
             lines += self.indented(1, self.each("V#[l] *= back", 1))
-        return [*lines, "    G[l] += lane_log(length) if counted else 0.0"]
+        return [*lines, "    G[l] += lane_log(length) if measured else 0.0"]
 
     @staticmethod
     def counting() -> list[str]:
