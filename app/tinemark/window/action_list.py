@@ -1,7 +1,7 @@
 """Everything that can be done, as data: words, keys, place in the menus, and the plain function that does it.
 
-`ACTIONS` is the one list. Menus, the key page of the guide and the tests that every entry has its key are made
-from it.
+`ACTIONS` is the one list. Menus, the key page of the guide and the tests that every entry has its key
+are made from it.
 """
 
 from __future__ import annotations

@@ -44,11 +44,8 @@ def open_window(path: str | Path | None = None) -> int:
     path
         A session or system file; None opens the demonstration.
 
-    Returns
-    -------
-    int
-        The program's exit code. A file that cannot be opened leaves the window with the demonstration and says
-        what is wrong; the code is 0 all the same, as the window has been of use.
+    Returns ------- int The program's exit code. A file that cannot be opened leaves the window with the
+    demonstration and says what is wrong; the code is 0 all the same, as the window has been of use.
     """
     app = application()
     window = make_window()

@@ -29,7 +29,7 @@ def axis_ticks(low: Fraction, high: Fraction, room: float, each: float) -> AxisT
     found = ticks(low, high, max(2, int(room / each)))
     extent = high - low
     shares = [float((tick - low) / extent) for tick in found.positions]
-    return AxisTicks(tuple(zip(shares, found.labels, strict=True)), found.offset)
+    return AxisTicks(tuple(zip(shares, map(_signed, found.labels), strict=True)), found.offset)
 
 
 def paint_bottom_axis(
@@ -96,5 +96,9 @@ def axis_title(name: str, unit: str, offset: str) -> str:
     text = f"{name} ({unit})" if unit else name
     if not offset:
         return text
-    sign = "" if offset.lstrip().startswith(("+", "-", "\N{MINUS SIGN}")) else "+ "
-    return f"{text} = {sign.strip()} {offset} + label".replace("=  ", "= ").replace("= + ", "= ")
+    return f"{text} = {_signed(offset)} + label"
+
+
+def _signed(label: str) -> str:
+    """A decimal with a true minus sign in front."""
+    return f"\N{MINUS SIGN}{label[1:]}" if label.startswith("-") else label

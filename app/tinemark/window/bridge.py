@@ -1,8 +1,8 @@
 """The one place where work's callbacks reach the window.
 
-Worker threads call `on_field` and `on_event`; the window's thread gets the signals. Tone mapping runs here on a
-thread of its own, so that neither the drawing nor the window waits for it; errands of the window (probe orbits,
-estimates, files of pictures) on another. Between the two threads lies a mailbox
+Worker threads call `on_field` and `on_event`; the window's thread gets the signals. Tone mapping runs
+here on a thread of its own, so that neither the drawing nor the window waits for it; errands of the
+window (probe orbits, estimates, files of pictures) on another. Between the two threads lies a mailbox
 with room for one picture: a newer one takes the place of one that has not been looked at.
 """
 

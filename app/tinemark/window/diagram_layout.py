@@ -46,7 +46,7 @@ def lay_out(size: QSizeF, ratio: float, metrics: QFontMetricsF, *, strip: bool =
     plot = QRectF(left, top, columns / ratio, rows / ratio)
     strip_top = plot.bottom() + GAP
     return DiagramLayout(
-        names=QRectF(4, 6, size.width() - 8, line),
+        names=QRectF(14, 6, size.width() - 18, line),
         marks=QRectF(left, 6 + line + 2, plot.width() + RIGHT - 2, lane),
         periods=QRectF(left, plot.top() - lane - 1, plot.width(), lane),
         plot=plot,

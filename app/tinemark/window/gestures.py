@@ -22,6 +22,7 @@ DRAG_LEAST = 5.0
 ZOOM_STEP = Fraction(4, 5)
 ONE_GESTURE_MS = 700
 PAN_STEP = 8
+STRAIGHT = 14.0
 
 
 class Gestures:
@@ -79,6 +80,12 @@ class Gestures:
             return
         ratio = diagram.devicePixelRatioF()
         parts = diagram.parts
+        across, up = abs(moved.x()), abs(moved.y())
+        # A drag along one axis stays on it: a picture moved by whole columns alone can keep them.
+        if up < STRAIGHT and across > 2 * up:
+            moved.setY(0.0)
+        elif across < STRAIGHT and up > 2 * across:
+            moved.setX(0.0)
         columns, rows = round(-moved.x() * ratio), round(moved.y() * ratio)
         wanted = nav.panned(view, columns, rows, parts.columns, parts.rows)
         if wanted != diagram.view:

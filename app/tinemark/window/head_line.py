@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from PySide6.QtCore import QSize, Qt, Signal
-from PySide6.QtGui import QAction
-from PySide6.QtWidgets import QButtonGroup, QHBoxLayout, QLabel, QSizePolicy, QToolButton, QWidget
+from PySide6.QtGui import QAction, QResizeEvent
+from PySide6.QtWidgets import QButtonGroup, QHBoxLayout, QToolButton, QWidget
 
 from tinemark.window.diagram import TOOL_WORDS, TOOLS
+from tinemark.window.elided_label import ElidedLabel
 from tinemark.window.icons import stroke_icon
 from tinemark.window.theme import Theme, heading_font
 
@@ -16,6 +17,8 @@ TOOL_TIPS = {
     "probe": "A click shows the orbit at that parameter value (3; or Ctrl with a click)",
 }
 
+WORDS_FROM = 600
+
 
 class HeadLine(QWidget):
     """Title at the left, tools and steps at the right."""
@@ -24,12 +27,10 @@ class HeadLine(QWidget):
 
     def __init__(self, parent: QWidget | None = None) -> None:
         super().__init__(parent)
-        self.title = QLabel()
+        self.title = ElidedLabel(greedy=False)
         self.title.setFont(heading_font())
-        self.title.setSizePolicy(QSizePolicy.Policy.Maximum, QSizePolicy.Policy.Preferred)
-        self.subtitle = QLabel()
+        self.subtitle = ElidedLabel()
         self.subtitle.setProperty("rank", "second")
-        self.subtitle.setSizePolicy(QSizePolicy.Policy.Ignored, QSizePolicy.Policy.Preferred)
         self._row = QHBoxLayout(self)
         self._row.setContentsMargins(14, 6, 12, 2)
         self._row.setSpacing(3)
@@ -40,7 +41,7 @@ class HeadLine(QWidget):
         group = QButtonGroup(self)
         for tool in TOOLS:
             button = QToolButton()
-            button.setText(TOOL_WORDS[tool])
+            button.setText(f" {TOOL_WORDS[tool]}")
             button.setCheckable(True)
             button.setToolButtonStyle(Qt.ToolButtonStyle.ToolButtonTextBesideIcon)
             button.setIconSize(QSize(18, 18))
@@ -65,13 +66,22 @@ class HeadLine(QWidget):
 
     def show_title(self, title: str, subtitle: str) -> None:
         """Name the system and the diagram."""
-        self.title.setText(title)
-        self.subtitle.setText(subtitle)
-        self.subtitle.setToolTip(subtitle)
+        self.title.set_words(title)
+        self.subtitle.set_words(subtitle)
 
     def show_tool(self, tool: str) -> None:
         """Show which tool is in hand."""
         self._tools[tool].setChecked(True)
+
+    def resizeEvent(self, event: QResizeEvent) -> None:
+        """In a narrow line the tools go by their signs alone."""
+        super().resizeEvent(event)
+        narrow = event.size().width() < WORDS_FROM
+        style = (
+            Qt.ToolButtonStyle.ToolButtonIconOnly if narrow else Qt.ToolButtonStyle.ToolButtonTextBesideIcon
+        )
+        for button in self._tools.values():
+            button.setToolButtonStyle(style)
 
     def wear(self, theme: Theme) -> None:
         """Draw the signs in the theme's ink."""

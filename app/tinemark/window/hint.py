@@ -1,4 +1,6 @@
-"""The one line that says what to do at the first start. It leaves once both things have been done, or on its cross."""
+"""The one line that says what to do at the first start. It leaves once both things have been done, or on
+its cross.
+"""
 
 from __future__ import annotations
 

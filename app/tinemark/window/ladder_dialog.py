@@ -44,8 +44,8 @@ class LadderDialog(QDialog):
         self.setWindowTitle("Follow the ladder")
         self.answer: LadderQuestion | None = None
         words = QLabel(
-            f"The cycle of the base period is followed from the first value of {parameter} towards the second; "
-            "every doubling on the way becomes a row."
+            f"The cycle of the base period is followed from the first value of {parameter} towards the "
+            "second; every doubling on the way becomes a row."
         )
         words.setWordWrap(True)
         words.setMinimumWidth(360)

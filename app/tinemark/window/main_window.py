@@ -1,4 +1,6 @@
-"""The main window: puts the parts together and lets them speak to each other. What they do stands in their files."""
+"""The main window: puts the parts together and lets them speak to each other. What they do stands in their
+files.
+"""
 
 from __future__ import annotations
 
@@ -255,7 +257,8 @@ class MainWindow(QMainWindow):
     def cancel(self) -> None:
         """Stop the work under way."""
         if not self.onsets.cancel():
-            self.status.show_words("Nothing is under way.")
+            self.pictures.stop()
+            self.status.show_words("Drawing stopped; the next view is drawn again.")
 
     # --- system, panels, theme -----------------------------------------------------------------------------
 
@@ -299,10 +302,14 @@ class MainWindow(QMainWindow):
         """Open About."""
         from tinemark.window.about import AboutDialog
 
-        AboutDialog(self).exec()
+        dialog = AboutDialog(self)
+        dialog.exec()
+        dialog.deleteLater()
 
     def say_trouble(self, words: str) -> None:
-        """Say what went wrong, in the middle of the diagram and in the status line; nobody has to click it away."""
+        """Say what went wrong, in the middle of the diagram and in the status line; nobody has to click it
+        away.
+        """
         view = self.diagram.view
         middle = (view.left + view.right) / 2, (view.bottom + view.top) / 2
         self.diagram.show_callout(*middle, words)
@@ -312,6 +319,7 @@ class MainWindow(QMainWindow):
 
     def _hear(self, event: object) -> None:
         self.onsets.hear(event)
+        self.pictures.hear(event)
         self.probes.hear(event)
 
     def resizeEvent(self, event: QResizeEvent) -> None:  # noqa: D102

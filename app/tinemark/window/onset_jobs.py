@@ -1,4 +1,6 @@
-"""From a click to a row: what is asked of the refinery, what is said while it works, and what comes of the answer."""
+"""From a click to a row: what is asked of the refinery, what is said while it works, and what comes of the
+answer.
+"""
 
 from __future__ import annotations
 
@@ -96,7 +98,9 @@ class OnsetJobs(QObject):
         self.ask(Job(request, "", near, observed))
 
     def refine_row(self, system: System, row: Row, view: View, observed: Fraction) -> None:
-        """A row to be worked out: searched for along the parameter, within its own uncertainty and the view."""
+        """A row to be worked out: searched for along the parameter, within its own uncertainty and the
+        view.
+        """
         near = row.onset.value_fraction
         width = max(view.width, 4 * row.onset.half_width)
         request = RefineRequest(system, row.onset.parameter, near, width, None, None, digits_for(view))

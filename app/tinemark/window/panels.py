@@ -1,7 +1,7 @@
 """How the panels stand around the diagram, and how they fold away.
 
-The rail at the left has a tab for each. The diagram comes first: in a narrow window the system card and the probe
-start folded, so that the diagram keeps at least 60 % of the width.
+The rail at the left has a tab for each. The diagram comes first: in a narrow window the system card and
+the probe start folded, so that the diagram keeps at least 60 % of the width.
 """
 
 from __future__ import annotations
@@ -13,7 +13,7 @@ from tinemark.window.layout_memory import LayoutMemory
 from tinemark.window.rail import Rail
 
 ROOMY = 1560
-DRAWER = 330
+DRAWER = 345
 LEDGER_SHARE = 0.34
 LEDGER_LEAST = 340
 LEDGER_MOST = 620
@@ -28,7 +28,8 @@ NAMES = {
 
 
 class Panels(QObject):
-    """The arrangement: rail, drawer with system card and picture settings, diagram over probe, ledger over ratios.
+    """The arrangement: rail, drawer with system card and picture settings, diagram over probe, ledger over
+    ratios.
 
     Signals
     -------
@@ -55,7 +56,7 @@ class Panels(QObject):
         for name, tab in self.tabs.items():
             tab.clicked.connect(lambda _=False, n=name: self.toggle(n))
         self._drawer = QStackedWidget()
-        self._drawer.setMinimumWidth(250)
+        self._drawer.setMinimumWidth(270)
         self._in_drawer = {"system": _scrolled(system), "picture": _scrolled(picture)}
         for widget in self._in_drawer.values():
             self._drawer.addWidget(widget)
@@ -133,8 +134,16 @@ class Panels(QObject):
                 if other != name and self._open[other]:
                     self._open[other] = False
                     self.opened.emit(other, False)
+        was_open = self._drawer.isVisibleTo(self.across)
         self._apply()
+        if self._drawer_open() and not was_open:
+            self._make_room()
         self.opened.emit(name, state)
+
+    def _make_room(self) -> None:
+        """Give the drawer its width, taken from the diagram."""
+        drawer, centre, right = self.across.sizes()
+        self.across.setSizes([DRAWER, max(drawer + centre - DRAWER, 1), right])
 
     def _drawer_open(self) -> bool:
         return any(self._open[name] for name in self._in_drawer)

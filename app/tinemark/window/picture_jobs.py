@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from typing import Protocol
 
 from PySide6.QtCore import QObject, QTimer
 
 from tinemark.density.request import PictureRequest
+from tinemark.density.sampling import columns_distinct
 from tinemark.document.session import BUDGETS, Session
 from tinemark.systems.system import System
 from tinemark.window.bridge import Bridge, Painted
@@ -15,6 +15,7 @@ from tinemark.window.diagram import Diagram
 from tinemark.window.picture_tones import Tones
 from tinemark.window.status_line import StatusLine
 from tinemark.window.theme import current_theme
+from tinemark.work.pictures import PictureFailed
 
 TOO_DEEP = "Columns are closer than double precision can tell; a click still refines."
 
@@ -40,7 +41,6 @@ class PictureJobs(QObject):
         self._status = status
         self._bridge = bridge
         self.desk: DeskLike | None = None
-        self.columns_distinct: Callable[[PictureRequest], bool] | None = None
         self._wanted: tuple[PictureRequest, int] | None = None
         self._asked: dict[int, PictureRequest] = {}
         self._newest_shown = 0
@@ -52,9 +52,9 @@ class PictureJobs(QObject):
         self._soon.setInterval(0)
         self._soon.timeout.connect(self._ask)
 
-    def attach(self, desk: DeskLike, columns_distinct: Callable[[PictureRequest], bool]) -> None:
+    def attach(self, desk: DeskLike) -> None:
         """The drawing desk is there."""
-        self.desk, self.columns_distinct = desk, columns_distinct
+        self.desk = desk
         self._soon.start()
 
     def show(self, session: Session, system: System) -> None:
@@ -93,10 +93,10 @@ class PictureJobs(QObject):
             self._bridge.on_field(self._newest_shown, self._diagram.field)
 
     def _ask(self) -> None:
-        if self.desk is None or self.columns_distinct is None or self._wanted is None:
+        if self.desk is None or self._wanted is None:
             return
         request, budget = self._wanted
-        if not self.columns_distinct(request):
+        if not columns_distinct(request):
             self.desk.cancel()
             self._asked.clear()
             self._diagram.show_notice(TOO_DEEP)
@@ -110,10 +110,21 @@ class PictureJobs(QObject):
 
     def take(self, painted: Painted) -> None:
         """A picture has come, on the window's thread."""
-        # While the hand moves, a picture of a moment ago is shown where it belongs; an older one never follows.
+        # While the hand moves, a picture of a moment ago is shown where it belongs; no older one follows.
         request = self._asked.get(painted.number)
         if request is None or painted.number < self._newest_shown:
             return
         self._newest_shown = painted.number
         self._diagram.show_picture(painted.image, painted.pixels, painted.field, request.view)
         self._status.show_steps(painted.field.steps)
+
+    def hear(self, event: object) -> None:
+        """The desk says that a picture is done or cannot be drawn; other events are not meant for us."""
+        if isinstance(event, PictureFailed) and event.id in self._asked:
+            self._diagram.show_notice(f"No picture: {event.error}.")
+            self._status.show_words(f"No picture: {event.error}.", "warning")
+
+    def stop(self) -> None:
+        """Stop drawing; what has been drawn stays."""
+        if self.desk is not None:
+            self.desk.cancel()

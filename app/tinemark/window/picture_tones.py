@@ -11,7 +11,9 @@ from numpy.typing import NDArray
 
 @dataclass(frozen=True)
 class Tones:
-    """How counts become colours: tone curve, colour map, the ground that uncounted cells keep, and its kind."""
+    """How counts become colours: tone curve, colour map, the ground that uncounted cells keep, and its
+    kind.
+    """
 
     tone: str
     palette: str

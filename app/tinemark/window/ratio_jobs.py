@@ -1,4 +1,6 @@
-"""From the ledger to its estimates: worked out off the window's thread, kept while a ladder stays the same."""
+"""From the ledger to its estimates: worked out off the window's thread, kept while a ladder stays the
+same.
+"""
 
 from __future__ import annotations
 

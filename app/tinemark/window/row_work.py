@@ -155,10 +155,10 @@ class RowWork(QObject):
 
     def copy(self, form: str) -> None:
         """Put the ledger on the clipboard as "tsv", "markdown" or "latex"."""
-        from tinemark.document.export import ledger_text
+        from tinemark.document.export import copy_text
 
         ledger = self._keeper.session.ledger
-        QGuiApplication.clipboard().setText(ledger_text(ledger, form))
+        QGuiApplication.clipboard().setText(copy_text(ledger, form))
         count = len(ledger.rows)
         self._window.status.show_words(f"Copied {count} row{'' if count == 1 else 's'}.")
 

@@ -1,7 +1,7 @@
 """Opening and saving: dialogs, recent files, and the question about unsaved work.
 
-What goes wrong is said in the status line and beside the diagram, with the file named; the session in the window is
-never touched by a file that could not be read.
+What goes wrong is said in the status line and beside the diagram, with the file named; the session in
+the window is never touched by a file that could not be read.
 """
 
 from __future__ import annotations

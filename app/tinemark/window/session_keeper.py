@@ -1,7 +1,7 @@
 """Holds the session: the one value that all parts show, how it changes, and the way back.
 
-Every change goes through here, carries a label and can be undone, except moving about: views have their own way
-back.
+Every change goes through here, carries a label and can be undone, except moving about: views have their
+own way back.
 """
 
 from __future__ import annotations

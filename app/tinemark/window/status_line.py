@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from PySide6.QtCore import Qt, Signal
 from PySide6.QtGui import QPainter, QPaintEvent
-from PySide6.QtWidgets import QHBoxLayout, QLabel, QProgressBar, QPushButton, QSizePolicy, QWidget
+from PySide6.QtWidgets import QHBoxLayout, QLabel, QProgressBar, QPushButton, QWidget
 
+from tinemark.window.elided_label import ElidedLabel
 from tinemark.window.theme import color, current_theme, mono_font
 
 BAR_PX = 120
@@ -21,7 +22,8 @@ class StatusLine(QWidget):
         self.coordinates = QLabel()
         self.coordinates.setAccessibleName("Coordinates")
         self.coordinates.setFont(mono_font(0.92))
-        self.words = _Elided()
+        self.words = ElidedLabel()
+        self.words.setTextInteractionFlags(Qt.TextInteractionFlag.TextSelectableByMouse)
         self.words.setAccessibleName("Message")
         self.steps = QLabel()
         self.steps.setAccessibleName("Steps drawn")
@@ -92,31 +94,6 @@ class StatusLine(QWidget):
         painter.fillRect(self.rect(), color(theme.surface))
         painter.fillRect(0, 0, self.width(), 1, color(theme.line))
         painter.end()
-
-
-class _Elided(QLabel):
-    """A label that gives way: what does not fit is cut at the end and shown on hovering."""
-
-    def __init__(self) -> None:
-        super().__init__()
-        self._words = ""
-        self.setSizePolicy(QSizePolicy.Policy.Ignored, QSizePolicy.Policy.Preferred)
-        self.setTextInteractionFlags(Qt.TextInteractionFlag.TextSelectableByMouse)
-        self.setTextFormat(Qt.TextFormat.PlainText)
-
-    def set_words(self, words: str) -> None:
-        self._words = words
-        self._fit()
-
-    def resizeEvent(self, event) -> None:
-        super().resizeEvent(event)
-        self._fit()
-
-    def _fit(self) -> None:
-        line = " ".join(self._words.split())
-        fitted = self.fontMetrics().elidedText(line, Qt.TextElideMode.ElideRight, max(self.width() - 2, 0))
-        self.setText(fitted)
-        self.setToolTip(line if fitted != line else "")
 
 
 def counted(steps: int) -> str:

@@ -27,8 +27,8 @@ QMenu::separator { height: 1px; background: $line; margin: 4px 8px; }
 QStatusBar { background: $surface; border-top: 1px solid $line; }
 QStatusBar::item { border: none; }
 QSplitter::handle { background: transparent; }
-QSplitter::handle:horizontal { width: 5px; }
-QSplitter::handle:vertical { height: 5px; }
+QSplitter::handle:horizontal { width: 5px; border-right: 1px solid $line; }
+QSplitter::handle:vertical { height: 5px; border-bottom: 1px solid $line; }
 QSplitter::handle:hover { background: $accent_soft; }
 
 QPushButton { background: $raised; border: 1px solid $edge; border-radius: 4px; padding: 4px 12px; }

@@ -135,8 +135,9 @@ def apply_theme(app: QApplication, theme: Theme) -> None:
     app.setProperty(THEME_PROPERTY, theme.name)
     if app.style().objectName().lower() != "fusion":
         app.setStyle(QStyleFactory.create("Fusion"))
-    app.setStyleSheet(style_sheet(theme))
+    # The sheet takes its defaults from the palette, so the palette comes first.
     app.setPalette(qt_palette(theme))
+    app.setStyleSheet(style_sheet(theme))
 
 
 def qt_palette(theme: Theme) -> QPalette:

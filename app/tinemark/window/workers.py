@@ -8,7 +8,6 @@ from typing import TYPE_CHECKING, Any
 
 from PySide6.QtCore import QObject
 
-from tinemark.density.request import PictureRequest
 from tinemark.systems.system import System
 from tinemark.window.bridge import Bridge
 
@@ -23,30 +22,35 @@ class Made:
     pictures: Any
     probes: Any
     refinery: Any
-    columns_distinct: Callable[[PictureRequest], bool]
 
 
 def make_all(bridge: Bridge) -> Made:
-    """Make the desks and start the refinery's process. Imports what is heavy, so never the window's thread."""
-    from tinemark.density.renderer import columns_distinct
+    """Make the desks and start the refinery's process. Imports what is heavy, so never the window's
+    thread.
+    """
     from tinemark.work.pictures import PictureDesk
     from tinemark.work.probe import ProbeDesk
     from tinemark.work.refinery import Refinery
 
     return Made(
-        PictureDesk(bridge.on_field), ProbeDesk(bridge.on_event), Refinery(bridge.on_event), columns_distinct
+        PictureDesk(bridge.on_field, bridge.on_event), ProbeDesk(bridge.on_event), Refinery(bridge.on_event)
     )
 
 
 class Workers(QObject):
     """Keeps what `make_all` made."""
 
-    def __init__(self, bridge: Bridge, window: MainWindow, make: Callable[[Bridge], Made] = make_all) -> None:
+    def __init__(self, bridge: Bridge, window: MainWindow) -> None:
         super().__init__(window)
-        self._bridge, self._window, self._make = bridge, window, make
+        self._bridge, self._window = bridge, window
+        self._make: Callable[[Bridge], Made] = make_all
         self._made: Made | None = None
         self._to_warm: System | None = None
         self._closed = False
+
+    def make_with(self, make: Callable[[Bridge], Made]) -> None:
+        """Have them made by another function, before they are started."""
+        self._make = make
 
     def start(self) -> None:
         """Make them, off the window's thread."""
@@ -64,7 +68,7 @@ class Workers(QObject):
         if not isinstance(made, Made):
             return
         window = self._window
-        window.pictures.attach(made.pictures, made.columns_distinct)
+        window.pictures.attach(made.pictures)
         window.probes.attach(made.probes)
         window.onsets.attach(made.refinery)
         if self._to_warm is not None:
