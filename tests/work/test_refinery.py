@@ -240,3 +240,25 @@ def test_requests_are_frozen() -> None:
     for kind in (RefineRequest, LadderRequest, *ENDS, Started, Progressed, LevelFound):
         assert kind.__dataclass_params__.frozen, kind
         assert dataclasses.fields(kind)
+
+
+def test_the_real_engine_answers_a_click_proved(heard, logistic) -> None:
+    """A click near the second flip of the logistic map, 1 + sqrt(6) (check_values.md 4.1, exact)."""
+    with Refinery(heard) as refinery:
+        refinery.warm(logistic)
+        id_ = refinery.refine(RefineRequest(logistic, "r", Fraction("3.448"), Fraction("0.1")))
+        end = heard.until_end(id_)[-1]
+    assert isinstance(end, Finished)
+    (onset,) = end.result.onsets
+    assert onset.status.value == "proved"
+    lower, upper = Fraction(onset.lower) - 1, Fraction(onset.upper) - 1
+    assert lower**2 <= 6 <= upper**2
+    assert upper - lower < Fraction(1, 10**19)
+
+
+def test_the_real_engine_says_in_words_that_there_is_nothing(heard, logistic) -> None:
+    with Refinery(heard) as refinery:
+        id_ = refinery.refine(RefineRequest(logistic, "r", Fraction("3.2"), Fraction("0.05")))
+        end = heard.until_end(id_)[-1]
+    assert isinstance(end, Failed)
+    assert isinstance(end.error, NoOnsetFound)
