@@ -14,6 +14,7 @@ from tinemark.document import ledger as led
 from tinemark.document.estimates import estimate_text
 from tinemark.document.ledger import Ledger
 from tinemark.onsets.results import Kind, LadderLevel, LadderResult, Onset, Status
+from tinemark.systems.errors import TinemarkError
 from tinemark.systems.system_file import read_system_text
 
 DELTA = Fraction("4.669201609102990671853203820466")  # OEIS A006890
@@ -171,6 +172,14 @@ def test_a_reading_holds_half_a_pixel() -> None:
     assert onset.half_width <= half * Fraction(101, 100)
     with pytest.raises(ValueError, match="pixel"):
         led.eye_pick("r", value, Fraction(0))
+
+
+def test_a_full_ledger_says_so(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(led, "MAX_ROWS", 3)
+    ledger = filled(known.flips(known.LOGISTIC[:3]))
+    with pytest.raises(TinemarkError, match="is full; remove some"):
+        led.add(ledger, known.flip(known.LOGISTIC[3], 8), known.PLACE)
+    assert led.add(ledger, known.flip(known.LOGISTIC[2], 4), known.PLACE) == (ledger, "r3")
 
 
 def test_estimates_of_the_logistic_ladder() -> None:

@@ -12,6 +12,7 @@ from tinemark.document.ladders import direction, grouped
 from tinemark.document.rounding import decimal_text, exponent
 from tinemark.document.row import Place, Row, place_of, row_id
 from tinemark.onsets.results import Criticality, Kind, LadderResult, Onset, Status
+from tinemark.systems.errors import TinemarkError
 
 __all__ = [
     "LadderEstimates",
@@ -71,13 +72,18 @@ def add(ledger: Ledger, onset: Onset, place: Place, *, stated_base: int = 0) -> 
     -------
     ledger, row_id
         The new ledger, and the row that now holds the onset.
+
+    Raises
+    ------
+    TinemarkError
+        The ledger is full (`MAX_ROWS`).
     """
     rows, number, held_by = _insert(ledger.rows, ledger.next_number, onset, place, stated_base)
     return Ledger(grouped(rows), number), held_by
 
 
 def add_ladder(ledger: Ledger, result: LadderResult, place: Place) -> Ledger:
-    """Add every level of a followed ladder."""
+    """Add every level of a followed ladder; see `add`."""
     rows, number = ledger.rows, ledger.next_number
     for level in result.levels:
         rows, number, _ = _insert(rows, number, level.onset, place, result.base_period)
@@ -137,6 +143,10 @@ def _insert(
 ) -> tuple[tuple[Row, ...], int, str]:
     doubles = [row for row in rows if row.place == place and same_onset(row.onset, onset)]
     if not doubles:
+        if len(rows) >= MAX_ROWS:
+            raise TinemarkError(
+                f"the ledger holds {MAX_ROWS} rows and is full", what_to_do="remove some rows first"
+            )
         new = Row(row_id(number), onset, place.system_key, place.fixed, stated_base=stated_base)
         return (*rows, new), number + 1, new.id
     best = max(doubles, key=lambda row: _quality(row.onset))

@@ -87,8 +87,16 @@ def session_bytes(session: Session) -> bytes:
     with zipfile.ZipFile(buffer, "w") as archive:
         archive.writestr(info, plain)
     data = buffer.getvalue()
-    # Lost work is worse than a refused save: what is written must be what can be read.
-    if read_session(data, file="this session") != session:
+    # A file that cannot be opened again is lost work: what is written must be what can be read.
+    try:
+        back = read_session(data, file="this session")
+    except SessionFileError as error:
+        raise SessionFileError(
+            f"cannot be saved: {error.message}",
+            where=error.where,
+            what_to_do="change or shorten it; nothing was written, and the session is still open",
+        ) from error
+    if back != session:
         raise SessionFileError("this session would not come back the same", what_to_do="report this fault")
     return data
 
