@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 from tinemark.document.rounding import concise, held_digits, onset_text
 from tinemark.onsets.ladder_points import ENCLOSURE, Estimate
-from tinemark.onsets.results import Kind, Onset
+from tinemark.onsets.results import Kind, Onset, Status
 from tinemark.onsets.scaling import Scaling
 
 SHOWN_DIGITS = 9
@@ -61,7 +61,8 @@ def onsets_table(found: Sequence[tuple[int | None, Onset]], scaled: Scaling | No
             f"{onset.period_before} -> {onset.period_after}"
             if onset.period_before
             else f"new {onset.period_after}",
-            onset_text(onset, full=True, grouped=False),
+            # All digits of a proved value hold; of any other the brackets say how many do.
+            onset_text(onset, full=onset.status is Status.PROVED, grouped=False),
             onset.status.value,
         ]
         if scaled:
@@ -105,9 +106,8 @@ def _full_text(number: Estimate) -> str:
 def _number_text(number: Estimate | None) -> str:
     if number is None:
         return "-"
-    if number.basis == ENCLOSURE:
-        # Far narrower than a table needs: the leading digits, each of which holds, say enough.
-        held = held_digits(number.lower, number.upper, most=SHOWN_DIGITS)
-        if held:
-            return held
+    # Where it is known far better than a table needs, its leading digits, each of which holds, say enough.
+    held = held_digits(number.lower, number.upper, most=SHOWN_DIGITS)
+    if (number.basis == ENCLOSURE and held) or sum(map(str.isdigit, held.lstrip("-0."))) >= SHOWN_DIGITS:
+        return held
     return concise(number.value_fraction, number.uncertainty_fraction, grouped=False)
