@@ -33,7 +33,7 @@ MAX_DEGREE = 64
 MAX_BITS = 64
 """Longest constant that sympy sees as a number."""
 
-_SMOOTH = ("sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh", "tanh", "exp", "log")
+_SMOOTH = ("sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh", "tanh", "log")
 
 
 @lru_cache(maxsize=4096)
@@ -205,6 +205,9 @@ class _Forest:
                 return self.choose(
                     a, "<" if fn == "min" else ">", b, self.derivative(a, name), self.derivative(b, name)
                 )
+            case Call("exp", (u,)):
+                # By sympy exp(u)**2 would turn into exp(2*u), a second exponential to compute.
+                return self.call("mul", node, self.derivative(u, name))
             case Call("atan2", (y, x)):
                 across = self.call(
                     "sub",
@@ -369,8 +372,11 @@ class _Piece:
 
     def back_power(self, base: Any, exponent: Any) -> Expr:
         root = self.back(base)
-        if exponent == self.sympy.Rational(1, 2):
-            return self.forest.call("sqrt", root)
+        if exponent.is_Rational and exponent.q == 2 and exponent > 0:
+            half = self.forest.call("sqrt", root)
+            whole = (int(exponent.p) - 1) // 2
+            power = self.forest.call("pow", root, self.forest.number(whole))
+            return self.forest.call("mul", power, half) if whole else half
         return self.forest.call("pow", root, self.back(exponent))
 
     def join(self, fn: str, parts: list[Expr]) -> Expr:
@@ -387,7 +393,7 @@ def _is_ours(node: Expr) -> bool:
         case Call("pow", (_, exponent)):
             return not isinstance(exponent, Num)
         case Call(fn, _):
-            return fn in ("abs", "min", "max", "floor", "atan2")
+            return fn in ("exp", "abs", "min", "max", "floor", "atan2")
     return True
 
 

@@ -153,11 +153,14 @@ class _Printer:
                 variable = f"{self.prefix}{len(lines)}"
                 lines.append(f"{variable} = {printed}")
                 text[number] = variable
-        if len(wanted) == 1:
-            lines.append(f"{names[0]} = {text[wanted[0]]}")
-            return lines
-        # Results first, then targets: a target may be read by another formula.
-        return [*lines, f"{', '.join(names)} = {', '.join(text[number] for number in wanted)}"]
+        if len(names) > 1 and not set(names).isdisjoint(self.bind.values()):
+            # Results first, then targets: a target may be read by another formula.
+            for number in wanted:
+                variable = f"{self.prefix}{len(lines)}"
+                lines.append(f"{variable} = {text[number]}")
+                text[number] = variable
+        # One statement a target: numba takes no tuple of more than thirty.
+        return [*lines, *(f"{name} = {text[number]}" for name, number in zip(names, wanted, strict=True))]
 
     def operands(self, number: int) -> list[int]:
         kind, *rest = self.keys[number]
