@@ -156,13 +156,26 @@ def _value_lines(one: OneMap, exprs: Mapping[str, Expr], centre_r: str) -> list[
     return lines + emit([("f", exprs["f"])], {one.state: "m", one.parameter: centre_r}, "ball", "p")
 
 
+def _surface_lines(one: OneMap, bind: Mapping[str, str]) -> list[str]:
+    """Checks that the whole ball lies off every switching surface; they raise `SwitchingTouched`.
+
+    The formula itself is evaluated at midpoints, and its derivatives may have lost a surface (floor has
+    derivative zero on both sides of its jumps), so the surfaces are looked at by themselves.
+    """
+    lines = []
+    for surface in one.exact_surfaces:
+        lines += emit([("side", surface.expr)], bind, "ball", "g")
+        lines.append("ball_less(side, 0)" if surface.kind == "zero" else "ball_floor(side)")
+    return lines
+
+
 def _point_source(one: OneMap, exprs: Mapping[str, Expr]) -> list[str]:
     bind = {one.state: "X", one.parameter: "r"}
     steady, moving = _split(one, exprs, ("fx",))
     before = emit(steady, bind, "ball", "c") if steady else []
     body = [*_value_lines(one, exprs, "r")]
     body += emit(moving, bind, "ball", "t") if moving else []
-    body += ["X = f + fx*(X - m)", "u = fx*u"]
+    body += [*_surface_lines(one, bind), "X = f + fx*(X - m)", "u = fx*u"]
     return _loop("point(X, r, u, n)", before, body, "X, u")
 
 
@@ -170,7 +183,8 @@ def _box_source(one: OneMap, exprs: Mapping[str, Expr]) -> list[str]:
     bind = {one.state: "X", one.parameter: "R"}
     steady, moving = _split(one, exprs, ("fx", "fr", "fxx", "fxr", "fxxx"))
     before = emit(steady, bind, "ball", "c") if steady else []
-    body = emit(moving, bind, "ball", "t") if moving else []
+    body = _surface_lines(one, bind)
+    body += emit(moving, bind, "ball", "t") if moving else []
     # Schwarzian of a composition: S(g o h) = S(g)(h) h'^2 + S(h). Every term of a map with negative
     # Schwarzian has one sign, so the sum loses nothing, where f_xxx/6 + f_xx^2/4 would cancel.
     body += ["bend = fxx/fx" if exprs["fxx"] != ZERO else "bend = 0*u"]

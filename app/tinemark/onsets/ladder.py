@@ -137,17 +137,19 @@ def _first_flip(course: _Course) -> Generator[Step, None, Crossing]:
 def _scan(course: _Course, columns: int, seen: set[int]) -> Generator[Step, None, list[Crossing]]:
     request, cycles = course.request, course.cycles
     start, stop = float(request.start), float(request.stop)
-    tried: list[tuple[float, float]] = []
+    # By start and period: what one start settles on along the range is one branch, or a few.
+    tried: dict[int, dict[int, list[tuple[float, float]]]] = {}
     block = 25
     for first in range(0, columns + 1, block):
         rs = [start + (stop - start) * k / columns for k in range(first, min(first + block, columns + 1))]
         starts = [*cycles.critical_points(rs[len(rs) // 2])[:6], float(course.one.start)]
-        jobs = [(x, r) for r in rs for x in starts]
+        jobs = [(label, x, r) for r in rs for label, x in enumerate(starts)]
         ends, returns = cycles.settle(
-            [x for x, _ in jobs], [r for _, r in jobs], 3000, 8 * request.base_period + 64
+            [x for _, x, _ in jobs], [r for _, _, r in jobs], 3000, 8 * request.base_period + 64
         )
-        for (_, r), end, periods in zip(jobs, ends.tolist(), returns.tolist(), strict=True):
-            flip = _flip_from(course, end, r, [n for n in periods if n > 0], seen, tried)
+        for (label, _, r), end, periods in zip(jobs, ends.tolist(), returns.tolist(), strict=True):
+            known = tried.setdefault(label, {})
+            flip = _flip_from(course, end, r, [n for n in periods if n > 0], seen, known)
             if flip is not None:
                 return [flip]
         yield Step(f"looking for the first flip of period {request.base_period}", None)
@@ -160,28 +162,28 @@ def _flip_from(
     r: float,
     periods: Sequence[int],
     seen: set[int],
-    tried: list[tuple[float, float]],
+    tried: dict[int, list[tuple[float, float]]],
 ) -> Crossing | None:
+    """The flip that an orbit leads to; `tried` holds, by period, where branches are known to have none."""
     request, cycles = course.request, course.cycles
     base = request.base_period
+    width = abs(float(request.stop - request.start))
     for period in dict.fromkeys(periods):
         if period % base and period > base:
             continue
+        if any(low <= r <= high for low, high in tried.get(period, ())):
+            return None
         cycle = find_cycle(cycles, x, r, period)
         if cycle is None or not abs(cycle.multiplier) < 1.5:
             continue
         seen.add(cycle.period)
         if cycle.period not in (base, 2 * base):
             continue
-        width = abs(float(request.stop - request.start))
-        if any(low <= r <= high for low, high in tried) and cycle.period == base:
-            return None
         crossings, span = crossings_from(cycles, cycle, Fraction(r), 1.01 * width)
         for crossing in crossings:
             if crossing.kind is Kind.FLIP and crossing.period == base and _begins(course, crossing):
                 return crossing
-        if cycle.period == base:
-            tried.append((r + span[0], r + span[1]))
+        tried.setdefault(cycle.period, []).append((r + span[0], r + span[1]))
         return None
     return None
 

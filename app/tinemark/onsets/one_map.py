@@ -8,6 +8,7 @@ from fractions import Fraction
 from functools import cached_property, lru_cache
 
 from tinemark.systems.expression import Call, Cond, Expr, Name, Num, children, names_in
+from tinemark.systems.surfaces import Surface
 from tinemark.systems.system import System
 
 DERIVATIVES = {"f": "", "fx": "x", "fr": "r", "fxx": "xx", "fxr": "xr", "fxxx": "xxx"}
@@ -28,6 +29,8 @@ class OneMap:
         Expression of each entry of `DERIVATIVES`, in all names.
     observe
         Observed quantity, in all names.
+    surfaces
+        Where the formula switches between smooth pieces.
     start, extent
         Where an orbit starts when nothing better is known, and the range its state lives in.
     """
@@ -37,6 +40,7 @@ class OneMap:
     fixed: tuple[tuple[str, Fraction], ...]
     derivatives: tuple[tuple[str, Expr], ...]
     observe: Expr
+    surfaces: tuple[Surface, ...]
     start: Fraction
     extent: tuple[Fraction, Fraction] | None
 
@@ -50,6 +54,12 @@ class OneMap:
     def exact_observe(self) -> Expr:
         """The observed quantity with the fixed parameters put in."""
         return put_in(self.observe, dict(self.fixed))
+
+    @cached_property
+    def exact_surfaces(self) -> tuple[Surface, ...]:
+        """The switching surfaces with the fixed parameters put in."""
+        values = dict(self.fixed)
+        return tuple(Surface(put_in(surface.expr, values), surface.kind) for surface in self.surfaces)
 
     @property
     def scale(self) -> float:
@@ -85,6 +95,7 @@ def one_map(system: System, parameter: str) -> OneMap:
         fixed=fixed,
         derivatives=_derivatives(system.expressions[0], state.name, swept),
         observe=system.observe_expression,
+        surfaces=system.surfaces,
         start=state.start.fraction,
         extent=extent,
     )

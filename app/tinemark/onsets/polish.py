@@ -11,6 +11,7 @@ import math
 from collections.abc import Generator
 from dataclasses import dataclass
 from fractions import Fraction
+from itertools import pairwise
 from typing import Any
 
 from flint import arb
@@ -40,7 +41,9 @@ from tinemark.onsets.results import Criticality, Kind, Onset, Status, Step
 from tinemark.systems.errors import SwitchingTouched
 
 ATTEMPTS = 4
-MOST_STEPS = 40
+MOST_STEPS = 30
+SLOW_STEPS = 6
+"""So many Newton steps in a row that each shrink by a factor near a constant: the equations are singular."""
 LEAST_SIZE = Fraction(1, 10**40)
 """An onset at zero has no significant digits: those of this size are given instead."""
 
@@ -127,9 +130,10 @@ def settle_onset(
             continue
         shown = yield from _shown_state(loops, proof, show_after, bits)
         return Settled(_onset_of(one, rough, proof, digits, places, shown), rough.x, rough.r)
-    if last_step is not None and not last_step <= wanted:
-        # Slow convergence is what a pitchfork or a transcritical point looks like: no onset of this kind.
-        raise Lost("Newton's method found no isolated onset of this kind")
+    else:
+        # A regular onset is proved with bits enough. What is left are pitchforks, transcritical points and
+        # tangencies of higher order, where the equations are singular: none of them is an onset of this kind.
+        raise Lost(f"no isolated {rough.kind.value} there: {reason}")
     half = _half_width(one, rough, wanted, last_step)
     return Settled(_estimate_of(one, rough, digits, half, reason), rough.x, rough.r)
 
@@ -157,8 +161,12 @@ def _polish(
         far = None if reach is None else ball_of(reach)
     text = f"polishing the {rough.kind.value} of period {rough.period}"
     previous = math.inf
+    steps: list[float] = []
     for _ in range(MOST_STEPS):
         x, r, inverse, step = yield from newton_step(loops, rough.kind, rough.period, x, r, bits, text)
+        steps.append(step)
+        if _is_slow(steps):
+            raise Lost(f"no isolated {rough.kind.value} there: Newton's method converges slowly")
         if far is not None and not abs(r - start_r) < far:
             raise Lost("Newton's method left the neighbourhood")
         # Chord steps: each shrinks the error by about the relative size of the step before it.
@@ -181,6 +189,11 @@ def _polish(
             return _Polished(x, r, inverse, correction, size)
         previous = math.inf if step > wanted else step
     raise Lost("Newton's method did not converge")
+
+
+def _is_slow(steps: list[float]) -> bool:
+    last = steps[-SLOW_STEPS - 1 :]
+    return len(last) > SLOW_STEPS and all(0.1 * before < after < before for before, after in pairwise(last))
 
 
 def newton_step(
