@@ -6,6 +6,7 @@ import multiprocessing
 import queue
 import threading
 from fractions import Fraction
+from pathlib import Path
 
 import pytest
 import refinery_engines as engines
@@ -262,3 +263,22 @@ def test_the_real_engine_says_in_words_that_there_is_nothing(heard, logistic) ->
         end = heard.until_end(id_)[-1]
     assert isinstance(end, Failed)
     assert isinstance(end.error, NoOnsetFound)
+
+
+@pytest.mark.skipif(
+    not Path("/proc/self/fd").exists(), reason="counts open files where the system shows them"
+)
+def test_nothing_stays_open(heard, logistic) -> None:
+    def once() -> None:
+        with Refinery(heard, engines.engine) as refinery:
+            heard.until_end(refinery.refine(engines.click(logistic, engines.DIE)))
+            id_ = refinery.refine(engines.click(logistic, engines.STUCK))
+            heard.until(Progressed, id_)
+            refinery.cancel(id_)
+            heard.until_end(id_)
+            heard.until_end(refinery.refine(engines.click(logistic)))
+
+    once()  # The first spawn opens what all later ones share.
+    before = len(list(Path("/proc/self/fd").iterdir()))
+    once()
+    assert len(list(Path("/proc/self/fd").iterdir())) == before

@@ -278,19 +278,19 @@ class Refinery:
 
     def _bury(self, worker_: _Process) -> None:
         """The process has died by itself."""
-        self._end(worker_)
+        code = self._end(worker_)
         running = worker_.running
         if not worker_.ready:
             self._failed_starts += 1
             if self._queue and self._failed_starts >= 2:
                 # Without a working process nothing that waits would ever be answered.
                 for id_, request in self._queue:
-                    self._tell(Crashed(id_, request, worker_.process.exitcode))
+                    self._tell(Crashed(id_, request, code))
                 self._queue.clear()
         elif running is not None and running.cancel_by is not None:
             self._tell(Cancelled(running.id, running.request))
         elif running is not None:
-            self._tell(Crashed(running.id, running.request, worker_.process.exitcode))
+            self._tell(Crashed(running.id, running.request, code))
         if self._warm is None and worker_.ready:
             self._warm = (running.request.system if running else None,)
 
@@ -318,16 +318,19 @@ class Refinery:
             worker_.process.join(STOP_TIME)
         self._end(worker_)
 
-    def _end(self, worker_: _Process) -> None:
-        """End the process whatever it does, and give everything back."""
+    def _end(self, worker_: _Process) -> int | None:
+        """End the process whatever it does, and give everything back; returns its exit code."""
         self._worker = None
         worker_.process.terminate()
         worker_.process.join(STOP_TIME)
         if worker_.process.is_alive():
             worker_.process.kill()
             worker_.process.join()
+        code = worker_.process.exitcode
+        worker_.process.close()
         worker_.requests.close()
         worker_.events.close()
+        return code
 
     def _tell(self, event: Event) -> None:
         if self._closed:
