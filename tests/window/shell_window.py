@@ -13,12 +13,12 @@ from PySide6.QtWidgets import QApplication
 
 from tinemark.density.field import Field
 from tinemark.density.request import PictureRequest
+from tinemark.document.session import new_session
 from tinemark.onsets.results import Criticality, Kind, LadderRequest, Onset, RefineRequest, Status
 from tinemark.systems.library import builtin_text
 from tinemark.window.app import application
 from tinemark.window.layout_memory import LayoutMemory
 from tinemark.window.main_window import MainWindow
-from tinemark.window.new_session import new_session
 from tinemark.window.session_keeper import SessionKeeper
 from tinemark.window.workers import Made
 

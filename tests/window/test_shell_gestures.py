@@ -76,7 +76,8 @@ def test_the_rubber_band_says_its_extents_and_escape_drops_it(window):
     QTest.mouseMove(window.diagram, at(window, "3.6", "0.4"))
     plain = window.diagram.grab().toImage()
     words = window.diagram.gestures._extents(
-        window.diagram.point(Fraction("3.2"), Fraction("0.8")), window.diagram.point(Fraction("3.6"), Fraction("0.4"))
+        window.diagram.point(Fraction("3.2"), Fraction("0.8")),
+        window.diagram.point(Fraction("3.6"), Fraction("0.4")),
     )
     assert words.startswith("r 3.20") and "3.60" in words and "x 0.40" in words
     window.diagram.setFocus()

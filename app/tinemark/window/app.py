@@ -10,11 +10,11 @@ from PySide6.QtCore import QTimer
 from PySide6.QtWidgets import QApplication
 
 from tinemark import __version__
+from tinemark.document.session import demo_session
 from tinemark.systems.errors import TinemarkError
 from tinemark.window.icons import program_icon
 from tinemark.window.layout_memory import LayoutMemory
 from tinemark.window.main_window import MainWindow
-from tinemark.window.new_session import demo_session
 from tinemark.window.session_keeper import SessionKeeper
 
 

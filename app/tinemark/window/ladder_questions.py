@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-from fractions import Fraction
-
 import numpy as np
 from PySide6.QtWidgets import QWidget
 
 from tinemark.density.field import Field
 from tinemark.density.request import View
 from tinemark.document.ledger import ladder_rows
-from tinemark.document.row import Row, place_of
-from tinemark.document.session import Session
+from tinemark.document.row import Row
+from tinemark.document.session import Session, system_of_row
 from tinemark.onsets.results import Kind, LadderRequest
 from tinemark.systems.system import System
 from tinemark.window.ladder_dialog import LadderDialog, LadderQuestion
@@ -90,31 +88,32 @@ def ladder_request(system: System, session: Session, question: LadderQuestion) -
     )
 
 
-def further_levels(system: System, session: Session, ladder: str) -> LadderRequest | str:
-    """The request that finds the next levels of a known ladder, or a sentence why there is none."""
+def further_levels(session: Session, ladder: str, field: Field | None) -> tuple[LadderRequest, int] | str:
+    """The request that finds the next levels of a known ladder, with the ladder's base period.
+
+    The search begins a little before the first flip that is known, so its own base period is that flip's.
+    A sentence instead where there is nothing to go on from.
+    """
     rows = [row for row in ladder_rows(session.ledger, ladder) if row.level is not None and row.level >= 1]
     if not rows:
         return "This ladder has no flip to go on from."
-    if rows[0].place != place_of(system, rows[0].onset.parameter):
-        return "This ladder belongs to another system or other parameter values; open that system first."
-    first, last = rows[0].onset.value_fraction, rows[-1].onset.value_fraction
-    base = rows[0].base_period or rows[0].onset.period_before
-    step = _way(session, rows)
-    # A little before the first known flip its cycle is stable; the levels above it are predicted from there.
-    start = first - step / 4
-    return LadderRequest(
+    system = system_of_row(session, rows[0].id)
+    if system is None:
+        return "The system of this ladder is not known any more; open it to go on."
+    first, last = rows[0].onset, rows[-1].onset
+    if len(rows) > 1:
+        way = last.value_fraction - first.value_fraction
+        stop = last.value_fraction + 2 * way
+    else:
+        way = session.view.width / 4 * (1 if _rises(session.view, rows[0], field) else -1)
+        stop = last.value_fraction + 4 * way
+    request = LadderRequest(
         system,
-        rows[0].onset.parameter,
-        start,
-        last + 2 * step,
-        base * 2 ** ((rows[0].level or 1) - 1),
+        first.parameter,
+        first.value_fraction - way / 8,
+        stop,
+        first.period_before,
         (rows[-1].level or 1) - (rows[0].level or 1) + 1 + MORE_LEVELS,
         max(LEAST_DIGITS, digits_for(session.view)),
     )
-
-
-def _way(session: Session, rows: list[Row]) -> Fraction:
-    """From the first flip towards the later ones; by the view where only one is known."""
-    if len(rows) > 1:
-        return rows[-1].onset.value_fraction - rows[0].onset.value_fraction
-    return session.view.width / 4
+    return request, rows[0].base_period or first.period_before

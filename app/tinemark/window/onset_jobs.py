@@ -5,7 +5,7 @@ answer.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from typing import Protocol
 
@@ -45,13 +45,26 @@ class RefineryLike(Protocol):
 
 @dataclass
 class Job:
-    """A request under way: for which row (empty for a new pick), on which place, levels found so far."""
+    """A request under way.
+
+    Attributes
+    ----------
+    row
+        The row to be refined; empty for a new pick.
+    parameter, observed
+        Where the click fell.
+    levels
+        Levels found so far.
+    base_period
+        Base period of the ladder that is gone on with; 0 where the request's own counts.
+    """
 
     request: RefineRequest | LadderRequest
     row: str = ""
     parameter: Fraction = Fraction(0)
     observed: Fraction = Fraction(0)
     levels: list[LadderLevel] = field(default_factory=list)
+    base_period: int = 0
 
 
 def digits_for(view: View) -> int:
@@ -97,14 +110,13 @@ class OnsetJobs(QObject):
         request = RefineRequest(system, parameter, near, view.width, observed, view.height, digits_for(view))
         self.ask(Job(request, "", near, observed))
 
-    def refine_row(self, system: System, row: Row, view: View, observed: Fraction) -> None:
-        """A row to be worked out: searched for along the parameter, within its own uncertainty and the
-        view.
-        """
+    def refine_row(self, system: System, row: Row, view: View) -> None:
+        """A row to be worked out: searched for along its parameter, within its own uncertainty and the view."""
         near = row.onset.value_fraction
-        width = max(view.width, 4 * row.onset.half_width)
+        reach = max(4 * row.onset.half_width, abs(near) / 10**6)
+        width = max(view.width, reach) if row.onset.parameter == self._diagram.labels.parameter else reach
         request = RefineRequest(system, row.onset.parameter, near, width, None, None, digits_for(view))
-        self.ask(Job(request, row.id, near, observed))
+        self.ask(Job(request, row.id, near, (view.bottom + view.top) / 2))
 
     def ask(self, job: Job) -> None:
         """Hand a job to the refinery, now or as soon as it is there."""
@@ -173,7 +185,7 @@ class OnsetJobs(QObject):
     def _finished(self, job: Job, result: RefineResult | LadderResult) -> None:
         system = job.request.system
         if isinstance(result, LadderResult):
-            self.ladder_found.emit(system, result)
+            self._keep_ladder(job, result)
             count = len(result.levels)
             words = f"{count} level{'' if count == 1 else 's'} found."
             self._status.show_words(f"{words} {_sentence(result.message)}".strip())
@@ -210,13 +222,16 @@ class OnsetJobs(QObject):
 
     def _keep_levels(self, job: Job, words: str) -> None:
         assert isinstance(job.request, LadderRequest)
-        result = LadderResult(job.request.base_period, tuple(job.levels), words)
-        self.ladder_found.emit(job.request.system, result)
+        self._keep_ladder(job, LadderResult(job.request.base_period, tuple(job.levels), words))
         count = len(job.levels)
         self._status.show_words(f"{words} Kept {count} level{'' if count == 1 else 's'} found before.")
 
+    def _keep_ladder(self, job: Job, result: LadderResult) -> None:
+        result = replace(result, base_period=job.base_period or result.base_period)
+        self.ladder_found.emit(job.request.system, result)
+
     def _crashed(self, job: Job, words: str) -> None:
-        again = Choice("Try again", lambda: self.ask(Job(job.request, job.row, job.parameter, job.observed)))
+        again = Choice("Try again", lambda: self.ask(replace(job, levels=[])))
         place = self._place(job)
         self._diagram.show_callout(*place, _sentence(words), [again])
         self._status.show_words(_sentence(words), "error")

@@ -10,6 +10,7 @@ from PySide6.QtGui import QGuiApplication
 
 from tinemark.document import ledger as ledgers
 from tinemark.document.row import Row
+from tinemark.document.session import system_of_row
 from tinemark.onsets.results import LadderResult, Onset, Status
 from tinemark.systems.system import System
 from tinemark.window.ladder_questions import further_levels, ladder_question, ladder_request
@@ -19,10 +20,7 @@ from tinemark.window.onset_jobs import Job
 if TYPE_CHECKING:
     from tinemark.window.main_window import MainWindow
 
-ELSEWHERE = (
-    "Rows of another system, parameter or setting, and measured ones, are left as they are; "
-    "open their system to refine them."
-)
+MEASURED = "Measured rows, and rows whose system is not known any more, are left as they are."
 
 
 class RowWork(QObject):
@@ -104,7 +102,10 @@ class RowWork(QObject):
         ledger = self._keeper.session.ledger
         place = ledgers.place_of(system, onsets[0].parameter)
         if row and ledger.row(row) is not None:
-            self._keeper.set_ledger("refine a row", ledgers.replace_onset(ledger, row, onsets[0]))
+            refined = ledgers.replace_onset(ledger, row, onsets[0])
+            if refined == ledger:
+                self._window.status.show_words("The row already holds this onset as well as it is known.")
+            self._keeper.set_ledger("refine a row", refined)
         else:
             for onset in onsets:
                 ledger, row = ledgers.add(ledger, onset, place)
@@ -125,17 +126,15 @@ class RowWork(QObject):
     def refine(self, rows: list[str]) -> None:
         """Work out rows that were read by eye or estimated."""
         session = self._keeper.session
-        place = ledgers.place_of(self._keeper.system, session.parameter)
-        view, skipped = session.view, False
+        skipped = False
         for name in rows:
-            row = session.ledger.row(name)
-            if row is None or row.onset.status is Status.MEASURED or row.place != place:
+            row, system = session.ledger.row(name), system_of_row(session, name)
+            if row is None or system is None or row.onset.status is Status.MEASURED:
                 skipped = True
                 continue
-            middle = (view.bottom + view.top) / 2
-            self._window.onsets.refine_row(self._keeper.system, row, view, middle)
+            self._window.onsets.refine_row(system, row, session.view)
         if skipped:
-            self._window.status.show_words(ELSEWHERE, "warning")
+            self._window.status.show_words(MEASURED, "warning")
 
     def refine_selected(self) -> None:
         """Work out the selected rows."""
@@ -173,8 +172,9 @@ class RowWork(QObject):
 
     def extend_ladder(self, ladder: str) -> None:
         """Find further levels of a ladder of the ledger."""
-        request = further_levels(self._keeper.system, self._keeper.session, ladder)
-        if isinstance(request, str):
-            self._window.status.show_words(request, "warning")
+        found = further_levels(self._keeper.session, ladder, self._window.diagram.field)
+        if isinstance(found, str):
+            self._window.status.show_words(found, "warning")
         else:
-            self._window.onsets.ask(Job(request))
+            request, base_period = found
+            self._window.onsets.ask(Job(request, base_period=base_period))

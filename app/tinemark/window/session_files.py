@@ -12,13 +12,12 @@ from typing import TYPE_CHECKING
 from PySide6.QtCore import QStandardPaths
 from PySide6.QtWidgets import QFileDialog, QMenu, QMessageBox
 
-from tinemark.document.session import Session
+from tinemark.document.session import Session, demo_session, new_session
 from tinemark.document.session_file import open_session, save_session
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.library import builtin_text
 from tinemark.systems.system_file import read_system_file
 from tinemark.window.layout_memory import LayoutMemory
-from tinemark.window.new_session import demo_session, new_session
 from tinemark.window.session_keeper import SessionKeeper
 
 if TYPE_CHECKING:

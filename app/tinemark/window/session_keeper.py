@@ -14,15 +14,15 @@ from PySide6.QtCore import QObject, Signal
 
 from tinemark.density.request import View
 from tinemark.document import history, views
+from tinemark.document import session as sessions
 from tinemark.document.first_view import first_view
 from tinemark.document.history import Timeline
 from tinemark.document.ledger import Ledger
 from tinemark.document.session import PictureSettings, Session
 from tinemark.systems.library import builtin_names, builtin_text
-from tinemark.systems.system import System
-from tinemark.systems.system_file import read_system_text
 
 UNTITLED = "Untitled"
+EDIT = "edit the system"
 
 
 class SessionKeeper(QObject):
@@ -42,7 +42,7 @@ class SessionKeeper(QObject):
     def __init__(self, session: Session, *, path: Path | None = None, parent: QObject | None = None) -> None:
         super().__init__(parent)
         self._timeline = Timeline(session)
-        self.system = _system_of(session)
+        self.system = sessions.system_of(session)
         self.path = path
         self._saved = session
 
@@ -68,7 +68,7 @@ class SessionKeeper(QObject):
 
     def open(self, session: Session, path: Path | None) -> None:
         """Put another session in place; the old one's history goes with it."""
-        system = _system_of(session)
+        system = sessions.system_of(session)
         before, self._timeline = self.session, Timeline(session)
         self.system, self.path, self._saved = system, path, session
         self.changed.emit(before, session)
@@ -98,7 +98,7 @@ class SessionKeeper(QObject):
         before, after = self.session, timeline.present
         was_modified = self.is_modified
         if _diagram(before) != _diagram(after):
-            self.system = _system_of(after)
+            self.system = sessions.system_of(after)
         self._timeline = timeline
         if before != after:
             self.changed.emit(before, after)
@@ -131,7 +131,7 @@ class SessionKeeper(QObject):
         """Change how the diagram is drawn."""
         self.do("change the picture", replace(self.session, picture=picture), merge="picture")
 
-    def set_system(self, text: str, label: str = "edit the system") -> None:
+    def set_system(self, text: str, label: str = EDIT) -> None:
         """Put another system text in place.
 
         The view stays while the diagram shows the same quantities over the same ranges.
@@ -141,49 +141,35 @@ class SessionKeeper(QObject):
         SystemFileError, FormulaError
             The text cannot be read. Nothing has changed.
         """
-        old, new = self.system, read_system_text(text)
-        parameter, observe = new.diagram_parameter, new.observe
-        session = replace(self.session, system_text=text, parameter=parameter, observe=observe)
-        if (parameter, observe) != (self.session.parameter, self.session.observe):
-            session = replace(session, view=first_view(new), history=views.ViewHistory(), probe=None)
-        elif _ranges(old, parameter) != _ranges(new, parameter):
-            left = views.leave(self.session.history, self.session.view)
-            session = replace(session, view=first_view(new), history=left)
-        self.do(label, session)
+        self.do(label, sessions.with_system(self.session, text), merge=label if label == EDIT else "")
 
     # --- looking about -------------------------------------------------------------------------------------
 
     def show_view(self, view: View, *, goes_on: bool = False) -> None:
         """Show another view; `goes_on` when it belongs to the same gesture as the one before."""
-        way = self.session.history if goes_on else views.leave(self.session.history, self.session.view)
-        self._look(replace(self.session, view=view, history=way))
+        if goes_on:
+            self._look(replace(self.session, view=view))
+        else:
+            self._look(sessions.with_view(self.session, view))
 
     def _look(self, session: Session) -> None:
         self._become(history.look(self._timeline, session))
 
     def fit_view(self) -> None:
         """Show the whole diagram."""
-        view = first_view(self.system)
-        if view != self.session.view:
-            self.show_view(view)
+        self.show_view(first_view(self.system))
 
     def view_back(self) -> None:
         """Go back one view."""
-        way, view = views.back(self.session.history, self.session.view)
-        self._look(replace(self.session, view=view, history=way))
+        self._look(sessions.view_back(self.session))
 
     def view_forward(self) -> None:
         """Go forward one view."""
-        way, view = views.forward(self.session.history, self.session.view)
-        self._look(replace(self.session, view=view, history=way))
+        self._look(sessions.view_forward(self.session))
 
     def set_probe(self, value: Fraction | None) -> None:
         """Probe the orbit at a parameter value, or none."""
         self._look(replace(self.session, probe=value))
-
-
-def _system_of(session: Session) -> System:
-    return read_system_text(session.system_text).with_diagram(session.parameter, session.observe)
 
 
 def _kept(session: Session) -> Session:
@@ -196,11 +182,3 @@ _NOWHERE = View(Fraction(0), Fraction(1), Fraction(0), Fraction(1))
 
 def _diagram(session: Session) -> tuple[str, str, str]:
     return session.system_text, session.parameter, session.observe
-
-
-def _ranges(system: System, parameter: str) -> tuple[object, ...]:
-    swept = next((p for p in system.parameters if p.name == parameter), None)
-    return (
-        swept.range if swept else None,
-        tuple((state.name, state.range) for state in system.states),
-    )
