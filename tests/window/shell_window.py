@@ -36,7 +36,7 @@ class FakePictures:
         return len(self.asked)
 
     def answer(self, number: int = 0) -> Field:
-        """A field for the newest request, or for one by number: a ramp of counts, period 1 then 2, then escape."""
+        """A field for the newest request, or for one by number: two lines, periods 1 and 2, then escape."""
         number = number or len(self.asked)
         request = self.asked[number - 1]
         rows, columns = request.rows, request.columns
