@@ -264,7 +264,7 @@ def test_a_formula_without_value_gives_an_error_or_a_derivative(text: str) -> No
         result = derivative(read(text), "x")
     except FormulaError as error:
         result = ZERO
-        assert error.what_to_do  # noqa: PT017
+        assert error.what_to_do
     assert names_in(result) <= {"x"}
 
 

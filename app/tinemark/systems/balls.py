@@ -57,6 +57,18 @@ def ball_floor(x: Any) -> Any:
     return whole
 
 
+def ball_div(a: Any, b: Any) -> Any:
+    """Quotient of what may be whole numbers or rationals: exact, or not a number at division by zero."""
+    if isinstance(a, (int, fmpq)) and isinstance(b, (int, fmpq)):
+        return fmpq(a) / b if b != 0 else arb("nan")
+    return a / b
+
+
+def ball_value(x: Any) -> Any:
+    """A result as a ball, also where a formula is constant on the piece in force."""
+    return _ball(x)
+
+
 def ball_sqrt(x: Any) -> Any:
     """Square root; a whole number is taken as a ball."""
     return _ball(x).sqrt()
@@ -101,6 +113,8 @@ _TOOLS: dict[str, Any] = {
     "ball_min": ball_min,
     "ball_max": ball_max,
     "ball_floor": ball_floor,
+    "ball_div": ball_div,
+    "ball_value": ball_value,
     "ball_sqrt": ball_sqrt,
     "ball_pow": ball_pow,
     "ball_atan2": ball_atan2,
@@ -128,8 +142,8 @@ def ball_function(expressions: tuple[Expr, ...], names: tuple[str, ...]) -> Ball
     Returns
     -------
     callable
-        f(*balls) -> tuple of results, one an expression. Constant expressions give plain whole
-        numbers or rationals. It raises `SwitchingTouched` on a switching surface; outside a
+        f(*balls) -> tuple of results, one an expression. All are balls, also where a
+        formula is constant. It raises `SwitchingTouched` on a switching surface; outside a
         function's domain it gives balls that are not finite, as arb does.
     """
     source, constants = _source(expressions, names)

@@ -58,6 +58,7 @@ class _Printer:
         self.numbers: dict[_Key, int] = {}
         self.keys: list[_Key] = []
         self.memo: dict[int, int] = {}
+        self.exact: list[bool] = []
         self.kept: list[Expr] = []  # keeps ids alive while they serve as keys
 
     def intern(self, *key: object) -> int:
@@ -153,6 +154,9 @@ class _Printer:
                 variable = f"{self.prefix}{len(lines)}"
                 lines.append(f"{variable} = {printed}")
                 text[number] = variable
+        for number in wanted:
+            if self.ball and self.may_be_exact(number) and not text[number].startswith("ball_value("):
+                text[number] = f"ball_value({text[number]})"
         if len(names) > 1 and not set(names).isdisjoint(self.bind.values()):
             # Results first, then targets: a target may be read by another formula.
             for number in wanted:
@@ -179,6 +183,9 @@ class _Printer:
         if kind == "pi":
             return "ball_pi()" if self.ball else "3.141592653589793"
         operands = [text[operand] for operand in self.operands(number)]
+        if kind == "div" and self.ball and all(self.may_be_exact(part) for part in self.operands(number)):
+            # Two whole numbers would divide as Python's own, to a rounded double.
+            return f"ball_div({operands[0]}, {operands[1]})"
         if kind in _INFIX:
             return f"({operands[0]} {_INFIX[str(kind)]} {operands[1]})"
         if kind == "neg":
@@ -193,6 +200,21 @@ class _Printer:
             return f"({then} if ball_less({low}, {high}) else {other})"
         stem = "ball" if self.ball else "lane"
         return f"{stem}_{kind}({', '.join(operands)})"
+
+    def may_be_exact(self, number: int) -> bool:
+        """Whether a ball evaluator may hold a whole number or rational here, and no ball."""
+        while len(self.exact) <= number:  # operands are numbered before what they stand in
+            self.exact.append(self.exact_one(len(self.exact)))
+        return self.exact[number]
+
+    def exact_one(self, number: int) -> bool:
+        kind = self.keys[number][0]
+        parts = [self.exact[part] for part in self.operands(number)]
+        if kind == "cond":
+            return any(parts[2:])
+        if kind in ("min", "max"):
+            return any(parts)
+        return kind == "num" or (kind in (*_INFIX, "neg", "abs") and all(parts))
 
     def constant(self, value: object) -> str:
         assert isinstance(value, Fraction)
