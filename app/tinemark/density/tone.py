@@ -101,7 +101,7 @@ _SOURCES = {
     "ink": ("linear_blue_5_95_c73", 0.90, 0.0),
     "graphite": ("linear_grey_10_95_c0", 0.88, 0.0),
     "clay": ("linear_worb_100_25_c53", 0.15, 1.0),
-    "glow": ("linear_protanopic_deuteranopic_kbw_5_98_c40", 0.14, 1.0),
+    "glow": ("linear_blue_5_95_c73", 0.20, 1.0),
     "silver": ("linear_grey_10_95_c0", 0.14, 1.0),
     "amber": ("linear_protanopic_deuteranopic_kyw_5_95_c49", 0.16, 1.0),
     "ember": ("linear_kryw_5_100_c67", 0.14, 1.0),
