@@ -189,8 +189,10 @@ class MainWindow(QMainWindow):
             self.settings_panel.show_settings(after.picture)
         if before is None or before.ledger != after.ledger or before.system_text != after.system_text:
             self.rows.show()
+        if before is None:
+            self.rows.select(after.ledger.rows[0].id if after.ledger.rows else "")
         self.rows.show_marks()
-        self.probes.show(after, system)
+        self.probes.show(after, system, reveal=before is not None)
         self.pictures.show(after, system)
         self.refresh_actions()
 

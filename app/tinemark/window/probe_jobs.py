@@ -39,8 +39,11 @@ class ProbeJobs(QObject):
         self.desk = desk
         self._ask()
 
-    def show(self, session: Session, system: System) -> None:
-        """Show the session's probe, or fold the panel when there is none."""
+    def show(self, session: Session, system: System, *, reveal: bool) -> None:
+        """Show the session's probe, and fold the panel when there is none.
+
+        `reveal` opens the panel for a new probe; one that comes with an opened session waits folded.
+        """
         self._diagram.show_probe(session.probe)
         if session.probe is None:
             if self._wanted is not None:
@@ -56,7 +59,8 @@ class ProbeJobs(QObject):
         if wanted == self._wanted:
             return
         self._wanted = wanted
-        self._panels.set_open("probe", True)
+        if reveal:
+            self._panels.set_open("probe", True)
         self._ask()
 
     def _ask(self) -> None:

@@ -30,8 +30,8 @@ class SessionKeeper(QObject):
 
     Signals
     -------
-    changed : Session, Session
-        Before and after.
+    changed : Session | None, Session
+        Before and after; None before a session that has been opened.
     title_changed
         Name of the file, or whether there is something to save.
     """
@@ -69,9 +69,9 @@ class SessionKeeper(QObject):
     def open(self, session: Session, path: Path | None) -> None:
         """Put another session in place; the old one's history goes with it."""
         system = sessions.system_of(session)
-        before, self._timeline = self.session, Timeline(session)
+        self._timeline = Timeline(session)
         self.system, self.path, self._saved = system, path, session
-        self.changed.emit(before, session)
+        self.changed.emit(None, session)
         self.title_changed.emit()
 
     def saved_as(self, path: Path, session: Session) -> None:
