@@ -98,6 +98,22 @@ def everything_logistic() -> list[Onset]:
     return onsets
 
 
+def test_the_better_continuation_wins_over_the_nearer_row() -> None:
+    # Two coupled logistic maps split in step at r = 3 and out of step at r = 3.25: both are flips 1 -> 2, and
+    # the later one is nearer to the second flip of the cascade in step.
+    onsets = [known.flip("3.25", 1), *known.flips(known.LOGISTIC[:5])]
+    for seed in range(4):
+        random.Random(seed).shuffle(onsets)
+        assert ladders(onsets) == {ladder(1, known.LOGISTIC[:5]), ladder(1, ("3.25",))}
+    # The same at the other end: a stray flip of the fifth level's periods before the true one.
+    stray = known.flip("3.5660", 16)
+    assert ladders([stray, *onsets]) == {
+        ladder(1, known.LOGISTIC[:5]),
+        ladder(1, ("3.25",)),
+        ladder(1, ("3.5660",), first=5),
+    }
+
+
 def test_windows_are_told_apart_by_position() -> None:
     expected = {ladder(1, known.LOGISTIC)}
     expected |= {ladder(period, (fold_at, *values), first=0) for period, fold_at, values in known.WINDOWS}

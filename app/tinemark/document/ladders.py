@@ -9,11 +9,13 @@ onsets can still be one cascade.
 
 from __future__ import annotations
 
+import math
 from bisect import bisect_right
 from collections import defaultdict
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from itertools import pairwise
 
 from tinemark.document.row import Place, Row
 from tinemark.onsets.results import Kind, Status
@@ -21,6 +23,8 @@ from tinemark.onsets.results import Kind, Status
 STEEPEST = 40
 """Largest ratio of successive gaps taken for a cascade: the ratios of an order-12 maximum tend to
 13.5, those of conservative maps to 8.7, and first ratios stay near them."""
+
+QUADRATIC_RATE = 4.669  # what ratios of nearly every cascade tend to, to break ties between rows
 
 _LEAST_FOLD_SHARE = 4
 """A fold may stand closer to the first flip than that to the second, but not this many times."""
@@ -48,100 +52,189 @@ def grouped(rows: Sequence[Row]) -> tuple[Row, ...]:
     return tuple(found.get(row.id) or replace(row, ladder="", level=None, base_period=None) for row in rows)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class _Link:
-    """A row on its way into a chain. `order` is log2(period / odd part), half less for a fold."""
+    """A row on its way into a chain.
+
+    Attributes
+    ----------
+    order
+        2*log2(period / odd part), one less for a fold, which comes before the flip of its cycle.
+    value, spread
+        The onset and its half-width, as whole numbers of one common unit: whole numbers compare fast.
+    """
 
     row: Row
-    order: Fraction
-    value: Fraction
-    spread: Fraction
+    order: int
+    value: int
+    spread: int
 
     @property
     def is_fold(self) -> bool:
         return self.row.onset.kind is Kind.FOLD
 
+    @property
+    def by_eye(self) -> bool:
+        return self.row.onset.status is Status.READ_BY_EYE
+
 
 _Chain = tuple[_Link, ...]  # by order
+_Pair = tuple[str, str, bool]  # names of two rows, and whether rows of levels between lie between them
 
 
 def _chains(rows: Sequence[Row]) -> list[_Chain]:
     # Measured onsets make ladders of their own, to be compared with the model's.
-    families: dict[tuple[Place, bool, int], list[_Link]] = defaultdict(list)
-    others: dict[tuple[Place, bool], list[tuple[int, Fraction]]] = defaultdict(list)
+    families: dict[tuple[Place, bool], list[Row]] = defaultdict(list)
     for row in rows:
         onset = row.onset
-        period = onset.period_after if onset.kind is Kind.FOLD else onset.period_before
-        if onset.kind is Kind.FLIP and onset.period_after != 2 * period:
-            continue
-        if onset.kind not in (Kind.FLIP, Kind.FOLD) or period < 1:
-            continue
-        odd = period // (period & -period)
-        order = Fraction((period & -period).bit_length() - 1)
-        if onset.kind is Kind.FOLD:
-            order -= Fraction(1, 2)
-        measured = onset.status is Status.MEASURED
-        families[row.place, measured, odd].append(_Link(row, order, onset.value_fraction, onset.half_width))
-        others[row.place, measured].append((odd, onset.value_fraction))
+        doubles = onset.kind is Kind.FLIP and onset.period_after == 2 * onset.period_before > 0
+        if doubles or (onset.kind is Kind.FOLD and onset.period_after > 0):
+            families[row.place, onset.status is Status.MEASURED].append(row)
     chains: list[_Chain] = []
-    for (place, measured, odd), links in families.items():
-        foreign = sorted(value for other, value in others[place, measured] if other != odd)
-        chains += _join(links, foreign)
+    for family in families.values():
+        unit = math.lcm(*(number.denominator for row in family for number in _numbers(row)))
+        by_odd: dict[int, list[_Link]] = defaultdict(list)
+        for row in family:
+            odd, power = _odd_part(row)
+            value, spread = (int(number * unit) for number in _numbers(row))
+            by_odd[odd].append(_Link(row, 2 * power - (row.onset.kind is Kind.FOLD), value, spread))
+        for odd, links in by_odd.items():
+            foreign = sorted(link.value for other in by_odd if other != odd for link in by_odd[other])
+            chains += _join(links, foreign)
     # A fold alone opens no ladder yet.
     return [chain for chain in chains if not all(link.is_fold for link in chain)]
 
 
-def _join(links: list[_Link], foreign: list[Fraction]) -> list[_Chain]:
+def _numbers(row: Row) -> tuple[Fraction, Fraction]:
+    return row.onset.value_fraction, row.onset.half_width
+
+
+def _odd_part(row: Row) -> tuple[int, int]:
+    """Odd part of the period that a row's cascade begins or goes on with, and the power of two beside it."""
+    onset = row.onset
+    period = onset.period_after if onset.kind is Kind.FOLD else onset.period_before
+    two = period & -period
+    return period // two, two.bit_length() - 1
+
+
+def _join(links: list[_Link], foreign: list[int]) -> list[_Chain]:
     """Single linkage: calculated rows first, so that a coarse reading cannot take a proved one's place."""
     links = sorted(links, key=lambda link: (link.value, link.row.number))
     chain_of: dict[str, _Chain] = {link.row.id: (link,) for link in links}
-    calculated = [link for link in links if link.row.onset.status is not Status.READ_BY_EYE]
-    refused: set[tuple[str, int, str, int]] = set()
+    calculated = [link for link in links if not link.by_eye]
     for members in (calculated, links):
         pairs = _pairs(members)
-        for _ in range(_PASSES):
-            joined = False
-            for first, second in pairs:
-                ours, theirs = chain_of[first], chain_of[second]
-                # Chains only grow, so the first row and the length name one of them.
-                both = (ours[0].row.id, len(ours), theirs[0].row.id, len(theirs))
-                if ours is theirs or both in refused:
-                    continue
-                chain = tuple(sorted(ours + theirs, key=lambda link: link.order))
-                if _is_cascade(chain, foreign):
-                    chain_of.update((link.row.id, chain) for link in chain)
-                    joined = True
-                else:
-                    refused.add(both)
-            if not joined:
-                break
+        _link_nearest(pairs, chain_of, foreign)
+        if _swap_better(members, chain_of, foreign):
+            _link_nearest(pairs, chain_of, foreign)
+    return _distinct(chain_of)
+
+
+def _link_nearest(pairs: list[_Pair], chain_of: dict[str, _Chain], foreign: list[int]) -> None:
+    """Join what can be one cascade, nearest pair first."""
+    refused: set[tuple[str, int, str, int]] = set()
+    for _ in range(_PASSES):
+        joined = False
+        for first, second, apart in pairs:
+            ours, theirs = chain_of[first], chain_of[second]
+            # Here chains only grow, so the first row and the length name one of them.
+            both = (ours[0].row.id, len(ours), theirs[0].row.id, len(theirs))
+            if ours is theirs or both in refused:
+                continue
+            chain = tuple(sorted(ours + theirs, key=lambda link: link.order))
+            # Two rows alone do not reach across levels between them: those belong to another cascade.
+            if _is_cascade(chain, foreign) and not (apart and len(chain) == 2):
+                chain_of.update((link.row.id, chain) for link in chain)
+                joined = True
+            else:
+                refused.add(both)
+        if not joined:
+            return
+
+
+def _swap_better(members: list[_Link], chain_of: dict[str, _Chain], foreign: list[int]) -> bool:
+    """Where a lone row continues a chain better than its nearer end does, let the two change places.
+
+    A map of several states can split twice, say, with both first flips before the second. Whether
+    anything changed.
+    """
+    changed = False
+    for chain in _distinct(chain_of):
+        for end in {chain[0].order: chain[0], chain[-1].order: chain[-1]}.values():
+            chain = chain_of[end.row.id]
+            rest = tuple(link for link in chain if link is not end)
+            if end.is_fold or len(rest) < 2:
+                continue
+            lone = [
+                link
+                for link in members
+                if link.order == end.order
+                and link is not end
+                and len(chain_of[link.row.id]) <= 2
+                and (end.by_eye or not link.by_eye)
+            ]
+            best = min(lone, key=lambda link: _misfit(link, rest), default=end)
+            swapped = tuple(sorted((*rest, best), key=lambda link: link.order))
+            if _misfit(best, rest) < _misfit(end, rest) and _is_cascade(swapped, foreign):
+                for left in (end, *chain_of[best.row.id]):
+                    chain_of[left.row.id] = (left,)
+                chain_of.update((link.row.id, swapped) for link in swapped)
+                changed = True
+    return changed
+
+
+def _distinct(chain_of: dict[str, _Chain]) -> list[_Chain]:
     return list({id(chain): chain for chain in chain_of.values()}.values())
 
 
-def _pairs(links: Sequence[_Link]) -> list[tuple[str, str]]:
+def _misfit(link: _Link, chain: _Chain) -> float:
+    """How far a row lies from where a chain goes on, in powers of e of the gap; at either end of it."""
+    flips = [item for item in chain if not item.is_fold]
+    if len(flips) < 2:
+        return 0.0
+    if link.order > flips[-1].order:  # going on: the same as going back, with the ratios inverted
+        flips.reverse()
+    steps = [abs(b.value - a.value) for a, b in pairwise(flips)]
+    spans = [abs(b.order - a.order) // 2 for a, b in pairwise(flips)]
+    rate = QUADRATIC_RATE if link.order < flips[0].order else 1 / QUADRATIC_RATE
+    if len(steps) > 1 and spans[0] == spans[1] == 1 and steps[0] and steps[1]:
+        rate = steps[0] / steps[1]
+    levels = abs(flips[0].order - link.order) // 2
+    # Gaps grow by `rate` a level on the way from the chain to the row.
+    expected = sum(rate**n for n in range(1, levels + 1)) / sum(rate**-n for n in range(spans[0]))
+    gap = abs(flips[0].value - link.value)
+    if not gap or not steps[0]:
+        return math.inf
+    return abs(math.log(gap) - math.log(steps[0]) - math.log(expected))
+
+
+def _pairs(links: Sequence[_Link]) -> list[_Pair]:
     """Pairs of different levels, nearest first. `links` lie in order of value."""
     pairs = []
     for i, link in enumerate(links):
-        beside = (other for other in links[i + 1 :] if other.order != link.order)
-        for other, _ in zip(beside, range(_NEIGHBOURS), strict=False):
-            pairs.append(
-                (other.value - link.value, link.row.number, other.row.number, link.row.id, other.row.id)
-            )
-    return [(first, second) for _, _, _, first, second in sorted(pairs)]
+        between: set[int] = set()
+        found = 0
+        for other in links[i + 1 :]:
+            if other.order != link.order:
+                low, high = sorted((link.order, other.order))
+                apart = any(low < order < high for order in between)
+                key = (other.value - link.value, link.row.number, other.row.number)
+                pairs.append((key, (link.row.id, other.row.id, apart)))
+                found += 1
+                if found == _NEIGHBOURS:
+                    break
+            between.add(other.order)
+    return [pair for _, pair in sorted(pairs)]
 
 
 def _base(chain: _Chain) -> int:
     """Base period: of the fold at the head, else as stated, else the odd part of the periods."""
-    stated = max(link.row.stated_base for link in chain)
     if chain[0].is_fold:
         return chain[0].row.onset.period_after
-    if stated:
-        return stated
-    period = chain[0].row.onset.period_before
-    return period // (period & -period)
+    return max(link.row.stated_base for link in chain) or _odd_part(chain[0].row)[0]
 
 
-def _is_cascade(chain: _Chain, foreign: Sequence[Fraction]) -> bool:
+def _is_cascade(chain: _Chain, foreign: Sequence[int]) -> bool:
     """Whether onsets, in order of level, can be those of one cascade as far as can be told."""
     orders = [link.order for link in chain]
     if len(set(orders)) < len(orders) or any(link.is_fold for link in chain[1:]):
@@ -170,8 +263,9 @@ def _gaps_fit(a: _Link, b: _Link, c: _Link) -> bool:
     least = _LEAST_FOLD_SHARE if a.is_fold else 1
     if abs(second) > least * abs(first) + slack:
         return False
-    levels = -((a.order - b.order) // 1)
-    return abs(first) <= Fraction(STEEPEST) ** levels * abs(second) + STEEPEST * slack
+    levels = (b.order - a.order + 1) // 2  # a fold stands half a level before the flip of its cycle
+    steepest = int(STEEPEST**levels)
+    return abs(first) <= steepest * abs(second) + STEEPEST * slack
 
 
 def direction(rows: Iterable[Row]) -> int:

@@ -37,7 +37,7 @@ __all__ = [
     "state_base",
 ]
 
-MAX_ROWS = 2000
+MAX_ROWS = 1000
 
 _RANK = {Status.PROVED: 3, Status.ESTIMATED: 2, Status.READ_BY_EYE: 1, Status.MEASURED: 0}
 
