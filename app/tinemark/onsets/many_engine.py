@@ -111,7 +111,7 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
         )
     window = _window(place, full_scales, request)
     candidates = yield from _candidates(float_map, cycles, place, window)
-    return (yield from _settle(float_map, candidates, place, window, request.digits))
+    return (yield from _settle(float_map, candidates, place, window, full_scales, request.digits))
 
 
 def _doubles_tell_apart(place: Place) -> bool:
@@ -188,7 +188,12 @@ def _is_on(float_map: FloatManyMap, cycle: Cycle, traces: list[list[BranchPoint]
 
 
 def _settle(
-    float_map: FloatManyMap, candidates: list[_Candidate], place: Place, window: Window, digits: int
+    float_map: FloatManyMap,
+    candidates: list[_Candidate],
+    place: Place,
+    window: Window,
+    scales: Floats,
+    digits: int,
 ) -> Generator[Step, None, RefineResult]:
     """Polish the nearest candidates and put the result into words."""
     settled: list[tuple[float, Settled]] = []
@@ -202,7 +207,7 @@ def _settle(
             if rotation is None:
                 rotation = candidate
             continue
-        onset = yield from _onset_at(float_map, candidate, place, window, digits)
+        onset = yield from _onset_at(float_map, candidate, place, window, scales, digits)
         if onset is None or any(_same(onset, other) for _, other in settled):
             continue
         distance = place.distance(float_map, onset.cycle)
@@ -241,14 +246,19 @@ def _far_beyond(settled: list[tuple[float, Settled]], distance: float) -> bool:
 
 
 def _onset_at(
-    float_map: FloatManyMap, candidate: _Candidate, place: Place, window: Window, digits: int
+    float_map: FloatManyMap,
+    candidate: _Candidate,
+    place: Place,
+    window: Window,
+    scales: Floats,
+    digits: int,
 ) -> Generator[Step, None, Settled | None]:
     rough = _turned(float_map, candidate.rough, place)
     bracket = abs(candidate.event.before.cycle.r - candidate.event.after.cycle.r)
     reach = 3 * bracket + 0.02 * window.width
     try:
         if candidate.kind is Crossing.FLIP:
-            return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, window.scales, reach))
+            return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, scales, reach))
         half = rough.period // 2
         if rough.period % 2 == 0:
             # A branch of doubled cycles turns round where it joins the branch it split from: a flip.
@@ -261,8 +271,8 @@ def _onset_at(
                 )
             )
             if spread <= 2 * apart:
-                return (yield from settle_onset(float_map, Kind.FLIP, mean, digits, window.scales, reach))
-        return (yield from settle_onset(float_map, Kind.FOLD, rough, digits, window.scales, reach))
+                return (yield from settle_onset(float_map, Kind.FLIP, mean, digits, scales, reach))
+        return (yield from settle_onset(float_map, Kind.FOLD, rough, digits, scales, reach))
     except NotFound:
         return None
 

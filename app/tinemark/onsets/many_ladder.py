@@ -200,16 +200,9 @@ def _next_flip(
     if (stop - origin.r) * (stop - rough.r) < 0:
         return f"the next flip lies beyond the end of the sweep, near {name} = {rough.r:.12g}"
     try:
-        return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, _finer(rough, scales), reach))
+        return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, scales, reach))
     except NotFound as error:
         return f"the flip of period {rough.period} near {name} = {rough.r:.12g} was lost: {error}"
-
-
-def _finer(cycle: Cycle, scales: Floats) -> Floats:
-    """Scales of a long cycle: the share of the range that its nearest points are apart."""
-    half = cycle.period // 2
-    apart = np.max(np.abs(cycle.points - np.roll(cycle.points, -half, axis=0)) / scales)
-    return scales * float(min(1.0, max(apart, 1e-9)))
 
 
 def _take_up(

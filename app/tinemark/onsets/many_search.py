@@ -7,14 +7,25 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tinemark.onsets.many_cycles import Cycle, least_period, newton, orbit_ends, returns, same_cycle
+from tinemark.onsets.many_cycles import (
+    Cycle,
+    least_period,
+    multipliers,
+    newton,
+    orbit_ends,
+    returns,
+    same_cycle,
+)
 from tinemark.onsets.many_map import FloatManyMap, Floats
 from tinemark.onsets.results import Step
 
 OFFSETS = (0.0, 0.004, -0.004, 0.012, -0.012, 0.03, -0.03, 0.07, -0.07, 0.15, -0.15, 0.3, -0.3, 0.5, -0.5)
 """Where orbits are settled, in widths of the view from the click."""
 SCATTERED_STARTS = 3
+MANY_STARTS = 60
 SCATTERED_FOR_NEWTON = 24
+FAR_FROM_STABLE = 4.0
+"""Cycles with a multiplier larger than this are looked at last."""
 TRANSIENT = 1500
 LONGEST_PERIOD = 128
 TOLERANCES = (1e-9, 1e-6, 1e-4, 3e-3)
@@ -47,17 +58,11 @@ def cycles_around(
     float_map: FloatManyMap, place: Place, scales: Floats
 ) -> Generator[Step, None, list[Cycle]]:
     """Distinct cycles at parameters around a click, nearest on the screen first."""
-    yield Step("settling orbits around the click")
     rs = place.r + place.width * np.array(OFFSETS)
-    starts = _starts(float_map)
-    states = np.repeat(starts, len(rs), axis=1)
-    lanes = np.tile(rs, starts.shape[1])
-    history: Floats | None = None
-    for _ in range(5):
-        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // 5, 1)
-        yield Step("settling orbits around the click")
-        states = history[-1]
-    history, lanes = orbit_ends(float_map, states, lanes, 0, LONGEST_PERIOD + 1)
+    history, lanes = yield from _settled(float_map, _starts(float_map), rs)
+    if not len(lanes):
+        # The basin is small: the usual starts escape, so many are tried at fewer places.
+        history, lanes = yield from _settled(float_map, _starts(float_map, MANY_STARTS), rs[:7])
     found: list[Cycle] = []
     for place_, periods in enumerate(returns(history, scales, TOLERANCES)):
         for period in periods:
@@ -81,7 +86,25 @@ def cycles_around(
         for parent in parents(float_map, cycle, scales):
             _keep(found, parent, scales)
     yield Step("ordering the cycles found")
-    return sorted(found, key=lambda cycle: (place.distance(float_map, cycle), cycle.period))
+    return sorted(found, key=lambda cycle: _order(float_map, place, cycle))
+
+
+def _order(float_map: FloatManyMap, place: Place, cycle: Cycle) -> tuple[bool, float, int]:
+    # Nothing is seen of cycles that are far from stable, and little splits from them.
+    largest = max(map(abs, multipliers(float_map, cycle)), default=np.inf)
+    return largest > FAR_FROM_STABLE, place.distance(float_map, cycle), cycle.period
+
+
+def _settled(
+    float_map: FloatManyMap, starts: Floats, rs: Floats
+) -> Generator[Step, None, tuple[Floats, Floats]]:
+    """Last states of orbits from every start at every parameter, those that escape left out."""
+    states, lanes = np.repeat(starts, len(rs), axis=1), np.tile(rs, starts.shape[1])
+    for _ in range(5):
+        yield Step("settling orbits around the click")
+        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // 5, 1)
+        states = history[-1]
+    return orbit_ends(float_map, states, lanes, 0, LONGEST_PERIOD + 1)
 
 
 def parents(float_map: FloatManyMap, cycle: Cycle, scales: Floats) -> Iterator[Cycle]:
