@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import random
 from collections.abc import Sequence
+from fractions import Fraction
 from itertools import combinations
 
 import onset_samples as known
@@ -12,6 +13,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from tinemark.document.ladders import grouped
+from tinemark.document.rounding import decimal_text
 from tinemark.document.row import Row, row_id
 from tinemark.onsets.results import Kind, Onset, Status
 
@@ -224,3 +226,28 @@ def test_grouping_forgets_order_and_history(onsets: list[Onset], cut: int) -> No
     }
     assert again == whole
     assert ladders(onsets) == ladders(sorted(onsets, key=lambda onset: onset.value_fraction))
+
+
+@st.composite
+def made_up_cascades(draw: st.DrawFn) -> list[tuple[str, ...]]:
+    """Up to four cascades of one base period, each with its own rate and direction, spans apart."""
+    found = []
+    start = Fraction(draw(st.integers(-50, 50)))
+    for _ in range(draw(st.integers(1, 4))):
+        rate = Fraction(draw(st.integers(25, 136)), 10)
+        first = Fraction(draw(st.integers(1, 500)), 100)
+        gaps = [first / rate**n for n in range(draw(st.integers(2, 6)))]
+        values = [sum(gaps[:n], Fraction(0)) for n in range(len(gaps) + 1)]
+        if draw(st.booleans()):
+            values = [values[-1] - value for value in values]
+        start += max(values) * draw(st.integers(1, 3))
+        found.append(tuple(decimal_text(start + value, 30) for value in values))
+        start += 2 * max(values)
+    return found
+
+
+@given(made_up_cascades(), st.randoms(use_true_random=False))
+def test_made_up_cascades_are_told_apart(cascades: list[tuple[str, ...]], shuffler: random.Random) -> None:
+    onsets = [onset for values in cascades for onset in known.flips(values, width="1e-25")]
+    shuffler.shuffle(onsets)
+    assert ladders(onsets) == {ladder(1, values) for values in cascades}
