@@ -14,7 +14,6 @@ from collections.abc import Mapping
 WINDOW: Mapping[str, str] = {
     "libEGL.so.1": "libegl1",
     "libGL.so.1": "libgl1",
-    "libOpenGL.so.0": "libopengl0",
     "libX11-xcb.so.1": "libx11-xcb1",
     "libdbus-1.so.3": "libdbus-1-3",
     "libfontconfig.so.1": "libfontconfig1",

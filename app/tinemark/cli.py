@@ -78,7 +78,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _end(text: str, code: int) -> int:
-    print(f"tinemark: {text}", file=sys.stderr, flush=True)
+    # File names and quoted input may hold anything; on a terminal it must stay one plain line.
+    plain = "".join(c if c.isprintable() else c.encode("unicode_escape").decode("ascii") for c in text)
+    print(f"tinemark: {plain}", file=sys.stderr, flush=True)
     return code
 
 

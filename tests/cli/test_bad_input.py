@@ -187,6 +187,7 @@ ARGUMENTS = {
     "neither file nor command": (["laddr"], ['"ladder"']),
     "two files": (["a.toml", "b.toml"], ['"b.toml"']),
     "an unknown option alone": (["--colour"], ["--colour"]),
+    "a name that would move the cursor": (["inspect", "a\x1b[2Jb\nc"], ["a\\x1b[2Jb\\nc"]),
     "a name longer than any file's": (["x" * 5000], []),
 }
 

@@ -223,7 +223,7 @@ def test_without_a_display_an_own_system_runs_too(tinemark, own, tmp_path) -> No
     ended = tinemark(own())
     assert ended.code == 0, ended.err
     assert "3.44948974278317809" in ended.out
-    assert (tmp_path / "own.png").exists()
+    assert (tmp_path / "tinemark-own.png").exists()
 
 
 def test_help_and_version(tinemark) -> None:

@@ -18,7 +18,6 @@ if TYPE_CHECKING:
     from tinemark.systems.system import System
 
 PICTURE_SIZE = (1600, 1000)
-DEMO_PICTURE = "tinemark-demo.png"
 DEMO_LEVELS = 6
 
 
@@ -56,7 +55,7 @@ def without_display(path: Path | None) -> None:
     for name, found, scaled in _groups(session):
         print(f"\n{ladder_title(session.ledger, name) if name else 'other onsets'}\n")
         print_onsets(system.title, session.parameter, found, scaled, None)
-    output = _picture_place(DEMO_PICTURE if path is None else f"{path.stem}.png")
+    output = _picture_place(path.stem if path is not None else "demo")
     draw(session, system, PICTURE_SIZE, output)
     print(f"\npicture: {output}")
 
@@ -121,7 +120,8 @@ def _groups(session: Session) -> list[tuple[str, list[Found], Scaling | None]]:
 
 
 def _picture_place(name: str) -> Path:
+    # A name of our own, so that no picture of the user's is ever replaced.
     import tempfile
 
     here = Path.cwd()
-    return (here if os.access(here, os.W_OK) else Path(tempfile.gettempdir())) / name
+    return (here if os.access(here, os.W_OK) else Path(tempfile.gettempdir())) / f"tinemark-{name}.png"
