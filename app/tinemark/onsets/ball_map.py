@@ -23,6 +23,8 @@ class BallMap:
     It answers what `FloatMap` answers, more slowly: nothing here is rigorous, only precise.
     """
 
+    slice_steps = 10_000
+
     def __init__(self, one: OneMap, bits: int) -> None:
         self.one = one
         self.bits = bits

@@ -17,6 +17,7 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
+from time import perf_counter
 from typing import Any
 
 import flint
@@ -29,8 +30,8 @@ from tinemark.systems.emit import emit
 from tinemark.systems.expression import ZERO, Expr
 
 _RATIONAL = re.compile(r"fmpq\((-?\d+), (\d+)\)")
-CHUNK = 3000
-"""Orbit steps between two chances to cancel: about 10 ms."""
+SLICE_S = 0.02
+"""Seconds of looping between two chances to cancel."""
 
 
 @contextmanager
@@ -200,12 +201,16 @@ def in_chunks(
     advance: Callable[[Any, int], Any], state: Any, steps: int, bits: int, text: str
 ) -> Generator[Step, None, Any]:
     """Run a loop `steps` further in chunks, each in its own precision block, yielding between them."""
-    left = steps
+    left, count = steps, 400
     while left > 0:
-        count = min(left, CHUNK)
+        count = min(left, count)
+        began = perf_counter()
         with precision(bits):
             state = advance(state, count)
         left -= count
-        if steps > CHUNK // 4:
+        if left > 0:
+            # The length of a slice changes nothing but where the steps are yielded.
+            pace = (perf_counter() - began) / count
             yield Step(text)
+            count = max(20, min(4 * count, int(SLICE_S / max(pace, 1e-9))))
     return state

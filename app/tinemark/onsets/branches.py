@@ -27,6 +27,7 @@ class CycleMap(Protocol):
 
     one: OneMap
     coincident: float
+    slice_steps: int
 
     def number(self, value: Fraction | float) -> Any:
         """A parameter or state value in this map's arithmetic."""

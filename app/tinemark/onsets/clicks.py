@@ -49,7 +49,7 @@ def refine_one(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     if request.width <= 0:
         raise NoOnsetFound("the view has no width", what_to_do="choose a view in which the parameter varies")
     yield Step("settling orbits around the click")
-    deep = request.width < DEEP * max(abs(request.near), Fraction(1, 10**6))
+    deep = request.width < DEEP * abs(request.near)
     search = yield from (_deep_search(one, request) if deep else _search(one, request))
     result = yield from _prove_nearest(one, search)
     if result is None:

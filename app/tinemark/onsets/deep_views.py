@@ -42,7 +42,7 @@ def deep_map(one: OneMap, request: RefineRequest) -> BallMap:
     NoOnsetFound
         The view is narrower than the precision supported.
     """
-    size = max(abs(request.near), Fraction(1, 10**6))
+    size = abs(request.near)
     depth = _log2(size / request.width)
     if depth > MOST_BITS - 200:
         raise NoOnsetFound(
@@ -60,7 +60,7 @@ def deep_crossings(
 ) -> Generator[Step, None, list[Crossing]]:
     """Onsets in or near a deep view, found from outside it."""
     coarse: list[Crossing] = []
-    size = max(abs(request.near), Fraction(1, 10**6))
+    size = abs(request.near)
     for share in COARSE_WIDTHS:
         width = size * Fraction(share)
         search = Search(replace(request, width=width, observed=None, height=None), float_map(one))

@@ -135,6 +135,8 @@ class FloatMap:
 
     coincident = 1e-7
     """Share of the state's extent within which two points of a cycle count as one."""
+    slice_steps = 400_000
+    """Steps, over all orbits together, between two chances to cancel."""
 
     def __init__(self, one: OneMap) -> None:
         self.one = one

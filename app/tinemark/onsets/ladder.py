@@ -23,11 +23,13 @@ from tinemark.onsets.branches import (
     follow_to_multiplier,
     least_period,
 )
+from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import FloatMap, float_map
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Lost, Rough, Settled, first_bits, settle_onset
 from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Status, Step
 from tinemark.onsets.scaling_steps import extrapolated
+from tinemark.onsets.searches import settled
 from tinemark.systems.errors import NoOnsetFound
 from tinemark.systems.exact import fraction_text
 
@@ -144,10 +146,10 @@ def _scan(course: _Course, columns: int, seen: set[int]) -> Generator[Step, None
         rs = [start + (stop - start) * k / columns for k in range(first, min(first + block, columns + 1))]
         starts = [*cycles.critical_points(rs[len(rs) // 2])[:6], float(course.one.start)]
         jobs = [(label, x, r) for r in rs for label, x in enumerate(starts)]
-        ends, returns = cycles.settle(
-            [x for _, x, _ in jobs], [r for _, _, r in jobs], 3000, 8 * request.base_period + 64
+        ends, returns = yield from settled(
+            cycles, [x for _, x, _ in jobs], [r for _, _, r in jobs], 3000, 8 * request.base_period + 64
         )
-        for (label, _, r), end, periods in zip(jobs, ends.tolist(), returns.tolist(), strict=True):
+        for (label, _, r), end, periods in zip(jobs, ends, returns, strict=True):
             known = tried.setdefault(label, {})
             flip = _flip_from(course, end, r, [n for n in periods if n > 0], seen, known)
             if flip is not None:
@@ -215,7 +217,7 @@ def _next_level(
     gap = abs(float(crossing.r) - float(found[-1].r))
     try:
         settled = yield from settle_onset(
-            course.one, _rough(crossing, period), course.request.digits, reach=Fraction(gap) / 4
+            course.one, _rough(crossing, period), _digits(course, Fraction(gap)), reach=Fraction(gap) / 4
         )
     except Lost as error:
         return f"the flip of the period-{period} cycle could not be solved for: {error}"
@@ -223,6 +225,12 @@ def _next_level(
         return f"the flip of period {period} lies beyond {fraction_text(course.request.stop, 10)}"
     # A predicted level is at the right cycle point already, and more precisely than doubles could find it.
     return (yield from _anchored(course, settled, period))
+
+
+def _digits(course: _Course, gap: Fraction) -> int:
+    """Digits asked for, or as many as it takes to give the gap to the last level eight of its own."""
+    size = max(abs(course.request.start), abs(course.request.stop))
+    return max(course.request.digits, leading_power(size) - leading_power(gap) + 9)
 
 
 def _predicted(found: Sequence[Settled]) -> tuple[Fraction, Fraction] | None:
@@ -246,7 +254,7 @@ def _from_prediction(
             x, r = Fraction(near[0]), Fraction(near[1])
     try:
         settled = yield from settle_onset(
-            course.one, Rough(Kind.FLIP, period, x, r), course.request.digits, reach=gap / 4
+            course.one, Rough(Kind.FLIP, period, x, r), _digits(course, gap), reach=gap / 4
         )
     except Lost:
         return None
@@ -272,9 +280,10 @@ def _along_doubled_branch(
             continue
         nudge = 1e-3 * cycles.one.scale / half
         starts = [x + nudge, *turning]
-        ends, returns = cycles.settle(starts, [here] * len(starts), min(2000 * period, 2_000_000), 2 * period)
+        transient = min(2000 * period, 2_000_000)
+        ends, returns = yield from settled(cycles, starts, [here] * len(starts), transient, 2 * period)
         yield Step(f"following the cycle of period {period}")
-        for end, periods in zip(ends.tolist(), returns.tolist(), strict=True):
+        for end, periods in zip(ends, returns, strict=True):
             for count in dict.fromkeys(n for n in periods if n > 0):
                 cycle = find_cycle(cycles, end, here, count)
                 if cycle is None or cycle.period != period:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Generator, Iterable
+from collections.abc import Generator, Iterable, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import Any
@@ -73,16 +73,20 @@ class Search:
         offset = self.cycles.offset(crossing.r, self.request.near)
         if abs(offset) > self.width / 2:
             return
-        for other in self.candidates:
-            same = other.crossing.kind is crossing.kind and other.crossing.period == crossing.period
-            if same and abs(other.offset - offset) < 1e-6 * self.width:
-                return
         across, place = self._distance_observed(crossing)
         distance = math.hypot(offset / self.width, across)
         # What is smaller than a few pixels was hardly aimed at: it ranks behind what can be seen.
         seen = crossing.extent / self.width / (3 * PIXEL)
         hidden = 20 * PIXEL * max(0.0, -math.log2(seen)) if seen > 0 else 1.0
-        self.candidates.append(Candidate(crossing, distance, distance + hidden, place, offset))
+        candidate = Candidate(crossing, distance, distance + hidden, place, offset)
+        for index, other in enumerate(self.candidates):
+            same = other.crossing.kind is crossing.kind and other.crossing.period == crossing.period
+            if same and abs(other.offset - offset) < 1e-6 * self.width:
+                # The same onset, or its mirror image in a symmetric map: keep what was clicked.
+                if candidate.rank < other.rank:
+                    self.candidates[index] = candidate
+                return
+        self.candidates.append(candidate)
 
     def _distance_observed(self, crossing: Crossing) -> tuple[float, int]:
         request = self.request
@@ -110,16 +114,39 @@ def run_sweep(search: Search, sweep: Sweep) -> Generator[Step, None, None]:
     jobs = [(label, x, r) for r in columns for label, x in enumerate(starts)]
     for first in range(0, len(jobs), LANES):
         batch = jobs[first : first + LANES]
-        ends, returns = cycles.settle(
-            [x for _, x, _ in batch], [r for _, _, r in batch], sweep.transient, sweep.most
+        ends, returns = yield from settled(
+            cycles, [x for _, x, _ in batch], [r for _, _, r in batch], sweep.transient, sweep.most
         )
-        for (label, _, r), end, periods in zip(batch, ends, returns.tolist(), strict=True):
+        for (label, _, r), end, periods in zip(batch, ends, returns, strict=True):
             search.orbits += 1
             if periods[0] < 0:
                 search.escaped += 1
                 continue
             _take_seed(search, label, end, r, [period for period in periods if period])
         yield Step("settling orbits around the click", first / len(jobs))
+
+
+def settled(
+    cycles: CycleMap, xs: Sequence[Any], rs: Sequence[Any], transient: int, most: int
+) -> Generator[Step, None, tuple[list[Any], list[list[int]]]]:
+    """Run orbits in slices short enough to cancel between, then look for returns.
+
+    Returns
+    -------
+    ends
+        Where each orbit was after the transient.
+    returns
+        Steps of the first return within each tolerance; 0 none, -1 escaped.
+    """
+    share = max(1, cycles.slice_steps // max(1, len(xs)))
+    ends: Sequence[Any] = xs
+    left = transient
+    while left > share:
+        ends, _ = cycles.settle(ends, rs, share, 0)
+        left -= share
+        yield Step("settling orbits")
+    ends, returns = cycles.settle(ends, rs, left, most)
+    return list(ends), returns.tolist()
 
 
 def starting_points(cycles: CycleMap, r: Any, request: RefineRequest) -> list[Any]:
