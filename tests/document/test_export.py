@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import dataclasses
 import io
 import re
 from fractions import Fraction
@@ -75,6 +76,12 @@ def test_tsv_pastes_as_columns_with_all_digits() -> None:
 def test_no_form_carries_thin_spaces_or_typographic_signs(form: str) -> None:
     text = copy_text(ledger_with("plain"), form)
     assert not set(text) & {THIN_SPACE, "\u2212", "\u2026", "\u00b1"}
+
+
+def test_tsv_says_at_which_values_of_the_other_parameters() -> None:
+    place = dataclasses.replace(known.PLACE, fixed=(("b", "0.3"), ("c", "-1")))
+    ledger, _ = led.add(Ledger(), known.flip(known.HENON[0], 1), place)
+    assert read_tsv(tsv_text(ledger))[0]["Other parameters"] == "b = 0.3, c = -1"
 
 
 def test_a_note_stays_one_cell_and_is_no_formula() -> None:
