@@ -160,6 +160,9 @@ class _Template:
         lines = [*self.hoisted(), *self.lane_arrays(growth)]
         lines += ["for l in range(LANES):", "    c = first + min(l, columns - 1)"]
         lines += self.indented(1, [*self.each("X#[l] = states[#, c]"), "P[l] = swept[c]"])
+        if growth:
+            # Added to where it stands, so that a sum does not depend on how passes were divided.
+            lines.append("    G[l] = growth[c]")
         if growth and many:
             lines += self.indented(1, self.each("V#[l] = tangents[#, c]"))
         lines += ["done = 0", "while done < steps and stop[0] == 0:"]
@@ -176,7 +179,7 @@ class _Template:
         lines += ["    done += m", "for l in range(columns):"]
         lines += self.indented(1, self.each("states[#, first + l] = X#[l]"))
         if growth:
-            lines.append("    growth[first + l] += G[l]")
+            lines.append("    growth[first + l] = G[l]")
         if growth and many:
             lines += self.indented(1, self.each("tangents[#, first + l] = V#[l]"))
         lines.append("return done")
@@ -192,7 +195,7 @@ class _Template:
     def lane_arrays(self, growth: bool) -> list[str]:
         lines = [*self.each("X# = np.empty(LANES)"), "P = np.empty(LANES)"]
         if growth:
-            lines += ["G = np.zeros(LANES)"]
+            lines += ["G = np.empty(LANES)"]
             lines += self.each("V# = np.empty(LANES)") if self.n > 1 else ["D = np.ones(LANES)"]
         lines += [
             f"K = np.empty(({BUFFER}, LANES), np.uint16)",

@@ -100,8 +100,10 @@ def _beside_a_flip(stretch: NDArray[np.float64], size: NDArray[np.float64]) -> i
         found = _told_at(stretch[lead], last - 4 * p, p)
         for k in range(1, p):
             if _told_at(stretch[lead], last - 4 * p - k, p) != found:
-                return 0
-        return found
+                found = 0
+                break
+        if found > 0:
+            return found
     return 0
 
 

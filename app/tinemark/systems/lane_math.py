@@ -9,8 +9,7 @@ zeros. tests/density/test_lane_math.py measures all of it.
 
 Not-a-number goes in and comes out, and infinities behave as in the C library. Two limits differ
 from a library's: exp gives 0 below the smallest normal number, and the angle functions give nan
-beyond 2**51, where the spacing of doubles is a sizeable part of a turn; an orbit out there counts
-as escaped.
+beyond 2**45, where doubles lie hundredths of a radian apart; an orbit out there counts as escaped.
 
 The compiler must neither re-associate nor fuse what is written here, so these functions carry no
 fast-math flags whatever the calling kernel allows itself.
@@ -97,7 +96,7 @@ _LIFT = np.uint64((1024 << 52) - 0x3FE6A09E667F3BCD)
 _WHOLE = np.uint64(0x4330000000000000)  # bits of 2**52
 _WHOLE_LIFTED = 4503599627370496.0 + 1024.0
 _SMALLEST_NORMAL = 2.2250738585072014e-308
-_FURTHEST_ANGLE = 2251799813685248.0  # 2**51
+_FURTHEST_ANGLE = 35184372088832.0  # 2**45
 
 _LOG2_E = 1.4426950408889634
 _LN2, _LN2_REST = 0.6931471805599453, 2.3190468138462996e-17
@@ -257,7 +256,7 @@ def _sin_reduced(r: Real) -> Real:
 
 @_lane
 def lane_sin(x: Real) -> Real:
-    """Sine; nan beyond 2**51."""
+    """Sine; nan beyond 2**45."""
     t = _fma(x, _PI_INVERSE, _ROUND)
     n = t - _ROUND
     r = _fma(-n, _PI, x)
@@ -269,7 +268,7 @@ def lane_sin(x: Real) -> Real:
 
 @_lane
 def lane_cos(x: Real) -> Real:
-    """Cosine; nan beyond 2**51."""
+    """Cosine; nan beyond 2**45."""
     # cos(r + (m + 1/2) pi) = -(-1)**m sin(r)
     t = _fma(x, _PI_INVERSE, -0.5) + _ROUND
     n = (t - _ROUND) + 0.5
@@ -282,7 +281,7 @@ def lane_cos(x: Real) -> Real:
 
 @_lane
 def lane_tan(x: Real) -> Real:
-    """Tangent; nan beyond 2**51."""
+    """Tangent; nan beyond 2**45."""
     return lane_sin(x) / lane_cos(x)
 
 
