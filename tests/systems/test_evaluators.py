@@ -29,7 +29,7 @@ from tinemark.systems.expression import ARITIES, Call, Expr, Name, Num
 from tinemark.systems.formula import read_formula
 from tinemark.systems.library import DEMO, builtin_names, builtin_system
 from tinemark.systems.plain import plain_function
-from tinemark.systems.surfaces import Surface, switching_surfaces
+from tinemark.systems.surfaces import Surface, domain_edges, switching_surfaces
 
 POINTS = st.tuples(*[st.fractions(-3, 3, max_denominator=64)] * len(NAMES))
 LANE = {name: getattr(lane_math, name) for name in dir(lane_math) if name.startswith("lane_")}
@@ -250,11 +250,53 @@ def _quiet(function: Callable[..., tuple[float, ...]], values: list[Any]) -> flo
         ("1 if 0 < x < r else 2", [("0 - x", "zero"), ("x - r", "zero")]),
         ("min(x, y, r)", [("x - y", "zero"), ("min(x, y) - r", "zero")]),
         ("abs(x) + abs(x)", [("x", "zero")]),
+        ("atan2(y, x)", [("x + sqrt(x**2 + y**2)", "zero")]),
     ],
 )
 def test_switching_surfaces_are_recorded(text: str, surfaces: list[tuple[str, str]]) -> None:
     expected = {Surface(read_formula(expr, NAMES), kind) for expr, kind in surfaces}
     assert set(switching_surfaces([read_formula(text, NAMES)])) == expected
+
+
+@pytest.mark.parametrize(
+    ("text", "edges"),
+    [
+        ("r*x*(1 - x)", []),
+        ("x**2 + x**0 + sin(x) + exp(x)/3", []),
+        ("r/(1 + x)", ["1 + x"]),
+        ("sqrt(x)**2 + x**0.5", ["x"]),
+        ("x**-2 + log(y)", ["x", "y"]),
+        ("x**r", ["x"]),
+        ("asin(x) + acos(y)", ["1 - x**2", "1 - y**2"]),
+        ("tan(x)", ["cos(x)"]),
+        ("sqrt(2)*x", []),
+        ("1/(1/x)", ["x", "1/x"]),
+    ],
+)
+def test_edges_of_the_domain_are_recorded(text: str, edges: list[str]) -> None:
+    expected = {Surface(read_formula(edge, NAMES), "zero") for edge in edges}
+    assert set(domain_edges([read_formula(text, NAMES)])) == expected
+
+
+@pytest.mark.parametrize(
+    ("text", "inside", "outside"),
+    [
+        ("1/(x - 1)", "1.2 +/- 0.1", "1 +/- 0.1"),
+        ("sqrt(x)", "0.2 +/- 0.1", "0.05 +/- 0.1"),
+        ("x**1.5", "0.2 +/- 0.1", "0.05 +/- 0.1"),
+        ("asin(x)", "0.8 +/- 0.1", "0.95 +/- 0.1"),
+        ("tan(x)", "1.4 +/- 0.1", "1.5 +/- 0.1"),
+        ("atan2(y - 1, x)", "0.2 +/- 0.01", "-0.2 +/- 0.01"),
+    ],
+)
+def test_an_edge_tells_a_ball_that_is_inside_from_one_that_is_not(
+    text: str, inside: str, outside: str
+) -> None:
+    expr = read_formula(text, NAMES)
+    (surface,) = {*domain_edges([expr]), *switching_surfaces([expr])}
+    for shown, defined in ((inside, True), (outside, False)):
+        box = ball_at(surface.expr, [arb(shown), arb(1), arb(1)], 80)
+        assert (box > 0 or box < 0) == defined
 
 
 @pytest.mark.parametrize(

@@ -8,7 +8,7 @@ from fractions import Fraction
 from functools import cached_property, lru_cache
 
 from tinemark.systems.expression import Call, Cond, Expr, Name, Num, children, names_in
-from tinemark.systems.surfaces import Surface
+from tinemark.systems.surfaces import Surface, domain_edges
 from tinemark.systems.system import System
 
 DERIVATIVES = {"f": "", "fx": "x", "fr": "r", "fxx": "xx", "fxr": "xr", "fxxx": "xxx"}
@@ -57,7 +57,7 @@ class OneMap:
 
     @cached_property
     def exact_surfaces(self) -> tuple[Surface, ...]:
-        """The switching surfaces with the fixed parameters put in."""
+        """The switching surfaces and edges of the domain, with the fixed parameters put in."""
         values = dict(self.fixed)
         return tuple(Surface(put_in(surface.expr, values), surface.kind) for surface in self.surfaces)
 
@@ -95,7 +95,7 @@ def one_map(system: System, parameter: str) -> OneMap:
         fixed=fixed,
         derivatives=_derivatives(system.expressions[0], state.name, swept),
         observe=system.observe_expression,
-        surfaces=system.surfaces,
+        surfaces=system.surfaces + domain_edges(system.expressions),
         start=state.start.fraction,
         extent=extent,
     )
