@@ -182,6 +182,30 @@ def test_nothing_there() -> None:
         click(system_of("henon"), "0.3675", "1e-14")
 
 
+def test_a_pitchfork_is_not_called_a_fold() -> None:
+    """x' = r x - x^3 splits at r = 1 into ±sqrt(r - 1); branches cross there, none turns round in a fold."""
+    system = own_system({"x": "r*x - x**3", "y": "0.5*y + 0.1*x"}, "-1", "1")
+    with pytest.raises(NoOnsetFound, match="lies within reach"):
+        click(system, "1.02", "0.3", observed="0.1", height="1")
+
+
+def test_two_equal_multipliers_are_not_decided() -> None:
+    """With next to no exchange the patches' two flips, 3 and 2 + 1/(1 - 2 e) (both exact), all but meet."""
+    e = Fraction(1, 10**9)
+    onset = click(system_of("two_patch", (("e", "0.000000001"),)), "3.004", "0.02")[0]
+    low, high = Fraction(onset.lower), Fraction(onset.upper)
+    assert low <= 3 <= high or low <= 2 + 1 / (1 - 2 * e) <= high
+    assert onset.criticality is Criticality.UNDECIDED
+    assert onset.reason.startswith("two multipliers meet at -1, so")
+
+
+def test_a_map_made_of_pieces() -> None:
+    """On x > 0 the map 1 - r x abs(x) is 1 - r x^2, whose steady state flips at 3/4 (exact)."""
+    system = own_system({"x": "1 - r*x*abs(x)", "y": "0.2*y + 0.1*x"}, "-1.5", "1.5", "0.3")
+    (onset,) = click(system, "0.76", "0.2")
+    assert_is(onset, Fraction(3, 4), Kind.FLIP, 1, 2)
+
+
 def test_of_two_mirror_onsets_the_clicked_one_is_given() -> None:
     """The odd cubic's steady states ±sqrt(1 - 1/r) flip together at r = 2 (exact)."""
     system = own_system({"x": "r*x*(1 - x**2)", "y": "0.2*y + 0.1*x"}, "-1.2", "1.2")

@@ -25,7 +25,7 @@ from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.many_search import Place, cycles_around
 from tinemark.onsets.results import Kind, RefineRequest, RefineResult, Step
-from tinemark.systems.errors import NoOnsetFound
+from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
 
 __all__ = ["ladder_many", "refine_many"]
 
@@ -273,7 +273,7 @@ def _onset_at(
             if spread <= 2 * apart:
                 return (yield from settle_onset(float_map, Kind.FLIP, mean, digits, scales, reach))
         return (yield from settle_onset(float_map, Kind.FOLD, rough, digits, scales, reach))
-    except NotFound:
+    except (NotFound, SwitchingTouched):
         return None
 
 

@@ -26,7 +26,7 @@ from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.many_search import TOLERANCES, parents, scattered_cycles
 from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Step
-from tinemark.systems.errors import NoOnsetFound
+from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
 
 TRANSIENT = 4000
 DELTA_GUESS = 4.67
@@ -153,7 +153,7 @@ def _first_flip(
                     float_map, Kind.FLIP, event.rough, digits, scales, 2 * bracket + 1e-9 * width
                 )
             )
-        except NotFound:
+        except (NotFound, SwitchingTouched):
             continue
     name = float_map.many.parameter
     ended = f"the cycle of period {cycle.period} was followed to {name} = {trace[-1].cycle.r:.6g}"
@@ -201,7 +201,7 @@ def _next_flip(
         return f"the next flip lies beyond the end of the sweep, near {name} = {rough.r:.12g}"
     try:
         return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, scales, reach))
-    except NotFound as error:
+    except (NotFound, SwitchingTouched) as error:
         return f"the flip of period {rough.period} near {name} = {rough.r:.12g} was lost: {error}"
 
 

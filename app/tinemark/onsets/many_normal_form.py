@@ -25,6 +25,8 @@ ON_THE_CIRCLE = 1e-6
 DEFECTIVE = 1e-6
 """Left and right critical vectors whose cosine is smaller than this mean a double multiplier."""
 ONE_SIGN = 1e-9
+FLAT = 1e-8
+"""Size, in scaled states, below which a fold's bend, or its push over `reach`, counts as none."""
 
 
 @dataclass(frozen=True)
@@ -45,6 +47,9 @@ class Findings:
         Flip: derivative of the critical multiplier in the parameter. Fold: <p, df^p/dr>.
     coefficient
         Flip: c of the normal form. Fold: <p, B(q, q)> / 2. None where it is not defined.
+    is_degenerate
+        Whether a fold lacks what makes it one: branches cross there (a pitchfork or a transcritical point)
+        or touch.
     criticality
         From the sign of c where it is clearly one sign.
     """
@@ -56,10 +61,11 @@ class Findings:
     crossing: float
     coefficient: float | None
     criticality: Criticality
+    is_degenerate: bool = False
 
 
-def findings(many: ManyMap, kind: Kind, found: Polished, scales: Floats) -> Findings:
-    """Check a polished onset."""
+def findings(many: ManyMap, kind: Kind, found: Polished, scales: Floats, reach: float) -> Findings:
+    """Check a polished onset; `reach` is a length typical of the parameter."""
     target = -1.0 if kind is Kind.FLIP else 1.0
     n = many.size
     matrix = _floats(found.monodromy)
@@ -81,8 +87,9 @@ def findings(many: ManyMap, kind: Kind, found: Polished, scales: Floats) -> Find
     if kind is Kind.FOLD:
         bend = float(p @ turn @ q) / 2 / size
         crossing = float(p @ slope) * size
-        return Findings(critical, others, is_simple, False, crossing, bend, Criticality.NOT_APPLICABLE)
-    drift = np.linalg.solve(np.eye(n) - matrix, slope)
+        flat = abs(crossing) * reach < FLAT or abs(bend) < FLAT
+        return Findings(critical, others, is_simple, False, crossing, bend, _undecided(kind), flat)
+    drift = np.linalg.lstsq(np.eye(n) - matrix, slope, rcond=None)[0]
     crossing = float(p @ (turn @ drift + turn_r))
     coefficient, spread = _flip_coefficient(many, found, matrix, p * size, q / size)
     clear = abs(coefficient) > ONE_SIGN and spread < abs(coefficient) / 10

@@ -31,6 +31,8 @@ NOT_PROVED = (
     "proofs for maps of several states are not made yet: the value is solved at two precisions, "
     "and its error estimated from the last Newton step and their difference"
 )
+PRESERVES = 1e-9
+"""A product of all multipliers this near to 1 means that areas are preserved."""
 POINTS_ONE = 1e-9
 """Points of an onset's cycle closer than this share of the state's scale are one point."""
 
@@ -95,7 +97,9 @@ def settle_onset(
             break
         bits = bits * 3 // 2
     _check_period(high, scales)
-    found = findings(many, kind, high, scales)
+    found = findings(many, kind, high, scales, max(reach, abs(float(high.r))))
+    if found.is_degenerate:
+        raise NotFound("branches cross or touch here instead of turning round in a fold")
     return Settled(_onset(many, kind, high, found, half, digits, places, scales), high, found)
 
 
@@ -172,8 +176,10 @@ def _state_texts(many: ManyMap, solution: Polished, digits: int) -> tuple[tuple[
 def _reason(found: Findings) -> str:
     if found.doubled:
         value = "-1" if found.critical.real < 0 else "1"
+        product = abs(complex(np.prod([found.critical, *found.others])))
+        why = ", as they must where the map preserves areas" if abs(product - 1) < PRESERVES else ""
         return (
-            f"two multipliers meet at {value}, as they must where the map preserves areas, "
+            f"two multipliers meet at {value}{why}, "
             f"so whether the change is soft is not decided; {NOT_PROVED}"
         )
     if not found.is_simple:
