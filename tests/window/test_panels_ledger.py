@@ -13,17 +13,17 @@ from tinemark.document import ledger as ledgers
 from tinemark.document.ledger import Ledger, Place
 from tinemark.document.rounding import decimal_text, plain
 from tinemark.onsets.results import Criticality, Kind, Onset, Status
-from tinemark.window.ledger_model import (
+from tinemark.window.ledger_lines import (
     MAIN_COLUMNS,
     Column,
     HeadingEntry,
-    LedgerModel,
     MissingEntry,
     OnsetEntry,
     cell_text,
     cell_tip,
     entries_of,
 )
+from tinemark.window.ledger_model import LedgerModel
 from tinemark.window.ledger_paint import before_sign
 from tinemark.window.ledger_panel import LedgerPanel
 from tinemark.window.number_label import NumberLabel, plain_number

@@ -52,7 +52,7 @@ class _TwoLines(QStyledItemDelegate):
         width = self.width
         text = str(index.data(SENTENCE) or "")
         height = QFontMetrics(option.font).height() + 12
-        return QSize(width, height + (self._sentence_height(text, width - 40) if text else 0))
+        return QSize(width, height + (self._sentence_height(text, width - 26) if text else 0))
 
     def paint(self, painter: QPainter, option: QStyleOptionViewItem, index: Index) -> None:
         theme = current_theme()

@@ -6,7 +6,7 @@ from PySide6.QtCore import Qt, Signal
 from PySide6.QtWidgets import QGridLayout, QLabel, QLineEdit, QScrollArea, QSizePolicy, QVBoxLayout, QWidget
 
 from tinemark.document.rounding import MINUS, group_digits
-from tinemark.window.ledger_model import (
+from tinemark.window.ledger_lines import (
     STATUS_MEANING,
     OnsetEntry,
     full_text,
@@ -120,7 +120,9 @@ class LedgerDetail(QScrollArea):
         ):
             full = full_text(estimate)
             if full:
-                label.show_number(grouped(full), full)
+                label.show_number(
+                    grouped(full).replace(" \u00b1 ", " \u00b1 " if len(full) < 30 else "\n\u00b1 "), full
+                )
             else:
                 label.show_words(_sentence(reason) if found else "None outside a ladder.")
         self._show_states(onset.states)

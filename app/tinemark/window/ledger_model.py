@@ -1,202 +1,27 @@
-"""The ledger as a table: ladders under headings, a line for each onset, a quiet line for each hole."""
+"""The ledger's lines as a table model: texts, tips and names of every cell; notes can be edited."""
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
-from enum import IntEnum
-from fractions import Fraction
+from collections.abc import Sequence
 
 from PySide6.QtCore import QAbstractTableModel, QModelIndex, QObject, QPersistentModelIndex, Qt, Signal
 
-from tinemark.document.estimates import Estimate, LadderEstimates, LevelEstimate, estimate_text
-from tinemark.document.ledger import Ledger, ladder_ids, ladder_rows, loose_rows, missing_levels
-from tinemark.document.rounding import (
-    ELLIPSIS,
-    SHORT_DIGITS,
-    group_digits,
-    held_digits,
-    minus_sign,
-    onset_text,
-    plus_minus,
+from tinemark.window.ledger_lines import (
+    HEADER_TIPS,
+    HEADERS,
+    Column,
+    Entry,
+    HeadingEntry,
+    MissingEntry,
+    OnsetEntry,
+    cell_text,
+    cell_tip,
+    missing_words,
 )
-from tinemark.document.row import Row
-from tinemark.onsets.results import Criticality, Onset, Status
 
 Index = QModelIndex | QPersistentModelIndex
 ROW_ID = Qt.ItemDataRole.UserRole + 1
 ENTRY = Qt.ItemDataRole.UserRole + 2
-NOTHING = "\u2013"
-MOST_DIGITS = 15
-
-STATUS_MEANING = {
-    Status.PROVED: "The enclosure holds with mathematical certainty for the formulas as typed.",
-    Status.ESTIMATED: "Computed and polished; the interval is meant to hold the true value at 95 % coverage.",
-    Status.READ_BY_EYE: "Set with the crosshair; uncertain by half a pixel of the view it was read in.",
-    Status.MEASURED: "From bench data, with their uncertainty.",
-}
-
-
-class Column(IntEnum):
-    """Columns in the order shown."""
-
-    LEVEL = 0
-    KIND = 1
-    PERIOD = 2
-    VALUE = 3
-    GAP = 4
-    RATIO = 5
-    STATUS = 6
-    NOTE = 7
-
-
-HEADERS = {
-    Column.LEVEL: "Level",
-    Column.KIND: "Kind",
-    Column.PERIOD: "Period",
-    Column.VALUE: "Value",
-    Column.GAP: "Gap",
-    Column.RATIO: "Ratio",
-    Column.STATUS: "Status",
-    Column.NOTE: "Note",
-}
-HEADER_TIPS = {
-    Column.LEVEL: "n for the n-th flip of the ladder, 0 for the fold that opens it",
-    Column.KIND: "What happens at the onset",
-    Column.PERIOD: "Least period before and after the onset",
-    Column.VALUE: "Parameter value; brackets hold the standard uncertainty of the last digits, "
-    "… stands for more known digits",
-    Column.GAP: "Next onset minus this one",
-    Column.RATIO: "This gap divided by the next one",
-    Column.STATUS: "How far the value can be relied on",
-    Column.NOTE: "Your own words: press F2 to write",
-}
-MAIN_COLUMNS = (Column.LEVEL, Column.PERIOD, Column.VALUE, Column.STATUS)
-NUMBER_COLUMNS = (Column.VALUE, Column.GAP, Column.RATIO)
-
-
-@dataclass(frozen=True)
-class HeadingEntry:
-    """The heading of a ladder; `ladder` is empty for onsets that belong to none."""
-
-    ladder: str
-    text: str
-
-
-@dataclass(frozen=True)
-class OnsetEntry:
-    """One pick, and what its ladder says about its level."""
-
-    row: Row
-    level: LevelEstimate | None
-
-
-@dataclass(frozen=True)
-class MissingEntry:
-    """Levels in a row that a ladder lacks below its highest known one."""
-
-    ladder: str
-    first: int
-    last: int
-
-
-Entry = HeadingEntry | OnsetEntry | MissingEntry
-
-
-def entries_of(
-    ledger: Ledger, estimates: Sequence[LadderEstimates], current_key: str = ""
-) -> tuple[Entry, ...]:
-    """Lines of the table: ladders as they were begun, levels rising, single onsets last.
-
-    `current_key` is the key of the system on the card; ladders of other systems say so.
-    """
-    by_ladder = {estimate.ladder: estimate for estimate in estimates}
-    lines: list[Entry] = []
-    for ladder in ladder_ids(ledger):
-        rows = ladder_rows(ledger, ladder)
-        lines.append(HeadingEntry(ladder, _heading(rows, ledger, current_key)))
-        lines += _ladder_lines(rows, missing_levels(ledger, ladder), by_ladder.get(ladder))
-    loose = loose_rows(ledger)
-    if loose:
-        lines.append(HeadingEntry("", "Onsets outside a ladder"))
-        lines += [OnsetEntry(row, None) for row in loose]
-    return tuple(lines)
-
-
-def _ladder_lines(
-    rows: Sequence[Row], missing: Sequence[int], estimate: LadderEstimates | None
-) -> Iterator[Entry]:
-    known: Mapping[str, LevelEstimate] = (
-        {level.row_id: level for level in estimate.levels if level.row_id} if estimate else {}
-    )
-    holes = set(missing)
-    for row in rows:
-        level = row.level or 0
-        first = level
-        while first - 1 in holes:
-            first -= 1
-        if first < level:
-            yield MissingEntry(row.ladder, first, level - 1)
-            holes -= set(range(first, level))
-        yield OnsetEntry(row, known.get(row.id))
-
-
-def _heading(rows: Sequence[Row], ledger: Ledger, current_key: str) -> str:
-    first = rows[0]
-    base = first.base_period or first.onset.period_before
-    text = f"Ladder from period {base}, parameter {first.onset.parameter}"
-    # Other parameters are named where they tell this ladder from another.
-    others = {row.fixed for row in ledger.rows if row.system_key == first.system_key}
-    if len(others) > 1 and first.fixed:
-        text += " at " + ", ".join(f"{name} = {value}" for name, value in first.fixed)
-    if current_key and first.system_key != current_key:
-        text += " (of another system than the one on the card)"
-    return text
-
-
-def kind_words(onset: Onset) -> str:
-    """Kind in words, with its criticality where that is known."""
-    if onset.criticality in (Criticality.SUPERCRITICAL, Criticality.SUBCRITICAL):
-        return f"{onset.criticality.value} {onset.kind.value}"
-    return onset.kind.value
-
-
-def period_words(onset: Onset) -> str:
-    """Periods before and after: "4 → 8"; a fold makes a cycle out of none: "none → 3"."""
-    if not onset.period_before and not onset.period_after:
-        return NOTHING
-    return f"{onset.period_before or 'none'} \u2192 {onset.period_after}"
-
-
-def value_text(onset: Onset) -> str:
-    """The value as the table shows it; digits beyond `MOST_DIGITS` are left to the detail."""
-    text = onset_text(onset)
-    if sum(letter.isdigit() for letter in text.partition("(")[0]) <= MOST_DIGITS:
-        return text
-    held = held_digits(Fraction(onset.lower), Fraction(onset.upper), most=SHORT_DIGITS)
-    return minus_sign(group_digits(held)) + ELLIPSIS if held else text
-
-
-def derived_text(estimate: Estimate | None) -> str:
-    """A gap or ratio as the table shows it."""
-    if estimate is None:
-        return NOTHING
-    text = estimate_text(estimate)
-    if sum(letter.isdigit() for letter in text.partition("(")[0]) <= MOST_DIGITS:
-        return text
-    low, high = estimate.value - estimate.uncertainty, estimate.value + estimate.uncertainty
-    held = held_digits(low, high, most=SHORT_DIGITS)
-    return minus_sign(group_digits(held)) + ELLIPSIS if held else text
-
-
-def full_text(estimate: Estimate | None) -> str:
-    """A derived number with every digit worth having, for copying: "value ± uncertainty"."""
-    return plus_minus(estimate.value, estimate.uncertainty, grouped=False) if estimate else ""
-
-
-def level_words(row: Row) -> str:
-    """Level as shown; empty outside a ladder."""
-    return "" if row.level is None else str(row.level)
 
 
 class LedgerModel(QAbstractTableModel):
@@ -309,58 +134,6 @@ class LedgerModel(QAbstractTableModel):
         if text != entry.row.note:
             self.note_edited.emit(entry.row.id, text)
         return True
-
-
-def cell_text(entry: OnsetEntry, column: Column) -> str:
-    """What a cell shows."""
-    onset, level = entry.row.onset, entry.level
-    match column:
-        case Column.LEVEL:
-            return level_words(entry.row)
-        case Column.KIND:
-            return kind_words(onset)
-        case Column.PERIOD:
-            return period_words(onset)
-        case Column.VALUE:
-            return value_text(onset)
-        case Column.GAP:
-            return derived_text(level.gap if level else None)
-        case Column.RATIO:
-            return derived_text(level.ratio if level else None)
-        case Column.STATUS:
-            return onset.status.value
-        case Column.NOTE:
-            return entry.row.note
-
-
-def cell_tip(entry: OnsetEntry, column: Column) -> str:
-    """All digits of a number, or the reason why there is none."""
-    onset, level = entry.row.onset, entry.level
-    match column:
-        case Column.VALUE:
-            return f"{onset.parameter} = {onset.value}\nlower end {onset.lower}\nupper end {onset.upper}"
-        case Column.GAP if level:
-            return full_text(level.gap) or _sentence(level.gap_reason)
-        case Column.RATIO if level:
-            return full_text(level.ratio) or _sentence(level.ratio_reason)
-        case Column.STATUS:
-            meaning = STATUS_MEANING[onset.status]
-            return f"{meaning}\n{_sentence(onset.reason)}" if onset.reason else meaning
-        case Column.NOTE:
-            return entry.row.note or "Press F2 to write a note."
-        case _:
-            return ""
-
-
-def missing_words(entry: MissingEntry) -> str:
-    """The quiet line of a hole in a ladder."""
-    if entry.first == entry.last:
-        return f"level {entry.first} missing: no gap and no ratio across it"
-    return f"levels {entry.first} to {entry.last} missing: no gap and no ratio across them"
-
-
-def _sentence(words: str) -> str:
-    return words[:1].upper() + words[1:] if words else ""
 
 
 def _identity(entry: Entry) -> tuple[str, ...]:

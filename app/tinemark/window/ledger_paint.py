@@ -6,9 +6,9 @@ and headings run across.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 
-from PySide6.QtCore import QModelIndex, QObject, QPersistentModelIndex, QPointF, QRectF, QSize, Qt
+from PySide6.QtCore import QModelIndex, QObject, QPersistentModelIndex, QPointF, QRectF, Qt
 from PySide6.QtGui import QFont, QFontMetricsF, QPainter, QPen
 from PySide6.QtWidgets import (
     QAbstractItemView,
@@ -20,8 +20,7 @@ from PySide6.QtWidgets import (
 )
 
 from tinemark.document.rounding import THIN_SPACE
-from tinemark.window.ledger_model import (
-    ENTRY,
+from tinemark.window.ledger_lines import (
     NOTHING,
     NUMBER_COLUMNS,
     Column,
@@ -31,10 +30,12 @@ from tinemark.window.ledger_model import (
     cell_text,
     missing_words,
 )
+from tinemark.window.ledger_model import ENTRY
 from tinemark.window.marks import paint_sign
 from tinemark.window.theme import Theme, color, current_theme, heading_font, mono_font, small_font
 
 PADDING = 6.0
+MEASURED_LINES = 300
 GROUP_GAP = 0.34
 """Width of the gap between digit groups, in digits: a monospaced face would give it a whole digit."""
 
@@ -74,16 +75,14 @@ def sign_size(font: QFont) -> float:
     return QFontMetricsF(font).height() * 0.30
 
 
-def number_places(entries: Iterable[object], column: Column, metrics: QFontMetricsF) -> tuple[float, float]:
-    """Widest part before the decimal sign, and from it on, of a number column."""
+def number_places(texts: Iterable[str], metrics: QFontMetricsF) -> tuple[float, float]:
+    """Widest part before the decimal sign, and from it on, among some numbers."""
+    # In a monospaced face only the counts of letters and gaps matter, so few numbers are really measured.
+    shapes = {(len(before_sign(text)), len(text), text.count(THIN_SPACE)): text for text in texts}
     before = after = 0.0
-    for entry in entries:
-        if isinstance(entry, OnsetEntry):
-            text = cell_text(entry, column)
-            if text != NOTHING:
-                whole = before_sign(text)
-                before = max(before, number_width(whole, metrics))
-                after = max(after, number_width(text, metrics) - number_width(whole, metrics))
+    for text in shapes.values():
+        whole = number_width(before_sign(text), metrics)
+        before, after = max(before, whole), max(after, number_width(text, metrics) - whole)
     return before, after
 
 
@@ -92,30 +91,29 @@ class LedgerDelegate(QStyledItemDelegate):
 
     def __init__(self, parent: QObject | None = None) -> None:
         super().__init__(parent)
-        self._places: Mapping[Column, tuple[float, float]] = {}
+        self._places: dict[Column, float] = {}
 
-    def set_places(self, places: Mapping[Column, tuple[float, float]]) -> None:
-        """Where the decimal signs of the number columns lie (see `number_places`)."""
-        self._places = places
+    def measure(self, entries: Sequence[object], headers: Mapping[Column, float]) -> dict[Column, float]:
+        """Widths that show every cell whole; keeps where the decimal signs of the number columns lie.
 
-    def column_width(self, entries: Iterable[object], column: Column, header: float) -> float:
-        """Width that shows every cell of a column whole."""
-        lines = [entry for entry in entries if isinstance(entry, OnsetEntry)]
-        if column in NUMBER_COLUMNS:
-            before, after = number_places(lines, column, QFontMetricsF(mono_font()))
-            return max(header, before + after + 2 * PADDING)
-        metrics = QFontMetricsF(mono_font() if column in (Column.LEVEL, Column.PERIOD) else _body_font())
-        widest = max((metrics.horizontalAdvance(cell_text(entry, column)) for entry in lines), default=0.0)
-        if column is Column.STATUS:
-            widest += 2 * sign_size(_body_font()) + 6
-        return max(header, widest + 2 * PADDING)
-
-    def sizeHint(self, option: QStyleOptionViewItem, index: Index) -> QSize:
-        """Roomy lines; a heading has air above it."""
-        height = QFontMetricsF(mono_font()).height() * 1.65
-        if isinstance(index.data(ENTRY), HeadingEntry):
-            height *= 1.15
-        return QSize(super().sizeHint(option, index).width(), int(height + 0.5))
+        Of very long ledgers the first lines stand for all: a number beyond them that is too wide ends
+        in an ellipsis.
+        """
+        lines = [entry for entry in entries if isinstance(entry, OnsetEntry)][:MEASURED_LINES]
+        widths = {}
+        for column in Column:
+            texts = {cell_text(entry, column) for entry in lines}
+            if column in NUMBER_COLUMNS:
+                before, after = number_places(texts - {NOTHING}, QFontMetricsF(mono_font()))
+                self._places[column] = before
+                widest = before + after
+            else:
+                metrics = QFontMetricsF(_column_font(column))
+                widest = max((metrics.horizontalAdvance(text) for text in texts), default=0.0)
+            if column is Column.STATUS:
+                widest += 2 * sign_size(_body_font()) + 6
+            widths[column] = max(headers[column], widest) + 2 * PADDING
+        return widths
 
     def paint(self, painter: QPainter, option: QStyleOptionViewItem, index: Index) -> None:
         """Draw one cell."""
@@ -187,10 +185,13 @@ class LedgerDelegate(QStyledItemDelegate):
         if column in NUMBER_COLUMNS:
             metrics = QFontMetricsF(mono_font())
             painter.setFont(mono_font())
-            before = self._places.get(column, (0.0, 0.0))[0]
+            before = self._places.get(column, 0.0)
             if text == NOTHING:
                 painter.setPen(color(theme.muted))
             start = inner.left() + max(0.0, before - number_width(before_sign(text), metrics))
+            room = inner.right() - start
+            if number_width(text, metrics) > room + PADDING:
+                text = metrics.elidedText(text, Qt.TextElideMode.ElideRight, room)
             paint_number(painter, text, start, inner, metrics)
             return
         if column is Column.STATUS:
@@ -207,7 +208,7 @@ class LedgerDelegate(QStyledItemDelegate):
             inner = inner.adjusted(2 * size + 6, 0, 0, 0)
         if column is Column.NOTE:
             painter.setPen(color(theme.muted))
-        font = mono_font() if column in (Column.LEVEL, Column.PERIOD) else _body_font()
+        font = _column_font(column)
         painter.setFont(font)
         shown = QFontMetricsF(font).elidedText(text, Qt.TextElideMode.ElideRight, inner.width())
         painter.drawText(inner, Qt.AlignmentFlag.AlignVCenter, shown)
@@ -234,3 +235,7 @@ class LedgerDelegate(QStyledItemDelegate):
 
 def _body_font() -> QFont:
     return small_font(1.0)
+
+
+def _column_font(column: Column) -> QFont:
+    return mono_font() if column in (Column.LEVEL, Column.PERIOD) else _body_font()

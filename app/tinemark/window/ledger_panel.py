@@ -24,23 +24,16 @@ from tinemark.document.ledger import Ledger, estimates, ladder_ids
 from tinemark.onsets.results import Status
 from tinemark.window.field_editors import MenuButton
 from tinemark.window.ledger_detail import LedgerDetail
-from tinemark.window.ledger_model import (
-    HEADERS,
-    MAIN_COLUMNS,
-    NUMBER_COLUMNS,
-    ROW_ID,
-    Column,
-    LedgerModel,
-    OnsetEntry,
-    entries_of,
-)
-from tinemark.window.ledger_paint import PADDING, LedgerDelegate, number_places
+from tinemark.window.ledger_lines import HEADERS, MAIN_COLUMNS, Column, OnsetEntry, entries_of
+from tinemark.window.ledger_model import ROW_ID, LedgerModel
+from tinemark.window.ledger_paint import LedgerDelegate
 from tinemark.window.ledger_table import LedgerTable
 from tinemark.window.theme import mono_font, small_font
 
 COPY_FORMS = (("tsv", "Tab-separated text"), ("markdown", "Markdown"), ("latex", "LaTeX"))
 DROPPED_FIRST = (Column.NOTE, Column.KIND, Column.GAP, Column.RATIO)
 LEAST_NOTE = 90
+LINE_HEIGHT = 1.65
 REFINABLE = (Status.READ_BY_EYE, Status.ESTIMATED)
 EMPTY = "No onsets yet.\nClick near a split in the diagram, and its onset is found and listed here."
 
@@ -75,6 +68,7 @@ class LedgerPanel(QWidget):
         self.setAccessibleName("Ledger")
         self._quiet = False
         self._forced_narrow = False
+        self._widths: dict[Column, float] = {}
         self.model = LedgerModel(self)
         self._build_table()
         self.detail = LedgerDetail()
@@ -124,7 +118,7 @@ class LedgerPanel(QWidget):
         self.table.setMouseTracking(True)
         self.table.setCornerButtonEnabled(False)
         self.table.verticalHeader().hide()
-        self.table.verticalHeader().setSectionResizeMode(QHeaderView.ResizeMode.ResizeToContents)
+        self.table.verticalHeader().setSectionResizeMode(QHeaderView.ResizeMode.Fixed)
         header = self.table.horizontalHeader()
         header.setSectionsClickable(False)
         header.setHighlightSections(False)
@@ -190,7 +184,7 @@ class LedgerPanel(QWidget):
         try:
             self.model.show_entries(entries_of(ledger, found, system_key))
             self._span()
-            self._fit_columns()
+            self._measure()
             self._restore(kept, current)
         finally:
             self._quiet = False
@@ -238,15 +232,21 @@ class LedgerPanel(QWidget):
             if not isinstance(entry, OnsetEntry):
                 self.table.setSpan(number, 0, 1, len(Column))
 
+    def _measure(self) -> None:
+        """Widths that show every cell whole, and the height of a line: anew with every ledger and font."""
+        header = QFontMetricsF(small_font(1.0))
+        titles = {column: header.horizontalAdvance(words) for column, words in HEADERS.items()}
+        self._widths = self._delegate.measure(self.model.entries, titles)
+        self._widths[Column.NOTE] = max(LEAST_NOTE, min(self._widths[Column.NOTE], 260))
+        line = QFontMetricsF(mono_font()).height() * LINE_HEIGHT
+        self.table.verticalHeader().setDefaultSectionSize(round(line))
+        self._fit_columns()
+
     def _fit_columns(self) -> None:
-        metrics, header = QFontMetricsF(mono_font()), QFontMetricsF(small_font(1.0))
-        entries = self.model.entries
-        self._delegate.set_places({c: number_places(entries, c, metrics) for c in NUMBER_COLUMNS})
-        widths = {}
-        for column in Column:
-            title = header.horizontalAdvance(HEADERS[column]) + 2 * PADDING
-            widths[column] = self._delegate.column_width(entries, column, title)
-        widths[Column.NOTE] = max(LEAST_NOTE, min(widths[Column.NOTE], 260))
+        """As many columns as there is room for; the last one takes what is left."""
+        widths = self._widths
+        if not widths:
+            return
         shown = list(MAIN_COLUMNS if self._forced_narrow else Column)
         room = self.table.viewport().width()
         for column in DROPPED_FIRST:
@@ -386,7 +386,6 @@ class LedgerPanel(QWidget):
         """Measure anew in another font; draw anew in another theme."""
         super().changeEvent(event)
         if event.type() in (QEvent.Type.FontChange, QEvent.Type.StyleChange) and hasattr(self, "_stack"):
-            self._fit_columns()
-            self.table.resizeRowsToContents()
+            self._measure()
         elif event.type() == QEvent.Type.PaletteChange and hasattr(self, "table"):
             self.table.viewport().update()

@@ -20,7 +20,7 @@ from PySide6.QtWidgets import (
 
 from tinemark.document.estimates import ClassValue, Estimate, LadderEstimates, LevelEstimate, estimate_text
 from tinemark.window.ledger_detail import grouped
-from tinemark.window.ledger_model import full_text
+from tinemark.window.ledger_lines import full_text
 from tinemark.window.number_label import NumberLabel
 from tinemark.window.panel_plot import PanelPlot, line_pen
 from tinemark.window.theme import color, current_theme, heading_font, small_font
@@ -122,7 +122,9 @@ class RatioPlot(PanelPlot):
             low, high = (
                 self._at(0, float(self._delta.value + sign * self._delta.uncertainty)).y() for sign in (-1, 1)
             )
-            painter.fillRect(QRectF(box.left(), high, box.width(), low - high), color(theme.accent, 0.14))
+            # A band that fills the plot says nothing.
+            if low - high < 0.5 * box.height():
+                painter.fillRect(QRectF(box.left(), high, box.width(), low - high), color(theme.accent, 0.14))
         font = small_font(0.88)
         painter.setFont(font)
         metrics = QFontMetricsF(font)
