@@ -88,6 +88,15 @@ def test_a_repacked_session_opens(tmp_path: Path) -> None:
     assert read_session(packed(json_of(session), compression=zipfile.ZIP_DEFLATED)) == session
 
 
+def test_keys_are_only_labels_in_a_file() -> None:
+    """Keys made in another way, by an older or newer Tinemark, still tie the rows to their systems."""
+    session = pick(ses.with_system(full_session(), CUBIC_TEXT), known.flip("2.2360679", 2, width="1e-7"))
+    content = json_of(session)
+    for number, (key, _) in enumerate(session.systems):
+        content = content.replace(key.encode(), f"{number:064d}".encode())
+    assert read_session(packed(content)) == session
+
+
 # Migration
 
 
@@ -300,7 +309,11 @@ BAD: dict[str, tuple[Callable[[], bytes], str]] = {
     ),
     "unknown parameter": (lambda: put("parameter", value="q"), 'system: there is no parameter "q"'),
     "unknown observable": (lambda: put("observe", value="y + 1"), "system: diagram.observe"),
-    "other system's key": (lambda: put("systems", 0, "key", value="0" * 64), r"systems\[0\]\.key"),
+    "double key": (
+        lambda: edited(lambda plain: plain["systems"].append(plain["systems"][0])),
+        r"systems\[1\]\.key: this key is there twice",
+    ),
+    "bad old system": (lambda: put("systems", 0, "text", value="kind = 1"), r"systems\[0\]: kind"),
     "half a character": (
         lambda: packed(json_of(full_session()).replace(b"line 1", b"\\ud800")),
         "JSON|notes",

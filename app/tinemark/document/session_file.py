@@ -13,6 +13,7 @@ import stat
 import zipfile
 import zlib
 from collections.abc import Callable, Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -133,8 +134,7 @@ def read_session(data: bytes, *, file: str = "") -> Session:
         session = from_plain(plain)
     except Misfit as error:
         raise _fault(error.message, file, error.key) from error
-    _check_systems(plain, file)
-    return session
+    return _with_present_keys(session, _present_keys(plain, file))
 
 
 def _fault(message: str, file: str, key: str = "", what_to_do: str = _UNDAMAGED) -> SessionFileError:
@@ -270,22 +270,36 @@ def migrated(
     return plain
 
 
-def _check_systems(plain: PlainSession, file: str) -> None:
-    """The session's systems can be read, and fit the diagram and the ledger."""
+def _present_keys(plain: PlainSession, file: str) -> dict[str, str]:
+    """Keys in the file and the keys that this Tinemark gives the same systems; all systems are read.
+
+    In a file a key is only a label that ties rows to a text: should keys be made otherwise one day, old
+    files still open.
+    """
     try:
         system = read_system(plain.system)
         system.with_diagram(plain.parameter, plain.observe)
     except TinemarkError as error:
         raise _inside("system", error, file) from error
-    seen: set[str] = set()
+    keys: dict[str, str] = {}
     for n, kept in enumerate(plain.systems):
+        if kept.key in keys:
+            raise _fault("this key is there twice", file, f"systems[{n}].key")
         try:
-            found = read_system(kept.text).key
+            keys[kept.key] = read_system(kept.text).key
         except TinemarkError as error:
             raise _inside(f"systems[{n}]", error, file) from error
-        if found != kept.key or kept.key in seen:
-            raise _fault("the key is not that of the text", file, f"systems[{n}].key")
-        seen.add(kept.key)
+    return keys
+
+
+def _with_present_keys(session: Session, keys: Mapping[str, str]) -> Session:
+    if all(old == new for old, new in keys.items()):
+        return session
+    rows = tuple(
+        replace(row, system_key=keys.get(row.system_key, row.system_key)) for row in session.ledger.rows
+    )
+    systems = tuple((keys.get(key, key), text) for key, text in session.systems)
+    return replace(session, ledger=replace(session.ledger, rows=rows), systems=systems)
 
 
 def _inside(key: str, error: TinemarkError, file: str) -> SessionFileError:
