@@ -29,13 +29,19 @@ class BuiltIn:
 
 def library_builtins() -> tuple[BuiltIn, ...]:
     """The systems of the library, by title."""
-    from tinemark.systems.library import builtin_names, builtin_system
+    from tinemark.systems.library import builtin_names
 
-    found = []
-    for name in builtin_names():
-        system = builtin_system(name)
-        found.append(BuiltIn(name, system.title, " ".join(system.notes.split())))
-    return tuple(sorted(found, key=lambda one: one.title.lower()))
+    return tuple(
+        sorted((library_builtin(name) for name in builtin_names()), key=lambda one: one.title.lower())
+    )
+
+
+def library_builtin(name: str) -> BuiltIn:
+    """One system of the library."""
+    from tinemark.systems.library import builtin_system
+
+    system = builtin_system(name)
+    return BuiltIn(name, system.title, " ".join(system.notes.split()))
 
 
 class _TwoLines(QStyledItemDelegate):
@@ -85,8 +91,13 @@ class BuiltinChooser(QuietCombo):
 
     chosen = Signal(str)
 
-    def __init__(self, load: Callable[[], Sequence[BuiltIn]] = library_builtins) -> None:
+    def __init__(
+        self,
+        load: Callable[[], Sequence[BuiltIn]] = library_builtins,
+        describe: Callable[[str], BuiltIn] = library_builtin,
+    ) -> None:
         super().__init__()
+        self._describe = describe
         self._load: Callable[[], Sequence[BuiltIn]] | None = load
         self.setAccessibleName("Built-in systems")
         self.setPlaceholderText(OWN)
@@ -104,18 +115,24 @@ class BuiltinChooser(QuietCombo):
         if self._load is None:
             return
         load, self._load = self._load, None
+        shown = str(self.currentData(NAME) or "")
+        self.clear()
         for one in load():
-            self.addItem(one.title, one.name)
-            place = self.count() - 1
-            self.setItemData(place, one.sentence, SENTENCE)
-            self.setItemData(place, one.sentence, Qt.ItemDataRole.ToolTipRole)
-            self.setItemData(place, f"{one.title}. {one.sentence}", Qt.ItemDataRole.AccessibleTextRole)
-        self.setCurrentIndex(-1)
+            self._add(one)
+        self.show_builtin(shown)
+
+    def _add(self, one: BuiltIn) -> None:
+        self.addItem(one.title, one.name)
+        place = self.count() - 1
+        self.setItemData(place, one.sentence, SENTENCE)
+        self.setItemData(place, one.sentence, Qt.ItemDataRole.ToolTipRole)
+        self.setItemData(place, f"{one.title}. {one.sentence}", Qt.ItemDataRole.AccessibleTextRole)
 
     def show_builtin(self, name: str) -> None:
         """Show which built-in system is on; empty for an own one."""
-        if name:
-            self.fill()
+        if name and self.findData(name, NAME) < 0:
+            # One name must not cost the reading of the whole library: this runs while the window opens.
+            self._add(self._describe(name))
         self.setCurrentIndex(self.findData(name, NAME) if name else -1)
 
     def sentence(self) -> str:

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping, Sequence
 
 from PySide6.QtCore import Qt, QTimer, Signal
-from PySide6.QtGui import QKeySequence, QShortcut
+from PySide6.QtGui import QKeySequence, QShortcut, QShowEvent
 from PySide6.QtWidgets import (
     QButtonGroup,
     QFrame,
@@ -68,6 +68,7 @@ class SystemCard(QWidget):
         self._text = ""
         self._good = ""
         self._dropped = ""
+        self._stale = False
         self._troubles: tuple[Trouble, ...] = ()
         self._timer = QTimer(self)
         self._timer.setSingleShot(True)
@@ -262,8 +263,22 @@ class SystemCard(QWidget):
     def _set_text(self, text: str) -> None:
         self._text = text
         self.text.show_text(text)
+        # A card that is folded away builds its form when it is opened, not while the window starts.
+        self._stale = not self.isVisible()
+        if not self._stale:
+            self._show_text_anew()
+
+    def _show_text_anew(self) -> None:
+        self._stale = False
         if self.side == "fields" and not self._show_fields():
             self.show_side("text")
+
+    def showEvent(self, event: QShowEvent) -> None:
+        """Build what had not been built while the card was folded away."""
+        super().showEvent(event)
+        if self._stale:
+            self._show_text_anew()
+            self._show_troubles(self._troubles)
 
     def _show_fields(self) -> bool:
         draft = read_draft(self._text)

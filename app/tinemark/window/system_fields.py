@@ -61,6 +61,7 @@ class SystemFields(QWidget):
         self._shape: tuple[object, ...] = ()
         self._editors: dict[str, list[QWidget]] = {}
         self._errors: dict[str, QLabel] = {}
+        self._error_rows: dict[str, tuple[QGridLayout, int]] = {}
         self._names: tuple[str, ...] = ()
         self._troubles: tuple[Trouble, ...] = ()
         self._body = QWidget()
@@ -90,12 +91,9 @@ class SystemFields(QWidget):
                 words.setdefault(key, trouble)
             else:
                 homeless.append(trouble)
-        for key, label in self._errors.items():
+        for key in {*self._errors, *words}:
             trouble = words.get(key)
-            label.setText(trouble.words if trouble else "")
-            label.setVisible(trouble is not None)
-            for editor in self._editors.get(key, []):
-                show_as(editor, trouble.words if trouble else "")
+            self._say(key, trouble.words if trouble else "")
         return tuple(homeless)
 
     def go_to(self, trouble: Trouble) -> bool:
@@ -123,7 +121,7 @@ class SystemFields(QWidget):
 
     def _build(self, draft: Draft) -> None:
         focused = next((k for k, es in self._editors.items() if any(e.hasFocus() for e in es)), "")
-        self._editors, self._errors = {}, {}
+        self._editors, self._errors, self._error_rows = {}, {}, {}
         old, self._body = self._body, QWidget()
         self._outer.replaceWidget(old, self._body)
         old.hide()
@@ -163,13 +161,13 @@ class SystemFields(QWidget):
         self._register("title", title)
         grid.addWidget(field_label("Title", title), 0, 0)
         grid.addWidget(title, 0, 1, 1, 4)
-        grid.addWidget(self._error("title"), 1, 0, 1, 5)
+        self._error_row(grid, 1, "title")
         self.kind = QLabel()
         self.kind.setProperty("rank", "second")
         self.kind.setWordWrap(True)
         grid.addWidget(field_label("Kind"), 2, 0, Qt.AlignmentFlag.AlignTop)
         grid.addWidget(self.kind, 2, 1, 1, 4)
-        grid.addWidget(self._error("kind"), 3, 0, 1, 5)
+        self._error_row(grid, 3, "kind")
 
     def _build_state(self, page: QVBoxLayout, state: DraftState, *, removable: bool) -> None:
         name, key = state.name, f"states.{state.name}"
@@ -180,14 +178,14 @@ class SystemFields(QWidget):
         after.setFont(mono_font())
         grid.addWidget(after, 2, 0)
         grid.addWidget(formula, 2, 1, 1, 4)
-        grid.addWidget(self._error(f"next.{name}"), 3, 0, 1, 5)
+        self._error_row(grid, 3, f"next.{name}")
         start = self._line(f"{key}.start", f"Start of {name}", number=True)
         unit = self._line(f"{key}.unit", f"Unit of {name}", optional=True, digits=4)
         grid.addWidget(field_label("start", start), 4, 0)
         grid.addWidget(start, 4, 1)
         grid.addWidget(field_label("unit", unit), 4, 2)
         grid.addWidget(unit, 4, 3, 1, 2)
-        grid.addWidget(self._error(f"{key}.start"), 5, 0, 1, 5)
+        self._error_row(grid, 5, f"{key}.start")
         self._range_row(grid, 6, key, name)
 
     def _build_parameter(self, page: QVBoxLayout, parameter: DraftParameter, *, removable: bool) -> None:
@@ -200,13 +198,13 @@ class SystemFields(QWidget):
         grid.addWidget(value, 2, 1)
         grid.addWidget(field_label("unit", unit), 2, 2)
         grid.addWidget(unit, 2, 3, 1, 2)
-        grid.addWidget(self._error(f"{key}.value"), 3, 0, 1, 5)
+        self._error_row(grid, 3, f"{key}.value")
         self._range_row(grid, 4, key, name)
         tolerance = self._line(f"{key}.tolerance", f"Tolerance of {name}", number=True, optional=True)
         tolerance.setToolTip(f"Standard uncertainty of {name}, in its unit. May be left empty.")
         grid.addWidget(field_label("tolerance ±", tolerance), 6, 0)
         grid.addWidget(tolerance, 6, 1)
-        grid.addWidget(self._error(f"{key}.tolerance"), 7, 0, 1, 5)
+        self._error_row(grid, 7, f"{key}.tolerance")
 
     def _name_row(self, grid: QGridLayout, section: str, name: str, what: str, removable: bool) -> None:
         edit = FieldEdit(f"Name of the {what} {name}", digits=4)
@@ -222,7 +220,7 @@ class SystemFields(QWidget):
         grid.addWidget(field_label("name", edit), 0, 0)
         grid.addWidget(edit, 0, 1)
         grid.addWidget(remove, 0, 3, 1, 2, Qt.AlignmentFlag.AlignRight)
-        grid.addWidget(self._error(f"name.{name}"), 1, 0, 1, 5)
+        self._error_row(grid, 1, f"name.{name}")
 
     def _range_row(self, grid: QGridLayout, row: int, key: str, name: str) -> None:
         full = f"{key}.range"
@@ -242,7 +240,7 @@ class SystemFields(QWidget):
         grid.addWidget(low, row, 1)
         grid.addWidget(field_label("to", high), row, 2)
         grid.addWidget(high, row, 3, 1, 2)
-        grid.addWidget(self._error(full), row + 1, 0, 1, 5)
+        self._error_row(grid, row + 1, full)
 
     def _build_diagram(self, page: QVBoxLayout, draft: Draft) -> None:
         grid = field_grid(page)
@@ -253,7 +251,7 @@ class SystemFields(QWidget):
         self._register("diagram.parameter", self.swept)
         grid.addWidget(field_label("swept", self.swept), 0, 0)
         grid.addWidget(self.swept, 0, 1, 1, 4)
-        grid.addWidget(self._error("diagram.parameter"), 1, 0, 1, 5)
+        self._error_row(grid, 1, "diagram.parameter")
         observe = self._line("diagram.observe", "Observed quantity, a state or a formula", digits=10)
         observe.setToolTip("A state, or a formula in the states")
         menu = QMenu()
@@ -267,7 +265,7 @@ class SystemFields(QWidget):
         line.addWidget(choose)
         grid.addWidget(field_label("observed", observe), 2, 0)
         grid.addLayout(line, 2, 1, 1, 4)
-        grid.addWidget(self._error("diagram.observe"), 3, 0, 1, 5)
+        self._error_row(grid, 3, "diagram.observe")
 
     def _heading(
         self, page: QVBoxLayout, words: str, section: str = "", add: str = "", possible: bool = False
@@ -302,6 +300,10 @@ class SystemFields(QWidget):
 
     def _register(self, key: str, editor: QWidget) -> None:
         self._editors.setdefault(key, []).append(editor)
+
+    def _error_row(self, grid: QGridLayout, row: int, key: str) -> None:
+        # Labels for mistakes are made when there is one: most fields never have any.
+        self._error_rows[key] = (grid, row)
 
     def _error(self, key: str) -> QLabel:
         label = QLabel()
@@ -359,10 +361,17 @@ class SystemFields(QWidget):
             self.rename_asked.emit(section, old, new)
 
     def _name_trouble(self, name: str, words: str) -> None:
-        label = self._errors[f"name.{name}"]
-        label.setText(words)
-        label.setVisible(bool(words))
-        for editor in self._editors[f"name.{name}"]:
+        self._say(f"name.{name}", words)
+
+    def _say(self, key: str, words: str) -> None:
+        """Put a mistake under a field, or take it away."""
+        if key not in self._errors and words:
+            grid, row = self._error_rows[key]
+            grid.addWidget(self._error(key), row, 0, 1, 5)
+        if key in self._errors:
+            self._errors[key].setText(words)
+            self._errors[key].setVisible(bool(words))
+        for editor in self._editors.get(key, []):
             show_as(editor, words)
 
     def choose(self, changes: dict[str, str]) -> None:
@@ -378,7 +387,7 @@ class SystemFields(QWidget):
         parts = key.split(".")
         while parts:
             near = ".".join(parts)
-            if near in self._errors:
+            if near in self._errors or near in self._error_rows:
                 return near
             parts.pop()
         return ""
