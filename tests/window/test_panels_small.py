@@ -368,3 +368,29 @@ def test_panels_follow_the_theme(qtbot, dressed, probe, settings, guide):
         assert probe.series.backgroundBrush().color().name() == theme.plot
         heading = guide.browser.document().begin().begin().fragment().charFormat()
         assert heading.foreground().color().name() == theme.text
+
+
+def test_every_command_in_the_guide_is_one_that_the_program_takes():
+    from tinemark.cli import COMMANDS
+
+    page = next(page for page in guide_pages() if page.name == "09-command-line")
+    lines = [line.split() for line in page.text.splitlines() if line.startswith("tinemark ")]
+    assert {line[1] for line in lines} == {"ladder", "refine", "picture", "inspect"}
+    for _, command, *arguments in lines:
+        COMMANDS[command][0]().parse_args(arguments)
+
+
+def test_guide_opens_once_for_a_window_and_closes_by_escape(qtbot):
+    from tinemark.window.guide import open_guide
+
+    window = QWidget()
+    qtbot.addWidget(window)
+    window.show()
+    panel = open_guide(window, "07-keys")
+    assert panel.isWindow()
+    assert panel.isVisible()
+    assert "Ctrl+O" in panel.browser.toPlainText()
+    assert open_guide(window) is panel
+    assert panel.current_page.name == "07-keys"
+    qtbot.keyClick(panel.browser, Qt.Key.Key_Escape)
+    assert not panel.isVisible()

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from PySide6.QtCore import Qt
-from PySide6.QtGui import QFontMetrics, QKeySequence, QShortcut
+from PySide6.QtGui import QFontMetrics
 from PySide6.QtWidgets import QWidget
 
 from tinemark.window.action_list import key_page
@@ -24,8 +24,6 @@ def open_guide(parent: QWidget, page: str = "") -> GuidePanel:
         panel.setWindowFlag(Qt.WindowType.Window)
         em = QFontMetrics(panel.font()).height()
         panel.resize(56 * em, 40 * em)
-        shut = QShortcut(QKeySequence(Qt.Key.Key_Escape), panel)
-        shut.activated.connect(panel.close)
     if page:
         panel.show_page(page)
     panel.show()

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from PySide6.QtCore import QEvent, Qt
-from PySide6.QtGui import QKeySequence, QShortcut, QTextCursor, QTextDocument
+from PySide6.QtGui import QKeyEvent, QKeySequence, QShortcut, QTextCursor, QTextDocument
 from PySide6.QtWidgets import (
     QLabel,
     QLineEdit,
@@ -153,6 +153,13 @@ class GuidePanel(QWidget):
     def _go_to_search(self) -> None:
         self.search.setFocus(Qt.FocusReason.ShortcutFocusReason)
         self.search.selectAll()
+
+    def keyPressEvent(self, event: QKeyEvent) -> None:
+        """Escape closes the guide where it is a window of its own."""
+        if event.key() == Qt.Key.Key_Escape and self.isWindow():
+            self.close()
+            return
+        super().keyPressEvent(event)
 
     def changeEvent(self, event: QEvent) -> None:
         """Dress the page anew in another theme or font."""
