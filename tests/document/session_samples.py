@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import dataclasses
+import io
+import zipfile
 from fractions import Fraction
 
 import onset_samples as known
@@ -13,6 +15,7 @@ from tinemark.density.tone import PALETTE_NAMES
 from tinemark.document import ledger as led
 from tinemark.document import session as ses
 from tinemark.document.session import PictureSettings, Session
+from tinemark.document.session_file import session_bytes
 from tinemark.onsets.results import Kind, Onset, Status
 
 LOGISTIC_TEXT = """\
@@ -70,6 +73,23 @@ def full_session() -> Session:
     )
     session = ses.with_probe(session, Fraction("3.83"))
     return ses.with_words(session, title='Growth "A" \\ β', notes="line 1\nline 2\t<&>\u2028")
+
+
+def json_of(session: Session) -> bytes:
+    with zipfile.ZipFile(io.BytesIO(session_bytes(session))) as archive:
+        return archive.read("session.json")
+
+
+def packed(
+    content: bytes, name: str = "session.json", *, compression: int = zipfile.ZIP_STORED, mode: int = 0o100644
+) -> bytes:
+    buffer = io.BytesIO()
+    with zipfile.ZipFile(buffer, "w", compression) as archive:
+        info = zipfile.ZipInfo(name)
+        info.compress_type = compression
+        info.external_attr = mode << 16
+        archive.writestr(info, content)
+    return buffer.getvalue()
 
 
 texts = st.text(st.characters(exclude_categories=["Cs"]), max_size=60)
