@@ -248,7 +248,8 @@ def _matches(onset: Any, truth: _Truth) -> bool:
     period = onset.period_before if onset.kind.value == "flip" else onset.period_after
     if onset.kind.value != truth.kind or period != truth.period:
         return False
-    return abs(onset.value_fraction - truth.value) < Fraction(1, 10**15) * max(1, abs(truth.value))
+    slack = Fraction(1, 10**15) * max(Fraction(1), abs(truth.value))
+    return bool(abs(onset.value_fraction - truth.value) < slack)
 
 
 def _is_right(onsets: Any, truth: _Truth, truths: list[_Truth], request: Any) -> bool:
@@ -263,7 +264,7 @@ def _is_wrong(onset: Any, truths: list[_Truth]) -> bool:
     """Whether a proved onset is contradicted by the known value of its kind, or by a calculation apart."""
     if any(_matches(onset, truth) for truth in truths):
         truth = next(truth for truth in truths if _matches(onset, truth))
-        slack = Fraction(1, 10**17) * max(1, abs(truth.value))
+        slack = Fraction(1, 10**17) * max(Fraction(1), abs(truth.value))
         return not Fraction(onset.lower) - slack <= truth.value <= Fraction(onset.upper) + slack
     return not _solves(onset, truths[0].formula)
 
