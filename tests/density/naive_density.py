@@ -56,7 +56,15 @@ def picture(
 ) -> PictureRequest:
     chosen = builtin_system(system) if isinstance(system, str) else system
     return PictureRequest(
-        chosen, chosen.diagram_parameter, observe or chosen.observe, where, columns, rows, rule, transient, starts
+        chosen,
+        chosen.diagram_parameter,
+        observe or chosen.observe,
+        where,
+        columns,
+        rows,
+        rule,
+        transient,
+        starts,
     )
 
 
@@ -72,7 +80,9 @@ def around(value: str, reach: str = "1e-12") -> View:
     return View(middle - half, middle + half, Fraction(0), Fraction(1))
 
 
-def map_of(formula: str, start: str = "0.4", parameters: str = 'r = { value = "1" }', extra: str = "") -> System:
+def map_of(
+    formula: str, start: str = "0.4", parameters: str = 'r = { value = "1" }', extra: str = ""
+) -> System:
     """A one-state system from its formula."""
     return read_system_text(
         f'title = "Test"\nkind = "map"\n[states.x]\nstart = "{start}"\n{extra}\n'

@@ -50,7 +50,12 @@ def test_first_steps_are_those_of_the_slow_version_in_chaos_too() -> None:
     noted = np.empty((65, 1, 25))
     for first in (0, 64):
         drawing.kernels.trace(
-            drawing.states[0], drawing.swept, drawing.fixed, first, min(64, 65 - first), noted[first : first + 64]
+            drawing.states[0],
+            drawing.swept,
+            drawing.fixed,
+            first,
+            min(64, 65 - first),
+            noted[first : first + 64],
         )
     for j in (0, 40, 64):
         state = (0.4,)
@@ -107,7 +112,8 @@ def test_panned_picture_equals_a_fresh_one(by: int, rule: SweepRule) -> None:
     first = picture("logistic", view("3.4", "4"), rule=rule, starts=2)
     move = first.view.width * by / first.columns
     moved = dataclasses.replace(
-        first, view=dataclasses.replace(first.view, left=first.view.left + move, right=first.view.right + move)
+        first,
+        view=dataclasses.replace(first.view, left=first.view.left + move, right=first.view.right + move),
     )
     old = create(first)
     append(old, 5 * BUFFER)
@@ -227,7 +233,9 @@ def test_impossible_requests_are_refused_in_words(change: dict[str, object]) -> 
 
 def test_view_exact_beyond_doubles_still_finds_its_columns() -> None:
     third = Fraction(1, 3)
-    request = picture("logistic", dataclasses.replace(view("3", "4"), left=3 + third, right=3 + 2 * third), columns=7)
+    request = picture(
+        "logistic", dataclasses.replace(view("3", "4"), left=3 + third, right=3 + 2 * third), columns=7
+    )
     drawing = create(request)
     wanted = [float(3 + third + third * (2 * j + 1) / 14) for j in range(7)]
     assert drawing.swept.tolist() == wanted

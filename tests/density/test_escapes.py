@@ -168,5 +168,7 @@ def test_a_carried_sweep_leaves_a_cycle_that_has_lost_its_stability() -> None:
 def test_piecewise_maps_draw() -> None:
     field = drawn(picture("peak_current", view("0.5", "2", "0", "2")), 512)
     assert field.steps == 96 * 512
-    field = drawn(picture(map_of("r*x if x < 0.5 else floor(3*x) - abs(x - r)"), view("0", "1", "-5", "5")), 512)
+    field = drawn(
+        picture(map_of("r*x if x < 0.5 else floor(3*x) - abs(x - r)"), view("0", "1", "-5", "5")), 512
+    )
     assert field.counts.any()

@@ -75,13 +75,23 @@ def test_periods_in_known_windows(period: int, start: str, superstable: str, fli
     width = float(flip) - float(start)
     inside = drawn(picture("logistic", around(superstable, "1e-9"), columns=2, transient=4000), 1024)
     assert inside.period.tolist() == [period, period]
-    after = drawn(picture("logistic", around(f"{float(flip) + 0.05 * width:.16f}"), columns=2, transient=4000), 1024)
+    after = drawn(
+        picture("logistic", around(f"{float(flip) + 0.05 * width:.16f}"), columns=2, transient=4000), 1024
+    )
     assert after.period.tolist() == [2 * period, 2 * period]
 
 
 def test_periods_double_along_the_cascade() -> None:
     # Between the onsets of check_values section 4.1.
-    for r, period in (("2.9", 1), ("3.2", 2), ("3.5", 4), ("3.555", 8), ("3.566", 16), ("3.5692", 32), ("3.5697", 64)):
+    for r, period in (
+        ("2.9", 1),
+        ("3.2", 2),
+        ("3.5", 4),
+        ("3.555", 8),
+        ("3.566", 16),
+        ("3.5692", 32),
+        ("3.5697", 64),
+    ):
         field = drawn(picture("logistic", around(r), columns=2, transient=6000), 1024)
         assert field.period.tolist() == [period, period], r
 
@@ -122,7 +132,9 @@ def test_period_finder_against_the_slow_version() -> None:
     for c in range(80):
         p = int(rng.integers(1, 65))
         cycle = rng.uniform(-5, 5, (2, p))
-        noted[c] = np.tile(cycle, TRACE_STEPS // p + 1)[:, :TRACE_STEPS] * (1 + 1e-15 * rng.normal(size=TRACE_STEPS))
+        noted[c] = np.tile(cycle, TRACE_STEPS // p + 1)[:, :TRACE_STEPS] * (
+            1 + 1e-15 * rng.normal(size=TRACE_STEPS)
+        )
         wanted.append(slow_period(noted[c, 0].tolist()))
     found = np.zeros(80, np.int32)
     find_periods(noted, found)

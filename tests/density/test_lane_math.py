@@ -13,7 +13,25 @@ import pytest
 from tinemark.systems import lane_math
 
 NAN, INF = float("nan"), float("inf")
-SPECIAL = [0.0, -0.0, 1.0, -1.0, 2.0, -3.0, 0.5, -0.5, INF, -INF, NAN, 5e-324, 1e-310, 1e308, -1e308, 709.7, -745.0]
+SPECIAL = [
+    0.0,
+    -0.0,
+    1.0,
+    -1.0,
+    2.0,
+    -3.0,
+    0.5,
+    -0.5,
+    INF,
+    -INF,
+    NAN,
+    5e-324,
+    1e-310,
+    1e308,
+    -1e308,
+    709.7,
+    -745.0,
+]
 
 
 def spread(low: float, high: float, count: int = 400, signs: bool = True) -> np.ndarray:
@@ -28,12 +46,18 @@ def beside(points: np.ndarray) -> np.ndarray:
 
 ARGUMENTS = {
     "exp": np.concatenate([spread(1e-20, 708.0), np.linspace(-708, 709.7, 300)]),
-    "log": np.concatenate([spread(1e-323, 1e308, signs=False), 1 + spread(1e-16, 0.4), beside(np.array([0.5, 1, 2]))]),
+    "log": np.concatenate(
+        [spread(1e-323, 1e308, signs=False), 1 + spread(1e-16, 0.4), beside(np.array([0.5, 1, 2]))]
+    ),
     "sin": np.concatenate([spread(1e-300, 1.0), spread(1.0, 1e5), beside(np.arange(1, 200) * np.pi / 2)]),
     "cos": np.concatenate([spread(1e-300, 1.0), spread(1.0, 1e5), beside(np.arange(1, 200) * np.pi / 2)]),
     "tan": np.concatenate([spread(1e-300, 1.0), spread(1.0, 1e5)]),
-    "asin": np.concatenate([spread(1e-300, 1.0), np.linspace(-1, 1, 301), 1 - spread(1e-16, 0.1, signs=False)]),
-    "acos": np.concatenate([spread(1e-300, 1.0), np.linspace(-1, 1, 301), 1 - spread(1e-16, 0.1, signs=False)]),
+    "asin": np.concatenate(
+        [spread(1e-300, 1.0), np.linspace(-1, 1, 301), 1 - spread(1e-16, 0.1, signs=False)]
+    ),
+    "acos": np.concatenate(
+        [spread(1e-300, 1.0), np.linspace(-1, 1, 301), 1 - spread(1e-16, 0.1, signs=False)]
+    ),
     "atan": np.concatenate([spread(1e-300, 1e300), np.linspace(-4, 4, 301)]),
     "sinh": np.concatenate([spread(1e-300, 710.4), np.linspace(-3, 3, 301)]),
     "cosh": np.concatenate([spread(1e-300, 710.4), np.linspace(-3, 3, 301)]),

@@ -18,6 +18,11 @@ def column_parameters(request: PictureRequest) -> NDArray[np.float64]:
     Returns
     -------
     float64, shape (columns,).
+
+    Raises
+    ------
+    OverflowError
+        The view lies beyond the range of doubles.
     """
     view, columns = request.view, request.columns
     common = math.lcm(view.left.denominator, view.width.denominator)
@@ -34,7 +39,11 @@ def columns_distinct(request: PictureRequest) -> bool:
     Where they cannot, a picture would show rounding, not the system; onsets can still be refined
     there, in higher precision.
     """
-    parameters = column_parameters(request)
+    try:
+        parameters = column_parameters(request)
+        float(request.view.bottom), float(request.view.top)
+    except OverflowError:
+        return False
     if not (np.isfinite(parameters).all() and (np.diff(parameters) > 0).all()):
         return False
     view = request.view

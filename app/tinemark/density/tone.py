@@ -61,7 +61,7 @@ def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]
         below = np.cumsum(visits)
         total = max(int(below[-1]), 1)
         if mode == "linear":
-            cap = values[int(np.searchsorted(below, _LINEAR_SHARE * total))]
+            cap = values[int(np.searchsorted(below[:-1], _LINEAR_SHARE * total))]
             share = values / max(cap, 1.0)
         else:
             share = (below - 0.5 * visits) / total
