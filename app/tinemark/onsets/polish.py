@@ -17,6 +17,7 @@ from typing import Any
 from flint import arb
 
 from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, in_chunks, precision
+from tinemark.onsets.branches import Cycle, crossing_at, cycle_with_multiplier, least_period
 from tinemark.onsets.decimals import (
     GUARD_DIGITS,
     decimal_places,
@@ -134,8 +135,7 @@ def settle_onset(
         # A regular onset is proved with bits enough. What is left are pitchforks, transcritical points and
         # tangencies of higher order, where the equations are singular: none of them is an onset of this kind.
         raise Lost(f"no isolated {rough.kind.value} there: {reason}")
-    half = _half_width(one, rough, wanted, last_step)
-    return Settled(_estimate_of(one, rough, digits, half, reason), rough.x, rough.r)
+    return Settled(_touching(one, rough, digits, wanted, last_step, reason), rough.x, rough.r)
 
 
 def first_bits(rough: Rough, places: int) -> int:
@@ -272,12 +272,31 @@ def _estimate_of(one: OneMap, rough: Rough, digits: int, half: Fraction, reason:
     )
 
 
-def _half_width(one: OneMap, rough: Rough, wanted: Fraction, polished: float | None) -> Fraction:
-    """Error estimate of an onset without proof: a multiple of what Newton's method would still correct."""
-    size = max(abs(rough.r), Fraction(1, 10**6))
-    if polished is not None and math.isfinite(polished):
-        return max(4 * Fraction(polished), 10 * wanted)
-    # Only doubles got there: a formula that switches at the cycle has no derivative to polish with.
-    step = float_map(one).newton(float(rough.x), float(rough.r), rough.period, TARGETS[rough.kind])
-    shift = Fraction(abs(step.shift_r)) if step is not None else Fraction(0)
-    return max(10 * shift, size / 10**8)
+def _touching(
+    one: OneMap, rough: Rough, digits: int, wanted: Fraction, polished: float | None, reason: str
+) -> Onset:
+    """An onset whose cycle touches a switching surface, as far as doubles bear it out.
+
+    Raises
+    ------
+    Lost
+        On neither side of the surface do the equations of the onset hold.
+    """
+    cycles = float_map(one)
+    target = TARGETS[rough.kind]
+    found = cycle_with_multiplier(cycles, float(rough.x), float(rough.r), rough.period, target)
+    if found is None:
+        raise Lost("the orbit jumps at a switching surface there")
+    x, r, step = found
+    if least_period(cycles, x, r, rough.period) != rough.period:
+        raise Lost(f"the cycle's least period is not {rough.period}")
+    crossing = crossing_at(cycles, Cycle(rough.period, x, r, float(target)), rough.kind)
+    if crossing is None or crossing.extent > 1e6 * max(abs(r), 1e-6):
+        raise Lost(f"no isolated {rough.kind.value} there")
+    if polished is not None:
+        half = max(4 * Fraction(polished), 10 * wanted)
+    else:
+        # Doubles alone: a formula that switches on the cycle has no derivative to polish with.
+        rough = Rough(rough.kind, rough.period, Fraction(x), Fraction(r))
+        half = max(10 * Fraction(abs(step.shift_r)), max(abs(rough.r), Fraction(1, 10**6)) / 10**8)
+    return _estimate_of(one, rough, digits, half, reason)
