@@ -269,13 +269,17 @@ def _modelled_limit(values: Sequence[Decimal]) -> Decimal:
     off = ratios[-1] - delta
     gap, total = values[-1] - values[-2], values[-1]
     smallest = abs(gap).scaleb(-WORKING_PLACES)
-    while abs(gap * off) > smallest * delta:
+    for _ in range(MOST_FOLLOWED):
+        if abs(gap * off) <= smallest * delta:
+            break
         off /= delta
         gap /= max(delta + off, Decimal("1.001"))
         total += gap
     return total + gap / (delta - 1)
 
 
+MOST_FOLLOWED = 60
+"""Modelled ratios are followed one by one at most so far; then they count as settled."""
 WORKING_PLACES = 30
 """Decimal places, relative to the last gap, to which modelled ratios are followed."""
 

@@ -219,7 +219,7 @@ def _take_up(
         yield Step(f"taking up the cycle of period {2 * origin.period}")
         guess = Cycle(twice + amplitude * shape, origin.r)
         target = float(np.sum(along * guess.points))
-        cycle = newton(float_map, guess, scales * amplitude, along=along, target=target)
+        cycle = newton(float_map, guess, scales * max(amplitude, 1e-2), along=along, target=target)
         if cycle is None:
             amplitude /= 3
             continue

@@ -8,6 +8,7 @@ taken in high precision. c > 0: the doubled cycle appears softly, on the far sid
 
 from __future__ import annotations
 
+from collections.abc import Generator
 from dataclasses import dataclass
 from typing import Any
 
@@ -17,8 +18,10 @@ from flint import arb, arb_mat
 from tinemark.onsets.ball_orbits import precision
 from tinemark.onsets.many_map import Floats, ManyMap, ball_evaluators
 from tinemark.onsets.many_polish import Polished
-from tinemark.onsets.results import Criticality, Kind
+from tinemark.onsets.results import Criticality, Kind, Step
 
+CHUNK = 500
+"""Orbit steps between two chances to cancel."""
 DIFFERENCE_BITS = 40
 """Steps of the differences are the state's scale times 2**-this."""
 ON_THE_CIRCLE = 1e-6
@@ -64,7 +67,9 @@ class Findings:
     is_degenerate: bool = False
 
 
-def findings(many: ManyMap, kind: Kind, found: Polished, scales: Floats, reach: float) -> Findings:
+def findings(
+    many: ManyMap, kind: Kind, found: Polished, scales: Floats, reach: float
+) -> Generator[Step, None, Findings]:
     """Check a polished onset; `reach` is a length typical of the parameter."""
     target = -1.0 if kind is Kind.FLIP else 1.0
     n = many.size
@@ -91,7 +96,7 @@ def findings(many: ManyMap, kind: Kind, found: Polished, scales: Floats, reach: 
         return Findings(critical, others, is_simple, False, crossing, bend, _undecided(kind), flat)
     drift = np.linalg.lstsq(np.eye(n) - matrix, slope, rcond=None)[0]
     crossing = float(p @ (turn @ drift + turn_r))
-    coefficient, spread = _flip_coefficient(many, found, matrix, p * size, q / size)
+    coefficient, spread = yield from _flip_coefficient(many, found, matrix, p * size, q / size)
     clear = abs(coefficient) > ONE_SIGN and spread < abs(coefficient) / 10
     criticality = Criticality.UNDECIDED
     if clear and is_simple:
@@ -105,42 +110,60 @@ def _undecided(kind: Kind) -> Criticality:
 
 def _flip_coefficient(
     many: ManyMap, found: Polished, matrix: Floats, p: Floats, q: Floats
-) -> tuple[float, float]:
+) -> Generator[Step, None, tuple[float, float]]:
     """Coefficient for a critical vector of length 1 in scaled states, and how far two step sizes disagree."""
     coefficients = []
     for extra in (0, 5):
         # Long cycles are fine structures: their points lie closer the longer they are.
         finer = DIFFERENCE_BITS + extra + 3 * len(found.points).bit_length()
         bits = max(found.bits, 5 * finer + 60)
-        with precision(bits):
-            step = arb(2) ** (-finer)
-            coefficients.append(_third_order(many, found, matrix, p, q, step))
+        coefficients.append((yield from _third_order(many, found, matrix, p, q, finer, bits)))
     return coefficients[1], abs(coefficients[1] - coefficients[0])
 
 
-def _third_order(many: ManyMap, found: Polished, matrix: Floats, p: Floats, q: Floats, h: Any) -> float:
-    n, count = many.size, len(found.points)
-    x0 = found.points[0]
+def _third_order(
+    many: ManyMap, found: Polished, matrix: Floats, p: Floats, q: Floats, finer: int, bits: int
+) -> Generator[Step, None, float]:
+    n, x0 = many.size, found.points[0]
+    with precision(bits):
+        h = arb(2) ** (-finer)
+        direction = [arb(float(value)) for value in q]
+
+    def image(share: int, second: list[Any]) -> Generator[Step, None, list[Any]]:
+        with precision(bits):
+            e = share * h
+            point = [(x0[i] + e * direction[i] + e * e * second[i]).mid() for i in range(n)]
+        return (yield from _carried(many, point, found, bits))
+
+    straight = [0] * n
+    plus = yield from image(1, straight)
+    middle = yield from image(0, straight)
+    minus = yield from image(-1, straight)
+    with precision(bits):
+        half_bend = [((plus[i] - 2 * middle[i] + minus[i]) / (2 * h * h)).mid() for i in range(n)]
+        entries = [(1 if i == j else 0) - arb(float(matrix[i, j])) for i in range(n) for j in range(n)]
+        second = arb_mat(n, n, entries).solve(arb_mat(n, 1, half_bend), algorithm="approx")
+        curve = [second[i, 0].mid() for i in range(n)]
+    far = yield from image(2, curve)
+    near = yield from image(1, curve)
+    back = yield from image(-1, curve)
+    far_back = yield from image(-2, curve)
+    with precision(bits):
+        third = [(far[i] - 2 * near[i] + 2 * back[i] - far_back[i]) / (12 * h**3) for i in range(n)]
+        return float(sum((arb(float(p[i])) * third[i] for i in range(n)), arb(0)))
+
+
+def _carried(many: ManyMap, point: list[Any], found: Polished, bits: int) -> Generator[Step, None, list[Any]]:
+    """The point after one period, by midpoints."""
     step = ball_evaluators(many).step
-    direction = [arb(float(value)) for value in q]
-
-    def image(e: Any, second: list[Any]) -> list[Any]:
-        point = [(x0[i] + e * direction[i] + e * e * second[i]).mid() for i in range(n)]
-        for _ in range(count):
-            point = [arb(value).mid() for value in step(*point, found.r)]
-        return point
-
-    straight = [arb(0)] * n
-    plus, middle, minus = image(h, straight), image(arb(0), straight), image(-h, straight)
-    half_bend = [((plus[i] - 2 * middle[i] + minus[i]) / (2 * h * h)).mid() for i in range(n)]
-    system = arb_mat(
-        n, n, [(1 if i == j else 0) - arb(float(matrix[i, j])) for i in range(n) for j in range(n)]
-    )
-    second = system.solve(arb_mat(n, 1, half_bend), algorithm="approx")
-    curve = [second[i, 0].mid() for i in range(n)]
-    far, near, back, far_back = (image(k * h, curve) for k in (2, 1, -1, -2))
-    third = [(far[i] - 2 * near[i] + 2 * back[i] - far_back[i]) / (12 * h**3) for i in range(n)]
-    return float(sum((arb(float(p[i])) * third[i] for i in range(n)), arb(0)))
+    left = len(found.points)
+    while left:
+        with precision(bits):
+            for _ in range(min(left, CHUNK)):
+                point = [arb(value).mid() for value in step(*point, found.r)]
+        left -= min(left, CHUNK)
+        yield Step("checking how the cycle splits")
+    return point
 
 
 def _left_null(matrix: Floats) -> Floats:

@@ -97,7 +97,7 @@ def settle_onset(
             break
         bits = bits * 3 // 2
     _check_period(high, scales)
-    found = findings(many, kind, high, scales, max(reach, abs(float(high.r))))
+    found = yield from findings(many, kind, high, scales, max(reach, abs(float(high.r))))
     if found.is_degenerate:
         raise NotFound("branches cross or touch here instead of turning round in a fold")
     return Settled(_onset(many, kind, high, found, half, digits, places, scales), high, found)

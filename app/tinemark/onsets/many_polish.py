@@ -106,8 +106,9 @@ def polish(
     text = f"polishing a {kind.value} of period {len(x)}"
     for _ in range(MOST_STEPS):
         parts = yield from _newton_parts(many, kind, x, v, rr, bits, text)
+        first, first_v, shift_r = _solved(parts, kind, normal, v[0], bits)
+        shift_x, shift_v = yield from _moves(parts, first, first_v, bits, text)
         with precision(bits):
-            shift_x, shift_v, shift_r = _solved(parts, kind, normal, v[0])
             step = abs(float(shift_r))
             size = max(
                 max(abs(float(value)) / scale for value, scale in zip(row, scales, strict=True))
@@ -190,9 +191,16 @@ def _columns(n: int, slope: Sequence[Any], residual: Sequence[Any]) -> Any:
 
 
 def _solved(
+    parts: _Parts, kind: Kind, normal: Sequence[Any], v0: Sequence[Any], bits: int
+) -> tuple[Any, Any, Any]:
+    """Shifts of the first point (with the parameter's and 1), the first vector and the parameter."""
+    with precision(bits):
+        return _condensed_solution(parts, kind, normal, v0)
+
+
+def _condensed_solution(
     parts: _Parts, kind: Kind, normal: Sequence[Any], v0: Sequence[Any]
-) -> tuple[list[list[Any]], list[list[Any]], Any]:
-    """Shifts of all points, of all vectors and of the parameter, from the condensed system."""
+) -> tuple[Any, Any, Any]:
     n = parts.blocks[0].nrows()
     sign = -1 if kind is Kind.FLIP else 1
     last, last_v = parts.blocks[-1], parts.tangents[-1]
@@ -217,14 +225,25 @@ def _solved(
         raise NotFound("the defining equations are singular here") from error
     first = arb_mat(n + 2, 1, [shift[i, 0] for i in range(n)] + [shift[2 * n, 0], arb(1)])
     first_v = arb_mat(n, 1, [shift[n + i, 0] for i in range(n)])
+    return first, first_v, shift[2 * n, 0]
+
+
+def _moves(
+    parts: _Parts, first: Any, first_v: Any, bits: int, text: str
+) -> Generator[Step, None, tuple[list[list[Any]], list[list[Any]]]]:
+    """Shifts of all points and vectors from those of the first."""
+    n = parts.blocks[0].nrows()
     moves, moves_v = [], []
-    for block, tangent in zip(parts.blocks[:-1], parts.tangents[:-1], strict=True):
-        move = block * first
-        square = arb_mat(n, n, [block[i, j] for i in range(n) for j in range(n)])
-        move_v = square * first_v + tangent * first
-        moves.append([move[i, 0] for i in range(n)])
-        moves_v.append([move_v[i, 0] for i in range(n)])
-    return moves, moves_v, shift[2 * n, 0]
+    for place, (block, tangent) in enumerate(zip(parts.blocks[:-1], parts.tangents[:-1], strict=True)):
+        with precision(bits):
+            move = block * first
+            square = arb_mat(n, n, [block[i, j] for i in range(n) for j in range(n)])
+            move_v = square * first_v + tangent * first
+            moves.append([move[i, 0] for i in range(n)])
+            moves_v.append([move_v[i, 0] for i in range(n)])
+        if place % CHUNK == CHUNK - 1:
+            yield Step(text)
+    return moves, moves_v
 
 
 def _carried(many: ManyMap, x: list[list[Any]], r: Any, vector: list[Any]) -> list[list[Any]]:

@@ -160,7 +160,10 @@ def class_verdict(delta: Estimate | None, levels: int) -> ClassVerdict:
         return ClassVerdict(UNDECIDED, None, f"undecided: {why}")
     inside = [item for item in CLASSES if item.lies_within(delta.lower, delta.upper)]
     shown = f"delta {delta.value} ± {delta.expanded_text}"
-    share = delta.expanded_fraction / abs(delta.value_fraction)
+    size = abs(delta.value_fraction)
+    if size <= delta.expanded_fraction:
+        return ClassVerdict(UNDECIDED, None, f"undecided: {shown} is too wide; more levels would tell")
+    share = delta.expanded_fraction / size
     if len(inside) > 1:
         names = f"{inside[0].name} to {inside[-1].name}"
         return ClassVerdict(UNDECIDED, None, f"undecided: {shown} leaves open several classes, {names}")
