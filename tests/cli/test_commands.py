@@ -138,6 +138,18 @@ def test_a_ladder_where_there_is_none_is_exit_1(tinemark, tmp_path) -> None:
     assert list(tmp_path.iterdir()) == []
 
 
+def test_a_cascade_that_runs_downwards_is_found_unasked(tinemark, own) -> None:
+    # The logistic map run backwards: its onsets at 6.8 - 3 and 6.8 - (1 + sqrt(6)).
+    path = own(formula="(6.8 - r)*x*(1 - x)")
+    ended = tinemark("ladder", path, "--levels", "2", "--json", "-")
+    assert ended.code == 0, ended.err
+    first, second = json.loads(ended.out)["onsets"]
+    assert Fraction(first["lower"]) <= Fraction("3.8") <= Fraction(first["upper"])
+    assert abs(Fraction(second["value"]) - (Fraction("6.8") - Fraction(LOGISTIC[1]))) < Fraction(1, 10**18)
+    assert first["gap"].startswith("-")
+    assert tinemark("ladder", path, "--from", "2.8", "--levels", "2").code == 1
+
+
 def test_inspect_knows_our_files(tinemark, own, tmp_path) -> None:
     ended = tinemark("inspect", own())
     assert ended.code == 0

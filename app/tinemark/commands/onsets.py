@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
@@ -64,7 +64,13 @@ def ladder(options: LadderOptions) -> None:
     request = LadderRequest(
         system, parameter, start, stop, options.base_period, options.levels, options.digits
     )
-    found, scaled, message = follow(request)
+    try:
+        found, scaled, message = follow(request)
+    except NoOnsetFound as error:
+        if options.start is not None or options.stop is not None:
+            raise
+        # Many cascades run downwards; where nobody said which way, the other one is tried too.
+        found, scaled, message = _downwards(request, error)
     if not found:
         raise NoOnsetFound(message or "no cascade was found there", where=options.system)
     print_onsets(options.system, parameter, found, scaled, options.json)
@@ -90,6 +96,13 @@ def _sweep(
     if first.fraction == last.fraction:
         raise TinemarkError("is the same as --from", where="--to", what_to_do="give two different ends")
     return first.fraction, last.fraction
+
+
+def _downwards(request: LadderRequest, upwards: NoOnsetFound) -> tuple[list[Found], Scaling | None, str]:
+    try:
+        return follow(replace(request, start=request.stop, stop=request.start))
+    except NoOnsetFound:
+        raise upwards from None
 
 
 def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
