@@ -25,7 +25,7 @@ from tinemark.systems.balls import ball_function
 from tinemark.systems.derivatives import derivative
 from tinemark.systems.emit import emit
 from tinemark.systems.errors import FormulaError, SwitchingTouched
-from tinemark.systems.expression import ARITIES, Call, Expr, Name, Num
+from tinemark.systems.expression import ARITIES, Call, Expr, Name, Num, walk
 from tinemark.systems.formula import read_formula
 from tinemark.systems.library import DEMO, builtin_names, builtin_system
 from tinemark.systems.plain import plain_function
@@ -90,7 +90,13 @@ def doubles_agree(text: str, expr: Expr, point: Sequence[Fraction]) -> bool:
         except ZeroDivisionError:  # of two constants of Python's own: never reached in a kernel
             scalar = math.nan
     plain = float(np.asarray(plain_function([expr], NAMES)([np.float64(number) for number in floats])[0]))
-    return near(float(scalar), box) and near(plain, box)
+    return (near(float(scalar), box) and near(plain, box)) or overflows(expr, point)
+
+
+def overflows(expr: Expr, point: Sequence[Fraction]) -> bool:
+    """Whether a formula passes through a value that no double can hold."""
+    parts = [ball_at(node, point, 40) for node in walk(expr)]
+    return any(not part.is_finite() or abs(part) > arb(10) ** 300 for part in parts)
 
 
 @settings(max_examples=150)
