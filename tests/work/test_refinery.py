@@ -208,6 +208,26 @@ def test_a_process_that_cannot_start_is_told_and_not_tried_for_ever(heard, logis
     assert multiprocessing.active_children() == []
 
 
+def test_a_system_that_gives_no_process_is_told(heard, logistic, monkeypatch) -> None:
+    faults = []
+    monkeypatch.setattr(threading, "excepthook", lambda arguments: faults.append(arguments.exc_value))
+    with Refinery(heard, engines.engine) as refinery:
+
+        def refuse() -> None:
+            raise OSError("no more processes")
+
+        heard.until_end(refinery.refine(engines.click(logistic)))
+        refinery._start_worker = refuse
+        crashing, waiting = (refinery.refine(engines.click(logistic, engines.DIE)) for _ in range(2))
+        assert isinstance(heard.until_end(crashing)[-1], Crashed)
+        assert isinstance(heard.until_end(waiting)[-1], Crashed)
+        assert "no more processes" in {str(fault) for fault in faults}
+        # Once there are processes again, the next request gets one.
+        del refinery._start_worker
+        assert isinstance(heard.until_end(refinery.refine(engines.click(logistic)))[-1], Finished)
+    assert multiprocessing.active_children() == []
+
+
 def test_a_faulty_listener_does_not_stop_the_refinery(heard, logistic, monkeypatch) -> None:
     faults = []
     monkeypatch.setattr(threading, "excepthook", lambda arguments: faults.append(arguments.exc_value))

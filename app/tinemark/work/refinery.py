@@ -140,8 +140,12 @@ class Refinery:
     def _work(self) -> None:
         try:
             while self._take_posted():
-                self._hand_out()
-                self._listen()
+                try:
+                    self._hand_out()
+                    self._listen()
+                except Exception:  # noqa: BLE001 - whatever fails here, no job may wait for ever
+                    self._report_fault()
+                    self._give_up()
         finally:
             self._stop_worker()
             with self._wake_lock:
@@ -284,15 +288,26 @@ class Refinery:
             self._failed_starts += 1
             if self._queue and self._failed_starts >= 2:
                 # Without a working process nothing that waits would ever be answered.
-                for id_, request in self._queue:
-                    self._tell(Crashed(id_, request, code))
-                self._queue.clear()
+                self._drop_queue(code)
         elif running is not None and running.cancel_by is not None:
             self._tell(Cancelled(running.id, running.request))
         elif running is not None:
             self._tell(Crashed(running.id, running.request, code))
         if self._warm is None and worker_.ready:
             self._warm = (running.request.system if running else None,)
+
+    def _give_up(self) -> None:
+        """After a fault of the system or of ours: end everything, and say so to whoever waits."""
+        worker_, self._warm = self._worker, None
+        code = self._end(worker_) if worker_ is not None else None
+        if worker_ is not None and worker_.running is not None:
+            self._tell(Crashed(worker_.running.id, worker_.running.request, code))
+        self._drop_queue(code)
+
+    def _drop_queue(self, code: int | None) -> None:
+        waiting, self._queue = self._queue, deque()
+        for id_, request in waiting:
+            self._tell(Crashed(id_, request, code))
 
     def _start_worker(self) -> None:
         request_reader, request_writer = _CONTEXT.Pipe(duplex=False)
@@ -338,6 +353,9 @@ class Refinery:
         try:
             self._on_event(event)
         except Exception:  # noqa: BLE001 - a fault of the listener must not leave the other jobs without one
-            kind, error, trace = sys.exc_info()
-            assert kind is not None
-            threading.excepthook(threading.ExceptHookArgs((kind, error, trace, self._thread)))
+            self._report_fault()
+
+    def _report_fault(self) -> None:
+        kind, error, trace = sys.exc_info()
+        assert kind is not None
+        threading.excepthook(threading.ExceptHookArgs((kind, error, trace, self._thread)))

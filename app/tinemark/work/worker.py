@@ -30,6 +30,9 @@ from tinemark.work.jobs import OnsetRequest, OnsetResult
 STEP_INTERVAL = 0.04
 """Seconds between two steps that are passed on; an engine may yield many more than anyone can read."""
 
+WARM_TIME = 3.0
+"""Seconds after which a warming ends at its next step: by then everything is built."""
+
 Steps: TypeAlias = Generator[Step | LadderLevel, None, OnsetResult]
 Engine: TypeAlias = Callable[[OnsetRequest], Steps]
 
@@ -118,7 +121,7 @@ def _run(
 def _warm(system: System | None, requests: Connection) -> None:
     """Load the engines, and run a click of our own on a system, so that the first real one finds all built.
 
-    Gives up as soon as anything is asked.
+    Gives way as soon as anything is asked.
     """
     # What cannot be built or found says so when it is asked for.
     with contextlib.suppress(Exception):
@@ -132,6 +135,7 @@ def _warm(system: System | None, requests: Connection) -> None:
         if parameter.range is not None:
             low, high = parameter.range
             near, width = (low.fraction + high.fraction) / 2, high.fraction - low.fraction
+        enough = time.monotonic() + WARM_TIME
         for _ in engine.refine(RefineRequest(system, parameter.name, near, width)):
-            if requests.poll():
+            if requests.poll() or time.monotonic() > enough:
                 return
