@@ -394,3 +394,43 @@ def test_guide_opens_once_for_a_window_and_closes_by_escape(qtbot):
     assert panel.current_page.name == "07-keys"
     qtbot.keyClick(panel.browser, Qt.Key.Key_Escape)
     assert not panel.isVisible()
+
+
+def test_numbers_grow_with_the_font_of_the_desktop(qtbot, qapp, dressed, probe):
+    dressed(LIGHT)
+    before = qapp.font()
+    small = probe.value.font().pointSizeF()
+    larger = qapp.font()
+    larger.setPointSizeF(before.pointSizeF() * 1.5)
+    try:
+        qapp.setFont(larger)
+        qtbot.waitUntil(lambda: probe.value.font().pointSizeF() > 1.4 * small)
+        assert probe.value.font().fixedPitch()
+        dressed(DARK)
+        qtbot.waitUntil(lambda: not probe._faces._waiting)
+        assert probe.value.font().pointSizeF() > 1.4 * small
+    finally:
+        qapp.setFont(before)
+
+
+@pytest.mark.parametrize("width", [140, 340, 900])
+def test_buttons_wrap_instead_of_forcing_the_panel_wide(qtbot, width):
+    from PySide6.QtCore import QMargins
+    from PySide6.QtWidgets import QPushButton
+
+    from tinemark.window.wrapping_row import WrappingRow
+
+    panel = QWidget()
+    qtbot.addWidget(panel)
+    row = WrappingRow(QMargins(4, 4, 4, 4), 2)
+    buttons = [QPushButton(words) for words in ("Follow further", "Refine again", "Copy", "Remove")]
+    for button in buttons:
+        row.addWidget(button)
+    panel.setLayout(row)
+    panel.resize(width, 200)
+    panel.show()
+    places = [button.geometry() for button in buttons]
+    assert all(place.right() <= width for place in places)
+    assert not any(one.intersects(other) for n, one in enumerate(places) for other in places[:n])
+    assert row.heightForWidth(width) == max(place.bottom() for place in places) + 1 + 4
+    assert row.minimumSize().width() <= max(button.minimumSizeHint().width() for button in buttons) + 8

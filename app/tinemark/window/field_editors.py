@@ -26,7 +26,8 @@ from PySide6.QtWidgets import (
     QWidget,
 )
 
-from tinemark.window.theme import color, current_theme, mono_font
+from tinemark.window.faces import wear
+from tinemark.window.theme import color, current_theme
 
 
 class FieldEdit(QLineEdit):
@@ -41,7 +42,7 @@ class FieldEdit(QLineEdit):
         self.number = number
         self._digits = digits
         self.setAccessibleName(name)
-        self.setFont(mono_font())
+        wear(self, "number")
         self._narrow()
 
     def _narrow(self) -> None:
@@ -55,10 +56,9 @@ class FieldEdit(QLineEdit):
         return text
 
     def changeEvent(self, event: QEvent) -> None:
-        """Keep the tabular face at the interface's size."""
+        """Keep room for its digits."""
         super().changeEvent(event)
-        if event.type() == QEvent.Type.ApplicationFontChange:
-            self.setFont(mono_font())
+        if event.type() == QEvent.Type.FontChange and hasattr(self, "_digits"):
             self._narrow()
 
 

@@ -18,6 +18,7 @@ from PySide6.QtWidgets import (
     QWidget,
 )
 
+from tinemark.window.faces import FaceKeeper
 from tinemark.window.guide_pages import GuidePage, guide_pages
 from tinemark.window.guide_style import style_document
 from tinemark.window.theme import current_theme
@@ -88,6 +89,7 @@ class GuidePanel(QWidget):
         find.setContext(Qt.ShortcutContext.WidgetWithChildrenShortcut)
         find.activated.connect(self._go_to_search)
         self._fill()
+        self._faces = FaceKeeper(self, self._redress)
 
     def _fill(self) -> None:
         for place, page in enumerate(self.pages):
@@ -164,7 +166,10 @@ class GuidePanel(QWidget):
     def changeEvent(self, event: QEvent) -> None:
         """Dress the page anew in another theme or font."""
         super().changeEvent(event)
-        if event.type() in (QEvent.Type.PaletteChange, QEvent.Type.FontChange) and hasattr(self, "_parts"):
-            place = self.browser.verticalScrollBar().value()
-            self._page_chosen()
-            self.browser.verticalScrollBar().setValue(place)
+        if event.type() == QEvent.Type.PaletteChange and hasattr(self, "_parts"):
+            self._redress()
+
+    def _redress(self) -> None:
+        place = self.browser.verticalScrollBar().value()
+        self._page_chosen()
+        self.browser.verticalScrollBar().setValue(place)

@@ -6,6 +6,7 @@ from PySide6.QtCore import Qt, Signal
 from PySide6.QtWidgets import QGridLayout, QLabel, QLineEdit, QScrollArea, QSizePolicy, QVBoxLayout, QWidget
 
 from tinemark.document.rounding import MINUS, group_digits
+from tinemark.window.faces import wear
 from tinemark.window.ledger_lines import (
     STATUS_MEANING,
     OnsetEntry,
@@ -14,7 +15,6 @@ from tinemark.window.ledger_lines import (
     period_words,
 )
 from tinemark.window.number_label import NumberLabel
-from tinemark.window.theme import heading_font
 
 
 class LedgerDetail(QScrollArea):
@@ -43,7 +43,7 @@ class LedgerDetail(QScrollArea):
         self._grid.setVerticalSpacing(4)
         self._grid.setColumnStretch(1, 1)
         self.title = QLabel()
-        self.title.setFont(heading_font())
+        wear(self.title, "heading")
         self.title.setWordWrap(True)
         self._grid.addWidget(self.title, 0, 0, 1, 2)
         self._line = 1

@@ -4,11 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 
-from PySide6.QtCore import QEvent, QItemSelection, QItemSelectionModel, QPoint, Qt, Signal
+from PySide6.QtCore import QEvent, QItemSelection, QItemSelectionModel, QMargins, QPoint, Qt, Signal
 from PySide6.QtGui import QAction, QContextMenuEvent, QFontMetricsF
 from PySide6.QtWidgets import (
     QAbstractItemView,
-    QHBoxLayout,
     QHeaderView,
     QLabel,
     QMenu,
@@ -22,6 +21,7 @@ from PySide6.QtWidgets import (
 from tinemark.document.estimates import LadderEstimates
 from tinemark.document.ledger import Ledger, estimates, ladder_ids
 from tinemark.onsets.results import Status
+from tinemark.window.faces import FaceKeeper
 from tinemark.window.field_editors import MenuButton
 from tinemark.window.ledger_detail import LedgerDetail
 from tinemark.window.ledger_lines import HEADERS, MAIN_COLUMNS, Column, OnsetEntry, entries_of
@@ -29,6 +29,7 @@ from tinemark.window.ledger_model import ROW_ID, LedgerModel
 from tinemark.window.ledger_paint import LedgerDelegate
 from tinemark.window.ledger_table import LedgerTable
 from tinemark.window.theme import mono_font, small_font
+from tinemark.window.wrapping_row import WrappingRow
 
 COPY_FORMS = (("tsv", "Tab-separated text"), ("markdown", "Markdown"), ("latex", "LaTeX"))
 DROPPED_FIRST = (Column.NOTE, Column.KIND, Column.GAP, Column.RATIO)
@@ -100,6 +101,7 @@ class LedgerPanel(QWidget):
         outer.addLayout(self._stack, 1)
         self.model.note_edited.connect(self.note_edited)
         self.detail.note_edited.connect(self.note_edited)
+        self._faces = FaceKeeper(self, self._measure)
         self.show_ledger(Ledger())
 
     def _build_table(self) -> None:
@@ -130,9 +132,7 @@ class LedgerPanel(QWidget):
         self.table.selectionModel().selectionChanged.connect(self._selection_changed)
 
     def _build_bar(self) -> None:
-        self._bar = QHBoxLayout()
-        self._bar.setContentsMargins(6, 4, 6, 2)
-        self._bar.setSpacing(2)
+        self._bar = WrappingRow(QMargins(6, 4, 6, 2), 2)
         menu = QMenu()
         self._add_copies(menu)
         self.copy_button = MenuButton("Copy as", menu)
@@ -149,10 +149,14 @@ class LedgerPanel(QWidget):
         self.detail_button = self._tool("Detail", "Show all digits of the selected row", self._toggle_detail)
         self.detail_button.setCheckable(True)
         self.detail_button.setChecked(True)
-        for button in (self.extend_button, self.refine_button, self.copy_button, self.remove_button):
+        for button in (
+            self.extend_button,
+            self.refine_button,
+            self.copy_button,
+            self.remove_button,
+            self.detail_button,
+        ):
             self._bar.addWidget(button)
-        self._bar.addStretch(1)
-        self._bar.addWidget(self.detail_button)
 
     def _tool(self, words: str, tip: str, do: Callable[[], None]) -> QToolButton:
         button = QToolButton()
@@ -383,9 +387,7 @@ class LedgerPanel(QWidget):
         event.accept()
 
     def changeEvent(self, event: QEvent) -> None:
-        """Measure anew in another font; draw anew in another theme."""
+        """Draw anew in another theme."""
         super().changeEvent(event)
-        if event.type() in (QEvent.Type.FontChange, QEvent.Type.StyleChange) and hasattr(self, "_stack"):
-            self._measure()
-        elif event.type() == QEvent.Type.PaletteChange and hasattr(self, "table"):
+        if event.type() == QEvent.Type.PaletteChange and hasattr(self, "table"):
             self.table.viewport().update()

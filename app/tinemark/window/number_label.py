@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from PySide6.QtCore import QEvent, Qt, Signal
+from PySide6.QtCore import Qt, Signal
 from PySide6.QtGui import QAction, QContextMenuEvent, QGuiApplication, QKeyEvent, QKeySequence
 from PySide6.QtWidgets import QLabel, QMenu, QWidget
 
-from tinemark.window.theme import mono_font, small_font
+from tinemark.window.faces import wear
 
 THIN_SPACES = "\u2009\u202f\u2007\u200a"
 
@@ -48,7 +48,7 @@ class NumberLabel(QLabel):
         self.setText(shown)
         self.setToolTip(self._full if self._full != plain_number(shown) else "")
         self.setAccessibleName(f"{self._name} {self._full}".strip())
-        if self._rank != "number":
+        if self._face != "number":
             self._dress("number")
 
     def show_words(self, words: str) -> None:
@@ -57,14 +57,12 @@ class NumberLabel(QLabel):
         self.setText(words)
         self.setToolTip("")
         self.setAccessibleName(f"{self._name} {words}".strip())
-        self._dress("second")
+        self._dress("words")
 
-    def _dress(self, rank: str) -> None:
-        self._rank = rank
-        self.setProperty("rank", rank)
-        self.setFont(mono_font() if rank == "number" else small_font(1.0))
-        self.style().unpolish(self)
-        self.style().polish(self)
+    def _dress(self, face: str) -> None:
+        # By font alone: a style sheet that is applied anew would put an older font back.
+        self._face = face
+        wear(self, face)
 
     def copy(self) -> None:
         """Put the selected part, or all digits, on the clipboard."""
@@ -94,9 +92,3 @@ class NumberLabel(QLabel):
         action = QAction(words, menu)
         action.triggered.connect(self.copy)
         return action
-
-    def changeEvent(self, event: QEvent) -> None:
-        """Keep the tabular face at the interface's size."""
-        super().changeEvent(event)
-        if event.type() == QEvent.Type.ApplicationFontChange:
-            self._dress(self._rank)

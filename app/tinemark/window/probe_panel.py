@@ -20,9 +20,10 @@ from PySide6.QtWidgets import (
 
 from tinemark.systems.errors import NumberError
 from tinemark.systems.exact import exact, fraction_text
+from tinemark.window.faces import FaceKeeper, wear
 from tinemark.window.field_editors import QuietCombo
 from tinemark.window.panel_plot import PanelPlot, line_pen
-from tinemark.window.theme import current_theme, mono_font
+from tinemark.window.theme import current_theme
 from tinemark.work.probe import ProbeOrbit
 
 Floats = npt.NDArray[np.float64]
@@ -77,13 +78,14 @@ class ProbePanel(QWidget):
         outer.setSpacing(6)
         outer.addLayout(self._bar)
         outer.addLayout(self._stack, 1)
+        self._faces = FaceKeeper(self, self._redress)
 
     def _build_bar(self) -> None:
         self._bar = QHBoxLayout()
         self._bar.setSpacing(8)
         self.name = QLabel("Parameter value")
         self.value = QLineEdit()
-        self.value.setFont(mono_font())
+        wear(self.value, "number")
         self.value.setAccessibleName("Parameter value of the probe")
         self.value.setPlaceholderText("for example 3.5")
         self.value.setMaximumWidth(self.value.fontMetrics().horizontalAdvance("0" * 24))
@@ -242,11 +244,13 @@ class ProbePanel(QWidget):
     def changeEvent(self, event: QEvent) -> None:
         """Redraw in the new theme."""
         super().changeEvent(event)
-        if event.type() in (QEvent.Type.PaletteChange, QEvent.Type.FontChange) and hasattr(self, "_stack"):
-            self.value.setFont(mono_font())
-            self.series.redress()
-            self.returns.redress()
-            self._draw()
+        if event.type() == QEvent.Type.PaletteChange and hasattr(self, "_stack"):
+            self._redress()
+
+    def _redress(self) -> None:
+        self.series.redress()
+        self.returns.redress()
+        self._draw()
 
 
 def finite_part(values: Floats) -> tuple[Floats, bool]:

@@ -19,11 +19,12 @@ from PySide6.QtWidgets import (
 )
 
 from tinemark.document.estimates import ClassValue, Estimate, LadderEstimates, LevelEstimate, estimate_text
+from tinemark.window.faces import FaceKeeper, wear
 from tinemark.window.ledger_detail import grouped
 from tinemark.window.ledger_lines import full_text
 from tinemark.window.number_label import NumberLabel
 from tinemark.window.panel_plot import PanelPlot, line_pen
-from tinemark.window.theme import color, current_theme, heading_font, small_font
+from tinemark.window.theme import color, current_theme, small_font
 
 NO_LADDER = "No ratios yet.\nSelect a row of a ladder. A ratio needs three onsets in a row."
 NO_RATIO = "Needs three onsets in a row for a ratio"
@@ -205,6 +206,7 @@ class RatioPanel(QWidget):
         self._stack = QStackedLayout(self)
         self._stack.addWidget(self._empty)
         self._stack.addWidget(self._parts)
+        self._faces = FaceKeeper(self)
         self.show_estimates(None)
 
     def _build_words(self) -> QWidget:
@@ -219,7 +221,7 @@ class RatioPanel(QWidget):
             Qt.TextInteractionFlag.TextSelectableByMouse | Qt.TextInteractionFlag.TextSelectableByKeyboard
         )
         self.verdict.setAccessibleName("Class of the cascade")
-        self.verdict.setFont(heading_font())
+        wear(self.verdict, "heading")
         outer.addWidget(self.verdict)
         grid = QGridLayout()
         grid.setHorizontalSpacing(10)
@@ -236,7 +238,7 @@ class RatioPanel(QWidget):
             "Brackets hold the standard uncertainty of the last digits; bars reach to 95 % coverage."
         )
         self.coverage.setProperty("rank", "second")
-        self.coverage.setFont(small_font())
+        wear(self.coverage, "small")
         self.coverage.setWordWrap(True)
         outer.addWidget(self.coverage)
         outer.addStretch(1)
@@ -297,13 +299,6 @@ class RatioPanel(QWidget):
             self.verdict.setToolTip(f"Limit, delta and predictions rest on levels {levels}.")
         else:
             self.verdict.setToolTip("")
-
-    def changeEvent(self, event: QEvent) -> None:
-        """Take fonts anew."""
-        super().changeEvent(event)
-        if event.type() == QEvent.Type.FontChange and hasattr(self, "verdict"):
-            self.verdict.setFont(heading_font())
-            self.coverage.setFont(small_font())
 
 
 def no_ratio_words(estimates: LadderEstimates) -> str:

@@ -13,8 +13,9 @@ from PySide6.QtWidgets import QFrame, QLabel, QPushButton, QScrollArea, QVBoxLay
 
 from tinemark.density.request import SweepRule
 from tinemark.document.session import BUDGETS, TONES, PictureSettings
+from tinemark.window.faces import FaceKeeper, wear
 from tinemark.window.field_editors import CountEdit, QuietCombo
-from tinemark.window.theme import current_theme, heading_font
+from tinemark.window.theme import current_theme
 
 MOST_TRANSIENT = 1_000_000
 MOST_STARTS = 64
@@ -73,6 +74,7 @@ class SettingsPanel(QScrollArea):
         self._page.setSpacing(4)
         self.setWidget(page)
         self._build()
+        self._faces = FaceKeeper(self)
         self.show_settings(self._settings)
 
     def _build(self) -> None:
@@ -112,7 +114,7 @@ class SettingsPanel(QScrollArea):
             self._page.addWidget(rule)
             self._page.addSpacing(4)
         label = QLabel(words)
-        label.setFont(heading_font())
+        wear(label, "heading")
         self._page.addWidget(label)
 
     def _field(self, words: str, editor: QWidget) -> None:

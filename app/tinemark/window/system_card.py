@@ -24,6 +24,7 @@ from PySide6.QtWidgets import (
 )
 
 from tinemark.window.builtin_chooser import BuiltIn, BuiltinChooser, library_builtins
+from tinemark.window.faces import FaceKeeper
 from tinemark.window.system_draft import (
     Trouble,
     check_text,
@@ -86,6 +87,7 @@ class SystemCard(QWidget):
         outer.addWidget(self._rule())
         outer.addWidget(self.verdict)
         outer.addLayout(self._foot)
+        self._faces = FaceKeeper(self)
         take = QShortcut(QKeySequence("Ctrl+Return"), self)
         take.setContext(Qt.ShortcutContext.WidgetWithChildrenShortcut)
         take.activated.connect(self.check_now)

@@ -20,6 +20,7 @@ from PySide6.QtWidgets import (
 )
 
 from tinemark.systems.formula import NAME
+from tinemark.window.faces import wear
 from tinemark.window.field_editors import (
     FieldEdit,
     MenuButton,
@@ -30,7 +31,6 @@ from tinemark.window.field_editors import (
     show_as,
 )
 from tinemark.window.system_draft import Draft, DraftParameter, DraftState, Trouble
-from tinemark.window.theme import heading_font, mono_font
 
 MAX_STATES = 6
 
@@ -175,7 +175,7 @@ class SystemFields(QWidget):
         self._name_row(grid, "states", name, "state", removable)
         formula = self._line(f"next.{name}", f"{name} one step later, formula", digits=12)
         after = field_label(f"next {name} =", formula)
-        after.setFont(mono_font())
+        wear(after, "number")
         grid.addWidget(after, 2, 0)
         grid.addWidget(formula, 2, 1, 1, 4)
         self._error_row(grid, 3, f"next.{name}")
@@ -273,7 +273,7 @@ class SystemFields(QWidget):
         line = QHBoxLayout()
         line.setContentsMargins(0, 10, 0, 0)
         label = QLabel(words)
-        label.setFont(heading_font())
+        wear(label, "heading")
         line.addWidget(label)
         line.addStretch(1)
         if add:

@@ -21,7 +21,8 @@ from PySide6.QtGui import (
 )
 from PySide6.QtWidgets import QPlainTextEdit, QTextEdit, QWidget
 
-from tinemark.window.theme import color, current_theme, mono_font
+from tinemark.window.faces import wear
+from tinemark.window.theme import color, current_theme
 
 _COMMENT = re.compile(r"""^((?:[^"'#]|"(?:\\.|[^"\\])*"|'[^']*')*)(#.*)$""")
 _HEADING = re.compile(r"^\s*\[[^\]]*\]")
@@ -72,7 +73,7 @@ class TomlEdit(QPlainTextEdit):
     def __init__(self, parent: QWidget | None = None) -> None:
         super().__init__(parent)
         self.setAccessibleName("The system as TOML text")
-        self.setFont(mono_font())
+        wear(self, "number")
         self.setLineWrapMode(QPlainTextEdit.LineWrapMode.NoWrap)
         self.setTabChangesFocus(True)
         self._wrong: tuple[int, ...] = ()
@@ -189,8 +190,7 @@ class TomlEdit(QPlainTextEdit):
         super().changeEvent(event)
         if not hasattr(self, "_colours"):
             return
-        if event.type() == QEvent.Type.ApplicationFontChange:
-            self.setFont(mono_font())
+        if event.type() == QEvent.Type.FontChange:
             self._make_room()
         elif event.type() == QEvent.Type.PaletteChange:
             self._colours.redress()
