@@ -382,6 +382,27 @@ def test_editing_makes_missing_sections() -> None:
     assert edited.startswith(text.rstrip())
 
 
+def test_inline_tables_and_dotted_keys_are_read_and_edited() -> None:
+    text = 'title="a"\nkind="map"\nstates.x.start="0.4"\nparameters={r={value="3.2"}}\nnext.x="r*x"\n'
+    assert read_system_text(text).names == ("x", "r")
+    edited = edit_system_text(text, {"parameters.r.value": "3.3", "states.x.start": "0.1"})
+    assert edited == text.replace("3.2", "3.3").replace("0.4", "0.1")
+
+
+@pytest.mark.parametrize(
+    ("text", "key"), [("title = ", "title"), ("= 3", "title"), ("states = 3\n", "states.x.start")]
+)
+def test_what_cannot_be_edited_is_an_error_of_ours(text: str, key: str) -> None:
+    with pytest.raises(SystemFileError):
+        edit_system_text(text, {key: "1"})
+
+
+def test_half_a_character_is_refused_before_it_can_spoil_a_save() -> None:
+    with pytest.raises(SystemFileError, match="broken character"):
+        read_system_text(change("free text", "free \ud83d text"))
+    assert read_system_text(change("free text", "free \U0001f41f text")).notes == "free \U0001f41f text"
+
+
 def test_every_built_in_can_be_edited() -> None:
     text = builtin_text("restitution")
     edited = edit_system_text(text, {"parameters.T.value": "333"})

@@ -5,7 +5,7 @@ from __future__ import annotations
 import difflib
 import re
 import tomllib
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping, MutableMapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -59,6 +59,11 @@ def read_system_bytes(data: bytes, *, file: str = "") -> System:
 
 def read_system_text(text: str, *, file: str = "") -> System:
     """Read a system from TOML text; see `read_system_file`."""
+    if not text.isascii() and any("\ud800" <= mark <= "\udfff" for mark in text):
+        # Half a character, as a broken clipboard may hold; it could be read, but never saved.
+        raise SystemFileError(
+            "holds a broken character", file=file, what_to_do="type the text again instead of pasting it"
+        )
     if not text.strip():
         raise SystemFileError("is empty", file=file, what_to_do='start with title = "…" and kind = "map"')
     try:
@@ -326,10 +331,19 @@ def edit_system_text(text: str, changes: Mapping[str, str | Sequence[str] | None
     changes
         Dotted key -> new text, list of texts, or None to remove the key. Sections are made
         where they are missing.
+
+    Raises
+    ------
+    SystemFileError
+        The text is no TOML, or has a plain value where a section is needed.
     """
     import tomlkit
+    import tomlkit.exceptions
 
-    document = tomlkit.parse(text)
+    try:
+        document = tomlkit.parse(text)
+    except tomlkit.exceptions.TOMLKitError as error:
+        raise SystemFileError("is not TOML", what_to_do="mend the text before changing a field") from error
     for key, value in changes.items():
         *sections, last = key.split(".")
         table: Any = document
@@ -337,6 +351,8 @@ def edit_system_text(text: str, changes: Mapping[str, str | Sequence[str] | None
             if section not in table:
                 table[section] = tomlkit.table()
             table = table[section]
+            if not isinstance(table, MutableMapping):
+                raise SystemFileError("should be a section", key=key, what_to_do=f"write it as [{section}]")
         if value is None:
             table.pop(last, None)
         else:
