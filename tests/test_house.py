@@ -232,3 +232,13 @@ def test_scripts_can_be_read_by_an_old_python(script: str) -> None:
     source = (ROOT / "scripts" / script).read_bytes()
     assert source.isascii()
     ast.parse(source, feature_version=(3, 4))
+
+
+def test_pages_point_at_files_that_are_there() -> None:
+    pointers = [
+        (page, target)
+        for page in tracked()
+        if page.suffix == ".md"
+        for target in re.findall(r"\]\(([^)#:]+)\)", (ROOT / page).read_text(encoding="utf-8"))
+    ]
+    assert [(page, target) for page, target in pointers if not (ROOT / page.parent / target).exists()] == []
