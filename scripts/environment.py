@@ -9,6 +9,8 @@ from __future__ import annotations
 import hashlib
 import os
 import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import NoReturn
 
@@ -63,6 +65,14 @@ def prepare(*requirements: Path) -> None:
     SystemExit
         The environment cannot be made; the message says why and what to do.
     """
+    try:
+        with _alone():
+            _prepare(requirements)
+    except KeyboardInterrupt:
+        sys.exit("\ntinemark: stopped; the next start makes the environment anew")
+
+
+def _prepare(requirements: tuple[Path, ...]) -> None:
     import shutil
     import subprocess
 
@@ -95,6 +105,19 @@ def prepare(*requirements: Path) -> None:
                 "Check the connection to the package index, then start again."
             )
         _stamp(path.stem).write_text(_fingerprint(path), encoding="ascii")
+
+
+@contextmanager
+def _alone() -> Iterator[None]:
+    """Two first starts at once must not tear down each other's half-made environment."""
+    try:
+        import fcntl
+    except ImportError:  # Windows
+        yield
+        return
+    with open(VENV.with_name(".venv.lock"), "w") as lock:
+        fcntl.flock(lock, fcntl.LOCK_EX)
+        yield
 
 
 def _make_venv() -> None:

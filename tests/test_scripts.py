@@ -92,6 +92,17 @@ def test_a_failed_installation_says_so_and_leaves_no_stamp(venv, monkeypatch) ->
     assert not environment.is_current(venv)
 
 
+def test_a_start_that_is_stopped_leaves_no_stamp(venv, monkeypatch) -> None:
+    def stopped() -> None:
+        raise KeyboardInterrupt
+
+    venv.write_text("other==1 --hash=sha256:0\n")
+    monkeypatch.setattr(environment, "_make_venv", stopped)
+    with pytest.raises(SystemExit, match="makes the environment anew"):
+        environment.prepare(venv)
+    assert not environment.is_current(venv)
+
+
 def test_an_unchanged_start_only_becomes_the_program(venv, monkeypatch) -> None:
     became = []
     (environment.VENV / "tinemark-libraries.stamp").touch()
