@@ -33,17 +33,20 @@ def system_of(name: str, values: tuple[tuple[str, str], ...] = ()) -> System:
     return system
 
 
-def own_map(formula: str, *, start: str = "0.1", low: str = "-1", high: str = "1") -> System:
-    """A one-state map of x along r, as a user would type it."""
+def own_map(
+    formula: str, *, start: str = "0.1", low: str | None = "-1", high: str = "1", value: str = "1"
+) -> System:
+    """A one-state map of x along r, as a user would type it; `low` None leaves the range out."""
+    limits = "" if low is None else f'range = ["{low}", "{high}"]'
     return read_system_text(
         f"""
 title = "own map"
 kind = "map"
 [states.x]
 start = "{start}"
-range = ["{low}", "{high}"]
+{limits}
 [parameters.r]
-value = "1"
+value = "{value}"
 [next]
 x = "{formula}"
 [diagram]

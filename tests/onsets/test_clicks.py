@@ -110,6 +110,44 @@ def test_view_without_width() -> None:
         click(system_of("logistic"), "3", "0")
 
 
+@pytest.mark.parametrize(
+    ("unit", "rate"), [("1e9", "1"), ("1e-9", "1"), ("1", "1e-9"), ("1", "1e9"), ("1e12", "1e-12")]
+)
+def test_units_and_missing_ranges(unit: str, rate: str) -> None:
+    """A map without a range for its state, in any units of state and parameter, is clicked like any other."""
+    start, value = (f"{share * float(size):.3e}" for share, size in ((0.3, unit), (3.2, rate)))
+    system = own_map(f"(r/{rate})*x*(1 - x/{unit})", start=start, low=None, value=value)
+    near, width = Fraction("3.46") * Fraction(rate), Fraction("0.3") * Fraction(rate)
+    onset = click(system, near, width).onsets[0]
+    assert (onset.kind, onset.period_before, onset.status) == (Kind.FLIP, 2, Status.PROVED)
+    low, high = (Fraction(end) / Fraction(rate) - 1 for end in (onset.lower, onset.upper))
+    assert low**2 < 6 < high**2
+
+
+def test_state_far_from_zero() -> None:
+    """The logistic map moved to a state of 1e6 keeps its onsets, and their proofs."""
+    system = own_map(
+        "1000000 + r*(x - 1000000)*(1 - (x - 1000000))", start="1000000.4", low="1000000", high="1000001"
+    )
+    onset = click(system, "3.46", "0.3").onsets[0]
+    assert (onset.period_before, onset.status) == (2, Status.PROVED)
+    assert (Fraction(onset.lower) - 1) ** 2 < 6 < (Fraction(onset.upper) - 1) ** 2
+
+
+def test_mirror_image_clicked_is_shown() -> None:
+    """In the odd cubic the same split is on both sides of zero; the one clicked is shown."""
+    system = system_of("cubic")
+    up, down = (click(system, "2.24", "0.2", observed, "2").onsets[0] for observed in ("0.85", "-0.85"))
+    assert up.value == down.value
+    assert float(up.states[0][1]) == pytest.approx(-float(down.states[0][1]))
+    assert float(up.states[0][1]) == pytest.approx(0.8507, abs=1e-3)
+
+
+def test_view_without_height() -> None:
+    """A height of zero counts as none."""
+    assert click(system_of("logistic"), "3.02", "0.2", "0.66", "0").onsets[0].period_before == 1
+
+
 def test_subcritical_flip_by_a_click() -> None:
     """A flip that jumps is found from its stable side and called subcritical (1/4 - 1 by hand)."""
     onset = click(own_map("-r*x + x**2/2 - x**3"), "1.004", "0.5").onsets[0]

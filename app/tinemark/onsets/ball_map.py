@@ -30,6 +30,8 @@ class BallMap:
         self.bits = bits
         self.loops = ball_loops(one)
         self.observe = ball_function((one.exact_observe,), (one.state, one.parameter))
+        self.scale = float_map(one).scale
+        self.fine = 2.0 ** (-0.8 * bits)
         self.coincident = 2.0 ** (-bits / 3)
 
     def number(self, value: Fraction | float) -> Any:
@@ -114,7 +116,7 @@ class BallMap:
                     now = self.loops.orbit(now, r, 1)
                     gap = abs(float(now - x))
                     for place, tolerance in enumerate(RETURN_TOLERANCES):
-                        if returns[lane, place] == 0 and gap <= tolerance * depth * self.one.scale:
+                        if returns[lane, place] == 0 and gap <= tolerance * depth * self.scale:
                             returns[lane, place] = n
                     if returns[lane, 0]:
                         break

@@ -26,6 +26,8 @@ class CycleMap(Protocol):
     """What following a branch asks of a map: `FloatMap` and `BallMap` both answer."""
 
     one: OneMap
+    scale: float
+    fine: float
     coincident: float
     slice_steps: int
 
@@ -90,14 +92,15 @@ class Crossing:
 def find_cycle(cycles: CycleMap, x: Any, r: Any, period: int) -> Cycle | None:
     """Newton's method for a cycle at fixed parameter; gives it with its least period."""
     previous = math.inf
-    limit = 1e-13 * cycles.one.scale
+    # A state far from zero has coarser numbers around it than its scale alone would say.
+    limit = cycles.fine * max(cycles.scale, 1e-2 * abs(float(x)))
     for _ in range(40):
         step = cycles.newton(x, r, period, None)
-        if step is None or abs(step.shift_x) > 10 * cycles.one.scale:
+        if step is None or abs(step.shift_x) > 10 * cycles.scale:
             return None
         x = step.x
         size = abs(step.shift_x)
-        if size <= limit or (size >= previous / 2 and size < 1e-9 * cycles.one.scale):
+        if size <= limit or (size >= previous / 2 and size < 1e4 * limit):
             break
         previous = size
     else:
@@ -109,7 +112,7 @@ def find_cycle(cycles: CycleMap, x: Any, r: Any, period: int) -> Cycle | None:
 def least_period(cycles: CycleMap, x: Any, r: Any, period: int) -> int:
     """The smallest divisor of `period` after which the cycle closes, as far as it can be told."""
     points = cycles.points(x, r, period)
-    limit = cycles.coincident * cycles.one.scale
+    limit = cycles.coincident * cycles.scale
     for divisor in range(1, period // 2 + 1):
         if period % divisor == 0 and abs(float(points[divisor] - points[0])) <= limit:
             return divisor
@@ -117,7 +120,7 @@ def least_period(cycles: CycleMap, x: Any, r: Any, period: int) -> int:
 
 
 def cycle_with_multiplier(
-    cycles: CycleMap, x: Any, r: Any, period: int, target: float, *, most: int = 12
+    cycles: CycleMap, x: Any, r: Any, period: int, target: float, *, most: int = 20
 ) -> tuple[Any, Any, CycleStep] | None:
     """Newton's method for a cycle with a given multiplier, from close by."""
     previous = math.inf
@@ -125,12 +128,12 @@ def cycle_with_multiplier(
         step = cycles.newton(x, r, period, target)
         if step is None:
             return None
-        size = math.hypot(step.shift_x / cycles.one.scale, step.shift_r / (abs(float(r)) + 1e-300))
+        size = math.hypot(step.shift_x / cycles.scale, step.shift_r / (abs(float(r)) + 1e-300))
         if count > 1 and size > 4 * previous and size > 1e-9:
             return None
         x, r = step.x, step.r
         miss = abs(step.multiplier - target)
-        if size < 1e-13 or (miss < 1e-6 and size >= previous / 2) or (miss < 1e-9 and count > 1):
+        if size < cycles.fine or (miss < 1e-6 and size >= previous / 2):
             return x, r, step
         previous = size
     return None

@@ -136,6 +136,8 @@ def _message(found: list[tuple[Candidate, Onset]], request: RefineRequest) -> st
     text = f"{describe(onset)}, {float(100 * share):.2g} % of the view's width from the click"
     if len(found) > 1:
         text += f"; a second is as close: {describe(found[1][1])}"
+    if found[0][0].crossing.extent < PIXEL * float(request.width):
+        text += "; it is smaller than a pixel of this view"
     return text
 
 

@@ -133,6 +133,8 @@ class CycleStep:
 class FloatMap:
     """A one-state map in doubles. States and parameters are plain floats."""
 
+    fine = 1e-13
+    """Share of the state's scale to which Newton's method is taken."""
     coincident = 1e-7
     """Share of the state's extent within which two points of a cycle count as one."""
     slice_steps = 400_000
@@ -142,6 +144,7 @@ class FloatMap:
         self.one = one
         self.module = _module(one)
         self.fixed: Floats = np.array([float(value) for _, value in one.fixed] or [0.0])
+        self.scale = self._scale()
 
     def number(self, value: Fraction | float) -> float:
         """A parameter or state value in this map's arithmetic."""
@@ -230,7 +233,7 @@ class FloatMap:
         """
         ends = np.empty(len(xs))
         returns = np.zeros((len(xs), len(RETURN_TOLERANCES)), dtype=np.int64)
-        tolerances = np.array(RETURN_TOLERANCES) * self.one.scale
+        tolerances = np.array(RETURN_TOLERANCES) * self.scale
         self.module.settle(
             np.array(xs, dtype=float),
             np.array(rs, dtype=float),
@@ -262,6 +265,13 @@ class FloatMap:
             left, left_slope = right, right_slope
         return found
 
+    def _scale(self) -> float:
+        """A length typical of the state: its range, or how far an orbit wanders where none is given."""
+        if self.one.extent is not None:
+            return float(self.one.extent[1] - self.one.extent[0])
+        low, high = self._extent(float(self.one.value))
+        return high - low
+
     def _extent(self, r: float) -> tuple[float, float]:
         if self.one.extent is not None:
             low, high = (float(end) for end in self.one.extent)
@@ -269,7 +279,7 @@ class FloatMap:
             points = self.points(float(self.one.start), r, 400)
             points = points[np.isfinite(points) & (abs(points) < 1e100)]
             low, high = (float(points.min()), float(points.max())) if len(points) else (-1.0, 1.0)
-        room = 0.25 * (high - low) or 1.0
+        room = 0.25 * (high - low) or 0.5 * abs(high) or 1.0
         return low - room, high + room
 
 

@@ -278,7 +278,7 @@ def _along_doubled_branch(
         here = r + course.direction * share * extent
         if course.ahead(here, float(course.request.stop)):
             continue
-        nudge = 1e-3 * cycles.one.scale / half
+        nudge = 1e-3 * cycles.scale / half
         starts = [x + nudge, *turning]
         transient = min(2000 * period, 2_000_000)
         ends, returns = yield from settled(cycles, starts, [here] * len(starts), transient, 2 * period)

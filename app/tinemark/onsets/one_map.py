@@ -31,8 +31,10 @@ class OneMap:
         Observed quantity, in all names.
     surfaces
         Where the formula switches between smooth pieces.
-    start, extent
-        Where an orbit starts when nothing better is known, and the range its state lives in.
+    start, value
+        Where an orbit starts when nothing better is known, and at what parameter.
+    extent
+        The range the state lives in, where the system gives one.
     """
 
     state: str
@@ -42,6 +44,7 @@ class OneMap:
     observe: Expr
     surfaces: tuple[Surface, ...]
     start: Fraction
+    value: Fraction
     extent: tuple[Fraction, Fraction] | None
 
     @cached_property
@@ -60,13 +63,6 @@ class OneMap:
         """The switching surfaces and edges of the domain, with the fixed parameters put in."""
         values = dict(self.fixed)
         return tuple(Surface(put_in(surface.expr, values), surface.kind) for surface in self.surfaces)
-
-    @property
-    def scale(self) -> float:
-        """A length typical of the state, for tolerances."""
-        if self.extent is not None:
-            return float(self.extent[1] - self.extent[0])
-        return max(abs(float(self.start)), 1e-3)
 
     @property
     def observes_state(self) -> bool:
@@ -97,6 +93,8 @@ def one_map(system: System, parameter: str) -> OneMap:
         observe=system.observe_expression,
         surfaces=system.surfaces + domain_edges(system.expressions),
         start=state.start.fraction,
+        # Only what is used: a map with a known range is the same one wherever the parameter stands.
+        value=Fraction(0) if extent is not None else system.parameter(parameter).value.fraction,
         extent=extent,
     )
 

@@ -90,7 +90,7 @@ class Search:
 
     def _distance_observed(self, crossing: Crossing) -> tuple[float, int]:
         request = self.request
-        if request.observed is None or request.height is None:
+        if request.observed is None or not request.height:
             return 0.0, 0
         points = self.cycles.points(crossing.x, crossing.r, crossing.period)
         gaps = np.abs(self.cycles.observed_offsets(points, crossing.r, request.observed))
@@ -157,7 +157,7 @@ def starting_points(cycles: CycleMap, r: Any, request: RefineRequest) -> list[An
     found.append(cycles.number(cycles.one.start))
     distinct: list[Any] = []
     for x in found:
-        if all(abs(float(x) - float(other)) > 1e-9 * cycles.one.scale for other in distinct):
+        if all(abs(float(x) - float(other)) > 1e-9 * cycles.scale for other in distinct):
             distinct.append(x)
     return distinct
 
