@@ -179,7 +179,7 @@ def test_copying_gives_columns(window):
         assert "flip" in QApplication.clipboard().text()
 
 
-# --- menus ---------------------------------------------------------------------------------------------------
+# --- menus ----------------------------------------------------------------------------------------------
 
 
 def test_everything_has_a_key_and_a_menu_entry(window):
@@ -221,7 +221,7 @@ def test_entries_are_grey_where_nothing_can_be_done(window):
     assert all(window.actions_by_name[name].isEnabled() for name in ("undo", "copy_tsv", "remove", "refine"))
 
 
-# --- files ---------------------------------------------------------------------------------------------------
+# --- files ----------------------------------------------------------------------------------------------
 
 
 def test_saving_asks_for_a_name_once(window, tmp_path, monkeypatch):
@@ -274,7 +274,7 @@ def test_recent_files(window, tmp_path):
     menu.deleteLater()
 
 
-# --- memory --------------------------------------------------------------------------------------------------
+# --- memory ---------------------------------------------------------------------------------------------
 
 
 def test_the_layout_is_remembered_and_the_users_own_is_not_touched(qtbot, tmp_path):

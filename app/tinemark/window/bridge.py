@@ -101,7 +101,7 @@ class Bridge(QObject):
                     return
             number, field = waiting
             try:
-                pixels = toned(field.counts, tones)
+                pixels = toned(field, tones)
             except Exception as error:  # noqa: BLE001 - the thread must go on, and the window says what it was
                 with self._lock:
                     if not self._closed:

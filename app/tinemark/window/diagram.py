@@ -32,6 +32,7 @@ from tinemark.window.axis import paint_bottom_axis, paint_left_axis
 from tinemark.window.callout import Callout, Choice
 from tinemark.window.diagram_layout import DiagramLayout, lay_out
 from tinemark.window.gestures import Gestures
+from tinemark.window.lyapunov_strip import LyapunovStrip
 from tinemark.window.marks import Mark, mark_at, paint_marks
 from tinemark.window.theme import color, current_theme, mono_font
 from tinemark.window.view_navigation import place, reading, unit_x, unit_y
@@ -85,6 +86,7 @@ class Diagram(QWidget):
         self.image: QImage | None = None
         self._pixels: object = None
         self.image_view = UNIT_VIEW
+        self._strip = LyapunovStrip()
         self.marks: tuple[Mark, ...] = ()
         self.selected = ""
         self.hovered = ""
@@ -122,11 +124,13 @@ class Diagram(QWidget):
         self.image = image
         self._pixels = pixels
         self.field, self.image_view = field, view
+        self._strip.show(field.lyapunov)
         self.update()
 
     def forget_picture(self) -> None:
         """Drop a picture that belongs to another system."""
         self.image, self.field = None, None
+        self._strip.show(None)
         self.update()
 
     def show_labels(self, labels: Labels) -> None:
@@ -315,7 +319,10 @@ class Diagram(QWidget):
         if field is not None:
             paint.paint_escaped(painter, theme, parts.plot, field.escaped, left, width)
             paint.paint_periods(painter, theme, parts.periods, field.period, left, width)
-        paint.paint_strip(painter, theme, parts.strip, field.lyapunov if field else None, left, width)
+        self._strip.paint(painter, theme, parts.strip, left, width, empty=bool(self.notice))
+        if self.image is None and not self.notice:
+            painter.setPen(color(theme.muted))
+            painter.drawText(parts.plot, Qt.AlignmentFlag.AlignCenter, "Drawing\N{HORIZONTAL ELLIPSIS}")
 
     def _paint_over(self, painter: QPainter) -> None:
         theme, parts, view, labels = current_theme(), self.parts, self.view, self.labels
@@ -332,7 +339,6 @@ class Diagram(QWidget):
         paint_bottom_axis(
             painter, theme, parts.axis, view.left, view.right, labels.parameter, labels.parameter_unit
         )
-        self._paint_strip_name(painter)
         if self.probe is not None and view.left <= self.probe <= view.right:
             x = parts.plot.left() + unit_x(view, self.probe) * parts.plot.width()
             painter.setPen(QPen(color(theme.text, 0.8), 1.0, Qt.PenStyle.DashDotLine))
@@ -358,18 +364,6 @@ class Diagram(QWidget):
             painter.setPen(QPen(color(theme.accent), 1.5))
             painter.setBrush(Qt.BrushStyle.NoBrush)
             painter.drawRect(parts.plot.adjusted(-1, -1, 1, 1))
-
-    def _paint_strip_name(self, painter: QPainter) -> None:
-        theme, strip = current_theme(), self.parts.strip
-        metrics = QFontMetricsF(painter.font())
-        words = "Lyapunov exponent"
-        tag = QRectF(
-            strip.left() + 4, strip.bottom() - metrics.height() - 3, metrics.horizontalAdvance(words) + 6, 0
-        )
-        tag.setHeight(metrics.height())
-        painter.fillRect(tag, color(theme.plot, 0.8))
-        painter.setPen(color(theme.muted))
-        painter.drawText(tag, Qt.AlignmentFlag.AlignCenter, words)
 
     def _paint_notice(self, painter: QPainter) -> None:
         theme, plot = current_theme(), self.parts.plot

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterator
 
 import numpy as np
 from numpy.typing import NDArray
 from PySide6.QtCore import QPointF, QRectF, Qt
-from PySide6.QtGui import QBrush, QFontMetricsF, QImage, QPainter, QPainterPath, QPen, QPolygonF
+from PySide6.QtGui import QBrush, QFontMetricsF, QImage, QPainter, QPainterPath, QPen
 
 from tinemark.density.request import View
 from tinemark.window.theme import Theme, color
@@ -122,100 +121,6 @@ def paint_escaped(
             painter.setPen(color(theme.muted))
             painter.drawText(sign, Qt.AlignmentFlag.AlignCenter, word)
     painter.restore()
-
-
-def strip_range(exponents: NDArray[np.float64]) -> tuple[float, float]:
-    """Bottom and top of the Lyapunov strip: round numbers that hold what matters.
-
-    Exponents fall to minus infinity at superstable points, so the bottom follows the bulk and the dips are
-    cut.
-    """
-    known = exponents[np.isfinite(exponents)]
-    if len(known) == 0:
-        return -1.0, 0.5
-    top = round_up(max(float(known.max()), 0.05))
-    low = float(np.quantile(known, 0.08))
-    bottom = -round_up(max(-low, top, 0.05)) if low < 0 else -top
-    return bottom, top
-
-
-def round_up(value: float) -> float:
-    """The next 1, 2 or 5 times a power of ten."""
-    power = 10.0 ** math.floor(math.log10(value))
-    return next(step * power for step in (1.0, 2.0, 5.0, 10.0) if step * power >= value * (1 - 1e-9))
-
-
-def paint_strip(
-    painter: QPainter,
-    theme: Theme,
-    strip: QRectF,
-    exponents: NDArray[np.float64] | None,
-    left: float,
-    width: float,
-) -> None:
-    """The Lyapunov exponent over the parameter: filled below zero (settling), hatched above (chaos)."""
-    metrics = QFontMetricsF(painter.font())
-    painter.fillRect(strip, color(theme.plot))
-    bottom, top = strip_range(exponents) if exponents is not None else (-1.0, 0.5)
-    scale = strip.height() / (top - bottom)
-    zero = strip.top() + top * scale
-    if exponents is not None and len(exponents) > 1:
-        painter.save()
-        painter.setClipRect(strip)
-        painter.setRenderHint(QPainter.RenderHint.Antialiasing)
-        step = width / len(exponents)
-        known = np.isfinite(exponents) | np.isneginf(exponents)
-        y = strip.top() + (top - np.clip(np.nan_to_num(exponents, nan=0.0), bottom * 1.2, top)) * scale
-        x = left + (np.arange(len(exponents)) + 0.5) * step
-        for start, stop, value in runs(known):
-            if value and stop - start > 1:
-                _paint_curve(painter, theme, x[start:stop], y[start:stop], zero, strip)
-        painter.restore()
-    painter.setPen(QPen(color(theme.edge), 1.0))
-    painter.drawLine(QPointF(strip.left(), zero), QPointF(strip.right(), zero))
-    painter.setPen(color(theme.muted))
-    box = QRectF(0, 0, strip.left() - 8, metrics.height())
-    right = Qt.AlignmentFlag.AlignRight | Qt.AlignmentFlag.AlignVCenter
-    box.moveCenter(QPointF(box.width() / 2, zero))
-    painter.drawText(box, right, "0")
-    if exponents is not None:
-        for value, centre in (
-            (top, strip.top() + metrics.height() / 2 - 3),
-            (bottom, strip.bottom() - metrics.height() / 2 + 2),
-        ):
-            if abs(centre - zero) > metrics.height() * 0.9:
-                box.moveCenter(QPointF(box.width() / 2, centre))
-                painter.drawText(box, right, f"{value:+g}".replace("-", "\N{MINUS SIGN}"))
-
-
-def _paint_curve(
-    painter: QPainter,
-    theme: Theme,
-    x: NDArray[np.float64],
-    y: NDArray[np.float64],
-    zero: float,
-    strip: QRectF,
-) -> None:
-    points = QPolygonF([QPointF(a, b) for a, b in zip(x.tolist(), y.tolist(), strict=True)])
-    area = QPainterPath()
-    area.addPolygon(points)
-    area.lineTo(float(x[-1]), zero)
-    area.lineTo(float(x[0]), zero)
-    area.closeSubpath()
-    painter.save()
-    painter.setClipRect(
-        QRectF(strip.left(), zero, strip.width(), strip.bottom() - zero), Qt.ClipOperation.IntersectClip
-    )
-    painter.fillPath(area, color(theme.cool, 0.22))
-    painter.restore()
-    painter.save()
-    painter.setClipRect(
-        QRectF(strip.left(), strip.top(), strip.width(), zero - strip.top()), Qt.ClipOperation.IntersectClip
-    )
-    painter.fillPath(area, QBrush(color(theme.text, 0.75), Qt.BrushStyle.BDiagPattern))
-    painter.restore()
-    painter.setPen(QPen(color(theme.text), 1.1))
-    painter.drawPolyline(points)
 
 
 def paint_reading_cross(painter: QPainter, theme: Theme, plot: QRectF, point: QPointF, words: str) -> None:

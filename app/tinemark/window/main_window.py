@@ -36,7 +36,7 @@ from tinemark.window.session_keeper import SessionKeeper
 from tinemark.window.settings_panel import SettingsPanel
 from tinemark.window.status_line import StatusLine
 from tinemark.window.system_card import SystemCard
-from tinemark.window.theme import THEMES, apply_theme, current_theme, system_theme
+from tinemark.window.theme import THEMES, Theme, apply_theme, current_theme, system_theme
 from tinemark.window.workers import Workers
 
 FIRST_SIZE = (1280, 800)
@@ -58,6 +58,8 @@ class MainWindow(QMainWindow):
         super().__init__()
         self.keeper = keeper
         self.memory = memory
+        # Dressed before anything is made: a sheet that comes later goes through every widget once more.
+        _dress(memory.theme)
         self.bridge = Bridge(self)
         self.diagram = Diagram()
         self.head = HeadLine()
@@ -282,11 +284,7 @@ class MainWindow(QMainWindow):
 
     def wear_theme(self) -> None:
         """Dress in the chosen theme."""
-        theme = THEMES.get(self.memory.theme) or system_theme()
-        app = QApplication.instance()
-        if isinstance(app, QApplication) and (current_theme() != theme or not app.styleSheet()):
-            apply_theme(app, theme)
-        self.head.wear(theme)
+        self.head.wear(_dress(self.memory.theme))
         self._ask_picture()
         self.refresh_actions()
 
@@ -351,3 +349,12 @@ class MainWindow(QMainWindow):
     def open_path(self, path: Path) -> None:
         """Open a file named at the start."""
         self.files.open(path)
+
+
+def _dress(choice: str) -> Theme:
+    """Apply the theme of a choice ("system" follows the desktop), where it is not worn already."""
+    theme = THEMES.get(choice) or system_theme()
+    app = QApplication.instance()
+    if isinstance(app, QApplication) and (current_theme() != theme or not app.styleSheet()):
+        apply_theme(app, theme)
+    return theme

@@ -111,7 +111,9 @@ class OnsetJobs(QObject):
         self.ask(Job(request, "", near, observed))
 
     def refine_row(self, system: System, row: Row, view: View) -> None:
-        """A row to be worked out: searched for along its parameter, within the view and its own uncertainty."""
+        """A row to be worked out: searched for along its parameter, within the view and its own
+        uncertainty.
+        """
         near = row.onset.value_fraction
         reach = max(4 * row.onset.half_width, abs(near) / 10**6)
         width = max(view.width, reach) if row.onset.parameter == self._diagram.labels.parameter else reach

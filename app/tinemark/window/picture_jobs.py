@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Protocol
 
-from PySide6.QtCore import QObject, QTimer
+from PySide6.QtCore import QElapsedTimer, QObject, QTimer
 
 from tinemark.density.request import PictureRequest
 from tinemark.density.sampling import columns_distinct
@@ -21,6 +21,7 @@ TOO_DEEP = "Columns are closer than double precision can tell; a click still ref
 
 
 KEPT = 8
+HOLD_MS = 80
 
 
 class DeskLike(Protocol):
@@ -44,18 +45,19 @@ class PictureJobs(QObject):
         self._wanted: tuple[PictureRequest, int] | None = None
         self._asked: dict[int, PictureRequest] = {}
         self._newest_shown = 0
+        self._in_flight = 0
+        self._since = QElapsedTimer()
         self._shown_system = ""
         self._tones: Tones | None = None
         # Everything that happens in one turn of the event loop asks for one picture.
         self._soon = QTimer(self)
         self._soon.setSingleShot(True)
-        self._soon.setInterval(0)
         self._soon.timeout.connect(self._ask)
 
     def attach(self, desk: DeskLike) -> None:
         """The drawing desk is there."""
         self.desk = desk
-        self._soon.start()
+        self._soon.start(0)
 
     def show(self, session: Session, system: System) -> None:
         """Have the session's picture drawn, if it is another one than is being drawn."""
@@ -80,11 +82,13 @@ class PictureJobs(QObject):
         wanted = (request, BUDGETS[picture.budget])
         if wanted != self._wanted:
             self._wanted = wanted
-            self._soon.start()
+            self._soon.start(0)
 
     def _set_tones(self, session: Session) -> None:
         theme = current_theme()
-        tones = Tones(session.picture.tone, session.picture.palette or theme.picture, theme.plot, theme.dark)
+        thickness = max(1, round(self._diagram.devicePixelRatioF()))
+        palette = session.picture.palette or theme.picture
+        tones = Tones(session.picture.tone, palette, theme.plot, theme.dark, thickness)
         if tones == self._tones:
             return
         self._tones = tones
@@ -95,15 +99,22 @@ class PictureJobs(QObject):
     def _ask(self) -> None:
         if self.desk is None or self._wanted is None:
             return
+        if self._in_flight and self._since.elapsed() < HOLD_MS:
+            # Let the picture under way show itself first, or a moving hand would never see one.
+            self._soon.start(HOLD_MS - self._since.elapsed())
+            return
         request, budget = self._wanted
         if not columns_distinct(request):
             self.desk.cancel()
             self._asked.clear()
+            self._in_flight = 0
             self._diagram.show_notice(TOO_DEEP)
             self._status.show_steps(0)
             return
         self._diagram.show_notice("")
         number = self.desk.request(request, budget)
+        self._in_flight = number
+        self._since.start()
         self._asked[number] = request
         for old in sorted(self._asked)[:-KEPT]:
             del self._asked[old]
@@ -115,12 +126,17 @@ class PictureJobs(QObject):
         if request is None or painted.number < self._newest_shown:
             return
         self._newest_shown = painted.number
+        if painted.number == self._in_flight:
+            self._in_flight = 0
+            if self._soon.isActive():
+                self._soon.start(0)
         self._diagram.show_picture(painted.image, painted.pixels, painted.field, request.view)
         self._status.show_steps(painted.field.steps)
 
     def hear(self, event: object) -> None:
         """The desk says that a picture is done or cannot be drawn; other events are not meant for us."""
         if isinstance(event, PictureFailed) and event.id in self._asked:
+            self._in_flight = 0
             self._diagram.show_notice(f"No picture: {event.error}.")
             self._status.show_words(f"No picture: {event.error}.", "warning")
 

@@ -8,6 +8,8 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+from tinemark.density.field import Field
+
 
 @dataclass(frozen=True)
 class Tones:
@@ -19,13 +21,28 @@ class Tones:
     palette: str
     ground: str
     dark: bool
+    thickness: int = 1
 
 
-def toned(counts: NDArray[np.uint32], tones: Tones) -> NDArray[np.uint32]:
-    """Pixels 0xffRRGGBB, shape (rows, columns), row 0 at the top, in memory order."""
+def toned(field: Field, tones: Tones) -> NDArray[np.uint32]:
+    """Pixels 0xffRRGGBB, shape (rows, columns), row 0 at the top, in memory order.
+
+    On a screen with fine pixels a branch one cell high would fade away. Where the orbit is periodic,
+    and only there, each cell is drawn `thickness` pixels high.
+    """
     from tinemark.density.tone import tone_map
 
-    indices = tone_map(counts[::-1], tones.tone)
+    indices = tone_map(field.counts[::-1], tones.tone)
+    if tones.thickness > 1:
+        periodic = np.flatnonzero(field.period > 0)
+        lines = indices[:, periodic]
+        thick = lines.copy()
+        for step in range(1, tones.thickness):
+            # Down and up in turn, so that the branch stays where it is.
+            by = (step + 1) // 2 * (1 if step % 2 else -1)
+            target, source = (thick[by:], lines[:-by]) if by > 0 else (thick[:by], lines[-by:])
+            np.maximum(target, source, out=target)
+        indices[:, periodic] = thick
     return np.ascontiguousarray(table(tones)[indices])
 
 

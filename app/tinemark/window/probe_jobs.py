@@ -32,6 +32,7 @@ class ProbeJobs(QObject):
         self._panel, self._diagram, self._panels = panel, diagram, panels
         self.desk: ProbeDeskLike | None = None
         self._wanted: ProbeRequest | None = None
+        self._shown: ProbeRequest | None = None
         self._number = 0
 
     def attach(self, desk: ProbeDeskLike) -> None:
@@ -67,10 +68,15 @@ class ProbeJobs(QObject):
         if self.desk is not None and self._wanted is not None:
             self._number = self.desk.request(self._wanted)
 
+    @property
+    def is_up_to_date(self) -> bool:
+        """Whether the orbit that is wanted is shown."""
+        return self._wanted is None or self._shown == self._wanted
+
     def hear(self, event: object) -> None:
         """An answer of the probe's desk; others are not meant for us."""
         if isinstance(event, ProbeReady) and event.id == self._number and self._wanted is not None:
-            request = event.request
+            request = self._shown = event.request
             states = request.system.states
             self._panel.show_orbit(
                 event.orbit,

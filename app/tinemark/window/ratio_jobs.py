@@ -39,6 +39,11 @@ class RatioJobs(QObject):
         if missing:
             self._bridge.call("ratios", lambda: _estimated(ledger, missing), self._take, self._fail)
 
+    @property
+    def is_up_to_date(self) -> bool:
+        """Whether the estimates of every ladder are there."""
+        return all(ladder_rows(self._ledger, name) in self._known for name in ladder_ids(self._ledger))
+
     def select(self, row: str) -> None:
         """Show the ratios of the ladder that a row belongs to."""
         self._selected = row
