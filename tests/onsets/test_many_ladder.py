@@ -67,6 +67,18 @@ def test_conservative_seven_levels() -> None:
     assert scaling(points_of(result.levels)).verdict.name == "conservative"
 
 
+def test_a_nearly_conservative_ladder_gives_no_early_verdict() -> None:
+    """At b = -0.9 the ratios begin at 8.21 and 8.32 and pass to 4.669 only later: four levels tell nothing."""
+    result = ladder("henon", "a", "2.6", "3.95", 10, (("b", "-0.9"),))
+    assert Fraction(result.levels[0].onset.lower) <= 3 * Fraction("1.9") ** 2 / 4
+    points = points_of(result.levels)
+    early = scaling(points[:4])
+    assert early.verdict.name == "undecided"
+    assert early.levels[0].ratio is not None
+    assert early.levels[0].ratio.value.startswith("8.21")
+    assert scaling(points).verdict.name == "quadratic maximum"
+
+
 def test_two_patches_follow_the_logistic_ladder() -> None:
     """In step, the patches split at the logistic onsets whatever the exchange (Fujisaka and Yamada 1983)."""
     for exchange in ("0.1", "0.25"):

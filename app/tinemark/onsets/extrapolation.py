@@ -171,8 +171,9 @@ def _delta_of_two_ratios(run: Sequence[LadderPoint], values: Sequence[Decimal]) 
 
     ratios = _ratios(values)
     spread = SAFETY_TWO_RATIOS * abs(ratios[-1] - ratios[-2])
-    # Two ratios that happen to agree say less than that: a smooth map's second ratio is off by a per cent.
-    truncation = max(spread, ratios[-1] / 50)
+    # Two ratios that happen to agree say less than that: the next may still move by a tenth, as where a map
+    # that nearly preserves areas passes from one class to another.
+    truncation = max(spread, ratios[-1] / 10)
     return _Choice("two ratios", value_of(values), truncation, _noise(run, values, value_of))
 
 
@@ -181,7 +182,7 @@ def _limit_of_four_levels(run: Sequence[LadderPoint], values: Sequence[Decimal])
     modelled = _modelled_limit(values)
     aitken = columns[0] if columns else [modelled]
     truncation = SAFETY_FOUR_LEVELS * abs(modelled - aitken[-1])
-    truncation = max(truncation, abs(aitken[-1] - aitken[0]) / 20, abs(_rest(values)) / 200)
+    truncation = max(truncation, abs(aitken[-1] - aitken[0]) / 20, abs(_rest(values)) / 5)
     return _Choice("ratio model", modelled, truncation, _noise(run, values, _modelled_limit))
 
 

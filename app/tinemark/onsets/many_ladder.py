@@ -215,23 +215,28 @@ def _take_up(
     shape = np.concatenate([vectors, -vectors])
     along = shape / np.sum(shape**2)
     amplitude = 0.02 if origin.period == 1 else 0.02 / origin.period**0.5
+    best: _Doubled | None = None
     for _ in range(40):
         yield Step(f"taking up the cycle of period {2 * origin.period}")
         guess = Cycle(twice + amplitude * shape, origin.r)
         target = float(np.sum(along * guess.points))
         cycle = newton(float_map, guess, scales * max(amplitude, 1e-2), along=along, target=target)
         if cycle is None:
+            if best is not None:
+                return best  # nearer to the flip than wished for, and good enough to go on from
             amplitude /= 3
             continue
-        apart = abs(cycle.r - origin.r)
-        share = apart / gap
+        share = abs(cycle.r - origin.r) / gap
         here = _doubled(float_map, cycle)
-        if here is not None and here.flip_test > 0 and FIRST_SHARE / 8 < share < 8 * FIRST_SHARE:
+        fits = here is not None and here.flip_test > 0 and share < 8 * FIRST_SHARE
+        if fits and share > FIRST_SHARE / 8:
             return here
+        if fits:
+            best = here
         if amplitude < 1e-9:
-            return here if here is not None and here.flip_test > 0 else None
+            break
         amplitude *= float(np.clip(np.sqrt(FIRST_SHARE / share) if share > 0 else 4.0, 0.2, 5.0))
-    return None
+    return best
 
 
 def _doubled(float_map: FloatManyMap, cycle: Cycle) -> _Doubled | None:
