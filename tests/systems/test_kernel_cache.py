@@ -54,14 +54,37 @@ print(json.dumps({{
 """
 
 
-def run(name: str, cache: Path, **environment: str) -> dict[str, Any]:
+PICTURE = """
+import json
+from fractions import Fraction
+from numba.core import event
+from tinemark.density.renderer import StopFlag, progressive
+from tinemark.density.request import PictureRequest, View
+from tinemark.systems.library import builtin_system
+
+recorder = event.RecordingListener()
+event.register("numba:compile", recorder)
+system = builtin_system("{name}")
+swept = system.parameter(system.diagram_parameter)
+across, up = swept.range, system.states[0].range
+view = View(across[0].fraction, across[1].fraction, up[0].fraction, up[1].fraction)
+request = PictureRequest(system, swept.name, system.observe, view, 40, 30, transient_steps=64)
+field = list(progressive(request, 256, StopFlag(), 1))[-1]
+print(json.dumps({{
+    "compiled": [str(seen.data["dispatcher"]) for _, seen in recorder.buffer if seen.is_start],
+    "result": field.counts.tolist(),
+}}))
+"""
+
+
+def run(name: str, cache: Path, child: str = CHILD, **environment: str) -> dict[str, Any]:
     """Compile and call the step of a built-in system in a process of its own."""
     finished = subprocess.run(
-        [sys.executable, "-c", CHILD.format(name=name)],
+        [sys.executable, "-c", child.format(name=name)],
         capture_output=True,
         text=True,
         check=True,
-        env={**os.environ, "TINEMARK_CACHE_DIR": str(cache), **environment},
+        env={**os.environ, "TINEMARK_CACHE_DIR": str(cache), "NUMBA_DISABLE_JIT": "0", **environment},
     )
     answer: dict[str, Any] = json.loads(finished.stdout)
     return answer
@@ -88,6 +111,16 @@ def test_a_second_process_compiles_nothing(tmp_path: Path) -> None:
     assert second["result"] == first["result"]
     assert second["file"] == first["file"]
     assert Path(first["file"]).is_relative_to(tmp_path)
+
+
+def test_a_second_picture_of_a_system_compiles_nothing(tmp_path: Path) -> None:
+    first = run("ricker", tmp_path, PICTURE)
+    assert first["compiled"]
+    files = compiled_files(tmp_path)
+    second = run("ricker", tmp_path, PICTURE, PYTHONHASHSEED="9")
+    assert second["compiled"] == []
+    assert compiled_files(tmp_path) == files
+    assert second["result"] == first["result"]
 
 
 def test_every_function_and_condition_compiles_to_what_it_means() -> None:
