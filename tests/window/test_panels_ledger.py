@@ -147,6 +147,9 @@ def test_ladders_of_other_systems_and_settings_say_so():
     assert words[0] == "Ladder from period 1, parameter r"
     assert words[1].endswith("parameter r at h = 0.05")
     assert "another system" in words[2]
+    words = [line.text for line in entries_of(found, (), "z" * 64) if isinstance(line, HeadingEntry)]
+    assert words[0] == "Ladder from period 1, parameter r"
+    assert all("another system" in text for text in words[1:])
 
 
 def test_cells_of_a_proved_onset():

@@ -135,6 +135,23 @@ def test_escape_is_said(probe):
     assert "escapes after" in probe.words.text()
 
 
+@pytest.mark.parametrize(
+    ("name", "value", "words"),
+    [
+        ("logistic", "2.8", "Settled to a steady state."),
+        ("logistic", "3.5", "Settled to period 4."),
+        ("logistic", "3.83", "Settled to period 3."),
+        ("logistic", "3.9", "Not settled to any period up to 128 in 2000 steps."),
+        # Algebraically slow at the very onset: it must not be called settled.
+        ("logistic", "3", "Not settled to any period up to 128 in 2000 steps."),
+        ("henon", "0.5", "Settled to period 2."),
+    ],
+)
+def test_what_is_seen_of_the_period(probe, name, value, words):
+    probe.show_orbit(orbit(name, value, 2000), parameter="r", value=value, observe="x", state="x")
+    assert probe.words.text() == words
+
+
 def test_steady_orbit_is_drawn_level(probe):
     probe.show_orbit(orbit("logistic", "2.8"), parameter="r", value="2.8", observe="x", state="x")
     (low, high) = probe.series.plotItem.vb.viewRange()[1]

@@ -104,7 +104,7 @@ def entries_of(
 ) -> tuple[Entry, ...]:
     """Lines of the table: ladders as they were begun, levels rising, single onsets last.
 
-    `current_key` is the key of the system on the card; ladders of other systems say so.
+    `current_key` is the key of the system on the card: its ladders come first, others say so.
     """
     by_ladder = {estimate.ladder: estimate for estimate in estimates}
     ladders: dict[str, list[Row]] = {}
@@ -114,7 +114,8 @@ def entries_of(
         settings.setdefault(row.system_key, set()).add(row.fixed)
     loose = ladders.pop("", [])
     lines: list[Entry] = []
-    for ladder, rows in ladders.items():
+    # Sorting is stable: within each of the two groups ladders stay as they were begun.
+    for ladder, rows in sorted(ladders.items(), key=lambda item: item[1][0].system_key != current_key):
         rows.sort(key=lambda row: row.level or 0)
         # Other parameters are named where they tell this ladder from another.
         told = len(settings[rows[0].system_key]) > 1

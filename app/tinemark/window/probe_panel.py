@@ -29,6 +29,7 @@ from tinemark.work.probe import ProbeOrbit
 Floats = npt.NDArray[np.float64]
 SETTLED_STEPS = 60
 EARLY_STEPS = 60
+MOST_REPEAT = 128
 EMPTY = (
     "No probe yet.\n"
     "Click in the diagram with the probe tool, or type a parameter value above and press Enter."
@@ -161,9 +162,11 @@ class ProbePanel(QWidget):
         self.returns.set_labels(across=f"{across} at step n", up=f"{across} at step n + 1")
         self._draw_series(observed, part)
         self._draw_returns(stepped[part.start : part.stop], orbit.map_curve if one_state else None)
-        said = [self._words] if self._words else []
         if escaped:
-            said.append(f"The orbit escapes after {len(observed)} steps.")
+            seen = f"The orbit escapes after {len(observed)} steps."
+        else:
+            seen = repeat_words(np.asarray(orbit.states, dtype=np.float64))
+        said = [words for words in (self._words, seen if escaped or not self._words else "") if words]
         self.words.setText(" ".join(said))
 
     def _draw_series(self, observed: Floats, part: range) -> None:
@@ -257,6 +260,29 @@ def finite_part(values: Floats) -> tuple[Floats, bool]:
     """The values before the first that is no finite number, and whether there was one."""
     bad = np.flatnonzero(~np.isfinite(values))
     return (values[: bad[0]], True) if len(bad) else (values, False)
+
+
+def repeat_words(states: Floats) -> str:
+    """What is seen of an orbit's period, as a sentence.
+
+    The last steps are compared with those p steps earlier, for p up to `MOST_REPEAT`; agreement to a part in
+    10**9 of the orbit's size counts. It is what the eye would say, not a proof: near an onset an orbit
+    takes long to settle.
+
+    Parameters
+    ----------
+    states
+        Shape (steps, number of states), finite.
+    """
+    steps = len(states)
+    for period in range(1, min(MOST_REPEAT, steps // 4) + 1):
+        # Over 64 steps at least: an orbit that creeps past a fold looks steady for a while.
+        span = min(max(2 * period, 64), steps - period)
+        tail = states[-span:]
+        near = 1e-9 * max(float(np.abs(tail).max()), 1e-300)
+        if float(np.abs(tail - states[-span - period : -period]).max()) <= near:
+            return "Settled to a steady state." if period == 1 else f"Settled to period {period}."
+    return f"Not settled to any period up to {min(MOST_REPEAT, steps // 4)} in {steps} steps."
 
 
 def steps_shown(steps: int, part: str) -> range:
