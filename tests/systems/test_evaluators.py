@@ -387,6 +387,15 @@ def test_a_division_by_a_constant_zero_is_no_crash() -> None:
         assert not ball_at(read_formula(text, NAMES), [Fraction(1, 2)] * 3, 80).is_finite()
 
 
+def test_constants_beyond_doubles_overflow_where_they_run() -> None:
+    for constant, expected in (("1e270", math.inf), ("1e-270", 0.0)):
+        square = Call("mul", (Num(Fraction(constant)), Num(Fraction(constant))))
+        assert scalar_function([square], NAMES)(0.0, 0.0, 0.0)[0] == expected
+        assert holds(ball_at(square, [Fraction(1)] * 3, 80), Fraction(constant) ** 2)
+        slope = derivative(read_formula(f"{constant}*x*{constant}", NAMES), "x")
+        assert scalar_function([slope], NAMES)(1.0, 0.0, 0.0)[0] == expected
+
+
 def test_precision_in_force_is_the_one_that_counts() -> None:
     expr = read_formula("x*pi + 1/3", NAMES)
     radii = [float(ball_at(expr, [Fraction(1, 7)] * 3, bits).rad()) for bits in (30, 60, 120, 240, 60, 30)]

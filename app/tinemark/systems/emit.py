@@ -6,7 +6,8 @@ the names of `systems/lane_math.py`, and "ball" for python-flint, whose comparis
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+import operator
+from collections.abc import Callable, Mapping, Sequence
 from fractions import Fraction
 from typing import Literal
 
@@ -16,6 +17,14 @@ from tinemark.systems.expression import ZERO, Call, Cond, Expr, Name, Num, Pi, w
 Dialect = Literal["native", "ball"]
 
 _INFIX = {"add": "+", "sub": "-", "mul": "*", "div": "/"}
+_FOLD: dict[str, Callable[[Fraction, Fraction], Fraction]] = {
+    "add": operator.add,
+    "sub": operator.sub,
+    "mul": operator.mul,
+    "div": operator.truediv,
+}
+_LONGEST_CONSTANT = 1000
+"""Bits of a constant's numerator and denominator; doubles end at 1024."""
 _LONGEST_INLINE = 160
 """Characters of a nested operand; beyond, it gets a variable (compilers limit nesting)."""
 _Key = tuple[object, ...]
@@ -106,18 +115,14 @@ class _Printer:
         if fn not in (*_INFIX, "neg") or any(key[0] != "num" for key in keys):
             return None
         first, *others = (Fraction(str(key[1])) for key in keys)
-        match fn:
-            case "add":
-                return first + others[0]
-            case "sub":
-                return first - others[0]
-            case "mul":
-                return first * others[0]
-            case "neg":
-                return -first
-        if others[0] == 0:
+        if fn == "neg":
+            return -first
+        if fn == "div" and others[0] == 0:
             raise FormulaError("division by zero")
-        return first / others[0]
+        value = _FOLD[fn](first, others[0])
+        # What no double holds is left to run, and overflows there as doubles do.
+        small = max(value.numerator.bit_length(), value.denominator.bit_length()) < _LONGEST_CONSTANT
+        return value if small else None
 
     def power(self, base: int, power: int) -> int:
         if power == 0:
