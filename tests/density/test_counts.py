@@ -195,7 +195,8 @@ def test_compiled_and_interpreted_pictures_agree(tmp_path: Path) -> None:
         "import sys, numpy as np\n"
         f"sys.path.insert(0, {str(Path(__file__).parent)!r})\n"
         "from naive_density import drawn, picture, view\n"
-        "field = drawn(picture('henon', view('0.1', '1.0', '-1.5', '1.5'), columns=3, rows=20, transient=300), 256)\n"
+        "where = view('0.1', '1.0', '-1.5', '1.5')\n"
+        "field = drawn(picture('henon', where, columns=3, rows=20, transient=300), 256)\n"
         "np.savez(sys.argv[1], counts=field.counts, lyapunov=field.lyapunov, period=field.period)\n"
     )
     results = []

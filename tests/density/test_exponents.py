@@ -1,4 +1,4 @@
-"""Lyapunov exponents and periods against exact and published values (check_values sections 4.4, 4.5, 5, 8)."""
+"""Lyapunov exponents and periods against exact and published values (check_values 4.4, 4.5, 5, 8)."""
 
 from __future__ import annotations
 

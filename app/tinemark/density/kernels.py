@@ -171,7 +171,7 @@ class _Template:
             f"    for h in range(0, m, {_LOG_EVERY}):",
             f"        for s in range(h, min(h + {_LOG_EVERY}, m)):",
         ]
-        lines.append("            for l in range(LANES):")
+        lines.append("            for l in range(lanes):")
         lines += self.indented(4, [*loads, *step, *stores, *observe, *note])
         if growth:
             lines += self.indented(2, self.renormalised())
@@ -201,12 +201,15 @@ class _Template:
             f"K = np.empty(({BUFFER}, LANES), np.uint16)",
             "outside = np.uint32(counts.shape[1] - 1)",
             f"grouped = columns - columns % {_GROUP}",
+            # Always LANES, unknown to the compiler: a loop of known length it would unroll altogether, and
+            # then keep the constants of an exponential in memory instead of in registers.
+            "lanes = min(LANES, LANES * stop.shape[0])",
         ]
         return lines
 
     def renormalised(self) -> list[str]:
         """Growth since the last logarithm, added up; the tangent goes on with length one."""
-        lines = ["for l in range(LANES):"]
+        lines = ["for l in range(lanes):"]
         if self.n == 1:
             lines += ["    length = abs(D[l])", "    D[l] = 1.0"]
         else:
