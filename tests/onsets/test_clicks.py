@@ -100,7 +100,7 @@ def test_nothing_in_reach(system: str, near: str, width: str) -> None:
 
 def test_escaping_orbits_are_named() -> None:
     """Where everything escapes the words say so."""
-    with pytest.raises(NoOnsetFound, match="all of them escaped"):
+    with pytest.raises(NoOnsetFound, match="all orbits escaped"):
         click(own_map("r*x*(1 - x)", low="0"), "7", "0.5")
 
 

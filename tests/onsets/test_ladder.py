@@ -48,6 +48,26 @@ def test_fifty_digits_of_the_logistic_ladder() -> None:
         assert Fraction(onset.upper) - Fraction(onset.lower) < Fraction(1, 10**49)
 
 
+def test_sixteen_levels() -> None:
+    """Cycles of 32768 points, proved to 25 digits, inside the published values."""
+    result = climb(system_of("logistic"), "2.8", "4", levels=16, digits=25)
+    assert len(result.levels) == 16
+    for level, text in zip(result.levels, ladder("logistic").onsets, strict=False):
+        onset = level.onset
+        assert onset.status is Status.PROVED
+        assert Fraction(onset.lower) - _unit(text) <= Fraction(text) <= Fraction(onset.upper) + _unit(text)
+        assert Fraction(onset.upper) - Fraction(onset.lower) < Fraction(1, 10**25)
+
+
+def test_gaps_get_digits_of_their_own() -> None:
+    """Few digits asked for: high levels carry as many as it takes to tell them apart."""
+    levels = climb(system_of("logistic"), "2.8", "4", levels=11, digits=5).levels
+    values = [level.onset.value_fraction for level in levels]
+    ratios = [(b - a) / (c - b) for a, b, c in zip(values, values[1:], values[2:], strict=False)]
+    # Published delta_k of the logistic ladder: ... 4.669201442152, 4.669201572481.
+    assert abs(ratios[-1] - Fraction("4.669201572481")) < Fraction(1, 10**5)
+
+
 def test_descending_ladder() -> None:
     """From the other end of the Gaussian map the ladder runs down, and its gaps too."""
     result = climb(system_of("gaussian"), "1", "-0.7", levels=6, digits=20)

@@ -188,15 +188,29 @@ def test_orbit_on_a_switching_surface_is_not_proved(formula: str) -> None:
     assert Fraction(onset.lower) <= 3 <= Fraction(onset.upper)
 
 
-def test_jump_is_never_proved() -> None:
+@pytest.mark.parametrize(
+    ("formula", "low", "x", "r"),
+    [
+        ("r*x*(1 - x) - (floor(3*x) - 2)/1000", "0", "0.667", "2.999"),
+        # atan2 jumps from pi to -pi across its cut, and its derivatives do not show it.
+        ("-r*x + x**2 + (atan2(x, -1) - pi)/10", "-1", "0.001", "0.901"),
+        ("-r*x + x**2 + (atan2(-x, -1) + pi)/10", "-1", "0.001", "1.101"),
+    ],
+)
+def test_jump_is_never_proved(formula: str, low: str, x: str, r: str) -> None:
     """A jump at the cycle shows in no derivative, only in the surface: found or not, it is not proved."""
     try:
-        onset = _settle(
-            own_map("r*x*(1 - x) - (floor(3*x) - 2)/1000", low="0"), Kind.FLIP, 1, "0.667", "2.999"
-        )
+        onset = _settle(own_map(formula, low=low), Kind.FLIP, 1, x, r)
     except Lost:
         return
     assert onset.status is Status.ESTIMATED
+
+
+def test_angle_away_from_its_cut_is_proved() -> None:
+    """atan2 is as smooth as any function off its cut: x/r at small angles flips where -r x would."""
+    onset = _settle(own_map("-r*atan2(x, 1) + x**2"), Kind.FLIP, 1, "0.01", "1.01")
+    assert onset.status is Status.PROVED
+    assert Fraction(onset.lower) < 1 < Fraction(onset.upper)
 
 
 def test_piecewise_map_away_from_its_surface_is_proved() -> None:

@@ -27,7 +27,8 @@ from tinemark.onsets.one_map import OneMap, depends_on
 from tinemark.onsets.results import Step
 from tinemark.systems.balls import ball_tools
 from tinemark.systems.emit import emit
-from tinemark.systems.expression import ZERO, Expr
+from tinemark.systems.errors import SwitchingTouched
+from tinemark.systems.expression import ZERO, Call, Expr, walk
 
 _RATIONAL = re.compile(r"fmpq\((-?\d+), (\d+)\)")
 SLICE_S = 0.02
@@ -83,7 +84,7 @@ class BallLoops:
 def ball_loops(one: OneMap) -> BallLoops:
     """Generate and compile the loops of a map."""
     exprs = one.exact_derivatives
-    space: dict[str, Any] = ball_tools()
+    space: dict[str, Any] = ball_tools() | {"off_cut": _off_cut}
     sources = (_orbit_source, _newton_source, _point_source, _box_source)
     source = "\n".join(line for part in sources for line in part(one, exprs))
 
@@ -167,7 +168,18 @@ def _surface_lines(one: OneMap, bind: Mapping[str, str]) -> list[str]:
     for surface in one.exact_surfaces:
         lines += emit([("side", surface.expr)], bind, "ball", "g")
         lines.append("ball_less(side, 0)" if surface.kind == "zero" else "ball_floor(side)")
+    for node in walk(one.exact_derivatives["f"]):
+        if isinstance(node, Call) and node.fn == "atan2":
+            height, width = node.args
+            lines += emit([("rise", height), ("run", width)], bind, "ball", "g")
+            lines.append("off_cut(rise, run)")
     return lines
+
+
+def _off_cut(rise: Any, run: Any) -> None:
+    """Raise where a ball may touch the cut of atan2, along which it jumps but its derivatives do not."""
+    if rise.contains(0) and not run > 0:
+        raise SwitchingTouched("the orbit touches the cut of atan2")
 
 
 def _point_source(one: OneMap, exprs: Mapping[str, Expr]) -> list[str]:

@@ -76,7 +76,8 @@ def _deep_search(one: OneMap, request: RefineRequest) -> Generator[Step, None, S
 
     deep = deep_map(one, request)
     search = Search(request, deep)
-    for crossing in (yield from deep_crossings(one, request, deep)):
+    crossings, search.climbed = yield from deep_crossings(one, request, deep)
+    for crossing in crossings:
         search.add(crossing)
     if not search.done(0.03):
         yield from run_sweep(search, DEEP_NEAR)
@@ -160,9 +161,11 @@ def _looked_at(search: Search) -> str:
         "no flip and no fold was found within half a view's width "
         f"({_short(request.width / 2)}) of the click: {search.orbits} orbits were settled"
     )
+    if search.climbed > 1:
+        text += f", cascades around it were climbed to period {search.climbed}"
     if search.escaped == search.orbits:
-        return f"{text}, and all of them escaped"
+        return f"{text}, and all orbits escaped"
     if not search.periods:
-        return f"{text}, and none of them is periodic"
+        return f"{text}, and none of the orbits is periodic"
     shown = ", ".join(str(period) for period in sorted(search.periods)[:8])
     return f"{text} and the branches of their cycles (periods {shown}) were followed"

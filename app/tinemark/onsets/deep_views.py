@@ -57,8 +57,8 @@ def _log2(ratio: Fraction) -> float:
 
 def deep_crossings(
     one: OneMap, request: RefineRequest, deep: BallMap
-) -> Generator[Step, None, list[Crossing]]:
-    """Onsets in or near a deep view, found from outside it."""
+) -> Generator[Step, None, tuple[list[Crossing], int]]:
+    """Onsets in a deep view, found from outside it, and the longest period that was climbed to."""
     coarse: list[Crossing] = []
     size = abs(request.near)
     for share in COARSE_WIDTHS:
@@ -81,7 +81,8 @@ def deep_crossings(
         if polished is not None:
             found.append(polished)
     found += yield from _climb(one, request, deep, found)
-    return [c for c in found if abs(deep.offset(c.r, request.near)) <= float(request.width) / 2]
+    inside = [c for c in found if abs(deep.offset(c.r, request.near)) <= float(request.width) / 2]
+    return inside, max((crossing.period for crossing in found), default=0)
 
 
 def polished_crossing(deep: BallMap, crossing: Crossing) -> Crossing | None:

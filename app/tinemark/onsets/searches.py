@@ -58,6 +58,7 @@ class Search:
     periods: set[int] = field(default_factory=set)
     escaped: int = 0
     orbits: int = 0
+    climbed: int = 0
 
     @property
     def width(self) -> float:
