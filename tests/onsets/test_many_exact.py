@@ -178,8 +178,15 @@ def test_nothing_there() -> None:
         click(own_system({"x": "0.5*x + r/10", "y": "0.2*y + x"}), "1", "0.5")
     with pytest.raises(NoOnsetFound, match="settles on a cycle"):
         click(own_system({"x": "x + 1 + r**2", "y": "2*y + 1 + x**2"}), "1", "0.5")
-    with pytest.raises(NoOnsetFound, match="narrower than doubles"):
-        click(system_of("henon"), "0.3675", "1e-14")
+
+
+def test_a_view_too_narrow_for_doubles() -> None:
+    (onset,) = click(system_of("henon"), "0.91250000000000000001", "1e-18")
+    assert onset.period_before == 2
+    assert Fraction(onset.lower) <= Fraction("0.9125") <= Fraction(onset.upper)
+    assert onset.half_width < Fraction(1, 10**36)
+    with pytest.raises(NoOnsetFound, match="100 widths of this view away"):
+        click(system_of("henon"), "0.9125000000000001", "1e-18")
 
 
 def test_a_pitchfork_is_not_called_a_fold() -> None:

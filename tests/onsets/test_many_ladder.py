@@ -68,7 +68,7 @@ def test_conservative_seven_levels() -> None:
 
 
 def test_a_nearly_conservative_ladder_gives_no_early_verdict() -> None:
-    """At b = -0.9 the ratios begin at 8.21 and 8.32 and pass to 4.669 only later: four levels tell nothing."""
+    """At b = -0.9 the ratios begin at 8.21, 8.32 and reach 4.669 only later: four levels tell nothing."""
     result = ladder("henon", "a", "2.6", "3.95", 10, (("b", "-0.9"),))
     assert Fraction(result.levels[0].onset.lower) <= 3 * Fraction("1.9") ** 2 / 4
     points = points_of(result.levels)

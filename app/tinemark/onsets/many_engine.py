@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Generator
 from dataclasses import dataclass
+from fractions import Fraction
 from itertools import pairwise
 
 import numpy as np
 
+from tinemark.onsets.decimals import decimal_places
 from tinemark.onsets.many_branch import (
     BranchPoint,
     Crossing,
@@ -24,12 +26,14 @@ from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_
 from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.many_search import Place, cycles_around
-from tinemark.onsets.results import Kind, RefineRequest, RefineResult, Step
+from tinemark.onsets.results import Kind, Onset, RefineRequest, RefineResult, Step
 from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
 
 __all__ = ["ladder_many", "refine_many"]
 
 MOST_BRANCHES = 6
+NARROWEST = 1e-8
+"""Views narrower than this share of the parameter are searched as if they were this wide."""
 CLOSE = 1.5
 """A second onset is shown when it lies no farther than this many times the nearest one's distance …"""
 CLOSE_FLOOR = 0.02
@@ -97,11 +101,10 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
         float(request.width),
         None if request.height is None else float(request.height),
     )
-    if not _doubles_tell_apart(place):
-        raise NoOnsetFound(
-            "the view is narrower than doubles can tell apart",
-            what_to_do="zoom out a step and click again",
-        )
+    deep = place.width < NARROWEST * max(abs(place.r), 1e-3)
+    if deep:
+        # Doubles find the onset in a wider view; its digits decide whether it lies in this one.
+        place = Place(place.r, None, NARROWEST * max(abs(place.r), 1e-3), None)
     full_scales = float_map.scales(place.r)
     cycles = yield from cycles_around(float_map, place, full_scales)
     if not cycles:
@@ -111,11 +114,29 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
         )
     window = _window(place, full_scales, request)
     candidates = yield from _candidates(float_map, cycles, place, window)
-    return (yield from _settle(float_map, candidates, place, window, full_scales, request.digits))
+    digits = request.digits + (_digits_to_tell_apart(request) if deep else 0)
+    result = yield from _settle(float_map, candidates, place, window, full_scales, digits)
+    return _within_view(result, request) if deep else result
 
 
-def _doubles_tell_apart(place: Place) -> bool:
-    return place.width > 1e-11 * max(abs(place.r), 1e-3)
+def _digits_to_tell_apart(request: RefineRequest) -> int:
+    """Digits that the parameter needs before its place in the view shows."""
+    return max(0, decimal_places(request.width, 3) - decimal_places(request.near or request.width, 3))
+
+
+def _within_view(result: RefineResult, request: RefineRequest) -> RefineResult:
+    """The onsets that lie in a view too narrow for doubles."""
+    reach = Fraction(IN_REACH) * request.width
+    inside = tuple(o for o in result.onsets if abs(o.value_fraction - request.near) <= reach)
+    if not inside:
+        nearest = min(abs(onset.value_fraction - request.near) for onset in result.onsets)
+        share = float(nearest / request.width)
+        raise NoOnsetFound(
+            f"the nearest onset lies {share:.3g} widths of this view away",
+            what_to_do="zoom out and click nearer to a split",
+        )
+    text = "; ".join(_words(onset) for onset in inside)
+    return RefineResult(inside, text[0].upper() + text[1:])
 
 
 def _window(place: Place, scales: Floats, request: RefineRequest) -> Window:
@@ -293,16 +314,18 @@ def _turned(float_map: FloatManyMap, cycle: Cycle, place: Place) -> Cycle:
     return Cycle(np.roll(cycle.points, -int(np.argmin(apart)), axis=0), cycle.r)
 
 
+def _words(onset: Onset) -> str:
+    if onset.kind is Kind.FLIP:
+        return f"flip from period {onset.period_before} to {onset.period_after}"
+    return f"fold that opens period {onset.period_after}"
+
+
 def _message(
     parameter: str, shown: list[tuple[float, Settled]], rotation: tuple[float, float, int] | None
 ) -> str:
     sentences = []
     for share, item in shown:
-        onset = item.onset
-        words = f"fold that opens period {onset.period_after}"
-        if onset.kind is Kind.FLIP:
-            words = f"flip from period {onset.period_before} to {onset.period_after}"
-        sentences.append(f"{words}, {share:.2g} of the view from the click")
+        sentences.append(f"{_words(item.onset)}, {share:.2g} of the view from the click")
     if rotation is not None and (not shown or rotation[0] < shown[0][0]):
         where = f"{parameter} = {rotation[1]:.9g} (period {rotation[2]})"
         sentences.append(
