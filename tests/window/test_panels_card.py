@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import random
+from contextlib import suppress
+
 import pytest
 from PySide6.QtCore import QLocale, Qt
 from PySide6.QtGui import QKeyEvent
 from PySide6.QtWidgets import QApplication, QLabel, QLineEdit, QToolButton
 
+from tinemark.systems.errors import TinemarkError
 from tinemark.systems.library import builtin_names, builtin_text
 from tinemark.systems.system_file import read_system_text
 from tinemark.window.builtin_chooser import SENTENCE, library_builtins
@@ -141,6 +145,53 @@ def test_renaming_in_inline_tables_keeps_the_order():
     system = read_system_text(renamed(text, "states", "x", "u"))
     assert system.state_names == ("u", "y")
     assert system.formulas == ("a*y", "u")
+
+
+def test_renaming_adds_nothing_that_the_text_left_to_the_defaults():
+    text = TANK[: TANK.index("[diagram]")]
+    for section, old, new in (("states", "n", "stock"), ("parameters", "r", "growth")):
+        assert "diagram" not in renamed(text, section, old, new)
+        assert check_text(renamed(text, section, old, new))[1] == ()
+
+
+WRECKS = (
+    "[",
+    "]",
+    '"',
+    "=",
+    "\n",
+    "#",
+    "\x00",
+    "é",
+    "states = 4\n",
+    "[next]\n",
+    "next = []\n",
+    "[[states.x]]\n",
+    '"""',
+)
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_wrecked_texts_raise_only_errors_of_ours(seed):
+    rng = random.Random(seed)
+    for _ in range(60):
+        text = builtin_text(rng.choice(builtin_names()))
+        for _ in range(rng.randint(1, 3)):
+            place = rng.randrange(len(text))
+            text = text[:place] + rng.choice(WRECKS) + text[place + rng.choice([0, 1, 20]) :]
+        draft = read_draft(text)
+        system, troubles = check_text(text)
+        assert (system is None) == bool(troubles)
+        assert line_of(text, "next.x") >= 0
+        for name in [state.name for state in draft.states] if draft else ():
+            for edit in (
+                lambda t, n: edited(t, {f"next.{n}": "1", "diagram.observe": "1"}),
+                lambda t, n: renamed(t, "states", n, "zz"),
+                lambda t, n: without(t, "states", n),
+                lambda t, n: with_parameter(with_state(t)),
+            ):
+                with suppress(TinemarkError):
+                    edit(text, name)
 
 
 def test_states_and_parameters_come_and_go():
@@ -376,6 +427,26 @@ def test_error_from_outside_stands_under_its_field(card):
     assert card.fields.error_text("next.n") == "the formula cannot be compiled; simplify it"
     card.show_error("", "the disk is full")
     assert "the disk is full" in card.verdict.text()
+
+
+def test_a_refused_edit_can_be_taken_back(card, qtbot):
+    type_into(card.fields.editor("next.n"), "n*exp(r*(1 - n))")
+    card.system_edited.connect(lambda _: card.show_error("next.n", "it cannot be compiled"))
+    card.check_now()
+    assert card.fields.error_text("next.n") == "it cannot be compiled"
+    card.back_button.click()
+    assert card.fields.editor("next.n").text() == "n*exp(r*(1 - n)) - h*n"
+
+
+def test_sections_that_are_none_are_said_and_the_typed_stays(card, qtbot):
+    card.show_system(
+        'title = "t"\nkind = "map"\nnext = 3\n[states.x]\nstart = "1"\n[parameters.a]\nvalue = "1"\n'
+    )
+    type_into(card.fields.editor("next.x"), "a*x")
+    assert card.fields.editor("next.x").text() == "a*x"
+    assert "section" in card.fields.error_text("next.x")
+    card.fields.add_asked.emit("states")
+    assert "section" in card.verdict.text()
 
 
 def test_every_editor_has_a_name(card):

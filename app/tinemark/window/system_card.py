@@ -23,6 +23,7 @@ from PySide6.QtWidgets import (
     QWidget,
 )
 
+from tinemark.systems.errors import TinemarkError
 from tinemark.window.builtin_chooser import BuiltIn, BuiltinChooser, library_builtins
 from tinemark.window.faces import FaceKeeper
 from tinemark.window.system_draft import (
@@ -32,6 +33,7 @@ from tinemark.window.system_draft import (
     line_of,
     read_draft,
     renamed,
+    trouble_of,
     with_parameter,
     with_state,
     without,
@@ -67,7 +69,7 @@ class SystemCard(QWidget):
         self.setWindowTitle("System")
         self.setAccessibleName("System card")
         self._text = ""
-        self._good = ""
+        self._before = self._good = ""
         self._dropped = ""
         self._stale = False
         self._troubles: tuple[Trouble, ...] = ()
@@ -123,11 +125,9 @@ class SystemCard(QWidget):
         self.fields = SystemFields()
         self.fields.changed.connect(self._fields_changed)
         self.fields.settled.connect(self._settled)
-        self.fields.rename_asked.connect(
-            lambda s, old, new: self._restructure(renamed(self._text, s, old, new))
-        )
+        self.fields.rename_asked.connect(self._rename)
         self.fields.add_asked.connect(self._add)
-        self.fields.remove_asked.connect(lambda s, name: self._restructure(without(self._text, s, name)))
+        self.fields.remove_asked.connect(self._remove)
         scroll = QScrollArea()
         scroll.setWidgetResizable(True)
         scroll.setHorizontalScrollBarPolicy(Qt.ScrollBarPolicy.ScrollBarAsNeeded)
@@ -184,12 +184,17 @@ class SystemCard(QWidget):
         if self._text not in ("", self._good) and check_text(self._text)[0] is None:
             self._dropped = self._text
         self._timer.stop()
-        self._good = text
+        self._before = self._good = text
         self._set_text(text)
         self._show_troubles(check_text(text)[1])
 
     def show_error(self, key: str, message: str) -> None:
-        """Show a mistake that others found in the text on the card, under its field."""
+        """Show a mistake that others found in the text on the card, under its field.
+
+        A text that was passed on and refused is not the good one: the one before it is.
+        """
+        if self._text == self._good:
+            self._good = self._before
         self._show_troubles((Trouble(key, message),))
 
     def show_side(self, side: str) -> None:
@@ -228,7 +233,7 @@ class SystemCard(QWidget):
         system, troubles = check_text(self._text)
         self._show_troubles(troubles)
         if system is not None and self._text != self._good:
-            self._good = self._text
+            self._before, self._good = self._good, self._text
             self.builtins.show_builtin("")
             self._show_sentence()
             self.system_edited.emit(self._text)
@@ -236,7 +241,12 @@ class SystemCard(QWidget):
     # -- edits -----------------------------------------------------------------------------
 
     def _fields_changed(self, changes: Mapping[str, str | Sequence[str] | None]) -> None:
-        self._text = edited(self._text, changes)
+        try:
+            self._text = edited(self._text, changes)
+        except TinemarkError as error:
+            # A section that is no section: the field keeps what was typed, the text must be mended first.
+            self._show_troubles((trouble_of(error),))
+            return
         self._wait()
 
     def _text_changed(self) -> None:
@@ -251,11 +261,21 @@ class SystemCard(QWidget):
             self.check_now()
 
     def _add(self, section: str) -> None:
-        self._restructure(with_state(self._text) if section == "states" else with_parameter(self._text))
+        self._restructure(with_state if section == "states" else with_parameter)
 
-    def _restructure(self, text: str) -> None:
+    def _remove(self, section: str, name: str) -> None:
+        self._restructure(lambda text: without(text, section, name))
+
+    def _rename(self, section: str, old: str, new: str) -> None:
+        self._restructure(lambda text: renamed(text, section, old, new))
+
+    def _restructure(self, change: Callable[[str], str]) -> None:
+        try:
+            self._text = change(self._text)
+        except TinemarkError as error:
+            self._show_troubles((trouble_of(error),))
+            return
         # The form is built anew: not while one of its own fields is still telling of an edit.
-        self._text = text
         QTimer.singleShot(0, self, self._show_restructured)
 
     def _show_restructured(self) -> None:

@@ -196,13 +196,10 @@ def with_parameter(text: str) -> str:
 
 def without(text: str, section: str, name: str) -> str:
     """The text without one state ("states") or parameter ("parameters"), and without its formula."""
-    import tomlkit
-
-    document: Any = tomlkit.parse(text)
-    document[section].pop(name, None)
-    if section == "states" and "next" in document:
-        document["next"].pop(name, None)
-    return tomlkit.dumps(document)
+    gone: dict[str, str | Sequence[str] | None] = {f"{section}.{name}": None}
+    if section == "states":
+        gone[f"next.{name}"] = None
+    return edited(text, gone)
 
 
 def renamed(text: str, section: str, old: str, new: str) -> str:
@@ -222,11 +219,19 @@ def renamed(text: str, section: str, old: str, new: str) -> str:
         name = new if section == "states" and state.name == old else state.name
         if word.search(state.formula):
             changes[f"next.{name}"] = word.sub(new, state.formula)
-    if word.search(before.observe):
+    # What the text leaves to the defaults follows by itself.
+    said = _said_of_diagram(text)
+    if "observe" in said and word.search(before.observe):
         changes["diagram.observe"] = word.sub(new, before.observe)
-    if section == "parameters" and before.parameter == old:
+    if "parameter" in said and section == "parameters" and before.parameter == old:
         changes["diagram.parameter"] = new
     return edited(kept, changes)
+
+
+def _said_of_diagram(text: str) -> Mapping[str, Any]:
+    import tomlkit
+
+    return _table(tomlkit.parse(text).get("diagram"))
 
 
 def _renamed_headings(text: str, section: str, old: str, new: str) -> str:
