@@ -322,3 +322,33 @@ def test_about_carries_version_licence_and_the_whole_caution(qtbot):
     dialog.findChildren(QPushButton)[-1].click()
     dialog.close()
     dialog.deleteLater()
+
+
+def test_answers_for_a_session_that_is_gone_are_dropped(window, desks):
+    view = window.keeper.session.view
+    window.rows.pick(view.left, view.bottom)
+    request = desks.refinery.asked[-1]
+    window.files.open_demo()
+    assert desks.refinery.cancelled == [1] and not window.diagram.pending
+    rows = window.keeper.session.ledger.rows
+    window.bridge.event_came.emit(Finished(1, request, RefineResult((flip("3.0"),), "")))
+    assert window.keeper.session.ledger.rows == rows
+
+
+def test_an_answer_for_formulas_that_were_edited_away_is_left_out(window, desks):
+    view = window.keeper.session.view
+    window.rows.pick(view.left, view.bottom)
+    request = desks.refinery.asked[-1]
+    window.keeper.set_system(builtin_text("cubic"))
+    window.bridge.event_came.emit(Finished(1, request, RefineResult((flip("3.0"),), "")))
+    assert not window.keeper.session.ledger.rows
+    assert "edited while" in window.status.words.words
+
+
+def test_a_defect_is_told_and_the_window_goes_on(window):
+    from tinemark.window.app import _telling
+
+    passed: list[object] = []
+    hook = _telling(window, lambda *seen: passed.append(seen))
+    hook(ValueError, ValueError("odd"), None)
+    assert passed and "ValueError: odd" in window.status.words.words

@@ -97,6 +97,7 @@ def _paragraph(text: str) -> QLabel:
     label = QLabel(text)
     label.setWordWrap(True)
     label.setFixedWidth(TEXT_WIDTH)
+    label.setMinimumHeight(label.heightForWidth(TEXT_WIDTH))
     label.setTextInteractionFlags(
         Qt.TextInteractionFlag.TextSelectableByMouse | Qt.TextInteractionFlag.TextSelectableByKeyboard
     )

@@ -4,10 +4,13 @@ from __future__ import annotations
 
 import signal
 import sys
+from collections.abc import Callable
 from pathlib import Path
+from types import TracebackType
 
 from PySide6.QtCore import QTimer
 from PySide6.QtWidgets import QApplication
+from shiboken6 import isValid
 
 from tinemark import __version__
 from tinemark.document.session import demo_session
@@ -16,6 +19,8 @@ from tinemark.window.icons import program_icon
 from tinemark.window.layout_memory import LayoutMemory
 from tinemark.window.main_window import MainWindow
 from tinemark.window.session_keeper import SessionKeeper
+
+ExceptHook = Callable[[type[BaseException], BaseException, TracebackType | None], object]
 
 
 def application() -> QApplication:
@@ -49,6 +54,7 @@ def open_window(path: str | Path | None = None) -> int:
     """
     app = application()
     window = make_window()
+    sys.excepthook = _telling(window, sys.excepthook)
     window.show()
     if path is not None:
         try:
@@ -65,3 +71,18 @@ def open_window(path: str | Path | None = None) -> int:
     code = app.exec()
     pulse.stop()
     return code
+
+
+def _telling(window: MainWindow, usual: ExceptHook) -> ExceptHook:
+    """An exception hook that also tells the user: a defect of ours must not pass in silence."""
+
+    def tell(kind: type[BaseException], error: BaseException, trace: TracebackType | None) -> None:
+        usual(kind, error, trace)
+        if isValid(window):
+            window.status.show_words(
+                f"Something went wrong inside Tinemark ({kind.__name__}: {error}). "
+                "Your session is kept; save it.",
+                "error",
+            )
+
+    return tell

@@ -37,7 +37,7 @@ def paint_bottom_axis(
 ) -> None:
     """The parameter axis along the top edge of `area`, its name at the right end below the labels."""
     metrics = QFontMetricsF(painter.font())
-    found = axis_ticks(low, high, area.width(), metrics.horizontalAdvance("0.000000") * 1.9)
+    found = axis_ticks(low, high, area.width(), metrics.horizontalAdvance("0.000000") * 1.35)
     y = area.top() + 2
     painter.setPen(QPen(color(theme.edge), 1.0))
     painter.drawLine(QPointF(area.left(), y), QPointF(area.right(), y))

@@ -60,6 +60,11 @@ class LadderDialog(QDialog):
         self.levels = QSpinBox()
         self.levels.setRange(1, MOST_LEVELS)
         self.levels.setValue(offered.levels)
+        for spin, name in ((self.base, "Base period"), (self.levels, "Levels")):
+            spin.setAccessibleName(name)
+            spin.setFont(mono_font())
+            spin.setButtonSymbols(QSpinBox.ButtonSymbols.NoButtons)
+            spin.setMaximumWidth(90)
         self.error = QLabel()
         self.error.setProperty("rank", "error")
         self.error.setWordWrap(True)

@@ -178,6 +178,8 @@ class MainWindow(QMainWindow):
 
     def _session_changed(self, before: Session | None, after: Session) -> None:
         system = self.keeper.system
+        if before is None:
+            self.onsets.forget()
         self.diagram.show_view(after.view)
         if before is None or before.view != after.view:
             self.status.forget_width()
@@ -338,6 +340,7 @@ class MainWindow(QMainWindow):
         self.memory.keep_bytes("window", self.saveGeometry())
         self.panels.keep(self.width())
         self.memory.sync()
+        self.hide()
         self.shut_down()
         event.accept()
 

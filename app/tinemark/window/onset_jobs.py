@@ -146,6 +146,14 @@ class OnsetJobs(QObject):
             self._status.show_idle()
         return busy
 
+    def forget(self) -> None:
+        """Cancel everything, and keep nothing of it: the session it was asked for is gone."""
+        self.cancel()
+        for number in self.jobs:
+            self._diagram.remove_pending(number)
+        self.jobs.clear()
+        self._status.show_idle()
+
     # --- hearing -------------------------------------------------------------------------------------------
 
     def hear(self, event: object) -> None:
@@ -186,14 +194,15 @@ class OnsetJobs(QObject):
 
     def _finished(self, job: Job, result: RefineResult | LadderResult) -> None:
         system = job.request.system
+        # Words first: who keeps the onsets may have more to say.
         if isinstance(result, LadderResult):
-            self._keep_ladder(job, result)
             count = len(result.levels)
             words = f"{count} level{'' if count == 1 else 's'} found."
             self._status.show_words(f"{words} {_sentence(result.message)}".strip())
+            self._keep_ladder(job, result)
         elif len(result.onsets) == 1 or (job.row and result.onsets):
-            self.onsets_found.emit(system, job.row, result.onsets[:1])
             self._status.show_words(refined_sentence(result.onsets[0]))
+            self.onsets_found.emit(system, job.row, result.onsets[:1])
         elif result.onsets:
             self._offer(job, system, result)
         else:
@@ -224,9 +233,9 @@ class OnsetJobs(QObject):
 
     def _keep_levels(self, job: Job, words: str) -> None:
         assert isinstance(job.request, LadderRequest)
-        self._keep_ladder(job, LadderResult(job.request.base_period, tuple(job.levels), words))
         count = len(job.levels)
         self._status.show_words(f"{words} Kept {count} level{'' if count == 1 else 's'} found before.")
+        self._keep_ladder(job, LadderResult(job.request.base_period, tuple(job.levels), words))
 
     def _keep_ladder(self, job: Job, result: LadderResult) -> None:
         result = replace(result, base_period=job.base_period or result.base_period)

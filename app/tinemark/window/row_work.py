@@ -22,6 +22,8 @@ if TYPE_CHECKING:
 
 MEASURED = "Measured rows, and rows whose system is not known any more, are left as they are."
 
+EDITED = "The system was edited while this was worked out, so the answer is left out; click again."
+
 
 class RowWork(QObject):
     """Works on the rows of one window's session."""
@@ -98,7 +100,17 @@ class RowWork(QObject):
         words = f"Read by eye: {session.parameter} = {diagram.gestures.by_eye(parameter)}"
         self._window.status.show_words(words)
 
+    def _knows(self, system: System) -> bool:
+        """Whether the session still holds the formulas of a system; if not, what was found is of no use."""
+        session = self._keeper.session
+        known = system.key == self._keeper.system.key or system.key in dict(session.systems)
+        if not known:
+            self._window.status.show_words(EDITED, "warning")
+        return known
+
     def _keep_onsets(self, system: System, row: str, onsets: tuple[Onset, ...]) -> None:
+        if not self._knows(system):
+            return
         ledger = self._keeper.session.ledger
         place = ledgers.place_of(system, onsets[0].parameter)
         if row and ledger.row(row) is not None:
@@ -116,7 +128,7 @@ class RowWork(QObject):
         self.select(row)
 
     def _keep_ladder(self, system: System, result: LadderResult) -> None:
-        if result.levels:
+        if result.levels and self._knows(system):
             place = ledgers.place_of(system, result.levels[0].onset.parameter)
             ledger = ledgers.add_ladder(self._keeper.session.ledger, result, place)
             self._keeper.set_ledger("follow the ladder", ledger)

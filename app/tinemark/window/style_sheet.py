@@ -13,6 +13,7 @@ if TYPE_CHECKING:
 _SHEET = Template("""
 QWidget { color: $text; }
 QMainWindow, QDialog { background: $surface; }
+QDialogButtonBox { dialogbuttonbox-buttons-have-icons: 0; }
 QToolTip { background: $raised; color: $text; border: 1px solid $edge; padding: 4px 6px; }
 
 QMenuBar { background: $surface; border-bottom: 1px solid $line; padding: 1px 4px; }
