@@ -1,0 +1,143 @@
+"""A normal session in the real window, off screen: its longest pauses, and the memory it all takes."""
+
+from __future__ import annotations
+
+import json
+import os
+import subprocess
+import sys
+import tempfile
+import time
+from collections.abc import Iterator
+from fractions import Fraction
+from pathlib import Path
+from typing import Any
+
+from benches.measuring import Figure, at_most, reading
+
+SIZE = (1280, 800)
+PATIENCE_S = 120.0
+BEAT_MS = 2
+LONGEST_PAUSE_MS = 50.0
+MOST_MEMORY_MB = 500.0
+
+
+def figures() -> Iterator[Figure]:
+    """Pauses while refining, while following a ladder and while zooming; peak memory."""
+    with tempfile.TemporaryDirectory() as private:
+        surroundings = os.environ | {
+            "QT_QPA_PLATFORM": "offscreen",
+            "TINEMARK_CONFIG": private,
+            "PYTHONPATH": os.pathsep.join(sys.path),
+        }
+        session = subprocess.Popen(
+            [sys.executable, "-m", "benches.session"], env=surroundings, stdout=subprocess.PIPE, text=True
+        )
+        peak = 0.0
+        while session.poll() is None:
+            peak = max(peak, _memory_of_tree(session.pid))
+            time.sleep(0.05)
+        assert session.stdout is not None
+        told = session.stdout.read()
+    if session.returncode != 0:
+        raise RuntimeError("the session did not come to its end")
+    for name, seconds in json.loads(told).items():
+        figure = f"longest pause of the window's thread while {name} (ms)"
+        # The first picture of a session comes while modules are still being loaded; nothing is asked of it.
+        yield (
+            reading(figure, seconds * 1e3)
+            if name == "starting"
+            else at_most(figure, seconds * 1e3, LONGEST_PAUSE_MS)
+        )
+    if peak:
+        yield at_most("peak memory of a session, all processes, shared pages once (MB)", peak, MOST_MEMORY_MB)
+
+
+def _memory_of_tree(pid: int) -> float:
+    """Proportional memory of a process and all below it, in megabytes; 0 where the system does not tell."""
+    total = 0.0
+    for member in _tree(pid):
+        try:
+            lines = Path(f"/proc/{member}/smaps_rollup").read_text().splitlines()
+        except OSError:
+            continue
+        total += sum(int(line.split()[1]) for line in lines if line.startswith("Pss:")) / 1024
+    return total
+
+
+def _tree(pid: int) -> list[int]:
+    members = [pid]
+    for member in members:
+        for children in Path(f"/proc/{member}/task").glob("*/children"):
+            try:
+                members += [int(word) for word in children.read_text().split()]
+            except OSError:
+                continue
+    return members
+
+
+def run_session() -> dict[str, float]:
+    """Longest pause in seconds of each part. Runs in the session's own process."""
+    from PySide6.QtCore import Qt, QTimer
+
+    from tinemark.window.app import application, make_window
+
+    app = application()
+    window = make_window()
+    window.resize(*SIZE)
+    window.show()
+    window.workers.start()
+    parts = _parts(window)
+    name, ready = next(parts)
+    pauses = {name: 0.0}
+    last = time.perf_counter()
+    deadline = last + PATIENCE_S
+    beat = QTimer()
+    beat.setTimerType(Qt.TimerType.PreciseTimer)
+
+    def look() -> None:
+        nonlocal last, name, ready
+        now = time.perf_counter()
+        pauses[name] = max(pauses[name], now - last)
+        last = now
+        if ready():
+            try:
+                name, ready = next(parts)
+            except StopIteration:
+                beat.stop()
+                window.files.may_leave = lambda: True
+                window.close()
+                app.quit()
+                return
+            pauses.setdefault(name, 0.0)
+        elif now > deadline:
+            app.exit(1)
+
+    beat.timeout.connect(look)
+    beat.start(BEAT_MS)
+    if app.exec() != 0:
+        raise SystemExit(f"{name} did not come to its end")
+    return pauses
+
+
+def _parts(window: Any) -> Iterator[tuple[str, Any]]:
+    """Names and ends of the parts; each begins when the one before has ended."""
+    yield "starting", lambda: window.diagram.field is not None and window.diagram.field.steps > 5_000_000
+    view = window.keeper.session.view
+    for left, right, click in (("100", "142", "131.2"), ("128", "142", "138.2"), ("138", "141", "139.4")):
+        window.keeper.show_view(type(view)(Fraction(left), Fraction(right), view.bottom, view.top))
+        yield (
+            "zooming",
+            lambda: (
+                window.diagram.image_view == window.keeper.session.view
+                and window.diagram.field.steps > 5_000_000
+            ),
+        )
+        window.rows.pick(Fraction(click), Fraction("16.3"))
+        yield "refining", lambda: not window.onsets.jobs
+    window.keeper.set_probe(Fraction("139.4"))
+    yield "probing", lambda: window.probes.is_up_to_date
+
+
+if __name__ == "__main__":
+    print(json.dumps(run_session()))
