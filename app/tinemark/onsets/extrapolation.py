@@ -32,6 +32,9 @@ SAFETY_TWO_RATIOS = Decimal("2.5")
 """Factor between the difference of two ratios and the uncertainty of where they tend."""
 MOVE_MEMORY = Decimal(40)
 """A last move counts as at least one part in this of the move before: one lucky agreement proves nothing."""
+LEAST_CONTRACTION = Decimal("0.15")
+"""Moves of a limit are taken to go on shrinking as they did, by no more than this factor a level. The
+ratios of maps with a high order converge unevenly, so for delta no shrinking is counted on."""
 PREDICTED_LEVELS = 3
 
 _Table = Mapping[str, Sequence[Decimal]]
@@ -115,7 +118,7 @@ def limit_of_class(run: Sequence[LadderPoint], known: CascadeClass) -> Estimate 
             table = {"rate": first, "rate, squared rate": eliminate(first, rate * rate)}
             return _with_epsilon(table, "rate", first)
 
-        chosen = _choose(values, run, candidates)
+        chosen = _choose(values, run, candidates, LEAST_CONTRACTION)
         if chosen is None:
             return None
         off = abs(values[-1] - values[-2]) * Decimal(known.delta_uncertainty)
@@ -155,8 +158,8 @@ def _from_ratios(run: Sequence[LadderPoint], values: Sequence[Decimal]) -> Extra
         delta = _delta_of_two_ratios(run, values)
         limit = _limit_of_four_levels(run, values)
     else:
-        chosen = _choose(values, run, _delta_table)
-        chosen_limit = _choose(values, run, _limit_table)
+        chosen = _choose(values, run, _delta_table, ONE)
+        chosen_limit = _choose(values, run, _limit_table, LEAST_CONTRACTION)
         if chosen is None or chosen_limit is None:
             reason = "the onsets agree to all their digits, so nothing is left to extrapolate"
             return Extrapolation(None, reason, None, reason, ())
@@ -189,7 +192,10 @@ def _limit_of_four_levels(run: Sequence[LadderPoint], values: Sequence[Decimal])
 
 
 def _choose(
-    values: Sequence[Decimal], run: Sequence[LadderPoint], table_of: Callable[[Sequence[Decimal]], _Table]
+    values: Sequence[Decimal],
+    run: Sequence[LadderPoint],
+    table_of: Callable[[Sequence[Decimal]], _Table],
+    least_contraction: Decimal,
 ) -> _Choice | None:
     """The candidate with the least uncertainty: its settled move and what the onsets' noise does to it."""
     table = table_of(values)
@@ -201,22 +207,29 @@ def _choose(
         noises[name] = _combined(
             (point, max(abs(tables[name][-1] - sequence[-1]) for tables in both)) for point, both in moved
         )
-    ranked = sorted((_last_move(table[name]) * SAFETY + noise, name) for name, noise in noises.items())
+    ranked = sorted(
+        (_last_move(table[name], least_contraction) * SAFETY + noise, name) for name, noise in noises.items()
+    )
     if not ranked:
         return None
     name = ranked[0][1]
     value = table[name][-1]
-    truncation = _last_move(table[name])
+    truncation = _last_move(table[name], least_contraction)
     if len(ranked) > 1:
         truncation = max(truncation, abs(value - table[ranked[1][1]][-1]))
     return _Choice(name, value, SAFETY * truncation, noises[name])
 
 
-def _last_move(sequence: Sequence[Decimal]) -> Decimal:
+def _last_move(sequence: Sequence[Decimal], least_contraction: Decimal) -> Decimal:
+    """How far a sequence may still be off: its last move, times how its moves shrink where that counts."""
     move = abs(sequence[-1] - sequence[-2])
-    if len(sequence) > 2:
-        move = max(move, abs(sequence[-2] - sequence[-3]) / MOVE_MEMORY)
-    return move
+    if len(sequence) < 3:
+        return move
+    before = abs(sequence[-2] - sequence[-3])
+    if before == 0:
+        return move
+    contraction = min(max(move / before, least_contraction), ONE)
+    return max(move, before / MOVE_MEMORY) * contraction
 
 
 def _delta_table(values: Sequence[Decimal]) -> dict[str, list[Decimal]]:
