@@ -141,7 +141,7 @@ class LedgerPanel(QWidget):
             "Follow further", "Find the next levels of the selected ladder", self._extend
         )
         self.refine_button = self._tool(
-            "Refine again", "Work out the selected rows that were read by eye or estimated", self._refine
+            "Refine", "Work out the selected rows that were read by eye or estimated", self._refine
         )
         self.remove_button = self._tool(
             "Remove", "Take the selected rows out of the ledger (Delete)", self._remove
@@ -363,7 +363,7 @@ class LedgerPanel(QWidget):
         menu.setAttribute(Qt.WidgetAttribute.WA_DeleteOnClose)
         for words, possible, do in (
             ("Follow the ladder further", self.extend_button.isEnabled(), self._extend),
-            ("Refine again", self.refine_button.isEnabled(), self._refine),
+            ("Refine", self.refine_button.isEnabled(), self._refine),
             ("Write a note", self.table.currentIndex().isValid(), self._edit_note),
             ("Remove", self.remove_button.isEnabled(), self._remove),
         ):
