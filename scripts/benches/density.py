@@ -10,7 +10,6 @@ import sys
 import tempfile
 import time
 from collections.abc import Callable, Iterator
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import partial
@@ -242,17 +241,17 @@ def _gcc(library: ctypes.CDLL, case: Case, lanes: int) -> Callable[[], object]:
 
 def _threads() -> Iterator[Figure]:
     """The drawing itself, as the program runs it, on one thread and on two."""
-    from tinemark.density.renderer import append, create
+    from tinemark.density.renderer import Team, append, create
 
     request = _request(CASES[1])
-    with ThreadPoolExecutor(2) as pool:
+    with Team(1) as alone, Team(2) as pair:
 
-        def draw(threads: int) -> object:
+        def draw(team: Team) -> object:
             drawing = create(request)
-            append(drawing, 4 * STEPS, pool=pool if threads == 2 else None)
+            append(drawing, 4 * STEPS, team=team)
             return drawing
 
-        timings = alternately({"one": lambda: draw(1), "two": lambda: draw(2)}, ROUNDS)
+        timings = alternately({"one": partial(draw, alone), "two": partial(draw, pair)}, ROUNDS)
     yield at_least("two threads over one", times_faster(timings["two"], timings["one"]), 1.8)
 
 

@@ -16,7 +16,7 @@ from naive_density import around, counts, drawn, logistic, picture, view
 
 from tinemark.density.field import Field
 from tinemark.density.kernels import BUFFER
-from tinemark.density.renderer import Drawing, StopFlag, append, create, progressive, shifted, snapshot
+from tinemark.density.renderer import Drawing, StopFlag, Team, append, create, progressive, shifted, snapshot
 from tinemark.density.request import PictureRequest, SweepRule
 from tinemark.systems.errors import TinemarkError
 
@@ -88,12 +88,21 @@ def test_threads_and_passes_do_not_change_a_picture(rule: SweepRule) -> None:
     whole = create(request)
     append(whole, 5000)
     parts = create(request)
-    with ThreadPoolExecutor(3) as pool:
+    with Team(3) as team:
         for steps in (1, 1000, 4000 - 2 * BUFFER, 1):
-            append(parts, steps, pool=pool)
+            append(parts, steps, team=team)
     append(parts, whole.level - parts.level)
     assert equal(snapshot(whole), snapshot(parts))
     assert np.array_equal(whole.states, parts.states, equal_nan=True)
+
+
+def test_a_team_does_each_item_once_and_tells_of_an_error() -> None:
+    done: list[int] = []
+    with Team(4) as team:
+        team.work_off(range(500), done.append)
+        assert sorted(done) == list(range(500))
+        with pytest.raises(ZeroDivisionError):
+            team.work_off([1, 0, 2], lambda item: done.append(1 // item))
 
 
 def test_progressive_pictures_grow_to_the_budget() -> None:
@@ -240,3 +249,27 @@ def test_view_exact_beyond_doubles_still_finds_its_columns() -> None:
     drawing = create(request)
     wanted = [float(3 + third + third * (2 * j + 1) / 14) for j in range(7)]
     assert drawing.swept.tolist() == wanted
+
+
+def test_a_second_opening_compiles_nothing(tmp_path: Path) -> None:
+    script = (
+        "import sys\n"
+        f"sys.path.insert(0, {str(Path(__file__).parent)!r})\n"
+        "from naive_density import drawn, map_of, picture, view\n"
+        "from tinemark.density.kernels import kernels_for\n"
+        "request = picture(map_of('x*x - r'), view('0', '1'), columns=3)\n"
+        "drawn(request, 2048)\n"
+        "kernels = kernels_for(request.system, request.parameter, request.observe)\n"
+        "made = (kernels.advance, kernels.advance_counting, kernels.trace)\n"
+        "print(sum(sum(kernel.stats.cache_misses.values()) for kernel in made))\n"
+    )
+    environment = os.environ | {"TINEMARK_CACHE_DIR": str(tmp_path), "NUMBA_DISABLE_JIT": "0"}
+    compiled = [
+        int(
+            subprocess.run(
+                [sys.executable, "-c", script], env=environment, check=True, capture_output=True, text=True
+            ).stdout
+        )
+        for _ in range(2)
+    ]
+    assert compiled == [3, 0]

@@ -259,6 +259,7 @@ class _Template:
         lines += self.indented(3, self.each("x# += nudge[#]"))
         lines += self.indented(1, ["    else:", *self.indented(2, self.each("x# = start[#]"))])
         lines += ["    fresh = False", "    p = swept[c]", "    for s in range(steps):"]
+        lines += self.indented(2, ["if stop[0] != 0:", "    return done"])
         targets = ", ".join(self.each("x#"))
         lines += self.indented(2, [*self.step(), f"{targets} = {', '.join(self.each('y#'))}"])
         lines += self.indented(1, [*self.each("states[#, c] = x#"), "c += direction", "done += 1"])

@@ -10,7 +10,6 @@ from __future__ import annotations
 import os
 import time
 from collections.abc import Iterator, Sequence
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from itertools import pairwise
 
@@ -30,11 +29,13 @@ from tinemark.density.sampling import (
     scattered_starts,
 )
 from tinemark.density.stopping import StopFlag
+from tinemark.density.team import Team
 from tinemark.systems.errors import TinemarkError
 
 __all__ = [
     "Drawing",
     "StopFlag",
+    "Team",
     "append",
     "columns_distinct",
     "combine",
@@ -140,9 +141,7 @@ def create(request: PictureRequest) -> Drawing:
     )
 
 
-def append(
-    drawing: Drawing, steps: int, stop: StopFlag | None = None, pool: ThreadPoolExecutor | None = None
-) -> None:
+def append(drawing: Drawing, steps: int, stop: StopFlag | None = None, team: Team | None = None) -> None:
     """Draw every column on to `steps` beyond the furthest one, rounded up to whole buffers.
 
     Columns that lag behind, after a stop or a pan, are drawn level with the others. Returns early
@@ -159,13 +158,8 @@ def append(
         (first, min(first + LANES, drawing.request.columns))
         for first in range(0, drawing.request.columns, LANES)
     ]
-    if pool is None:
-        for block in blocks:
-            _draw_block(drawing, block, target, stop)
-    else:
-        # Blocks share no column, so threads share no memory that they write.
-        for done in [pool.submit(_draw_block, drawing, block, target, stop) for block in blocks]:
-            done.result()
+    # Blocks share no column, so threads share no memory that they write.
+    (team or Team(1)).work_off(blocks, lambda block: _draw_block(drawing, block, target, stop))
 
 
 def combine(parts: Sequence[Field]) -> Field:
@@ -192,8 +186,11 @@ def combine(parts: Sequence[Field]) -> Field:
     )
 
 
-def snapshot(drawing: Drawing, periods: bool = True) -> Field:
-    """The picture as it stands, a copy; without `periods` they are left unknown, which is faster."""
+def snapshot(drawing: Drawing, periods: bool = True, stop: StopFlag | None = None) -> Field:
+    """The picture as it stands, a copy; without `periods` they are left unknown, which is faster.
+
+    Once `stop` is set, the periods of the columns not yet looked at are left unknown.
+    """
     counts = np.ascontiguousarray(drawing.counts[:, 1:-1].T)
     empty = np.zeros((0, 0), np.uint32)
     bounds = escape_bounds(drawing.request.system)[:, None]
@@ -205,7 +202,7 @@ def snapshot(drawing: Drawing, periods: bool = True) -> Field:
         with np.errstate(invalid="ignore", divide="ignore"):
             exponent = drawing.growth[start] / grown
         exponent[~inside | (grown == 0)] = np.nan
-        period = _periods(drawing, start) if periods else np.zeros(inside.size, np.int32)
+        period = _periods(drawing, start, stop or StopFlag()) if periods else np.zeros(inside.size, np.int32)
         period[~inside | (drawing.growth[start] > _UNSTABLE_GROWTH) | (drawn == 0)] = 0
         parts.append(Field(empty, exponent, period, ~inside, int(drawn.sum())))
     whole = combine(parts)
@@ -234,9 +231,7 @@ def progressive(
     """
     stop = stop or StopFlag()
     drawing = create(what) if isinstance(what, PictureRequest) else what
-    count = threads or usable_threads()
-    pool = ThreadPoolExecutor(count, thread_name_prefix="tinemark-density") if count > 1 else None
-    try:
+    with Team(threads or usable_threads()) as team:
         rate = 0.0
         # The first picture of a new system does not wait for the trace to be compiled as well.
         told = bool(getattr(drawing.kernels.trace, "signatures", True))
@@ -249,15 +244,15 @@ def progressive(
             if steps <= 0 and not lagging:
                 return
             before = time.perf_counter()
-            append(drawing, steps, stop, pool)
+            append(drawing, steps, stop, team)
             if stop.is_set():
                 return
             rate = max(steps, 1) / max(time.perf_counter() - before, 1e-6)
-            yield snapshot(drawing, told or drawing.level >= budget_steps)
+            field = snapshot(drawing, told or drawing.level >= budget_steps, stop)
+            if stop.is_set():
+                return
+            yield field
             told = True
-    finally:
-        if pool is not None:
-            pool.shutdown(wait=True)
 
 
 def shifted(drawing: Drawing, request: PictureRequest) -> Drawing | None:
@@ -379,11 +374,13 @@ def _carry(drawing: Drawing, stop: StopFlag) -> None:
     drawing.drawn[0, settled] = 0
 
 
-def _periods(drawing: Drawing, start: int) -> NDArray[np.int32]:
+def _periods(drawing: Drawing, start: int, stop: StopFlag) -> NDArray[np.int32]:
     columns = drawing.request.columns
     period = np.zeros(columns, np.int32)
     noted = np.empty((LANES, drawing.states.shape[1], TRACE_STEPS))
     for first in range(0, columns, LANES):
+        if stop.is_set():
+            break
         count = min(LANES, columns - first)
         drawing.kernels.trace(drawing.states[start], drawing.swept, drawing.fixed, first, count, noted)
         find_periods(noted[:count], period[first : first + count])

@@ -1,4 +1,4 @@
-"""Counts to colour indices, and the colour tables. NumPy alone: the window uses this too.
+"""Counts to colour indices, and the colour tables. Loads quickly: the window uses this too.
 
 Look-up tables have 256 entries: index 0 is the empty cell, which shows the ground.
 """
@@ -19,9 +19,6 @@ _LINEAR_SHARE = 0.99
 """Share of the visited cells that the linear tone spreads; the rest is saturated. One fixed point would
 otherwise leave everything else in the first colour."""
 
-_KEY_SHIFT = np.uint32(15)
-_KEY_ZERO = np.uint32((127 << 8) - 1)  # key of a single visit is 1
-_KEYS = (32 << 8) + 2
 _SAMPLE = 1 << 17
 
 
@@ -33,7 +30,7 @@ def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]
     Parameters
     ----------
     counts
-        uint32, any shape.
+        uint32, any shape, any strides.
     mode
         "linear": in proportion to the visits. "log": equal steps of colour for equal factors of visits.
         "equalised": every index about the same number of visited cells.
@@ -49,14 +46,17 @@ def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]
     """
     if mode not in TONES:
         raise ValueError(f'there is no tone "{mode}"; known tones: {", ".join(TONES)}')
-    keys = _keys(counts)
-    table = np.zeros(_KEYS, np.uint8)
+    # The compiler is loaded with the first picture, not with the window.
+    from tinemark.density.tone_kernels import KEYS, largest, toned, visits_of_keys
+
+    cells = counts if counts.ndim == 2 else counts.reshape(1, -1)
+    table = np.zeros(KEYS, np.uint8)
     values = _values()
     if mode == "log":
-        highest = max(float(counts.max(initial=0)), 1.0)
+        highest = max(float(largest(cells)), 1.0)
         share = np.log1p(values * (_LOG_SPAN / highest)) / np.log1p(_LOG_SPAN)
     else:
-        visits = np.bincount(_sampled(keys), minlength=_KEYS)
+        visits = visits_of_keys(cells, _stride(counts.size))
         visits[0] = 0
         below = np.cumsum(visits)
         total = max(int(below[-1]), 1)
@@ -66,29 +66,22 @@ def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]
         else:
             share = (below - 0.5 * visits) / total
     table[1:] = 1.0 + np.clip(share[1:] * 254.0, 0.0, 254.0)
-    return table[keys]
+    return toned(cells, table).reshape(counts.shape)
 
 
-def _keys(counts: NDArray[np.uint32]) -> NDArray[np.uint32]:
-    """A count's logarithm in steps of 1/256 octave: the leading bits of its float, exact up to 512."""
-    bits = counts.astype(np.float32).view(np.uint32)
-    bits >>= _KEY_SHIFT
-    np.subtract(np.maximum(bits, _KEY_ZERO, out=bits), _KEY_ZERO, out=bits)
-    return bits
-
-
-def _sampled(keys: NDArray[np.uint32]) -> NDArray[np.uint32]:
-    """Some hundred thousand cells of a large picture: shares of cells need no more."""
-    flat = keys.ravel()
-    stride = flat.size // _SAMPLE
-    # An odd stride prime to most widths, so that no column is met again and again.
-    return flat[:: 2 * (stride // 2) + 1] if stride > 1 else flat
+def _stride(cells: int) -> int:
+    """A hundred thousand cells of a large picture tell the shares of all of them."""
+    # An odd stride, so that it is prime to most widths and no column is met again and again.
+    stride = cells // _SAMPLE
+    return 2 * (stride // 2) + 1 if stride > 1 else 1
 
 
 @cache
 def _values() -> NDArray[np.float64]:
     """Count that each key stands for."""
-    keys = (np.arange(_KEYS, dtype=np.uint32) + _KEY_ZERO) << _KEY_SHIFT
+    from tinemark.density.tone_kernels import KEY_SHIFT, KEY_ZERO, KEYS
+
+    keys = (np.arange(KEYS, dtype=np.uint32) + np.uint32(KEY_ZERO)) << np.uint32(KEY_SHIFT)
     values = keys.view(np.float32).astype(np.float64)
     values[0] = 0.0
     values.setflags(write=False)
