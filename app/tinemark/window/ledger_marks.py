@@ -26,6 +26,8 @@ def short_label(onset: Onset) -> str:
     """What fits in the lane above the plot."""
     if onset.kind is Kind.FLIP and onset.period_before:
         return f"{onset.period_before}\N{RIGHTWARDS ARROW}{onset.period_after}"
+    if onset.kind is Kind.UNKNOWN:
+        return "by eye"
     return f"{onset.kind.value} {onset.period_after}" if onset.period_after else onset.kind.value
 
 
@@ -33,7 +35,9 @@ def words_of(row: Row) -> str:
     """A row in a few lines, for hovering."""
     onset = row.onset
     value = onset.value if len(onset.value) <= 28 else onset.value[:27] + "\N{HORIZONTAL ELLIPSIS}"
-    lines = [f"{onset.parameter} = {value}", kind_words(onset)]
+    lines = [f"{onset.parameter} = {value}"]
+    if onset.kind is not Kind.UNKNOWN:
+        lines.append(kind_words(onset))
     lines.append(onset.status.value + (f": {onset.reason}" if onset.reason else ""))
     if row.note:
         lines.append(row.note)
