@@ -6,7 +6,7 @@ from fractions import Fraction
 
 import pytest
 from known_onsets import LADDERS, KnownLadder, ladder
-from running import climb, finish, system_of
+from running import climb, finish, own_map, system_of
 
 from tinemark.onsets import engine
 from tinemark.onsets.results import Criticality, Kind, LadderLevel, LadderRequest, Status, Step
@@ -117,6 +117,7 @@ def test_no_first_level() -> None:
     assert "period 1" in text
     assert "periods 2" in text
     assert "start before" in text
+    assert "either end" in text
 
 
 @pytest.mark.parametrize(
@@ -139,3 +140,19 @@ def test_levels_are_yielded_as_they_are_found() -> None:
     steps = [item for item in items if isinstance(item, Step)]
     assert all(step.text for step in steps)
     assert items.index(found[0]) < items.index(found[1]) - 1
+
+
+@pytest.mark.parametrize(
+    ("start", "stop", "words"), [("3", "3", "empty"), ("3", "3.0000000000000001", "too narrow")]
+)
+def test_ranges_without_room(start: str, stop: str, words: str) -> None:
+    """Empty and far too narrow ranges are refused in words."""
+    with pytest.raises(NoOnsetFound, match=words):
+        climb(system_of("logistic"), start, stop)
+
+
+@pytest.mark.parametrize("formula", ["r", "0.5", "x", "r*x", "exp(exp(r*x))"])
+def test_maps_without_a_cascade(formula: str) -> None:
+    """Constant, straight and escaping maps end in words, not in a long search."""
+    with pytest.raises(NoOnsetFound):
+        climb(own_map(formula), "0.5", "1.5", levels=3)

@@ -254,15 +254,15 @@ class FloatMap:
             return float(self.module.bundle(x, r, self.fixed, 1)[1])
 
         grid = np.linspace(low, high, count)
+        slopes = [slope(x) for x in grid]
         found = []
-        left, left_slope = grid[0], slope(grid[0])
-        for right in grid[1:]:
-            right_slope = slope(right)
-            if left_slope == 0:
-                found.append(float(left))
-            elif left_slope * right_slope < 0:
-                found.append(_bisect(slope, left, right))
-            left, left_slope = right, right_slope
+        for place in range(1, count):
+            left, right = slopes[place - 1], slopes[place]
+            if left * right < 0:
+                found.append(_bisect(slope, grid[place - 1], grid[place]))
+            elif right == 0 and left != 0:
+                # The first point of a flat stretch, or a turning point that the grid hits.
+                found.append(float(grid[place]))
         return found
 
     def _scale(self) -> float:

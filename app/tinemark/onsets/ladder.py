@@ -9,7 +9,7 @@ to do. A prediction is only ever a start: what is reported was solved for and pr
 from __future__ import annotations
 
 from collections.abc import Generator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
 
 from tinemark.onsets.ball_orbits import ball_loops, ball_of, fraction_of, in_chunks, precision
@@ -36,6 +36,10 @@ from tinemark.systems.exact import fraction_text
 LONGEST_PERIOD = 2**18
 COLUMNS = (600, 8000)
 """Columns in which the first level is looked for; the finer round only where the coarser found nothing."""
+NARROWEST = 1e-12
+"""Ranges below this share of the parameter cannot be scanned in doubles."""
+PATIENCE = 40
+"""Branches of one start and period followed in vain, from which on only every 40th is followed."""
 DOUBLES_TELL = 1e-11
 """Gaps below this share of the parameter are left to high precision from the start."""
 
@@ -62,6 +66,27 @@ class _Course:
         )
 
 
+@dataclass
+class _Tried:
+    """Stretches of parameter, by period, on which a branch was followed and has no flip in the range."""
+
+    spans: dict[int, list[tuple[float, float]]] = field(default_factory=dict)
+    skipped: int = 0
+
+    def covers(self, period: int, r: float) -> bool:
+        """Whether there is nothing to gain from a cycle of this period there."""
+        known = self.spans.get(period, [])
+        if any(low <= r <= high for low, high in known):
+            return True
+        # A branch that never can be followed, such as a constant map's: now and then is enough.
+        self.skipped += 1
+        return len(known) > PATIENCE and self.skipped % PATIENCE != 0
+
+    def add(self, period: int, low: float, high: float) -> None:
+        """Take a stretch in."""
+        self.spans.setdefault(period, []).append((low, high))
+
+
 def ladder_one(request: LadderRequest) -> Generator[Step | LadderLevel, None, LadderResult]:
     """Follow a cascade of a one-state map; see `engine.ladder`.
 
@@ -72,6 +97,12 @@ def ladder_one(request: LadderRequest) -> Generator[Step | LadderLevel, None, La
     """
     if request.start == request.stop:
         raise NoOnsetFound("the ladder's range is empty", what_to_do="give two different ends")
+    width, size = abs(request.stop - request.start), max(abs(request.start), abs(request.stop))
+    if width < size * Fraction(NARROWEST):
+        raise NoOnsetFound(
+            f"the ladder's range is too narrow to look for its first level in ({fraction_text(width, 3)})",
+            what_to_do="widen it; single onsets in so narrow a view are found by a click",
+        )
     one = one_map(request.system, request.parameter)
     course = _Course(one, float_map(one), request, 1 if request.stop > request.start else -1)
     first = yield from _first_flip(course)
@@ -132,15 +163,16 @@ def _first_flip(course: _Course) -> Generator[Step, None, Crossing]:
     looked = f"stable cycles were seen of periods {periods}" if seen else "no stable cycle was seen"
     raise NoOnsetFound(
         f"no cycle of period {request.base_period} flips between {course.range_text}; {looked}",
-        what_to_do="start before the first flip of the ladder, or give the base period that splits there",
+        what_to_do="start before the first flip of the ladder (from either end), "
+        "or give the base period that splits there",
     )
 
 
 def _scan(course: _Course, columns: int, seen: set[int]) -> Generator[Step, None, list[Crossing]]:
     request, cycles = course.request, course.cycles
     start, stop = float(request.start), float(request.stop)
-    # By start and period: what one start settles on along the range is one branch, or a few.
-    tried: dict[int, dict[int, list[tuple[float, float]]]] = {}
+    # By start: what one start settles on along the range is one branch, or a few.
+    tried: dict[int, _Tried] = {}
     block = 25
     for first in range(0, columns + 1, block):
         rs = [start + (stop - start) * k / columns for k in range(first, min(first + block, columns + 1))]
@@ -150,7 +182,7 @@ def _scan(course: _Course, columns: int, seen: set[int]) -> Generator[Step, None
             cycles, [x for _, x, _ in jobs], [r for _, _, r in jobs], 3000, 8 * request.base_period + 64
         )
         for (label, _, r), end, periods in zip(jobs, ends, returns, strict=True):
-            known = tried.setdefault(label, {})
+            known = tried.setdefault(label, _Tried())
             flip = _flip_from(course, end, r, [n for n in periods if n > 0], seen, known)
             if flip is not None:
                 return [flip]
@@ -164,16 +196,16 @@ def _flip_from(
     r: float,
     periods: Sequence[int],
     seen: set[int],
-    tried: dict[int, list[tuple[float, float]]],
+    tried: _Tried,
 ) -> Crossing | None:
-    """The flip that an orbit leads to; `tried` holds, by period, where branches are known to have none."""
+    """The flip that an orbit leads to, where no branch is known already to have none."""
     request, cycles = course.request, course.cycles
     base = request.base_period
     width = abs(float(request.stop - request.start))
     for period in dict.fromkeys(periods):
         if period % base and period > base:
             continue
-        if any(low <= r <= high for low, high in tried.get(period, ())):
+        if tried.covers(period, r):
             return None
         cycle = find_cycle(cycles, x, r, period)
         if cycle is None or not abs(cycle.multiplier) < 1.5:
@@ -185,7 +217,7 @@ def _flip_from(
         for crossing in crossings:
             if crossing.kind is Kind.FLIP and crossing.period == base and _begins(course, crossing):
                 return crossing
-        tried.setdefault(cycle.period, []).append((r + span[0], r + span[1]))
+        tried.add(cycle.period, r + span[0], r + span[1])
         return None
     return None
 
