@@ -86,6 +86,13 @@ def test_two_patches_follow_the_logistic_ladder() -> None:
         assert_holds(result, ONSETS["logistic"].onsets, 5)
 
 
+def test_two_flips_close_together_are_told_apart() -> None:
+    """With e = 0.02 the steady state flips in step at 3 and out of step at 2 + 1/(1 - 2 e) (both exact)."""
+    for start in ("2.7", "2.9", "2.5"):
+        result = ladder("two_patch", "r", start, "4", 4, (("e", "0.02"),))
+        assert_holds(result, ONSETS["logistic"].onsets, 4)
+
+
 def test_a_ladder_from_a_window() -> None:
     """The window of period 3 of the logistic map, two patches in step (recomputed)."""
     result = ladder("two_patch", "r", "3.835", "3.85", 3, base_period=3)

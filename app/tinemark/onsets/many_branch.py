@@ -27,6 +27,9 @@ LARGEST_TURN = 0.3
 
 JOINED = 1e-7
 """A doubled cycle whose opposite points are closer than this has joined the branch it split from."""
+TOGETHER = 1e-4
+"""Two flips closer than this along a branch count as one place, as where a symmetry makes them meet."""
+MOST_NARROWING = 12
 AFTER_EVENT = 12
 """Points for which a branch is followed beyond its first crossing."""
 ON_THE_CIRCLE = 1e-8
@@ -67,6 +70,11 @@ def circle_test(values: Sequence[complex]) -> float:
     """Product of (multiplier i times multiplier j - 1): zero where a pair has product 1."""
     pairs = [values[i] * values[j] - 1 for i in range(len(values)) for j in range(i)]
     return float(np.real(np.prod(pairs)))
+
+
+def below_minus_one(values: Sequence[complex]) -> int:
+    """How many real multipliers lie below -1."""
+    return sum(value.real < -1 and abs(value.imag) < 1e-12 for value in values)
 
 
 @dataclass(frozen=True)
@@ -207,6 +215,11 @@ def _advance(float_map: FloatManyMap, here: BranchPoint, window: Window, step: f
 def _close_enough(here: BranchPoint, following: BranchPoint, window: Window, step: float) -> bool:
     if step < 1e-5:
         return True
+    if (
+        step > TOGETHER
+        and abs(below_minus_one(here.multipliers) - below_minus_one(following.multipliers)) > 1
+    ):
+        return False  # two passed -1 at once, so that the test's sign shows neither
     if _cosine(here.moves, here.move_r, following.moves, following.move_r, window) < 0.7:
         return False
     for before, after in ((here, following), (following, here)):
@@ -227,6 +240,26 @@ def _events(a: BranchPoint, b: BranchPoint) -> list[Event]:
     if len(a.multipliers) > 1 and a.circle_test * b.circle_test < 0 and _pair_crosses(a, b):
         found.append(Event(Crossing.NEIMARK_SACKER, a, b))
     return found
+
+
+def narrowed(float_map: FloatManyMap, event: Event, window: Window, bracket: float) -> Event:
+    """A flip with its bracket in the parameter narrowed, so that a neighbouring flip is not taken for it."""
+    low, high = event.before, event.after
+    for place in range(MOST_NARROWING):
+        if abs(high.cycle.r - low.cycle.r) <= bracket:
+            break
+        share = low.flip_test / (low.flip_test - high.flip_test)
+        # Every third time the middle: the secant alone can stick to one end.
+        share = 0.5 if place % 3 == 2 else min(max(share, 0.02), 0.98)
+        cycle = newton(float_map, between(low.cycle, high.cycle, share), window.scales)
+        middle = None if cycle is None else branch_point(float_map, cycle, window)
+        if middle is None or middle.flip_test == 0:
+            break
+        if middle.flip_test * low.flip_test > 0:
+            low = middle
+        else:
+            high = middle
+    return replace(event, before=low, after=high)
 
 
 def _joins(float_map: FloatManyMap, a: BranchPoint, b: BranchPoint, window: Window) -> list[Event]:

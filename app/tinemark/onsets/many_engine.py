@@ -19,6 +19,7 @@ from tinemark.onsets.many_branch import (
     branch_point,
     circle_test,
     follow,
+    narrowed,
 )
 from tinemark.onsets.many_cycles import Cycle, multipliers, newton, same_cycle
 from tinemark.onsets.many_ladder import ladder_many
@@ -34,6 +35,8 @@ __all__ = ["ladder_many", "refine_many"]
 MOST_BRANCHES = 6
 NARROWEST = 1e-8
 """Views narrower than this share of the parameter are searched as if they were this wide."""
+NARROW = 2e-4
+"""Share of the view to which the bracket of a flip is narrowed before it is polished."""
 CLOSE = 1.5
 """A second onset is shown when it lies no farther than this many times the nearest one's distance …"""
 CLOSE_FLOOR = 0.02
@@ -279,6 +282,9 @@ def _onset_at(
     reach = 3 * bracket + 0.02 * window.width
     try:
         if candidate.kind is Crossing.FLIP:
+            close = narrowed(float_map, candidate.event, window, NARROW * window.width)
+            rough = _turned(float_map, close.rough, place)
+            reach = 2 * abs(close.before.cycle.r - close.after.cycle.r) + 1e-9 * window.width
             return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, scales, reach))
         half = rough.period // 2
         if rough.period % 2 == 0:

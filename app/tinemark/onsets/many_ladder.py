@@ -12,7 +12,16 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tinemark.onsets.many_branch import Crossing, Event, Window, between, branch_point, follow
+from tinemark.onsets.many_branch import (
+    Crossing,
+    Event,
+    Window,
+    below_minus_one,
+    between,
+    branch_point,
+    follow,
+    narrowed,
+)
 from tinemark.onsets.many_cycles import (
     Cycle,
     least_period,
@@ -37,6 +46,8 @@ MOST_POINTS = 200
 RESOLUTION = 1e-12
 """Gaps below this share of the parameter are too narrow for doubles to follow."""
 NEUTRAL = 1e-6
+NARROW = 1e-3
+"""Share of the sweep to which the bracket of the first flip is narrowed before it is polished."""
 
 
 @dataclass(frozen=True)
@@ -143,18 +154,19 @@ def _first_flip(
     direction = 1 if stop > start else -1
     trace, events = yield from follow(float_map, point, window, direction)
     rotation = next((e for e in events if e.kind is Crossing.NEIMARK_SACKER), None)
+    other: Settled | None = None
     for event in events:
         if event.kind is not Crossing.FLIP or not window.low <= event.rough.r <= window.high:
             continue
-        bracket = abs(event.before.cycle.r - event.after.cycle.r)
-        try:
-            return (
-                yield from settle_onset(
-                    float_map, Kind.FLIP, event.rough, digits, scales, 2 * bracket + 1e-9 * width
-                )
-            )
-        except (NotFound, SwitchingTouched):
+        settled = yield from _flip_of(float_map, event, window, digits)
+        if settled is None:
             continue
+        # A cascade starts where a stable cycle splits; a flip of an unstable one is the last resort.
+        if all(abs(value) <= 1 + NEUTRAL for value in settled.found.others):
+            return settled
+        other = other or settled
+    if other is not None:
+        return other
     name = float_map.many.parameter
     ended = f"the cycle of period {cycle.period} was followed to {name} = {trace[-1].cycle.r:.6g}"
     if rotation is not None:
@@ -165,6 +177,19 @@ def _first_flip(
     if _turns(events):
         raise NoOnsetFound(f"{ended}; it turns round in a fold and shows no flip")
     raise NoOnsetFound(f"{ended} and shows no flip", what_to_do="widen the range")
+
+
+def _flip_of(
+    float_map: FloatManyMap, event: Event, window: Window, digits: int
+) -> Generator[Step, None, Settled | None]:
+    """The flip that a branch's crossing stands for, or None where it cannot be polished."""
+    close = narrowed(float_map, event, window, NARROW * window.width)
+    bracket = abs(close.before.cycle.r - close.after.cycle.r)
+    reach = bracket + 1e-9 * window.width
+    try:
+        return (yield from settle_onset(float_map, Kind.FLIP, close.rough, digits, window.scales, reach))
+    except (NotFound, SwitchingTouched):
+        return None
 
 
 def _turns(events: list[Event]) -> bool:
@@ -261,6 +286,10 @@ def _follow_doubled(
                     f"the cycle of period {here.cycle.period} could not be followed beyond "
                     f"{name} = {here.cycle.r:.12g}: it may end in a fold there"
                 )
+            continue
+        passed = below_minus_one(following.values) - below_minus_one(here.values)
+        if passed > 1 and abs(step) > 1e-4 * abs(offset):
+            step /= 3  # two flips in one step: the nearer is wanted
             continue
         if following.flip_test <= 0:
             return here, following
