@@ -6,7 +6,7 @@ from fractions import Fraction
 
 import pytest
 from PySide6.QtCore import QTimer
-from PySide6.QtGui import QKeySequence
+from PySide6.QtGui import QImage, QKeySequence
 from PySide6.QtWidgets import QApplication, QFileDialog, QMenu, QMessageBox, QPushButton
 from shell_window import FakeDesks, flip, window_on
 
@@ -257,6 +257,24 @@ def test_an_own_system_file_opens_as_a_session(window, tmp_path):
     assert window.files.open(path)
     assert window.keeper.session.system_text == builtin_text("ricker")
     assert window.keeper.path is None and not window.isWindowModified()
+
+
+def test_the_picture_and_the_system_are_saved_as_files(window, desks, qtbot, tmp_path, monkeypatch):
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.field is not None)
+    target = tmp_path / "picture.png"
+    monkeypatch.setattr(QFileDialog, "getSaveFileName", lambda *_: (str(target), ""))
+    window.files.ask_save_picture()
+    qtbot.waitUntil(lambda: window.status.words.words == "Saved picture.png.")
+    image = QImage(str(target))
+    assert image.width() > window.diagram.parts.columns and image.height() > window.diagram.parts.rows
+    target = tmp_path / "own.toml"
+    assert window.files.ask_save_system()
+    assert target.read_text(encoding="utf-8") == builtin_text("logistic")
+    target = tmp_path / "no such folder" / "own.toml"
+    assert not window.files.ask_save_system() and window.status.words.words.startswith("Not saved.")
+    window.files.ask_save_picture()
+    qtbot.waitUntil(lambda: window.status.words.words.startswith("Not saved. own.toml: no such file"))
 
 
 def test_recent_files(window, tmp_path):

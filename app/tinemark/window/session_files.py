@@ -17,8 +17,10 @@ from tinemark.document.session_file import open_session, save_session
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.library import builtin_text
 from tinemark.systems.system_file import read_system_file
+from tinemark.window.axis import axis_title
 from tinemark.window.layout_memory import LayoutMemory
 from tinemark.window.session_keeper import SessionKeeper
+from tinemark.window.theme import current_theme
 
 if TYPE_CHECKING:
     from tinemark.window.main_window import MainWindow
@@ -119,7 +121,7 @@ class SessionFiles:
         try:
             save_session(session, path)
         except (TinemarkError, OSError) as error:
-            self._say(f"Not saved. {error}")
+            self._say(_not_saved(path, error))
             return False
         self._keeper.saved_as(path, session)
         self._memory.add_recent(path)
@@ -135,7 +137,7 @@ class SessionFiles:
         try:
             path.write_text(self._keeper.session.system_text, encoding="utf-8")
         except OSError as error:
-            self._say(f"Not saved. {path.name}: {error.strerror or error}")
+            self._say(_not_saved(path, error))
             return False
         self._window.status.show_words(f"Saved {path.name}.")
         return True
@@ -149,21 +151,24 @@ class SessionFiles:
         path = self._ask_target("Save the picture", offered, PICTURES, ".png")
         if path is None:
             return
-        picture = self._keeper.session.picture
-        from tinemark.window.theme import current_theme
-
-        palette = picture.palette or current_theme().picture
+        session, diagram, labels = self._keeper.session, self._window.diagram, self._window.diagram.labels
+        palette = session.picture.palette or current_theme().picture
+        across = axis_title(labels.parameter, labels.parameter_unit, "")
+        up = axis_title(labels.observe, labels.observe_unit, "")
+        view, title = diagram.image_view, session.title or self._keeper.system.title
 
         def write() -> None:
-            from tinemark.density.png import write_picture_png
+            from tinemark.density.png import Frame, write_picture_png
 
-            write_picture_png(field, path, picture.tone, palette)
+            write_picture_png(
+                field, path, session.picture.tone, palette, frame=Frame(view, across, up, title)
+            )
 
         self._window.bridge.call(
             "picture file",
             write,
             lambda _: self._window.status.show_words(f"Saved {path.name}."),
-            lambda error: self._say(f"Not saved. {error}"),
+            lambda error: self._say(_not_saved(path, error)),
         )
 
     def _ask_target(self, title: str, offered: str, kinds: str, suffix: str) -> Path | None:
@@ -213,3 +218,10 @@ def _file_name(title: str) -> str:
     kept = "".join(c if c.isalnum() or c in " -_.,()" else " " for c in title)
     name = " ".join(kept.split()).strip(". ")
     return name.removesuffix(SUFFIX)[:80] or "session"
+
+
+def _not_saved(path: Path, error: BaseException) -> str:
+    """Why a file was not written, without the system's own jargon."""
+    if isinstance(error, OSError):
+        return f"Not saved. {path.name}: {(error.strerror or str(error)).lower()}; choose another place."
+    return f"Not saved. {error}"
