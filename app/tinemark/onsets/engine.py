@@ -18,7 +18,7 @@ from tinemark.onsets.results import (
 )
 from tinemark.systems.errors import TinemarkError
 
-MOST_DIGITS = 300
+MOST_DIGITS = 250
 """Significant digits that may be asked for."""
 
 

@@ -161,7 +161,6 @@ def prove(
         if stop < period:
             visited.append((stop, state[0]))
     with precision(bits):
-        zero = arb(0)
         image = _krawczyk(box, inverse, correction, state)
         evidence = [("one onset in the box", _box_words(box))]
         evidence += _least_period(period, first, visited)
@@ -169,7 +168,6 @@ def prove(
             criticality, degenerate, words = _flip_claims(state)
         else:
             criticality, degenerate, words = _fold_claims(state)
-        del zero
         return Proof(
             parameter=_interval(box.r + image[1]),
             state=_interval(box.x + image[0]),
