@@ -370,3 +370,16 @@ def test_a_defect_is_told_and_the_window_goes_on(window):
     hook = _telling(window, lambda *seen: passed.append(seen))
     hook(ValueError, ValueError("odd"), None)
     assert passed and "ValueError: odd" in window.status.words.words
+
+
+def test_a_click_before_the_refinery_is_there_is_seen_and_kept(qtbot, tmp_path, desks):
+    with window_on(tmp_path) as window:
+        window.rows.pick(Fraction(3), Fraction(1, 2))
+        assert [words for _, _, words in window.diagram.pending.values()] == [
+            "getting ready\N{HORIZONTAL ELLIPSIS}"
+        ]
+        window.onsets.cancel()
+        assert not window.diagram.pending and not window.status.cancel.isVisible()
+        window.rows.pick(Fraction(3), Fraction(1, 2))
+        window.onsets.attach(desks.refinery)
+        assert list(window.diagram.pending) == [1] and len(desks.refinery.asked) == 1

@@ -33,6 +33,7 @@ from tinemark.work.jobs import Cancelled, Crashed, Failed, Finished, LevelFound,
 LEAST_DIGITS = 20
 SPARE_DIGITS = 8
 MOST_DIGITS = 150
+WAITING = "getting ready\N{HORIZONTAL ELLIPSIS}"
 
 
 class RefineryLike(Protocol):
@@ -94,7 +95,7 @@ class OnsetJobs(QObject):
         self._status = status
         self.refinery: RefineryLike | None = None
         self.jobs: dict[int, Job] = {}
-        self._early: list[Callable[[], None]] = []
+        self._early: list[Job] = []
 
     # --- asking --------------------------------------------------------------------------------------------
 
@@ -102,8 +103,9 @@ class OnsetJobs(QObject):
         """The refinery is there; ask what was waiting for it."""
         self.refinery = refinery
         early, self._early = self._early, []
-        for ask in early:
-            ask()
+        for number, job in enumerate(early, start=1):
+            self._diagram.remove_pending(-number)
+            self.ask(job)
 
     def pick(self, system: System, parameter: str, view: View, near: Fraction, observed: Fraction) -> None:
         """A click."""
@@ -123,8 +125,10 @@ class OnsetJobs(QObject):
     def ask(self, job: Job) -> None:
         """Hand a job to the refinery, now or as soon as it is there."""
         if self.refinery is None:
-            self._early.append(lambda: self.ask(job))
-            self._status.show_busy("Getting ready…", None)
+            self._early.append(job)
+            if isinstance(job.request, RefineRequest):
+                self._diagram.add_pending(-len(self._early), job.parameter, job.observed, WAITING)
+            self._status.show_busy(WAITING.capitalize(), None)
             return
         if isinstance(job.request, RefineRequest):
             number = self.refinery.refine(job.request)
@@ -138,6 +142,8 @@ class OnsetJobs(QObject):
     def cancel(self) -> bool:
         """Cancel everything under way; False when there was nothing."""
         busy = bool(self.jobs or self._early)
+        for number in range(1, len(self._early) + 1):
+            self._diagram.remove_pending(-number)
         self._early.clear()
         if self.refinery is not None:
             for number in self.jobs:
