@@ -147,7 +147,9 @@ class Refinery:
                     self._report_fault()
                     self._give_up()
         finally:
-            self._stop_worker()
+            if self._worker is not None:
+                # It keeps nothing that would be lost; a friendly end would keep the window waiting.
+                self._end(self._worker)
             with self._wake_lock:
                 self._wake_writer.close()
             self._wake_reader.close()
@@ -323,15 +325,6 @@ class Refinery:
         request_reader.close()
         event_writer.close()
         self._worker = _Process(process, request_writer, event_reader)
-
-    def _stop_worker(self) -> None:
-        worker_ = self._worker
-        if worker_ is None:
-            return
-        if worker_.running is None and worker_.ready:
-            self._send(worker_, ("stop",))
-            worker_.process.join(STOP_TIME)
-        self._end(worker_)
 
     def _end(self, worker_: _Process) -> int | None:
         """End the process whatever it does, and give everything back; returns its exit code."""

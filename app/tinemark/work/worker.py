@@ -4,7 +4,7 @@
 one job runs at a time. Messages are small tuples, both ways:
 
 =====================  ==========================================
-to the worker          ("run", id, request), ("cancel", id), ("warm", system), ("hurry",), ("stop",)
+to the worker          ("run", id, request), ("cancel", id), ("warm", system), ("hurry",)
 from the worker        ("ready",) at first and after a warming, ("step", id, item),
                        ("done", id, result), ("error", id, error), ("cancelled", id)
 =====================  ==========================================
@@ -53,7 +53,7 @@ def engine_steps(request: OnsetRequest) -> Steps:
 
 
 def serve(requests: Connection, events: Connection, engine: Engine = engine_steps) -> None:
-    """Answer requests until told to stop or the other side is gone."""
+    """Answer requests until the other side is gone."""
     # Ctrl-C in a terminal reaches every process of the group; only the parent decides here.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
     # The parent may die without a word; then its end of the pipe is closed.
@@ -72,8 +72,6 @@ def _serve(requests: Connection, events: Connection, engine: Engine) -> None:
             case ("warm", system):
                 _warm(system, requests)
                 events.send(("ready",))
-            case ("stop",):
-                return
             case ("cancel", _) | ("hurry",):
                 # It crossed the end of what it was meant for.
                 pass
