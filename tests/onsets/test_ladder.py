@@ -120,6 +120,12 @@ def test_no_first_level() -> None:
     assert "either end" in text
 
 
+def test_no_stable_cycle_is_claimed_of_the_tent_map() -> None:
+    """Narrow chaotic bands come back nearly to where they were; they are no cycles (every slope is mu > 1)."""
+    with pytest.raises(NoOnsetFound, match="no stable cycle was seen"):
+        climb(system_of("tent"), "1.05", "2", levels=3)
+
+
 @pytest.mark.parametrize(
     "change", [{"base_period": 0}, {"levels": 0}, {"digits": 0}, {"digits": 100000}], ids=str
 )

@@ -210,7 +210,8 @@ def _flip_from(
         cycle = find_cycle(cycles, x, r, period)
         if cycle is None or not abs(cycle.multiplier) < 1.5:
             continue
-        seen.add(cycle.period)
+        if abs(cycle.multiplier) < 1:
+            seen.add(cycle.period)
         if cycle.period not in (base, 2 * base):
             continue
         crossings, span = crossings_from(cycles, cycle, Fraction(r), 1.01 * width)
