@@ -139,3 +139,24 @@ def test_a_cancelled_ladder_keeps_what_it_found(window, qtbot):
     assert not QApplication.activeModalWidget() or not isinstance(
         QApplication.activeModalWidget(), QMessageBox
     )
+
+
+def test_closing_in_the_middle_of_things_leaves_nothing_behind(qtbot, tmp_path):
+    with window_on(tmp_path, make=make_all) as window:
+        qtbot.waitUntil(lambda: window.onsets.refinery is not None, timeout=60_000)
+        window.rows.pick(Fraction(3), Fraction("0.66"))
+        window.keeper.set_probe(Fraction("3.7"))
+        window.diagram.gestures.zoom(Fraction(1, 2))
+        window.files.may_leave = lambda: True
+        window.close()
+        QApplication.processEvents()
+        assert not window.isVisible()
+        # What still comes in is dropped, and nothing is asked of closed desks.
+        window.diagram.gestures.zoom(Fraction(1, 2))
+        window.keeper.set_probe(Fraction("3.8"))
+        QApplication.processEvents()
+
+
+def test_closing_before_the_desks_are_made_leaves_nothing_behind(qtbot, tmp_path):
+    with window_on(tmp_path, make=make_all) as window:
+        window.close()

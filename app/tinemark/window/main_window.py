@@ -346,6 +346,8 @@ class MainWindow(QMainWindow):
 
     def shut_down(self) -> None:
         """End every thread and process. Nothing comes after it."""
+        for jobs in (self.pictures, self.onsets, self.probes):
+            jobs.detach()
         self.bridge.close()
         self.workers.close()
 

@@ -107,6 +107,11 @@ class OnsetJobs(QObject):
             self._diagram.remove_pending(-number)
             self.ask(job)
 
+    def detach(self) -> None:
+        """The refinery is about to close; ask for nothing any more."""
+        self.jobs.clear()
+        self.refinery = None
+
     def pick(self, system: System, parameter: str, view: View, near: Fraction, observed: Fraction) -> None:
         """A click."""
         request = RefineRequest(system, parameter, near, view.width, observed, view.height, digits_for(view))

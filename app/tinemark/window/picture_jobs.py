@@ -144,3 +144,8 @@ class PictureJobs(QObject):
         """Stop drawing; what has been drawn stays."""
         if self.desk is not None:
             self.desk.cancel()
+
+    def detach(self) -> None:
+        """The desk is about to close; ask for nothing any more."""
+        self._soon.stop()
+        self.desk = None

@@ -40,6 +40,10 @@ class ProbeJobs(QObject):
         self.desk = desk
         self._ask()
 
+    def detach(self) -> None:
+        """The desk is about to close; ask for nothing any more."""
+        self.desk = None
+
     def show(self, session: Session, system: System, *, reveal: bool) -> None:
         """Show the session's probe, and fold the panel when there is none.
 
