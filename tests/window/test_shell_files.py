@@ -132,9 +132,14 @@ def test_what_went_wrong_is_said_at_the_click_and_a_crash_offers_the_same_again(
     window.rows.pick(view.left, view.bottom)
     window.bridge.event_came.emit(Crashed(2, request, -9))
     (again,) = window.diagram.callout.buttons
+    assert window.status.words.property("rank") == "error"
     again.click()
     assert desks.refinery.asked[-1] == request and len(window.onsets.jobs) == 1
     assert not window.keeper.session.ledger.rows
+    # Words about a place go with it.
+    window.say_trouble("Something is wrong here.")
+    window.diagram.gestures.zoom(Fraction(1, 2))
+    assert window.diagram.callout is None and window.status.words.words == ""
 
 
 def test_a_reading_is_refined_in_its_own_row(window, desks):

@@ -60,3 +60,27 @@ def test_contrast_is_that_of_the_standard():
     assert contrast("#000000", "#ffffff") == pytest.approx(21.0)
     assert contrast("#777777", "#777777") == pytest.approx(1.0)
     assert contrast("#767676", "#ffffff") == pytest.approx(4.54, abs=0.01)
+
+
+def test_nothing_heavy_is_loaded_before_the_window_is_on_screen(tmp_path):
+    script = (
+        "import sys\n"
+        "from PySide6.QtWidgets import QApplication\n"
+        "from tinemark.window.app import application, make_window\n"
+        "app = application()\n"
+        "window = make_window()\n"
+        "window.show()\n"
+        "app.processEvents()\n"
+        "print(sorted({'numba', 'llvmlite', 'sympy', 'flint', 'scipy', 'mpmath'} & set(sys.modules)))\n"
+        "window.close()\n"
+    )
+    ended = subprocess.run(
+        [sys.executable, "-c", script],
+        env=os.environ | {"QT_QPA_PLATFORM": "offscreen", "TINEMARK_CONFIG": str(tmp_path)},
+        capture_output=True,
+        text=True,
+        timeout=100,
+        check=False,
+    )
+    assert ended.returncode == 0, ended.stderr
+    assert ended.stdout.strip() == "[]"

@@ -183,6 +183,7 @@ class MainWindow(QMainWindow):
         self.diagram.show_view(after.view)
         if before is None or before.view != after.view:
             self.status.forget_width()
+            self.status.forget_trouble()
         if before is None or (before.system_text, before.parameter, before.observe) != (
             after.system_text,
             after.parameter,

@@ -67,6 +67,11 @@ class StatusLine(QWidget):
         self.words.style().polish(self.words)
         self.words.set_words(words)
 
+    def forget_trouble(self) -> None:
+        """Take a warning or an error away: what it was about is no longer in view."""
+        if self.words.property("rank") in ("warning", "error"):
+            self.show_words("")
+
     def show_steps(self, steps: int) -> None:
         """How many steps the picture is made of."""
         self.steps.setText(f"{counted(steps)} steps drawn" if steps else "")
