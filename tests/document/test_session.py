@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from fractions import Fraction
 
 import onset_samples as known
@@ -15,7 +14,7 @@ from tinemark.density.request import SweepRule, View
 from tinemark.document import history as his
 from tinemark.document import ledger as led
 from tinemark.document import session as ses
-from tinemark.document.first_view import evaluate, first_view
+from tinemark.document.first_view import first_view
 from tinemark.document.history import Timeline
 from tinemark.document.session import PictureSettings, Session
 from tinemark.document.views import (
@@ -32,7 +31,6 @@ from tinemark.document.views import (
     view_text,
 )
 from tinemark.systems.errors import FormulaError, NumberError, SystemFileError
-from tinemark.systems.formula import read_formula
 from tinemark.systems.library import builtin_names, builtin_system, builtin_text
 
 # Views
@@ -117,29 +115,6 @@ def test_first_view_of_an_own_observable_holds_its_orbits() -> None:
     assert view.top > 6
     escaping = LOGISTIC_TEXT.replace("r*x*(1 - x)", "x**2 + 5").replace('range = ["0", "1"]', "")
     assert (ses.new_session(escaping).view.bottom, ses.new_session(escaping).view.top) == (-1, 1)
-
-
-def test_plain_evaluation() -> None:
-    names = {"x": 0.3, "y": -2.0}
-    for text, value in {
-        "x**2 - y/4 + pi": 0.3**2 + 0.5 + math.pi,
-        "min(x, y) + max(x, y)*abs(y) + floor(x - 1)": -2 + 0.6 - 1,
-        "sin(x) + cos(x)*tan(x) + atan2(y, x)": math.sin(0.3)
-        + math.cos(0.3) * math.tan(0.3)
-        + math.atan2(-2, 0.3),
-        "exp(x) + log(x) + sqrt(x) + asin(x) + acos(x) + atan(x)": math.exp(0.3)
-        + math.log(0.3)
-        + math.sqrt(0.3)
-        + math.asin(0.3)
-        + math.acos(0.3)
-        + math.atan(0.3),
-        "sinh(x) + cosh(x) + tanh(-x)": math.sinh(0.3) + math.cosh(0.3) - math.tanh(0.3),
-        "sqrt(y) if x > 1 else y": -2.0,
-        "1 if x <= 0.3 else 2": 1.0,
-    }.items():
-        assert evaluate(read_formula(text, ("x", "y")), names) == pytest.approx(value, rel=1e-14)
-    with pytest.raises(ValueError, match="domain"):
-        evaluate(read_formula("sqrt(y)", ("x", "y")), names)
 
 
 # Changes

@@ -121,7 +121,7 @@ def test_no_first_level() -> None:
 
 
 def test_no_stable_cycle_is_claimed_of_the_tent_map() -> None:
-    """Narrow chaotic bands come back nearly to where they were; they are no cycles (every slope is mu > 1)."""
+    """Narrow chaotic bands come back nearly to where they were, but every slope is mu > 1."""
     with pytest.raises(NoOnsetFound, match="no stable cycle was seen"):
         climb(system_of("tent"), "1.05", "2", levels=3)
 
