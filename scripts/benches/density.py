@@ -120,35 +120,25 @@ def _request(case: Case, columns: int = COLUMNS, rows: int = ROWS):  # type: ign
 
 
 def _ours(case: Case, exponent: bool = False) -> Callable[[], object]:
-    """Our kernel on one thread, counting as the peers do; or with the exponent over every step."""
+    """Our kernel on one thread, counting as the peers do; or with the exponent over every step.
+
+    As for the peers, what a run fills (states, counts) is made anew in each, and nothing else is.
+    """
     from tinemark.density.kernels import LANES
     from tinemark.density.renderer import StopFlag, create
 
-    request = _request(case)
+    drawing = create(_request(case))
+    kernel = drawing.kernels.advance if exponent else drawing.kernels.advance_counting
+    stop = StopFlag().cell
 
     def draw() -> object:
-        drawing = create(request)
-        drawing.states[:] = case.start
-        kernel = drawing.kernels.advance if exponent else drawing.kernels.advance_counting
-        stop = StopFlag().cell
+        states, tangents, growth = np.full((1, COLUMNS), case.start), np.ones((1, COLUMNS)), np.zeros(COLUMNS)
+        counts = np.zeros((COLUMNS, ROWS + 2), np.uint32)
+        scaling = (drawing.scale, drawing.offset, stop)
         for first in range(0, COLUMNS, LANES):
-            kernel(
-                drawing.states[0],
-                drawing.tangents[0],
-                drawing.growth[0],
-                drawing.swept,
-                drawing.fixed,
-                drawing.counts,
-                first,
-                min(LANES, COLUMNS - first),
-                STEPS,
-                True,
-                True,
-                drawing.scale,
-                drawing.offset,
-                stop,
-            )
-        return drawing.counts
+            block = (first, min(LANES, COLUMNS - first), STEPS, True, True)
+            kernel(states, tangents, growth, drawing.swept, drawing.fixed, counts, *block, *scaling)
+        return counts
 
     return draw
 

