@@ -14,6 +14,11 @@ class Kind(Enum):
 
     FLIP = "flip"
     FOLD = "fold"
+    NEIMARK_SACKER = "Neimark-Sacker"
+    TRANSCRITICAL = "transcritical"
+    PITCHFORK = "pitchfork"
+    BORDER_COLLISION = "border collision"
+    CRISIS = "crisis"
     UNKNOWN = "unknown"  # only of a pick read by eye, until it is refined
 
 
@@ -33,6 +38,55 @@ class Criticality(Enum):
     SUBCRITICAL = "subcritical"
     UNDECIDED = "undecided"
     NOT_APPLICABLE = ""
+
+
+@dataclass(frozen=True)
+class Sensitivity:
+    """How the onset moves with another parameter.
+
+    Attributes
+    ----------
+    name
+        The other parameter.
+    derivative
+        Decimal text of d(onset)/d(parameter), in the onset's unit per the parameter's unit.
+    """
+
+    name: str
+    derivative: str
+
+
+@dataclass(frozen=True)
+class Certificate:
+    """What others need to check a proof again without our solver.
+
+    Attributes
+    ----------
+    system_text
+        TOML text of the system with the values that held.
+    kind, period, parameter
+        The claim: an onset of this kind, of a cycle of exactly this least period.
+    criticality
+        Claimed sign of the normal-form coefficient, in words.
+    precision
+        Bits the proof worked with.
+    parameter_box
+        (middle, half-width) of the proved box in the parameter, exact decimal texts.
+    state_boxes
+        For each state (name, middle, half-width) of one cycle point, exact decimal texts.
+    digest
+        SHA-256 over all of the above and the printed value, lower and upper.
+    """
+
+    system_text: str
+    kind: str
+    period: int
+    parameter: str
+    criticality: str
+    precision: int
+    parameter_box: tuple[str, str]
+    state_boxes: tuple[tuple[str, str, str], ...]
+    digest: str
 
 
 @dataclass(frozen=True)
@@ -57,6 +111,13 @@ class Onset:
         One point of the cycle at the onset, per state: (name, decimal text).
     evidence
         What was checked, as (claim, finding) pairs in words.
+    consequence
+        What follows past the onset where it is more than the period says, in words: a jump and how far
+        back it holds, which symmetry breaks, which surface is touched.
+    sensitivities
+        Derivative with respect to each other parameter.
+    certificate
+        How to check the proof again; None where there is none.
     """
 
     parameter: str
@@ -72,6 +133,9 @@ class Onset:
     reason: str = ""
     states: tuple[tuple[str, str], ...] = ()
     evidence: tuple[tuple[str, str], ...] = ()
+    consequence: str = ""
+    sensitivities: tuple[Sensitivity, ...] = ()
+    certificate: Certificate | None = None
 
     @property
     def value_fraction(self) -> Fraction:
@@ -98,6 +162,8 @@ class RefineRequest:
         `height` None: the distance is measured along the parameter alone.
     digits
         Significant digits wanted.
+    kinds
+        Kinds to look for; None for all.
     """
 
     system: System
@@ -107,6 +173,7 @@ class RefineRequest:
     observed: Fraction | None = None
     height: Fraction | None = None
     digits: int = 20
+    kinds: frozenset[Kind] | None = None
 
 
 @dataclass(frozen=True)
@@ -153,3 +220,89 @@ class LadderResult:
     base_period: int
     levels: tuple[LadderLevel, ...]
     message: str = ""
+
+
+@dataclass(frozen=True)
+class SurveyRequest:
+    """Every onset of a range, of cycles of least period up to `max_period`.
+
+    `kinds` None: all kinds. The observed quantity is not limited.
+    """
+
+    system: System
+    parameter: str
+    start: Fraction
+    stop: Fraction
+    max_period: int
+    digits: int = 20
+    kinds: frozenset[Kind] | None = None
+
+
+@dataclass(frozen=True)
+class SurveyFind:
+    """One onset of a survey as it is found."""
+
+    onset: Onset
+
+
+@dataclass(frozen=True)
+class SurveyResult:
+    """A finished survey: onsets in order of the parameter, and a sentence on what may be missing."""
+
+    onsets: tuple[Onset, ...]
+    message: str
+
+
+@dataclass(frozen=True)
+class BranchRequest:
+    """The cycles of a view, followed as branches.
+
+    Attributes
+    ----------
+    left, right, bottom, top
+        The view: swept parameter and observed quantity.
+    max_period
+        Longest period of the cycles followed.
+    """
+
+    system: System
+    parameter: str
+    observe: str
+    left: Fraction
+    right: Fraction
+    bottom: Fraction
+    top: Fraction
+    max_period: int = 16
+
+
+@dataclass(frozen=True)
+class BranchPiece:
+    """A stretch of one branch between two changes of stability.
+
+    Attributes
+    ----------
+    period, stable
+        Least period, and whether all multipliers lie inside the unit circle.
+    parameter
+        Offsets of the swept parameter from the view's left edge, as shares of its width; rising or
+        falling along the branch.
+    observed
+        One sequence a cycle point: heights above the view's bottom, as shares of its height.
+    multipliers
+        Largest multiplier by modulus at each place, as (real, imaginary).
+    """
+
+    period: int
+    stable: bool
+    parameter: tuple[float, ...]
+    observed: tuple[tuple[float, ...], ...]
+    multipliers: tuple[tuple[float, float], ...]
+
+
+@dataclass(frozen=True)
+class BranchResult:
+    """All pieces; onsets passed as (kind, period, parameter share, observed share); and a sentence."""
+
+    pieces: tuple[BranchPiece, ...]
+    passed: tuple[tuple[Kind, int, float, float], ...]
+    message: str
