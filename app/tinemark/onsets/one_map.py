@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import cached_property, lru_cache
 
@@ -35,6 +35,8 @@ class OneMap:
         Where an orbit starts when nothing better is known, and at what parameter.
     extent
         The range the state lives in, where the system gives one.
+    system
+        The system it was made of, for what is written down of a proof; two maps are the same without it.
     """
 
     state: str
@@ -46,6 +48,7 @@ class OneMap:
     start: Fraction
     value: Fraction
     extent: tuple[Fraction, Fraction] | None
+    system: System = field(compare=False, repr=False)
 
     @cached_property
     def exact_derivatives(self) -> dict[str, Expr]:
@@ -96,6 +99,7 @@ def one_map(system: System, parameter: str) -> OneMap:
         # Only what is used: a map with a known range is the same one wherever the parameter stands.
         value=Fraction(0) if extent is not None else system.parameter(parameter).value.fraction,
         extent=extent,
+        system=system,
     )
 
 

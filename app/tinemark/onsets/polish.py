@@ -18,6 +18,7 @@ from flint import arb
 
 from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, in_chunks, precision
 from tinemark.onsets.branches import Cycle, crossing_at, cycle_with_multiplier, least_period
+from tinemark.onsets.certificates import certified
 from tinemark.onsets.decimals import (
     GUARD_DIGITS,
     decimal_places,
@@ -30,6 +31,7 @@ from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
 from tinemark.onsets.proofs import (
     TARGETS,
+    Box,
     Inverse,
     NotProved,
     Proof,
@@ -130,7 +132,8 @@ def settle_onset(
             bits = bits * 3 // 2
             continue
         shown = yield from _shown_state(loops, proof, show_after, bits)
-        return Settled(_onset_of(one, rough, proof, digits, places, shown), rough.x, rough.r)
+        onset = _with_certificate(one, _onset_of(one, rough, proof, digits, places, shown), box, proof, bits)
+        return Settled(onset, rough.x, rough.r)
     else:
         # A regular onset is proved with bits enough. What is left are pitchforks, transcritical points and
         # tangencies of higher order, where the equations are singular: none of them is an onset of this kind.
@@ -241,6 +244,18 @@ def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int,
         reason=proof.degenerate,
         states=((one.state, state_text(middle, digits)),),
         evidence=proof.evidence,
+    )
+
+
+def _with_certificate(one: OneMap, onset: Onset, box: Box, proof: Proof, bits: int) -> Onset:
+    x, half_x, r, half_r = (fraction_of(side) for side in (box.x, box.half_x, box.r, box.half_r))
+    return certified(
+        onset,
+        one.system,
+        bits,
+        (r, half_r),
+        [(one.state, (x, half_x))],
+        keep_within=(proof.parameter, proof.state),
     )
 
 
