@@ -16,7 +16,7 @@ from tinemark.document import ledger as led
 from tinemark.document import session as ses
 from tinemark.document.session import PictureSettings, Session
 from tinemark.document.session_file import session_bytes
-from tinemark.onsets.results import Kind, Onset, Status
+from tinemark.onsets.results import Certificate, Kind, Onset, Sensitivity, Status
 
 LOGISTIC_TEXT = """\
 # Kept with its comments.
@@ -73,6 +73,29 @@ def full_session() -> Session:
     )
     session = ses.with_probe(session, Fraction("3.83"))
     return ses.with_words(session, title='Growth "A" \\ β', notes="line 1\nline 2\t<&>\u2028")
+
+
+def certified_session() -> Session:
+    """The whole session, and a row with all that a proof may leave behind."""
+    session = full_session()
+    certificate = Certificate(
+        system_text=LOGISTIC_TEXT,
+        kind="flip",
+        period=8,
+        parameter="r",
+        criticality="supercritical",
+        precision=120,
+        parameter_box=("3.5644072660954325977735575", "0.0000000000000000000000012"),
+        state_boxes=(("x", "0.490607658056600960502243955", "0.000000000000000000000012"),),
+        digest="0123456789abcdef" * 4,
+    )
+    onset = dataclasses.replace(
+        known.flip(known.LOGISTIC[3], 8, width="1e-21"),
+        consequence="a jump, held back to r = 3.5",
+        sensitivities=(Sensitivity("c", "-1.25e-3"),),
+        certificate=certificate,
+    )
+    return pick(session, onset)
 
 
 def json_of(session: Session) -> bytes:

@@ -14,7 +14,7 @@ from typing import Any
 import onset_samples as known
 import pytest
 from hypothesis import given, settings
-from session_samples import CUBIC_TEXT, full_session, json_of, packed, pick, sessions
+from session_samples import CUBIC_TEXT, certified_session, full_session, json_of, packed, pick, sessions
 
 from tinemark.document import atomic_file, session_file
 from tinemark.document import session as ses
@@ -73,7 +73,8 @@ def test_the_version_1_file_still_opens() -> None:
 
 def test_the_present_version_is_written_to_the_byte() -> None:
     """A change of what is written needs a new schema version: then this file gets a younger brother."""
-    data = (FILES / "version_1.tinemark").read_bytes()
+    data = (FILES / "version_2.tinemark").read_bytes()
+    assert read_session(data) == certified_session()
     assert session_bytes(read_session(data)) == data
 
 
@@ -95,7 +96,7 @@ def test_keys_are_only_labels_in_a_file() -> None:
 
 
 def test_steps_are_taken_one_by_one() -> None:
-    """The machinery, on invented formats: there is no older version than 1 yet."""
+    """The machinery, on invented formats."""
     steps = {
         1: lambda plain: {"colour": plain["color"]},
         2: lambda plain: {"colours": [plain["colour"]]},
@@ -110,7 +111,8 @@ def test_steps_are_taken_one_by_one() -> None:
 
 def test_an_older_file_is_brought_up_to_date(monkeypatch: pytest.MonkeyPatch) -> None:
     """A made-up version 0 runs through the real reader, its step in the real register."""
-    plain = json.loads(json_of(full_session()))
+    with zipfile.ZipFile(FILES / "version_1.tinemark") as archive:
+        plain = json.loads(archive.read("session.json"))
     plain["heading"] = plain.pop("title")
     plain["version"] = 0
     data = packed(json.dumps(plain).encode())
@@ -121,14 +123,14 @@ def test_an_older_file_is_brought_up_to_date(monkeypatch: pytest.MonkeyPatch) ->
     def rename(old: dict[str, Any]) -> dict[str, Any]:
         return {"title" if key == "heading" else key: value for key, value in old.items()}
 
-    monkeypatch.setattr(session_file, "MIGRATIONS", {0: rename})
-    assert read_session(data) == full_session()
+    monkeypatch.setattr(session_file, "MIGRATIONS", {**session_file.MIGRATIONS, 0: rename})
+    assert read_session(data) == read_session((FILES / "version_1.tinemark").read_bytes())
 
 
 def test_a_newer_version_is_refused_in_words() -> None:
-    data = packed(json_of(full_session()).replace(b'"version": 1', b'"version": 7'))
+    data = packed(json_of(full_session()).replace(b'"version": 2', b'"version": 7'))
     with pytest.raises(
-        SessionFileError, match=r"f, version: has schema version 7.*reads up to 1; open it with a newer"
+        SessionFileError, match=r"f, version: has schema version 7.*reads up to 2; open it with a newer"
     ):
         read_session(data, file="f")
 

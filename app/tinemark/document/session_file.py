@@ -12,7 +12,7 @@ import io
 import stat
 import zipfile
 import zlib
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -20,6 +20,7 @@ from typing import Any
 import msgspec
 
 from tinemark.document.atomic_file import write_whole
+from tinemark.document.migrations import MIGRATIONS, Migration
 from tinemark.document.session import Session, read_system
 from tinemark.document.session_schema import FORMAT, VERSION, Misfit, PlainSession, from_plain, to_plain
 from tinemark.systems.errors import SessionFileError, TinemarkError
@@ -35,9 +36,6 @@ _RATIO_COUNTS_FROM = 1024 * 1024  # a small member cannot be a bomb, however wel
 _MOMENT = (1980, 1, 1, 0, 0, 0)  # the same in every file: when it was saved stands in the folder
 _UNDAMAGED = "open an undamaged copy"
 
-Migration = Callable[[dict[str, Any]], dict[str, Any]]
-MIGRATIONS: Mapping[int, Migration] = {}
-"""For each old schema version the step to the next one. Version 1 is the first, so there is none yet."""
 OLDEST_VERSION = 1
 
 

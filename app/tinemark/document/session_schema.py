@@ -1,4 +1,4 @@
-"""A session as plain data: what stands in `session.json`, version 1, and the limits of every field.
+"""A session as plain data: what stands in `session.json`, version 2, and the limits of every field.
 
 The file knows no class of ours: these structs only check shapes, and two functions translate. A
 change here is a new schema version with a migration from the one before.
@@ -6,6 +6,7 @@ change here is a new schema version with a migration from the one before.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from fractions import Fraction
 from typing import Annotated, Final, Literal
 
@@ -27,13 +28,16 @@ from tinemark.document.views import (
     view_of,
     view_text,
 )
-from tinemark.onsets.results import Criticality, Kind, Onset, Status
+from tinemark.onsets.results import Certificate, Criticality, Kind, Onset, Sensitivity, Status
 from tinemark.systems.errors import NumberError
 
 FORMAT: Final = "tinemark-session"
-VERSION: Final = 1
+VERSION: Final = 2
 MAX_SYSTEM_TEXT = 512 * 1024
 """Characters of all system texts together: each is read when a session is opened."""
+
+MAX_CERTIFIED_TEXT = 8 * 1024 * 1024
+"""Characters of the system texts of all certificates together: they are parsed, not evaluated, on opening."""
 
 Short = Annotated[str, Meta(max_length=400)]
 Words = Annotated[str, Meta(max_length=4000)]
@@ -45,6 +49,8 @@ Decimal = Annotated[str, Meta(pattern=r"^-?[0-9]{1,320}(?:\.[0-9]{1,1200})?(?:[e
 Edge = Annotated[str, Meta(max_length=1250)]
 Count = Annotated[int, Meta(ge=0, le=10_000_000)]
 Period = Annotated[int, Meta(ge=0, le=2**53)]
+SideTexts = tuple[Decimal, Decimal]
+StateSide = tuple[Short, Decimal, Decimal]
 
 
 class PlainView(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
@@ -74,6 +80,27 @@ class PlainPicture(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     palette: Short
 
 
+class PlainSensitivity(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """How an onset moves with another parameter."""
+
+    name: Short
+    derivative: Decimal
+
+
+class PlainCertificate(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """How to check a proof again. `system` is the place of its system's text in `certified`."""
+
+    system: Annotated[int, Meta(ge=0, lt=MAX_ROWS)]
+    kind: Kind
+    period: Annotated[int, Meta(ge=1, le=2**53)]
+    parameter: Short
+    criticality: Criticality
+    precision: Annotated[int, Meta(ge=1, le=100_000)]
+    parameter_box: SideTexts
+    state_boxes: Annotated[list[StateSide], Meta(max_length=64)]
+    digest: Key
+
+
 class PlainOnset(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     """One onset."""
 
@@ -90,6 +117,9 @@ class PlainOnset(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     reason: Words
     states: Annotated[list[tuple[Short, Decimal]], Meta(max_length=64)]
     evidence: Annotated[list[tuple[Words, Words]], Meta(max_length=64)]
+    consequence: Words
+    sensitivities: Annotated[list[PlainSensitivity], Meta(max_length=64)]
+    certificate: PlainCertificate | None
 
 
 class PlainRow(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
@@ -124,7 +154,7 @@ class PlainSession(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     """All of `session.json`."""
 
     format: Literal["tinemark-session"]
-    version: Literal[1]
+    version: Literal[2]
     title: Words
     notes: LongText
     system: LongText
@@ -136,6 +166,7 @@ class PlainSession(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     probe: Edge | None
     ledger: PlainLedger
     systems: Annotated[list[PlainSystem], Meta(max_length=200)]
+    certified: Annotated[list[LongText], Meta(max_length=MAX_ROWS)]
 
 
 class Misfit(Exception):
@@ -149,6 +180,13 @@ class Misfit(Exception):
 
 def to_plain(session: Session) -> PlainSession:
     """The session as plain data."""
+    # Certificates of one system carry the same text: it is written once.
+    texts = list(
+        dict.fromkeys(
+            row.onset.certificate.system_text for row in session.ledger.rows if row.onset.certificate
+        )
+    )
+    places = {text: place for place, text in enumerate(texts)}
     return PlainSession(
         format=FORMAT,
         version=VERSION,
@@ -171,8 +209,11 @@ def to_plain(session: Session) -> PlainSession:
             palette=session.picture.palette,
         ),
         probe=None if session.probe is None else number_text(session.probe),
-        ledger=PlainLedger([_plain_row(row) for row in session.ledger.rows], session.ledger.next_number),
+        ledger=PlainLedger(
+            [_plain_row(row, places) for row in session.ledger.rows], session.ledger.next_number
+        ),
         systems=[PlainSystem(key, text) for key, text in session.systems],
+        certified=texts,
     )
 
 
@@ -181,8 +222,23 @@ def _plain_view(view: View) -> PlainView:
     return PlainView(text.left, text.right, text.bottom, text.top)
 
 
-def _plain_row(row: Row) -> PlainRow:
+def _plain_certificate(certificate: Certificate, places: Mapping[str, int]) -> PlainCertificate:
+    return PlainCertificate(
+        system=places[certificate.system_text],
+        kind=Kind(certificate.kind),
+        period=certificate.period,
+        parameter=certificate.parameter,
+        criticality=Criticality(certificate.criticality),
+        precision=certificate.precision,
+        parameter_box=certificate.parameter_box,
+        state_boxes=list(certificate.state_boxes),
+        digest=certificate.digest,
+    )
+
+
+def _plain_row(row: Row, places: Mapping[str, int]) -> PlainRow:
     onset = row.onset
+    certificate = onset.certificate
     return PlainRow(
         id=row.id,
         onset=PlainOnset(
@@ -199,6 +255,9 @@ def _plain_row(row: Row) -> PlainRow:
             reason=onset.reason,
             states=list(onset.states),
             evidence=list(onset.evidence),
+            consequence=onset.consequence,
+            sensitivities=[PlainSensitivity(s.name, s.derivative) for s in onset.sensitivities],
+            certificate=None if certificate is None else _plain_certificate(certificate, places),
         ),
         system_key=row.system_key,
         fixed=list(row.fixed),
@@ -227,6 +286,8 @@ def from_plain(plain: PlainSession) -> Session:
         raise Misfit("picture.palette", f'"{picture.palette[:40]}" is not one of {", ".join(PALETTE_NAMES)}')
     if len(plain.system) + sum(len(system.text) for system in plain.systems) > MAX_SYSTEM_TEXT:
         raise Misfit("systems", f"the texts have more than {MAX_SYSTEM_TEXT} characters together")
+    if sum(len(text) for text in plain.certified) > MAX_CERTIFIED_TEXT:
+        raise Misfit("certified", f"the texts have more than {MAX_CERTIFIED_TEXT} characters together")
     return Session(
         system_text=plain.system,
         parameter=plain.parameter,
@@ -244,7 +305,7 @@ def from_plain(plain: PlainSession) -> Session:
             tone=picture.tone,
             palette=picture.palette,
         ),
-        ledger=_ledger(plain.ledger),
+        ledger=_ledger(plain.ledger, plain.certified),
         systems=tuple((system.key, system.text) for system in plain.systems),
         probe=None if plain.probe is None else _number(plain.probe, "probe"),
         title=plain.title,
@@ -266,7 +327,7 @@ def _view(view: PlainView, key: str) -> View:
         raise Misfit(key, error.message) from error
 
 
-def _ledger(plain: PlainLedger) -> Ledger:
+def _ledger(plain: PlainLedger, certified: list[str]) -> Ledger:
     seen: set[str] = set()
     levels: set[tuple[str, int]] = set()
     for n, row in enumerate(plain.rows):
@@ -280,15 +341,33 @@ def _ledger(plain: PlainLedger) -> Ledger:
             raise Misfit(f"{key}.onset", "the value lies outside its own interval")
         if bool(row.ladder) != (row.level is not None) or bool(row.ladder) != (row.base_period is not None):
             raise Misfit(key, "ladder, level and base period go together")
+        certificate = row.onset.certificate
+        if certificate is not None and certificate.system >= len(certified):
+            raise Misfit(f"{key}.onset.certificate.system", "names a text that is not in the file")
         if row.level is not None:
             if (row.ladder, row.level) in levels:
                 raise Misfit(f"{key}.level", f"level {row.level} of ladder {row.ladder} is there twice")
             levels.add((row.ladder, row.level))
-    return Ledger(tuple(_row(row) for row in plain.rows), plain.next_number)
+    return Ledger(tuple(_row(row, certified) for row in plain.rows), plain.next_number)
 
 
-def _row(plain: PlainRow) -> Row:
+def _certificate(plain: PlainCertificate, certified: list[str]) -> Certificate:
+    return Certificate(
+        system_text=certified[plain.system],
+        kind=plain.kind.value,
+        period=plain.period,
+        parameter=plain.parameter,
+        criticality=plain.criticality.value,
+        precision=plain.precision,
+        parameter_box=plain.parameter_box,
+        state_boxes=tuple(plain.state_boxes),
+        digest=plain.digest,
+    )
+
+
+def _row(plain: PlainRow, certified: list[str]) -> Row:
     onset = plain.onset
+    certificate = onset.certificate
     return Row(
         id=plain.id,
         onset=Onset(
@@ -305,6 +384,9 @@ def _row(plain: PlainRow) -> Row:
             reason=onset.reason,
             states=tuple(onset.states),
             evidence=tuple(onset.evidence),
+            consequence=onset.consequence,
+            sensitivities=tuple(Sensitivity(s.name, s.derivative) for s in onset.sensitivities),
+            certificate=None if certificate is None else _certificate(certificate, certified),
         ),
         system_key=plain.system_key,
         fixed=tuple(plain.fixed),
