@@ -131,7 +131,7 @@ def settle_onset(
             reason = "the enclosure stayed wider than the digits asked for"
             bits = bits * 3 // 2
             continue
-        shown = yield from _shown_state(loops, proof, show_after, bits)
+        shown = yield from shown_state(loops, proof, show_after, bits)
         onset = _with_certificate(one, _onset_of(one, rough, proof, digits, places, shown), box, proof, bits)
         return Settled(onset, rough.x, rough.r)
     else:
@@ -218,7 +218,7 @@ def newton_step(
         return (x - shift_x).mid(), (r - shift_r).mid(), inverse, abs(float(shift_r))
 
 
-def _shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Generator[Step, None, Fraction]:
+def shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Generator[Step, None, Fraction]:
     """The cycle point that an onset shows: middle of the proved one, some steps on."""
     with precision(bits):
         x = ball_of(sum(proof.state, Fraction(0)) / 2).mid()

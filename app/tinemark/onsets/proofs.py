@@ -161,16 +161,16 @@ def prove(
         if stop < period:
             visited.append((stop, state[0]))
     with precision(bits):
-        image = _krawczyk(box, inverse, correction, state)
-        evidence = [("one onset in the box", _box_words(box))]
+        image = krawczyk_image(box, inverse, correction, state)
+        evidence = [("one onset in the box", box_words(box))]
         evidence += _least_period(period, first, visited)
         if kind is Kind.FLIP:
             criticality, degenerate, words = _flip_claims(state)
         else:
             criticality, degenerate, words = _fold_claims(state)
         return Proof(
-            parameter=_interval(box.r + image[1]),
-            state=_interval(box.x + image[0]),
+            parameter=interval_of(box.r + image[1]),
+            state=interval_of(box.x + image[0]),
             criticality=criticality,
             degenerate=degenerate,
             evidence=(*evidence, *words),
@@ -181,7 +181,9 @@ def _ball(middle: Any, half: Any) -> Any:
     return arb(middle, half)
 
 
-def _krawczyk(box: Box, inverse: Inverse, correction: Correction, state: tuple[Any, ...]) -> tuple[Any, Any]:
+def krawczyk_image(
+    box: Box, inverse: Inverse, correction: Correction, state: tuple[Any, ...]
+) -> tuple[Any, Any]:
     """K([m]) - m, strictly inside the box."""
     _, u, v, w, z, _ = state
     span_x, span_r = arb(0, box.half_x), arb(0, box.half_r)
@@ -214,13 +216,16 @@ def _flip_claims(state: tuple[Any, ...]) -> tuple[Criticality, str, list[tuple[s
     speed = z + w * v / 2
     if not speed.abs_lower() > 0:
         raise NotProved("the multiplier may touch -1 without crossing it")
-    words = [("multiplier exactly -1", "by the equations solved"), ("crosses -1 with speed", _number(speed))]
+    words = [
+        ("multiplier exactly -1", "by the equations solved"),
+        ("crosses -1 with speed", number_words(speed)),
+    ]
     # f_xx^2/4 + f_xxx/6 of f^p where its derivative is -1 (Kuznetsov, 2004, section 4.5).
     coefficient = -schwarzian / 6
     if coefficient > 0:
-        return Criticality.SUPERCRITICAL, "", [*words, ("flip coefficient", _number(coefficient))]
+        return Criticality.SUPERCRITICAL, "", [*words, ("flip coefficient", number_words(coefficient))]
     if coefficient < 0:
-        return Criticality.SUBCRITICAL, "", [*words, ("flip coefficient", _number(coefficient))]
+        return Criticality.SUBCRITICAL, "", [*words, ("flip coefficient", number_words(coefficient))]
     if not coefficient.is_finite():
         raise NotProved("the flip coefficient could not be bounded")
     return Criticality.UNDECIDED, "the flip coefficient may be zero, so the flip may be degenerate", words
@@ -237,22 +242,25 @@ def _fold_claims(state: tuple[Any, ...]) -> tuple[Criticality, str, list[tuple[s
         "",
         [
             ("multiplier exactly +1", "by the equations solved"),
-            ("speed of the parameter", _number(v)),
-            ("curvature at the tangency", _number(w)),
+            ("speed of the parameter", number_words(v)),
+            ("curvature at the tangency", number_words(w)),
         ],
     )
 
 
-def _interval(ball: Any) -> Interval:
+def interval_of(ball: Any) -> Interval:
+    """Ends of a ball as rationals."""
     middle, half = fraction_of(ball.mid()), fraction_of(ball.rad())
     return middle - half, middle + half
 
 
-def _number(ball: Any) -> str:
+def number_words(ball: Any) -> str:
+    """A ball's middle to six digits."""
     return str(ball.str(6, radius=False))
 
 
-def _box_words(box: Box) -> str:
+def box_words(box: Box) -> str:
+    """How the uniqueness of an onset was shown."""
     return f"interval Newton test on a box of half-width {float(box.half_r):.2g} in the parameter"
 
 
