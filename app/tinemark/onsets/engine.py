@@ -7,11 +7,15 @@ any step. They run in the refinement process, since ball precision is one value 
 from __future__ import annotations
 
 from collections.abc import Generator
+from dataclasses import replace
 
 from tinemark.onsets.results import (
+    BranchRequest,
+    BranchResult,
     LadderLevel,
     LadderRequest,
     LadderResult,
+    Onset,
     RefineRequest,
     RefineResult,
     Step,
@@ -44,10 +48,17 @@ def refine(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     if len(request.system.states) == 1:
         from tinemark.onsets.clicks import refine_one
 
-        return (yield from refine_one(request))
-    from tinemark.onsets.many_engine import refine_many
+        result = yield from refine_one(request)
+    else:
+        from tinemark.onsets.many_engine import refine_many
 
-    return (yield from refine_many(request))
+        result = yield from refine_many(request)
+    from tinemark.onsets.sensitivities import with_sensitivities
+
+    onsets: tuple[Onset, ...] = ()
+    for onset in result.onsets:
+        onsets += ((yield from with_sensitivities(request.system, onset)),)
+    return replace(result, onsets=onsets)
 
 
 def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, LadderResult]:
@@ -74,10 +85,56 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
     if len(request.system.states) == 1:
         from tinemark.onsets.ladder import ladder_one
 
-        return (yield from ladder_one(request))
+        return (yield from _with_sensitivities(request, ladder_one(request)))
     from tinemark.onsets.many_engine import ladder_many
 
-    return (yield from ladder_many(request))
+    return (yield from _with_sensitivities(request, ladder_many(request)))
+
+
+def _with_sensitivities(
+    request: LadderRequest, levels: Generator[Step | LadderLevel, None, LadderResult]
+) -> Generator[Step | LadderLevel, None, LadderResult]:
+    """Fill in how each level moves with the other parameters, as soon as it is found."""
+    from tinemark.onsets.sensitivities import LONGEST_UNASKED, with_sensitivities
+
+    filled: dict[int, LadderLevel] = {}
+    while True:
+        try:
+            item = next(levels)
+        except StopIteration as done:
+            result: LadderResult = done.value
+            return replace(result, levels=tuple(filled.get(item.level, item) for item in result.levels))
+        if isinstance(item, LadderLevel):
+            onset = yield from with_sensitivities(request.system, item.onset, longest=LONGEST_UNASKED)
+            item = filled[item.level] = replace(item, onset=onset)
+        yield item
+
+
+def branches(request: BranchRequest) -> Generator[Step, None, BranchResult]:
+    """Follow the cycles of a view as branches, stable or not, around folds and into what splits off.
+
+    The work is bounded; the result's message says where a bound was met.
+
+    Yields
+    ------
+    Step
+        At safe points, some milliseconds apart.
+
+    Returns
+    -------
+    BranchResult
+        As the generator's value.
+
+    Raises
+    ------
+    NoOnsetFound
+        The view has no extent, or is too narrow for double precision.
+    """
+    if request.max_period < 1:
+        raise TinemarkError("branches have a longest period of 1 or more")
+    from tinemark.onsets.branch_survey import branches_of
+
+    return (yield from branches_of(request))
 
 
 def _check(digits: int) -> None:
