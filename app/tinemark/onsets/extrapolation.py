@@ -30,7 +30,7 @@ SAFETY_FOUR_LEVELS = Decimal(5)
 """The same for the limit from four levels, where two formulas exist and neither has a history."""
 SAFETY_TWO_RATIOS = Decimal("2.5")
 """Factor between the difference of two ratios and the uncertainty of where they tend."""
-MOVE_MEMORY = Decimal(40)
+MOVE_MEMORY = Decimal(20)
 """A last move counts as at least one part in this of the move before: one lucky agreement proves nothing."""
 LEAST_CONTRACTION = Decimal("0.15")
 """Moves of a limit are taken to go on shrinking as they did, by no more than this factor a level. The

@@ -20,10 +20,9 @@ from tinemark.onsets.branches import (
     crossings_from,
     cycle_with_multiplier,
     find_cycle,
-    follow_to_multiplier,
-    least_period,
 )
 from tinemark.onsets.decimals import leading_power
+from tinemark.onsets.doubled_branch import born_at, flip_of_doubled
 from tinemark.onsets.float_map import FloatMap, float_map
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Lost, Rough, Settled, first_bits, settle_onset
@@ -33,7 +32,10 @@ from tinemark.onsets.searches import settled
 from tinemark.systems.errors import NoOnsetFound
 from tinemark.systems.exact import fraction_text
 
-LONGEST_PERIOD = 2**18
+LONGEST_PERIOD = 2**24
+"""Longest cycles of a ladder; each level takes twice the time of the last, and no more memory."""
+LONGEST_FOLLOWED = 2**17
+"""Cycles longer than this are only reached by prediction: doubles cannot tell their points apart."""
 COLUMNS = (600, 8000)
 """Columns in which the first level is looked for; the finer round only where the coarser found nothing."""
 NARROWEST = 1e-12
@@ -243,7 +245,9 @@ def _next_level(
         settled = yield from _from_prediction(course, found[-1], guess, period)
         if settled is not None:
             return settled
-    crossing = yield from _along_doubled_branch(course, found[-1], period)
+    crossing = None
+    if period <= LONGEST_FOLLOWED:
+        crossing = yield from _along_doubled_branch(course, found[-1], period)
     if crossing is None:
         end = fraction_text(course.request.stop, 10)
         return f"no flip of the period-{period} cycle was found on the way to {end}"
@@ -305,7 +309,6 @@ def _along_doubled_branch(
     x, r = float(last.x), float(last.r)
     flip = crossing_at(cycles, Cycle(half, x, r, -1.0), Kind.FLIP)
     extent = flip.extent if flip is not None else abs(float(course.request.stop) - r) / 10
-    width = abs(float(course.request.stop - course.request.start))
     turning = cycles.critical_points(r)[:6]
     for share in (0.05, 0.1, 0.2, 0.02, 0.4, 0.01, 0.7, 1.0, 1.5):
         here = r + course.direction * share * extent
@@ -319,11 +322,11 @@ def _along_doubled_branch(
         for end, periods in zip(ends, returns, strict=True):
             for count in dict.fromkeys(n for n in periods if n > 0):
                 cycle = find_cycle(cycles, end, here, count)
-                if cycle is None or cycle.period != period:
+                if cycle is None or cycle.period != period or not abs(cycle.multiplier) < 1:
                     continue
-                there, _ = follow_to_multiplier(cycles, cycle, -1.0, Fraction(here), 1.01 * width)
-                if there is None or not course.ahead(there.r, r):
+                if not born_at(cycles, cycle, r):
                     continue
-                if least_period(cycles, there.x, there.r, period) == period:
+                there = flip_of_doubled(cycles, cycle, r, float(course.request.stop))
+                if there is not None:
                     return crossing_at(cycles, there, Kind.FLIP)
     return None
