@@ -159,10 +159,10 @@ def test_subcritical_flip_by_a_click() -> None:
     assert Fraction(onset.lower) < 1 < Fraction(onset.upper)
 
 
-def test_pitchfork_is_not_reported() -> None:
-    """A click on the pitchfork of a symmetric map finds no onset of the two kinds."""
-    with pytest.raises(NoOnsetFound):
-        click(own_map("r*x - x**3"), "1.001", "0.1")
+def test_pitchfork_is_no_fold() -> None:
+    """A click on the pitchfork of a symmetric map finds it, and no fold."""
+    (onset,) = click(own_map("r*x - x**3"), "1.001", "0.1").onsets
+    assert onset.kind is Kind.PITCHFORK
 
 
 def test_steps_come_often_and_carry_words() -> None:

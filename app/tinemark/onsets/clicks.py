@@ -15,8 +15,9 @@ from fractions import Fraction
 from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap, one_map
-from tinemark.onsets.polish import Lost, Rough, settle_onset
-from tinemark.onsets.results import Kind, Onset, RefineRequest, RefineResult, Status, Step
+from tinemark.onsets.onset_words import consequence_sentence, describe, short_number
+from tinemark.onsets.polish import Lost, Rough
+from tinemark.onsets.results import Kind, Onset, RefineRequest, RefineResult, Step
 from tinemark.onsets.searches import (
     DEEP_NEAR,
     DEEP_WIDE,
@@ -28,8 +29,8 @@ from tinemark.onsets.searches import (
     Search,
     run_sweep,
 )
+from tinemark.onsets.settling import ONE_STATE_KINDS, settle_any
 from tinemark.systems.errors import NoOnsetFound
-from tinemark.systems.exact import fraction_text
 
 CLOSE = 6 * PIXEL
 """Two onsets whose distances from the click differ by less than this are both shown."""
@@ -48,6 +49,12 @@ def refine_one(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     one = one_map(request.system, request.parameter)
     if request.width <= 0:
         raise NoOnsetFound("the view has no width", what_to_do="choose a view in which the parameter varies")
+    if request.kinds is not None and not request.kinds & ONE_STATE_KINDS:
+        names = ", ".join(sorted(kind.value for kind in request.kinds))
+        raise NoOnsetFound(
+            f"a map of one state has no onset of kind {names}",
+            what_to_do="ask for " + ", ".join(kind.value for kind in Kind if kind in ONE_STATE_KINDS),
+        )
     yield Step("settling orbits around the click")
     deep = request.width < DEEP * abs(request.near)
     search = yield from (_deep_search(one, request) if deep else _search(one, request))
@@ -55,7 +62,7 @@ def refine_one(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     if result is None:
         raise NoOnsetFound(
             _looked_at(search),
-            where=f"near {request.parameter} = {_short(request.near)}",
+            where=f"near {request.parameter} = {short_number(request.near)}",
             what_to_do="click nearer to a split, or widen the view",
         )
     return result
@@ -92,7 +99,8 @@ def _prove_nearest(one: OneMap, search: Search) -> Generator[Step, None, RefineR
     reach = request.width / 100
     found: list[tuple[Candidate, Onset]] = []
     limit = math.inf
-    for candidate in search.ranked()[:8]:
+    wanted = [c for c in search.ranked() if request.kinds is None or c.crossing.kind in request.kinds]
+    for candidate in wanted[:8]:
         if candidate.rank > limit or len(found) == 2:
             break
         crossing = candidate.crossing
@@ -100,7 +108,7 @@ def _prove_nearest(one: OneMap, search: Search) -> Generator[Step, None, RefineR
         rough = Rough(crossing.kind, crossing.period, cycles.exact(crossing.x), cycles.exact(crossing.r))
         yield Step(f"proving the {crossing.kind.value} of period {crossing.period}")
         try:
-            settled = yield from settle_onset(
+            settled = yield from settle_any(
                 one,
                 rough,
                 _digits(request),
@@ -110,6 +118,8 @@ def _prove_nearest(one: OneMap, search: Search) -> Generator[Step, None, RefineR
         except Lost:
             continue
         onset = settled.onset
+        if request.kinds is not None and onset.kind not in request.kinds:
+            continue
         if abs(onset.value_fraction - request.near) > request.width / 2:
             continue
         if any(onset.kind is other.kind and _overlap(onset, other) for _, other in found):
@@ -139,27 +149,22 @@ def _message(found: list[tuple[Candidate, Onset]], request: RefineRequest) -> st
         text += f"; a second is as close: {describe(found[1][1])}"
     if found[0][0].crossing.extent < PIXEL * float(request.width):
         text += "; it is smaller than a pixel of this view"
-    return text
+    sentences = [sentence for _, each in found if (sentence := consequence_sentence(each))]
+    return ". ".join([text, *sentences]).removesuffix(".") if sentences else text
 
 
-def describe(onset: Onset) -> str:
-    """An onset in a few words."""
-    proved = "proved" if onset.status is Status.PROVED else f"estimated ({onset.reason})"
-    place = f"{onset.parameter} = {_short(onset.value_fraction)}"
-    if onset.kind is Kind.FLIP:
-        return f"flip of period {onset.period_before} to {onset.period_after} at {place}, {proved}"
-    return f"fold that opens period {onset.period_after} at {place}, {proved}"
-
-
-def _short(value: Fraction) -> str:
-    return fraction_text(value, 10)
+def _sought(request: RefineRequest) -> str:
+    if request.kinds is None:
+        return "no flip and no fold, and no onset of another kind,"
+    kinds = [kind.value for kind in Kind if kind in request.kinds & ONE_STATE_KINDS]
+    return " and ".join(f"no {kind}" for kind in kinds)
 
 
 def _looked_at(search: Search) -> str:
     request = search.request
     text = (
-        "no flip and no fold was found within half a view's width "
-        f"({_short(request.width / 2)}) of the click: {search.orbits} orbits were settled"
+        f"{_sought(request)} was found within half a view's width "
+        f"({short_number(request.width / 2)}) of the click: {search.orbits} orbits were settled"
     )
     if search.climbed > 1:
         text += f", cascades around it were climbed to period {search.climbed}"
@@ -168,4 +173,15 @@ def _looked_at(search: Search) -> str:
     if not search.periods:
         return f"{text}, and none of the orbits is periodic"
     shown = ", ".join(str(period) for period in sorted(search.periods)[:8])
-    return f"{text} and the branches of their cycles (periods {shown}) were followed"
+    return f"{text} and the branches of their cycles (periods {shown}) were followed{_touchings(search)}"
+
+
+def _touchings(search: Search) -> str:
+    text = ""
+    places = max(0, 6 - leading_power(search.request.width))
+    for period, value in sorted(search.touchings.items()):
+        text += (
+            f". The multiplier of the cycle of period {period} touches -1 near {search.request.parameter} = "
+            f"{round(value, places) + 0.0:.10g} without crossing it, so nothing splits there"
+        )
+    return text

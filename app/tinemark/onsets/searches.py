@@ -10,7 +10,9 @@ from typing import Any
 
 import numpy as np
 
-from tinemark.onsets.branches import Crossing, CycleMap, crossings_from, find_cycle
+from tinemark.onsets.branch_points import meetings_of
+from tinemark.onsets.branches import Crossing, Cycle, CycleMap, crossings_from, find_cycle
+from tinemark.onsets.float_map import FloatMap
 from tinemark.onsets.results import RefineRequest, Step
 
 PIXEL = 1 / 1280
@@ -59,6 +61,7 @@ class Search:
     escaped: int = 0
     orbits: int = 0
     climbed: int = 0
+    touchings: dict[int, float] = field(default_factory=dict)
 
     @property
     def width(self) -> float:
@@ -180,4 +183,16 @@ def _take_seed(search: Search, label: int, x: Any, r: Any, periods: Iterable[int
         search.spans.setdefault((label, cycle.period), []).append(span)
         for crossing in crossings:
             search.add(crossing)
+        _add_meetings(search, cycle, crossings)
         return
+
+
+def _add_meetings(search: Search, cycle: Cycle, crossings: Sequence[Crossing]) -> None:
+    """Add what a branch meets besides its own flips and folds; deep views take it from wider ones."""
+    if not isinstance(search.cycles, FloatMap):
+        return
+    meetings = meetings_of(search.cycles, cycle, search.request.near, search.width, crossings)
+    for crossing in meetings.crossings:
+        search.add(crossing)
+    if meetings.touching is not None:
+        search.touchings[cycle.period] = float(meetings.touching.r)

@@ -8,10 +8,11 @@ from fractions import Fraction
 from flint import arb
 
 from tinemark.onsets.ball_orbits import ball_loops, ball_of, precision
+from tinemark.onsets.branch_point_onsets import prove_claim as prove_branch_point
 from tinemark.onsets.decimals import decimal_places
-from tinemark.onsets.one_map import one_map
+from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Rough, first_bits, newton_step
-from tinemark.onsets.proofs import Box, NotProved, Proof, correction_at, prove
+from tinemark.onsets.proofs import TARGETS, Box, NotProved, Proof, correction_at, prove
 from tinemark.onsets.results import Kind, Onset, Step
 from tinemark.systems.system import System
 
@@ -41,8 +42,9 @@ def verify_onset(system: System, onset: Onset) -> Generator[Step, None, Proof]:
     states = dict(onset.states)
     if one.state not in states:
         raise NotProved("the claim names no cycle point", refuted=True)
-    period = onset.period_before if onset.kind is Kind.FLIP else onset.period_after
-    if period < 1 or (onset.kind is Kind.FLIP and onset.period_after != 2 * period):
+    period = onset.period_after if onset.kind is Kind.FOLD else onset.period_before
+    after = {Kind.FLIP: 2 * period, Kind.PITCHFORK: period, Kind.TRANSCRITICAL: period}
+    if period < 1 or onset.period_after != after.get(onset.kind, onset.period_after):
         raise NotProved("the periods before and after do not belong to such an onset", refuted=True)
     lower, upper = Fraction(onset.lower), Fraction(onset.upper)
     if not lower < upper:
@@ -52,15 +54,28 @@ def verify_onset(system: System, onset: Onset) -> Generator[Step, None, Proof]:
     half_x = STATE_UNITS * _last_unit(text)
     places = decimal_places((upper - lower) / 2, 6)
     bits = 2 * first_bits(Rough(onset.kind, period, x, r), places)
-    loops = ball_loops(one)
     with precision(bits):
         box = Box(ball_of(x).mid(), ball_of(r).mid(), _below(half_x), _below((upper - lower) / 2))
-    _, _, inverse, _ = yield from newton_step(loops, onset.kind, period, box.x, box.r, bits, "verifying")
-    correction = yield from correction_at(loops, onset.kind, period, box.x, box.r, inverse, bits)
-    proof = yield from prove(loops, onset.kind, period, box, inverse, correction, bits)
-    if onset.kind is Kind.FLIP and proof.criticality is not onset.criticality:
-        raise NotProved(f"the flip is {proof.criticality.value}, not {onset.criticality.value}", refuted=True)
+    proof = yield from _proof(one, onset.kind, period, box, bits)
+    if proof.degenerate:
+        raise NotProved(proof.degenerate)
+    if onset.kind in (Kind.FLIP, Kind.PITCHFORK) and proof.criticality is not onset.criticality:
+        raise NotProved(
+            f"the {onset.kind.value} is {proof.criticality.value}, not {onset.criticality.value}",
+            refuted=True,
+        )
     return proof
+
+
+def _proof(one: OneMap, kind: Kind, period: int, box: Box, bits: int) -> Generator[Step, None, Proof]:
+    if kind in (Kind.TRANSCRITICAL, Kind.PITCHFORK):
+        return (yield from prove_branch_point(one, kind, period, box, bits))
+    if kind not in TARGETS:
+        raise NotProved(f"a {kind.value} of a map of one state is not proved")
+    loops = ball_loops(one)
+    _, _, inverse, _ = yield from newton_step(loops, kind, period, box.x, box.r, bits, "verifying")
+    correction = yield from correction_at(loops, kind, period, box.x, box.r, inverse, bits)
+    return (yield from prove(loops, kind, period, box, inverse, correction, bits))
 
 
 def _last_unit(text: str) -> Fraction:

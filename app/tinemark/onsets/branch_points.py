@@ -1,0 +1,301 @@
+"""Points where two branches of cycles meet: transcritical points and pitchforks, before any proof.
+
+With h(x, r) = f^p(x, r) - x, branches are the curves h = 0. Two of them cross where the gradient of h
+vanishes, (f^p)' = 1 and df^p/dr = 0, at a saddle of h. The gradient's own equations are regular there, so
+Newton's method converges fast where following a branch stalls (Kuznetsov, 2004, sections 7.4 and 10.2).
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Generator, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import partial
+from typing import Any
+
+from flint import arb
+
+from tinemark.onsets.ball_orbits import BallLoops, ball_of, fraction_of, in_chunks, precision
+from tinemark.onsets.branches import (
+    Crossing,
+    Cycle,
+    CycleMap,
+    follow_to_multiplier,
+    least_period,
+)
+from tinemark.onsets.float_map import CycleStep
+from tinemark.onsets.results import Kind, Step
+
+CLOSENESS = (0.7, 0.9, 0.98)
+"""Multipliers at which the branch is left for the point ahead of it, one after the other."""
+MIRRORED_GAP = 1e-6
+"""Share of the state's scale within which a cycle counts as its own mirror image."""
+
+
+def branch_point_ahead(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Crossing | None:
+    """The point at which a branch of rising multiplier meets another one, if it does."""
+    now: Cycle | None = start
+    for closeness in CLOSENESS:
+        assert now is not None
+        if now.multiplier < closeness:
+            now, _ = follow_to_multiplier(cycles, now, closeness, origin, reach)
+            if now is None:
+                return None
+        found = _gradient_zero(cycles, now.x, now.r, now.period)
+        if found is None:
+            continue
+        crossing = _crossing_of(cycles, found, now)
+        if crossing is not None and abs(cycles.offset(crossing.r, origin)) <= reach:
+            return crossing
+    return None
+
+
+def _gradient_zero(cycles: CycleMap, x: Any, r: Any, period: int) -> tuple[Any, Any] | None:
+    start_x, start_r = x, r
+    previous = math.inf
+    for _ in range(25):
+        u, v, w, z = cycles.slopes(x, r, period)
+        bend = _bend(cycles, x, r, period)
+        determinant = w * bend - z * z
+        if determinant == 0 or not math.isfinite(determinant):
+            return None
+        shift_x = -(bend * (u - 1) - z * v) / determinant
+        shift_r = -(w * v - z * (u - 1)) / determinant
+        if not abs(shift_x) < 10 * cycles.scale or not math.isfinite(shift_r):
+            return None
+        x, r = x + cycles.number(shift_x), r + cycles.number(shift_r)
+        size = abs(shift_x) / cycles.scale + abs(shift_r) / (abs(float(r)) + abs(float(start_r)) + 1e-300)
+        if size < 1e-9 or (size < 1e-6 and size >= previous / 2):
+            return (x, r) if abs(float(x - start_x)) < cycles.scale else None
+        previous = size
+    return None
+
+
+def _bend(cycles: CycleMap, x: Any, r: Any, period: int) -> float:
+    """Second derivative of f^p in the parameter, by a central difference of its first."""
+    step = 1e-5 * max(abs(float(r)), 1e-3)
+    shift = cycles.number(step)
+    above, below = cycles.slopes(x, r + shift, period), cycles.slopes(x, r - shift, period)
+    return (above[1] - below[1]) / (2 * step)
+
+
+def _crossing_of(cycles: CycleMap, found: tuple[Any, Any], start: Cycle) -> Crossing | None:
+    x, r = found
+    points = cycles.points(x, r, start.period + 1)
+    if not abs(float(points[start.period] - points[0])) <= 1e-8 * cycles.scale:
+        return None
+    if least_period(cycles, x, r, start.period) != start.period:
+        return None
+    _, _, w, z = cycles.slopes(x, r, start.period)
+    # At a pitchfork the curvature is zero; away from it, it grows in proportion to the distance.
+    step = 1e-3 * cycles.scale
+    beside = max(abs(cycles.slopes(x + cycles.number(side), r, start.period)[2]) for side in (-step, step))
+    kind = Kind.PITCHFORK if abs(w) <= 1e-3 * beside else Kind.TRANSCRITICAL
+    return Crossing(kind, start.period, x, r, 2 / abs(z) if z else math.inf)
+
+
+class MirroredMap:
+    """The return map g = S f^q of a map that commutes with the reflection S, x -> total - x.
+
+    A cycle of period 2q that is its own mirror image is a fixed point of g, and it loses that symmetry
+    where the multiplier of g is -1: a pitchfork of f is a flip of g. Answers what `CycleMap` does.
+    """
+
+    def __init__(self, cycles: CycleMap, total: Any) -> None:
+        self.cycles, self.total = cycles, total
+        self.one = cycles.one
+        self.scale, self.fine, self.coincident = cycles.scale, cycles.fine, cycles.coincident
+        self.slice_steps = cycles.slice_steps
+        self.number, self.exact, self.offset, self.midway = (
+            cycles.number,
+            cycles.exact,
+            cycles.offset,
+            cycles.midway,
+        )
+        self.points, self.observed_offsets = cycles.points, cycles.observed_offsets
+        self.settle, self.critical_points = cycles.settle, cycles.critical_points
+
+    def newton(self, x: Any, r: Any, period: int, target: float | None) -> CycleStep | None:
+        """One Newton step for g(x) = x, with a multiplier of g as target where one is given."""
+        end = self.cycles.points(x, r, period + 1)[period]
+        u, v, w, z = self.slopes(x, r, period)
+        gap = float(self.total - end - x)
+        shift_r = 0.0
+        if target is None:
+            shift_x = -gap / (u - 1) if u != 1 else math.nan
+        else:
+            miss = u - target
+            determinant = (u - 1) * z - v * w
+            if determinant == 0:
+                return None
+            shift_x = -(z * gap - v * miss) / determinant
+            shift_r = -((u - 1) * miss - w * gap) / determinant
+        if not (math.isfinite(shift_x) and math.isfinite(shift_r)):
+            return None
+        return CycleStep(x + self.number(shift_x), r + self.number(shift_r), shift_x, shift_r, u)
+
+    def slopes(self, x: Any, r: Any, period: int) -> tuple[float, float, float, float]:
+        """Derivatives of g."""
+        u, v, w, z = self.cycles.slopes(x, r, period)
+        return -u, -v, -w, -z
+
+
+def symmetry_breaking_of(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Crossing | None:
+    """The pitchfork at which a cycle that is its own mirror image ceases to be stable, if there is one.
+
+    The cycle's multiplier is the square of that of its half, so following the multiplier itself cannot
+    tell the end where the cycle was born from the end where it loses its symmetry.
+    """
+    if start.period % 2:
+        return None
+    half = start.period // 2
+    points = cycles.points(start.x, start.r, start.period)
+    totals = [float(points[place] + points[place + half]) for place in range(half)]
+    if max(totals) - min(totals) > MIRRORED_GAP * cycles.scale:
+        return None
+    mirrored = MirroredMap(cycles, points[0] + points[half])
+    multiplier = mirrored.slopes(start.x, start.r, half)[0]
+    found, _ = follow_to_multiplier(mirrored, Cycle(half, start.x, start.r, multiplier), -1.0, origin, reach)
+    if found is None or abs(float(found.x + found.x - mirrored.total)) < MIRRORED_GAP * cycles.scale:
+        return None
+    _, v, w, z = mirrored.slopes(found.x, found.r, half)
+    speed = abs(z + w * v / 2)
+    return Crossing(Kind.PITCHFORK, start.period, found.x, found.r, 2 / speed if speed else math.inf)
+
+
+@dataclass(frozen=True)
+class Meetings:
+    """What else lies on a branch: points where it meets others, and where its multiplier only touches -1."""
+
+    crossings: tuple[Crossing, ...]
+    touching: Cycle | None
+
+
+def meetings_of(
+    cycles: CycleMap, start: Cycle, origin: Fraction, reach: float, known: Sequence[Crossing]
+) -> Meetings:
+    """Branch points and touchings of the branch a cycle lies on.
+
+    Parameters
+    ----------
+    known
+        Flips and folds of that branch. One of an extent beyond all bounds is where following the
+        multiplier stalled, not an onset.
+    """
+    found = []
+    breaking = symmetry_breaking_of(cycles, start, origin, reach)
+    if breaking is not None and abs(cycles.offset(breaking.r, origin)) <= reach:
+        found.append(breaking)
+    true = [crossing for crossing in known if crossing.extent < 100 * max(abs(float(crossing.r)), reach)]
+    if not any(crossing.kind is Kind.FOLD or crossing.period < start.period for crossing in true):
+        ahead = branch_point_ahead(cycles, start, origin, reach)
+        if ahead is not None:
+            found.append(ahead)
+    doubles = any(crossing.kind is Kind.FLIP and crossing.period == start.period for crossing in true)
+    touching = None
+    if start.multiplier < 0 and not doubles:
+        touching = touching_multiplier(cycles, start, origin, reach)
+    return Meetings(tuple(found), touching)
+
+
+def touching_multiplier(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Cycle | None:
+    """Where a branch's multiplier comes to -1 and turns back, if it does: there is no flip."""
+    x, r, period = start.x, start.r, start.period
+    before: tuple[float, float] | None = None
+    width = 1e-4 * max(abs(float(r)), reach)
+    for _ in range(60):
+        step = None
+        for _ in range(20):
+            step = cycles.newton(x, r, period, None)
+            if step is None:
+                return None
+            x = step.x
+            if abs(step.shift_x) <= 1e-12 * cycles.scale:
+                break
+        u, v, w, z = cycles.slopes(x, r, period)
+        if u == 1 or not math.isfinite(u):
+            return None
+        speed = z + w * v / (1 - u)
+        at = cycles.offset(r, origin)
+        if abs(at) > reach:
+            return None
+        if before is None or speed == before[1]:
+            shift = width
+        else:
+            shift = -speed * (at - before[0]) / (speed - before[1])
+            if abs(shift) < 1e-11 * max(abs(float(r)), reach):
+                break
+            shift = math.copysign(min(abs(shift), reach / 4), shift)
+        before = (at, speed)
+        r = r + cycles.number(shift)
+    else:
+        return None
+    if abs(u + 1) > 1e-8 or least_period(cycles, x, r, period) != period:
+        return None
+    return Cycle(period, x, r, u)
+
+
+@dataclass(frozen=True)
+class BranchPoint:
+    """A zero of the gradient of h in high precision; `miss` is h there, zero where the branches meet."""
+
+    x: Fraction
+    r: Fraction
+    miss: Fraction
+    last_step: float
+    curvature: float
+    speed: float
+    bend: float
+
+
+def polished_branch_point(
+    loops: BallLoops, x: Fraction, r: Fraction, period: int, bits: int
+) -> Generator[Step, None, BranchPoint | None]:
+    """Newton's method for the gradient's zero, in high precision; None where it does not converge."""
+    with precision(bits):
+        here_x, here_r = ball_of(x).mid(), ball_of(r).mid()
+        step = arb(2) ** (-bits // 3) * (abs(here_r) + arb(2) ** -20)
+        step = step.mid()
+    last = math.inf
+    for _ in range(12 + bits.bit_length()):
+        sides = []
+        for shift in (0, 1, -1):
+            with precision(bits):
+                zero, one = arb(0), arb(1)
+                start = (here_x, one, zero, zero, zero)
+                at = (here_r + shift * step).mid()
+            advance = partial(_advance, loops, at)
+            state = yield from in_chunks(advance, start, period, bits, "solving for where branches meet")
+            sides.append(state)
+        with precision(bits):
+            end, u, v, w, z = (value.mid() for value in sides[0])
+            bend = ((sides[1][2] - sides[2][2]) / (2 * step)).mid()
+            determinant = w * bend - z * z
+            if not determinant.is_finite() or determinant.contains(0):
+                return None
+            shift_x = (bend * (u - 1) - z * v) / determinant
+            shift_r = (w * v - z * (u - 1)) / determinant
+            miss = (end - here_x).mid()
+            size = abs(float(shift_r)) + abs(float(shift_x))
+            if not math.isfinite(size):
+                return None
+            done = size < 2.0 ** (-bits * 0.8) or (size < 2.0 ** (-bits * 0.5) and size >= last / 4)
+            if not done:
+                here_x, here_r = (here_x - shift_x).mid(), (here_r - shift_r).mid()
+                last = size
+                continue
+        return BranchPoint(
+            fraction_of(here_x),
+            fraction_of(here_r),
+            fraction_of(miss),
+            size,
+            float(w),
+            float(z),
+            float(bend),
+        )
+    return None
+
+
+def _advance(loops: BallLoops, r: Any, state: tuple[Any, ...], count: int) -> tuple[Any, ...]:
+    return loops.newton(state[0], r, *state[1:], count)

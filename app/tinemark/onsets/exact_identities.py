@@ -1,0 +1,169 @@
+"""Identities of formulas that hold exactly: symmetries and cycles that the parameter does not move.
+
+A pitchfork and a transcritical point need an equality to hold exactly, which no enclosure can show. A
+formula can: here it is put into sympy node by node, over exact rationals, and what must vanish has to
+cancel by algebra alone. What does not cancel counts as unknown, never as an identity.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from fractions import Fraction
+from functools import lru_cache
+from typing import Any
+
+from tinemark.onsets.one_map import OneMap
+from tinemark.systems.expression import Call, Cond, Expr, Name, Num, Pi, children, walk
+
+MOST_NODES = 150
+MOST_DEGREE = 40
+"""Largest formula that is checked, and its degree counted without cancelling: bounds what expanding costs."""
+MOST_BITS = 64
+LARGEST_DENOMINATOR = 10**6
+_ANALYTIC = ("sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh", "tanh", "exp", "log", "sqrt")
+
+
+def replaced(expr: Expr, values: Mapping[str, Expr]) -> Expr:
+    """A formula with names replaced by formulas; equal parts stay one object."""
+    done: dict[int, Expr] = {}
+    for node in walk(expr):
+        parts = tuple(done[id(child)] for child in children(node))
+        copy: Expr = node
+        if isinstance(node, Name):
+            copy = values.get(node.name, node)
+        elif isinstance(node, Call):
+            copy = Call(node.fn, parts)
+        elif isinstance(node, Cond):
+            left, right, then, other = parts
+            copy = Cond(left, node.op, right, then, other)
+        done[id(node)] = copy
+    return done[id(expr)]
+
+
+def vanishes(expr: Expr) -> bool:
+    """Whether a formula is zero for all values of its names, as far as algebra shows it.
+
+    Parameters
+    ----------
+    expr
+        A formula without conditions, min, max, abs, floor and atan2; with any of them the answer is False.
+    """
+    if not _is_small(expr):
+        return False
+    import sympy
+
+    try:
+        whole = sympy.expand(_to_sympy(expr, sympy))
+        return bool(whole == 0 or sympy.cancel(sympy.together(whole)) == 0)
+    except (ValueError, TypeError, ArithmeticError, NotImplementedError, AttributeError, RecursionError):
+        return False
+
+
+def _is_small(expr: Expr) -> bool:
+    degrees: dict[int, int] = {}
+    for count, node in enumerate(walk(expr)):
+        if count > MOST_NODES or isinstance(node, Cond):
+            return False
+        if isinstance(node, Num) and max(map(int.bit_length, node.value.as_integer_ratio())) > MOST_BITS:
+            return False
+        if isinstance(node, Call) and node.fn not in (*_ANALYTIC, "add", "sub", "mul", "div", "pow", "neg"):
+            return False
+        below = [degrees[id(child)] for child in children(node)]
+        match node:
+            case Name():
+                degree = 1
+            case Call("mul" | "div", _):
+                degree = sum(below)
+            case Call("pow", (_, Num(power))) if power.denominator == 1:
+                degree = below[0] * abs(int(power))
+            case _:
+                degree = max(below, default=0)
+        if degree > MOST_DEGREE:
+            return False
+        degrees[id(node)] = degree
+    return True
+
+
+def _to_sympy(expr: Expr, sympy: Any) -> Any:
+    done: dict[int, Any] = {}
+    for node in walk(expr):
+        parts = [done[id(child)] for child in children(node)]
+        match node:
+            case Num(value):
+                made = sympy.Rational(value.numerator, value.denominator)
+            case Pi():
+                made = sympy.pi
+            case Name(name):
+                # Symbols are real and named by us: a user's name could be one that sympy has plans for.
+                made = sympy.Symbol(f"name_{name}", real=True)
+            case Call("add", _):
+                made = parts[0] + parts[1]
+            case Call("sub", _):
+                made = parts[0] - parts[1]
+            case Call("mul", _):
+                made = parts[0] * parts[1]
+            case Call("div", _):
+                made = parts[0] / parts[1]
+            case Call("pow", _):
+                made = parts[0] ** parts[1]
+            case Call("neg", _):
+                made = -parts[0]
+            case Call(fn, _) if fn in _ANALYTIC:
+                made = getattr(sympy, fn)(parts[0])
+            case _:
+                raise ValueError("not an analytic formula")
+        done[id(node)] = made
+    return done[id(expr)]
+
+
+def nearby_constant(value: float, scale: float) -> Expr | None:
+    """A short rational, or a short rational times pi, that a number is very near to."""
+    within = 1e-8 * max(scale, abs(value))
+    plain = Fraction(value).limit_denominator(10**3)
+    if abs(float(plain) - value) <= within:
+        return Num(plain)
+    turns = Fraction(value / math.pi).limit_denominator(60)
+    if abs(float(turns) * math.pi - value) <= within:
+        return times_pi(turns)
+    plain = Fraction(value).limit_denominator(LARGEST_DENOMINATOR)
+    return Num(plain) if abs(float(plain) - value) <= within / 1e4 else None
+
+
+def times_pi(turns: Fraction) -> Expr:
+    """A rational times pi."""
+    return Pi() if turns == 1 else Call("mul", (Num(turns), Pi()))
+
+
+def doubled(constant: Expr) -> Expr:
+    """Twice a constant of `nearby_constant`."""
+    match constant:
+        case Num(value):
+            return Num(2 * value)
+        case Call("mul", (Num(turns), Pi())):
+            return times_pi(2 * turns)
+    return times_pi(Fraction(2))
+
+
+@lru_cache(maxsize=256)
+def is_mirror(one: OneMap, total: Expr) -> bool:
+    """Whether the map commutes with the reflection x -> total - x, for every x and parameter value."""
+    formula = one.exact_derivatives["f"]
+    image = replaced(formula, {one.state: Call("sub", (total, Name(one.state)))})
+    return vanishes(Call("sub", (Call("add", (image, formula)), total)))
+
+
+@lru_cache(maxsize=256)
+def is_fixed_cycle(one: OneMap, points: tuple[Expr, ...]) -> bool:
+    """Whether these points are run through in turn whatever the parameter's value."""
+    formula = one.exact_derivatives["f"]
+    return all(
+        vanishes(Call("sub", (replaced(formula, {one.state: point}), points[(place + 1) % len(points)])))
+        for place, point in enumerate(points)
+    )
+
+
+@lru_cache(maxsize=256)
+def is_straight_at(one: OneMap, point: Expr) -> bool:
+    """Whether the second derivative in the state is zero at a point for every value of the parameter."""
+    return vanishes(replaced(one.exact_derivatives["fxx"], {one.state: point}))
