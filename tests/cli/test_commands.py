@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import os
 import signal
 import subprocess
@@ -31,6 +32,8 @@ KEYS = [
     "gap",
     "ratio",
     "ratio_uncertainty",
+    "sensitivities",
+    "margin",
 ]
 
 
@@ -317,3 +320,16 @@ def test_an_interrupt_leaves_cleanly(tmp_path) -> None:
     assert "Traceback" not in err
     assert err.strip().endswith("tinemark: stopped")
     assert list(tmp_path.iterdir()) == []
+
+
+def test_tolerances_beside_the_onsets(tinemark) -> None:
+    ended = tinemark("refine", "henon", "--near", "0.37", "--window", "0.1", "--json", "-")
+    (entry,) = json.loads(ended.out)["onsets"]
+    # a = 3(1 - b)^2/4, so da/db = -6(1 - b)/4; b is the only other parameter.
+    assert entry["sensitivities"] == [{"parameter": "b", "derivative": "-1.05000000000", "share": "1.00000"}]
+    # a stands at 1 with the tolerance 0.005, b has 0.002.
+    assert Fraction(entry["margin"]["value"]) == Fraction("-0.6325")
+    assert abs(float(entry["margin"]["standard_uncertainty"]) - math.hypot(0.005, 1.05 * 0.002)) < 1e-8
+    ended = tinemark("ladder", "hatchery", "--levels", "2")
+    assert "standard uncertainty 2.2 kg/day by the tolerances: response 93 %, harvest 7 %" in ended.out
+    assert "The onset at 105.27 lies 5.27 kg/day (5.3 %) above the operating point" in ended.out

@@ -73,7 +73,7 @@ def ladder(options: LadderOptions) -> None:
         found, scaled, message = _downwards(request, error)
     if not found:
         raise NoOnsetFound(message or "no cascade was found there", where=options.system)
-    print_onsets(options.system, parameter, found, scaled, options.json)
+    print_onsets(options.system, parameter, found, scaled, options.json, system)
     if message:
         say(message)
 
@@ -181,6 +181,6 @@ def refine(options: RefineOptions) -> None:
     if not result.onsets:
         raise NoOnsetFound(result.message or "no onset was found there", where=options.system)
     found: list[Found] = [(None, onset) for onset in result.onsets]
-    print_onsets(options.system, system.diagram_parameter, found, None, options.json)
+    print_onsets(options.system, system.diagram_parameter, found, None, options.json, system)
     if result.message:
         say(result.message)

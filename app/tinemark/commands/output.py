@@ -13,17 +13,30 @@ from tinemark.systems.errors import TinemarkError
 if TYPE_CHECKING:
     from tinemark.document.onsets_file import Found
     from tinemark.onsets.scaling import Scaling
+    from tinemark.systems.system import System
 
 
 def print_onsets(
-    system: str, parameter: str, found: Sequence[Found], scaled: Scaling | None, json: str | None
+    system: str,
+    parameter: str,
+    found: Sequence[Found],
+    scaled: Scaling | None,
+    json: str | None,
+    known: System | None = None,
 ) -> None:
-    """Print onsets as a table; where `json` names a file write that too, where it is "-" print JSON alone."""
+    """Print onsets as a table; where `json` names a file write that too, where it is "-" print JSON alone.
+
+    Parameters
+    ----------
+    known
+        The onsets' system, for what its tolerances say; None leaves that out.
+    """
     from tinemark.document.onsets_file import onsets_file, write_onsets_text
     from tinemark.document.text_table import onsets_table, scaling_lines
+    from tinemark.document.tolerance_tables import tolerance_lines
 
     if json is not None:
-        text = write_onsets_text(onsets_file(system, parameter, found, scaled))
+        text = write_onsets_text(onsets_file(system, parameter, found, scaled, known))
         if json == "-":
             sys.stdout.write(text)
             return
@@ -33,6 +46,8 @@ def print_onsets(
         print(f"not proved: {reason}")
     if scaled is not None:
         print("\n" + "\n".join(scaling_lines(scaled, parameter)))
+    for line in tolerance_lines([onset for _, onset in found], known):
+        print(line)
 
 
 def check_json(json: str | None) -> None:

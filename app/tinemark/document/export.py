@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Collection
+from collections.abc import Callable, Collection, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
@@ -23,9 +23,18 @@ from tinemark.document.rounding import (
     round_pair,
 )
 from tinemark.document.row import Row
-from tinemark.document.session import Session, read_system
+from tinemark.document.session import Session, read_system, system_of_row
 from tinemark.document.text_table import text_table
+from tinemark.document.tolerance_tables import (
+    NONE,
+    TSV_TOLERANCE_HEADINGS,
+    Tolerances,
+    latex_tolerances,
+    markdown_tolerances,
+    tsv_tolerance_cells,
+)
 from tinemark.onsets.results import Onset, Status
+from tinemark.systems.system import System
 
 FORMS = ("tsv", "markdown", "latex")
 
@@ -49,6 +58,7 @@ TSV_HEADINGS = (
     "Status",
     "Reason",
     "Note",
+    *TSV_TOLERANCE_HEADINGS,
 )
 HEADINGS = ("Level", "Kind", "Period", "Value", "Gap", "Ratio", "Status", "Note")
 
@@ -97,14 +107,16 @@ def sections(ledger: Ledger, row_ids: Collection[str] | None = None) -> tuple[Se
     return tuple(section for section in chosen if section.lines)
 
 
-def copy_text(ledger: Ledger, form: str, row_ids: Collection[str] | None = None) -> str:
-    """The ledger, or some of its rows, in one of `FORMS`."""
-    forms: dict[str, Callable[[Ledger, Collection[str] | None], str]] = {
+def copy_text(
+    ledger: Ledger, form: str, row_ids: Collection[str] | None = None, tolerances: Tolerances = NONE
+) -> str:
+    """The ledger, or some of its rows, in one of `FORMS`; with what the tolerances say, where given."""
+    forms: dict[str, Callable[[Ledger, Collection[str] | None, Tolerances], str]] = {
         "tsv": tsv_text,
         "markdown": markdown_text,
         "latex": latex_text,
     }
-    return forms[form](ledger, row_ids)
+    return forms[form](ledger, row_ids, tolerances)
 
 
 # Numbers
@@ -143,16 +155,18 @@ def _estimate_digits(number: Estimate | None) -> tuple[str, str]:
 # Tab-separated
 
 
-def tsv_text(ledger: Ledger, row_ids: Collection[str] | None = None) -> str:
+def tsv_text(ledger: Ledger, row_ids: Collection[str] | None = None, tolerances: Tolerances = NONE) -> str:
     """Tab-separated text that pastes into a spreadsheet as columns: plain numbers with all digits.
 
     `Uncertainty` columns hold half-widths: enclosing where proved, of 95 % coverage otherwise, half a
-    pixel where read by eye.
+    pixel where read by eye. The last columns follow from the parameters' tolerances: the onset's combined
+    standard uncertainty, its derivatives with each parameter's share of the variance, and the distance from
+    the operating point to the onset with its standard uncertainty.
     """
     lines: list[tuple[str, ...]] = [TSV_HEADINGS]
     for section in sections(ledger, row_ids):
         lines += [
-            _tsv_cells(section.title, line.row, line.estimate)
+            _tsv_cells(section.title, line.row, line.estimate) + tsv_tolerance_cells(tolerances, line.row.id)
             for line in section.lines
             if line.row is not None
         ]
@@ -241,8 +255,10 @@ def ledger_table(ledger: Ledger, row_ids: Collection[str] | None = None) -> str:
 _MARKDOWN_SPECIALS = str.maketrans({c: f"\\{c}" for c in "\\`*_{}[]<>#|~$"})
 
 
-def markdown_text(ledger: Ledger, row_ids: Collection[str] | None = None) -> str:
-    """A Markdown table for each ladder."""
+def markdown_text(
+    ledger: Ledger, row_ids: Collection[str] | None = None, tolerances: Tolerances = NONE
+) -> str:
+    """A Markdown table for each ladder, and one for the tolerances."""
     blocks = []
     for section in sections(ledger, row_ids):
         lines = [
@@ -256,6 +272,10 @@ def markdown_text(ledger: Ledger, row_ids: Collection[str] | None = None) -> str
             cells[2] = cells[2].replace("-\\>", "→")
             lines.append("| " + " | ".join(cells) + " |")
         blocks.append("\n".join(lines))
+    blocks.append(
+        markdown_tolerances(ledger, tolerances, row_ids, lambda text: text.translate(_MARKDOWN_SPECIALS))
+    )
+    blocks = [block for block in blocks if block]
     return "\n\n".join(blocks) + "\n" if blocks else ""
 
 
@@ -273,7 +293,7 @@ _LATEX_SPECIALS = str.maketrans(
 )
 
 
-def latex_text(ledger: Ledger, row_ids: Collection[str] | None = None) -> str:
+def latex_text(ledger: Ledger, row_ids: Collection[str] | None = None, tolerances: Tolerances = NONE) -> str:
     """A LaTeX tabular: digits in groups of three, every special character escaped. Needs no package."""
     found = sections(ledger, row_ids)
     if not found:
@@ -301,7 +321,10 @@ def latex_text(ledger: Ledger, row_ids: Collection[str] | None = None) -> str:
             lines.append(" & ".join(cells) + r" \\")
         lines.append(r"\hline")
     lines.append(r"\end{tabular}")
-    return "\n".join(lines) + "\n"
+    more = latex_tolerances(
+        ledger, tolerances, row_ids, lambda text: text.translate(_LATEX_SPECIALS), _latex_number
+    )
+    return "\n".join(lines) + "\n" + (f"\n{more}\n" if more else "")
 
 
 def _latex_period(period: str) -> str:
@@ -337,5 +360,12 @@ def onsets_json(session: Session, ladder_id: str = "") -> dict[str, Any]:
         rows = [row for row in session.ledger.rows if row.place == place]
         scaled, parameter = None, session.parameter
     found = [(row.level, row.onset) for row in rows]
-    plain: dict[str, Any] = msgspec.to_builtins(onsets_file(system.title, parameter, found, scaled))
+    plain: dict[str, Any] = msgspec.to_builtins(
+        onsets_file(system.title, parameter, found, scaled, _system_of_rows(session, rows))
+    )
     return plain
+
+
+def _system_of_rows(session: Session, rows: Sequence[Row]) -> System | None:
+    """The system that all the rows belong to, at their values."""
+    return system_of_row(session, rows[0].id) if rows else None

@@ -187,8 +187,14 @@ def same_onset(first: Onset, second: Onset) -> bool:
     )
 
 
-def _quality(onset: Onset) -> tuple[int, Fraction]:
-    return _RANK[onset.status], Fraction(onset.lower) - Fraction(onset.upper)
+def _quality(onset: Onset) -> tuple[int, Fraction, bool, bool]:
+    # Of two that are as good in their numbers, the one that brings its proof and its derivatives.
+    return (
+        _RANK[onset.status],
+        Fraction(onset.lower) - Fraction(onset.upper),
+        onset.certificate is not None,
+        bool(onset.sensitivities),
+    )
 
 
 def _better(first: Onset, second: Onset) -> bool:

@@ -15,14 +15,20 @@ from typing import Any, Final, Literal
 
 import msgspec
 
+from tinemark.document.margin import OperatingPoint, margin_sentence, margin_to
+from tinemark.document.rounding import plain
+from tinemark.document.tolerance import budget_of
 from tinemark.onsets.ladder_points import Estimate
 from tinemark.onsets.results import Kind, Onset, Status
 from tinemark.onsets.scaling import UNDECIDED, Scaling
 from tinemark.systems.errors import NumberError, TinemarkError
-from tinemark.systems.exact import exact
+from tinemark.systems.exact import exact, fraction_text
+from tinemark.systems.system import System
 
 FORMAT: Final = "tinemark-onsets"
 VERSION = 1
+SHARE_DIGITS = 6
+"""Significant digits of what follows from tolerances."""
 MAX_FILE_BYTES = 16 * 1024 * 1024
 
 Found = tuple[int | None, Onset]
@@ -49,6 +55,28 @@ class Delta(msgspec.Struct, frozen=True, forbid_unknown_fields=True, rename={"cl
     consistent: bool | None
 
 
+class Slope(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """How an onset moves with one other parameter, and that parameter's share of its variance (0 to 1)."""
+
+    parameter: str
+    derivative: str
+    share: str | None
+
+
+class MarginEntry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """Distance from the operating point to an onset: onset minus operating point, and its uncertainties.
+
+    `expanded_uncertainty` has the coverage factor 2; both are None where no tolerance counts.
+    """
+
+    operating_point: str
+    value: str
+    percent: str | None
+    standard_uncertainty: str | None
+    expanded_uncertainty: str | None
+    sentence: str
+
+
 class Entry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     """One onset."""
 
@@ -66,6 +94,8 @@ class Entry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     gap: str | None
     ratio: str | None
     ratio_uncertainty: str | None
+    sensitivities: list[Slope] = []
+    margin: MarginEntry | None = None
 
 
 class OnsetsFile(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
@@ -80,7 +110,13 @@ class OnsetsFile(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     delta: Delta
 
 
-def onsets_file(system: str, parameter: str, found: Sequence[Found], scaled: Scaling | None) -> OnsetsFile:
+def onsets_file(
+    system: str,
+    parameter: str,
+    found: Sequence[Found],
+    scaled: Scaling | None,
+    known: System | None = None,
+) -> OnsetsFile:
     """The file for a set of onsets.
 
     Parameters
@@ -91,6 +127,8 @@ def onsets_file(system: str, parameter: str, found: Sequence[Found], scaled: Sca
         Onsets in the order to be written.
     scaled
         What a ladder's onsets say together; None for single onsets.
+    known
+        The onsets' system, for shares and margins by its tolerances; None leaves them out.
     """
     levels = {item.level: item for item in scaled.levels} if scaled else {}
     entries = []
@@ -113,6 +151,8 @@ def onsets_file(system: str, parameter: str, found: Sequence[Found], scaled: Sca
                 gap=gap.value if gap else None,
                 ratio=ratio.value if ratio else None,
                 ratio_uncertainty=ratio.expanded_text if ratio else None,
+                sensitivities=_slopes(onset, known),
+                margin=_margin(onset, known),
             )
         )
     limit = scaled.limit if scaled else None
@@ -130,6 +170,35 @@ def onsets_file(system: str, parameter: str, found: Sequence[Found], scaled: Sca
             consistent=scaled.verdict.consistent if scaled else None,
         ),
     )
+
+
+def _slopes(onset: Onset, known: System | None) -> list[Slope]:
+    shares = {line.parameter: line.share for line in budget_of(onset, known).lines} if known else {}
+
+    def text(name: str) -> str | None:
+        share = shares.get(name)
+        return None if share is None else fraction_text(share, SHARE_DIGITS)
+
+    return [Slope(item.name, item.derivative, text(item.name)) for item in onset.sensitivities]
+
+
+def _margin(onset: Onset, known: System | None) -> MarginEntry | None:
+    if known is None or onset.parameter not in known.parameter_names:
+        return None
+    point = OperatingPoint(known.parameter(onset.parameter).value.fraction)
+    margin = margin_to(onset, known, point)
+    return MarginEntry(
+        operating_point=fraction_text(point.value),
+        value=fraction_text(margin.distance),
+        percent=_rounded(margin.percent),
+        standard_uncertainty=_rounded(margin.standard),
+        expanded_uncertainty=_rounded(margin.expanded),
+        sentence=plain(margin_sentence(margin)),
+    )
+
+
+def _rounded(number: Fraction | None) -> str | None:
+    return None if number is None else fraction_text(number, SHARE_DIGITS)
 
 
 def _texts(number: Estimate | None) -> tuple[str | None, str | None]:
@@ -211,3 +280,9 @@ def _check_entry(entry: Entry, place: str, file: str) -> None:
                 raise fail(error.message, key) from error
     if not numbers["lower"] <= numbers["value"] <= numbers["upper"]:
         raise fail("the value lies outside its own interval", "value")
+    for number, slope in enumerate(entry.sensitivities):
+        try:
+            exact(slope.derivative)
+            exact(slope.share or "0")
+        except NumberError as error:
+            raise fail(error.message, f"sensitivities[{number}]") from error
