@@ -1,4 +1,4 @@
-"""A click on the diagram of a map of several states: the flip or fold nearest to it, to many digits."""
+"""A click on the diagram of a map of several states: the onset nearest to it, to many digits."""
 
 from __future__ import annotations
 
@@ -32,6 +32,8 @@ from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
 
 __all__ = ["ladder_many", "refine_many"]
 
+FOUND = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
+"""Kinds that are looked for."""
 MOST_BRANCHES = 6
 NARROWEST = 1e-8
 """Views narrower than this share of the parameter are searched as if they were this wide."""
@@ -74,11 +76,11 @@ class _Candidate:
 
 
 def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
-    """The flips and folds nearest to a click.
+    """The flips, folds and Neimark-Sacker onsets nearest to a click.
 
     Orbits are settled around the click, the cycles they lead to are followed through the view by
     continuation, their unstable parts and folds included, and the crossings nearest to the click on the
-    screen are polished. Values are estimated: proofs for maps of several states are not made yet.
+    screen are polished and proved, or estimated with the reason.
 
     Yields
     ------
@@ -93,8 +95,14 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     Raises
     ------
     NoOnsetFound
-        No flip or fold in reach; says what was looked at, and what else lies there.
+        No such onset in reach; says what was looked at, and what else lies there.
     """
+    if request.kinds is not None and not request.kinds & FOUND:
+        asked = ", ".join(sorted(kind.value for kind in request.kinds)) or "none"
+        raise NoOnsetFound(
+            f"of the kinds asked for ({asked}) none is looked for in maps of several states",
+            what_to_do=f"ask for {', '.join(sorted(kind.value for kind in FOUND))}",
+        )
     yield Step("reading the map")
     many = many_map(request.system, request.parameter)
     float_map = float_many_map(many)
@@ -116,10 +124,19 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
             what_to_do="click nearer to a split, or check the start values of the states",
         )
     window = _window(place, full_scales, request)
-    candidates = yield from _candidates(float_map, cycles, place, window)
+    found = yield from _candidates(float_map, cycles, place, window)
+    wanted = FOUND if request.kinds is None else request.kinds
+    candidates = [candidate for candidate in found if _may_be(candidate.kind, wanted)]
     digits = request.digits + (_digits_to_tell_apart(request) if deep else 0)
-    result = yield from _settle(float_map, candidates, place, window, full_scales, digits)
+    result = yield from _settle(float_map, candidates, place, window, full_scales, digits, wanted)
     return _within_view(result, request) if deep else result
+
+
+def _may_be(crossing: Crossing, wanted: frozenset[Kind]) -> bool:
+    """Whether a crossing can turn out to be of a kind that is wanted."""
+    if crossing is Crossing.FOLD:
+        return bool(wanted & {Kind.FOLD, Kind.FLIP})  # a branch of doubled cycles turns round at its flip
+    return Kind(crossing.value) in wanted
 
 
 def _digits_to_tell_apart(request: RefineRequest) -> int:
@@ -218,37 +235,36 @@ def _settle(
     window: Window,
     scales: Floats,
     digits: int,
+    wanted: frozenset[Kind],
 ) -> Generator[Step, None, RefineResult]:
     """Polish the nearest candidates and put the result into words."""
     settled: list[tuple[float, Settled]] = []
-    rotation: _Candidate | None = None
+    lost: _Candidate | None = None
     for candidate in candidates:
         if candidate.distance > IN_REACH or _far_beyond(settled, candidate.distance):
             continue
         if settled and candidate.stable_share < LEAST_VISIBLE:
             break
-        if candidate.kind is Crossing.NEIMARK_SACKER:
-            if rotation is None:
-                rotation = candidate
-            continue
         onset = yield from _onset_at(float_map, candidate, place, window, scales, digits)
-        if onset is None or any(_same(onset, other) for _, other in settled):
+        if onset is None and candidate.kind is Crossing.NEIMARK_SACKER:
+            lost = lost or candidate
+        if onset is None or onset.onset.kind not in wanted:
+            continue
+        if any(_same(onset, other) for _, other in settled):
             continue
         distance = place.distance(float_map, onset.cycle)
         if distance <= IN_REACH:
             settled.append((distance, onset))
     settled.sort(key=lambda item: item[0])
     shown = [item for item in settled[:2] if not _far_beyond(settled[:1], item[0])]
-    message = _message(
-        float_map.many.parameter, shown, None if rotation is None else _at(float_map, rotation, place)
-    )
+    message = _message(float_map.many.parameter, shown, lost, wanted)
     if not shown:
-        raise NoOnsetFound(message, what_to_do="" if rotation else "click nearer to a split")
+        raise NoOnsetFound(message, what_to_do="" if lost else "click nearer to a split")
     return RefineResult(tuple(item.onset for _, item in shown), message)
 
 
-def _at(float_map: FloatManyMap, candidate: _Candidate, place: Place) -> tuple[float, float, int]:
-    """Distance on the screen, parameter and period of a Neimark-Sacker crossing, by the secant method."""
+def _closed_in(float_map: FloatManyMap, candidate: _Candidate) -> Cycle:
+    """A cycle near a Neimark-Sacker crossing, by the secant method."""
     cycle = candidate.rough
     low, high = candidate.event.before, candidate.event.after
     ends = [(low.cycle.r, low.circle_test), (high.cycle.r, high.circle_test)]
@@ -262,7 +278,7 @@ def _at(float_map: FloatManyMap, candidate: _Candidate, place: Place) -> tuple[f
             break
         cycle = there
         ends = [ends[1], (r, circle_test(multipliers(float_map, there)))]
-    return place.distance(float_map, cycle), cycle.r, cycle.period
+    return cycle
 
 
 def _far_beyond(settled: list[tuple[float, Settled]], distance: float) -> bool:
@@ -286,6 +302,9 @@ def _onset_at(
             rough = _turned(float_map, close.rough, place)
             reach = 2 * abs(close.before.cycle.r - close.after.cycle.r) + 1e-9 * window.width
             return (yield from settle_onset(float_map, Kind.FLIP, rough, digits, scales, reach))
+        if candidate.kind is Crossing.NEIMARK_SACKER:
+            rough = _turned(float_map, _closed_in(float_map, candidate), place)
+            return (yield from settle_onset(float_map, Kind.NEIMARK_SACKER, rough, digits, scales, reach))
         half = rough.period // 2
         if rough.period % 2 == 0:
             # A branch of doubled cycles turns round where it joins the branch it split from: a flip.
@@ -323,22 +342,28 @@ def _turned(float_map: FloatManyMap, cycle: Cycle, place: Place) -> Cycle:
 def _words(onset: Onset) -> str:
     if onset.kind is Kind.FLIP:
         return f"flip from period {onset.period_before} to {onset.period_after}"
+    if onset.kind is Kind.NEIMARK_SACKER:
+        return f"Neimark-Sacker onset of period {onset.period_before}"
     return f"fold that opens period {onset.period_after}"
 
 
 def _message(
-    parameter: str, shown: list[tuple[float, Settled]], rotation: tuple[float, float, int] | None
+    parameter: str,
+    shown: list[tuple[float, Settled]],
+    lost: _Candidate | None,
+    wanted: frozenset[Kind],
 ) -> str:
     sentences = []
     for share, item in shown:
         sentences.append(f"{_words(item.onset)}, {share:.2g} of the view from the click")
-    if rotation is not None and (not shown or rotation[0] < shown[0][0]):
-        where = f"{parameter} = {rotation[1]:.9g} (period {rotation[2]})"
+    if lost is not None and (not shown or lost.distance < shown[0][0]):
+        where = f"{parameter} = {lost.rough.r:.6g} (period {lost.rough.period})"
         sentences.append(
-            f"the change nearest to the click is a Neimark-Sacker onset at {where}, "
-            "a kind that is not refined yet"
+            f"near the click a pair of multipliers reaches the unit circle near {where}, "
+            "but no regular Neimark-Sacker onset could be solved for there"
         )
     if not sentences:
-        return "no flip or fold of the cycles around the click lies within reach"
+        kinds = [kind.value for kind in (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER) if kind in wanted]
+        return f"no {' or '.join(kinds)} of the cycles around the click lies within reach"
     text = "; ".join(sentences)
     return text[0].upper() + text[1:]

@@ -71,6 +71,8 @@ def findings(
     many: ManyMap, kind: Kind, found: Polished, scales: Floats, reach: float
 ) -> Generator[Step, None, Findings]:
     """Check a polished onset; `reach` is a length typical of the parameter."""
+    if kind is Kind.NEIMARK_SACKER:
+        return _rotating(found)
     target = -1.0 if kind is Kind.FLIP else 1.0
     n = many.size
     matrix = _floats(found.monodromy)
@@ -102,6 +104,17 @@ def findings(
     if clear and is_simple:
         criticality = Criticality.SUPERCRITICAL if coefficient > 0 else Criticality.SUBCRITICAL
     return Findings(critical, others, is_simple, False, crossing, coefficient, criticality)
+
+
+def _rotating(found: Polished) -> Findings:
+    """A Neimark-Sacker point that was not proved: its multipliers alone."""
+    assert found.place.angle is not None
+    target = complex(*(float(value) for value in found.place.angle))
+    values = [complex(value) for value in np.linalg.eigvals(_floats(found.monodromy))]
+    values.sort(key=lambda value: min(abs(value - target), abs(value - target.conjugate())))
+    others = tuple(values[2:])
+    is_simple = all(abs(abs(value) - 1) > ON_THE_CIRCLE for value in others)
+    return Findings(target, others, is_simple, False, 0.0, None, Criticality.UNDECIDED)
 
 
 def _undecided(kind: Kind) -> Criticality:

@@ -1,4 +1,4 @@
-"""From a rough place to an `Onset` of a map of several states: two precisions, checks, texts."""
+"""From a rough place to an `Onset` of a map of several states: polish, proof, and what to say of it."""
 
 from __future__ import annotations
 
@@ -20,21 +20,29 @@ from tinemark.onsets.decimals import (
 from tinemark.onsets.many_cycles import Cycle, condensed, least_period
 from tinemark.onsets.many_map import FloatManyMap, Floats, ManyMap
 from tinemark.onsets.many_normal_form import Findings, findings
-from tinemark.onsets.many_polish import NotFound, Polished, polish, working_bits
+from tinemark.onsets.many_polish import NotFound, Polished, polish, rough_place, working_bits
+from tinemark.onsets.many_proof import ManyProof, prove_many
+from tinemark.onsets.many_shooting import Place
+from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Onset, Status, Step
+from tinemark.systems.errors import SwitchingTouched
 
+FIRST_BITS = 96
 SECOND_PRECISION_BITS = 64
 SAFETY = 4
 """Factor on the observed disagreement and the last Newton step, for 95 % coverage or better."""
 ATTEMPTS = 4
-NOT_PROVED = (
-    "proofs for maps of several states are not made yet: the value is solved at two precisions, "
-    "and its error estimated from the last Newton step and their difference"
+PROOF_ATTEMPTS = 3
+HOW_ESTIMATED = (
+    "the value is solved at two precisions, and its error estimated from the last Newton step and their "
+    "difference"
 )
 PRESERVES = 1e-9
 """A product of all multipliers this near to 1 means that areas are preserved."""
 POINTS_ONE = 1e-9
 """Points of an onset's cycle closer than this share of the state's scale are one point."""
+REAL = 1e-9
+"""Multipliers whose imaginary part is smaller than this are no complex pair."""
 
 
 @dataclass(frozen=True)
@@ -65,10 +73,12 @@ def settle_onset(
     scales: Floats,
     reach: float,
 ) -> Generator[Step, None, Settled]:
-    """Polish an onset from a rough cycle and check what it is.
+    """Polish an onset from a rough cycle, and prove it or say why it is only estimated.
 
     Parameters
     ----------
+    kind
+        Flip, fold or Neimark-Sacker.
     digits
         Significant digits wanted of the parameter.
     scales
@@ -82,15 +92,143 @@ def settle_onset(
         No onset of this kind and least period in reach.
     """
     many = float_map.many
-    vector = critical_vector(float_map, kind, rough)
-    first = yield from polish(many, kind, rough.points.tolist(), vector.tolist(), rough.r, 96, scales, reach)
+    start = rough_start(float_map, kind, rough)
+    first = yield from polish(many, kind, start, FIRST_BITS, scales, reach)
     _check_period(first, scales)
     places = decimal_places(fraction_of(first.r), digits + GUARD_DIGITS)
-    wanted = Fraction(1, 10) ** (places - 1)
     bits = working_bits(places, rough.period)
+    proved = yield from _proved(many, kind, first, bits, digits, places, scales, reach)
+    if isinstance(proved, Settled):
+        return proved
+    return (yield from _estimated(many, kind, first, bits, digits, places, scales, reach, proved))
+
+
+def rough_start(float_map: FloatManyMap, kind: Kind, cycle: Cycle) -> Place:
+    """The defining equations' unknowns as doubles tell them.
+
+    Raises
+    ------
+    NotFound
+        The cycle cannot be carried, or has no complex pair of multipliers.
+    """
+    matrix = condensed(float_map, cycle.points, cycle.r).monodromy
+    if not np.isfinite(matrix).all():
+        raise NotFound("the orbit left the domain of the formula")
+    angle: tuple[float, float] | None = None
+    if kind is Kind.NEIMARK_SACKER:
+        values, vectors = np.linalg.eig(matrix)
+        pairs = [place for place, value in enumerate(values) if value.imag > REAL]
+        if not pairs:
+            raise NotFound("the cycle has no complex pair of multipliers there")
+        critical = min(pairs, key=lambda place: abs(abs(values[place]) - 1))
+        value, vector = values[critical], vectors[:, critical]
+        angle = (float(value.real / abs(value)), float(value.imag / abs(value)))
+        directions = [vector.real, vector.imag]
+    else:
+        target = -1.0 if kind is Kind.FLIP else 1.0
+        directions = [np.linalg.svd(matrix - target * np.eye(len(matrix)))[2][-1]]
+    return rough_place(
+        float_map.many,
+        cycle.points.tolist(),
+        [direction.tolist() for direction in directions],
+        cycle.r,
+        angle,
+        FIRST_BITS,
+    )
+
+
+def _proved(
+    many: ManyMap,
+    kind: Kind,
+    first: Polished,
+    bits: int,
+    digits: int,
+    places: int,
+    scales: Floats,
+    reach: float,
+) -> Generator[Step, None, Settled | str]:
+    """The proved onset, or why there is none."""
+    wanted = Fraction(1, 10) ** (places + 1)
+    reason = ""
+    for _ in range(PROOF_ATTEMPTS):
+        first = yield from polish(many, kind, first.place, bits, scales, reach)
+        try:
+            proof = yield from prove_many(many, kind, first.place, scales, bits)
+        except SwitchingTouched as error:
+            return error.message
+        except NotProved as error:
+            if error.refuted:
+                raise NotFound(error.reason) from error
+            reason = error.reason
+        else:
+            if proof.parameter[1] - proof.parameter[0] <= wanted:
+                onset = _proved_onset(many, kind, proof, first.place.period, digits, places)
+                return Settled(onset, first, _findings_of(proof))
+            reason = "the enclosure stayed wider than the digits asked for"
+        bits = bits * 3 // 2
+    return reason
+
+
+def _findings_of(proof: ManyProof) -> Findings:
+    claims = proof.claims
+    return Findings(
+        claims.critical,
+        claims.others,
+        is_simple=True,
+        doubled=False,
+        crossing=float(claims.speed),
+        coefficient=None if claims.coefficient is None else float(claims.coefficient),
+        criticality=claims.criticality,
+    )
+
+
+def _proved_onset(
+    many: ManyMap, kind: Kind, proof: ManyProof, period: int, digits: int, places: int
+) -> Onset:
+    texts = enclosure_texts(*proof.parameter, places)
+    degenerate = proof.claims.degenerate
+    before, after = periods(kind, period)
+    middles = [sum(interval, Fraction(0)) / 2 for interval in proof.states]
+    return Onset(
+        parameter=many.parameter,
+        kind=kind,
+        period_before=before,
+        period_after=after,
+        criticality=proof.claims.criticality,
+        value=texts.value,
+        lower=texts.lower,
+        upper=texts.upper,
+        digits=digits,
+        status=Status.ESTIMATED if degenerate else Status.PROVED,
+        reason=degenerate,
+        states=_state_texts(many, middles, digits),
+        evidence=proof.evidence,
+        consequence=proof.claims.consequence,
+    )
+
+
+def periods(kind: Kind, period: int) -> tuple[int, int]:
+    """Periods before and after an onset of a cycle: a closed curve that grows round it leaves its period."""
+    if kind is Kind.FLIP:
+        return period, 2 * period
+    return (0, period) if kind is Kind.FOLD else (period, period)
+
+
+def _estimated(
+    many: ManyMap,
+    kind: Kind,
+    first: Polished,
+    bits: int,
+    digits: int,
+    places: int,
+    scales: Floats,
+    reach: float,
+    why: str,
+) -> Generator[Step, None, Settled]:
+    wanted = Fraction(1, 10) ** (places - 1)
     for _ in range(ATTEMPTS):
-        low = yield from _again(many, kind, first, bits, scales, reach)
-        high = yield from _again(many, kind, low, bits + SECOND_PRECISION_BITS, scales, reach)
+        low = yield from polish(many, kind, first.place, bits, scales, reach)
+        high = yield from polish(many, kind, low.place, bits + SECOND_PRECISION_BITS, scales, reach)
         apart = abs(fraction_of(high.r) - fraction_of(low.r))
         half = SAFETY * (apart + Fraction(high.last_step))
         if half <= wanted:
@@ -100,23 +238,7 @@ def settle_onset(
     found = yield from findings(many, kind, high, scales, max(reach, abs(float(high.r))))
     if found.is_degenerate:
         raise NotFound("branches cross or touch here instead of turning round in a fold")
-    return Settled(_onset(many, kind, high, found, half, digits, places, scales), high, found)
-
-
-def critical_vector(float_map: FloatManyMap, kind: Kind, cycle: Cycle) -> Floats:
-    """Rough critical vector at the first point: the direction that f^p all but reverses (or keeps)."""
-    matrix = condensed(float_map, cycle.points, cycle.r).monodromy
-    if not np.isfinite(matrix).all():
-        raise NotFound("the orbit left the domain of the formula")
-    target = -1.0 if kind is Kind.FLIP else 1.0
-    vector: Floats = np.linalg.svd(matrix - target * np.eye(len(matrix)))[2][-1]
-    return vector
-
-
-def _again(
-    many: ManyMap, kind: Kind, start: Polished, bits: int, scales: Floats, reach: float
-) -> Generator[Step, None, Polished]:
-    return (yield from polish(many, kind, start.points, start.vectors[0], start.r, bits, scales, reach))
+    return Settled(_estimated_onset(many, kind, high, found, half, digits, places, scales, why), high, found)
 
 
 def _check_period(found: Polished, scales: Floats) -> None:
@@ -125,7 +247,7 @@ def _check_period(found: Polished, scales: Floats) -> None:
         raise NotFound("the cycle found has a lower period")
 
 
-def _onset(
+def _estimated_onset(
     many: ManyMap,
     kind: Kind,
     solution: Polished,
@@ -134,37 +256,36 @@ def _onset(
     digits: int,
     places: int,
     scales: Floats,
+    why: str,
 ) -> Onset:
     value = fraction_of(solution.r)
-    period = len(solution.points)
+    before, after = periods(kind, len(solution.points))
     # Without the digits asked for, show those that hold: the error's leading digit is the last one.
     held = digits if half <= Fraction(1, 10) ** (places - 1) else max(1, -leading_power(half) - 1)
     shown = places if held == digits else held
     if held != digits:
         held = max(1, leading_power(value) + 1 + shown)
     texts = enclosure_texts(value - half, value + half, shown, centre=value)
-    flip = kind is Kind.FLIP
     return Onset(
         parameter=many.parameter,
         kind=kind,
-        period_before=period if flip else 0,
-        period_after=2 * period if flip else period,
+        period_before=before,
+        period_after=after,
         criticality=found.criticality,
         value=texts.value,
         lower=texts.lower,
         upper=texts.upper,
         digits=held,
         status=Status.ESTIMATED,
-        reason=_reason(found),
-        states=_state_texts(many, solution, digits),
+        reason=_reason(found, why),
+        states=_state_texts(many, [fraction_of(ball) for ball in solution.points[0]], digits),
         evidence=_evidence(many, kind, solution, found, half, scales),
     )
 
 
-def _state_texts(many: ManyMap, solution: Polished, digits: int) -> tuple[tuple[str, str], ...]:
+def _state_texts(many: ManyMap, values: list[Fraction], digits: int) -> tuple[tuple[str, str], ...]:
     texts = []
-    for name, ball in zip(many.states, solution.points[0], strict=True):
-        value = fraction_of(ball)
+    for name, value in zip(many.states, values, strict=True):
         # A state that is zero up to rounding is written as zero.
         if abs(value) < Fraction(1, 10) ** (digits + 5):
             value = Fraction(0)
@@ -173,18 +294,16 @@ def _state_texts(many: ManyMap, solution: Polished, digits: int) -> tuple[tuple[
     return tuple(texts)
 
 
-def _reason(found: Findings) -> str:
+def _reason(found: Findings, why: str) -> str:
     if found.doubled:
         value = "-1" if found.critical.real < 0 else "1"
         product = abs(complex(np.prod([found.critical, *found.others])))
-        why = ", as they must where the map preserves areas" if abs(product - 1) < PRESERVES else ""
+        preserves = ", as they must where the map preserves areas" if abs(product - 1) < PRESERVES else ""
         return (
-            f"two multipliers meet at {value}{why}, "
-            f"so whether the change is soft is not decided; {NOT_PROVED}"
+            f"two multipliers meet at {value}{preserves}, "
+            f"so whether the change is soft is not decided; {HOW_ESTIMATED}"
         )
-    if not found.is_simple:
-        return f"another multiplier lies on the unit circle here; {NOT_PROVED}"
-    return NOT_PROVED
+    return f"{why}; {HOW_ESTIMATED}"
 
 
 def _evidence(
@@ -216,9 +335,12 @@ def _period_words(solution: Polished, scales: Floats) -> str:
 
 
 def _multiplier_words(found: Findings) -> str:
-    critical = "-1" if found.critical.real < 0 else "1"
+    if abs(found.critical.imag) > REAL:
+        critical = f"{found.critical.real:.6g} and {abs(found.critical.imag):.6g} i, both signs"
+    else:
+        critical = "-1" if found.critical.real < 0 else "1"
     if not found.others:
-        return f"{critical}, the only one"
+        return f"{critical}, no others"
     sizes = ", ".join(f"{abs(value):.6g}" for value in found.others)
     where = "none of these on the unit circle" if found.is_simple else "not all off the unit circle"
     return f"{critical}; the others have size {sizes}: {where}"

@@ -1,0 +1,104 @@
+"""Second and third derivatives of a map along directions, and its switching surfaces, over balls."""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import lru_cache
+from itertools import permutations
+from typing import Any
+
+from tinemark.onsets.many_map import ManyMap
+from tinemark.systems.balls import ball_floor, ball_function, ball_less
+from tinemark.systems.expression import ZERO, Call, Expr, Name, Num
+from tinemark.systems.surfaces import domain_edges, switching_surfaces
+
+Evaluator = Callable[..., tuple[Any, ...]]
+
+
+@dataclass(frozen=True)
+class JetEvaluators:
+    """What proofs need of a map beyond `BallEvaluators`.
+
+    Attributes
+    ----------
+    second
+        f(*x, r, *v, *w) -> the n values of B(v, w), the second derivative in the states along v and w.
+    third
+        f(*x, r, *u, *v, *w) -> the n values of C(u, v, w).
+    sides
+        f(*x, r) -> one value a switching surface or edge of the domain.
+    whole
+        For each of those, whether the formula switches at whole numbers instead of at zero.
+    """
+
+    second: Evaluator
+    third: Evaluator
+    sides: Evaluator
+    whole: tuple[bool, ...]
+
+    def check_sides(self, x: Sequence[Any], r: Any) -> None:
+        """Raise `SwitchingTouched` unless the whole ball lies off every surface and edge.
+
+        The derivatives may have lost a surface (floor has derivative zero on both sides of its jumps), so
+        the surfaces are looked at by themselves.
+        """
+        if not self.whole:
+            return
+        for side, whole in zip(self.sides(*x, r), self.whole, strict=True):
+            if whole:
+                ball_floor(side)
+            else:
+                ball_less(side, 0)
+
+
+@lru_cache(maxsize=64)
+def jet_evaluators(many: ManyMap) -> JetEvaluators:
+    """Compile the evaluators of a map."""
+    from tinemark.systems.derivatives import partials
+
+    n = many.size
+    # A space cannot stand in a name, so these never meet a name of the system.
+    u, v, w = (tuple(f"{letter} {place}" for place in range(n)) for letter in "uvw")
+    known = partials(many.formulas, many.states, 3)
+
+    def along(order: int, directions: Sequence[Sequence[str]]) -> tuple[Expr, ...]:
+        totals: list[Expr] = [ZERO] * n
+        for (formula, names), value in known.items():
+            if len(names) == order:
+                places = [many.states.index(name) for name in names]
+                totals[formula] = _plus(totals[formula], _times(value, _spread(places, directions)))
+        return tuple(totals)
+
+    surfaces = switching_surfaces(many.formulas) + domain_edges(many.formulas)
+    return JetEvaluators(
+        ball_function(along(2, (v, w)), (*many.names, *v, *w)),
+        ball_function(along(3, (u, v, w)), (*many.names, *u, *v, *w)),
+        ball_function(tuple(surface.expr for surface in surfaces), many.names) if surfaces else _no_sides,
+        tuple(surface.kind == "integer" for surface in surfaces),
+    )
+
+
+def _no_sides(*_: Any) -> tuple[Any, ...]:
+    return ()
+
+
+def _spread(places: Sequence[int], directions: Sequence[Sequence[str]]) -> Expr:
+    """Sum over all distinct orders of a mixed derivative of the product of its directions' components."""
+    total: Expr = ZERO
+    for order in Counter(permutations(places)):
+        product: Expr = Name(directions[0][order[0]])
+        for direction, place in zip(directions[1:], order[1:], strict=True):
+            product = Call("mul", (product, Name(direction[place])))
+        total = _plus(total, product)
+    return total
+
+
+def _plus(a: Expr, b: Expr) -> Expr:
+    return b if a == ZERO else Call("add", (a, b))
+
+
+def _times(a: Expr, b: Expr) -> Expr:
+    return b if a == Num(Fraction(1)) else Call("mul", (a, b))
