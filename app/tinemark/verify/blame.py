@@ -1,0 +1,104 @@
+"""Which part of a claim is wrong, where the test on its box fails.
+
+A certificate says the same thing several times over: the box and the printed value both tell where the onset
+is, and the formula tells whether one is there. What agrees with the two others is not to blame. None of this
+proves anything; it only names what was refused.
+"""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from typing import NoReturn
+
+from tinemark.verify import intervals as iv
+from tinemark.verify.claims import Paper, Part, Refused, Undecided
+from tinemark.verify.cycles import OneState, at_point, middle_orbit, on_box
+from tinemark.verify.intervals import ONE
+from tinemark.verify.newton import inverse, times
+from tinemark.verify.one_state import TARGETS, Numbers
+
+STEPS = 8
+CLOSE = Fraction(1, 10**5)
+FURTHER = 4
+"""So many times the claimed period is looked along for the true one, up to `MOST_STEPS` steps."""
+MOST_STEPS = 4096
+
+
+def find(
+    one: OneState, paper: Paper, numbers: Numbers, bits: int, start: Fraction | None, reason: str
+) -> NoReturn:
+    """Raise `Refused` with the part to blame."""
+    x = numbers.states[0][0] if start is None else start
+    try:
+        _other_period_or_kind(one, paper, numbers, bits, x)
+        reached = _solved(one, paper, numbers, bits, x)
+    except Undecided:
+        reached = None
+    middle, half = numbers.parameter
+    room = 100 * (numbers.upper - numbers.lower)
+    if reached is not None and numbers.lower - room <= reached <= numbers.upper + room:
+        raise Refused(Part.BOX, f"{reason}; value and formula agree with each other")
+    if numbers.lower - room - half <= middle <= numbers.upper + room + half:
+        raise Refused(
+            Part.FORMULA, f"the formulas have no such onset where value and box say it is ({reason})"
+        )
+    raise Refused(Part.BOX, f"{reason}; it is not where the value is")
+
+
+def _other_period_or_kind(one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction) -> None:
+    most = max(paper.period, min(FURTHER * paper.period, MOST_STEPS))
+    _, _, points = middle_orbit(one, x, numbers.value, most, bits)
+    start = points[0]
+    scale = max(abs(x), Fraction(1, 10**6)) * CLOSE
+    for steps, point in enumerate(points[1:], 1):
+        low, high = iv.ends(iv.sub(point, start, bits))
+        if max(abs(low), abs(high)) > scale:
+            continue
+        if steps < paper.period and paper.period % steps == 0:
+            # Near a deep flip the orbit of half the period is close as well: the slope tells.
+            slope = _slope(one, x, numbers.value, steps, bits)
+            if abs(slope - TARGETS[paper.kind]) < Fraction(1, 100):
+                raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {paper.period}")
+            continue
+        slope = _slope(one, x, numbers.value, steps, bits)
+        if steps == paper.period:
+            for kind, target in TARGETS.items():
+                if kind != paper.kind and abs(slope - target) < Fraction(1, 100) and abs(slope) < 2:
+                    _double_or_kind(one, paper, numbers, bits, x, kind)
+            return
+        if steps > paper.period and abs(slope - TARGETS[paper.kind]) < Fraction(1, 100):
+            raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {paper.period}")
+
+
+def _double_or_kind(
+    one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction, kind: str
+) -> NoReturn:
+    """A slope of +1 where -1 is claimed is a fold, or a flip seen over twice its period."""
+    half = paper.period // 2
+    if kind == "fold" and paper.period % 2 == 0:
+        slope = _slope(one, x, numbers.value, half, bits)
+        if abs(slope + 1) < Fraction(1, 100):
+            raise Refused(Part.PERIOD, f"the cycle there has period {half}, not {paper.period}")
+    raise Refused(Part.KIND, f"the onset there is a {kind}, not a {paper.kind}")
+
+
+def _slope(one: OneState, x: Fraction, r: Fraction, steps: int, bits: int) -> Fraction:
+    return iv.ends(middle_orbit(one, x, r, steps, bits)[1])[0]
+
+
+def _solved(one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction) -> Fraction | None:
+    """Where Newton's method goes from the printed value; None where it does not settle."""
+    target = iv.of_fraction(Fraction(TARGETS[paper.kind]), bits)
+    place = [iv.middle(iv.of_fraction(value, bits), bits) for value in (x, numbers.value)]
+    last = None
+    for _ in range(STEPS):
+        end = on_box(one, place[0], place[1], paper.period, bits)
+        there, slope = at_point(one, place[0], place[1], paper.period, bits)
+        slopes = [[iv.sub(end.u, ONE, bits), end.v], [end.w, end.z]]
+        residual = [iv.sub(there, place[0], bits), iv.sub(slope, target, bits)]
+        move = times(inverse(slopes, bits), residual, bits)
+        place = [iv.middle(iv.sub(old, by, bits), bits) for old, by in zip(place, move, strict=True)]
+        last = iv.ends(move[1])
+        if max(abs(last[0]), abs(last[1])) < (numbers.upper - numbers.lower) / 4:
+            return iv.ends(place[1])[0]
+    return None

@@ -1,0 +1,342 @@
+"""Truncated power series with interval coefficients: derivatives without writing a formula for one.
+
+A series stands for f(X + a, R + b) up to third order in a and to first order in b with at most one a:
+the coefficients of 1, a, b, a^2, ab, a^3 (Taylor coefficients, so f_xx is twice that of a^2). Where the
+coefficients are taken on a box they enclose those of every point of it. Coefficients known to be zero are
+left out. Several states have one a each, and series to second order.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import lru_cache
+from typing import TypeAlias
+
+from tinemark.verify import intervals as iv
+from tinemark.verify.claims import Undecided
+from tinemark.verify.formula import COMPARISONS, Instruction, Program
+from tinemark.verify.intervals import ONE, ZERO, Interval
+
+Series: TypeAlias = dict[int, Interval]
+"""Coefficients by the place of their monomial in the shape; place 0 is the value."""
+
+
+@dataclass(frozen=True)
+class Shape:
+    """Which monomials are carried, as tuples of exponents; the first is the constant.
+
+    `products[i]` lists (j, k) with monomial i times monomial j being monomial k of the shape.
+    """
+
+    monomials: tuple[tuple[int, ...], ...]
+    products: tuple[tuple[tuple[int, int], ...], ...]
+    order: int
+
+    def place(self, *exponents: int) -> int:
+        """Place of a monomial."""
+        return self.monomials.index(exponents)
+
+
+@lru_cache(maxsize=16)
+def shape_of(monomials: tuple[tuple[int, ...], ...]) -> Shape:
+    """The shape of a set of monomials that holds every factor of its members, the constant first."""
+    places = {monomial: place for place, monomial in enumerate(monomials)}
+    products = []
+    for first in monomials:
+        row = []
+        for place, second in enumerate(monomials):
+            product = tuple(a + b for a, b in zip(first, second, strict=True))
+            if product in places:
+                row.append((place, places[product]))
+        products.append(tuple(row))
+    return Shape(monomials, tuple(products), max(sum(monomial) for monomial in monomials))
+
+
+VALUE = shape_of(((0, 0),))
+SLOPE = shape_of(((0, 0), (1, 0)))
+ONE_STATE = shape_of(((0, 0), (1, 0), (0, 1), (2, 0), (1, 1), (3, 0)))
+
+
+class Evaluator:
+    """Evaluates a program on series of one shape at one precision.
+
+    Steps that depend on none of the `moving` names are worked out once.
+    """
+
+    def __init__(
+        self, program: Program, shape: Shape, bits: int, steady: Mapping[str, Series], moving: Sequence[str]
+    ) -> None:
+        self.steps, self.shape, self.bits = program.steps, shape, bits
+        self.steady = steady
+        self.moves = _moving(program, frozenset(moving))
+        self.known: dict[int, Series] = {}
+        self.always = _always(program)
+
+    def __call__(self, values: Mapping[str, Series]) -> Series:
+        """The program's series where the moving names have these.
+
+        Raises
+        ------
+        Undecided
+            An interval leaves a function's domain, or touches a switching surface.
+        """
+        done: dict[int, Series] = {}
+        # In the order they were written, so that a long sum is not a deep one; branches only as needed.
+        for place in self.always:
+            self._step(place, values, done)
+        return self._step(len(self.steps) - 1, values, done)
+
+    def _step(self, place: int, values: Mapping[str, Series], done: dict[int, Series]) -> Series:
+        keep = done if self.moves[place] else self.known
+        if place not in keep:
+            keep[place] = self._work(self.steps[place], values, done)
+        return keep[place]
+
+    def _work(self, step: Instruction, values: Mapping[str, Series], done: dict[int, Series]) -> Series:
+        op, bits = step.op, self.bits
+        if op == "number":
+            return {0: iv.of_fraction(step.value, bits)}
+        if op == "pi":
+            return {0: iv.pi(bits)}
+        if op == "name":
+            return values[step.name] if step.name in values else self.steady[step.name]
+        if op in COMPARISONS:
+            left, right = (self._step(place, values, done)[0] for place in step.args[:2])
+            below = iv.less(left, right, bits)
+            return self._step(step.args[2 if below == (op in ("<", "<=")) else 3], values, done)
+        args = [self._step(place, values, done) for place in step.args]
+        match op:
+            case "add":
+                return self._sum(args[0], args[1])
+            case "sub":
+                return self._sum(args[0], self._negative(args[1]))
+            case "neg":
+                return self._negative(args[0])
+            case "mul":
+                return self._product(args[0], args[1])
+            case "div":
+                return self._quotient(args[0], args[1])
+            case "power":
+                return self._power(args[0], int(step.value))
+            case "general power":
+                return self._of(_exp, self._product(args[1], self._of(_log, args[0])))
+            case "abs":
+                return self._negative(args[0]) if iv.less(args[0][0], ZERO, bits) else args[0]
+            case "min" | "max":
+                below = iv.less(args[0][0], args[1][0], bits)
+                return args[0] if below == (op == "min") else args[1]
+            case "floor":
+                return {0: iv.floor(args[0][0])}
+            case "atan2":
+                return self._angle(args[0], args[1])
+            case "tan":
+                return self._quotient(self._of(_sin, args[0]), self._of(_cos, args[0]))
+            case "acos":
+                quarter: Series = {0: iv.half_pi(bits)}
+                return self._sum(quarter, self._negative(self._of(_asin, args[0])))
+        return self._of(_FUNCTIONS[op], args[0])
+
+    def _sum(self, a: Series, b: Series) -> Series:
+        if len(a) < len(b):
+            a, b = b, a
+        result = dict(a)
+        for place, value in b.items():
+            result[place] = iv.add(result[place], value, self.bits) if place in result else value
+        return result
+
+    def _negative(self, a: Series) -> Series:
+        return {place: iv.neg(value) for place, value in a.items()}
+
+    def _product(self, a: Series, b: Series) -> Series:
+        if a is b:
+            return self._square(a)
+        bits = self.bits
+        result: Series = {}
+        for first, value in a.items():
+            for second, place in self.shape.products[first]:
+                if second in b:
+                    term = iv.mul(value, b[second], bits)
+                    result[place] = iv.add(result[place], term, bits) if place in result else term
+        return result
+
+    def _square(self, a: Series) -> Series:
+        """Square of a series; the interval of a square is narrower than that of a product."""
+        return self._product(a, dict(a)) | {0: iv.whole_power(a[0], 2, self.bits)}
+
+    def _power(self, a: Series, n: int) -> Series:
+        """Whole power by the chain rule, so that a occurs once in each coefficient."""
+        if n == 0:
+            return {0: ONE}
+        if n < 0:
+            return self._quotient({0: ONE}, self._power(a, -n))
+        coefficients, factor = [], Fraction(1)
+        for order in range(self.shape.order + 1):
+            if order > n:
+                break
+            power = iv.whole_power(a[0], n - order, self.bits)
+            coefficients.append(iv.mul(iv.of_fraction(factor, self.bits), power, self.bits))
+            factor = factor * (n - order) / (order + 1)
+        return self._compose(coefficients, a)
+
+    def _quotient(self, a: Series, b: Series) -> Series:
+        if list(b) == [0]:
+            return {place: iv.div(value, b[0], self.bits) for place, value in a.items()}
+        # 1/(b0 + e) = 1/b0 - e/b0^2 + e^2/b0^3 - ...
+        inverse = iv.div(ONE, b[0], self.bits)
+        coefficients = [inverse]
+        for _ in range(self.shape.order):
+            coefficients.append(iv.neg(iv.mul(coefficients[-1], inverse, self.bits)))
+        return self._product(a, self._compose(coefficients, b))
+
+    def _angle(self, y: Series, x: Series) -> Series:
+        """Angle of the point (x, y), away from the cut along the negative x axis."""
+        if iv.sign(x[0]) > 0:
+            return self._of(_atan, self._quotient(y, x))
+        side = iv.sign(y[0])
+        if side == 0:
+            raise Undecided("the orbit touches the cut of atan2")
+        quarter = iv.half_pi(self.bits)
+        start: Series = {0: quarter if side > 0 else iv.neg(quarter)}
+        return self._sum(start, self._negative(self._of(_atan, self._quotient(x, y))))
+
+    def _of(self, function: Function, a: Series) -> Series:
+        """A function of one argument applied to a series."""
+        order = self.shape.order if len(a) > 1 else 0
+        return self._compose(function(a[0], order, self.bits), a)
+
+    def _compose(self, coefficients: Sequence[Interval], a: Series) -> Series:
+        """Sum c0 + c1 e + c2 e^2 + ... with e what a has beyond its value, by Horner's rule."""
+        beyond = {place: value for place, value in a.items() if place}
+        if not beyond or len(coefficients) == 1:
+            return {0: coefficients[0]}
+        result: Series = {0: coefficients[-1]}
+        for coefficient in reversed(coefficients[:-1]):
+            result = self._product(result, beyond) | {0: coefficient}
+        return result
+
+
+Function: TypeAlias = Callable[[Interval, int, int], list[Interval]]
+"""Taylor coefficients of a function on an interval: function(x, order, bits), order at most 3."""
+
+
+def _scaled(values: Sequence[Interval], factors: Sequence[Fraction], bits: int) -> list[Interval]:
+    return [
+        value if factor == 1 else iv.mul(iv.of_fraction(factor, bits), value, bits)
+        for value, factor in zip(values, factors, strict=False)
+    ]
+
+
+_FACTORIALS = (Fraction(1), Fraction(1), Fraction(1, 2), Fraction(1, 6))
+
+
+def _exp(x: Interval, order: int, bits: int) -> list[Interval]:
+    return _scaled([iv.exp(x, bits)] * (order + 1), _FACTORIALS, bits)
+
+
+def _log(x: Interval, order: int, bits: int) -> list[Interval]:
+    found = [iv.log(x, bits)]
+    if order:
+        inverse = iv.div(ONE, x, bits)
+        powers = [iv.whole_power(inverse, n, bits) for n in range(1, order + 1)]
+        found += _scaled(powers, (Fraction(1), Fraction(-1, 2), Fraction(1, 3)), bits)
+    return found
+
+
+def _sqrt(x: Interval, order: int, bits: int) -> list[Interval]:
+    root = iv.sqrt(x, bits)
+    found = [root]
+    for n in range(order):
+        factor = (Fraction(1, 2) - n) / (n + 1)
+        found.append(iv.mul(iv.of_fraction(factor, bits), iv.div(found[-1], x, bits), bits))
+    return found
+
+
+def _sin(x: Interval, order: int, bits: int) -> list[Interval]:
+    cosine, sine = iv.cos_sin(x, bits)
+    values = [sine, cosine, iv.neg(sine), iv.neg(cosine)]
+    return _scaled(values[: order + 1], _FACTORIALS, bits)
+
+
+def _cos(x: Interval, order: int, bits: int) -> list[Interval]:
+    cosine, sine = iv.cos_sin(x, bits)
+    values = [cosine, iv.neg(sine), iv.neg(cosine), sine]
+    return _scaled(values[: order + 1], _FACTORIALS, bits)
+
+
+def _cosh(x: Interval, order: int, bits: int) -> list[Interval]:
+    cosh, sinh = iv.cosh_sinh(x, bits)
+    return _scaled([cosh, sinh, cosh, sinh][: order + 1], _FACTORIALS, bits)
+
+
+def _sinh(x: Interval, order: int, bits: int) -> list[Interval]:
+    cosh, sinh = iv.cosh_sinh(x, bits)
+    return _scaled([sinh, cosh, sinh, cosh][: order + 1], _FACTORIALS, bits)
+
+
+def _tanh(x: Interval, order: int, bits: int) -> list[Interval]:
+    # t' = 1 - t^2, t'' = -2 t t', t''' = -2 t'^2 - 2 t t''
+    t = iv.tanh(x, bits)
+    first = iv.sub(ONE, iv.whole_power(t, 2, bits), bits)
+    second = _times(-2, iv.mul(t, first, bits), bits)
+    third = _times(-2, iv.add(iv.whole_power(first, 2, bits), iv.mul(t, second, bits), bits), bits)
+    return _scaled([t, first, second, third][: order + 1], _FACTORIALS, bits)
+
+
+def _atan(x: Interval, order: int, bits: int) -> list[Interval]:
+    # With q = 1 / (1 + x^2): q, -2 x q^2, (6 x^2 - 2) q^3.
+    square = iv.whole_power(x, 2, bits)
+    q = iv.div(ONE, iv.add(ONE, square, bits), bits)
+    second = _times(-2, iv.mul(x, iv.whole_power(q, 2, bits), bits), bits)
+    factor = iv.sub(_times(6, square, bits), iv.of_fraction(Fraction(2), bits), bits)
+    third = iv.mul(factor, iv.whole_power(q, 3, bits), bits)
+    return _scaled([iv.atan(x, bits), q, second, third][: order + 1], _FACTORIALS, bits)
+
+
+def _asin(x: Interval, order: int, bits: int) -> list[Interval]:
+    # With s = 1 / sqrt(1 - x^2): s, x s^3, (1 + 2 x^2) s^5.
+    square = iv.whole_power(x, 2, bits)
+    value = iv.asin(x, bits)
+    s = iv.div(ONE, iv.sqrt(iv.sub(ONE, square, bits), bits), bits)
+    second = iv.mul(x, iv.whole_power(s, 3, bits), bits)
+    third = iv.mul(iv.add(ONE, _times(2, square, bits), bits), iv.whole_power(s, 5, bits), bits)
+    return _scaled([value, s, second, third][: order + 1], _FACTORIALS, bits)
+
+
+def _times(factor: int, x: Interval, bits: int) -> Interval:
+    product: Interval = iv.mul(iv.of_fraction(Fraction(factor), bits), x, bits)
+    return product
+
+
+_FUNCTIONS: Mapping[str, Function] = {
+    "sin": _sin,
+    "cos": _cos,
+    "asin": _asin,
+    "atan": _atan,
+    "sinh": _sinh,
+    "cosh": _cosh,
+    "tanh": _tanh,
+    "exp": _exp,
+    "log": _log,
+    "sqrt": _sqrt,
+}
+
+
+def _always(program: Program) -> list[int]:
+    """Places of the steps that are needed whatever branch is taken, rising."""
+    needed, waiting = set(), [len(program.steps) - 1]
+    while waiting:
+        place = waiting.pop()
+        if place not in needed:
+            needed.add(place)
+            step = program.steps[place]
+            waiting.extend(step.args[:2] if step.op in COMPARISONS else step.args)
+    return sorted(needed)
+
+
+def _moving(program: Program, names: frozenset[str]) -> list[bool]:
+    moves: list[bool] = []
+    for step in program.steps:
+        moves.append(step.name in names if step.op == "name" else any(moves[place] for place in step.args))
+    return moves
