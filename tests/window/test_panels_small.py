@@ -102,7 +102,7 @@ def test_one_state_orbit_has_curve_diagonal_cobweb_and_points(probe):
     found = orbit("logistic", "3.5")
     probe.show_orbit(found, parameter="r", value="3.5", observe="x", state="x", words="Period 4.")
     assert probe.value.text() == "3.5"
-    assert probe.words.text() == "Period 4."
+    assert probe.words.words == "Period 4."
     curve, diagonal, web, points = drawn(probe.returns)
     np.testing.assert_allclose(curve[1], 3.5 * curve[0] * (1 - curve[0]), atol=1e-12)
     np.testing.assert_array_equal(*diagonal)
@@ -132,7 +132,7 @@ def test_escape_is_said(probe):
     found = orbit("logistic", "4.5")
     assert found.escaped
     probe.show_orbit(found, parameter="r", value="4.5", observe="x", state="x")
-    assert "escapes after" in probe.words.text()
+    assert "escapes after" in probe.words.words
 
 
 @pytest.mark.parametrize(
@@ -149,7 +149,7 @@ def test_escape_is_said(probe):
 )
 def test_what_is_seen_of_the_period(probe, name, value, words):
     probe.show_orbit(orbit(name, value, 2000), parameter="r", value=value, observe="x", state="x")
-    assert probe.words.text() == words
+    assert probe.words.words == words
 
 
 def test_steady_orbit_is_drawn_level(probe):
@@ -162,7 +162,7 @@ def test_value_is_typed_checked_and_asked_for(probe, qtbot):
     probe.value.setText("3,5")
     with qtbot.assertNotEmitted(probe.value_entered, wait=0):
         press(probe.value, Qt.Key.Key_Return)
-    assert "not a number" in probe.words.text()
+    assert "not a number" in probe.words.words
     assert probe.value.property("invalid")
     probe.value.setText("3.55")
     with qtbot.waitSignal(probe.value_entered) as told:

@@ -22,12 +22,17 @@ from tinemark.window.session_keeper import SessionKeeper
 
 ExceptHook = Callable[[type[BaseException], BaseException, TracebackType | None], object]
 
+HANDOVER_S = 0.0005
+
 
 def application() -> QApplication:
     """The running application, made where there is none."""
     app = QApplication.instance()
     if not isinstance(app, QApplication):
         app = QApplication([sys.argv[0] or "tinemark"])
+    # A thread that computes in Python hands over to the window's after this long, not after 5 ms: one
+    # gesture takes the interpreter back many times.
+    sys.setswitchinterval(HANDOVER_S)
     app.setApplicationName("tinemark")
     app.setApplicationDisplayName("Tinemark")
     app.setApplicationVersion(__version__)

@@ -30,6 +30,7 @@ from tinemark.window.probe_jobs import ProbeJobs
 from tinemark.window.probe_panel import ProbePanel
 from tinemark.window.ratio_jobs import RatioJobs
 from tinemark.window.ratio_panel import RatioPanel
+from tinemark.window.readying import Readying
 from tinemark.window.row_work import RowWork
 from tinemark.window.session_files import SessionFiles
 from tinemark.window.session_keeper import SessionKeeper
@@ -41,6 +42,7 @@ from tinemark.window.workers import Workers
 
 FIRST_SIZE = (1280, 800)
 LEAST_SIZE = (1024, 640)
+AT_REST_MS = 1000
 
 
 class MainWindow(QMainWindow):
@@ -78,6 +80,8 @@ class MainWindow(QMainWindow):
         self.rows = RowWork(self)
         self.files = SessionFiles(self, keeper, memory)
         self.workers = Workers(self.bridge, self)
+        folded = (self.probe_panel, self.system_card, self.settings_panel)
+        self.readying = Readying([panel.prepare for panel in folded], folded, self)
         self._make_menus()
         self._connect()
         self._restore_layout()
@@ -211,6 +215,7 @@ class MainWindow(QMainWindow):
         self.head.show_title(system.title, f"{session.observe} against {session.parameter}")
         self.system_card.show_system(session.system_text, self.keeper.builtin)
         self.workers.warm(system)
+        self.readying.start(AT_REST_MS)
 
     def _title_changed(self) -> None:
         self.setWindowTitle(f"{self.keeper.name}[*] \N{EM DASH} Tinemark")
@@ -347,6 +352,7 @@ class MainWindow(QMainWindow):
 
     def shut_down(self) -> None:
         """End every thread and process. Nothing comes after it."""
+        self.readying.stop()
         for jobs in (self.pictures, self.onsets, self.probes):
             jobs.detach()
         self.bridge.close()

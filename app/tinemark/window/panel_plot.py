@@ -8,8 +8,11 @@ from collections.abc import Sequence
 import pyqtgraph as pg
 from PySide6.QtCore import QEvent, Qt
 from PySide6.QtGui import QColor, QFontMetricsF, QGuiApplication, QPen
+from PySide6.QtWidgets import QGraphicsGridLayout, QSizePolicy
 
 from tinemark.window.theme import Theme, color, current_theme, small_font
+
+PLAIN = {"pen": None, "symbol": None, "antialias": False}
 
 
 class PanelAxis(pg.AxisItem):
@@ -68,37 +71,108 @@ def _with_minus(text: str) -> str:
     return text
 
 
-class PanelPlot(pg.PlotWidget):
+class PlotFrame(pg.GraphicsWidget):
+    """Box and two axes, put together from pyqtgraph's parts.
+
+    Its own `PlotItem` brings some hundred hidden widgets of a menu that nobody opens here, and each of
+    them is dressed anew whenever the theme changes.
+    """
+
+    def __init__(self, axes: dict[str, PanelAxis]) -> None:
+        super().__init__()
+        self.vb = pg.ViewBox(enableMenu=False, enableMouse=False)
+        self._axes = axes
+        self._items: list[pg.PlotDataItem] = []
+        self._used = 0
+        grid = QGraphicsGridLayout()
+        grid.setContentsMargins(1, 1, 1, 1)
+        grid.setSpacing(0)
+        self.setLayout(grid)
+        grid.addItem(self.vb, 0, 1)
+        for side, (row, column) in (("left", (0, 0)), ("bottom", (1, 1))):
+            axis = axes[side]
+            axis.linkToView(self.vb)
+            axis.setZValue(0.5)
+            grid.addItem(axis, row, column)
+        grid.setRowStretchFactor(0, 100)
+        grid.setColumnStretchFactor(1, 100)
+
+    def getAxis(self, side: str) -> PanelAxis:
+        """The axis "left" or "bottom"."""
+        return self._axes[side]
+
+    def plot(self, across: object, up: object, **look: object) -> pg.PlotDataItem:
+        """Draw a curve or points over what is drawn, as `pyqtgraph.PlotDataItem` takes them."""
+        self.make_items(self._used + 1)
+        item = self._items[self._used]
+        self._used += 1
+        item.setData(across, up, **(PLAIN | look))
+        item.setVisible(True)
+        return item
+
+    def make_items(self, count: int) -> None:
+        """Have items for as many curves."""
+        while len(self._items) < count:
+            item = pg.PlotDataItem()
+            item.setVisible(False)
+            self._items.append(item)
+            self.vb.addItem(item)
+
+    def listDataItems(self) -> list[pg.PlotDataItem]:
+        """What is drawn, in order."""
+        return self._items[: self._used]
+
+    def clear(self) -> None:
+        """Take everything away that was drawn. The items are kept for what is drawn next: making one takes
+        several times as long as giving it other data.
+        """
+        for item in self.listDataItems():
+            item.setVisible(False)
+        self._used = 0
+
+
+class PanelPlot(pg.GraphicsView):
     """A plot that is looked at, not operated: it is sized by its data and never scrolls away.
 
     Subclasses or owners redraw in `redress`, which runs after every change of theme or font.
     """
 
     def __init__(self, *, across: str, up: str, whole_across: bool = False, name: str = "") -> None:
-        axes = {"left": PanelAxis("left"), "bottom": PanelAxis("bottom", whole=whole_across)}
-        super().__init__(axisItems=axes, enableMenu=False)
+        super().__init__()
+        self.plotItem = PlotFrame(
+            {"left": PanelAxis("left"), "bottom": PanelAxis("bottom", whole=whole_across)}
+        )
         self._labels = {"left": up, "bottom": across}
+        self._dress: tuple[str, str] = ("", "")
         self.setAccessibleName(name)
-        self.hideButtons()
-        # pyqtgraph makes a menu even where none is wanted, as a window of its own that outlives the plot.
-        menu = self.plotItem.ctrlMenu
-        menu.setParent(self, menu.windowFlags())
-        self.setMouseEnabled(x=False, y=False)
+        self.setSizePolicy(QSizePolicy.Policy.Expanding, QSizePolicy.Policy.Expanding)
+        self.enableMouse(False)
+        self.setCentralItem(self.plotItem)
         self.setFrameShape(self.Shape.NoFrame)
         self.setFocusPolicy(Qt.FocusPolicy.NoFocus)
         self.plotItem.setContentsMargins(2, 6, 10, 2)
-        for side in ("top", "right"):
-            self.plotItem.hideAxis(side)
         self.redress()
+
+    def set_range(self, across: tuple[float, float], up: tuple[float, float], padding: float) -> None:
+        """Show these ranges, with `padding` as a share of each beside them."""
+        self.plotItem.vb.setRange(xRange=across, yRange=up, padding=padding)
 
     def set_labels(self, *, across: str, up: str) -> None:
         """Name the axes."""
-        self._labels = {"left": up, "bottom": across}
-        self._label_axes(current_theme())
+        labels = {"left": up, "bottom": across}
+        if labels != self._labels:
+            self._labels = labels
+            self._label_axes(current_theme())
 
     def redress(self) -> None:
-        """Take every colour and font from the theme that is on."""
+        """Take every colour and font from the theme that is on, where they are not worn already: Qt tells of
+        one change several times.
+        """
         theme = current_theme()
+        dress = (theme.name, small_font().toString())
+        if dress == self._dress:
+            return
+        self._dress = dress
         self.setBackground(theme.plot)
         font = small_font(0.88)
         for side in ("left", "bottom"):

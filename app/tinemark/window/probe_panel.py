@@ -4,9 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-import pyqtgraph as pg
 from PySide6.QtCore import QEvent, Qt, Signal
-from PySide6.QtGui import QColor
+from PySide6.QtGui import QColor, QShowEvent
 from PySide6.QtWidgets import (
     QHBoxLayout,
     QLabel,
@@ -20,6 +19,7 @@ from PySide6.QtWidgets import (
 
 from tinemark.systems.errors import NumberError
 from tinemark.systems.exact import exact, fraction_text
+from tinemark.window.elided_label import ElidedLabel
 from tinemark.window.faces import FaceKeeper, wear
 from tinemark.window.field_editors import QuietCombo
 from tinemark.window.panel_plot import PanelPlot, line_pen
@@ -56,6 +56,8 @@ class ProbePanel(QWidget):
         self.setAccessibleName("Probe")
         self._orbit: ProbeOrbit | None = None
         self._words = ""
+        self._dress = current_theme().name
+        self._stale = True
         self._build_bar()
         self.series = PanelPlot(
             across="step", up="observed", whole_across=True, name="Time series of the orbit"
@@ -93,7 +95,9 @@ class ProbePanel(QWidget):
         self.value.returnPressed.connect(self._enter_value)
         self.value.textEdited.connect(lambda: self._mark_value(""))
         self.name.setBuddy(self.value)
-        self.words = QLabel()
+        self.value.setMinimumWidth(self.value.fontMetrics().horizontalAdvance("0" * 14))
+        # The words give way in a narrow panel, not the value.
+        self.words = ElidedLabel()
         self.words.setTextInteractionFlags(Qt.TextInteractionFlag.TextSelectableByMouse)
         self.words.setProperty("rank", "second")
         self.part = QuietCombo()
@@ -144,12 +148,16 @@ class ProbePanel(QWidget):
         self._draw()
 
     def _draw(self) -> None:
+        # A folded panel is drawn when it opens.
+        self._stale = not self.isVisible()
+        if self._stale:
+            return
         orbit = self._orbit
         if orbit is None:
             self._stack.setCurrentWidget(self._empty)
             # Without an orbit, words say why there is none.
             self._empty.setText(self._words or EMPTY)
-            self.words.clear()
+            self.words.set_words("")
             return
         self._stack.setCurrentWidget(self._plots)
         observed, escaped = finite_part(np.asarray(orbit.observed, dtype=np.float64))
@@ -167,7 +175,7 @@ class ProbePanel(QWidget):
         else:
             seen = repeat_words(np.asarray(orbit.states, dtype=np.float64))
         said = [words for words in (self._words, seen if escaped or not self._words else "") if words]
-        self.words.setText(" ".join(said))
+        self.words.set_words(" ".join(said))
 
     def _draw_series(self, observed: Floats, part: range) -> None:
         theme = current_theme()
@@ -221,7 +229,7 @@ class ProbePanel(QWidget):
                 symbolPen=None,
                 symbolBrush=QColor(theme.accent),
             )
-        self.returns.setRange(xRange=(low, high), yRange=(low, high), padding=0.03)
+        self.returns.set_range((low, high), (low, high), 0.03)
 
     def _enter_value(self) -> None:
         try:
@@ -240,14 +248,26 @@ class ProbePanel(QWidget):
         self.words.style().unpolish(self.words)
         self.words.style().polish(self.words)
         if trouble:
-            self.words.setText(trouble)
-        elif self.words.text() != self._words:
-            self.words.setText(self._words)
+            self.words.set_words(trouble)
+        elif self.words.words != self._words:
+            self.words.set_words(self._words)
+
+    def prepare(self) -> None:
+        """Make what the first orbit is drawn with."""
+        self.series.plotItem.make_items(2)
+        self.returns.plotItem.make_items(4)
+
+    def showEvent(self, event: QShowEvent) -> None:
+        """Draw what came while the panel was folded."""
+        super().showEvent(event)
+        if self._stale:
+            self._draw()
 
     def changeEvent(self, event: QEvent) -> None:
         """Redraw in the new theme."""
         super().changeEvent(event)
-        if event.type() == QEvent.Type.PaletteChange and hasattr(self, "_stack"):
+        if event.type() == QEvent.Type.PaletteChange and self._dress != current_theme().name:
+            self._dress = current_theme().name
             self._redress()
 
     def _redress(self) -> None:
@@ -320,10 +340,10 @@ def _span(values: Floats) -> tuple[float, float]:
     return low, high
 
 
-def _fit(plot: pg.PlotWidget, left: float, right: float, values: Floats) -> None:
+def _fit(plot: PanelPlot, left: float, right: float, values: Floats) -> None:
     low, high = _span(values)
     # A steady orbit that has settled to its last digit is a level line, not noise filling the plot.
     floor = 1e-3 * max(abs(low), abs(high))
     if high - low < floor:
         low, high = (low + high - floor) / 2, (low + high + floor) / 2
-    plot.setRange(xRange=(left, max(right, left + 1)), yRange=(low, high), padding=0.06)
+    plot.set_range((left, max(right, left + 1)), (low, high), 0.06)

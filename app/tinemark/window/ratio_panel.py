@@ -78,13 +78,13 @@ class RatioPlot(PanelPlot):
     ) -> None:
         """Draw other ratios; the range follows them."""
         self._points, self._classes, self._delta = tuple(points), near_classes(classes, points), delta
-        self.set_range()
+        self._show_all()
         self.viewport().update()
 
-    def set_range(self) -> None:
+    def _show_all(self) -> None:
         """All bars and all drawn class values, with room at the edges."""
         if not self._points:
-            self.setRange(xRange=(0.5, 4.5), yRange=(0.0, 10.0), padding=0)
+            self.set_range((0.5, 4.5), (0.0, 10.0), 0)
             return
         ends = [float(c.delta) for c in self._classes]
         typical = sorted(abs(p.value) for p in self._points)[len(self._points) // 2]
@@ -95,11 +95,8 @@ class RatioPlot(PanelPlot):
         low, high = min(ends), max(ends)
         room = max((high - low) * 0.16, 0.02 * abs(typical), 1e-9)
         levels = [p.level for p in self._points]
-        self.setRange(
-            xRange=(min(levels) - 0.5, max(max(levels), min(levels) + 2) + 0.5),
-            yRange=(low - room, high + room),
-            padding=0,
-        )
+        across = (min(levels) - 0.5, max(max(levels), min(levels) + 2) + 0.5)
+        self.set_range(across, (low - room, high + room), 0)
 
     def paintEvent(self, event: QEvent) -> None:
         """The plot's own frame, then the marks, which keep their size on screen."""

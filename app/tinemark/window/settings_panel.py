@@ -156,7 +156,7 @@ class SettingsPanel(QScrollArea):
         _select(self.budget, settings.budget)
         _select(self.tone, settings.tone)
         if settings.palette:
-            self._fill_palettes()
+            self.prepare()
         _select(self.palette_choice, settings.palette)
         for editor in editors:
             editor.blockSignals(False)
@@ -207,9 +207,10 @@ class SettingsPanel(QScrollArea):
     def showEvent(self, event: QEvent) -> None:
         """The colour maps are read when they are first to be seen, not at the start of the program."""
         super().showEvent(event)
-        self._fill_palettes()
+        self.prepare()
 
-    def _fill_palettes(self) -> None:
+    def prepare(self) -> None:
+        """Read the colour maps, where that has not been done."""
         if self._palettes is not None:
             return
         self._palettes = self._load_palettes()

@@ -1,17 +1,31 @@
 """The style sheet: flat surfaces, thin outlines, a focus ring that is always seen. Lengths are device-
 independent.
+
+It names no colour, only roles of Qt's palette (`ROLE_WORDS`, filled by `theme.qt_palette`). So it is set
+once, and a change of theme is a change of palette: reading a new sheet takes Qt a millisecond a widget.
 """
 
 from __future__ import annotations
 
 from string import Template
-from typing import TYPE_CHECKING
 
-if TYPE_CHECKING:
-    from tinemark.window.theme import Theme
+ROLE_WORDS = {
+    "surface": "window",
+    "raised": "base",
+    "sunken": "shadow",
+    "line": "mid",
+    "edge": "dark",
+    "text": "text",
+    "muted": "placeholder-text",
+    "accent": "link",
+    "on_accent": "midlight",
+    "accent_soft": "highlight",
+    "warning": "link-visited",
+    "error": "bright-text",
+}
+"""Where the palette holds a theme's tokens, in the style sheet's words."""
 
 _SHEET = Template("""
-QWidget { color: $text; }
 QMainWindow, QDialog { background: $surface; }
 QDialogButtonBox { dialogbuttonbox-buttons-have-icons: 0; }
 QToolTip { background: $raised; color: $text; border: 1px solid $edge; padding: 4px 6px; }
@@ -79,8 +93,6 @@ QFrame[rank="rule"] { background: $line; max-height: 1px; min-height: 1px; borde
 """)
 
 
-def style_sheet(theme: Theme) -> str:
-    """The application's style sheet in the theme's colours."""
-    from dataclasses import asdict
-
-    return _SHEET.substitute({key: str(value) for key, value in asdict(theme).items()})
+def style_sheet() -> str:
+    """The application's style sheet, for every theme."""
+    return _SHEET.substitute({token: f"palette({role})" for token, role in ROLE_WORDS.items()})

@@ -295,12 +295,16 @@ class SystemCard(QWidget):
         if self.side == "fields" and not self._show_fields():
             self.show_side("text")
 
-    def showEvent(self, event: QShowEvent) -> None:
-        """Build what had not been built while the card was folded away."""
-        super().showEvent(event)
+    def prepare(self) -> None:
+        """Build what has not been built while the card was folded away."""
         if self._stale:
             self._show_text_anew()
             self._show_troubles(self._troubles)
+
+    def showEvent(self, event: QShowEvent) -> None:
+        """Build what is missing."""
+        super().showEvent(event)
+        self.prepare()
 
     def _show_fields(self) -> bool:
         draft = read_draft(self._text)

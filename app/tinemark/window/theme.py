@@ -11,13 +11,15 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import cast
 
-from PySide6.QtCore import Qt
+from PySide6.QtCore import Qt, QTimer
 from PySide6.QtGui import QColor, QFont, QFontDatabase, QGuiApplication, QPalette
-from PySide6.QtWidgets import QApplication, QStyleFactory
+from PySide6.QtWidgets import QApplication, QStyleFactory, QWidget
+from shiboken6 import isValid
 
 from tinemark.window.style_sheet import style_sheet
 
 THEME_PROPERTY = "tinemark_theme"
+POLISHED_AT_ONCE = 50
 
 
 @dataclass(frozen=True)
@@ -133,15 +135,42 @@ def apply_theme(app: QApplication, theme: Theme) -> None:
     `current_theme`.
     """
     app.setProperty(THEME_PROPERTY, theme.name)
-    if app.style().objectName().lower() != "fusion":
+    sheet = style_sheet()
+    if app.styleSheet() != sheet:
         app.setStyle(QStyleFactory.create("Fusion"))
-    # The sheet takes its defaults from the palette, so the palette comes first.
+        # The sheet takes its colours from the palette, so the palette comes first.
+        app.setPalette(qt_palette(theme))
+        app.setStyleSheet(sheet)
+        return
     app.setPalette(qt_palette(theme))
-    app.setStyleSheet(style_sheet(theme))
+    # Qt keeps the colours that it has looked up for a widget until that widget is polished anew: at once
+    # where it is seen, a few at a time where it is not.
+    hidden = []
+    style = app.style()
+    for widget in app.allWidgets():
+        if widget.isVisible():
+            style.polish(widget)
+        else:
+            hidden.append(widget)
+    _polish_soon(app, hidden)
+
+
+def _polish_soon(app: QApplication, waiting: list[QWidget]) -> None:
+    def go_on() -> None:
+        style = app.style()
+        for widget in waiting[:POLISHED_AT_ONCE]:
+            if isValid(widget):
+                style.polish(widget)
+        _polish_soon(app, waiting[POLISHED_AT_ONCE:])
+
+    if waiting:
+        QTimer.singleShot(0, app, go_on)
 
 
 def qt_palette(theme: Theme) -> QPalette:
-    """Qt's palette from the tokens, disabled roles included."""
+    """Qt's palette from the tokens, disabled roles included. The style sheet finds all its tokens in it
+    (`style_sheet.ROLE_WORDS`).
+    """
     palette = QPalette()
     role = QPalette.ColorRole
     for which, token in (
@@ -159,9 +188,9 @@ def qt_palette(theme: Theme) -> QPalette:
         (role.Highlight, theme.accent_soft),
         (role.HighlightedText, theme.text),
         (role.Link, theme.accent),
-        (role.LinkVisited, theme.accent),
+        (role.LinkVisited, theme.warning),
         (role.Light, theme.raised),
-        (role.Midlight, theme.line),
+        (role.Midlight, theme.on_accent),
         (role.Mid, theme.line),
         (role.Dark, theme.edge),
         (role.Shadow, theme.sunken),

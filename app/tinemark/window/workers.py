@@ -2,17 +2,23 @@
 
 from __future__ import annotations
 
+import importlib
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from PySide6.QtCore import QObject
+from PySide6.QtCore import QObject, QTimer
 
 from tinemark.systems.system import System
 from tinemark.window.bridge import Bridge
+from tinemark.window.collection import collect_as_ever, hold_collection, set_aside
 
 if TYPE_CHECKING:
     from tinemark.window.main_window import MainWindow
+
+
+LOADED_MS = 5000
+"""By then everything that a start loads has been loaded."""
 
 
 @dataclass(frozen=True)
@@ -32,6 +38,8 @@ def make_all(bridge: Bridge) -> Made:
     from tinemark.work.probe import ProbeDesk
     from tinemark.work.refinery import Refinery
 
+    # The system card's reader, so that its first form does not wait for it.
+    importlib.import_module("tomlkit")
     return Made(
         PictureDesk(bridge.on_field, bridge.on_event), ProbeDesk(bridge.on_event), Refinery(bridge.on_event)
     )
@@ -47,6 +55,9 @@ class Workers(QObject):
         self._made: Made | None = None
         self._to_warm: System | None = None
         self._closed = False
+        self._loaded = QTimer(self)
+        self._loaded.setSingleShot(True)
+        self._loaded.timeout.connect(set_aside)
 
     def make_with(self, make: Callable[[Bridge], Made]) -> None:
         """Have them made by another function, before they are started."""
@@ -54,6 +65,8 @@ class Workers(QObject):
 
     def start(self) -> None:
         """Make them, off the window's thread."""
+        hold_collection()
+        self._loaded.start(LOADED_MS)
         self._bridge.call("workers", self._make_or_close, self._take, self._fail)
 
     def _make_or_close(self) -> object:
@@ -86,6 +99,8 @@ class Workers(QObject):
     def close(self) -> None:
         """End the threads and the process. The bridge has been closed before, so nothing is made any more."""
         self._closed = True
+        self._loaded.stop()
+        collect_as_ever()
         made, self._made = self._made, None
         if made is not None:
             _close(made)

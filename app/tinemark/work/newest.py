@@ -8,6 +8,7 @@ from collections.abc import Callable
 from typing import Generic, Protocol, TypeVar
 
 from tinemark.work.jobs import new_id
+from tinemark.work.priority import step_back
 
 Request = TypeVar("Request")
 
@@ -85,6 +86,7 @@ class NewestWins(Generic[Request, StopKind]):
         self._thread.join()
 
     def _work(self) -> None:
+        step_back()
         while True:
             with self._change:
                 self._busy = False

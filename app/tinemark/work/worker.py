@@ -26,6 +26,7 @@ from tinemark.onsets.results import LadderLevel, RefineRequest, Step
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.system import System
 from tinemark.work.jobs import OnsetRequest, OnsetResult
+from tinemark.work.priority import step_back
 
 STEP_INTERVAL = 0.04
 """Seconds between two steps that are passed on; an engine may yield many more than anyone can read."""
@@ -56,6 +57,7 @@ def serve(requests: Connection, events: Connection, engine: Engine = engine_step
     """Answer requests until the other side is gone."""
     # Ctrl-C in a terminal reaches every process of the group; only the parent decides here.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+    step_back()
     # The parent may die without a word; then its end of the pipe is closed.
     with contextlib.suppress(EOFError, BrokenPipeError, ConnectionResetError):
         _serve(requests, events, engine)
