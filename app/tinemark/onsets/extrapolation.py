@@ -125,6 +125,15 @@ def limit_of_class(run: Sequence[LadderPoint], known: CascadeClass) -> Estimate 
         return replace(chosen, truncation=chosen.truncation + off).result()
 
 
+def most_settled(table: _Table) -> Estimate | None:
+    """Where the sequences of a table tend, judged as in this module; None where none has a history.
+
+    Runs in the caller's decimal context, for terms whose own errors do not count.
+    """
+    chosen = _choose((), (), lambda _: table, ONE)
+    return None if chosen is None else chosen.result()
+
+
 @dataclass(frozen=True)
 class _Choice:
     name: str

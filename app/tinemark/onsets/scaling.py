@@ -90,6 +90,9 @@ class Scaling:
         The next three onsets (one, where only three levels are known), nearest first.
     used_levels
         Levels that limit, delta and predictions rest on.
+    alpha, alpha_reason
+        How the cycles shrink, where it was worked out (`tinemark.onsets.alpha`: the onsets alone do not
+        say); None, and then why.
     """
 
     levels: tuple[LevelScaling, ...]
@@ -101,6 +104,8 @@ class Scaling:
     class_limit: Estimate | None
     predictions: tuple[Prediction, ...]
     used_levels: tuple[int, ...]
+    alpha: Estimate | None = None
+    alpha_reason: str = "it was not asked for"
 
 
 def scaling(points: Sequence[LadderPoint]) -> Scaling:
