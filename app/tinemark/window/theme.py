@@ -13,7 +13,7 @@ from typing import cast
 
 from PySide6.QtCore import Qt, QTimer
 from PySide6.QtGui import QColor, QFont, QFontDatabase, QGuiApplication, QPalette
-from PySide6.QtWidgets import QApplication, QStyleFactory, QWidget
+from PySide6.QtWidgets import QApplication, QStyle, QStyleFactory, QWidget
 from shiboken6 import isValid
 
 from tinemark.window.style_sheet import style_sheet
@@ -149,10 +149,18 @@ def apply_theme(app: QApplication, theme: Theme) -> None:
     style = app.style()
     for widget in app.allWidgets():
         if widget.isVisible():
-            style.polish(widget)
+            _polish(style, widget)
         else:
             hidden.append(widget)
     _polish_soon(app, hidden)
+
+
+def _polish(style: QStyle, widget: QWidget) -> None:
+    font = widget.font()
+    style.polish(widget)
+    # Polishing puts back the font that the widget had when it was first polished.
+    if widget.font() != font:
+        widget.setFont(font)
 
 
 def _polish_soon(app: QApplication, waiting: list[QWidget]) -> None:
@@ -160,7 +168,7 @@ def _polish_soon(app: QApplication, waiting: list[QWidget]) -> None:
         style = app.style()
         for widget in waiting[:POLISHED_AT_ONCE]:
             if isValid(widget):
-                style.polish(widget)
+                _polish(style, widget)
         _polish_soon(app, waiting[POLISHED_AT_ONCE:])
 
     if waiting:
