@@ -96,8 +96,7 @@ def _dispatch(words: list[str]) -> int:
         parser, run = COMMANDS[words[0]]
         # A number may be negative: with a space before it, it is not taken for an option.
         values = [f" {word}" if _NEGATIVE.match(word) else word for word in words[1:]]
-        run(parser().parse_args(values))
-        return DONE
+        return run(parser().parse_args(values)) or DONE
     if words and words[0].startswith("-") and words[0] != "--":
         _top_parser().parse_args(words)
     return _open(words[1:] if words[:1] == ["--"] else words)
@@ -177,7 +176,7 @@ def first_line(function: Callable[..., object]) -> str:
 
 def _parser(name: str, description: str) -> argparse.ArgumentParser:
     parser = _Parser(prog=f"tinemark {name}", description=description, allow_abbrev=False)
-    if name != "inspect":
+    if name not in ("inspect", "verify"):
         parser.add_argument(
             "system", metavar="SYSTEM", help="name of a built-in system, or path of a TOML file"
         )
@@ -228,6 +227,16 @@ def _picture_parser() -> argparse.ArgumentParser:
 
 def _inspect_parser() -> argparse.ArgumentParser:
     parser = _parser("inspect", "Say what a file of Tinemark's is, or what is wrong with it and where.")
+    parser.add_argument("file", metavar="FILE")
+    return parser
+
+
+def _verify_parser() -> argparse.ArgumentParser:
+    parser = _parser(
+        "verify",
+        "Check every proof of a session or an onsets file again, with a second implementation that shares no "
+        "code with the first. Exit code 0 when all are confirmed, 1 when one is not.",
+    )
     parser.add_argument("file", metavar="FILE")
     return parser
 
@@ -298,6 +307,13 @@ def _inspect(given: argparse.Namespace) -> None:
     sessions.inspect(Path(given.file))
 
 
+def _verify(given: argparse.Namespace) -> int:
+    """Check the proofs of a file again."""
+    from tinemark.commands import proofs
+
+    return DONE if proofs.verify(Path(given.file)) else NO_ANSWER
+
+
 def _number(text: str, option: str) -> Exact:
     return exact(text, where=option)
 
@@ -330,9 +346,12 @@ def _size(text: str) -> tuple[int, int]:
     return width, height
 
 
-COMMANDS: dict[str, tuple[Callable[[], argparse.ArgumentParser], Callable[[argparse.Namespace], None]]] = {
+COMMANDS: dict[
+    str, tuple[Callable[[], argparse.ArgumentParser], Callable[[argparse.Namespace], int | None]]
+] = {
     "ladder": (_ladder_parser, _ladder),
     "refine": (_refine_parser, _refine),
     "picture": (_picture_parser, _picture),
     "inspect": (_inspect_parser, _inspect),
+    "verify": (_verify_parser, _verify),
 }

@@ -34,6 +34,7 @@ KEYS = [
     "ratio_uncertainty",
     "sensitivities",
     "margin",
+    "certificate",
 ]
 
 
@@ -47,7 +48,17 @@ def test_ladder_as_json(tinemark) -> None:
     ended = tinemark("ladder", "logistic", "--levels", "3", "--digits", "25", "--json", "-")
     assert ended.code == 0
     read = json.loads(ended.out)
-    assert list(read) == ["format", "version", "system", "parameter", "onsets", "limit", "delta"]
+    assert list(read) == [
+        "format",
+        "version",
+        "system",
+        "parameter",
+        "onsets",
+        "limit",
+        "delta",
+        "alpha",
+        "expected",
+    ]
     assert (read["format"], read["version"]) == ("tinemark-onsets", 1)
     assert (read["system"], read["parameter"]) == ("logistic", "r")
     for number, (entry, true) in enumerate(zip(read["onsets"], LOGISTIC, strict=True), 1):
@@ -69,6 +80,7 @@ def test_ladder_as_json(tinemark) -> None:
     assert list(read["limit"]) == ["value", "uncertainty"]
     assert list(read["delta"]) == ["value", "uncertainty", "class", "consistent"]
     assert read["delta"]["class"] == "undecided"
+    assert read["alpha"] == {"value": None, "uncertainty": None}
     # Progress went elsewhere.
     assert "level 3" in ended.err
 
@@ -89,10 +101,20 @@ def test_ladder_as_a_table_and_a_file(tinemark, tmp_path) -> None:
     assert len(read["onsets"]) == 6
     assert read["delta"]["class"] == "quadratic maximum"
     assert read["delta"]["consistent"] is True
-    # Limit and delta of the quadratic class: check_values.md, sections 1 and 4 (R).
-    for key, true in (("limit", "3.569945671870944901842"), ("delta", "4.669201609102990671853")):
+    # Limit, delta and alpha of the quadratic class: check_values.md, sections 1 and 4 (R).
+    known = (
+        ("limit", "3.569945671870944901842"),
+        ("delta", "4.669201609102990671853"),
+        ("alpha", "2.502907875095892822284"),
+    )
+    for key, true in known:
         reach = abs(Decimal(read[key]["value"]) - Decimal(true))
         assert reach <= Decimal(read[key]["uncertainty"])
+    # Levels 7 and 8 of the published ladder lie where they are expected.
+    assert [item["level"] for item in read["expected"]] == [7, 8, 9]
+    for item, true in zip(read["expected"], ("3.56989125937812", "3.56993401837397"), strict=False):
+        assert abs(Decimal(item["value"]) - Decimal(true)) <= Decimal(item["uncertainty"])
+    assert "level 9 expected" in ended.out
     assert [path.name for path in tmp_path.iterdir()] == ["out.json"]
 
 

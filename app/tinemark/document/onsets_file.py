@@ -19,7 +19,7 @@ from tinemark.document.margin import OperatingPoint, margin_sentence, margin_to
 from tinemark.document.rounding import plain
 from tinemark.document.tolerance import budget_of
 from tinemark.onsets.ladder_points import Estimate
-from tinemark.onsets.results import Kind, Onset, Status
+from tinemark.onsets.results import Certificate, Kind, Onset, Status
 from tinemark.onsets.scaling import UNDECIDED, Scaling
 from tinemark.systems.errors import NumberError, TinemarkError
 from tinemark.systems.exact import exact, fraction_text
@@ -77,6 +77,28 @@ class MarginEntry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     sentence: str
 
 
+class CertificateEntry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """How to check a proof again; see `onsets.results.Certificate`."""
+
+    system_text: str
+    kind: str
+    period: int
+    parameter: str
+    criticality: str
+    precision: int
+    parameter_box: tuple[str, str]
+    state_boxes: list[tuple[str, str, str]]
+    digest: str
+
+
+class Expected(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """An onset of the ladder that is not known yet, with its expanded uncertainty."""
+
+    level: int
+    value: str
+    uncertainty: str
+
+
 class Entry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     """One onset."""
 
@@ -96,6 +118,7 @@ class Entry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     ratio_uncertainty: str | None
     sensitivities: list[Slope] = []
     margin: MarginEntry | None = None
+    certificate: CertificateEntry | None = None
 
 
 class OnsetsFile(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
@@ -108,6 +131,8 @@ class OnsetsFile(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     onsets: list[Entry]
     limit: Number
     delta: Delta
+    alpha: Number = Number(None, None)
+    expected: list[Expected] = []
 
 
 def onsets_file(
@@ -153,6 +178,7 @@ def onsets_file(
                 ratio_uncertainty=ratio.expanded_text if ratio else None,
                 sensitivities=_slopes(onset, known),
                 margin=_margin(onset, known),
+                certificate=_certificate(onset.certificate),
             )
         )
     limit = scaled.limit if scaled else None
@@ -169,6 +195,27 @@ def onsets_file(
             class_=scaled.verdict.name if scaled else UNDECIDED,
             consistent=scaled.verdict.consistent if scaled else None,
         ),
+        alpha=Number(*_texts(scaled.alpha if scaled else None)),
+        expected=[
+            Expected(item.level, item.onset.value, item.onset.expanded_text)
+            for item in (scaled.predictions if scaled else ())
+        ],
+    )
+
+
+def _certificate(held: Certificate | None) -> CertificateEntry | None:
+    if held is None:
+        return None
+    return CertificateEntry(
+        system_text=held.system_text,
+        kind=held.kind,
+        period=held.period,
+        parameter=held.parameter,
+        criticality=held.criticality,
+        precision=held.precision,
+        parameter_box=held.parameter_box,
+        state_boxes=list(held.state_boxes),
+        digest=held.digest,
     )
 
 

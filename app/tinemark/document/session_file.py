@@ -21,6 +21,7 @@ import msgspec
 
 from tinemark.document.atomic_file import write_whole
 from tinemark.document.migrations import MIGRATIONS, Migration
+from tinemark.document.proofs import with_doubts
 from tinemark.document.session import Session, read_system
 from tinemark.document.session_schema import FORMAT, VERSION, Misfit, PlainSession, from_plain, to_plain
 from tinemark.systems.errors import SessionFileError, TinemarkError
@@ -104,7 +105,7 @@ def session_bytes(session: Session) -> bytes:
 
 
 def open_session(path: str | Path) -> Session:
-    """Read a session file.
+    """Read a session file; rows whose certificates do not fit them are shown as estimated (`with_doubts`).
 
     Raises
     ------
@@ -122,11 +123,11 @@ def open_session(path: str | Path) -> Session:
         raise SessionFileError(
             f"cannot be read ({reason.lower()})", where=str(path), what_to_do="check the path"
         ) from error
-    return read_session(data, file=str(path))
+    return with_doubts(read_session(data, file=str(path)))
 
 
 def read_session(data: bytes, *, file: str = "") -> Session:
-    """Read a session from the bytes of its file; see `open_session`."""
+    """The session in the bytes of a file, exactly as it stands there; see `open_session`."""
     plain = _checked(_json_of(data, file), file)
     try:
         session = from_plain(plain)

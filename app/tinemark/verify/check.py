@@ -51,7 +51,23 @@ def check(claim: Claim) -> Verdict:
     return CONFIRMED
 
 
-def _check(claim: Claim) -> None:
+def mismatch(claim: Claim) -> Verdict | None:
+    """Whether a certificate does not even fit its row; looks at words, numbers and the digest only.
+
+    None where it fits. Nothing is proved by that, but nothing was changed by accident either.
+    """
+    try:
+        paper, _, _ = _compared(claim)
+        _same_digest(claim, paper)
+    except Refused as refused:
+        return Verdict(Outcome.REFUSED, refused.part, refused.reason)
+    except NotCheckable as error:
+        return Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
+    return None
+
+
+def _compared(claim: Claim) -> tuple[Paper, Numbers, Plain]:
+    """The certificate, its numbers and its system, all of which fit the row."""
     paper = _paper(claim)
     _same_words(claim, paper)
     numbers = _numbers(claim, paper)
@@ -59,6 +75,11 @@ def _check(claim: Claim) -> None:
     _same_system(claim, plain)
     if tuple(name for name, _, _ in paper.state_boxes) != plain.states:
         raise Refused(Part.BOX, "the box has other states than the system")
+    return paper, numbers, plain
+
+
+def _check(claim: Claim) -> None:
+    paper, numbers, plain = _compared(claim)
     if paper.kind not in KINDS:
         raise NotCheckable(
             f"proofs of the kind {paper.kind[:40]} are not checked by the second implementation"
@@ -81,10 +102,7 @@ def _check(claim: Claim) -> None:
     except Undecided as error:
         start = numbers.states[0][0] if printed is None else rational(printed)
         blame.find(one, paper, numbers, bits, start, error.reason)
-    if paper.digest != digest_of(claim, paper):
-        raise Refused(
-            Part.DIGEST, "the proof holds, but the certificate is not the one that was made with it"
-        )
+    _same_digest(claim, paper)
 
 
 def _paper(claim: Claim) -> Paper:
@@ -147,6 +165,11 @@ def _same_system(claim: Claim, plain: Plain) -> None:
         for name, text in claim.values:
             if name not in known or known[name] != rational(text):
                 raise Refused(Part.SYSTEM, f'the certificate has another value of "{name[:40]}" than the row')
+
+
+def _same_digest(claim: Claim, paper: Paper) -> None:
+    if paper.digest != digest_of(claim, paper):
+        raise Refused(Part.DIGEST, "the certificate is not the one that was made with these numbers")
 
 
 def _bits(numbers: Numbers, period: int) -> int:

@@ -6,6 +6,7 @@ import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 from typing import Any
 
 from tinemark.verify.claims import NotCheckable, Part, Refused
@@ -26,6 +27,7 @@ class Plain:
     formulas: tuple[str, ...]
 
 
+@lru_cache(maxsize=64)
 def read(text: str) -> Plain:
     """Read a system's TOML text; formulas stay texts.
 
