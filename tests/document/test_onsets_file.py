@@ -59,7 +59,7 @@ def test_any_spoiled_key_is_refused_with_its_place(key: str, value: object) -> N
     except OnsetsFileError as error:
         assert error.where.startswith("f.json")
     else:
-        assert key in ("system", "parameter", "onsets")
+        assert key in ("system", "parameter", "onsets", "expected")
 
 
 @pytest.mark.parametrize("number", ["nan", "1e99999", "", "3,5", "0x10"])

@@ -119,6 +119,7 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
         There is no first level.
     """
     from tinemark.onsets import engine
+    from tinemark.onsets.alpha import alpha_of_ladder
     from tinemark.onsets.results import Step
     from tinemark.onsets.scaling import points_of, scaling
 
@@ -145,7 +146,16 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
     finally:
         progress.clear()
     found: list[Found] = [(item.level, item.onset) for item in levels]
-    return found, scaling(points_of(levels)) if levels else None, message
+    if not levels:
+        return found, None, message
+    try:
+        alpha = run_steps(
+            alpha_of_ladder(request.system, request.parameter, levels), lambda step: progress.step(step.text)
+        )
+    finally:
+        progress.clear()
+    scaled = replace(scaling(points_of(levels)), alpha=alpha.estimate, alpha_reason=alpha.reason)
+    return found, scaled, message
 
 
 def refine(options: RefineOptions) -> None:

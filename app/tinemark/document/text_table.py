@@ -73,7 +73,7 @@ def onsets_table(found: Sequence[tuple[int | None, Onset]], scaled: Scaling | No
 
 
 def scaling_lines(scaled: Scaling, parameter: str) -> list[str]:
-    """Limit, delta, class and next onset, a line each; what is not known is said with its reason."""
+    """Limit, delta, alpha, class and the next onsets, a line each; what is not known says why."""
     lines = [
         f"limit   {parameter} = {_full_text(scaled.limit)}"
         if scaled.limit
@@ -81,13 +81,15 @@ def scaling_lines(scaled: Scaling, parameter: str) -> list[str]:
         f"delta   {_full_text(scaled.delta)}"
         if scaled.delta
         else f"delta   not known: {scaled.delta_reason}",
-        f"class   {scaled.verdict.sentence}",
     ]
-    if scaled.predictions:
-        following = scaled.predictions[0]
-        lines.append(
-            f"next    level {following.level} expected at {parameter} = {_full_text(following.onset)}"
-        )
+    if scaled.alpha:
+        lines.append(f"alpha   {_full_text(scaled.alpha)}")
+    elif scaled.alpha_reason:
+        lines.append(f"alpha   not known: {scaled.alpha_reason}")
+    lines.append(f"class   {scaled.verdict.sentence}")
+    for place, following in enumerate(scaled.predictions):
+        head = "        " if place else "next    "
+        lines.append(f"{head}level {following.level} expected at {parameter} = {_full_text(following.onset)}")
     return lines
 
 

@@ -92,7 +92,7 @@ class Scaling:
         Levels that limit, delta and predictions rest on.
     alpha, alpha_reason
         How the cycles shrink, where it was worked out (`tinemark.onsets.alpha`: the onsets alone do not
-        say); None, and then why.
+        say); None, and then why; both empty where it was not asked for.
     """
 
     levels: tuple[LevelScaling, ...]
@@ -105,7 +105,7 @@ class Scaling:
     predictions: tuple[Prediction, ...]
     used_levels: tuple[int, ...]
     alpha: Estimate | None = None
-    alpha_reason: str = "it was not asked for"
+    alpha_reason: str = ""
 
 
 def scaling(points: Sequence[LadderPoint]) -> Scaling:
