@@ -13,6 +13,8 @@ from tinemark.document.ledger import Ledger
 from tinemark.document.rounding import (
     ELLIPSIS,
     SHORT_DIGITS,
+    decimal_text,
+    exponent,
     group_digits,
     held_digits,
     minus_sign,
@@ -24,6 +26,8 @@ from tinemark.onsets.results import Criticality, Onset, Status
 
 NOTHING = "\u2013"
 MOST_DIGITS = 15
+ROUNDED_DIGITS = 8
+LEAST_SIZE = 6
 
 STATUS_MEANING = {
     Status.PROVED: "The enclosure holds with mathematical certainty for the formulas as typed.",
@@ -62,8 +66,8 @@ HEADER_TIPS = {
     Column.PERIOD: "Least period before and after the onset",
     Column.VALUE: "Parameter value; brackets hold the standard uncertainty of the last digits, "
     "… stands for more known digits",
-    Column.GAP: "Next onset minus this one",
-    Column.RATIO: "This gap divided by the next one",
+    Column.GAP: "Next onset minus this one; rounded to 8 digits where more are known",
+    Column.RATIO: "This gap divided by the next one; rounded to 8 digits where more are known",
     Column.STATUS: "How far the value can be relied on",
     Column.NOTE: "Your own words: press F2 to write",
 }
@@ -176,9 +180,15 @@ def value_text(onset: Onset) -> str:
 
 @lru_cache(maxsize=8192)
 def derived_text(estimate: Estimate | None) -> str:
-    """A gap or ratio as the table shows it."""
+    """A gap or ratio as the table shows it: rounded to `ROUNDED_DIGITS` where more are known, else with its
+    uncertainty.
+    """
     if estimate is None:
         return NOTHING
+    size = exponent(estimate.value) if estimate.value else 0
+    places = ROUNDED_DIGITS - 1 - size
+    if -LEAST_SIZE <= size < ROUNDED_DIGITS and 100 * estimate.uncertainty * 10**places < 1:
+        return minus_sign(group_digits(decimal_text(estimate.value, places)))
     text = estimate_text(estimate)
     if sum(letter.isdigit() for letter in text.partition("(")[0]) <= MOST_DIGITS:
         return text

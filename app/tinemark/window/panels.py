@@ -79,6 +79,7 @@ class Panels(QObject):
         self.across.setStretchFactor(1, 1)
         self._open = {"system": False, "picture": False, "probe": False, "ledger": True}
         self._was_roomy = False
+        self._gave_way = False
         self._apply()
 
     def arrange(self, width: int, height: int) -> None:
@@ -109,7 +110,7 @@ class Panels(QObject):
         """Remember the arrangement."""
         for name, state in self._open.items():
             if name != "probe":
-                self._memory.keep_flag(name, state)
+                self._memory.keep_flag(name, state or (name == "ledger" and self._gave_way))
         for name, splitter in self._splitters():
             self._memory.keep_bytes(f"{name}-{'roomy' if width >= ROOMY else 'narrow'}", splitter.saveState())
 
@@ -134,11 +135,34 @@ class Panels(QObject):
                 if other != name and self._open[other]:
                     self._open[other] = False
                     self.opened.emit(other, False)
+        self._give_way(name, state)
         was_open = self._drawer.isVisibleTo(self.across)
         self._apply()
         if self._drawer_open() and not was_open:
             self._make_room()
         self.opened.emit(name, state)
+
+    def _give_way(self, name: str, state: bool) -> None:
+        """In a narrow window drawer and ledger stand in turn, so that the diagram keeps its share: the ledger
+        folds for the drawer and comes back after it; a ledger that is opened folds the drawer.
+        """
+        narrow = 0 < self.across.width() < ROOMY - self.rail.width()
+        if name in self._in_drawer:
+            if state and narrow and self._open["ledger"]:
+                self._gave_way = True
+                self._open["ledger"] = False
+                self.opened.emit("ledger", False)
+            elif self._gave_way and not self._drawer_open():
+                self._gave_way = False
+                self._open["ledger"] = True
+                self.opened.emit("ledger", True)
+        elif name == "ledger":
+            self._gave_way = False
+            if state and narrow:
+                for other in self._in_drawer:
+                    if self._open[other]:
+                        self._open[other] = False
+                        self.opened.emit(other, False)
 
     def _make_room(self) -> None:
         """Give the drawer its width, taken from the diagram."""
