@@ -27,12 +27,16 @@ from tinemark.onsets.one_map import OneMap, depends_on
 from tinemark.onsets.results import Step
 from tinemark.systems.balls import ball_tools
 from tinemark.systems.emit import emit
-from tinemark.systems.errors import SwitchingTouched
+from tinemark.systems.errors import SwitchingTouched, Unbounded
 from tinemark.systems.expression import ZERO, Call, Expr, walk
 
 _RATIONAL = re.compile(r"fmpq\((-?\d+), (\d+)\)")
 SLICE_S = 0.02
 """Seconds of looping between two chances to cancel."""
+
+
+LONGEST_EXPONENT = 100_000
+"""Powers of two beyond this stand for no state and no parameter."""
 
 
 @contextmanager
@@ -52,8 +56,16 @@ def ball_of(value: Fraction) -> arb:
 
 
 def fraction_of(exact: arb) -> Fraction:
-    """An exact ball as the rational it is."""
+    """An exact ball as the rational it is.
+
+    Raises
+    ------
+    Unbounded
+        The number is so large or so small that it would fill the memory.
+    """
     mantissa, exponent = exact.man_exp()
+    if abs(exponent) > LONGEST_EXPONENT:
+        raise Unbounded("a number is too large or too small to be written")
     whole = int(mantissa)
     power = int(exponent)
     return Fraction(whole * 2**power) if power >= 0 else Fraction(whole, 2**-power)

@@ -14,6 +14,7 @@ from fractions import Fraction
 from itertools import pairwise
 from typing import Any
 
+import flint
 from flint import arb
 
 from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, in_chunks, precision
@@ -41,7 +42,7 @@ from tinemark.onsets.proofs import (
     prove,
 )
 from tinemark.onsets.results import Criticality, Kind, Onset, Status, Step
-from tinemark.systems.errors import SwitchingTouched
+from tinemark.systems.errors import SwitchingTouched, Unbounded
 
 ATTEMPTS = 4
 MOST_STEPS = 30
@@ -104,7 +105,8 @@ def settle_onset(
     bits = first_bits(rough, max(places, digits))
     reason = ""
     last_step: float | None = None
-    for _ in range(ATTEMPTS):
+    failures = 0
+    while failures < ATTEMPTS:
         try:
             polished = yield from _polish(loops, rough, float(wanted), bits, reach)
         except SwitchingTouched as error:
@@ -113,7 +115,18 @@ def settle_onset(
         except NotProved as error:
             raise Lost(error.reason) from error
         last_step = polished.last_step
-        rough = Rough(rough.kind, rough.period, fraction_of(polished.x), fraction_of(polished.r))
+        x = yield from _steps_on(loops, polished, show_after, bits)
+        try:
+            rough = Rough(rough.kind, rough.period, fraction_of(x), fraction_of(polished.r))
+        except Unbounded as error:
+            raise Lost(error.message) from error
+        finer = decimal_places(max(abs(rough.r), LEAST_SIZE), digits + GUARD_DIGITS)
+        if show_after or finer > places:
+            # The point to show is proved itself; a smaller value than thought needs more decimals.
+            show_after, places = 0, max(places, finer)
+            wanted = Fraction(1, 10) ** (places + 1)
+            bits = max(bits, first_bits(rough, max(places, digits)))
+            continue
         try:
             correction = polished.correction
             box = box_around(polished.x, polished.r, correction, polished.inverse, bits)
@@ -125,20 +138,20 @@ def settle_onset(
             if error.refuted:
                 raise Lost(error.reason) from error
             reason = error.reason
-            bits = bits * 3 // 2
+            failures, bits = failures + 1, bits * 3 // 2
             continue
         if proof.parameter[1] - proof.parameter[0] > wanted:
             reason = "the enclosure stayed wider than the digits asked for"
-            bits = bits * 3 // 2
+            failures, bits = failures + 1, bits * 3 // 2
             continue
-        shown = yield from shown_state(loops, proof, show_after, bits)
-        onset = _with_certificate(one, _onset_of(one, rough, proof, digits, places, shown), box, proof, bits)
+        onset = _with_certificate(one, _onset_of(one, rough, proof, digits, places), box, proof, bits)
         return Settled(onset, rough.x, rough.r)
     else:
         # A regular onset is proved with bits enough. What is left are pitchforks, transcritical points and
         # tangencies of higher order, where the equations are singular: none of them is an onset of this kind.
         raise Lost(f"no isolated {rough.kind.value} there: {reason}")
-    return Settled(_touching(one, rough, digits, wanted, last_step, reason), rough.x, rough.r)
+    onset = yield from _touching(one, rough, digits, wanted, bits, last_step, reason)
+    return Settled(onset, rough.x, rough.r)
 
 
 def first_bits(rough: Rough, places: int) -> int:
@@ -182,7 +195,7 @@ def _polish(
                 break
             previous = step = size
             with precision(bits):
-                x, r = (x + correction.x).mid(), (r + correction.r).mid()
+                x, r = _moved(x, correction.x), _moved(r, correction.r)
         if size <= wanted / 8:
             return _Polished(x, r, inverse, correction, size)
         if math.isnan(size):
@@ -215,7 +228,25 @@ def newton_step(
         shift_x, shift_r = inverse.times(end - x, u.mid() - TARGETS[kind])
         if not (shift_x.is_finite() and shift_r.is_finite()):
             raise NotProved("the orbit escaped")
-        return (x - shift_x).mid(), (r - shift_r).mid(), inverse, abs(float(shift_r))
+        return _moved(x, -shift_x), _moved(r, -shift_r), inverse, abs(float(shift_r))
+
+
+def _moved(value: Any, shift: Any) -> Any:
+    """A number a step on; zero where the step cancels it to less than the precision in force tells.
+
+    Newton's method squares the error in every step: towards zero it would never come to rest, and its
+    numbers would soon have billions of decimals.
+    """
+    total = (value + shift).mid()
+    return arb(0) if abs(total) < abs(value) * arb(2) ** -flint.ctx.prec else total
+
+
+def _steps_on(loops: BallLoops, polished: _Polished, steps: int, bits: int) -> Generator[Step, None, Any]:
+    """The point of a polished cycle some steps on, where it can be followed."""
+    x = yield from in_chunks(
+        lambda now, n: loops.orbit(now, polished.r, n), polished.x, steps, bits, "following the cycle"
+    )
+    return x if x.is_finite() else polished.x
 
 
 def shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Generator[Step, None, Fraction]:
@@ -227,7 +258,7 @@ def shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Genera
     return fraction_of(x)
 
 
-def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int, middle: Fraction) -> Onset:
+def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int) -> Onset:
     texts = enclosure_texts(*proof.parameter, places)
     flip = rough.kind is Kind.FLIP
     return Onset(
@@ -242,7 +273,7 @@ def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int,
         digits=digits,
         status=Status.ESTIMATED if proof.degenerate else Status.PROVED,
         reason=proof.degenerate,
-        states=((one.state, state_text(middle, digits)),),
+        states=((one.state, enclosed_state_text(one, proof.state, digits)),),
         evidence=proof.evidence,
     )
 
@@ -263,6 +294,20 @@ def state_text(value: Fraction, digits: int) -> str:
     """A state value to a number of significant digits."""
     places = decimal_places(value, digits)
     return fixed_text(rounded(value, places), places)
+
+
+def enclosed_state_text(one: OneMap, ends: tuple[Fraction, Fraction], digits: int) -> str:
+    """Text of a state value that is known between two ends: no more digits than hold."""
+    middle, half = (ends[0] + ends[1]) / 2, (ends[1] - ends[0]) / 2
+    if ends[0] <= 0 <= ends[1]:
+        # Zero, as far as it can be told, has no significant digits: decimals of the state's own size then.
+        size = abs(one.start) if one.extent is None else one.extent[1] - one.extent[0]
+        places = decimal_places(size or Fraction(1), digits)
+    else:
+        places = decimal_places(middle, digits)
+    if half > 0:
+        places = min(places, -leading_power(half) - 2)
+    return fixed_text(rounded(middle, places), places)
 
 
 def _estimate_of(one: OneMap, rough: Rough, digits: int, half: Fraction, reason: str) -> Onset:
@@ -288,8 +333,14 @@ def _estimate_of(one: OneMap, rough: Rough, digits: int, half: Fraction, reason:
 
 
 def _touching(
-    one: OneMap, rough: Rough, digits: int, wanted: Fraction, polished: float | None, reason: str
-) -> Onset:
+    one: OneMap,
+    rough: Rough,
+    digits: int,
+    wanted: Fraction,
+    bits: int,
+    polished: float | None,
+    reason: str,
+) -> Generator[Step, None, Onset]:
     """An onset whose cycle touches a switching surface, as far as doubles bear it out.
 
     Raises
@@ -314,4 +365,19 @@ def _touching(
         # Doubles alone: a formula that switches on the cycle has no derivative to polish with.
         rough = Rough(rough.kind, rough.period, Fraction(x), Fraction(r))
         half = max(10 * Fraction(abs(step.shift_r)), max(abs(rough.r), Fraction(1, 10**6)) / 10**8)
+        half = max(half, 10 * (yield from _rounding_of_doubles(ball_loops(one), rough, bits)))
     return _estimate_of(one, rough, digits, half, reason)
+
+
+def _rounding_of_doubles(loops: BallLoops, rough: Rough, bits: int) -> Generator[Step, None, Fraction]:
+    """How far doubles are off by rounding alone: the exact formula's Newton step from where they stopped.
+
+    Zero where the formula switches exactly there.
+    """
+    with precision(bits):
+        x, r = ball_of(rough.x).mid(), ball_of(rough.r).mid()
+    try:
+        _, moved, _, _ = yield from newton_step(loops, rough.kind, rough.period, x, r, bits, "estimating")
+    except (SwitchingTouched, NotProved):
+        return Fraction(0)
+    return abs(fraction_of(moved) - rough.r)

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Generator
 from dataclasses import dataclass
+from decimal import ROUND_DOWN, Context, Decimal
 from fractions import Fraction
 from typing import Any
 
@@ -205,8 +206,8 @@ def _least_period(period: int, first: Any, visited: list[tuple[int, Any]]) -> li
                 f"the cycle closes after {steps} steps already: its least period is not {period}",
                 refuted=True,
             )
-        gaps.append(float(gap))
-    finding = f"points at least {min(gaps):.2g} apart" if gaps else "a fixed point"
+        gaps.append(f"after {steps} steps at least {rounded_down(gap)} away")
+    finding = "the point is " + ", ".join(gaps) if gaps else "a fixed point"
     return [(f"least period exactly {period}", finding)]
 
 
@@ -261,7 +262,14 @@ def number_words(ball: Any) -> str:
 
 def box_words(box: Box) -> str:
     """How the uniqueness of an onset was shown."""
-    return f"interval Newton test on a box of half-width {float(box.half_r):.2g} in the parameter"
+    return f"interval Newton test on a box of half-width {rounded_down(box.half_r)} in the parameter"
+
+
+def rounded_down(size: Any) -> str:
+    """Two significant digits of a positive exact ball, never more than it is."""
+    value = fraction_of(size)
+    context = Context(prec=2, rounding=ROUND_DOWN)
+    return f"{context.divide(Decimal(value.numerator), Decimal(value.denominator)):g}"
 
 
 def prime_factors(number: int) -> list[int]:
