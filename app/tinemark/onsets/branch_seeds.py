@@ -108,7 +108,7 @@ def settled_many(
     starts = [own, *(_scattered(many, random) for _ in range(SCATTERED_STARTS))]
     states = np.repeat(np.array(starts).T, len(rs), axis=1)
     lanes = np.tile(np.array(rs), len(starts))
-    slices = 12
+    slices = 40
     for place in range(slices):
         yield Step("settling orbits across the view", place / slices)
         history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // slices, 1)

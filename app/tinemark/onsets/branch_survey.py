@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Generator
+from collections.abc import Callable, Generator
 from dataclasses import dataclass, field
 from itertools import pairwise
 
@@ -17,9 +17,12 @@ from tinemark.onsets.branch_seeds import (
     short_one,
 )
 from tinemark.onsets.continuation import (
+    BRISK,
+    DRAWN,
     Event,
     Family,
     Floats,
+    Pace,
     Passed,
     Place,
     Screen,
@@ -54,11 +57,20 @@ OUTSIDE = 0.02
 
 @dataclass
 class Branch:
-    """A branch followed both ways: its places in order, and the events at them."""
+    """A branch followed both ways.
+
+    Attributes
+    ----------
+    places, events
+        Its places in order, and what happens at them.
+    parents
+        Cycles of half the period, at the flips that its ends join.
+    """
 
     places: list[Place]
     events: list[Event]
     closed: bool = False
+    parents: list[Place] = field(default_factory=list)
 
     @property
     def period(self) -> int:
@@ -67,7 +79,9 @@ class Branch:
 
 
 @dataclass
-class _Survey:
+class Survey:
+    """Branches as they are gathered; `cut` when the bound of the work was met."""
+
     family: Family
     screen: Screen
     most_period: int
@@ -77,7 +91,7 @@ class _Survey:
 
     def is_on(self, place: Place) -> bool:
         """Whether a cycle lies on a branch that was followed already."""
-        return any(_lies_on(self.family, branch, place) for branch in self.branches)
+        return any(lies_on(self.family, branch, place) for branch in self.branches)
 
     def full(self) -> bool:
         """Whether the bound of the work is met."""
@@ -95,8 +109,20 @@ def branches_of(request: BranchRequest) -> Generator[Step, None, BranchResult]:
         The view has no extent, or is too narrow for doubles.
     """
     family, screen = _stage(request)
-    survey = _Survey(family, screen, request.max_period)
     seeds = yield from _seeds(family, screen, request.max_period)
+    survey = Survey(family, screen, request.max_period)
+    yield from follow_all(survey, seeds)
+    return _result(survey)
+
+
+def follow_all(
+    survey: Survey,
+    seeds: list[Place],
+    *,
+    pace: Pace = DRAWN,
+    stop: Callable[[Place], bool] | None = None,
+) -> Generator[Step, None, None]:
+    """Follow the branches of cycles, and those that split off at their flips, until nothing new is left."""
     waiting = deque(seeds)
     total = max(1, len(waiting))
     while waiting:
@@ -106,14 +132,14 @@ def branches_of(request: BranchRequest) -> Generator[Step, None, BranchResult]:
         if survey.full():
             break
         yield Step(f"following the branch of period {place.period}", 1 - len(waiting) / (total + 1))
-        branch = yield from followed(family, screen, place, MOST_PLACES - survey.places)
+        most = MOST_PLACES - survey.places
+        branch = yield from followed(survey.family, survey.screen, place, most, pace=pace, stop=stop)
         survey.branches.append(branch)
         survey.places += len(branch.places)
-        fresh = _split_off(family, branch, request.max_period)
+        fresh = _split_off(survey.family, branch, survey.most_period)
         total = max(total, len(waiting) + len(fresh))
         # What splits off is looked at next: it belongs to what was just drawn.
         waiting.extendleft(reversed(fresh))
-    return _result(survey)
 
 
 def _stage(request: BranchRequest) -> tuple[Family, Screen]:
@@ -163,12 +189,21 @@ def _seeds(family: Family, screen: Screen, most: int) -> Generator[Step, None, l
     return [place for _, place in found]
 
 
-def followed(family: Family, screen: Screen, start: Place, most: int) -> Generator[Step, None, Branch]:
+def followed(
+    family: Family,
+    screen: Screen,
+    start: Place,
+    most: int,
+    *,
+    pace: Pace = DRAWN,
+    stop: Callable[[Place], bool] | None = None,
+) -> Generator[Step, None, Branch]:
     """A branch followed both ways from one of its cycles."""
-    onward = yield from follow(family, start, 1, screen, most=max(20, most))
+    onward = yield from follow(family, start, 1, screen, pace=pace, most=max(20, most), stop=stop)
     if onward.ended == "closed":
         return Branch(onward.places, onward.events, closed=True)
-    backward = yield from follow(family, start, -1, screen, most=max(20, most - len(onward.places)))
+    left = max(20, most - len(onward.places))
+    backward = yield from follow(family, start, -1, screen, pace=pace, most=left, stop=stop)
     return _joined(backward, onward)
 
 
@@ -177,7 +212,8 @@ def _joined(backward: Trace, onward: Trace) -> Branch:
     turned = len(backward.places) - 1
     events = [Event(event.passed, turned - event.at) for event in reversed(backward.events)]
     events += [Event(event.passed, turned + event.at) for event in onward.events]
-    return Branch([*before, *onward.places], events)
+    parents = [trace.parent for trace in (backward, onward) if trace.parent is not None]
+    return Branch([*before, *onward.places], events, parents=parents)
 
 
 def _split_off(family: Family, branch: Branch, most_period: int) -> list[Place]:
@@ -195,7 +231,17 @@ def _split_off(family: Family, branch: Branch, most_period: int) -> list[Place]:
     return found
 
 
-def _lies_on(family: Family, branch: Branch, place: Place) -> bool:
+def stretch(family: Family, screen: Screen, start: Place) -> Generator[Step, None, Branch]:
+    """The stable stretch of a branch around one of its cycles, both ways to where it loses stability."""
+    return (yield from followed(family, screen, start, MOST_PLACES, pace=BRISK, stop=_unstable))
+
+
+def _unstable(place: Place) -> bool:
+    return not place.stable
+
+
+def lies_on(family: Family, branch: Branch, place: Place) -> bool:
+    """Whether a cycle lies on a branch."""
     if branch.period != place.period:
         return False
     for a, b in pairwise(branch.places):
@@ -226,7 +272,7 @@ def _turn(a: Floats, b: Floats, scales: Floats) -> int:
 # From branches to what is drawn
 
 
-def _result(survey: _Survey) -> BranchResult:
+def _result(survey: Survey) -> BranchResult:
     pieces: list[BranchPiece] = []
     passed: list[tuple[Kind, int, float, float]] = []
     for branch in survey.branches:
@@ -241,7 +287,7 @@ def _result(survey: _Survey) -> BranchResult:
     return BranchResult(tuple(pieces), tuple(passed), _message(survey, pieces, passed))
 
 
-def _pieces(survey: _Survey, branch: Branch) -> list[BranchPiece]:
+def _pieces(survey: Survey, branch: Branch) -> list[BranchPiece]:
     places, screen = branch.places, survey.screen
     cuts = sorted({0, len(places) - 1, *(event.at for event in branch.events)})
     stretches: list[tuple[int, int, bool]] = []
@@ -285,7 +331,7 @@ def _in_view(piece: BranchPiece) -> bool:
     return bool(inside.any())
 
 
-def _entry(survey: _Survey, branch: Branch, event: Event) -> tuple[Kind, int, float, float] | None:
+def _entry(survey: Survey, branch: Branch, event: Event) -> tuple[Kind, int, float, float] | None:
     place, screen = branch.places[event.at], survey.screen
     across = (place.r - screen.left) / screen.width
     ups = (survey.family.observed(place.points, place.r) - screen.bottom) / screen.height
@@ -323,7 +369,7 @@ def _same(a: tuple[Kind, int, float, float], b: tuple[Kind, int, float, float]) 
     return a[0] is b[0] and a[1] == b[1] and max(abs(a[2] - b[2]), abs(a[3] - b[3])) < SAME_SPOT
 
 
-def _message(survey: _Survey, pieces: list[BranchPiece], passed: list[tuple[Kind, int, float, float]]) -> str:
+def _message(survey: Survey, pieces: list[BranchPiece], passed: list[tuple[Kind, int, float, float]]) -> str:
     if not pieces:
         return "no cycle of up to " + f"{survey.most_period} points was found in this view"
     periods = sorted({piece.period for piece in pieces})

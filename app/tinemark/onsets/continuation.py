@@ -23,12 +23,12 @@ ACROSS, UP = 1280.0, 800.0
 """Pixels of the view that smoothness is judged by."""
 SMOOTH = 0.35
 """Pixels by which a polyline may miss the curve."""
-FIRST_STEP, LARGEST_STEP, SMALLEST_STEP = 2e-3, 0.04, 1e-8
+SMALLEST_STEP = 1e-8
+LEAST_COSINE = 0.8
+"""Of the branch's directions at two neighbouring places: a fold must not be leapt over."""
 LARGEST_TURN = 0.25
 """A critical multiplier may move by this much a step."""
 MOST_PLACES = 1500
-FARTHEST = 12.0
-"""A branch is left alone this many scaled lengths away from where it began."""
 MOST_UNSTABLE = 1e9
 JOINED = 1e-7
 """A doubled cycle whose opposite points are closer than this has joined the branch it split from."""
@@ -83,6 +83,30 @@ class Place:
     def turned(self) -> Place:
         """The same place, the branch looked along the other way."""
         return Place(self.points, self.r, self.multipliers, -self.moves, -self.move_r)
+
+
+@dataclass(frozen=True)
+class Pace:
+    """How a branch is followed.
+
+    Attributes
+    ----------
+    first, largest
+        Steps, in scaled length.
+    smooth
+        Whether it is to be drawn: steps then keep to the curve within a fraction of a pixel.
+    farthest
+        The branch is left alone this many scaled lengths away from where it began.
+    """
+
+    first: float
+    largest: float
+    smooth: bool
+    farthest: float = np.inf
+
+
+DRAWN = Pace(2e-3, 0.04, smooth=True, farthest=12.0)
+BRISK = Pace(0.05, 0.25, smooth=False)
 
 
 class Family(Protocol):
@@ -182,6 +206,7 @@ def follow(
     direction: int,
     screen: Screen,
     *,
+    pace: Pace = DRAWN,
     most: int = MOST_PLACES,
     stop: Callable[[Place], bool] | None = None,
 ) -> Generator[Step, None, Trace]:
@@ -191,6 +216,8 @@ def follow(
     ----------
     direction
         1 along the start's tangent, -1 against it.
+    pace
+        Lengths of steps.
     most
         Places at most.
     stop
@@ -203,16 +230,16 @@ def follow(
     """
     here = start if direction > 0 else start.turned()
     trace = Trace([here], ended="long")
-    seen = [screen.pixels(family, here)]
-    step = FIRST_STEP
+    seen = [shown := screen.pixels(family, here)]
+    step = pace.first
     text = f"following the branch of period {start.period}"
     while len(trace.places) < most:
         following = _advance(family, here, step)
-        missed = np.inf
-        if following is not None:
+        missed = 0.0
+        if following is not None and pace.smooth:
             shown = screen.pixels(family, following)
             missed = _sagitta(seen, shown)
-        if following is None or not _acceptable(here, following, missed, step):
+        if following is None or not _acceptable(family, here, following, missed, step):
             step *= 0.45
             if step < SMALLEST_STEP:
                 trace.ended = "lost"
@@ -226,11 +253,11 @@ def follow(
         here = following
         if len(trace.places) % 8 == 0:
             yield Step(text)
-        ended = _ended(family, start, trace, here, screen, step, stop)
+        ended = _ended(family, start, trace, here, screen, pace, step, stop)
         if ended:
             trace.ended = ended
             break
-        step = min(step * min(1.5, max(0.6, 0.8 * np.sqrt(SMOOTH / max(missed, 1e-9)))), LARGEST_STEP)
+        step = min(step * min(1.5, max(0.6, 0.8 * np.sqrt(SMOOTH / max(missed, 1e-9)))), pace.largest)
     return trace
 
 
@@ -240,13 +267,14 @@ def _ended(
     trace: Trace,
     here: Place,
     screen: Screen,
+    pace: Pace,
     step: float,
     stop: Callable[[Place], bool] | None,
 ) -> str:
     if not screen.holds(here.r):
         return "left"
     away = float(np.max(np.abs(here.points - start.points) / family.scales))
-    if away > FARTHEST or max(map(abs, here.multipliers)) > MOST_UNSTABLE:
+    if away > pace.farthest or max(map(abs, here.multipliers)) > MOST_UNSTABLE:
         return "lost"
     if stop is not None and stop(here):
         return "stopped"
@@ -313,9 +341,11 @@ def _sagitta(seen: list[Floats], shown: Floats) -> float:
     return float(np.max(missed[inside]))
 
 
-def _acceptable(here: Place, following: Place, missed: float, step: float) -> bool:
+def _acceptable(family: Family, here: Place, following: Place, missed: float, step: float) -> bool:
     if step < 1e-6:
         return True
+    if _cosine(family, here, following) < LEAST_COSINE:
+        return False
     if missed > 2.5 * SMOOTH and step > 1e-5:
         return False
     for before, after in ((here, following), (following, here)):
@@ -424,10 +454,24 @@ def _end_at_joint(family: Family, trace: Trace, here: Place) -> None:
         if a > b:
             r = (here.r * a - before.r * b) / (a - b)
     mean = (here.points[:half] + here.points[half:]) / 2
-    parent = family.corrected(mean, r)
+    parent = _flip_near(family, mean, here.r, r)
     if parent is None or float(np.max(np.abs(parent.points - mean) / family.scales)) > 0.05:
         return
     trace.ended, trace.parent = "joined", parent
     twice = np.concatenate((parent.points, parent.points))
     doubled = tuple(value * value for value in parent.multipliers)
-    trace.places.append(Place(twice, r, doubled, here.moves, here.move_r))
+    trace.places.append(Place(twice, parent.r, doubled, here.moves, here.move_r))
+
+
+def _flip_near(family: Family, points: Floats, r: float, guess: float) -> Place | None:
+    """The cycle whose multiplier passes -1 near two parameter values, by the secant method."""
+    here, there = family.corrected(points, r), family.corrected(points, guess)
+    for _ in range(8):
+        if here is None or there is None:
+            return there or here
+        a, b = flip_test(here.multipliers), flip_test(there.multipliers)
+        if a == b or abs(b) < 1e-13:
+            break
+        following = there.r - b * (there.r - here.r) / (b - a)
+        here, there = there, family.corrected(there.points, following)
+    return there

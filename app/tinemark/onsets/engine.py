@@ -19,6 +19,9 @@ from tinemark.onsets.results import (
     RefineRequest,
     RefineResult,
     Step,
+    SurveyFind,
+    SurveyRequest,
+    SurveyResult,
 )
 from tinemark.systems.errors import TinemarkError
 
@@ -107,6 +110,48 @@ def _with_sensitivities(
         if isinstance(item, LadderLevel):
             onset = yield from with_sensitivities(request.system, item.onset, longest=LONGEST_UNASKED)
             item = filled[item.level] = replace(item, onset=onset)
+        yield item
+
+
+def survey(request: SurveyRequest) -> Generator[Step | SurveyFind, None, SurveyResult]:
+    """Find every onset of a range, of cycles of least period up to a longest one, and prove each.
+
+    For maps of one state all superstable cycles are found in ball arithmetic, and each is followed to the
+    onsets at both ends of its stable stretch; the result's message says what its completeness rests on. For
+    maps of several states settled orbits and their branches are followed, and more may be there.
+
+    Yields
+    ------
+    Step or SurveyFind
+        Progress with its share, and each onset as it is found.
+
+    Returns
+    -------
+    SurveyResult
+        As the generator's value.
+
+    Raises
+    ------
+    NoOnsetFound
+        The range is empty, or too narrow for double precision.
+    """
+    _check(request.digits)
+    from tinemark.onsets.sensitivities import with_sensitivities
+    from tinemark.onsets.survey import survey_of
+
+    found: list[tuple[Onset, Onset]] = []
+    job = survey_of(request)
+    while True:
+        try:
+            item = next(job)
+        except StopIteration as done:
+            result: SurveyResult = done.value
+            filled = {id(bare): full for bare, full in found}
+            return replace(result, onsets=tuple(filled[id(onset)] for onset in result.onsets))
+        if isinstance(item, SurveyFind):
+            full = yield from with_sensitivities(request.system, item.onset)
+            found.append((item.onset, full))
+            item = SurveyFind(full)
         yield item
 
 
