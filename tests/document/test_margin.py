@@ -71,7 +71,7 @@ def test_the_plain_sentence() -> None:
         "with k = 2 the margin is 10.3 ± 5.3 kg/day."
     )
     assert words("120", probe=True).startswith(
-        "The onset at 105.3 lies 14.7 kg/day (12 %) below the probe at 120.0 kg/day, 5.6 standard"
+        "The onset at 105.3 lies 14.7 kg/day (12 %) below the probe at 120 kg/day, 5.6 standard"
     )
 
 

@@ -141,7 +141,7 @@ def margin_sentence(margin: Margin) -> str:
     unit = f" {margin.unit}" if margin.unit else ""
     places = _places(margin)
     onset = _number(margin.onset, places)
-    place = f"probe at {_number(margin.point.value, places)}{unit}"
+    place = f"probe at {_setting(margin.point.value, places)}{unit}"
     where = f"the {place}" if margin.point.is_probe else "the operating point"
     if margin.distance == 0:
         return f"{where[:1].upper()}{where[1:]} stands on the onset at {onset}{unit}."
@@ -191,6 +191,12 @@ def _places(margin: Margin) -> int:
 
 def _number(value: Fraction, places: int) -> str:
     return minus_sign(group_digits(decimal_text(value, places)))
+
+
+def _setting(value: Fraction, places: int) -> str:
+    """The setting as it was entered where that is shorter."""
+    fewer = next((n for n in range(places) if (value * 10**n).denominator == 1), places)
+    return _number(value, fewer)
 
 
 def _short(value: Fraction) -> str:

@@ -24,6 +24,7 @@ from tinemark.document.rounding import (
     plain,
     round_uncertainty,
 )
+from tinemark.document.row import Place
 from tinemark.document.session import Session, system_of, system_of_row
 from tinemark.document.tolerance import Budget, Contribution, budget_of
 from tinemark.onsets.results import Onset, Status
@@ -64,8 +65,11 @@ NONE = Tolerances()
 def tolerances_of(session: Session) -> Tolerances:
     """Budgets and margins of every row."""
     budgets = {}
+    systems: dict[Place, System | None] = {}
     for row in session.ledger.rows:
-        system = system_of_row(session, row.id)
+        if row.place not in systems:
+            systems[row.place] = system_of_row(session, row.id)
+        system = systems[row.place]
         if system is not None:
             budgets[row.id] = budget_of(row.onset, system)
     point, present = operating_point(session), system_of(session)
@@ -94,6 +98,11 @@ def share_text(share: Fraction | None) -> str:
     if 0 < share < Fraction(1, 200):
         return "< 1 %"
     return f"{decimal_text(100 * share, 0)} %"
+
+
+def tolerance_text(tolerance: Fraction) -> str:
+    """A tolerance as it was typed, or to six digits."""
+    return decimal_text(tolerance, max(_decimals(tolerance), 0))
 
 
 def slope_text(derivative: str, digits: int = DERIVATIVE_DIGITS) -> str:
@@ -168,18 +177,13 @@ def tolerance_rows(
             continue
         onset = onset_text(row.onset, full=row.onset.status is Status.PROVED, grouped=False)
         for line in budget.lines:
-            cells = (line.parameter, slope_text(line.derivative), _plain(line.tolerance))
+            given = "none given" if line.tolerance is None else tolerance_text(line.tolerance)
+            cells = (line.parameter, slope_text(line.derivative), given)
             lines.append((onset, *cells, standard_text(line.amount), share_text(line.share)))
         if budget.own_share and budget.own_share >= Fraction(1, 200):
             cells = ("the value itself", "", "")
             lines.append((onset, *cells, standard_text(budget.own), share_text(budget.own_share)))
     return lines
-
-
-def _plain(tolerance: Fraction | None) -> str:
-    if tolerance is None:
-        return "none given"
-    return decimal_text(tolerance, max(_decimals(tolerance), 0))
 
 
 def _decimals(value: Fraction) -> int:

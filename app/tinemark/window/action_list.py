@@ -53,6 +53,14 @@ def _panel_open(name: str) -> Callable[[MainWindow], bool]:
     return lambda w: w.panels.is_open(name)
 
 
+def _lower(name: str) -> Callable[[MainWindow], object]:
+    return lambda w: w.tolerances.bring_up(name)
+
+
+def _lower_up(name: str) -> Callable[[MainWindow], bool]:
+    return lambda w: w.panels.is_open("ledger") and w.lower.current == name
+
+
 def _copy(form: str) -> Callable[[MainWindow], object]:
     return lambda w: w.rows.copy(form)
 
@@ -230,6 +238,16 @@ ACTIONS: tuple[Action, ...] = (
     Action("picture", "View", "Picture settings", _panel("picture"), ("F4",), checked=_panel_open("picture")),
     Action("probe_panel", "View", "Probe", _panel("probe"), ("F6",), checked=_panel_open("probe")),
     Action("ledger", "View", "Ledger and ratios", _panel("ledger"), ("F7",), checked=_panel_open("ledger")),
+    Action("ratios", "View", "Ratios and limit", _lower("ratios"), ("F8",), checked=_lower_up("ratios")),
+    Action(
+        "tolerances",
+        "View",
+        "Tolerances and margin",
+        _lower("tolerances"),
+        ("F9",),
+        tip="How far the operating point is from the nearest onset, and what each tolerance contributes",
+        checked=_lower_up("tolerances"),
+    ),
     Action(
         "theme_system",
         "View/Appearance",
@@ -330,6 +348,15 @@ ACTIONS: tuple[Action, ...] = (
         lambda w: w.rows.ask_ladder(),
         ("Ctrl+L",),
         tip="Find the successive onsets of a cascade, from the selected row or in this view",
+    ),
+    Action(
+        "check_proofs",
+        "Find",
+        "Check the proofs again",
+        lambda w: w.proofs.check_all(),
+        ("Ctrl+Shift+K",),
+        enabled=_has_rows,
+        tip="Every proved row of the ledger, by a second implementation that shares no code with the first",
     ),
     Action(
         "cancel",

@@ -23,11 +23,13 @@ from tinemark.window.head_line import HeadLine
 from tinemark.window.hint import HintLine
 from tinemark.window.layout_memory import LayoutMemory
 from tinemark.window.ledger_panel import LedgerPanel
+from tinemark.window.lower_tabs import LowerTabs
 from tinemark.window.onset_jobs import OnsetJobs
 from tinemark.window.panels import Panels
 from tinemark.window.picture_jobs import PictureJobs
 from tinemark.window.probe_jobs import ProbeJobs
 from tinemark.window.probe_panel import ProbePanel
+from tinemark.window.proof_jobs import ProofJobs
 from tinemark.window.ratio_jobs import RatioJobs
 from tinemark.window.ratio_panel import RatioPanel
 from tinemark.window.readying import Readying
@@ -38,6 +40,8 @@ from tinemark.window.settings_panel import SettingsPanel
 from tinemark.window.status_line import StatusLine
 from tinemark.window.system_card import SystemCard
 from tinemark.window.theme import THEMES, Theme, apply_theme, current_theme, system_theme
+from tinemark.window.tolerance_panel import TolerancePanel
+from tinemark.window.tolerance_work import ToleranceWork
 from tinemark.window.workers import Workers
 
 FIRST_SIZE = (1280, 800)
@@ -69,6 +73,7 @@ class MainWindow(QMainWindow):
         self.status = StatusLine()
         self.ledger_panel = LedgerPanel()
         self.ratio_panel = RatioPanel()
+        self.tolerance_panel = TolerancePanel()
         self.system_card = SystemCard()
         self.settings_panel = SettingsPanel()
         self.probe_panel = ProbePanel()
@@ -78,6 +83,8 @@ class MainWindow(QMainWindow):
         self.probes = ProbeJobs(self.probe_panel, self.diagram, self.panels, self)
         self.ratios = RatioJobs(self.bridge, self.ledger_panel, self.ratio_panel, self)
         self.rows = RowWork(self)
+        self.proofs = ProofJobs(self)
+        self.tolerances = ToleranceWork(self)
         self.files = SessionFiles(self, keeper, memory)
         self.workers = Workers(self.bridge, self)
         folded = (self.probe_panel, self.system_card, self.settings_panel)
@@ -101,6 +108,12 @@ class MainWindow(QMainWindow):
         for part in (self.head, self.hint):
             column.addWidget(part)
         column.addWidget(self.diagram, 1)
+        self.lower = LowerTabs(
+            (
+                ("ratios", "Ratios", "F8", self.ratio_panel),
+                ("tolerances", "Tolerances and margin", "F9", self.tolerance_panel),
+            )
+        )
         self.panels = Panels(
             self.memory,
             centre,
@@ -108,7 +121,7 @@ class MainWindow(QMainWindow):
             self.settings_panel,
             self.probe_panel,
             self.ledger_panel,
-            self.ratio_panel,
+            self.lower,
         )
         row = QHBoxLayout()
         row.setSpacing(0)
@@ -184,6 +197,7 @@ class MainWindow(QMainWindow):
         system = self.keeper.system
         if before is None:
             self.onsets.forget()
+            self.proofs.forget()
         self.diagram.show_view(after.view)
         if before is None or before.view != after.view:
             self.status.forget_width()
@@ -201,6 +215,7 @@ class MainWindow(QMainWindow):
         if before is None:
             self.rows.select(after.ledger.rows[0].id if after.ledger.rows else "")
         self.rows.show_marks()
+        self.tolerances.show()
         self.probes.show(after, system, reveal=before is not None)
         self.pictures.show(after, system)
         self.refresh_actions()
@@ -268,7 +283,8 @@ class MainWindow(QMainWindow):
 
     def cancel(self) -> None:
         """Stop the work under way."""
-        if not self.onsets.cancel():
+        checking = self.proofs.cancel()
+        if not self.onsets.cancel() and not checking:
             self.pictures.stop()
             self.status.show_words("Drawing stopped; the next view is drawn again.")
 
@@ -329,6 +345,7 @@ class MainWindow(QMainWindow):
         self.onsets.hear(event)
         self.pictures.hear(event)
         self.probes.hear(event)
+        self.proofs.hear(event)
 
     def resizeEvent(self, event: QResizeEvent) -> None:  # noqa: D102
         super().resizeEvent(event)
@@ -356,6 +373,7 @@ class MainWindow(QMainWindow):
         for jobs in (self.pictures, self.onsets, self.probes):
             jobs.detach()
         self.bridge.close()
+        self.proofs.detach()
         self.workers.close()
 
     def open_path(self, path: Path) -> None:

@@ -64,6 +64,7 @@ class RowWork(QObject):
         self.selected = row
         self.show_marks()
         self._window.ratios.select(row)
+        self._window.tolerances.show()
         self._window.refresh_actions()
 
     def show(self) -> None:
@@ -167,9 +168,11 @@ class RowWork(QObject):
     def copy(self, form: str) -> None:
         """Put the ledger on the clipboard as "tsv", "markdown" or "latex"."""
         from tinemark.document.export import copy_text
+        from tinemark.document.tolerance_tables import tolerances_of
 
         ledger = self._keeper.session.ledger
-        QGuiApplication.clipboard().setText(copy_text(ledger, form))
+        text = copy_text(ledger, form, tolerances=tolerances_of(self._keeper.session))
+        QGuiApplication.clipboard().setText(text)
         count = len(ledger.rows)
         self._window.status.show_words(f"Copied {count} row{'' if count == 1 else 's'}.")
 
