@@ -13,7 +13,7 @@ from tinemark.onsets.ball_orbits import LONGEST_EXPONENT, fraction_of
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.polish import Rough, settle_onset
 from tinemark.onsets.results import Kind, Onset, Status
-from tinemark.systems.errors import Unbounded
+from tinemark.systems.errors import SystemFileError, Unbounded
 from tinemark.systems.system import System
 
 
@@ -113,3 +113,9 @@ def test_distances_in_the_evidence_are_lower_bounds() -> None:
     said = Fraction(finding.split("at least ")[1].split()[0])
     assert "after 2 steps" in finding
     assert said <= abs(r * y * (1 - y) - x) < said * Fraction(11, 10)
+
+
+def test_numbers_beyond_doubles_are_refused_in_words() -> None:
+    """Two hundred digits with a power of ten: each is allowed, together they overflow."""
+    with pytest.raises(SystemFileError, match="too large"):
+        own_map("r*x*(1 - x)", value="1" + "0" * 150 + "e300")

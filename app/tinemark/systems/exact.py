@@ -10,6 +10,8 @@ from tinemark.systems.errors import NumberError
 
 MAX_DIGITS = 200
 MAX_EXPONENT = 300
+LARGEST = 10 ** (MAX_EXPONENT + 1)
+"""Many digits and a power of ten may both be allowed, and yet make a number beyond all doubles."""
 _DECIMAL = re.compile(r"[+-]?(?:(\d+)(?:\.(\d*))?|\.(\d+))(?:[eE]([+-]?\d{1,6}))?", re.ASCII)
 
 
@@ -64,7 +66,14 @@ def exact(value: str | int | float | Fraction, *, where: str = "") -> Exact:
             where=where,
             what_to_do=f"stay between 1e-{MAX_EXPONENT} and 1e{MAX_EXPONENT}",
         )
-    return Exact(text, Fraction(text))
+    number = Fraction(text)
+    if abs(number) > LARGEST:
+        raise NumberError(
+            "the number is too large",
+            where=where,
+            what_to_do=f"stay between -1e{MAX_EXPONENT} and 1e{MAX_EXPONENT}",
+        )
+    return Exact(text, number)
 
 
 def fraction_text(value: Fraction, digits: int | None = None) -> str:
