@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from tinemark.onsets.border_search import border_crossings
 from tinemark.onsets.branch_points import meetings_of
 from tinemark.onsets.branches import Crossing, Cycle, CycleMap, crossings_from, find_cycle
 from tinemark.onsets.float_map import FloatMap
@@ -62,6 +63,7 @@ class Search:
     orbits: int = 0
     climbed: int = 0
     touchings: dict[int, float] = field(default_factory=dict)
+    words: set[Any] = field(default_factory=set)
 
     @property
     def width(self) -> float:
@@ -193,6 +195,8 @@ def _add_meetings(search: Search, cycle: Cycle, crossings: Sequence[Crossing]) -
         return
     meetings = meetings_of(search.cycles, cycle, search.request.near, search.width, crossings)
     for crossing in meetings.crossings:
+        search.add(crossing)
+    for crossing in border_crossings(search.cycles, cycle, search.width, search.words):
         search.add(crossing)
     if meetings.touching is not None:
         search.touchings[cycle.period] = float(meetings.touching.r)

@@ -28,4 +28,8 @@ def settle_any(
         from tinemark.onsets.branch_point_onsets import settle_branch_point
 
         return (yield from settle_branch_point(one, rough, digits, reach=reach, show_after=show_after))
+    if rough.kind is Kind.BORDER_COLLISION:
+        from tinemark.onsets.border_onsets import settle_border
+
+        return (yield from settle_border(one, rough, digits, reach=reach))
     return (yield from settle_onset(one, rough, digits, reach=reach, show_after=show_after))

@@ -8,6 +8,7 @@ from fractions import Fraction
 from flint import arb
 
 from tinemark.onsets.ball_orbits import ball_loops, ball_of, precision
+from tinemark.onsets.border_onsets import prove_claim as prove_border
 from tinemark.onsets.branch_point_onsets import prove_claim as prove_branch_point
 from tinemark.onsets.decimals import decimal_places
 from tinemark.onsets.one_map import OneMap, one_map
@@ -43,6 +44,8 @@ def verify_onset(system: System, onset: Onset) -> Generator[Step, None, Proof]:
     if one.state not in states:
         raise NotProved("the claim names no cycle point", refuted=True)
     period = onset.period_after if onset.kind is Kind.FOLD else onset.period_before
+    if onset.kind is Kind.BORDER_COLLISION:
+        period = onset.period_before or onset.period_after
     after = {Kind.FLIP: 2 * period, Kind.PITCHFORK: period, Kind.TRANSCRITICAL: period}
     if period < 1 or onset.period_after != after.get(onset.kind, onset.period_after):
         raise NotProved("the periods before and after do not belong to such an onset", refuted=True)
@@ -56,6 +59,9 @@ def verify_onset(system: System, onset: Onset) -> Generator[Step, None, Proof]:
     bits = 2 * first_bits(Rough(onset.kind, period, x, r), places)
     with precision(bits):
         box = Box(ball_of(x).mid(), ball_of(r).mid(), _below(half_x), _below((upper - lower) / 2))
+    if onset.kind is Kind.BORDER_COLLISION:
+        yield Step("verifying")
+        return prove_border(one, onset.period_before, onset.period_after, box, bits)
     proof = yield from _proof(one, onset.kind, period, box, bits)
     if proof.degenerate:
         raise NotProved(proof.degenerate)
