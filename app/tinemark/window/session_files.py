@@ -19,6 +19,7 @@ from tinemark.systems.library import builtin_text
 from tinemark.systems.system_file import read_system_file
 from tinemark.window.axis import axis_title
 from tinemark.window.layout_memory import LayoutMemory
+from tinemark.window.proof_jobs import opening_words
 from tinemark.window.session_keeper import SessionKeeper
 from tinemark.window.theme import current_theme
 
@@ -58,7 +59,7 @@ class SessionFiles:
         except TinemarkError as error:
             self._say(str(error))
             return False
-        if not self._show(session, path, f"Opened {path.name}."):
+        if not self._show(session, path, f"Opened {path.name}. {opening_words(session)}".strip()):
             return False
         self._memory.add_recent(path)
         return True
