@@ -10,11 +10,22 @@ import itertools
 from dataclasses import dataclass
 from typing import TypeAlias
 
-from tinemark.onsets.results import LadderLevel, LadderRequest, LadderResult, RefineRequest, RefineResult
+from tinemark.onsets.results import (
+    BranchRequest,
+    BranchResult,
+    LadderLevel,
+    LadderRequest,
+    LadderResult,
+    Onset,
+    RefineRequest,
+    RefineResult,
+    SurveyRequest,
+    SurveyResult,
+)
 from tinemark.systems.errors import TinemarkError
 
-OnsetRequest: TypeAlias = RefineRequest | LadderRequest
-OnsetResult: TypeAlias = RefineResult | LadderResult
+OnsetRequest: TypeAlias = RefineRequest | LadderRequest | SurveyRequest | BranchRequest
+OnsetResult: TypeAlias = RefineResult | LadderResult | SurveyResult | BranchResult
 
 
 @dataclass(frozen=True)
@@ -39,6 +50,14 @@ class LevelFound:
 
     id: int
     level: LadderLevel
+
+
+@dataclass(frozen=True)
+class OnsetFound:
+    """A running survey has found one more onset; they come in no promised order."""
+
+    id: int
+    onset: Onset
 
 
 @dataclass(frozen=True)
@@ -88,7 +107,7 @@ class Crashed:
         )
 
 
-Event: TypeAlias = Started | Progressed | LevelFound | Finished | Failed | Cancelled | Crashed
+Event: TypeAlias = Started | Progressed | LevelFound | OnsetFound | Finished | Failed | Cancelled | Crashed
 ENDS = (Finished, Failed, Cancelled, Crashed)
 """Events after which nothing more comes of their job."""
 

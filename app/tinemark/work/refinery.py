@@ -18,7 +18,15 @@ from multiprocessing.connection import Connection, wait
 from multiprocessing.context import SpawnProcess
 from typing import Any, Self
 
-from tinemark.onsets.results import LadderLevel, LadderRequest, RefineRequest, Step
+from tinemark.onsets.results import (
+    BranchRequest,
+    LadderLevel,
+    LadderRequest,
+    RefineRequest,
+    Step,
+    SurveyFind,
+    SurveyRequest,
+)
 from tinemark.systems.system import System
 from tinemark.work import worker
 from tinemark.work.jobs import (
@@ -28,6 +36,7 @@ from tinemark.work.jobs import (
     Failed,
     Finished,
     LevelFound,
+    OnsetFound,
     OnsetRequest,
     Progressed,
     Started,
@@ -58,7 +67,7 @@ class _Process:
 
 
 class Refinery:
-    """Runs refinements and ladders in a worker process, one after the other.
+    """Runs refinements, ladders, surveys and branches in a worker process, one after the other.
 
     Parameters
     ----------
@@ -100,8 +109,16 @@ class Refinery:
         """Queue a ladder; returns the id that its events carry. Any thread."""
         return self.submit(request)
 
+    def survey(self, request: SurveyRequest) -> int:
+        """Queue a survey of a range; returns the id that its events carry. Any thread."""
+        return self.submit(request)
+
+    def branches(self, request: BranchRequest) -> int:
+        """Queue the branches of a view; returns the id that its events carry. Any thread."""
+        return self.submit(request)
+
     def submit(self, request: OnsetRequest) -> int:
-        """Queue a request of either kind; returns the id that its events carry. Any thread."""
+        """Queue a request of any kind; returns the id that its events carry. Any thread."""
         if self._closed:
             raise RuntimeError("the refinery is closed")
         id_ = new_id()
@@ -266,6 +283,8 @@ class Refinery:
                 self._tell(Progressed(running.id, step.text, step.share))
             case ("step", _, LadderLevel() as level) if running.cancel_by is None:
                 self._tell(LevelFound(running.id, level))
+            case ("step", _, SurveyFind() as find) if running.cancel_by is None:
+                self._tell(OnsetFound(running.id, find.onset))
             case ("step", *_):
                 pass
             case ("done", _, result):

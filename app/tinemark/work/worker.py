@@ -22,7 +22,15 @@ from fractions import Fraction
 from multiprocessing.connection import Connection
 from typing import Any, TypeAlias
 
-from tinemark.onsets.results import LadderLevel, RefineRequest, Step
+from tinemark.onsets.results import (
+    BranchRequest,
+    LadderLevel,
+    LadderRequest,
+    RefineRequest,
+    Step,
+    SurveyFind,
+    SurveyRequest,
+)
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.system import System
 from tinemark.work.jobs import OnsetRequest, OnsetResult
@@ -34,7 +42,7 @@ STEP_INTERVAL = 0.04
 WARM_TIME = 3.0
 """Seconds after which a warming ends at its next step: by then everything is built."""
 
-Steps: TypeAlias = Generator[Step | LadderLevel, None, OnsetResult]
+Steps: TypeAlias = Generator[Step | LadderLevel | SurveyFind, None, OnsetResult]
 Engine: TypeAlias = Callable[[OnsetRequest], Steps]
 
 
@@ -48,9 +56,15 @@ def engine_steps(request: OnsetRequest) -> Steps:
     """
     from tinemark.onsets import engine
 
-    if isinstance(request, RefineRequest):
-        return (yield from engine.refine(request))
-    return (yield from engine.ladder(request))
+    match request:
+        case RefineRequest():
+            return (yield from engine.refine(request))
+        case LadderRequest():
+            return (yield from engine.ladder(request))
+        case SurveyRequest():
+            return (yield from engine.survey(request))
+        case BranchRequest():
+            return (yield from engine.branches(request))
 
 
 def serve(requests: Connection, events: Connection, engine: Engine = engine_steps) -> None:
