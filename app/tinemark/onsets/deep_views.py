@@ -20,12 +20,15 @@ from tinemark.onsets.branches import (
     crossing_at,
     cycle_with_multiplier,
 )
+from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
+from tinemark.onsets.polish import Lost, Rough
 from tinemark.onsets.proofs import TARGETS
 from tinemark.onsets.results import Kind, RefineRequest, Step
 from tinemark.onsets.scaling_steps import extrapolated
 from tinemark.onsets.searches import LONG, NEAR, PIXEL, WIDE, Search, run_sweep
+from tinemark.onsets.settling import settle_any
 from tinemark.systems.errors import NoOnsetFound
 
 MOST_BITS = 1400
@@ -76,7 +79,10 @@ def deep_crossings(
         if key in tried:
             continue
         tried.add(key)
-        polished = polished_crossing(deep, crossing)
+        if crossing.kind in TARGETS:
+            polished = polished_crossing(deep, crossing)
+        else:
+            polished = yield from _settled_crossing(one, request, deep, crossing)
         yield Step("polishing what lies around the click")
         if polished is not None:
             found.append(polished)
@@ -99,6 +105,19 @@ def polished_crossing(deep: BallMap, crossing: Crossing) -> Crossing | None:
         if abs(step.shift_r) <= abs(float(r)) * 2.0 ** (-deep.bits * 0.75):
             break
     return crossing_at(deep, Cycle(crossing.period, x, r, float(TARGETS[crossing.kind])), crossing.kind)
+
+
+def _settled_crossing(
+    one: OneMap, request: RefineRequest, deep: BallMap, crossing: Crossing
+) -> Generator[Step, None, Crossing | None]:
+    """An onset of a kind with equations of its own, polished to the digits that place it in the view."""
+    digits = leading_power(abs(request.near)) - leading_power(request.width) + 4
+    rough = Rough(crossing.kind, crossing.period, Fraction(crossing.x), Fraction(crossing.r))
+    try:
+        settled = yield from settle_any(one, rough, digits)
+    except Lost:
+        return None
+    return replace(crossing, kind=settled.onset.kind, x=deep.number(settled.x), r=deep.number(settled.r))
 
 
 def _climb(
