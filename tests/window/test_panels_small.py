@@ -280,6 +280,7 @@ PAGES = {
     "02-first-five-minutes": ("Drag a box", "invented"),
     "03-status-words": ("proved", "estimated", "read by eye", "measured"),
     "04-ladders": ("4.669", "7.284", "8.721"),
+    "04-tolerances": ("standard uncertainty", "equation 10", "k = 2", "operating point"),
     "05-own-models": ("[states.n]", "`a if x < c else b`", "One to six states"),
     "06-diagram": ("several starts", "Lyapunov"),
     "07-keys": ("Backspace", "F2"),

@@ -22,7 +22,7 @@ from PySide6.QtWidgets import (
 from tinemark.document.margin import NO_ROWS, Margin, margin_sentence
 from tinemark.document.rounding import group_digits, minus_sign, onset_text
 from tinemark.document.row import Row
-from tinemark.document.tolerance import Budget
+from tinemark.document.tolerance import NO_TOLERANCES, Budget
 from tinemark.document.tolerance_tables import (
     share_text,
     slope_text,
@@ -50,7 +50,7 @@ ENTER = "Enter tolerances"
 OWN = "the value itself"
 WORTH_A_BAR = 0.005
 DROPPED = COLUMNS.index("contribution")
-MARGINS = 30
+MARGINS = 27
 """Width that margins and a scroll bar take."""
 
 
@@ -178,6 +178,8 @@ class TolerancePanel(QWidget):
         if row is None and has_rows:
             self.reason.setText(SELECT)
             self.reason.show()
+        elif nearest is not None and nearest.standard is None and budget and budget.reason == NO_TOLERANCES:
+            self.reason.hide()  # the margin's own sentence says it
         self._fit()
 
     def _show_budget(self, row: Row | None, budget: Budget | None) -> None:
@@ -239,6 +241,8 @@ class TolerancePanel(QWidget):
         header = self.table.horizontalHeader()
         header.setSectionResizeMode(QHeaderView.ResizeMode.ResizeToContents)
         header.setSectionResizeMode(0, QHeaderView.ResizeMode.Stretch)
+        # A hidden column has no size to measure.
+        self.table.setColumnHidden(DROPPED, False)
         needed = sum(
             max(self.table.sizeHintForColumn(column), header.sectionSizeHint(column))
             for column in range(len(COLUMNS))
