@@ -12,6 +12,7 @@ from running import finish, system_of
 from test_many_exact import assert_is, click, own_system
 
 from tinemark.onsets.ball_orbits import precision
+from tinemark.onsets.certificates import digest_of
 from tinemark.onsets.decimals import fixed_text
 from tinemark.onsets.many_engine import refine_many
 from tinemark.onsets.many_map import float_many_map, many_map
@@ -23,6 +24,7 @@ from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Criticality, Kind, Onset, RefineRequest, Status
 from tinemark.systems.errors import NoOnsetFound
 from tinemark.systems.system import System
+from tinemark.systems.system_file import read_system_text
 
 ROTATION = {
     "x": "r*(4*x - 3*y)/5 + (SIGN)*x*(x**2 + y**2)",
@@ -190,6 +192,36 @@ def test_damaged_claims_are_refused(printed: tuple[System, Onset]) -> None:
     for claim in damaged:
         with pytest.raises(NotProved):
             finish(verify_onset_many(system, claim))
+
+
+def test_a_proof_leaves_a_certificate(printed: tuple[System, Onset]) -> None:
+    """Its box holds what is printed, and names the system with the values that held."""
+    _, onset = printed
+    certificate = onset.certificate
+    assert certificate is not None
+    assert certificate.digest == digest_of(certificate, onset)
+    assert certificate.kind == onset.kind.value
+    middle, half = (Fraction(text) for text in certificate.parameter_box)
+    assert abs(onset.value_fraction - middle) <= half + Fraction(1, 10**18)
+    assert [name for name, _, _ in certificate.state_boxes] == [name for name, _ in onset.states]
+
+
+def test_a_certificate_names_its_own_system() -> None:
+    """Maps that are equal once their values are put in share evaluators, but not their certificates."""
+
+    def made(first: str, second: str) -> System:
+        return read_system_text(
+            'title = "o"\nkind = "map"\n[states.x]\nstart = "0.1"\n[states.y]\nstart = "0.1"\n'
+            f'[parameters.r]\nvalue = "1"\n[parameters.b]\nvalue = "{first}"\n'
+            f'[parameters.c]\nvalue = "{second}"\n'
+            '[next]\nx = "1 - r*x**2 + y"\ny = "b*c*x"\n[diagram]\nparameter = "r"\nobserve = "x"\n'
+        )
+
+    for values in (("0.5", "0.6"), ("0.6", "0.5")):
+        (onset,) = click(made(*values), "0.915", "0.1")
+        assert onset.certificate is not None
+        held = read_system_text(onset.certificate.system_text)
+        assert tuple(held.parameter(name).value.text for name in "bc") == values
 
 
 def solved(period: int) -> tuple[System, Settled]:

@@ -57,7 +57,12 @@ class Condensed:
 
 
 def condensed(float_map: FloatManyMap, points: Floats, r: float) -> Condensed:
-    """Condense the linearised shooting equations of a cycle."""
+    """Condense the linearised shooting equations of a cycle; not finite where an orbit escapes."""
+    with np.errstate(over="ignore", invalid="ignore"):
+        return _condensed(float_map, points, r)
+
+
+def _condensed(float_map: FloatManyMap, points: Floats, r: float) -> Condensed:
     linear = float_map.linearised(points, r)
     count, n = points.shape
     residual = linear.image - np.concatenate((points[1:], points[:1]))

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from copy import copy
+from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import lru_cache
 from typing import Any
@@ -36,6 +37,8 @@ class ManyMap:
         Where an orbit starts when nothing better is known.
     extents
         Range in which each state is shown, or None.
+    system
+        The system it was made of, for what is written down of a proof; two maps are the same without it.
     """
 
     states: tuple[str, ...]
@@ -44,6 +47,7 @@ class ManyMap:
     observe: Expr
     starts: tuple[Fraction, ...]
     extents: tuple[tuple[Fraction, Fraction] | None, ...]
+    system: System = field(compare=False, repr=False)
 
     @property
     def size(self) -> int:
@@ -70,6 +74,7 @@ def many_map(system: System, parameter: str) -> ManyMap:
             (state.range[0].fraction, state.range[1].fraction) if state.range else None
             for state in system.states
         ),
+        system=system,
     )
 
 
@@ -149,9 +154,16 @@ class FloatManyMap:
         return np.where(scales > 0, scales, wandered)
 
 
-@lru_cache(maxsize=64)
 def float_many_map(many: ManyMap) -> FloatManyMap:
     """The map in doubles, its derivatives worked out once."""
+    # An equal map may have been made of another system, by whose name the certificates must not go.
+    found = copy(_float_many_map(many))
+    found.many = many
+    return found
+
+
+@lru_cache(maxsize=64)
+def _float_many_map(many: ManyMap) -> FloatManyMap:
     return FloatManyMap(many)
 
 

@@ -9,6 +9,7 @@ from fractions import Fraction
 import numpy as np
 
 from tinemark.onsets.ball_orbits import fraction_of
+from tinemark.onsets.certificates import certified
 from tinemark.onsets.decimals import (
     GUARD_DIGITS,
     decimal_places,
@@ -32,7 +33,9 @@ SECOND_PRECISION_BITS = 64
 SAFETY = 4
 """Factor on the observed disagreement and the last Newton step, for 95 % coverage or better."""
 ATTEMPTS = 4
-PROOF_ATTEMPTS = 3
+PROOF_ATTEMPTS = 4
+LEAST_SIZE = Fraction(1, 10**40)
+"""An onset at zero has no significant digits: those of this size are given instead."""
 HOW_ESTIMATED = (
     "the value is solved at two precisions, and its error estimated from the last Newton step and their "
     "difference"
@@ -95,7 +98,7 @@ def settle_onset(
     start = rough_start(float_map, kind, rough)
     first = yield from polish(many, kind, start, FIRST_BITS, scales, reach)
     _check_period(first, scales)
-    places = decimal_places(fraction_of(first.r), digits + GUARD_DIGITS)
+    places = decimal_places(max(abs(fraction_of(first.r)), LEAST_SIZE), digits + GUARD_DIGITS)
     bits = working_bits(places, rough.period)
     proved = yield from _proved(many, kind, first, bits, digits, places, scales, reach)
     if isinstance(proved, Settled):
@@ -148,7 +151,6 @@ def _proved(
     reach: float,
 ) -> Generator[Step, None, Settled | str]:
     """The proved onset, or why there is none."""
-    wanted = Fraction(1, 10) ** (places + 1)
     reason = ""
     for _ in range(PROOF_ATTEMPTS):
         first = yield from polish(many, kind, first.place, bits, scales, reach)
@@ -161,12 +163,33 @@ def _proved(
                 raise NotFound(error.reason) from error
             reason = error.reason
         else:
-            if proof.parameter[1] - proof.parameter[0] <= wanted:
+            low, high = proof.parameter
+            if not low <= 0 <= high:
+                # A value that comes out smaller than thought needs more decimals.
+                places = max(places, decimal_places((low + high) / 2, digits + GUARD_DIGITS))
+            if high - low <= Fraction(1, 10) ** (places + 1):
                 onset = _proved_onset(many, kind, proof, first.place.period, digits, places)
-                return Settled(onset, first, _findings_of(proof))
+                return Settled(_with_certificate(many, onset, proof, bits), first, _findings_of(proof))
             reason = "the enclosure stayed wider than the digits asked for"
-        bits = bits * 3 // 2
+        bits = max(bits * 3 // 2, working_bits(places, first.place.period))
     return reason
+
+
+def _with_certificate(many: ManyMap, onset: Onset, proof: ManyProof, bits: int) -> Onset:
+    parameter, *states = ((_middle(ends), (ends[1] - ends[0]) / 2) for ends in proof.box)
+    within = (proof.parameter, *proof.states)
+    return certified(
+        onset,
+        many.system,
+        bits,
+        parameter,
+        list(zip(many.states, states, strict=True)),
+        keep_within=within,
+    )
+
+
+def _middle(ends: tuple[Fraction, Fraction]) -> Fraction:
+    return (ends[0] + ends[1]) / 2
 
 
 def _findings_of(proof: ManyProof) -> Findings:
@@ -188,7 +211,6 @@ def _proved_onset(
     texts = enclosure_texts(*proof.parameter, places)
     degenerate = proof.claims.degenerate
     before, after = periods(kind, period)
-    middles = [sum(interval, Fraction(0)) / 2 for interval in proof.states]
     return Onset(
         parameter=many.parameter,
         kind=kind,
@@ -201,7 +223,7 @@ def _proved_onset(
         digits=digits,
         status=Status.ESTIMATED if degenerate else Status.PROVED,
         reason=degenerate,
-        states=_state_texts(many, middles, digits),
+        states=_enclosed_state_texts(many, proof, digits),
         evidence=proof.evidence,
         consequence=proof.claims.consequence,
     )
@@ -291,6 +313,23 @@ def _state_texts(many: ManyMap, values: list[Fraction], digits: int) -> tuple[tu
             value = Fraction(0)
         places = decimal_places(value, digits)
         texts.append((name, fixed_text(rounded(value, places), places) if value else "0"))
+    return tuple(texts)
+
+
+def _enclosed_state_texts(many: ManyMap, proof: ManyProof, digits: int) -> tuple[tuple[str, str], ...]:
+    """Texts of the first cycle point: no more digits than its enclosure holds."""
+    texts = []
+    for at, (name, (low, high)) in enumerate(zip(many.states, proof.states, strict=True)):
+        middle, extent = (low + high) / 2, many.extents[at]
+        if low <= 0 <= high:
+            # Zero, as far as can be told, has no significant digits: decimals of the state's own size then.
+            size = abs(many.starts[at]) if extent is None else extent[1] - extent[0]
+            places = decimal_places(size or Fraction(1), digits)
+        else:
+            places = decimal_places(middle, digits)
+        if high > low:
+            places = min(places, -leading_power((high - low) / 2) - 2)
+        texts.append((name, fixed_text(rounded(middle, places), places)))
     return tuple(texts)
 
 

@@ -47,6 +47,8 @@ class ManyProof:
     ----------
     parameter, states
         Enclosures of the onset's parameter value and of the first cycle point.
+    box
+        Balls of the interval Newton test, in which there is no other zero: the parameter, then each state.
     claims
         Everything else that was shown.
     evidence
@@ -55,6 +57,7 @@ class ManyProof:
 
     parameter: Interval
     states: tuple[Interval, ...]
+    box: tuple[Interval, ...]
     claims: Claims
     evidence: tuple[tuple[str, str], ...]
 
@@ -112,6 +115,7 @@ def prove_many(
         return ManyProof(
             _interval(found.r),
             tuple(_interval(value) for value in found.first),
+            tuple(_interval(value) for value in (found.box.r, *found.box.points[0])),
             claims,
             (*evidence, *claims.evidence),
         )
