@@ -16,6 +16,8 @@ from tinemark.systems.expression import ZERO, Call, Expr, Name, Num
 from tinemark.systems.surfaces import domain_edges, switching_surfaces
 
 Evaluator = Callable[..., tuple[Any, ...]]
+Partials = dict[tuple[int, tuple[int, ...]], Expr]
+"""Derivatives by (which formula, by which states)."""
 
 
 @dataclass(frozen=True)
@@ -57,28 +59,38 @@ class JetEvaluators:
 @lru_cache(maxsize=64)
 def jet_evaluators(many: ManyMap) -> JetEvaluators:
     """Compile the evaluators of a map."""
-    from tinemark.systems.derivatives import partials
-
     n = many.size
     # A space cannot stand in a name, so these never meet a name of the system.
     u, v, w = (tuple(f"{letter} {place}" for place in range(n)) for letter in "uvw")
-    known = partials(many.formulas, many.states, 3)
+    seconds = _further(many, _further(many, {(at, ()): expr for at, expr in enumerate(many.formulas)}))
+    thirds = _further(many, seconds)
 
-    def along(order: int, directions: Sequence[Sequence[str]]) -> tuple[Expr, ...]:
+    def along(known: Partials, directions: Sequence[Sequence[str]]) -> tuple[Expr, ...]:
         totals: list[Expr] = [ZERO] * n
-        for (formula, names), value in known.items():
-            if len(names) == order:
-                places = [many.states.index(name) for name in names]
-                totals[formula] = _plus(totals[formula], _times(value, _spread(places, directions)))
+        for (formula, places), value in known.items():
+            totals[formula] = _plus(totals[formula], _times(value, _spread(places, directions)))
         return tuple(totals)
 
     surfaces = switching_surfaces(many.formulas) + domain_edges(many.formulas)
     return JetEvaluators(
-        ball_function(along(2, (v, w)), (*many.names, *v, *w)),
-        ball_function(along(3, (u, v, w)), (*many.names, *u, *v, *w)),
+        ball_function(along(seconds, (v, w)), (*many.names, *v, *w)),
+        ball_function(along(thirds, (u, v, w)), (*many.names, *u, *v, *w)),
         ball_function(tuple(surface.expr for surface in surfaces), many.names) if surfaces else _no_sides,
         tuple(surface.kind == "integer" for surface in surfaces),
     )
+
+
+def _further(many: ManyMap, known: Partials) -> Partials:
+    """Partial derivatives of the next order: those of what is not zero, in rising order of the states."""
+    from tinemark.systems.derivatives import derivative
+
+    found: Partials = {}
+    for (formula, places), expr in known.items():
+        for place in range(places[-1] if places else 0, many.size):
+            value = derivative(expr, many.states[place])
+            if value != ZERO:
+                found[formula, (*places, place)] = value
+    return found
 
 
 def _no_sides(*_: Any) -> tuple[Any, ...]:

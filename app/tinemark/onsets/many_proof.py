@@ -32,7 +32,7 @@ from tinemark.onsets.many_shooting import (
     in_turn,
     local_at,
 )
-from tinemark.onsets.proofs import Interval, NotProved, prime_factors
+from tinemark.onsets.proofs import Interval, NotProved, prime_factors, rounded_down
 from tinemark.onsets.results import Kind, Step
 
 FLOOR_BITS = 12
@@ -75,7 +75,7 @@ class Enclosed:
     frames, local
         Frames, and the map's derivatives on the box.
     half_r
-        Half-width of the box in the parameter.
+        Half-width of the box in the parameter, an exact ball.
     """
 
     box: Place
@@ -83,7 +83,7 @@ class Enclosed:
     r: Any
     frames: Frames
     local: Local
-    half_r: float
+    half_r: Any
 
 
 def prove_many(
@@ -106,9 +106,10 @@ def prove_many(
         The box of a cycle point touches a switching surface or an edge of the domain.
     """
     found = yield from enclose(many, kind, middle, scales, bits)
-    half = f"half-width {found.half_r:.2g} in the parameter"
-    evidence = [("one onset in the box", f"interval Newton test on all {middle.period} points, {half}")]
     with precision(bits):
+        half = f"half-width {rounded_down(found.half_r)} in the parameter"
+        test = f"interval Newton test on {middle.period} points with their critical vectors, {half}"
+        evidence = [("one onset in the box", test)]
         evidence += _least_period(found.box, scales)
     claims = yield from claims_of(many, kind, found.box, found.frames, found.local, scales, bits)
     with precision(bits):
@@ -161,7 +162,7 @@ def enclose(
         if not _inside(image, box):
             raise NotProved("the interval Newton test did not map the box into itself")
         tight = frames.bases[0] * image.points[0] + column(middle.points[0])
-        return Enclosed(balls, entries(tight), middle.r + image.r, frames, on_box, float(box.r.abs_upper()))
+        return Enclosed(balls, entries(tight), middle.r + image.r, frames, on_box, box.r.rad())
 
 
 def _right(local: Local, middle: Place) -> Right:
@@ -271,20 +272,21 @@ def _inside(image: Shift, box: Shift) -> bool:
 
 def _least_period(box: Place, scales: Floats) -> list[tuple[str, str]]:
     period = box.period
-    nearest: list[float] = []
-    for prime in prime_factors(period):
-        other = box.points[period // prime]
-        gaps = [
-            (a - b).abs_lower() / float(scale)
-            for a, b, scale in zip(other, box.points[0], scales, strict=True)
+    gaps = []
+    for steps in sorted(period // prime for prime in prime_factors(period)):
+        apart = [
+            ((a - b) / float(scale)).abs_lower()
+            for a, b, scale in zip(box.points[steps], box.points[0], scales, strict=True)
         ]
-        if not any(gap > 0 for gap in gaps):
+        clear = [gap for gap in apart if gap > 0]
+        if not clear:
             raise NotProved(
-                f"the cycle closes after {period // prime} steps already: its least period is not {period}",
+                f"the cycle closes after {steps} steps already: its least period is not {period}",
                 refuted=True,
             )
-        nearest.append(max(float(gap) for gap in gaps if gap > 0))
-    finding = f"points at least {min(nearest):.2g} of a state's range apart" if nearest else "a steady state"
+        widest = max(clear, key=float)
+        gaps.append(f"after {steps} steps at least {rounded_down(widest)} of a state's range away")
+    finding = "the point is " + ", ".join(gaps) if gaps else "a steady state"
     return [(f"least period exactly {period}", finding)]
 
 
