@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from fractions import Fraction
 
 import flint
@@ -125,6 +126,34 @@ def test_crossing_branches() -> None:
         simple = system({"x": formula}, {"r": "1", "s": "2"})
         found = finish(sensitivities(simple, onset(kind, "0.5", {"x": "0"})))
         assert found == Moves((Sensitivity("s", "-0.250000000000"),))
+
+
+def test_border_collision_of_a_steady_state() -> None:
+    # r + a x = x at the border x = c: r = c(1 - a), whatever slope b holds beyond it.
+    bent = system({"x": "r + a*x + (b - a)*max(0, x - c)"}, {"r": "0.3", "a": "0.4", "b": "-1.5", "c": "0.5"})
+    found = finish(sensitivities(bent, onset(Kind.BORDER_COLLISION, "0.3", {"x": "0.5"})))
+    assert [item.name for item in found.found] == ["a", "b", "c"]
+    assert [item.derivative for item in found.found] == ["-0.500000000000", "0", "0.600000000000"]
+
+
+def test_border_collision_of_a_cycle_where_the_formula_jumps() -> None:
+    # The cycle of two: x1 = c, x2 = r + b c - 1, c = r + a x2, so r = (c (1 - a b) + a)/(1 + a).
+    jump = system({"x": "r + a*x if x < c else r + b*x - 1"}, {"r": "1", "a": "0.4", "b": "-0.5", "c": "0.5"})
+    a, b, c = Fraction("0.4"), Fraction("-0.5"), Fraction("0.5")
+    value = (c * (1 - a * b) + a) / (1 + a)
+    touching = onset(Kind.BORDER_COLLISION, f"{float(value):.12f}", {"x": "0.5"})
+    found = finish(sensitivities(jump, dataclasses.replace(touching, period_before=2)))
+    slopes = {item.name: Fraction(item.derivative) for item in found.found}
+    assert near(slopes["c"], (1 - a * b) / (1 + a))
+    assert near(slopes["b"], -a * c / (1 + a))
+    assert near(slopes["a"], ((1 - b * c) - value) / (1 + a))
+
+
+def test_a_point_off_every_surface_touches_none() -> None:
+    bent = system({"x": "r + a*x + max(0, x - c)"}, {"r": "0.3", "a": "0.4", "c": "0.5"})
+    found = finish(sensitivities(bent, onset(Kind.BORDER_COLLISION, "0.3", {"x": "0.4"})))
+    assert found.found == ()
+    assert {reason for _, reason in found.missing} == {"the cycle's point lies on no switching surface"}
 
 
 def test_a_parameter_that_breaks_the_crossing_has_no_derivative() -> None:

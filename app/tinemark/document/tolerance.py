@@ -27,7 +27,7 @@ NOT_KNOWN = "how this onset moves with the other parameters is not known yet; re
 NO_EQUATIONS = "how an onset of this kind moves with the other parameters is not worked out"
 NO_TOLERANCES = "no tolerances are given; enter them in the system card"
 
-_DEFINED = ("flip", "fold", "Neimark-Sacker", "transcritical", "pitchfork")
+_DEFINED = ("flip", "fold", "Neimark-Sacker", "transcritical", "pitchfork", "border collision")
 
 
 @dataclass(frozen=True)

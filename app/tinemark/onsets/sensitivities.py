@@ -9,7 +9,8 @@ where g is the bordering function of the matrix f^p_x - mu, which is smooth and 
 multiplier (Govaerts 2000, Numerical Methods for Bifurcations of Dynamical Equilibria, chapter 4): mu is -1 at
 a flip, 1 at a fold, and exp(i theta) with theta unknown at a Neimark-Sacker point. Where two branches cross
 (transcritical, pitchfork) F_(x,r) is singular; there the onset is where the slope of f^p - x in x and
-its slope in r vanish together, as long as the crossing itself persists.
+its slope in r vanish together, as long as the crossing itself persists. At a border collision g is the
+formula of the surface that the cycle touches.
 """
 
 from __future__ import annotations
@@ -27,6 +28,7 @@ from flint import acb, acb_mat, arb, arb_mat
 from tinemark.onsets.ball_orbits import ball_of, fraction_of, precision
 from tinemark.onsets.decimals import decimal_places, fixed_text, rounded
 from tinemark.onsets.results import Kind, Onset, Sensitivity, Status, Step
+from tinemark.onsets.sensitivity_borders import Border, border_pass, borders_at
 from tinemark.onsets.sensitivity_passes import CRITICAL, SWEPT, Course, Passed, course_of, run_pass
 from tinemark.systems.errors import FormulaError, SwitchingTouched
 from tinemark.systems.system import System
@@ -47,7 +49,7 @@ NOTHING = 1e-20
 KEEPS_CROSSING = 1e-12
 """Two branches go on crossing where a parameter changes f^p there by no more than this."""
 
-REGULAR = (Kind.FLIP, Kind.FOLD)
+REGULAR = (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, Kind.BORDER_COLLISION)
 CROSSINGS = (Kind.TRANSCRITICAL, Kind.PITCHFORK)
 
 
@@ -75,7 +77,8 @@ class _Unsolved(Exception):
 class _Place:
     x: list[Any]
     r: Any
-    angle: Any  # of the critical multiplier; None where it is real
+    angle: Any = None  # of the critical multiplier; None where it is real
+    border: Border | None = None
 
 
 @dataclass(frozen=True)
@@ -122,11 +125,15 @@ def sensitivities(system: System, onset: Onset) -> Generator[Step, None, Moves]:
         return Moves((), (*missing, *((name, why) for name in course.others)))
     bits = FIRST_BITS + BITS_PER_DOUBLING * _period(onset).bit_length()
     reason = ""
-    for _ in range(ATTEMPTS):
+    borders = _borders(course, onset)
+    if not borders:
+        reason = "the cycle's point lies on no switching surface"
+    for attempt in range(ATTEMPTS * len(borders)):
         try:
-            done = yield from _solved(course, onset, bits)
+            done = yield from _solved(course, onset, borders[attempt % len(borders)], bits)
         except _Unsolved as error:
-            reason, bits = str(error), 2 * bits
+            reason = str(error)
+            bits *= 2 if attempt % len(borders) == len(borders) - 1 else 1
             continue
         except SwitchingTouched as error:
             reason = error.message
@@ -139,11 +146,19 @@ def _refusal(system: System, onset: Onset) -> str:
     if onset.status in (Status.READ_BY_EYE, Status.MEASURED):
         return f"the onset is {onset.status.value}: only a refined onset has derivatives"
     one_state = len(system.states) == 1
-    if onset.kind not in (*REGULAR, Kind.NEIMARK_SACKER, *(CROSSINGS if one_state else ())):
+    if onset.kind not in (*REGULAR, *(CROSSINGS if one_state else ())):
         return f"no equations are set up that define the {onset.kind.value}"
     if dict(onset.states).keys() != set(system.state_names) or _period(onset) < 1:
         return "no point of the cycle is known"
     return ""
+
+
+def _borders(course: Course, onset: Onset) -> tuple[Border | None, ...]:
+    """Both sides of the surface that a border collision touches; for all other kinds one that is None."""
+    if onset.kind is not Kind.BORDER_COLLISION:
+        return (None,)
+    point = {name: Fraction(text) for name, text in onset.states}
+    return borders_at(course, point, onset.value_fraction)
 
 
 def _period(onset: Onset) -> int:
@@ -155,7 +170,7 @@ def _differentiable(course: Course) -> Course:
 
     def fits(name: str) -> bool:
         try:
-            for formula in course.system.expressions:
+            for formula in course.formulas:
                 derivative(formula, name)
         except FormulaError:
             return False
@@ -188,12 +203,12 @@ def derivative_text(value: Fraction) -> str:
     return fixed_text(rounded(value, places), places)
 
 
-def _solved(course: Course, onset: Onset, bits: int) -> Generator[Step, None, _Pass]:
+def _solved(course: Course, onset: Onset, border: Border | None, bits: int) -> Generator[Step, None, _Pass]:
     """Newton's method until two passes in a row give the same derivatives."""
     point = dict(onset.states)
     with precision(bits):
         x = [ball_of(Fraction(point[name])).mid() for name in course.states]
-        place = _Place(x, ball_of(onset.value_fraction).mid(), None)
+        place = _Place(x, ball_of(onset.value_fraction).mid(), border=border)
         sizes = [max(abs(float(_value_of(course, name))), 1e-3) for name in course.others]
     before: _Pass | None = None
     for _ in range(MOST_PASSES):
@@ -205,7 +220,7 @@ def _solved(course: Course, onset: Onset, bits: int) -> Generator[Step, None, _P
             states = len(place.x)
             moved = [(value + shift).mid() for value, shift in zip(place.x, now.shift[:states], strict=True)]
             angle = None if place.angle is None else (place.angle + now.shift[states + 1]).mid()
-            place = _Place(moved, (place.r + now.shift[states]).mid(), angle)
+            place = replace(place, x=moved, r=(place.r + now.shift[states]).mid(), angle=angle)
             if before is not None and _agree(before, now):
                 if not _inside(onset, fraction_of(place.r)):
                     raise _Unsolved("Newton's method went to another onset")
@@ -248,6 +263,8 @@ def _one_pass(
     period = _period(onset)
     if onset.kind in CROSSINGS:
         return place, (yield from _crossing_pass(course, place, period, bits))
+    if place.border is not None:
+        return place, (yield from _border_pass(course, place, place.border, period, bits))
     if onset.kind is Kind.NEIMARK_SACKER:
         return (yield from _rotating_pass(course, place, period, bits))
     target = -1 if onset.kind is Kind.FLIP else 1
@@ -316,6 +333,17 @@ def _crossing_pass(course: Course, place: _Place, period: int, bits: int) -> Gen
         done = _pass(rows, misses, 2, 1)
         pushes = [abs(float(value)) for value in passed.first[0][2:]]
         return replace(done, unsound=frozenset(i for i, push in enumerate(pushes) if push > KEEPS_CROSSING))
+
+
+def _border_pass(
+    course: Course, place: _Place, border: Border, period: int, bits: int
+) -> Generator[Step, None, _Pass]:
+    """Border collision: unknowns x and r, equations f^p(x) - x and the surface's formula."""
+    n = len(course.states)
+    passed, slopes, height = yield from border_pass(course, border, place.x, place.r, period, bits)
+    with precision(bits):
+        misses = [end - start for end, start in zip(passed.end, place.x, strict=True)]
+        return _pass([*_closing(passed, n), slopes], [*misses, height], n + 1, n)
 
 
 def _closing(passed: Passed, n: int) -> list[list[Any]]:

@@ -15,6 +15,7 @@ from __future__ import annotations
 import re
 from collections.abc import Generator
 from dataclasses import dataclass
+from fractions import Fraction
 from functools import lru_cache
 from typing import Any
 
@@ -43,11 +44,19 @@ class Course:
     ----------
     states, swept, others
         Names; together, in this order, the directions.
+    formulas
+        Next state of each, in all names.
     """
 
     system: System
     swept: str
     others: tuple[str, ...]
+    formulas: tuple[Expr, ...]
+
+    @property
+    def fixed(self) -> dict[str, Fraction]:
+        """Exact value of every parameter but the swept one."""
+        return {p.name: p.value.fraction for p in self.system.parameters if p.name != self.swept}
 
     @property
     def states(self) -> tuple[str, ...]:
@@ -63,7 +72,8 @@ class Course:
 def course_of(system: System, parameter: str) -> Course:
     """The course of a system along a parameter, all others asked for."""
     swept = system.parameter(parameter).name
-    return Course(system, swept, tuple(name for name in system.parameter_names if name != swept))
+    others = tuple(name for name in system.parameter_names if name != swept)
+    return Course(system, swept, others, system.expressions)
 
 
 @dataclass(frozen=True)
@@ -93,6 +103,7 @@ def run_pass(
     r: Any,
     n: int,
     bits: int,
+    first: Course | None = None,
 ) -> Generator[Step, None, Passed]:
     """Carry a point and all derivatives n steps on.
 
@@ -102,6 +113,8 @@ def run_pass(
         `CRITICAL` or `SWEPT` for each direction to carry along.
     vectors
         Where each of them starts, per state.
+    first
+        What holds for the first step instead, where the point lies on a switching surface.
     """
     states, size = len(course.states), len(course.directions)
     loop = _loop(course, carried)
@@ -112,16 +125,21 @@ def run_pass(
         for vector in vectors:
             state += [*vector, *([zero] * (states * size))]
     text = f"working out how the onset of period {n} moves with the other parameters"
-    ended = yield from in_chunks(lambda now, count: loop(r, count, *now), tuple(state), n, bits, text)
+    ended = tuple(state)
+    if first is not None:
+        with precision(bits):
+            ended = _loop(first, carried)(r, 1, *ended)
+        n -= 1
+    ended = yield from in_chunks(lambda now, count: loop(r, count, *now), ended, n, bits, text)
     with precision(bits):
         values = [value.mid() for value in ended]
     end, values = values[:states], values[states:]
-    first, values = _rows(values, states, size)
+    slopes, values = _rows(values, states, size)
     second = []
     for _ in vectors:
         rows, values = _rows(values[states:], states, size)
         second.append(rows)
-    return Passed(end, first, second)
+    return Passed(end, slopes, second)
 
 
 def _rows(values: list[Any], count: int, size: int) -> tuple[list[list[Any]], list[Any]]:
@@ -134,10 +152,10 @@ def _derivatives(course: Course, order: int) -> dict[tuple[int, ...], Expr]:
 
     Differentiated before they are put in: an exponent that is a parameter has a derivative too.
     """
-    values = {p.name: p.value.fraction for p in course.system.parameters if p.name != course.swept}
+    values = course.fixed
     found: dict[tuple[int, ...], Expr] = {}
     size, swept = len(course.directions), len(course.states)
-    for i, formula in enumerate(course.system.expressions):
+    for i, formula in enumerate(course.formulas):
         found[(i,)] = put_in(formula, values)
         for j, name in enumerate(course.directions):
             slope = derivative(formula, name)
