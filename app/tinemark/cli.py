@@ -25,6 +25,7 @@ DEFECT, STOPPED, PIPE_CLOSED = 70, 128 + signal.SIGINT, 141
 MAX_LEVELS = 40
 MAX_DIGITS = 150
 MAX_BASE_PERIOD = 4096
+MAX_PERIOD = 64
 MIN_SIDE, MAX_SIDE, MAX_PIXELS = 16, 20_000, 100_000_000
 
 _NEGATIVE = re.compile(r"-(?:\d|\.\d|inf|nan)", re.IGNORECASE)
@@ -190,6 +191,10 @@ def _add_output(parser: argparse.ArgumentParser) -> None:
     )
 
 
+def _add_kinds(parser: argparse.ArgumentParser, what: str) -> None:
+    parser.add_argument("--kinds", metavar="KINDS", help=f"{what}, such as flip,fold (default: all)")
+
+
 def _ladder_parser() -> argparse.ArgumentParser:
     parser = _parser("ladder", "Follow a cascade of period doublings level by level.")
     parser.add_argument("--parameter", metavar="P", help="swept parameter (default: the diagram's)")
@@ -203,6 +208,12 @@ def _ladder_parser() -> argparse.ArgumentParser:
         "--base-period", default="1", metavar="N", help="period that splits first (default 1)"
     )
     parser.add_argument("--levels", default="8", metavar="N", help="how many onsets (default 8)")
+    parser.add_argument(
+        "--kinds",
+        metavar="KINDS",
+        help="kinds listed, such as flip,fold: flip is a must, and with others the onset at which the "
+        "first cycle appears comes before the levels (default flip)",
+    )
     _add_output(parser)
     return parser
 
@@ -213,6 +224,19 @@ def _refine_parser() -> argparse.ArgumentParser:
     parser.add_argument(
         "--window", required=True, metavar="WIDTH", help="width of the parameter range searched"
     )
+    _add_kinds(parser, "kinds of onsets to look for")
+    _add_output(parser)
+    return parser
+
+
+def _onsets_parser() -> argparse.ArgumentParser:
+    parser = _parser("onsets", "List every onset of a range, and say what may be missing.")
+    parser.add_argument("--range", nargs=2, required=True, metavar=("A", "B"), help="ends of the range")
+    parser.add_argument(
+        "--max-period", required=True, metavar="P", help="longest period of the cycles looked at"
+    )
+    parser.add_argument("--parameter", metavar="NAME", help="swept parameter (default: the diagram's)")
+    _add_kinds(parser, "kinds of onsets to list")
     _add_output(parser)
     return parser
 
@@ -255,6 +279,7 @@ def _ladder(given: argparse.Namespace) -> None:
             levels=_whole(given.levels, "--levels", MAX_LEVELS),
             digits=_whole(given.digits, "--digits", MAX_DIGITS),
             json=given.json,
+            kinds=given.kinds,
         )
     )
 
@@ -281,6 +306,26 @@ def _refine(given: argparse.Namespace) -> None:
             window=window,
             digits=_whole(given.digits, "--digits", MAX_DIGITS),
             json=given.json,
+            kinds=given.kinds,
+        )
+    )
+
+
+def _onsets(given: argparse.Namespace) -> None:
+    """List every onset of a range."""
+    from tinemark.commands import surveys
+
+    start, stop = _range(given.range)
+    surveys.onsets(
+        surveys.SurveyOptions(
+            system=given.system,
+            parameter=given.parameter,
+            start=start,
+            stop=stop,
+            max_period=_whole(given.max_period, "--max-period", MAX_PERIOD),
+            digits=_whole(given.digits, "--digits", MAX_DIGITS),
+            kinds=given.kinds,
+            json=given.json,
         )
     )
 
@@ -289,9 +334,7 @@ def _picture(given: argparse.Namespace) -> None:
     """Write the diagram as a PNG."""
     from tinemark.commands import pictures
 
-    start, stop = (_number(text, "--range") for text in given.range)
-    if start.fraction == stop.fraction:
-        raise _UsageError("both ends are the same", where="--range", what_to_do="give two different ends")
+    start, stop = _range(given.range)
     output = Path(given.output)
     if output.suffix.lower() != ".png":
         raise _UsageError(
@@ -312,6 +355,13 @@ def _verify(given: argparse.Namespace) -> int:
     from tinemark.commands import proofs
 
     return DONE if proofs.verify(Path(given.file)) else NO_ANSWER
+
+
+def _range(texts: Sequence[str]) -> tuple[Exact, Exact]:
+    start, stop = (_number(text, "--range") for text in texts)
+    if start.fraction == stop.fraction:
+        raise _UsageError("both ends are the same", where="--range", what_to_do="give two different ends")
+    return start, stop
 
 
 def _number(text: str, option: str) -> Exact:
@@ -351,6 +401,7 @@ COMMANDS: dict[
 ] = {
     "ladder": (_ladder_parser, _ladder),
     "refine": (_refine_parser, _refine),
+    "onsets": (_onsets_parser, _onsets),
     "picture": (_picture_parser, _picture),
     "inspect": (_inspect_parser, _inspect),
     "verify": (_verify_parser, _verify),

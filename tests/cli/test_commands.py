@@ -269,7 +269,7 @@ def test_help_and_version(tinemark) -> None:
     assert tinemark("--version").out == f"tinemark {__version__}\n"
     ended = tinemark("--help")
     assert ended.code == 0
-    for command in ("ladder", "refine", "picture", "inspect"):
+    for command in ("ladder", "refine", "onsets", "picture", "inspect"):
         assert command in ended.out
         assert tinemark(command, "--help").code == 0
 

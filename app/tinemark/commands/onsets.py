@@ -6,6 +6,7 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
+from tinemark.commands.kinds import kinds_of
 from tinemark.commands.output import check_json, print_onsets
 from tinemark.commands.progress import Progress, run_steps, say
 from tinemark.systems.errors import NoOnsetFound, TinemarkError
@@ -13,7 +14,7 @@ from tinemark.systems.exact import Exact
 
 if TYPE_CHECKING:
     from tinemark.document.onsets_file import Found
-    from tinemark.onsets.results import LadderLevel, LadderRequest, Step
+    from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, Step
     from tinemark.onsets.scaling import Scaling
     from tinemark.systems.system import System
 
@@ -30,6 +31,7 @@ class LadderOptions:
     levels: int
     digits: int
     json: str | None
+    kinds: str | None = None
 
 
 @dataclass(frozen=True)
@@ -42,6 +44,7 @@ class RefineOptions:
     window: Exact
     digits: int
     json: str | None
+    kinds: str | None = None
 
 
 def ladder(options: LadderOptions) -> None:
@@ -54,9 +57,16 @@ def ladder(options: LadderOptions) -> None:
     TinemarkError
         Bad input.
     """
-    from tinemark.onsets.results import LadderRequest
+    from tinemark.onsets.results import Kind, LadderRequest
     from tinemark.systems.library import find_system
 
+    kinds = kinds_of(options.kinds)
+    if kinds is not None and Kind.FLIP not in kinds:
+        raise TinemarkError(
+            "a ladder is made of flips, and these kinds leave them out",
+            where="--kinds",
+            what_to_do="add flip; other kinds are listed by: tinemark onsets",
+        )
     check_json(options.json)
     system = find_system(options.system)
     parameter = options.parameter or system.diagram_parameter
@@ -73,9 +83,28 @@ def ladder(options: LadderOptions) -> None:
         found, scaled, message = _downwards(request, error)
     if not found:
         raise NoOnsetFound(message or "no cascade was found there", where=options.system)
+    if kinds is not None and kinds != {Kind.FLIP}:
+        found = _opened(request, found, kinds)
     print_onsets(options.system, parameter, found, scaled, options.json, system)
     if message:
         say(message)
+
+
+def _opened(request: LadderRequest, found: list[Found], kinds: frozenset[Kind]) -> list[Found]:
+    """The levels, and before them the onset at which the cycle that splits first appears."""
+    from tinemark.onsets import engine
+
+    progress = Progress()
+    try:
+        opening = run_steps(
+            engine.opening(request, found[0][1], kinds), lambda item: progress.step(item.text)
+        )
+    finally:
+        progress.clear()
+    if opening is None:
+        say("the cycle that splits first appears in no onset of these kinds within reach")
+        return found
+    return [(None, opening), *found]
 
 
 def _sweep(
@@ -174,6 +203,7 @@ def refine(options: RefineOptions) -> None:
     from tinemark.onsets.results import RefineRequest
     from tinemark.systems.library import find_system
 
+    kinds = kinds_of(options.kinds)
     check_json(options.json)
     system = find_system(options.system)
     near, width = options.near.fraction, options.window.fraction
@@ -182,7 +212,9 @@ def refine(options: RefineOptions) -> None:
         # On screen a click has a height too: that of a diagram of this window.
         observed = options.observed.fraction
         height = first_view(swept_over(system, near - width / 2, near + width / 2)).height
-    request = RefineRequest(system, system.diagram_parameter, near, width, observed, height, options.digits)
+    request = RefineRequest(
+        system, system.diagram_parameter, near, width, observed, height, options.digits, kinds
+    )
     progress = Progress()
     try:
         result = run_steps(engine.refine(request), lambda item: progress.step(item.text))

@@ -113,6 +113,23 @@ class OneFamily:
         return Place(points, float(r), (complex(a),), moves[:, None] / length, move_r / length)
 
 
+def stretch_family(cycles: FloatMap, widest: float, x: float, r: float, period: int) -> OneFamily:
+    """The cycles around one of them, lengths measured by the stretch on which it is stable.
+
+    In a window a millionth wide a fold would else be too sharp a turn for doubles.
+    """
+    u, v, w, z = cycles.slopes(x, r, period)
+    rate = abs(z + w * v / (1 - u)) if u != 1 else 0.0
+    width = min(widest, 2 / rate) if rate > 0 else widest
+    width = max(width, 1e-12 * max(abs(r), 1e-3))
+    wide = OneFamily(cycles, cycles.scale, width)
+    place = wide.corrected(cycles.points(x, r, period)[:, None], r)
+    if place is None or place.move_r == 0:
+        return wide
+    moved = float(np.sqrt(np.mean(place.moves**2))) / abs(place.move_r) * width
+    return OneFamily(cycles, min(cycles.scale, max(moved, 1e-7 * cycles.scale)), width)
+
+
 class ManyFamily:
     """Cycles of a map of several states, by the solvers of `many_cycles`."""
 

@@ -12,6 +12,7 @@ from dataclasses import replace
 from tinemark.onsets.results import (
     BranchRequest,
     BranchResult,
+    Kind,
     LadderLevel,
     LadderRequest,
     LadderResult,
@@ -111,6 +112,28 @@ def _with_sensitivities(
             onset = yield from with_sensitivities(request.system, item.onset, longest=LONGEST_UNASKED)
             item = filled[item.level] = replace(item, onset=onset)
         yield item
+
+
+def opening(
+    request: LadderRequest, first: Onset, kinds: frozenset[Kind]
+) -> Generator[Step, None, Onset | None]:
+    """The onset, of some kinds, at which the cycle that splits first in a ladder appears.
+
+    Yields
+    ------
+    Step
+        At safe points.
+
+    Returns
+    -------
+    Onset or None
+        As the generator's value; None where there is none in reach.
+    """
+    from tinemark.onsets.opening import opening_of
+    from tinemark.onsets.sensitivities import with_sensitivities
+
+    onset = yield from opening_of(request, first, kinds)
+    return None if onset is None else (yield from with_sensitivities(request.system, onset))
 
 
 def survey(request: SurveyRequest) -> Generator[Step | SurveyFind, None, SurveyResult]:

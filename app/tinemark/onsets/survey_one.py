@@ -13,12 +13,10 @@ from collections.abc import Generator
 from dataclasses import dataclass, field
 from fractions import Fraction
 
-import numpy as np
-
 from tinemark.onsets.branch_seeds import settled_one
 from tinemark.onsets.branch_survey import Branch, kind_of, lies_on, stretch
 from tinemark.onsets.continuation import Passed, Place, Screen
-from tinemark.onsets.cycle_families import OneFamily
+from tinemark.onsets.cycle_families import OneFamily, stretch_family
 from tinemark.onsets.float_map import FloatMap, float_map
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Lost, Rough
@@ -114,7 +112,7 @@ def _wandered(cycles: FloatMap) -> tuple[Fraction, Fraction]:
 def _from_superstable(
     cycles: FloatMap, screen: Screen, superstable: Superstable, found: _Found
 ) -> Generator[Step, None, None]:
-    family = _family(cycles, screen, superstable.x, superstable.r, superstable.period)
+    family = stretch_family(cycles, screen.width, superstable.x, superstable.r, superstable.period)
     points = cycles.points(superstable.x, superstable.r, superstable.period)
     place = family.corrected(points[:, None], superstable.r)
     if place is None:
@@ -123,23 +121,6 @@ def _from_superstable(
         return
     branch = yield from stretch(family, screen, place)
     _take(cycles, family, branch, found)
-
-
-def _family(cycles: FloatMap, screen: Screen, x: float, r: float, period: int) -> OneFamily:
-    """The cycles around one of them, lengths measured by the stretch on which it is stable.
-
-    In a window a millionth wide a fold would else be too sharp a turn for doubles.
-    """
-    u, v, w, z = cycles.slopes(x, r, period)
-    rate = abs(z + w * v / (1 - u)) if u != 1 else 0.0
-    width = min(screen.width, 2 / rate) if rate > 0 else screen.width
-    width = max(width, 1e-12 * max(abs(r), 1e-3))
-    wide = OneFamily(cycles, cycles.scale, width)
-    place = wide.corrected(cycles.points(x, r, period)[:, None], r)
-    if place is None or place.move_r == 0:
-        return wide
-    moved = float(np.sqrt(np.mean(place.moves**2))) / abs(place.move_r) * width
-    return OneFamily(cycles, min(cycles.scale, max(moved, 1e-7 * cycles.scale)), width)
 
 
 def _scan(cycles: FloatMap, screen: Screen, most: int, found: _Found) -> Generator[Step, None, int]:
@@ -160,7 +141,7 @@ def _scan(cycles: FloatMap, screen: Screen, most: int, found: _Found) -> Generat
     for r, place in seeds:
         if place.period > most or any(lies_on(family, branch, place) for branch in found.stretches):
             continue
-        near = _family(cycles, screen, float(place.points[0, 0]), r, place.period)
+        near = stretch_family(cycles, screen.width, float(place.points[0, 0]), r, place.period)
         start = near.corrected(place.points, r)
         if start is None:
             continue
