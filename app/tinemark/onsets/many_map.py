@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tinemark.onsets.one_map import put_in
-from tinemark.systems.expression import Call, Expr, Name
+from tinemark.systems.expression import ZERO, Call, Expr, Name
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
 
@@ -193,20 +193,26 @@ def ball_evaluators(many: ManyMap) -> BallEvaluators:
     # A space cannot stand in a name, so these never meet a name of the system.
     vector = tuple(f"critical {place}" for place in range(many.size))
     jacobian = [[derivative(formula, state) for state in many.states] for formula in many.formulas]
-    directed = [_combination(row, vector) for row in jacobian]
+    places = range(many.size)
     entries: list[Expr] = [*many.formulas]
     entries += [entry for row in jacobian for entry in row]
     entries += [derivative(formula, many.parameter) for formula in many.formulas]
-    entries += [derivative(expr, state) for expr in directed for state in many.states]
-    entries += [derivative(expr, many.parameter) for expr in directed]
+    for row in jacobian:
+        for k in places:
+            # Mixed derivatives in the order of the states, whichever comes first: each is worked out once.
+            second = [derivative(row[min(j, k)], many.states[max(j, k)]) for j in places]
+            entries.append(_combination(second, vector))
+    for row in jacobian:
+        entries.append(_combination([derivative(entry, many.parameter) for entry in row], vector))
     return BallEvaluators(
         ball_function(many.formulas, many.names), ball_function(tuple(entries), (*many.names, *vector))
     )
 
 
 def _combination(row: Sequence[Expr], vector: Sequence[str]) -> Expr:
-    terms: list[Expr] = [Call("mul", (entry, Name(name))) for entry, name in zip(row, vector, strict=True)]
-    total = terms[0]
-    for term in terms[1:]:
-        total = Call("add", (total, term))
+    total: Expr = ZERO
+    for entry, name in zip(row, vector, strict=True):
+        if entry != ZERO:
+            term = Call("mul", (entry, Name(name)))
+            total = term if total == ZERO else Call("add", (total, term))
     return total
