@@ -99,6 +99,9 @@ def settle_branch_point(
         raise Lost("no two branches meet there")
     if reach is not None and not abs(point.r - rough.r) < reach:
         raise Lost("Newton's method left the neighbourhood")
+    # A smaller value than thought needs more decimals.
+    places = max(places, decimal_places(max(abs(point.r), LEAST_SIZE), digits + GUARD_DIGITS))
+    bits = max(bits, first_bits(rough, max(places, digits)))
     scale = Fraction(float_map(one).scale)
     if abs(point.miss) > scale / 2 ** (bits // 2):
         raise Lost("the branches pass each other without meeting")
@@ -243,7 +246,7 @@ def _symmetry_words(one: OneMap, period: int, total: Expr, criticality: Critical
     if criticality is Criticality.SUPERCRITICAL:
         return f"{words} to a pair of cycles of the same period that are each other's mirror images"
     if criticality is Criticality.SUBCRITICAL:
-        return f"{words} with a jump: the pair of mirror images that meets it there is unstable"
+        return f"{words}, and the pair of mirror images that meets it there is unstable"
     return words
 
 

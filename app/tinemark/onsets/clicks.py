@@ -14,6 +14,7 @@ from fractions import Fraction
 
 from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import float_map
+from tinemark.onsets.jumps import jump_of
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.onset_words import consequence_sentence, describe, short_number
 from tinemark.onsets.polish import Lost, Rough
@@ -98,6 +99,7 @@ def _prove_nearest(one: OneMap, search: Search) -> Generator[Step, None, RefineR
     request = search.request
     reach = request.width / 100
     found: list[tuple[Candidate, Onset]] = []
+    bounds: list[Onset] = []
     limit = math.inf
     wanted = [c for c in search.ranked() if request.kinds is None or c.crossing.kind in request.kinds]
     for candidate in wanted[:8]:
@@ -124,11 +126,22 @@ def _prove_nearest(one: OneMap, search: Search) -> Generator[Step, None, RefineR
             continue
         if any(onset.kind is other.kind and _overlap(onset, other) for _, other in found):
             continue
+        jump = yield from jump_of(one, settled, _digits(request), request.width)
+        onset = jump.onset
+        if jump.fold is not None and (request.kinds is None or Kind.FOLD in request.kinds):
+            bounds.append(jump.fold)
         found.append((candidate, onset))
         limit = found[0][0].rank + CLOSE
     if not found:
         return None
-    return RefineResult(tuple(onset for _, onset in found), _message(found, request))
+    onsets = [onset for _, onset in found]
+    # The fold that bounds a hysteresis is part of the answer, wherever it lies.
+    onsets += [
+        bound
+        for bound in bounds[:1]
+        if not any(onset.kind is bound.kind and _overlap(onset, bound) for onset in onsets)
+    ]
+    return RefineResult(tuple(onsets), _message(found, request))
 
 
 def _digits(request: RefineRequest) -> int:

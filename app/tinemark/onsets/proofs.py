@@ -127,7 +127,9 @@ def box_around(x: Any, r: Any, correction: Correction, inverse: Inverse, bits: i
     """A box four times the correction, so that the test has room, and never empty."""
     with precision(bits):
         floor = arb(2) ** (16 - bits)
-        least_x, least_r = inverse.times(floor, floor)
+        # Of absolute values: entries that cancel must not leave a side without a width.
+        least_x = (abs(inverse.xx) + abs(inverse.xr)) * floor
+        least_r = (abs(inverse.rx) + abs(inverse.rr)) * floor
         half_x = 4 * correction.x.abs_upper() + least_x.abs_upper()
         half_r = 4 * correction.r.abs_upper() + least_r.abs_upper()
         return Box(x, r, half_x.abs_upper(), half_r.abs_upper())
