@@ -100,9 +100,11 @@ def operating_point(session: Session) -> OperatingPoint:
     return OperatingPoint(system_of(session).parameter(session.parameter).value.fraction)
 
 
-def margin_to(onset: Onset, system: System, point: OperatingPoint, row_id: str = "") -> Margin:
-    """The margin from an operating point to one onset of a system."""
-    budget = budget_of(onset, system)
+def margin_to(
+    onset: Onset, system: System, point: OperatingPoint, row_id: str = "", budget: Budget | None = None
+) -> Margin:
+    """The margin from an operating point to one onset of a system; its budget, where it is known already."""
+    budget = budget or budget_of(onset, system)
     swept = system.parameter(onset.parameter)
     setting = None if swept.tolerance is None else swept.tolerance.fraction
     standard = None

@@ -74,7 +74,7 @@ def tolerances_of(session: Session) -> Tolerances:
             budgets[row.id] = budget_of(row.onset, system)
     point, present = operating_point(session), system_of(session)
     here = rows_here(session)
-    margins = {row.id: margin_to(row.onset, present, point, row.id) for row in here}
+    margins = {row.id: margin_to(row.onset, present, point, row.id, budgets[row.id]) for row in here}
     nearest = nearest_row(here, point)
     return Tolerances(budgets, margins, margins[nearest.id] if nearest else None)
 

@@ -23,6 +23,7 @@ class ToleranceWork(QObject):
         self._panel = window.tolerance_panel
         self._panel.system_wanted.connect(lambda: window.panels.set_open("system", True))
         window.lower.shown.connect(self._came_up)
+        self._shown: tuple[object, ...] = ()
 
     def _came_up(self, _name: str) -> None:
         self.show()
@@ -38,6 +39,11 @@ class ToleranceWork(QObject):
         if self._window.lower.current != "tolerances":
             return
         session, row = self._keeper.session, self._window.rows.selected_row
+        # A session changes with every step of a pan, its margins do not.
+        now = (session.ledger, session.system_text, session.parameter, session.probe, row)
+        if now == self._shown:
+            return
+        self._shown = now
         system = None if row is None else system_of_row(session, row.id)
         budget = None if row is None or system is None else budget_of(row.onset, system)
         margin = None
