@@ -13,7 +13,7 @@ from tinemark.onsets.ball_orbits import LONGEST_EXPONENT, fraction_of
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.polish import Rough, settle_onset
 from tinemark.onsets.results import Kind, Onset, Status
-from tinemark.systems.errors import SystemFileError, Unbounded
+from tinemark.systems.errors import NoOnsetFound, SystemFileError, Unbounded
 from tinemark.systems.system import System
 
 
@@ -102,6 +102,12 @@ def test_estimate_covers_the_rounding_of_doubles() -> None:
     onset = click(own_map(f"max({hump}, {hump} - (x - 2/3)**3)", low="0"), "3.001", "0.1").onsets[0]
     assert onset.status is Status.ESTIMATED
     assert Fraction(onset.lower) <= 3 <= Fraction(onset.upper)
+
+
+def test_click_on_a_corner_is_answered_in_words() -> None:
+    """At r = 1 the branches of r*x - x*|x| meet on the formula's switching surface."""
+    with pytest.raises(NoOnsetFound):
+        click(own_map("r*x - abs(x)*x"), "1.003", "0.1")
 
 
 def test_distances_in_the_evidence_are_lower_bounds() -> None:

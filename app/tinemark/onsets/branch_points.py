@@ -26,6 +26,7 @@ from tinemark.onsets.branches import (
 )
 from tinemark.onsets.float_map import CycleStep
 from tinemark.onsets.results import Kind, Step
+from tinemark.systems.errors import SwitchingTouched
 
 CLOSENESS = (0.7, 0.9, 0.98)
 """Multipliers at which the branch is left for the point ahead of it, one after the other."""
@@ -252,7 +253,10 @@ class BranchPoint:
 def polished_branch_point(
     loops: BallLoops, x: Fraction, r: Fraction, period: int, bits: int
 ) -> Generator[Step, None, BranchPoint | None]:
-    """Newton's method for the gradient's zero, in high precision; None where it does not converge."""
+    """Newton's method for the gradient's zero, in high precision.
+
+    None where it does not converge, or the formula switches on the way.
+    """
     with precision(bits):
         here_x, here_r = ball_of(x).mid(), ball_of(r).mid()
         step = arb(2) ** (-bits // 3) * (abs(here_r) + arb(2) ** -20)
@@ -266,7 +270,10 @@ def polished_branch_point(
                 start = (here_x, one, zero, zero, zero)
                 at = (here_r + shift * step).mid()
             advance = partial(_advance, loops, at)
-            state = yield from in_chunks(advance, start, period, bits, "solving for where branches meet")
+            try:
+                state = yield from in_chunks(advance, start, period, bits, "solving for where branches meet")
+            except SwitchingTouched:
+                return None
             sides.append(state)
         with precision(bits):
             end, u, v, w, z = (value.mid() for value in sides[0])
