@@ -47,43 +47,33 @@ def find(
 
 def _other_period_or_kind(one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction) -> None:
     most = max(paper.period, min(FURTHER * paper.period, MOST_STEPS))
-    _, _, points = middle_orbit(one, x, numbers.value, most, bits)
-    start = points[0]
+    points, along = middle_orbit(one, x, numbers.value, most, bits)
     scale = max(abs(x), Fraction(1, 10**6)) * CLOSE
-    for steps, point in enumerate(points[1:], 1):
-        low, high = iv.ends(iv.sub(point, start, bits))
-        if max(abs(low), abs(high)) > scale:
-            continue
-        if steps < paper.period and paper.period % steps == 0:
-            # Near a deep flip the orbit of half the period is close as well: the slope tells.
-            slope = _slope(one, x, numbers.value, steps, bits)
-            if abs(slope - TARGETS[paper.kind]) < Fraction(1, 100):
-                raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {paper.period}")
-            continue
-        slope = _slope(one, x, numbers.value, steps, bits)
-        if steps == paper.period:
-            for kind, target in TARGETS.items():
-                if kind != paper.kind and abs(slope - target) < Fraction(1, 100) and abs(slope) < 2:
-                    _double_or_kind(one, paper, numbers, bits, x, kind)
-            return
-        if steps > paper.period and abs(slope - TARGETS[paper.kind]) < Fraction(1, 100):
-            raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {paper.period}")
 
+    def closes(steps: int) -> bool:
+        return max(abs(end) for end in iv.ends(iv.sub(points[steps], points[0], bits))) <= scale
 
-def _double_or_kind(
-    one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction, kind: str
-) -> NoReturn:
-    """A slope of +1 where -1 is claimed is a fold, or a flip seen over twice its period."""
-    half = paper.period // 2
-    if kind == "fold" and paper.period % 2 == 0:
-        slope = _slope(one, x, numbers.value, half, bits)
-        if abs(slope + 1) < Fraction(1, 100):
-            raise Refused(Part.PERIOD, f"the cycle there has period {half}, not {paper.period}")
-    raise Refused(Part.KIND, f"the onset there is a {kind}, not a {paper.kind}")
+    def slope_is(steps: int, target: int) -> bool:
+        return abs(iv.ends(along[steps])[0] - target) < Fraction(1, 100)
 
-
-def _slope(one: OneState, x: Fraction, r: Fraction, steps: int, bits: int) -> Fraction:
-    return iv.ends(middle_orbit(one, x, r, steps, bits)[1])[0]
+    period, target = paper.period, TARGETS[paper.kind]
+    for steps in range(1, period):
+        # Near a deep flip the orbit of half the period is close as well: the slope tells.
+        if period % steps == 0 and closes(steps) and slope_is(steps, target):
+            raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {period}")
+    if closes(period):
+        for kind, other in TARGETS.items():
+            if kind == paper.kind or not slope_is(period, other):
+                continue
+            half = period // 2
+            if kind == "fold" and period % 2 == 0 and closes(half) and slope_is(half, -1):
+                # A flip, seen over twice its period, has the slope of a fold.
+                raise Refused(Part.PERIOD, f"the cycle there has period {half}, not {period}")
+            raise Refused(Part.KIND, f"the onset there is a {kind}, not a {paper.kind}")
+        return
+    for steps in range(period + 1, most + 1):
+        if closes(steps) and slope_is(steps, target):
+            raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {period}")
 
 
 def _solved(one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction) -> Fraction | None:

@@ -7,10 +7,11 @@ import json
 import math
 from collections.abc import Iterable, Iterator
 
-from tinemark.verify import blame, one_state
+from tinemark.verify import blame, many_states, one_state
 from tinemark.verify.claims import Claim, NotCheckable, Outcome, Paper, Part, Refused, Undecided, Verdict
 from tinemark.verify.cycles import OneState
 from tinemark.verify.decimals import last_unit, rational
+from tinemark.verify.many_cycles import ManyStates
 from tinemark.verify.one_state import Numbers
 from tinemark.verify.system import Plain, programs, read
 
@@ -43,7 +44,7 @@ def check(claim: Claim) -> Verdict:
     except NotCheckable as error:
         return Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
     except Undecided as error:
-        return Verdict(Outcome.REFUSED, Part.BOX, error.reason)
+        return Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
     except (RecursionError, MemoryError, OverflowError):
         return Verdict(
             Outcome.NOT_CHECKABLE, Part.NOTHING, "the certificate is beyond what can be worked with"
@@ -85,16 +86,19 @@ def _check(claim: Claim) -> None:
             f"proofs of the kind {paper.kind[:40]} are not checked by the second implementation"
         )
     formulas = programs(plain, paper.parameter)
-    if len(plain.states) > 1:
-        raise NotCheckable(
-            "proofs of maps of several states are not checked by the second implementation yet"
-        )
     if paper.period > LONGEST_PERIOD:
         raise NotCheckable(f"the cycle has more than {LONGEST_PERIOD} points")
     bits = _bits(numbers, paper.period)
     effort = sum(len(program.steps) for program in formulas) * paper.period * (1 + bits / 256) ** 2
     if bits > MOST_BITS or effort > MOST_EFFORT:
         raise NotCheckable("the check would take too long")
+    if len(plain.states) > 1:
+        if effort * (len(plain.states) + 1) ** 3 > MOST_EFFORT:
+            raise NotCheckable("the check would take too long")
+        many = ManyStates(formulas, plain.states, paper.parameter)
+        many_states.prove(many, paper, numbers, bits, claim.states)
+        _same_digest(claim, paper)
+        return
     one = OneState(formulas[0], plain.states[0], paper.parameter)
     printed = dict(claim.states).get(one.state)
     try:

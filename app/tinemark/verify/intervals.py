@@ -230,3 +230,9 @@ def _within_one(x: Interval) -> Interval:
     low = libmp.fnone if libmp.mpf_lt(x[0], libmp.fnone) else x[0]
     high = libmp.fone if libmp.mpf_gt(x[1], libmp.fone) else x[1]
     return low, high
+
+
+def of_whole(value: int) -> Interval:
+    """A whole number, exactly."""
+    exact = libmp.from_int(value)
+    return exact, exact

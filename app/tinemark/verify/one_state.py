@@ -20,8 +20,8 @@ from tinemark.verify.newton import Side, image, inside
 ATTEMPTS = 4
 VALUE_UNITS = Fraction(3, 5)
 """How far, in units of its last digit, a value may lie from the onset: half, and the enclosure's width."""
-STATE_UNITS = 50
-"""How far, in units of its last digit, a printed cycle point may lie from the cycle."""
+STATE_UNITS = 1
+"""How far, in units of its last digit, a printed cycle point may lie from the cycle: it is rounded."""
 TARGETS = {"flip": -1, "fold": 1}
 
 
