@@ -8,6 +8,7 @@ from fractions import Fraction
 import flint
 import pytest
 from flint import arb
+from mpmath import mp, mpf, workdps
 from running import finish, system_of
 from test_many_exact import assert_is, click, own_system
 
@@ -288,3 +289,29 @@ def test_the_box_holds_the_solution_at_higher_precision() -> None:
         for balls, exacts in zip(found.box.points, fine.points, strict=True):
             assert all(ball.contains(exact) for ball, exact in zip(balls, exacts, strict=True))
     assert flint.ctx.prec == 53
+
+
+def test_a_cycle_out_of_step_begins_to_rotate() -> None:
+    """The two patches' cycle of period 4, out of step: mpmath's secant method, determinant exactly 1."""
+
+    def patches(u: mpf, v: mpf, r: mpf) -> tuple[mpf, mpf]:
+        e = mpf(1) / 10
+        f, g = r * u * (1 - u), r * v * (1 - v)
+        return (1 - e) * f + e * g, (1 - e) * g + e * f
+
+    def residual(x: mpf, y: mpf, r: mpf) -> tuple[mpf, ...]:
+        e, u, v, matrix = mpf(1) / 10, x, y, mp.eye(2)
+        for _ in range(4):
+            a, b = r * (1 - 2 * u), r * (1 - 2 * v)
+            matrix = mp.matrix([[(1 - e) * a, e * b], [e * a, (1 - e) * b]]) * matrix
+            u, v = patches(u, v, r)
+        return u - x, v - y, mp.det(matrix) - 1
+
+    (onset,) = click(system_of("two_patch"), "3.7013", "0.01", digits=30)
+    assert (onset.kind, onset.period_before) == (Kind.NEIMARK_SACKER, 4)
+    assert onset.status is Status.PROVED
+    rough = dict(onset.states)
+    with workdps(40):
+        found = mp.findroot(residual, (mpf(rough["x"][:9]), mpf(rough["y"][:9]), mpf(onset.value[:8])))
+        text = mp.nstr(found[2], 36)
+    assert Fraction(onset.lower) <= Fraction(text) <= Fraction(onset.upper)

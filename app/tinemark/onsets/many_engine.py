@@ -363,7 +363,9 @@ def _message(
             "but no regular Neimark-Sacker onset could be solved for there"
         )
     if not sentences:
-        kinds = [kind.value for kind in (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER) if kind in wanted]
-        return f"no {' or '.join(kinds)} of the cycles around the click lies within reach"
+        kinds = [kind.value for kind in (Kind.FLIP, Kind.FOLD) if kind in wanted]
+        kinds += ["Neimark-Sacker onset"] * (Kind.NEIMARK_SACKER in wanted)
+        what = " or ".join(filter(None, [", ".join(kinds[:-1]), kinds[-1]]))
+        return f"no {what} of the cycles around the click lies within reach"
     text = "; ".join(sentences)
     return text[0].upper() + text[1:]
