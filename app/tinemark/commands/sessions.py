@@ -45,6 +45,7 @@ def without_display(path: Path | None) -> None:
     from tinemark.commands.pictures import draw
     from tinemark.document.ledger import ladder_title
     from tinemark.document.session import system_of
+    from tinemark.document.tolerance_tables import nearest_sentence, tolerances_of
 
     session = session_of(path)
     say("there is no display, so the job runs without the window")
@@ -55,6 +56,9 @@ def without_display(path: Path | None) -> None:
     for name, found, scaled in _groups(session):
         print(f"\n{ladder_title(session.ledger, name) if name else 'other onsets'}\n")
         print_onsets(system.title, session.parameter, found, scaled, None)
+    margin = nearest_sentence(tolerances_of(session))
+    if margin:
+        print(f"\nmargin: {margin}")
     output = _picture_place(path.stem if path is not None else "demo")
     draw(session, system, PICTURE_SIZE, output)
     print(f"\npicture: {output}")

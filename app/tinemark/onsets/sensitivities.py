@@ -135,7 +135,7 @@ def sensitivities(system: System, onset: Onset) -> Generator[Step, None, Moves]:
             reason = str(error)
             bits *= 2 if attempt % len(borders) == len(borders) - 1 else 1
             continue
-        except SwitchingTouched as error:
+        except (SwitchingTouched, FormulaError) as error:
             reason = error.message
             break
         return _moves(course, done, bits, missing)
@@ -368,7 +368,10 @@ def _bordered(matrix_of: Any, rows: list[list[Any]]) -> tuple[list[Any], list[An
         raise _Unsolved("the orbit left the domain of the formula")
     if matrix_of is arb_mat:
         rough = rough.real
-    left, _, right = np.linalg.svd(rough)
+    try:
+        left, _, right = np.linalg.svd(rough)
+    except np.linalg.LinAlgError as error:
+        raise _Unsolved("the critical multiplier is not a simple one") from error
     border, normal = left[:, -1], right[-1].conj()
     number = float if matrix_of is arb_mat else complex
     top = [[*row, number(b)] for row, b in zip(rows, border, strict=True)]
@@ -392,7 +395,10 @@ def _weighted(left: list[Any], rows: list[list[Any]]) -> list[Any]:
 
 
 def _critical_angle(first: list[list[Any]], n: int) -> float:
-    values = np.linalg.eigvals(np.array([[float(first[i][j]) for j in range(n)] for i in range(n)]))
+    matrix = np.array([[float(first[i][j]) for j in range(n)] for i in range(n)])
+    if not np.isfinite(matrix).all():
+        raise _Unsolved("the orbit left the domain of the formula")
+    values = np.linalg.eigvals(matrix)
     turning = [value for value in values if value.imag > 0]
     if not turning:
         raise _Unsolved("no pair of complex multipliers was found")
