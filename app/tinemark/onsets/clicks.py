@@ -12,6 +12,7 @@ import math
 from collections.abc import Generator
 from fractions import Fraction
 
+from tinemark.onsets.crises import crises_in_view, crossing_of
 from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.jumps import jump_of
@@ -70,8 +71,12 @@ def refine_one(request: RefineRequest) -> Generator[Step, None, RefineResult]:
 
 
 def _search(one: OneMap, request: RefineRequest) -> Generator[Step, None, Search]:
-    search = Search(request, float_map(one))
+    cycles = float_map(one)
+    search = Search(request, cycles)
     yield from run_sweep(search, NEAR)
+    for landing in crises_in_view(cycles, float(request.near), search.width):
+        search.add(crossing_of(landing))
+    yield Step("comparing the critical orbit with unstable cycles")
     if not search.done(0.03):
         yield from run_sweep(search, WIDE)
     if not search.done(0.03):

@@ -20,6 +20,7 @@ from tinemark.onsets.branches import (
     crossing_at,
     cycle_with_multiplier,
 )
+from tinemark.onsets.crises import crises_in_view, crossing_of
 from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
@@ -33,6 +34,8 @@ from tinemark.systems.errors import NoOnsetFound
 
 MOST_BITS = 1400
 LONGEST_PERIOD = 2**15
+CRISES_FROM = Fraction(1, 10**5)
+"""Narrowest coarse width, as a share of the parameter, at which crises are looked for."""
 COARSE_WIDTHS = (1e-1, 1e-3, 1e-5, 1e-7, 1e-9, 1e-11)
 """Widths, as shares of the parameter, at which doubles look around the click."""
 
@@ -70,6 +73,9 @@ def deep_crossings(
         yield from run_sweep(search, NEAR)
         if not search.done(0.03):
             yield from run_sweep(search, LONG if share < 1e-6 else WIDE)
+        if share >= CRISES_FROM:
+            for landing in crises_in_view(float_map(one), float(request.near), float(width)):
+                search.add(crossing_of(landing))
         coarse += [candidate.crossing for candidate in search.ranked()[:6]]
         yield Step(f"looking around the click, at width {float(width):.1g}")
     found: list[Crossing] = []

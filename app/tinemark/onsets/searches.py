@@ -13,14 +13,17 @@ import numpy as np
 from tinemark.onsets.border_search import border_crossings
 from tinemark.onsets.branch_points import meetings_of
 from tinemark.onsets.branches import Crossing, Cycle, CycleMap, crossings_from, find_cycle
-from tinemark.onsets.float_map import FloatMap
-from tinemark.onsets.results import RefineRequest, Step
+from tinemark.onsets.crises import band_offsets
+from tinemark.onsets.float_map import FloatMap, float_map
+from tinemark.onsets.results import Kind, RefineRequest, Step
 
 PIXEL = 1 / 1280
 """The share of a view that a pixel takes, for what can be seen in it."""
 ASPECT = 0.625
 """Height of a view over its width, as on a screen."""
 LANES = 16
+LINE = 12 * PIXEL
+"""What a crisis ranks behind a split at the same distance."""
 
 
 @dataclass(frozen=True)
@@ -84,6 +87,9 @@ class Search:
         # What is smaller than a few pixels was hardly aimed at: it ranks behind what can be seen.
         seen = crossing.extent / self.width / (3 * PIXEL)
         hidden = 20 * PIXEL * max(0.0, -math.log2(seen)) if seen > 0 else 1.0
+        if crossing.kind is Kind.CRISIS:
+            # A split is a point and was aimed at in two directions; a crisis is a line across the picture.
+            hidden += LINE
         candidate = Candidate(crossing, distance, distance + hidden, place, offset)
         for index, other in enumerate(self.candidates):
             same = other.crossing.kind is crossing.kind and other.crossing.period == crossing.period
@@ -98,6 +104,10 @@ class Search:
         request = self.request
         if request.observed is None or not request.height:
             return 0.0, 0
+        if crossing.kind is Kind.CRISIS:
+            # Nothing to aim at but the line itself: the bands fill at once.
+            bands = np.abs(band_offsets(float_map(self.cycles.one), crossing, request.observed))
+            return ASPECT * float(bands.min()) / float(request.height), 0
         points = self.cycles.points(crossing.x, crossing.r, crossing.period)
         gaps = np.abs(self.cycles.observed_offsets(points, crossing.r, request.observed))
         place = int(np.argmin(gaps))

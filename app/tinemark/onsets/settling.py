@@ -32,4 +32,8 @@ def settle_any(
         from tinemark.onsets.border_onsets import settle_border
 
         return (yield from settle_border(one, rough, digits, reach=reach))
+    if rough.kind is Kind.CRISIS:
+        from tinemark.onsets.crises import settle_crisis
+
+        return (yield from settle_crisis(one, rough, digits, reach=reach))
     return (yield from settle_onset(one, rough, digits, reach=reach, show_after=show_after))
