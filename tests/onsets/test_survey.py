@@ -13,6 +13,7 @@ from running import finish, own_map, system_of
 from tinemark.onsets.engine import survey
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.results import (
+    Criticality,
     Kind,
     Onset,
     Status,
@@ -173,6 +174,30 @@ def test_a_map_that_switches_is_not_called_complete() -> None:
     assert "others may be missing" in result.message
 
 
+def test_border_collisions_are_listed_and_not_taken_for_flips() -> None:
+    # Slopes -0.6 and -1.4: the fixed point r / 1.6 or r / 2.4 meets the border at r = 0 (exact).
+    system = own_map("-0.6*x + r if x < 0 else -1.4*x + r", low="-2", high="2")
+    (onset,) = surveyed(system, "-1", "1.1", 2).onsets
+    assert onset.kind is Kind.BORDER_COLLISION
+    assert Fraction(onset.lower) <= 0 <= Fraction(onset.upper)
+    cut = own_map("r*x*(1 - x) if x < 0.9 else 0.1*x", low="0", high="1", start="0.2")
+    found = [(o.kind, o.period_before) for o in surveyed(cut, "2.8", "4", 2).onsets]
+    assert found == [(Kind.FLIP, 1), (Kind.FLIP, 2), (Kind.BORDER_COLLISION, 2)]
+
+
+def test_a_jump_is_told_with_the_fold_that_bounds_it() -> None:
+    # The 2-cycle x -> -x of -r x - x^3 + x^5 has r = 1 - x^2 + x^4: it turns back at 3/4 (exact).
+    result = surveyed(own_map("-r*x - x**3 + x**5", low="-1.4", high="1.4"), "0.6", "1.05", 1)
+    (flip,) = result.onsets
+    assert (flip.kind, flip.criticality) == (Kind.FLIP, Criticality.SUBCRITICAL)
+    assert "jump" in flip.consequence
+    assert "0.75" in flip.consequence
+    result = surveyed(own_map("-r*x - x**3 + x**5", low="-1.4", high="1.4"), "0.6", "0.99", 2)
+    (fold,) = result.onsets
+    assert (fold.kind, fold.period_after) == (Kind.FOLD, 2)
+    assert Fraction(fold.lower) <= Fraction(3, 4) <= Fraction(fold.upper)
+
+
 def test_several_states() -> None:
     henon = surveyed(system_of("henon"), "0.1", "1.04", 4)
     flips = [o for o in henon.onsets if o.kind is Kind.FLIP]
@@ -193,6 +218,10 @@ def test_what_cannot_be_surveyed_is_refused_in_words() -> None:
     for most in (0, 65):
         with pytest.raises(TinemarkError, match="cannot be asked for"):
             surveyed(system, "3", "4", most)
+    with pytest.raises(NoOnsetFound, match="none is looked for"):
+        surveyed(system, "3", "4", 2, kinds=frozenset({Kind.NEIMARK_SACKER}))
+    with pytest.raises(NoOnsetFound, match="none is looked for"):
+        surveyed(system_of("henon"), "1", "1.2", 2, kinds=frozenset({Kind.CRISIS}))
     with pytest.raises(TinemarkError, match="digits"):
         surveyed(system, "3", "4", 2, digits=251)
 

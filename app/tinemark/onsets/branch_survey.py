@@ -51,6 +51,8 @@ FIRST_AMPLITUDES = (4e-3, 1e-3, 2e-2)
 """Where a doubled branch is taken up, as shares of the state's scale."""
 SAME_SPOT = 3e-4
 """Onsets of one kind and period closer than this share of the view are shown as one."""
+LEAPT = 0.05
+"""A multiplier that is farther than this from -1 or 1 where it passes did not go there smoothly."""
 OUTSIDE = 0.02
 """Share of the view's height by which a curve may lie outside it and still belong to it."""
 
@@ -65,12 +67,15 @@ class Branch:
         Its places in order, and what happens at them.
     parents
         Cycles of half the period, at the flips that its ends join.
+    ends
+        Why it stops, at either end; see `continuation.Trace`.
     """
 
     places: list[Place]
     events: list[Event]
     closed: bool = False
     parents: list[Place] = field(default_factory=list)
+    ends: tuple[str, ...] = ()
 
     @property
     def period(self) -> int:
@@ -213,7 +218,7 @@ def _joined(backward: Trace, onward: Trace) -> Branch:
     events = [Event(event.passed, turned - event.at) for event in reversed(backward.events)]
     events += [Event(event.passed, turned + event.at) for event in onward.events]
     parents = [trace.parent for trace in (backward, onward) if trace.parent is not None]
-    return Branch([*before, *onward.places], events, parents=parents)
+    return Branch([*before, *onward.places], events, parents=parents, ends=(backward.ended, onward.ended))
 
 
 def _split_off(family: Family, branch: Branch, most_period: int) -> list[Place]:
@@ -346,13 +351,17 @@ def _entry(survey: Survey, branch: Branch, event: Event) -> tuple[Kind, int, flo
 def kind_of(family: Family, place: Place, passed: Passed) -> Kind:
     """The kind of an onset that a branch passes.
 
+    A multiplier that leaps over -1 or 1 belongs to a cycle that meets a switching surface.
     Where a multiplier is 1, the cycle's push f^p_r and its bend f^p_xx tell a fold (both are there) from
     branches that cross: a transcritical point without the push, a pitchfork without both.
     """
-    if passed is Passed.FLIP:
-        return Kind.FLIP
     if passed is Passed.NEIMARK_SACKER:
         return Kind.NEIMARK_SACKER
+    critical = -1 if passed is Passed.FLIP else 1
+    if min(abs(value - critical) for value in place.multipliers) > LEAPT:
+        return Kind.BORDER_COLLISION
+    if passed is Passed.FLIP:
+        return Kind.FLIP
     if not isinstance(family, OneFamily):
         return Kind.FOLD if passed is Passed.FOLD else Kind.TRANSCRITICAL
     cycles = family.cycles

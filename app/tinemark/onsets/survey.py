@@ -51,6 +51,24 @@ def wanted(request: SurveyRequest, kind: Kind) -> bool:
     return request.kinds is None or kind in request.kinds
 
 
+def check_kinds(request: SurveyRequest, surveyed: frozenset[Kind], of_what: str) -> None:
+    """Refuse a request for kinds of which none is looked for.
+
+    Raises
+    ------
+    NoOnsetFound
+        In words, with the kinds that are.
+    """
+    if request.kinds is None or request.kinds & surveyed:
+        return
+    asked = ", ".join(sorted(kind.value for kind in request.kinds)) or "none"
+    looked = ", ".join(kind.value for kind in Kind if kind in surveyed)
+    raise NoOnsetFound(
+        f"of the kinds asked for ({asked}) none is looked for in a survey of {of_what}",
+        what_to_do=f"ask for some of: {looked}",
+    )
+
+
 def same(a: Onset, b: Onset) -> bool:
     """Whether two onsets are one.
 

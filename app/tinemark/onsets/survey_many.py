@@ -12,15 +12,15 @@ from fractions import Fraction
 import numpy as np
 
 from tinemark.onsets.branch_seeds import settled_many, short_many
-from tinemark.onsets.branch_survey import Survey, follow_all
-from tinemark.onsets.continuation import Pace, Passed, Place, Screen
+from tinemark.onsets.branch_survey import Survey, follow_all, kind_of
+from tinemark.onsets.continuation import Pace, Place, Screen
 from tinemark.onsets.cycle_families import ManyFamily
 from tinemark.onsets.many_cycles import Cycle
 from tinemark.onsets.many_map import float_many_map, many_map
 from tinemark.onsets.many_onset import settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
-from tinemark.onsets.survey import counted, same, wanted
+from tinemark.onsets.survey import check_kinds, counted, same, wanted
 from tinemark.systems.errors import SwitchingTouched
 from tinemark.systems.exact import fraction_text
 
@@ -32,11 +32,8 @@ FAR_FROM_STABLE = 30.0
 """Past multipliers of this size a branch is left alone: where it is stable again orbits settle on it."""
 FOLLOWED_SHARE = 0.5
 """Share of the progress at which all branches are followed."""
-KINDS = {
-    Passed.FLIP: Kind.FLIP,
-    Passed.FOLD: Kind.FOLD,
-    Passed.NEIMARK_SACKER: Kind.NEIMARK_SACKER,
-}
+KINDS = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
+"""Kinds that a survey of a map of several states looks for."""
 
 
 @dataclass(frozen=True)
@@ -50,6 +47,7 @@ def survey_many(
     request: SurveyRequest, low: Fraction, high: Fraction
 ) -> Generator[Step | SurveyFind, None, SurveyResult]:
     """Find onsets of a map of several states between two parameter values; see `engine.survey`."""
+    check_kinds(request, KINDS, "maps of several states")
     yield Step("reading the map", 0.0)
     float_map = float_many_map(many_map(request.system, request.parameter))
     scales = float_map.scales(float(low + high) / 2)
@@ -98,9 +96,10 @@ def _candidates(survey: Survey) -> list[_Candidate]:
         reach = abs(max(p.r for p in branch.places) - min(p.r for p in branch.places))
         reach = 0.05 * min(reach, survey.screen.width) + 1e-9 * abs(branch.places[0].r)
         for event in branch.events:
-            kind = KINDS.get(event.passed)
-            if kind is not None:
-                found.append(_Candidate(kind, branch.places[event.at], reach))
+            place = branch.places[event.at]
+            kind = kind_of(survey.family, place, event.passed)
+            if kind in KINDS:
+                found.append(_Candidate(kind, place, reach))
         found += [_Candidate(Kind.FLIP, parent, reach) for parent in branch.parents]
     found.sort(key=lambda candidate: candidate.place.r)
     kept: list[_Candidate] = []

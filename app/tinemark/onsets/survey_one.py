@@ -12,22 +12,32 @@ from __future__ import annotations
 from collections.abc import Generator
 from dataclasses import dataclass, field
 from fractions import Fraction
+from typing import Any
 
+from tinemark.onsets.border_search import border_crossings
 from tinemark.onsets.branch_seeds import settled_one
 from tinemark.onsets.branch_survey import Branch, kind_of, lies_on, stretch
+from tinemark.onsets.branches import Cycle
 from tinemark.onsets.continuation import Passed, Place, Screen
 from tinemark.onsets.cycle_families import OneFamily, stretch_family
 from tinemark.onsets.float_map import FloatMap, float_map
+from tinemark.onsets.jumps import jump_of
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Lost, Rough
 from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
-from tinemark.onsets.settling import settle_any
+from tinemark.onsets.settling import ONE_STATE_KINDS, settle_any
 from tinemark.onsets.superstable_search import Superstable, SuperstableSearch, superstable_cycles
-from tinemark.onsets.survey import counted, same, wanted
+from tinemark.onsets.survey import check_kinds, counted, same, wanted
 from tinemark.systems.exact import fraction_text
 
 COLUMNS = 480
 """Places of the range at which orbits are settled."""
+ENDED_WELL = {"left", "joined", "stopped"}
+"""How a stable stretch ends where nothing is amiss: out of the range, at a flip, or past an onset."""
+BORDER_REACH = 1e-6
+"""Share of the range within which a border collision lies of where the search has put it."""
+SURVEYED = ONE_STATE_KINDS - {Kind.CRISIS}
+"""Kinds that a survey of a one-state map looks for."""
 SEARCH_SHARE, SCAN_SHARE = 0.4, 0.5
 """Shares of the progress at which the search for superstable cycles and the scan end."""
 
@@ -48,12 +58,14 @@ class _Found:
     stretches: list[Branch] = field(default_factory=list)
     candidates: list[_Candidate] = field(default_factory=list)
     lost: list[tuple[float, str]] = field(default_factory=list)
+    words: set[Any] = field(default_factory=set)
 
 
 def survey_one(
     request: SurveyRequest, low: Fraction, high: Fraction
 ) -> Generator[Step | SurveyFind, None, SurveyResult]:
     """Find the onsets of a one-state map between two parameter values; see `engine.survey`."""
+    check_kinds(request, SURVEYED, "maps of one state")
     one = one_map(request.system, request.parameter)
     cycles = float_map(one)
     screen = Screen(float(low), float(high - low), 0.0, cycles.scale, margin=1e-3)
@@ -74,13 +86,10 @@ def survey_one(
             f"({number + 1} of {len(candidates)})",
             SCAN_SHARE + (1 - SCAN_SHARE) * number / len(candidates),
         )
-        onset = yield from _settled(one, candidate, request.digits, found)
-        if onset is None or not low <= onset.value_fraction <= high:
-            continue
-        if any(same(onset, other) for other in onsets):
-            continue
-        onsets.append(onset)
-        yield SurveyFind(onset)
+        for onset in (yield from _settled(one, candidate, request, found)):
+            if low <= onset.value_fraction <= high and not any(same(onset, other) for other in onsets):
+                onsets.append(onset)
+                yield SurveyFind(onset)
     onsets.sort(key=lambda onset: onset.value_fraction)
     return SurveyResult(tuple(onsets), _message(request, search, fresh, found, tuple(onsets)))
 
@@ -121,6 +130,9 @@ def _from_superstable(
         return
     branch = yield from stretch(family, screen, place)
     _take(cycles, family, branch, found)
+    if not set(branch.ends) <= ENDED_WELL:
+        where = f"the branch of period {superstable.period} around {superstable.r:.9g}"
+        found.lost.append((superstable.r, f"{where} could not be followed to both its ends"))
 
 
 def _scan(cycles: FloatMap, screen: Screen, most: int, found: _Found) -> Generator[Step, None, int]:
@@ -139,6 +151,8 @@ def _scan(cycles: FloatMap, screen: Screen, most: int, found: _Found) -> Generat
         yield Step(step.text, SEARCH_SHARE + 0.05 + 0.05 * (step.share or 0.0))
     fresh = 0
     for r, place in seeds:
+        if place.period <= most:
+            _add_borders(cycles, screen, place, found)
         if place.period > most or any(lies_on(family, branch, place) for branch in found.stretches):
             continue
         near = stretch_family(cycles, screen.width, float(place.points[0, 0]), r, place.period)
@@ -158,9 +172,21 @@ def _take(cycles: FloatMap, family: OneFamily, branch: Branch, found: _Found) ->
     for event in branch.events:
         place = branch.places[event.at]
         kind = kind_of(family, place, event.passed)
-        _add(cycles, found, kind, place, width)
+        # Where a cycle meets a surface its touching point counts, which is looked for by itself.
+        if kind is not Kind.BORDER_COLLISION:
+            _add(cycles, found, kind, place, width)
     for parent in branch.parents:
         _add(cycles, found, kind_of(family, parent, Passed.FLIP), parent, width)
+
+
+def _add_borders(cycles: FloatMap, screen: Screen, place: Place, found: _Found) -> None:
+    """Keep the border collisions of a piecewise map's cycle, which end its stretch without an event."""
+    cycle = Cycle(place.period, float(place.points[0, 0]), place.r, place.multipliers[0].real)
+    for crossing in border_crossings(cycles, cycle, screen.width, found.words):
+        reach = BORDER_REACH * screen.width
+        found.candidates.append(
+            _Candidate(crossing.kind, crossing.period, float(crossing.x), float(crossing.r), reach)
+        )
 
 
 def _add(cycles: FloatMap, found: _Found, kind: Kind, place: Place, width: float) -> None:
@@ -178,16 +204,22 @@ def _add(cycles: FloatMap, found: _Found, kind: Kind, place: Place, width: float
 
 
 def _settled(
-    one: OneMap, candidate: _Candidate, digits: int, found: _Found
-) -> Generator[Step, None, Onset | None]:
+    one: OneMap, candidate: _Candidate, request: SurveyRequest, found: _Found
+) -> Generator[Step, None, list[Onset]]:
+    """The onset of a candidate, if it is one, and the fold that bounds its jump, if it is of the survey."""
     rough = Rough(candidate.kind, candidate.period, Fraction(candidate.x), Fraction(candidate.r))
     try:
-        settled = yield from settle_any(one, rough, digits, reach=Fraction(candidate.reach))
+        settled = yield from settle_any(one, rough, request.digits, reach=Fraction(candidate.reach))
     except Lost as error:
         where = f"the {candidate.kind.value} of period {candidate.period} near {candidate.r:.9g}"
         found.lost.append((candidate.r, f"{where} could not be solved for ({error})"))
-        return None
-    return settled.onset
+        return []
+    jump = yield from jump_of(one, settled, request.digits, abs(request.stop - request.start))
+    onsets = [jump.onset]
+    fold = jump.fold
+    if fold is not None and wanted(request, Kind.FOLD) and fold.period_after <= request.max_period:
+        onsets.append(fold)
+    return onsets
 
 
 def _message(
@@ -245,4 +277,5 @@ def _lost(found: _Found, onsets: tuple[Onset, ...], width: float) -> list[str]:
 def _missing(search: SuperstableSearch) -> str:
     parts = [(low, high) for _, low, high in search.undecided] + search.unknown
     total = sum((high - low for low, high in parts), Fraction(0))
-    return f"{len(parts)} intervals of {float(total):.2g} in all, where it is not decided"
+    number = "1 interval" if len(parts) == 1 else f"{len(parts)} intervals"
+    return f"{number} of {float(total):.2g} in all, where it is not decided"
