@@ -22,7 +22,7 @@ from typing import Any
 
 ROOT = Path(__file__).resolve().parents[1]
 LOOKS = ("light-100", "dark-100", "light-200", "dark-200")
-SCENES = ("first", "work")
+SCENES = ("first", "work", "tolerances")
 SIZE = (1280, 800)
 PATIENCE_S = 90.0
 
@@ -121,6 +121,9 @@ def _scene(window: Any, scene: str) -> Iterator[Any]:
 
     yield lambda: window.diagram.field is not None and window.diagram.field.steps > 5_000_000
     yield lambda: window.ratios.is_up_to_date
+    if scene == "tolerances":
+        window.tolerances.bring_up("tolerances")
+        window.rows.select(window.keeper.session.ledger.rows[1].id)
     if scene == "work":
         view = window.keeper.session.view
         window.keeper.show_view(type(view)(Fraction(128), Fraction("142"), Fraction(0), Fraction(82)))
