@@ -7,8 +7,8 @@ from itertools import pairwise
 
 import numpy as np
 
+from tinemark.onsets.branch_places import Family, Floats, Place, least_period
 from tinemark.onsets.branches import find_cycle
-from tinemark.onsets.continuation import Family, Floats, Place, least_period
 from tinemark.onsets.cycle_families import ManyFamily, OneFamily
 from tinemark.onsets.float_map import FloatMap
 from tinemark.onsets.many_cycles import Cycle, newton, orbit_ends, returns

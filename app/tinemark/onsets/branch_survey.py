@@ -9,6 +9,7 @@ from itertools import pairwise
 
 import numpy as np
 
+from tinemark.onsets.branch_places import Event, Family, Floats, Passed, Place, Screen, Trace
 from tinemark.onsets.branch_seeds import (
     doubled,
     settled_many,
@@ -16,19 +17,7 @@ from tinemark.onsets.branch_seeds import (
     short_many,
     short_one,
 )
-from tinemark.onsets.continuation import (
-    BRISK,
-    DRAWN,
-    Event,
-    Family,
-    Floats,
-    Pace,
-    Passed,
-    Place,
-    Screen,
-    Trace,
-    follow,
-)
+from tinemark.onsets.continuation import BRISK, DRAWN, Pace, follow
 from tinemark.onsets.cycle_families import ManyFamily, OneFamily
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.many_map import float_many_map, many_map
@@ -68,7 +57,7 @@ class Branch:
     parents
         Cycles of half the period, at the flips that its ends join.
     ends
-        Why it stops, at either end; see `continuation.Trace`.
+        Why it stops, at either end; see `branch_places.Trace`.
     """
 
     places: list[Place]

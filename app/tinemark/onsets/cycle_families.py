@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 
-from tinemark.onsets.continuation import MOST_UNSTABLE, Floats, Place
+from tinemark.onsets.branch_places import MOST_UNSTABLE, Floats, Place
 from tinemark.onsets.float_map import FloatMap
 from tinemark.onsets.many_map import FloatManyMap
 
@@ -35,7 +35,7 @@ class OneFamily:
         return values
 
     def corrected(self, points: Floats, r: float, along: tuple[Floats, float] | None = None) -> Place | None:
-        """Newton's method for a cycle; see `continuation.Family`."""
+        """Newton's method for a cycle; see `branch_places.Family`."""
         scale = float(self.scales[0])
         xs = [float(x) for x in points[:, 0]]
         first_xs, first_r = list(xs), r
@@ -143,7 +143,7 @@ class ManyFamily:
         return self.float_map.observed(points, r)
 
     def corrected(self, points: Floats, r: float, along: tuple[Floats, float] | None = None) -> Place | None:
-        """Newton's method for a cycle; see `continuation.Family`."""
+        """Newton's method for a cycle; see `branch_places.Family`."""
         from tinemark.onsets.many_cycles import Cycle, condensed, eigenvalues, newton, tangent
 
         guess = Cycle(points, r)

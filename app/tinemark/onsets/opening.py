@@ -7,8 +7,8 @@ from fractions import Fraction
 
 import numpy as np
 
+from tinemark.onsets.branch_places import Family, Floats, Place, Screen
 from tinemark.onsets.branch_survey import Branch, kind_of, stretch
-from tinemark.onsets.continuation import Family, Floats, Place, Screen
 from tinemark.onsets.results import Kind, LadderRequest, Onset, Step
 
 

@@ -11,9 +11,10 @@ from fractions import Fraction
 
 import numpy as np
 
+from tinemark.onsets.branch_places import Place, Screen
 from tinemark.onsets.branch_seeds import settled_many, short_many
 from tinemark.onsets.branch_survey import Survey, follow_all, kind_of
-from tinemark.onsets.continuation import Pace, Place, Screen
+from tinemark.onsets.continuation import Pace
 from tinemark.onsets.cycle_families import ManyFamily
 from tinemark.onsets.many_cycles import Cycle
 from tinemark.onsets.many_map import float_many_map, many_map

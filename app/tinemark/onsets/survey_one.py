@@ -15,10 +15,10 @@ from fractions import Fraction
 from typing import Any
 
 from tinemark.onsets.border_search import border_crossings
+from tinemark.onsets.branch_places import Passed, Place, Screen
 from tinemark.onsets.branch_seeds import settled_one
 from tinemark.onsets.branch_survey import Branch, kind_of, lies_on, stretch
 from tinemark.onsets.branches import Cycle
-from tinemark.onsets.continuation import Passed, Place, Screen
 from tinemark.onsets.cycle_families import OneFamily, stretch_family
 from tinemark.onsets.float_map import FloatMap, float_map
 from tinemark.onsets.jumps import jump_of
