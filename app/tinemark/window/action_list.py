@@ -249,6 +249,15 @@ ACTIONS: tuple[Action, ...] = (
         checked=_lower_up("tolerances"),
     ),
     Action(
+        "branches",
+        "View",
+        "Branches",
+        lambda w: w.branches.switch(),
+        ("F5",),
+        tip="Cycles of this view as curves, stable ones solid and unstable ones dashed",
+        checked=lambda w: w.branches.on,
+    ),
+    Action(
         "theme_system",
         "View/Appearance",
         "As the desktop",
@@ -348,6 +357,14 @@ ACTIONS: tuple[Action, ...] = (
         lambda w: w.rows.ask_ladder(),
         ("Ctrl+L",),
         tip="Find the successive onsets of a cascade, from the selected row or in this view",
+    ),
+    Action(
+        "survey",
+        "Find",
+        "Pick every onset in this view…",
+        lambda w: w.survey_form.open(),
+        ("Ctrl+E",),
+        tip="All onsets of the view's range, of cycles up to a period that you choose",
     ),
     Action(
         "check_proofs",

@@ -29,6 +29,8 @@ from tinemark.density.field import Field
 from tinemark.density.request import View
 from tinemark.window import diagram_paint as paint
 from tinemark.window.axis import paint_bottom_axis, paint_left_axis
+from tinemark.window.branch_curves import BranchCurves
+from tinemark.window.branch_overlay import BranchOverlay
 from tinemark.window.callout import Callout, Choice
 from tinemark.window.diagram_layout import DiagramLayout, lay_out
 from tinemark.window.gestures import Gestures
@@ -94,6 +96,7 @@ class Diagram(QWidget):
         self.notice = ""
         self.pending: dict[int, tuple[Fraction, Fraction, str]] = {}
         self.cursor_place: tuple[float, float] | None = None
+        self.branches = BranchOverlay()
         self.gestures = Gestures(self)
         self.callout: Callout | None = None
         self.parts = lay_out(QSizeF(640, 480), 1.0, QFontMetricsF(self._font()))
@@ -144,6 +147,12 @@ class Diagram(QWidget):
         if all(mark.row != self.hovered for mark in marks):
             self.hovered = ""
         self.update()
+
+    def show_branches(self, curves: BranchCurves | None) -> None:
+        """Show the branches of a view, or none."""
+        if curves is not self.branches.curves:
+            self.branches.show(curves)
+            self.update()
 
     def show_probe(self, value: Fraction | None) -> None:
         """Show where the probed orbit lies, or nothing."""
@@ -344,6 +353,7 @@ class Diagram(QWidget):
             painter.setPen(QPen(color(theme.text, 0.8), 1.0, Qt.PenStyle.DashDotLine))
             painter.drawLine(QPointF(x, parts.plot.top()), QPointF(x, parts.strip.bottom()))
             paint.paint_tag(painter, theme, parts.plot, QPointF(x + 5, parts.plot.bottom() - 6), "probe")
+        self.branches.paint(painter, theme, view, parts.plot, self.marks)
         paint_marks(
             painter,
             theme,
@@ -359,6 +369,7 @@ class Diagram(QWidget):
             self._paint_notice(painter)
         for parameter, observed, words in self.pending.values():
             self._paint_pending(painter, self.point(parameter, observed), words)
+        self.branches.paint_words(painter, theme, view, parts.plot, self.words_at)
         self.gestures.paint(painter, theme)
         if self.hasFocus():
             painter.setPen(QPen(color(theme.accent), 1.5))

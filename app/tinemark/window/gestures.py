@@ -65,11 +65,18 @@ class Gestures:
                 diagram.hovered = mark.row if mark else ""
                 diagram.setCursor(Qt.CursorShape.PointingHandCursor if mark else Qt.CursorShape.CrossCursor)
                 diagram.update()
+            self._hover(None if mark else event.position())
         if diagram.parts.plot.contains(event.position()) or self._left_from is not None:
             diagram.pointed.emit(*diagram.values_at(event.position()))
         else:
             diagram.pointed.emit(None, None)
         if self._left_from is not None or diagram.tool == "read":
+            diagram.update()
+
+    def _hover(self, position: QPointF | None) -> None:
+        """See which branch a position is on."""
+        diagram = self.diagram
+        if diagram.branches.hover(diagram.view, diagram.parts.plot, position):
             diagram.update()
 
     def _pan_to(self, position: QPointF) -> None:
@@ -134,7 +141,9 @@ class Gestures:
             tool = "probe"
         elif event.modifiers() & Qt.KeyboardModifier.ShiftModifier:
             tool = "read"
-        self._use(tool, *diagram.values_at(position))
+        at = diagram.values_at(position)
+        self._hover(position)
+        self._use(tool, *(diagram.branches.snapped(*at) if tool == "pick" else at))
 
     def _use(self, tool: str, parameter: Fraction, observed: Fraction) -> None:
         signals = {
@@ -156,6 +165,7 @@ class Gestures:
     def leave(self) -> None:
         """The pointer has left the widget."""
         self._pointer = None
+        self._hover(None)
         self.diagram.hovered = ""
         self.diagram.pointed.emit(None, None)
         self.diagram.update()
@@ -192,6 +202,7 @@ class Gestures:
         v = min(max(v + up / parts.plot.height(), 0.0), 1.0)
         diagram.cursor_place = (u, v)
         diagram.pointed.emit(*nav.place(diagram.view, u, v))
+        self._hover(self._on_screen((u, v)))
         diagram.update()
 
     def use_cursor(self, tool: str = "") -> bool:

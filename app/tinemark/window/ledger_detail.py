@@ -14,6 +14,7 @@ from tinemark.window.ledger_lines import (
     kind_words,
     period_words,
 )
+from tinemark.window.ledger_marks import consequence_words
 from tinemark.window.number_label import NumberLabel
 
 
@@ -58,6 +59,7 @@ class LedgerDetail(QScrollArea):
         self._grid.addLayout(self.states, self._line, 1)
         self._line += 1
         self.status = self._words("status")
+        self.follows = self._words("what follows")
         self.evidence = self._words("checked")
         self.note = QLineEdit()
         self.note.setAccessibleName("Note on the onset")
@@ -128,6 +130,7 @@ class LedgerDetail(QScrollArea):
         self._show_states(onset.states)
         meaning = f"{onset.status.value}. {STATUS_MEANING[onset.status]}"
         self.status.setText(f"{meaning} {_sentence(onset.reason)}".strip())
+        self.follows.setText(_sentence(consequence_words(onset)) or "nothing more than the periods say")
         self.evidence.setText(
             "\n".join(f"{claim}: {finding}" for claim, finding in onset.evidence) or "nothing"
         )

@@ -17,6 +17,7 @@ from tinemark.systems.errors import TinemarkError
 from tinemark.systems.system import System
 from tinemark.window.action_list import ACTIONS, MENUS
 from tinemark.window.actions import qt_action
+from tinemark.window.branch_jobs import BranchJobs
 from tinemark.window.bridge import Bridge
 from tinemark.window.diagram import Diagram, Labels
 from tinemark.window.head_line import HeadLine
@@ -38,6 +39,8 @@ from tinemark.window.session_files import SessionFiles
 from tinemark.window.session_keeper import SessionKeeper
 from tinemark.window.settings_panel import SettingsPanel
 from tinemark.window.status_line import StatusLine
+from tinemark.window.survey_form import SurveyForm
+from tinemark.window.survey_jobs import SurveyJobs
 from tinemark.window.system_card import SystemCard
 from tinemark.window.theme import THEMES, Theme, apply_theme, current_theme, system_theme
 from tinemark.window.tolerance_panel import TolerancePanel
@@ -70,6 +73,7 @@ class MainWindow(QMainWindow):
         self.diagram = Diagram()
         self.head = HeadLine()
         self.hint = HintLine()
+        self.survey_form = SurveyForm()
         self.status = StatusLine()
         self.ledger_panel = LedgerPanel()
         self.ratio_panel = RatioPanel()
@@ -83,6 +87,8 @@ class MainWindow(QMainWindow):
         self.probes = ProbeJobs(self.probe_panel, self.diagram, self.panels, self)
         self.ratios = RatioJobs(self.bridge, self.ledger_panel, self.ratio_panel, self)
         self.rows = RowWork(self)
+        self.branches = BranchJobs(self)
+        self.surveys = SurveyJobs(self)
         self.proofs = ProofJobs(self)
         self.tolerances = ToleranceWork(self)
         self.files = SessionFiles(self, keeper, memory)
@@ -105,7 +111,7 @@ class MainWindow(QMainWindow):
         column = QVBoxLayout(centre)
         column.setContentsMargins(0, 0, 0, 0)
         column.setSpacing(0)
-        for part in (self.head, self.hint):
+        for part in (self.head, self.hint, self.survey_form):
             column.addWidget(part)
         column.addWidget(self.diagram, 1)
         self.lower = LowerTabs(
@@ -174,6 +180,8 @@ class MainWindow(QMainWindow):
         self.status.cancel_wanted.connect(self.cancel)
         self.hint.dismissed.connect(lambda: self.memory.keep_flag("hint_seen", True))
         self.rows.connect_parts()
+        self.survey_form.survey_wanted.connect(self._survey)
+        self.survey_form.closed.connect(lambda: self.diagram.setFocus(Qt.FocusReason.OtherFocusReason))
         self.system_card.system_edited.connect(self._system_edited)
         self.system_card.builtin_chosen.connect(self.files.open_builtin)
         self.settings_panel.settings_changed.connect(keeper.set_picture)
@@ -197,6 +205,7 @@ class MainWindow(QMainWindow):
         system = self.keeper.system
         if before is None:
             self.onsets.forget()
+            self.surveys.forget()
             self.proofs.forget()
         self.diagram.show_view(after.view)
         if before is None or before.view != after.view:
@@ -218,6 +227,7 @@ class MainWindow(QMainWindow):
         self.tolerances.show()
         self.probes.show(after, system, reveal=before is not None)
         self.pictures.show(after, system)
+        self.branches.show(after, system)
         self.refresh_actions()
 
     def _show_system(self, session: Session, system: System) -> None:
@@ -281,10 +291,20 @@ class MainWindow(QMainWindow):
         elif not self.diagram.gestures.cancel():
             self.rows.select("")
 
+    @property
+    def is_finding(self) -> bool:
+        """Whether the refinery works on something that was asked for by hand."""
+        return bool(self.onsets.jobs) or self.surveys.busy
+
+    def _survey(self, max_period: int) -> None:
+        self.surveys.ask(max_period)
+        self.diagram.setFocus(Qt.FocusReason.OtherFocusReason)
+
     def cancel(self) -> None:
         """Stop the work under way."""
         checking = self.proofs.cancel()
-        if not self.onsets.cancel() and not checking:
+        stopped = [jobs.cancel() for jobs in (self.onsets, self.surveys, self.branches)]
+        if not any(stopped) and not checking:
             self.pictures.stop()
             self.status.show_words("Drawing stopped; the next view is drawn again.")
 
@@ -345,6 +365,8 @@ class MainWindow(QMainWindow):
         self.onsets.hear(event)
         self.pictures.hear(event)
         self.probes.hear(event)
+        self.branches.hear(event)
+        self.surveys.hear(event)
         self.proofs.hear(event)
 
     def resizeEvent(self, event: QResizeEvent) -> None:  # noqa: D102
@@ -370,7 +392,7 @@ class MainWindow(QMainWindow):
     def shut_down(self) -> None:
         """End every thread and process. Nothing comes after it."""
         self.readying.stop()
-        for jobs in (self.pictures, self.onsets, self.probes):
+        for jobs in (self.pictures, self.onsets, self.branches, self.surveys, self.probes):
             jobs.detach()
         self.bridge.close()
         self.proofs.detach()

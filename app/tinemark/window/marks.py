@@ -1,7 +1,8 @@
 """Ledger rows as marks on the diagram: a vertical line, a sign in the lane above the plot, a short label
 where it fits.
 
-How far a value can be relied on is told by the sign's shape and the line's style, not by colour.
+The kind is told by the sign's shape; how far a value can be relied on by its filling and the line's style; a
+jump by an arrowhead below the sign and in words. Nothing is told by colour alone.
 """
 
 from __future__ import annotations
@@ -11,9 +12,11 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from PySide6.QtCore import QPointF, QRectF, Qt
-from PySide6.QtGui import QFontMetricsF, QPainter, QPainterPath, QPen
+from PySide6.QtGui import QFontMetricsF, QPainter, QPainterPath, QPen, QPolygonF
 
 from tinemark.density.request import View
+from tinemark.onsets.results import Kind
+from tinemark.window.signs import kind_path
 from tinemark.window.theme import Theme, color
 from tinemark.window.view_navigation import unit_x, unit_y
 
@@ -30,7 +33,11 @@ LINE_STYLES = {
 
 @dataclass(frozen=True)
 class Mark:
-    """One ledger row on the diagram. `words` are shown on hovering; `status` is one of `LINE_STYLES`."""
+    """One ledger row on the diagram.
+
+    `words` are shown on hovering; `status` is one of `LINE_STYLES`; `kind` is a kind's word; `jumps` where
+    the change is a jump.
+    """
 
     row: str
     value: Fraction
@@ -38,31 +45,35 @@ class Mark:
     label: str
     status: str
     words: str
+    kind: str = Kind.FLIP.value
+    jumps: bool = False
 
 
-def sign_path(status: str, centre: QPointF, size: float = SIGN) -> QPainterPath:
-    """The sign's outline: diamond for proved and estimated, ring for read by eye, square for measured."""
-    path = QPainterPath()
-    x, y = centre.x(), centre.y()
+def sign_path(status: str, centre: QPointF, size: float = SIGN, kind: str = Kind.FLIP.value) -> QPainterPath:
+    """The sign's outline: the kind's for proved and estimated, ring for read by eye, square for measured."""
     if status in ("proved", "estimated"):
-        path.moveTo(x, y - size)
-        path.lineTo(x + size, y)
-        path.lineTo(x, y + size)
-        path.lineTo(x - size, y)
-        path.closeSubpath()
-    elif status == "measured":
-        path.addRect(QRectF(x - size * 0.8, y - size * 0.8, size * 1.6, size * 1.6))
+        return kind_path(kind, centre, size)
+    path = QPainterPath()
+    if status == "measured":
+        path.addRect(QRectF(centre.x() - size * 0.8, centre.y() - size * 0.8, size * 1.6, size * 1.6))
     else:
         path.addEllipse(centre, size * 0.9, size * 0.9)
     return path
 
 
-def paint_sign(painter: QPainter, theme: Theme, status: str, centre: QPointF, size: float = SIGN) -> None:
+def paint_sign(
+    painter: QPainter,
+    theme: Theme,
+    status: str,
+    centre: QPointF,
+    size: float = SIGN,
+    kind: str = Kind.FLIP.value,
+) -> None:
     """Filled for proved and measured, open otherwise; read by eye has a dot within."""
     painter.setPen(QPen(color(theme.accent), 1.4))
     solid = status in ("proved", "measured")
     painter.setBrush(color(theme.accent) if solid else color(theme.plot))
-    painter.drawPath(sign_path(status, centre, size))
+    painter.drawPath(sign_path(status, centre, size, kind))
     if status == "read by eye":
         painter.setBrush(color(theme.accent))
         painter.setPen(Qt.PenStyle.NoPen)
@@ -118,9 +129,20 @@ def paint_marks(
             mark.status,
             QPointF(plot.left() + u * plot.width(), y),
             SIGN * (1.35 if strong else 1.0),
+            mark.kind,
         )
+        if mark.jumps:
+            _paint_jump(painter, theme, QPointF(plot.left() + u * plot.width(), plot.top()))
     _paint_labels(painter, theme, shown, plot, lane, (selected, hovered))
     painter.restore()
+
+
+def _paint_jump(painter: QPainter, theme: Theme, top: QPointF) -> None:
+    """An arrowhead on the line, below the plot's upper edge."""
+    corners = (QPointF(-5, 3), QPointF(5, 3), QPointF(0, 12))
+    painter.setPen(QPen(color(theme.plot), 1.0))
+    painter.setBrush(color(theme.accent))
+    painter.drawPolygon(QPolygonF([top + corner for corner in corners]))
 
 
 def _paint_labels(

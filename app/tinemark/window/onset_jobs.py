@@ -84,10 +84,13 @@ class OnsetJobs(QObject):
         Onsets to keep; `row` names the row they refine, empty for new ones.
     ladder_found : (System, LadderResult)
         Levels to keep.
+    asked
+        Something is about to be asked of the refinery.
     """
 
     onsets_found = Signal(object, str, object)
     ladder_found = Signal(object, object)
+    asked = Signal()
 
     def __init__(self, diagram: Diagram, status: StatusLine, parent: QObject | None = None) -> None:
         super().__init__(parent)
@@ -129,6 +132,7 @@ class OnsetJobs(QObject):
 
     def ask(self, job: Job) -> None:
         """Hand a job to the refinery, now or as soon as it is there."""
+        self.asked.emit()
         if self.refinery is None:
             self._early.append(job)
             if isinstance(job.request, RefineRequest):
@@ -176,7 +180,7 @@ class OnsetJobs(QObject):
         if isinstance(event, Started):
             return
         if isinstance(event, Progressed):
-            self._status.show_busy(_sentence(event.text), event.share)
+            self._status.show_busy(sentence(event.text), event.share)
             return
         if isinstance(event, LevelFound):
             self._level_found(job, event.level)
@@ -209,7 +213,7 @@ class OnsetJobs(QObject):
         if isinstance(result, LadderResult):
             count = len(result.levels)
             words = f"{count} level{'' if count == 1 else 's'} found."
-            self._status.show_words(f"{words} {_sentence(result.message)}".strip())
+            self._status.show_words(f"{words} {sentence(result.message)}".strip())
             self._keep_ladder(job, result)
         elif len(result.onsets) == 1 or (job.row and result.onsets):
             self._status.show_words(refined_sentence(result.onsets[0]))
@@ -217,7 +221,7 @@ class OnsetJobs(QObject):
         elif result.onsets:
             self._offer(job, system, result)
         else:
-            self._say(job, _sentence(result.message) or "No onset in reach.", "warning")
+            self._say(job, sentence(result.message) or "No onset in reach.", "warning")
 
     def _offer(self, job: Job, system: System, result: RefineResult) -> None:
         def keep(*onsets: Onset) -> Callable[[], None]:
@@ -225,12 +229,12 @@ class OnsetJobs(QObject):
 
         choices = [Choice(_choice_words(onset), keep(onset)) for onset in result.onsets]
         choices.append(Choice("Keep both" if len(choices) == 2 else "Keep all", keep(*result.onsets)))
-        words = _sentence(result.message) or "Two onsets are close to the click. Which one is meant?"
+        words = sentence(result.message) or "Two onsets are close to the click. Which one is meant?"
         self._diagram.show_callout(job.parameter, job.observed, words, choices)
         self._status.show_words(words)
 
     def _failed(self, job: Job, error: TinemarkError) -> None:
-        words = _sentence(str(error))
+        words = sentence(str(error))
         if job.levels and isinstance(job.request, LadderRequest):
             self._keep_levels(job, words)
         else:
@@ -255,8 +259,8 @@ class OnsetJobs(QObject):
     def _crashed(self, job: Job, words: str) -> None:
         again = Choice("Try again", lambda: self.ask(replace(job, levels=[])))
         place = self._place(job)
-        self._diagram.show_callout(*place, _sentence(words), [again])
-        self._status.show_words(_sentence(words), "error")
+        self._diagram.show_callout(*place, sentence(words), [again])
+        self._status.show_words(sentence(words), "error")
 
     def _say(self, job: Job, words: str, rank: str) -> None:
         if isinstance(job.request, RefineRequest):
@@ -274,7 +278,7 @@ def _choice_words(onset: Onset) -> str:
     return f"{kind_words(onset)} at {onset.value[:14]}"
 
 
-def _sentence(words: str) -> str:
+def sentence(words: str) -> str:
     """Words with a capital and a full stop."""
     words = words.strip()
     if not words:

@@ -101,7 +101,7 @@ class RowWork(QObject):
         words = f"Read by eye: {session.parameter} = {diagram.gestures.by_eye(parameter)}"
         self._window.status.show_words(words)
 
-    def _knows(self, system: System) -> bool:
+    def knows(self, system: System) -> bool:
         """Whether the session still holds the formulas of a system; if not, what was found is of no use."""
         session = self._keeper.session
         known = system.key == self._keeper.system.key or system.key in dict(session.systems)
@@ -110,7 +110,7 @@ class RowWork(QObject):
         return known
 
     def _keep_onsets(self, system: System, row: str, onsets: tuple[Onset, ...]) -> None:
-        if not self._knows(system):
+        if not self.knows(system):
             return
         ledger = self._keeper.session.ledger
         place = ledgers.place_of(system, onsets[0].parameter)
@@ -129,7 +129,7 @@ class RowWork(QObject):
         self.select(row)
 
     def _keep_ladder(self, system: System, result: LadderResult) -> None:
-        if result.levels and self._knows(system):
+        if result.levels and self.knows(system):
             place = ledgers.place_of(system, result.levels[0].onset.parameter)
             ledger = ledgers.add_ladder(self._keeper.session.ledger, result, place)
             self._keeper.set_ledger("follow the ladder", ledger)

@@ -42,6 +42,8 @@ class Theme:
         For words and signs that also say it in words or shape.
     cool
         The hue of the picture, for the strip below it.
+    branch
+        The one hue of branches, apart from the picture's and the accent for colour-blind readers too.
     picture
         Name of the colour map that suits the ground.
     """
@@ -63,6 +65,7 @@ class Theme:
     error: str
     good: str
     cool: str
+    branch: str
     picture: str
 
 
@@ -84,6 +87,7 @@ LIGHT = Theme(
     error="#a3123a",
     good="#2c6140",
     cool="#2f5f8f",
+    branch="#0a7d63",
     picture="ink",
 )
 
@@ -105,6 +109,7 @@ DARK = Theme(
     error="#ff8fa3",
     good="#8fd0a4",
     cool="#86b6e6",
+    branch="#5fe0b4",
     picture="glow",
 )
 

@@ -84,6 +84,8 @@ class Workers(QObject):
         window.pictures.attach(made.pictures)
         window.probes.attach(made.probes)
         window.onsets.attach(made.refinery)
+        window.branches.attach(made.refinery)
+        window.surveys.attach(made.refinery)
         if self._to_warm is not None:
             made.refinery.warm(self._to_warm)
 
