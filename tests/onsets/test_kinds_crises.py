@@ -18,8 +18,8 @@ from tinemark.onsets.verification import verify_onset
     [
         # f(f(1/2)) = 0 at r = 4 exactly, where 0 is an unstable fixed point.
         ("logistic", "3.999", "0.1", "4", 1, "boundary crisis"),
-        # Ends of windows of period 3, 4 and 5, recomputed to 27 digits (check values, section 4.4; the condition
-        # is Grebogi, Ott & Yorke 1982, PRL 48:1507, from memory).
+        # Ends of windows of period 3, 4 and 5, recomputed to 27 digits (check values, section 4.4); the
+        # condition is by Grebogi, Ott & Yorke 1982, PRL 48:1507 (from memory).
         (
             "logistic",
             "3.857",

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 
 from tinemark.document.rounding import concise, held_digits, onset_text
 from tinemark.onsets.ladder_points import ENCLOSURE, Estimate
+from tinemark.onsets.onset_words import period_words
 from tinemark.onsets.results import Kind, Onset, Status
 from tinemark.onsets.scaling import Scaling
 
@@ -58,9 +59,7 @@ def onsets_table(found: Sequence[tuple[int | None, Onset]], scaled: Scaling | No
         row = [
             "-" if level is None else str(level),
             _kind_words(onset),
-            f"{onset.period_before} -> {onset.period_after}"
-            if onset.period_before
-            else f"new {onset.period_after}",
+            period_words(onset),
             # All digits of a proved value hold; of any other the brackets say how many do.
             onset_text(onset, full=onset.status is Status.PROVED, grouped=False),
             onset.status.value,
@@ -94,7 +93,7 @@ def scaling_lines(scaled: Scaling, parameter: str) -> list[str]:
 
 
 def _kind_words(onset: Onset) -> str:
-    if onset.kind is Kind.FLIP and onset.criticality.value:
+    if onset.kind in (Kind.FLIP, Kind.PITCHFORK) and onset.criticality.value:
         return f"{onset.criticality.value} {onset.kind.value}"
     return onset.kind.value
 
