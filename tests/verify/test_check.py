@@ -87,10 +87,10 @@ def test_elementary_functions_and_other_parameters() -> None:
 def moved(text: str, by: str) -> str:
     """A decimal text moved by an amount, in as many digits as it needs."""
     value = Fraction(text) + Fraction(by)
-    scaled = value * 10**40
+    scaled = value * 10**80
     assert scaled.denominator == 1
-    digits = str(abs(scaled.numerator)).rjust(41, "0")
-    return f"{'-' if value < 0 else ''}{digits[:-40]}.{digits[-40:]}"
+    digits = str(abs(scaled.numerator)).rjust(81, "0")
+    return f"{'-' if value < 0 else ''}{digits[:-80]}.{digits[-80:]}"
 
 
 def shifted(claim: Claim, by: str) -> Claim:

@@ -1,4 +1,4 @@
-"""Certificates of maps of several states: Hénon's cascade and fold, and damage to them."""
+"""Certificates of maps of several states: flips, folds, Neimark-Sacker onsets, and damage to them."""
 
 from __future__ import annotations
 
@@ -14,6 +14,7 @@ from test_check import box_by, moved, shifted, with_formula
 
 from tinemark.onsets.results import Kind, Onset
 from tinemark.systems.library import builtin_system
+from tinemark.systems.system_file import read_system_text
 from tinemark.verify import intervals as iv
 from tinemark.verify.check import check
 from tinemark.verify.claims import Claim, Outcome, Part, Undecided
@@ -157,3 +158,55 @@ def test_roots_on_the_unit_circle(polynomial: tuple[int, ...], off: bool) -> Non
     else:
         with pytest.raises(Undecided):
             check_off_circle(coefficients, 64)
+
+
+# Neimark-Sacker onsets
+
+TURNING = """
+title = "turning"
+kind = "map"
+[states.x]
+start = "0.01"
+range = ["-2", "2"]
+[states.y]
+start = "0.01"
+range = ["-2", "2"]
+[parameters.r]
+value = "0.95"
+[next]
+x = "0.1 + r*(0.6*x - 0.8*y) + x**2*y - 0.3*x**3"
+y = "r*(0.8*x + 0.6*y) - y*x**2"
+[diagram]
+parameter = "r"
+observe = "x"
+"""
+
+
+@lru_cache(maxsize=2)
+def neimark_sacker(own: bool) -> Onset:
+    system = read_system_text(TURNING) if own else builtin_system("delayed_logistic")
+    (onset,) = click(system, "1" if own else "2", "0.1").onsets
+    assert onset.kind is Kind.NEIMARK_SACKER
+    return onset
+
+
+@pytest.mark.parametrize("own", [False, True])
+def test_neimark_sacker_onsets_are_confirmed_and_their_side_is_looked_at(own: bool) -> None:
+    claim = claim_of(neimark_sacker(own))
+    assert claim.criticality == "supercritical"
+    assert check(claim).words == "confirmed"
+    other = dataclasses.replace(claim, criticality="subcritical")
+    other = damaged(other, criticality="subcritical", sealed=True)
+    assert verdict_of(other) == (Outcome.REFUSED, Part.CRITICALITY)
+    assert verdict_of(seal(shifted(claim, "1e-15"))) == (Outcome.REFUSED, Part.VALUE)
+    assert verdict_of(seal(box_by(claim, "1e-15"))) == (Outcome.REFUSED, Part.BOX)
+
+
+def test_a_neimark_sacker_onset_is_no_flip() -> None:
+    claim = claim_of(neimark_sacker(False))
+    flip = dataclasses.replace(claim, kind="flip", period_after=2)
+    assert check(damaged(flip, kind="flip", sealed=True)).outcome is Outcome.REFUSED
+    # And a flip is no Neimark-Sacker onset: its multipliers have another product than 1.
+    flip = claim_of(ladder()[0])
+    turned = dataclasses.replace(flip, kind="Neimark-Sacker", period_after=1)
+    assert check(damaged(turned, kind="Neimark-Sacker", sealed=True)).outcome is Outcome.REFUSED

@@ -12,10 +12,11 @@ from tinemark.verify.claims import Claim, NotCheckable, Outcome, Paper, Part, Re
 from tinemark.verify.cycles import OneState
 from tinemark.verify.decimals import last_unit, rational
 from tinemark.verify.many_cycles import ManyStates
+from tinemark.verify.many_states import NEIMARK_SACKER
 from tinemark.verify.one_state import Numbers
 from tinemark.verify.system import Plain, programs, read
 
-KINDS = ("flip", "fold")
+KINDS = ("flip", "fold", NEIMARK_SACKER)
 LONGEST_PERIOD = 2**16
 MOST_EFFORT = 2**22
 """Steps of formulas along the cycle, each counted by what its precision costs."""
@@ -85,6 +86,10 @@ def _check(claim: Claim) -> None:
         raise NotCheckable(
             f"proofs of the kind {paper.kind[:40]} are not checked by the second implementation"
         )
+    if paper.kind == NEIMARK_SACKER and len(plain.states) != 2:
+        if len(plain.states) == 1:
+            raise Refused(Part.KIND, "a map of one state has no Neimark-Sacker onset")
+        raise NotCheckable("Neimark-Sacker onsets of more than two states are not checked here")
     formulas = programs(plain, paper.parameter)
     if paper.period > LONGEST_PERIOD:
         raise NotCheckable(f"the cycle has more than {LONGEST_PERIOD} points")
@@ -114,7 +119,7 @@ def _paper(claim: Claim) -> Paper:
     if claim.paper is None:
         if not proved:
             raise NotCheckable(f"it is {claim.status}, and claims no proof")
-        if claim.kind not in KINDS or len(claim.states) > 1:
+        if claim.kind not in KINDS:
             raise NotCheckable("it has no certificate, and onsets of its kind may have none yet")
         raise Refused(Part.STATUS, "it says proved, and has no certificate; refine it to prove it again")
     if not proved and not claim.waits:
@@ -134,9 +139,8 @@ def _same_words(claim: Claim, paper: Paper) -> None:
             f'the row says "{claim.criticality[:40]}", the certificate "{paper.criticality[:40]}"',
         )
     period = paper.period
-    before, after = {"flip": (period, 2 * period), "fold": (0, period)}.get(
-        paper.kind, (claim.period_before, claim.period_after)
-    )
+    expected = {"flip": (period, 2 * period), "fold": (0, period), NEIMARK_SACKER: (period, period)}
+    before, after = expected.get(paper.kind, (claim.period_before, claim.period_after))
     if period < 1 or (claim.period_before, claim.period_after) != (before, after):
         raise Refused(Part.PERIOD, "the row's periods are not those of the certificate")
 
@@ -145,7 +149,7 @@ def _numbers(claim: Claim, paper: Paper) -> Numbers:
     value, lower, upper = (rational(text) for text in (claim.value, claim.lower, claim.upper))
     if value is None or lower is None or upper is None:
         raise Refused(Part.VALUE, "the value or an end of its interval is no number to work with")
-    if not lower <= value <= upper or lower == upper:
+    if not lower <= value <= upper:
         raise Refused(Part.VALUE, "the value does not lie between its ends")
     sides = []
     for middle, half in (paper.parameter_box, *((m, h) for _, m, h in paper.state_boxes)):
@@ -179,7 +183,8 @@ def _same_digest(claim: Claim, paper: Paper) -> None:
 def _bits(numbers: Numbers, period: int) -> int:
     """Precision for a first attempt: the box must be seen well inside, after a long way round."""
     least = min(half for _, half in (numbers.parameter, *numbers.states))
-    least = min(least, numbers.upper - numbers.lower)
+    if numbers.upper > numbers.lower:
+        least = min(least, numbers.upper - numbers.lower)
     depth = max(0, least.denominator.bit_length() - least.numerator.bit_length())
     height = max(
         abs(middle).numerator.bit_length() - abs(middle).denominator.bit_length()

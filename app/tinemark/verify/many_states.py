@@ -1,10 +1,10 @@
-"""Flips and folds of maps of several states, proved again on the certificate's box.
+"""Flips, folds and Neimark-Sacker onsets of maps of several states, proved again on the certificate's box.
 
-The unknowns are one cycle point x and the parameter r; the equations are f^p(x, r) = x and
-det(A + 1) = 0 for a flip, det(A - 1) = 0 for a fold, with A the derivative of f^p in x. Where the Krawczyk
-test succeeds the equations are regular at their zero. Together with a critical multiplier that is simple,
-that alone says that a flip's multiplier crosses -1 with speed, and that at a fold the parameter moves
-the cycle at first order and the tangency is of second order.
+The unknowns are one cycle point x and the parameter r. With A the derivative of f^p in x, the equations are
+f^p(x, r) = x and det(A + 1) = 0 for a flip, det(A - 1) = 0 for a fold, det A = 1 for a Neimark-Sacker
+onset of two states. Where the Krawczyk test succeeds the equations are regular at their zero. Together
+with a critical multiplier that is simple, that alone says that a flip's multiplier crosses -1 with speed, and
+that at a fold the parameter moves the cycle at first order and the tangency is of second order.
 """
 
 from __future__ import annotations
@@ -15,6 +15,7 @@ from typing import NoReturn
 
 from tinemark.verify import intervals as iv
 from tinemark.verify import many_cycles as mc
+from tinemark.verify import neimark_sacker
 from tinemark.verify.claims import NotCheckable, Paper, Part, Refused, Undecided
 from tinemark.verify.decimals import last_unit, rational
 from tinemark.verify.intervals import ONE, ZERO, Interval
@@ -31,6 +32,7 @@ from tinemark.verify.matrices import (
 from tinemark.verify.newton import Side, image, inside, inverse, times
 from tinemark.verify.one_state import STATE_UNITS, TARGETS, VALUE_UNITS, Numbers, prime_factors
 
+NEIMARK_SACKER = "Neimark-Sacker"
 ATTEMPTS = 3
 NEWTON_STEPS = 6
 CIRCLE_BITS = 64
@@ -75,8 +77,12 @@ def prove(
     if not (numbers.lower <= low and high <= numbers.upper):
         _narrowed(many, paper, numbers, found, bits)
     _least_period(paper, start, end, bits)
-    _multipliers(paper, end, bits)
-    _criticality(many, paper, start, end, bits)
+    if paper.kind == NEIMARK_SACKER:
+        rows = _shifted(paper, end.first, many.size, bits)
+        neimark_sacker.check_claims(many, paper, start, rows, bits)
+    else:
+        _multipliers(paper, end, bits)
+        _criticality(many, paper, start, end, bits)
     if look_for is not None and not end.near:
         raise Refused(Part.STATE, "the printed cycle point does not belong to the cycle")
 
@@ -93,7 +99,9 @@ def _image(
 
 
 def _shifted(paper: Paper, first: Sequence[Sequence[Interval]], size: int, bits: int) -> list[list[Interval]]:
-    """Rows of A - target."""
+    """Rows of the matrix whose determinant is zero at the onset, A - target; A itself where it is 1."""
+    if paper.kind == NEIMARK_SACKER:
+        return [[first[j][i] for j in range(size)] for i in range(size)]
     target = iv.of_whole(TARGETS[paper.kind])
     return [
         [iv.sub(first[j][i], target, bits) if i == j else first[j][i] for j in range(size)]
@@ -103,7 +111,8 @@ def _shifted(paper: Paper, first: Sequence[Sequence[Interval]], size: int, bits:
 
 def _residual(paper: Paper, point: Sequence[Interval], there: Carried, bits: int) -> list[Interval]:
     gaps = [iv.sub(x, y, bits) for x, y in zip(there.x, point, strict=True)]
-    return [*gaps, determinant(_shifted(paper, there.first, len(gaps), bits), bits)]
+    found = determinant(_shifted(paper, there.first, len(gaps), bits), bits)
+    return [*gaps, iv.sub(found, ONE, bits) if paper.kind == NEIMARK_SACKER else found]
 
 
 def _slopes(size: int, paper: Paper, end: Carried, bits: int) -> list[list[Interval]]:

@@ -11,7 +11,7 @@ from tinemark.verify.claims import Undecided
 from tinemark.verify.intervals import ONE, ZERO, Interval
 
 Rows = Sequence[Sequence[Interval]]
-MOST_PIECES = 20_000
+MOST_PIECES = 4_000
 """Arcs of the unit circle looked at before giving up."""
 
 
