@@ -147,6 +147,18 @@ def test_criticality_sees_the_other_state(cubic: int, coupling: int, expected: C
     assert coefficient == pytest.approx(4 * (cubic + 2 * coupling), rel=1e-6)
 
 
+def test_a_subcritical_flip_is_a_jump_back_to_its_fold() -> None:
+    """The 2-cycle ±x has r = 1 - x^2 + x^4, so it turns at r = 3/4 exactly."""
+    system = own_system({"x": "-r*x - x**3 + x**5", "y": "y/2 + x/10"}, start="0.01")
+    (onset,) = click(system, "0.98", "0.3", observed="0", height="1")
+    assert_is(onset, Fraction(1), Kind.FLIP, 1, 2)
+    assert onset.criticality is Criticality.SUBCRITICAL
+    assert "the change is a jump: above r = 1 " in onset.consequence
+    assert "turns back at the fold r = 0.75 (proved)" in onset.consequence
+    (fold,) = click(system, "0.76", "0.1", observed="0.71", height="0.5")
+    assert_is(fold, Fraction(3, 4), Kind.FOLD, 0, 2)
+
+
 def test_an_onset_at_zero() -> None:
     system = own_system({"x": "-(1 + r)*x - x*y + 3*x**3", "y": "y/2 + x**2"}, start="0.01")
     (onset,) = click(system, "0.02", "0.3")

@@ -22,6 +22,7 @@ from tinemark.onsets.many_branch import (
     narrowed,
 )
 from tinemark.onsets.many_cycles import Cycle, multipliers, newton, same_cycle
+from tinemark.onsets.many_jumps import with_jump
 from tinemark.onsets.many_ladder import ladder_many
 from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
 from tinemark.onsets.many_onset import Settled, settle_onset
@@ -260,7 +261,10 @@ def _settle(
     message = _message(float_map.many.parameter, shown, lost, wanted)
     if not shown:
         raise NoOnsetFound(message, what_to_do="" if lost else "click nearer to a split")
-    return RefineResult(tuple(item.onset for _, item in shown), message)
+    onsets = []
+    for _, item in shown:
+        onsets.append((yield from with_jump(float_map, item, digits, scales, place.width)))
+    return RefineResult(tuple(onsets), message)
 
 
 def _closed_in(float_map: FloatManyMap, candidate: _Candidate) -> Cycle:

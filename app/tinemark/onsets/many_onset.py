@@ -26,7 +26,7 @@ from tinemark.onsets.many_proof import ManyProof, prove_many
 from tinemark.onsets.many_shooting import Place
 from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Onset, Status, Step
-from tinemark.systems.errors import SwitchingTouched
+from tinemark.systems.errors import SwitchingTouched, Unbounded
 
 FIRST_BITS = 96
 SECOND_PRECISION_BITS = 64
@@ -94,6 +94,15 @@ def settle_onset(
     NotFound
         No onset of this kind and least period in reach.
     """
+    try:
+        return (yield from _settled(float_map, kind, rough, digits, scales, reach))
+    except Unbounded as error:
+        raise NotFound(error.message) from error
+
+
+def _settled(
+    float_map: FloatManyMap, kind: Kind, rough: Cycle, digits: int, scales: Floats, reach: float
+) -> Generator[Step, None, Settled]:
     many = float_map.many
     start = rough_start(float_map, kind, rough)
     first = yield from polish(many, kind, start, FIRST_BITS, scales, reach)
