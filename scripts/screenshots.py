@@ -124,6 +124,7 @@ def _scene(window: Any, scene: str) -> Iterator[Any]:
     if scene == "tolerances":
         window.tolerances.bring_up("tolerances")
         window.rows.select(window.keeper.session.ledger.rows[1].id)
+        yield lambda: True
     if scene == "work":
         view = window.keeper.session.view
         window.keeper.show_view(type(view)(Fraction(128), Fraction("142"), Fraction(0), Fraction(82)))
