@@ -1,7 +1,8 @@
 """What a subcritical flip of several states does: a jump, where orbits go, and the fold that bounds it.
 
 The unstable doubled branch that leaves a subcritical flip goes back over the stable cycle. It is taken up by
-its amplitude along the critical vector and followed by pseudo-arclength continuation (Keller 1977) to its fold.
+its amplitude along the critical vector and followed by pseudo-arclength continuation (Keller 1977), as far as
+its fold.
 """
 
 from __future__ import annotations
