@@ -89,6 +89,7 @@ def _system(path: Path, data: bytes) -> Inspection:
 
 def _session(path: Path) -> Inspection:
     from tinemark.document.ledger import ladder_ids, ladder_title
+    from tinemark.document.proofs import waits
     from tinemark.document.session import system_of
     from tinemark.document.session_file import open_session
 
@@ -96,11 +97,13 @@ def _session(path: Path) -> Inspection:
     system = system_of(session)
     rows = session.ledger.rows
     proved = sum(row.onset.status.value == "proved" for row in rows)
+    waiting = sum(waits(row.onset) for row in rows)
     lines = [
         f'a session: "{session.title}"' if session.title else "a session",
         f'system: "{system.title}" ({system.kind}, {_count(len(system.states), "state")})',
         f"diagram: {session.observe} against {session.parameter}",
-        f"ledger: {_count(len(rows), 'row')}, {proved} proved",
+        f"ledger: {_count(len(rows), 'row')}, {proved} proved"
+        + (f", {waiting} to be proved again (see verify)" if waiting else ""),
         *(f"ladder: {ladder_title(session.ledger, name)}" for name in ladder_ids(session.ledger)),
     ]
     return Inspection("session", tuple(lines))
