@@ -9,6 +9,7 @@ from known_onsets import LADDERS, KnownLadder, ladder
 from running import climb, finish, own_map, system_of
 
 from tinemark.onsets import engine
+from tinemark.onsets.ladder import LONGEST_PERIOD
 from tinemark.onsets.results import Criticality, Kind, LadderLevel, LadderRequest, Status, Step
 from tinemark.systems.errors import NoOnsetFound, TinemarkError
 
@@ -162,3 +163,22 @@ def test_maps_without_a_cascade(formula: str) -> None:
     """Constant, straight and escaping maps end in words, not in a long search."""
     with pytest.raises(NoOnsetFound):
         climb(own_map(formula), "0.5", "1.5", levels=3)
+
+
+def test_a_deep_ladder_can_be_dropped_at_any_step() -> None:
+    """Twenty levels may be asked for; within a long level there are steps, and none is left behind."""
+    request = LadderRequest(system_of("logistic"), "r", Fraction("2.8"), Fraction(4), 1, 20, 25)
+    job = engine.ladder(request)
+    steps, level = 0, 0
+    for item in job:
+        if isinstance(item, LadderLevel):
+            level, steps = item.level, 0
+        elif level == 15:
+            steps += 1
+            if steps == 5:
+                job.close()
+    assert (level, steps) == (15, 5)
+
+
+def test_longest_period_holds_twenty_levels_of_any_window_up_to_sixteen() -> None:
+    assert LONGEST_PERIOD >= 16 * 2**20

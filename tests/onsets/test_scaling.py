@@ -142,6 +142,17 @@ def test_gaps_that_grow_give_no_limit() -> None:
     found = scaling(points([Fraction(1), Fraction(2), Fraction(6), Fraction(9)]))
     assert found.limit is None
     assert "shrink" in found.limit_reason
+    assert found.verdict.name == "undecided"
+    assert "shrink" in found.verdict.sentence
+
+
+def test_levels_at_even_distances_are_no_cascade() -> None:
+    """Six levels whose gaps do not shrink are enough to say so; fewer are not."""
+    even = [Fraction(n) for n in range(6)]
+    found = scaling(points(even))
+    assert (found.verdict.name, found.verdict.consistent) == ("none", False)
+    assert "not a doubling cascade" in found.verdict.sentence
+    assert scaling(points(even[:5])).verdict.name == "undecided"
 
 
 def test_steady_ratios_of_no_class_are_said_to_be_none() -> None:
@@ -149,6 +160,7 @@ def test_steady_ratios_of_no_class_are_said_to_be_none() -> None:
     found = scaling(points(values))
     assert found.verdict.name == "none"
     assert found.verdict.consistent is False
+    assert "not a doubling cascade" in found.verdict.sentence
     assert found.limit is not None
     assert holds(found.limit, "5.0")
 

@@ -36,6 +36,7 @@ LEAST_CONTRACTION = Decimal("0.15")
 """Moves of a limit are taken to go on shrinking as they did, by no more than this factor a level. The
 ratios of maps with a high order converge unevenly, so for delta no shrinking is counted on."""
 PREDICTED_LEVELS = 3
+GAPS_DO_NOT_SHRINK = "the last gaps do not shrink, so no limit is in sight"
 
 _Table = Mapping[str, Sequence[Decimal]]
 
@@ -88,7 +89,7 @@ def extrapolate(run: Sequence[LadderPoint]) -> Extrapolation:
         values = [decimal(point.value) for point in run]
         last = _ratios(values)[-1]
         if last <= 1:
-            reason = "the last gaps do not shrink, so no limit is in sight"
+            reason = GAPS_DO_NOT_SHRINK
             return Extrapolation(None, reason, None, reason, ())
         if not _shrinks_for_certain(run, last):
             reason = "the uncertainties of the onsets leave open whether the gaps shrink"

@@ -9,7 +9,7 @@ from fractions import Fraction
 from itertools import pairwise
 
 from tinemark.onsets.class_values import CLASSES, HIGHEST_COMPLETE_ORDER, CascadeClass, class_named
-from tinemark.onsets.extrapolation import extrapolate, limit_of_class, usable_run
+from tinemark.onsets.extrapolation import GAPS_DO_NOT_SHRINK, extrapolate, limit_of_class, usable_run
 from tinemark.onsets.ladder_points import (
     Estimate,
     LadderPoint,
@@ -134,7 +134,7 @@ def scaling(points: Sequence[LadderPoint]) -> Scaling:
     ]
     run = usable_run(ordered, told_apart)
     found = extrapolate(run)
-    verdict = class_verdict(found.delta, len(run))
+    verdict = class_verdict(found.delta, len(run), found.delta_reason)
     known = class_named(verdict.name)
     return Scaling(
         levels=level_scalings(ordered),
@@ -149,7 +149,7 @@ def scaling(points: Sequence[LadderPoint]) -> Scaling:
     )
 
 
-def class_verdict(delta: Estimate | None, levels: int) -> ClassVerdict:
+def class_verdict(delta: Estimate | None, levels: int, reason: str = "") -> ClassVerdict:
     """Which class a delta with its uncertainty belongs to.
 
     Parameters
@@ -158,10 +158,16 @@ def class_verdict(delta: Estimate | None, levels: int) -> ClassVerdict:
         As extrapolated; None when nothing is known.
     levels
         How many successive onsets it rests on: below four there is no verdict.
+    reason
+        Why delta is not known.
     """
-    if levels < LEAST_LEVELS_FOR_A_CLASS or delta is None:
+    if levels < LEAST_LEVELS_FOR_A_CLASS:
         need = f"a class needs at least {LEAST_LEVELS_FOR_A_CLASS} successive onsets"
-        why = need if levels < LEAST_LEVELS_FOR_A_CLASS else "the ratios do not say where they tend"
+        return ClassVerdict(UNDECIDED, None, f"undecided: {need}")
+    if delta is None:
+        if reason == GAPS_DO_NOT_SHRINK and levels >= LEAST_LEVELS_FOR_NO_CLASS:
+            return ClassVerdict(NONE, False, f"none: not a doubling cascade, since {reason}")
+        why = reason or "the ratios do not say where they tend"
         return ClassVerdict(UNDECIDED, None, f"undecided: {why}")
     inside = [item for item in CLASSES if item.lies_within(delta.lower, delta.upper)]
     shown = f"delta {delta.value} ± {delta.expanded_text}"
@@ -203,4 +209,4 @@ def _verdict_without(delta: Estimate, levels: int, shown: str, share: Fraction) 
         return ClassVerdict(
             UNDECIDED, None, f"undecided: {shown} holds no class value; more levels would tell"
         )
-    return ClassVerdict(NONE, False, f"none: {shown} holds no class value, so no such cascade is seen")
+    return ClassVerdict(NONE, False, f"none: not a doubling cascade, since {shown} holds no class value")
