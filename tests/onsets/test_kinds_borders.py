@@ -42,6 +42,8 @@ def test_border_collision_of_two_straight_pieces(a: str, b: str, before: int, af
     assert _holds(onset, Fraction(0))
     assert Fraction(onset.upper) - Fraction(onset.lower) < Fraction(1, 10**20)
     assert words in onset.consequence
+    # x = r/(1 - a) is on the left for r below 0; only the pair of the last case meets there from below too.
+    assert "coming from below" in onset.consequence
     assert "x = 0, touches the surface x = 0" in onset.consequence
     finish(verify_onset(system, onset))
 

@@ -9,8 +9,11 @@ import pytest
 from running import click, finish, own_map, system_of
 
 from tinemark.onsets.engine import refine
+from tinemark.onsets.one_map import one_map
+from tinemark.onsets.polish import Lost, Rough
 from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Criticality, Kind, Onset, RefineRequest, Status
+from tinemark.onsets.settling import settle_any
 from tinemark.onsets.verification import verify_onset
 from tinemark.systems.errors import NoOnsetFound
 from tinemark.systems.system import System
@@ -31,6 +34,8 @@ def _holds(onset: Onset, value: Fraction | int) -> bool:
         ("x - (x - 1)*(x - 1 - r)/2", "0.02", "0.5", "0"),
         # The 2-cycle 0 <-> 1 does not move; its multiplier (-1/2)*(-3/2 - r) is 1 at r = 1/2.
         ("(1 - x)*(1 + x/2) + r*x**2*(1 - x)", "0.48", "0.2", "1/2"),
+        # A piecewise formula, off its surface.
+        ("r*x*(1 - x) if x < 1/2 else r/4 - x/9", "0.98", "0.2", "1"),
     ],
 )
 def test_transcritical_point_is_proved(formula: str, near: str, width: str, value: str) -> None:
@@ -103,6 +108,25 @@ def test_pitchfork_without_symmetry() -> None:
     onset = click(own_map("r*x - x**3 + x**4"), "1.01", "0.1").onsets[0]
     assert (onset.kind, onset.status) == (Kind.PITCHFORK, Status.PROVED)
     assert "though no symmetry" in onset.consequence
+
+
+def test_straight_line_has_no_pitchfork() -> None:
+    """At mu = 1 every point of the tent's left side is a fixed point: nothing branches off."""
+    kinds = frozenset({Kind.PITCHFORK, Kind.TRANSCRITICAL})
+    request = RefineRequest(system_of("tent"), "mu", Fraction("1.02"), Fraction("0.2"), kinds=kinds)
+    with pytest.raises(NoOnsetFound):
+        finish(refine(request))
+
+
+def test_symmetry_on_paper_alone_is_not_enough() -> None:
+    """sqrt(x)**2 is x to algebra and undefined below zero: the mirrored half of a cycle does not exist."""
+    one = one_map(own_map("-r*sqrt(x)**2*(1 - x**2)"), "r")
+    rough = Rough(Kind.PITCHFORK, 2, Fraction("0.7071067811865475"), Fraction(2))
+    try:
+        onset = finish(settle_any(one, rough, 20)).onset
+    except Lost:
+        return
+    assert onset.status is not Status.PROVED
 
 
 def _damaged(onset: Onset) -> list[Onset]:

@@ -183,7 +183,10 @@ def _continuous(one: OneMap, touch: Touch, here: SideProof, across: Any, speed: 
     if not follows.certain:
         raise NotProved("the one-sided multipliers lie where one outcome gives way to another")
     before, after = (0, period) if follows.opens else (period, follows.rounds * period)
-    words = f"{_touching_words(one, touch, here)}; {follows.words}"
+    # A pair that meets on the surface exists on one side of the onset, whichever of its cycles is asked.
+    from_here = follows.opens or follows.before == float(a)
+    coming = "below" if _exists_below(one, touch, here) == from_here else "above"
+    words = f"{_touching_words(one, touch, here)}; coming from {coming}, {follows.words}"
     evidence = (
         *_evidence(touch, here),
         ("formula continuous across the surface", "by an exact identity"),
@@ -205,9 +208,7 @@ def _decided(a: Any, b: Any) -> None:
 
 def _jumping(one: OneMap, touch: Touch, here: SideProof) -> _Found:
     period = len(touch.word)
-    below, _ = sides_of(one, touch)
-    rising = (touch.word[0][touch.place] == below) == bool(here.speed > 0)
-    past = "above" if rising else "below"
+    past = "above" if _exists_below(one, touch, here) else "below"
     words = (
         f"{_touching_words(one, touch, here)}; the formula jumps there, so the cycle ends: {past} the onset "
         f"no cycle of period {period} goes on from it"
@@ -219,6 +220,12 @@ def _jumping(one: OneMap, touch: Touch, here: SideProof) -> _Found:
         ("crosses the surface with speed", number_words(here.speed)),
     )
     return _Found(Naming(Kind.BORDER_COLLISION, period, 0, words), _proof(here, evidence), here.box)
+
+
+def _exists_below(one: OneMap, touch: Touch, here: SideProof) -> bool:
+    """Whether the cycle of this side exists for parameter values below the onset."""
+    below, _ = sides_of(one, touch)
+    return (touch.word[0][touch.place] == below) == bool(here.speed > 0)
 
 
 def _evidence(touch: Touch, here: SideProof) -> tuple[tuple[str, str], ...]:

@@ -31,6 +31,7 @@ from tinemark.onsets.proofs import (
 from tinemark.onsets.smooth_pieces import PieceWalk, Sides, frozen, smooth_piece, switches, walk_pieces
 from tinemark.systems.derivatives import derivative
 from tinemark.systems.expression import ZERO, Call, Cond, Num, walk
+from tinemark.systems.surfaces import Surface
 
 
 @dataclass(frozen=True)
@@ -81,7 +82,9 @@ def is_continuous(one: OneMap, touch: Touch) -> bool:
     if not choosing:
         # min, max and abs are continuous wherever their arguments are.
         return True
-    chosen = [dict(zip(switches(one), sides, strict=True)) for sides in _both(one, touch)]
+    chosen: list[dict[Surface, int]] = [
+        dict(zip(switches(one), sides, strict=True)) for sides in _both(one, touch)
+    ]
     level = Num(Fraction(touch.level))
     border = Call("sub", (frozen(surface.expr, chosen[0]), level))
     slope = derivative(border, one.state)

@@ -32,6 +32,7 @@ from tinemark.onsets.onset_values import Naming, estimated_onset, proved_onset
 from tinemark.onsets.polish import LEAST_SIZE, Lost, Rough, Settled, first_bits, shown_state
 from tinemark.onsets.proofs import Box, NotProved, Proof, box_around
 from tinemark.onsets.results import Criticality, Kind, Onset, Step
+from tinemark.onsets.smooth_pieces import sides_at
 from tinemark.systems.errors import SwitchingTouched
 from tinemark.systems.expression import ZERO, Call, Expr, Name
 
@@ -78,8 +79,9 @@ def identity_at(one: OneMap, x: float, r: float, period: int) -> Identity | None
         # A reflection's own centre stays put, whatever the parameter.
         if is_mirror(one, total):
             return Identity(total=total, points=known, straight=True)
-    if is_fixed_cycle(one, known):
-        return Identity(points=known, straight=period == 1 and is_straight_at(one, known[0]))
+    word = tuple(sides_at(one, point, r) for point in orbit)
+    if is_fixed_cycle(one, known, word):
+        return Identity(points=known, straight=period == 1 and is_straight_at(one, known[0], word[0]))
     return None
 
 
@@ -107,6 +109,8 @@ def settle_branch_point(
         raise Lost("the branches pass each other without meeting")
     if point.curvature * point.bend - point.speed**2 >= 0:
         raise Lost("a single cycle appears and vanishes there: no branches cross")
+    if _is_straight(one, point, rough.period):
+        raise Lost("the formula is straight there, so every state is a cycle and no branches cross")
     identity = identity_at(one, float(point.x), float(point.r), rough.period)
     reason = ""
     if identity is not None:
@@ -130,6 +134,13 @@ def settle_branch_point(
             onset = proved_onset(one, naming, proof, digits, places, shown)
             return Settled(_certified(one, onset, proof, sides, bits), point.x, point.r)
     return Settled(_estimate(one, rough, point, digits, identity, reason), point.x, point.r)
+
+
+def _is_straight(one: OneMap, point: BranchPoint, period: int) -> bool:
+    cycles, step = float_map(one), 1e-3 * float_map(one).scale
+    x, r = float(point.x), float(point.r)
+    bends = [cycles.slopes(x + side, r, period)[2] for side in (-step, 0.0, step)]
+    return not any(bends)
 
 
 Sides = tuple[tuple[Fraction, Fraction], tuple[Fraction, Fraction]]
@@ -224,7 +235,7 @@ def _naming(one: OneMap, period: int, identity: Identity, proof: Proof, point: B
         pair = "soft" if proof.criticality is Criticality.SUPERCRITICAL else "with a jump"
         words = (
             f"a pair of cycles of period {period} branches off the one that {one.parameter} does not move, "
-            f"{pair}; the formula has no second-order term there, though no symmetry"
+            f"{pair}; the formula has no second-order term there, though no symmetry was recognised"
         )
         return Naming(Kind.PITCHFORK, period, period, words)
     cycle = ", ".join(formula_words(place) for place in identity.points)

@@ -111,7 +111,11 @@ def prove_symmetry_breaking(
         done = stop
         if stop < half:
             visited.append(state[0])
+    # The mirrored half follows from the symmetry only where the formula is defined there as well.
+    whole = yield from in_chunks(advance, state, half, bits, "proving")
     with precision(bits):
+        if not (whole[0].is_finite() and whole[0].overlaps(first)):
+            raise NotProved("the formula is not defined on the whole cycle")
         end, u, v, w, z, schwarzian = state
         image_x, image_r = krawczyk_image(box, inverse, correction, (end, -u, -v, -w, -z, schwarzian))
         # f^q(x) = total - x. The cycle closes early only at x = total/2, or where f^(q/l) has mirrored it.

@@ -92,6 +92,8 @@ def _crossing_of(cycles: CycleMap, found: tuple[Any, Any], start: Cycle) -> Cros
     # At a pitchfork the curvature is zero; away from it, it grows in proportion to the distance.
     step = 1e-3 * cycles.scale
     beside = max(abs(cycles.slopes(x + cycles.number(side), r, start.period)[2]) for side in (-step, step))
+    if beside == 0:
+        return None  # f^p is straight there, so that no second branch leaves at an angle
     kind = Kind.PITCHFORK if abs(w) <= 1e-3 * beside else Kind.TRANSCRITICAL
     return Crossing(kind, start.period, x, r, 2 / abs(z) if z else math.inf)
 

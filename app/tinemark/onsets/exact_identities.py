@@ -14,6 +14,8 @@ from functools import lru_cache
 from typing import Any
 
 from tinemark.onsets.one_map import OneMap
+from tinemark.onsets.smooth_pieces import Sides, smooth_piece
+from tinemark.systems.derivatives import derivative
 from tinemark.systems.expression import Call, Cond, Expr, Name, Num, Pi, children, walk
 
 MOST_NODES = 150
@@ -154,16 +156,30 @@ def is_mirror(one: OneMap, total: Expr) -> bool:
 
 
 @lru_cache(maxsize=256)
-def is_fixed_cycle(one: OneMap, points: tuple[Expr, ...]) -> bool:
-    """Whether these points are run through in turn whatever the parameter's value."""
-    formula = one.exact_derivatives["f"]
+def is_fixed_cycle(one: OneMap, points: tuple[Expr, ...], word: tuple[Sides, ...]) -> bool:
+    """Whether these points are run through in turn whatever the parameter's value.
+
+    Parameters
+    ----------
+    word
+        Which smooth piece of the formula holds at each point; that it does is the caller's to show.
+    """
     return all(
-        vanishes(Call("sub", (replaced(formula, {one.state: point}), points[(place + 1) % len(points)])))
-        for place, point in enumerate(points)
+        vanishes(
+            Call(
+                "sub",
+                (
+                    replaced(smooth_piece(one, sides).formula, {one.state: point}),
+                    points[(place + 1) % len(points)],
+                ),
+            )
+        )
+        for place, (point, sides) in enumerate(zip(points, word, strict=True))
     )
 
 
 @lru_cache(maxsize=256)
-def is_straight_at(one: OneMap, point: Expr) -> bool:
+def is_straight_at(one: OneMap, point: Expr, sides: Sides) -> bool:
     """Whether the second derivative in the state is zero at a point for every value of the parameter."""
-    return vanishes(replaced(one.exact_derivatives["fxx"], {one.state: point}))
+    bend = derivative(smooth_piece(one, sides).formula, one.state, one.state)
+    return vanishes(replaced(bend, {one.state: point}))

@@ -7,7 +7,7 @@ each side (di Bernardo, Budd, Champneys & Kowalczyk, 2008, section 3.1).
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
@@ -98,7 +98,7 @@ class SmoothPiece:
 @lru_cache(maxsize=512)
 def smooth_piece(one: OneMap, sides: Sides) -> SmoothPiece:
     """The piece of a map that holds on these sides of its surfaces."""
-    chosen = dict(zip(switches(one), sides, strict=True))
+    chosen: dict[Surface, int] = dict(zip(switches(one), sides, strict=True))
     formula = frozen(one.exact_derivatives["f"], chosen)
     exprs = [formula, derivative(formula, one.state), derivative(formula, one.parameter)]
     for surface in switches(one):
@@ -107,17 +107,20 @@ def smooth_piece(one: OneMap, sides: Sides) -> SmoothPiece:
     return SmoothPiece(ball_function(tuple(exprs), (one.state, one.parameter)), formula)
 
 
-def frozen(expr: Expr, chosen: dict[Surface, int]) -> Expr:
+def frozen(expr: Expr, chosen: Mapping[Surface, int]) -> Expr:
     """A formula with every switch set by hand."""
     done: dict[int, Expr] = {}
     for node in walk(expr):
         parts = tuple(done[id(child)] for child in children(node))
         surface = _surface_of(node)
         copy: Expr = node
-        if surface is not None:
+        if surface is not None and surface in chosen:
             copy = _chosen_part(node, parts, chosen[surface])
         elif isinstance(node, Call):
             copy = Call(node.fn, parts)
+        elif isinstance(node, Cond):
+            left, right, then, other = parts
+            copy = Cond(left, node.op, right, then, other)
         done[id(node)] = copy
     return done[id(expr)]
 
