@@ -6,8 +6,8 @@ import dataclasses
 from typing import Any
 
 from tinemark.onsets.results import Onset
-from tinemark.verify.check import digest_of
 from tinemark.verify.claims import Claim, Paper
+from tinemark.verify.compare import digest_of
 
 
 def claim_of(onset: Onset, **changes: Any) -> Claim:

@@ -14,8 +14,8 @@ from tinemark.document.onsets_file import CertificateEntry, OnsetsFile
 from tinemark.document.row import Row
 from tinemark.document.session import Session, read_system
 from tinemark.onsets.results import Certificate, Onset, Status
-from tinemark.verify.check import mismatch
 from tinemark.verify.claims import Claim, Outcome, Paper, Verdict
+from tinemark.verify.compare import mismatch
 
 WAITS = "not relied on until its proof is checked again"
 """How the reason of a row begins that is only called estimated because it waits for a check."""

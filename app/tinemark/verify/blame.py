@@ -11,11 +11,11 @@ from fractions import Fraction
 from typing import NoReturn
 
 from tinemark.verify import intervals as iv
-from tinemark.verify.claims import Paper, Part, Refused, Undecided
+from tinemark.verify.claims import Numbers, Paper, Part, Refused, Undecided
 from tinemark.verify.cycles import OneState, at_point, middle_orbit, on_box
 from tinemark.verify.intervals import ONE
 from tinemark.verify.newton import inverse, times
-from tinemark.verify.one_state import TARGETS, Numbers
+from tinemark.verify.one_state import TARGETS
 
 STEPS = 8
 CLOSE = Fraction(1, 10**5)

@@ -4,6 +4,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import Enum
+from fractions import Fraction
+
+NEIMARK_SACKER = "Neimark-Sacker"
+KINDS = ("flip", "fold", NEIMARK_SACKER)
+"""Kinds of onsets whose proofs are checked."""
 
 
 @dataclass(frozen=True)
@@ -69,6 +74,20 @@ class Claim:
     paper: Paper | None
     formulas: tuple[tuple[str, str], ...] | None = None
     values: tuple[tuple[str, str], ...] | None = None
+
+
+@dataclass(frozen=True)
+class Numbers:
+    """The claim's numbers: printed value, a unit of its last digit, its ends, and (middle, half-width) of the
+    box's sides.
+    """
+
+    value: Fraction
+    unit: Fraction
+    lower: Fraction
+    upper: Fraction
+    parameter: tuple[Fraction, Fraction]
+    states: tuple[tuple[Fraction, Fraction], ...]
 
 
 class Outcome(Enum):

@@ -16,7 +16,7 @@ from typing import NoReturn
 from tinemark.verify import intervals as iv
 from tinemark.verify import many_cycles as mc
 from tinemark.verify import neimark_sacker
-from tinemark.verify.claims import NotCheckable, Paper, Part, Refused, Undecided
+from tinemark.verify.claims import NEIMARK_SACKER, NotCheckable, Numbers, Paper, Part, Refused, Undecided
 from tinemark.verify.decimals import last_unit, rational
 from tinemark.verify.intervals import ONE, ZERO, Interval
 from tinemark.verify.many_cycles import Carried, ManyStates
@@ -30,9 +30,8 @@ from tinemark.verify.matrices import (
     without_root,
 )
 from tinemark.verify.newton import Side, image, inside, inverse, times
-from tinemark.verify.one_state import STATE_UNITS, TARGETS, VALUE_UNITS, Numbers, prime_factors
+from tinemark.verify.one_state import STATE_UNITS, TARGETS, VALUE_UNITS, prime_factors
 
-NEIMARK_SACKER = "Neimark-Sacker"
 ATTEMPTS = 3
 NEWTON_STEPS = 6
 CIRCLE_BITS = 64

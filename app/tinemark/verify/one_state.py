@@ -7,11 +7,10 @@ of intervals over the enclosure's box.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from fractions import Fraction
 
 from tinemark.verify import intervals as iv
-from tinemark.verify.claims import Paper, Part, Refused, Undecided
+from tinemark.verify.claims import Numbers, Paper, Part, Refused, Undecided
 from tinemark.verify.cycles import End, OneState, at_point, on_box
 from tinemark.verify.decimals import last_unit, rational
 from tinemark.verify.intervals import ONE, Interval
@@ -23,20 +22,6 @@ VALUE_UNITS = Fraction(3, 5)
 STATE_UNITS = 1
 """How far, in units of its last digit, a printed cycle point may lie from the cycle: it is rounded."""
 TARGETS = {"flip": -1, "fold": 1}
-
-
-@dataclass(frozen=True)
-class Numbers:
-    """The claim's numbers: printed value, a unit of its last digit, its ends, and (middle, half-width) of the
-    box's sides.
-    """
-
-    value: Fraction
-    unit: Fraction
-    lower: Fraction
-    upper: Fraction
-    parameter: Side
-    states: tuple[Side, ...]
 
 
 def prove(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str | None) -> None:

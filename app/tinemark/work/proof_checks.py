@@ -15,7 +15,6 @@ from multiprocessing.connection import Connection
 from multiprocessing.process import BaseProcess
 from typing import TypeAlias
 
-from tinemark.verify.check import check
 from tinemark.verify.claims import Claim, Verdict
 from tinemark.work.jobs import new_id
 
@@ -53,6 +52,8 @@ class ChecksEnded:
 
 def serve(answers: Connection, claims: NamedClaims) -> None:
     """Check claims one after the other and send (place, verdict); the child's side."""
+    from tinemark.verify.check import check
+
     # Ctrl-C in a terminal reaches every process of the group; only the parent decides here.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
     with contextlib.suppress(BrokenPipeError, ConnectionResetError):

@@ -1,0 +1,133 @@
+"""Comparing a certificate with its row: words, numbers, system and digest. No proof, and no arithmetic."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+
+from tinemark.verify.claims import (
+    KINDS,
+    NEIMARK_SACKER,
+    Claim,
+    NotCheckable,
+    Numbers,
+    Outcome,
+    Paper,
+    Part,
+    Refused,
+    Verdict,
+)
+from tinemark.verify.decimals import last_unit, rational
+from tinemark.verify.system import Plain, read
+
+
+def mismatch(claim: Claim) -> Verdict | None:
+    """Whether a certificate does not even fit its row; looks at words, numbers and the digest only.
+
+    None where it fits. Nothing is proved by that, but nothing was changed by accident either.
+    """
+    try:
+        paper, _, _ = compared(claim)
+        same_digest(claim, paper)
+    except Refused as refused:
+        return Verdict(Outcome.REFUSED, refused.part, refused.reason)
+    except NotCheckable as error:
+        return Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
+    return None
+
+
+def compared(claim: Claim) -> tuple[Paper, Numbers, Plain]:
+    """The certificate, its numbers and its system, all of which fit the row."""
+    paper = _paper(claim)
+    _same_words(claim, paper)
+    numbers = _numbers(claim, paper)
+    plain = read(paper.system_text)
+    _same_system(claim, plain)
+    if tuple(name for name, _, _ in paper.state_boxes) != plain.states:
+        raise Refused(Part.BOX, "the box has other states than the system")
+    return paper, numbers, plain
+
+
+def _paper(claim: Claim) -> Paper:
+    proved = claim.status == "proved"
+    if claim.paper is None:
+        if not proved:
+            raise NotCheckable(f"it is {claim.status}, and claims no proof")
+        if claim.kind not in KINDS:
+            raise NotCheckable("it has no certificate, and onsets of its kind may have none yet")
+        raise Refused(Part.STATUS, "it says proved, and has no certificate; refine it to prove it again")
+    if not proved and not claim.waits:
+        raise Refused(Part.STATUS, f"it carries the certificate of a proof, and says {claim.status[:40]}")
+    return claim.paper
+
+
+def _same_words(claim: Claim, paper: Paper) -> None:
+    """What stands in the row and in the certificate must be the same."""
+    if claim.kind != paper.kind:
+        raise Refused(Part.KIND, f"the row says {claim.kind[:40]}, the certificate {paper.kind[:40]}")
+    if claim.parameter != paper.parameter:
+        raise Refused(Part.PARAMETER, "the row and the certificate name different parameters")
+    if claim.criticality != paper.criticality:
+        raise Refused(
+            Part.CRITICALITY,
+            f'the row says "{claim.criticality[:40]}", the certificate "{paper.criticality[:40]}"',
+        )
+    period = paper.period
+    expected = {"flip": (period, 2 * period), "fold": (0, period), NEIMARK_SACKER: (period, period)}
+    before, after = expected.get(paper.kind, (claim.period_before, claim.period_after))
+    if period < 1 or (claim.period_before, claim.period_after) != (before, after):
+        raise Refused(Part.PERIOD, "the row's periods are not those of the certificate")
+
+
+def _numbers(claim: Claim, paper: Paper) -> Numbers:
+    value, lower, upper = (rational(text) for text in (claim.value, claim.lower, claim.upper))
+    if value is None or lower is None or upper is None:
+        raise Refused(Part.VALUE, "the value or an end of its interval is no number to work with")
+    if not lower <= value <= upper:
+        raise Refused(Part.VALUE, "the value does not lie between its ends")
+    sides = []
+    for middle, half in (paper.parameter_box, *((m, h) for _, m, h in paper.state_boxes)):
+        centre, size = rational(middle), rational(half)
+        if centre is None or size is None:
+            raise Refused(Part.BOX, "a side of the box is no number to work with")
+        if size <= 0:
+            raise Refused(Part.BOX, "a side of the box has no width above zero")
+        sides.append((centre, size))
+    return Numbers(value, last_unit(claim.value), lower, upper, sides[0], tuple(sides[1:]))
+
+
+def _same_system(claim: Claim, plain: Plain) -> None:
+    """Where the row says to which system it belongs, the certificate's must be that one."""
+    if claim.formulas is not None and dict(claim.formulas) != dict(
+        zip(plain.states, plain.formulas, strict=True)
+    ):
+        raise Refused(Part.FORMULA, "the certificate's formulas are not those of the row's system")
+    if claim.values is not None:
+        known = dict(plain.values)
+        for name, text in claim.values:
+            if name not in known or known[name] != rational(text):
+                raise Refused(Part.SYSTEM, f'the certificate has another value of "{name[:40]}" than the row')
+
+
+def same_digest(claim: Claim, paper: Paper) -> None:
+    """Refuse a digest that is not that of the certificate and the printed numbers."""
+    if paper.digest != digest_of(claim, paper):
+        raise Refused(Part.DIGEST, "the certificate is not the one that was made with these numbers")
+
+
+def digest_of(claim: Claim, paper: Paper) -> str:
+    """SHA-256 over the certificate and the printed numbers, as certificates define it."""
+    content = [
+        paper.system_text,
+        paper.kind,
+        paper.period,
+        paper.parameter,
+        paper.criticality,
+        paper.precision,
+        list(paper.parameter_box),
+        [list(side) for side in paper.state_boxes],
+        claim.value,
+        claim.lower,
+        claim.upper,
+    ]
+    return hashlib.sha256(json.dumps(content, separators=(",", ":")).encode()).hexdigest()
