@@ -14,6 +14,7 @@ from tinemark.onsets.engine import branches
 from tinemark.onsets.results import BranchRequest, BranchResult, Kind, Step
 from tinemark.systems.errors import NoOnsetFound, TinemarkError
 from tinemark.systems.system import System
+from tinemark.systems.system_file import read_system_text
 
 PIXEL = 1 / 800
 
@@ -164,6 +165,44 @@ def test_branches_that_cross_are_told_from_folds() -> None:
     fork = followed(own_map("r*x - x**3", low="-2", high="2", start="0.3"), view, 1)
     assert {(kind, period) for kind, period, _, _ in fork.passed} == {(Kind.PITCHFORK, 1)}
     assert onsets(fork, view, Kind.PITCHFORK, 1) == pytest.approx([1] * len(fork.passed), abs=1e-6)
+
+
+STANDARD = """
+title = "area-preserving"
+kind = "map"
+[states.x]
+start = "0.1"
+range = ["-2", "2"]
+[states.p]
+start = "0.1"
+range = ["-2", "2"]
+[parameters.K]
+value = "6"
+[next]
+x = "x + p + K*sin(x)"
+p = "p + K*sin(x)"
+[diagram]
+parameter = "K"
+observe = "p"
+"""
+
+
+def test_where_areas_are_preserved_a_pitchfork_is_told_by_its_symmetry() -> None:
+    view = ("5", "7", "-4", "4")
+    result = followed(read_system_text(STANDARD), view, 2)
+    # Chirikov 1979, Lichtenberg and Lieberman (from memory): the 2-cycle's symmetry breaks at 2 pi, and the
+    # asymmetric one flips at 2 sqrt(1 + pi^2); check_values.md, section 5 (exact, R 28).
+    assert onsets(result, view, Kind.PITCHFORK, 2)[0] == pytest.approx(2 * np.pi, abs=1e-5)
+    flips = onsets(result, view, Kind.FLIP, 2)
+    assert len(flips) > 0
+    assert flips == pytest.approx([2 * np.sqrt(1 + np.pi**2)] * len(flips), abs=1e-5)
+
+
+def test_unstable_cycles_of_a_deep_view_are_those_the_settled_ones_split_from() -> None:
+    view = ("3.569", "3.5698", "0.4", "0.6")
+    result = followed(system_of("logistic"), view, 8)
+    # Orbits settle on 32 and more points here; the branches of 8 and 4 run on through the view, unstable.
+    assert {(piece.period, piece.stable) for piece in result.pieces} >= {(8, False)}
 
 
 def test_steps_come_often_and_the_job_can_be_dropped() -> None:

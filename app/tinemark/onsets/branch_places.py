@@ -96,6 +96,13 @@ class Family(Protocol):
     def observed(self, points: Floats, r: float) -> Floats:
         """Observed quantity at each point."""
 
+    def unfolding(self, place: Place) -> tuple[float, float]:
+        """Push and bend of f^p along the direction whose multiplier is nearest 1, in scaled lengths.
+
+        The push is the derivative in the parameter, the bend the second derivative along the direction,
+        both seen from the left critical vector.
+        """
+
 
 @dataclass(frozen=True)
 class Screen:

@@ -9,6 +9,7 @@ import numpy as np
 
 from tinemark.onsets.branch_places import Family, Floats, Place, least_period
 from tinemark.onsets.branches import find_cycle
+from tinemark.onsets.continuation import UPRIGHT
 from tinemark.onsets.cycle_families import ManyFamily, OneFamily
 from tinemark.onsets.float_map import FloatMap
 from tinemark.onsets.many_cycles import Cycle, newton, orbit_ends, returns
@@ -162,6 +163,19 @@ def short_many(
     return found
 
 
+def parents_of(family: Family, place: Place) -> list[Place]:
+    """Cycles that a cycle may have split off from, one after the other: the means of opposite points."""
+    found: list[Place] = []
+    while place.period % 2 == 0:
+        half = place.period // 2
+        parent = family.corrected((place.points[:half] + place.points[half:]) / 2, place.r)
+        if parent is None or least_period(parent.points, family.scales) != half:
+            break
+        found.append(parent)
+        place = parent
+    return found
+
+
 def doubled(family: Family, flip: Place, amplitude: float) -> Place | None:
     """A cycle of the branch that splits off at a flip, by its amplitude (Keller 1977)."""
     count = flip.period
@@ -173,7 +187,8 @@ def doubled(family: Family, flip: Place, amplitude: float) -> Place | None:
     place = family.corrected(points, flip.r, (moves, 0.0))
     if place is None or least_period(place.points, family.scales) != 2 * count:
         return None
-    return place
+    # Straight pieces make a whole upright line of cycles there: no branch to be followed.
+    return None if abs(place.move_r) < UPRIGHT * family.width else place
 
 
 def critical_direction(family: Family, flip: Place) -> Floats | None:

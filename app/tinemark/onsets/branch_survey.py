@@ -12,6 +12,7 @@ import numpy as np
 from tinemark.onsets.branch_places import Event, Family, Floats, Passed, Place, Screen, Trace
 from tinemark.onsets.branch_seeds import (
     doubled,
+    parents_of,
     settled_many,
     settled_one,
     short_many,
@@ -29,6 +30,8 @@ COLUMNS_ONE, COLUMNS_MANY = 192, 48
 SHORT_ONE, SHORT_MANY = 4, 2
 """Longest periods of the cycles looked for whatever their stability."""
 SHORT_COLUMNS = (0.02, 0.5, 0.98)
+LONGEST_SETTLED = 256
+"""Cycles of up to so many points are settled on, for the shorter ones that they split off from."""
 MOST_BRANCHES = 60
 MOST_PLACES = 30_000
 """Places of all branches together: the work is bounded, and the message says when the bound was met."""
@@ -38,6 +41,8 @@ ON_IT = 1e-5
 """Share of the view within which a cycle lies on a branch that was followed."""
 FIRST_AMPLITUDES = (4e-3, 1e-3, 2e-2)
 """Where a doubled branch is taken up, as shares of the state's scale."""
+WEAK_PUSH, WEAK_BEND = 1e-4, 1e-2
+"""Scaled sizes below which a cycle with multiplier 1 counts as not pushed, or not bent."""
 SAME_SPOT = 3e-4
 """Onsets of one kind and period closer than this share of the view are shown as one."""
 LEAPT = 0.05
@@ -171,16 +176,21 @@ def _seeds(family: Family, screen: Screen, most: int) -> Generator[Step, None, l
     columns = COLUMNS_MANY if many else COLUMNS_ONE
     rs = [screen.left + screen.width * (k + 0.5) / columns for k in range(columns)]
     shorts = [screen.left + screen.width * share for share in SHORT_COLUMNS]
+    longest = max(most, LONGEST_SETTLED)
     if isinstance(family, OneFamily):
-        found = yield from settled_one(family, rs, most)
-        found.sort(key=lambda item: item[1].period)
-        found += yield from short_one(family, shorts, min(most, SHORT_ONE))
+        found = yield from settled_one(family, rs, longest)
+        shorts_found = yield from short_one(family, shorts, min(most, SHORT_ONE))
     else:
         assert isinstance(family, ManyFamily)
-        found = yield from settled_many(family, rs, most)
-        found.sort(key=lambda item: item[1].period)
-        found += yield from short_many(family, shorts, min(most, SHORT_MANY))
-    return [place for _, place in found]
+        found = yield from settled_many(family, rs, longest)
+        shorts_found = yield from short_many(family, shorts, min(most, SHORT_MANY))
+    found.sort(key=lambda item: item[1].period)
+    # One of each period stands for what it split off from; is_on() sorts out the rest.
+    first_of = {place.period: place for _, place in reversed(found)}
+    parents = [parent for place in first_of.values() for parent in parents_of(family, place)]
+    seeds = [place for _, place in found] + sorted(parents, key=lambda place: place.period)
+    seeds += [place for _, place in shorts_found]
+    return [place for place in seeds if place.period <= most]
 
 
 def followed(
@@ -341,8 +351,8 @@ def kind_of(family: Family, place: Place, passed: Passed) -> Kind:
     """The kind of an onset that a branch passes.
 
     A multiplier that leaps over -1 or 1 belongs to a cycle that meets a switching surface.
-    Where a multiplier is 1, the cycle's push f^p_r and its bend f^p_xx tell a fold (both are there) from
-    branches that cross: a transcritical point without the push, a pitchfork without both.
+    Where a multiplier is 1, the cycle's push and its bend along the critical direction tell a fold (both
+    are there) from branches that cross: a transcritical point without the push, a pitchfork without both.
     """
     if passed is Passed.NEIMARK_SACKER:
         return Kind.NEIMARK_SACKER
@@ -351,15 +361,10 @@ def kind_of(family: Family, place: Place, passed: Passed) -> Kind:
         return Kind.BORDER_COLLISION
     if passed is Passed.FLIP:
         return Kind.FLIP
-    if not isinstance(family, OneFamily):
-        return Kind.FOLD if passed is Passed.FOLD else Kind.TRANSCRITICAL
-    cycles = family.cycles
-    _, push, bend, _ = cycles.slopes(float(place.points[0, 0]), place.r, place.period)
-    scale = cycles.scale
-    weak = abs(push) * family.width < 1e-4 * scale
-    if passed is Passed.FOLD and not (weak and abs(bend) * scale < 1e-2):
+    push, bend = family.unfolding(place)
+    if passed is Passed.FOLD and not (abs(push) < WEAK_PUSH and abs(bend) < WEAK_BEND):
         return Kind.FOLD
-    return Kind.PITCHFORK if abs(bend) * scale < 1e-2 else Kind.TRANSCRITICAL
+    return Kind.PITCHFORK if abs(bend) < WEAK_BEND else Kind.TRANSCRITICAL
 
 
 def _same(a: tuple[Kind, int, float, float], b: tuple[Kind, int, float, float]) -> bool:

@@ -41,6 +41,8 @@ MOST_PLACES = 1500
 JOINED = 1e-7
 """A doubled cycle whose opposite points are closer than this has joined the branch it split from."""
 ON_THE_CIRCLE = 1e-8
+UPRIGHT = 1e-6
+"""A branch whose parameter changes by less than this share of a step is taken to stand still in it."""
 
 
 @dataclass(frozen=True)
@@ -160,7 +162,7 @@ def _ended(
 
 def _append(family: Family, trace: Trace, here: Place, following: Place, step: float) -> None:
     """Add the next place of a branch, and before it those of what lies between."""
-    for passed in _passed(here, following):
+    for passed in _passed(family, here, following):
         trace.places.append(_located(family, here, following, step, passed))
         trace.events.append(Event(passed, len(trace.places) - 1))
     trace.places.append(following)
@@ -225,11 +227,13 @@ def _acceptable(family: Family, here: Place, following: Place, missed: float, st
     return True
 
 
-def _passed(a: Place, b: Place) -> list[Passed]:
+def _passed(family: Family, a: Place, b: Place) -> list[Passed]:
     """What lies between two neighbouring places."""
     found = []
     if a.move_r * b.move_r < 0:
-        found.append(Passed.FOLD)
+        # A branch that stands upright, as where straight pieces make every cycle neutral, has no folds.
+        if max(abs(a.move_r), abs(b.move_r)) > UPRIGHT * family.width:
+            found.append(Passed.FOLD)
     elif fold_test(a.multipliers) * fold_test(b.multipliers) < 0:
         found.append(Passed.CROSSING)
     if flip_test(a.multipliers) * flip_test(b.multipliers) < 0:

@@ -17,6 +17,12 @@ WORST_SETTLED = 1e-8
 """… or, where rounding does not let it get there, stays below this."""
 
 
+DIFFERENCE = 1e-3
+"""Scaled length of the steps of a second difference."""
+DEFECTIVE = 1e-6
+"""Left and right critical vectors whose cosine is smaller mean a double multiplier."""
+
+
 class OneFamily:
     """Cycles of a map of one state: the shooting equations of all points, condensed to the first."""
 
@@ -83,6 +89,11 @@ class OneFamily:
                 return self._place(xs, r)
             last = size
         return None
+
+    def unfolding(self, place: Place) -> tuple[float, float]:
+        """Push and bend; see `branch_places.Family`."""
+        _, push, bend, _ = self.cycles.slopes(float(place.points[0, 0]), place.r, place.period)
+        return push * self.width / self.cycles.scale, bend * self.cycles.scale
 
     def _condensed(self, xs: list[float], r: float) -> list[tuple[float, float, float]] | None:
         """Shift of each point, and of the one after the last, as a * first shift + b * dr + c."""
@@ -161,3 +172,25 @@ class ManyFamily:
             return None
         moves, move_r = tangent(parts, self.scales, self.width)
         return Place(cycle.points, float(cycle.r), tuple(values), moves, move_r)
+
+    def unfolding(self, place: Place) -> tuple[float, float]:
+        """Push and bend; see `branch_places.Family`."""
+        from tinemark.onsets.many_cycles import condensed
+
+        n = len(self.scales)
+        closing = condensed(self.float_map, place.points, place.r).closing
+        # In scaled states, in which vectors have comparable entries.
+        matrix = closing[:, :n] * self.scales / self.scales[:, None]
+        left, _, right = np.linalg.svd(matrix - np.eye(n))
+        into, direction = left[:, -1], right[-1]
+        cosine = float(into @ direction)
+        # Where areas are preserved the multiplier is double, and the two are at right angles.
+        cosine = cosine if abs(cosine) > DEFECTIVE else 1.0
+        push = float(into @ (closing[:, n] / self.scales)) * self.width / cosine
+        states = place.points[0][:, None] + DIFFERENCE * (self.scales * direction)[:, None] * np.array(
+            [-1, 0, 1]
+        )
+        for _ in range(place.period):
+            states = self.float_map.step(states, place.r)
+        second = (states[:, 0] - 2 * states[:, 1] + states[:, 2]) / DIFFERENCE**2 / self.scales
+        return push, float(into @ second) / cosine
