@@ -276,7 +276,7 @@ def _other_words(others: tuple[complex, ...]) -> tuple[str, str]:
     if not others:
         return "no other multiplier on the unit circle", "there is no other"
     sizes = ", ".join(f"{abs(value):.6g}" for value in others)
-    return "no other multiplier on the unit circle", f"the others have size {sizes}"
+    return "no other multiplier on the unit circle", f"the others have size about {sizes}"
 
 
 def _resonance(multiplier: Any) -> str:
