@@ -7,7 +7,7 @@ from dataclasses import replace
 from fractions import Fraction
 from time import perf_counter
 
-from benches.measuring import Figure, at_most
+from benches.measuring import Figure, at_most, reading
 from tinemark.onsets import engine
 from tinemark.onsets.results import LadderRequest, Onset
 from tinemark.systems.library import builtin_system
@@ -19,7 +19,7 @@ LADDERS = (
     ("logistic", "2.8", "4", 14, None),
     ("henon", "0.2", "1.4", 6, 10.0),
 )
-"""System, ends, levels, and the seconds allowed."""
+"""System, ends, levels, and the seconds allowed where a target is set."""
 
 
 def figures() -> Iterator[Figure]:
@@ -30,7 +30,8 @@ def figures() -> Iterator[Figure]:
         began = perf_counter()
         refused = sum(check(claim).outcome is not Outcome.CONFIRMED for claim in claims)
         spent = perf_counter() - began
-        yield at_most(f"{name}, {levels} levels checked again (s)", spent, allowed or 120.0)
+        words = f"{name}, {levels} levels checked again (s)"
+        yield reading(words, spent) if allowed is None else at_most(words, spent, allowed)
         yield at_most(f"{name}, {levels} levels: not confirmed", refused + levels - len(onsets), 0)
         if allowed:
             passed = sum(
@@ -98,6 +99,6 @@ def _damaged(claim: Claim) -> Iterator[Claim]:
     yield replace(other, paper=replace(paper, criticality="subcritical"))
     middle, half = paper.parameter_box
     yield replace(claim, paper=replace(paper, parameter_box=(moved(middle), half)))
-    yield replace(
-        claim, paper=replace(paper, system_text=paper.system_text.replace("x", "(x*1.0000001)", 99))
-    )
+    head, mark, formulas = paper.system_text.partition("[next]")
+    text = head + mark + formulas.replace('= "', '= "1e-12 + ', 1)
+    yield replace(claim, paper=replace(paper, system_text=text))
