@@ -46,7 +46,7 @@ def refine_one(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     Raises
     ------
     NoOnsetFound
-        No flip and no fold in the view; says what was looked at.
+        No onset in the view; says what was looked at.
     """
     one = one_map(request.system, request.parameter)
     if request.width <= 0:
