@@ -151,7 +151,10 @@ def test_stretches_that_never_become_superstable_are_found_by_settled_orbits() -
     expected = [-(1.4 * x + x**3), 1.4 * x + x**3]
     assert [float(o.value_fraction) for o in result.onsets] == pytest.approx(expected, abs=1e-15)
     assert {o.kind for o in result.onsets} == {Kind.FLIP}
-    assert "no cycle of these periods is superstable" in result.message
+    assert (
+        "no cycle of these periods through turning points with x from -1 to 1 is superstable"
+        in result.message
+    )
     assert "gave 1 more stretch" in result.message
 
 
@@ -172,6 +175,26 @@ def test_a_map_that_switches_is_not_called_complete() -> None:
         [352.1034037197618273], abs=1e-12
     )
     assert "others may be missing" in result.message
+
+
+def test_a_jump_that_the_derivatives_do_not_show_is_not_leapt_over() -> None:
+    # floor has derivative zero on both sides of its jumps: only the surface itself tells of the one at r = 3.
+    found = superstable(own_map("r*x*(1 - x) + 0.001*floor(r)", low="0", high="1"), "2.8", "3.9", 3)
+    assert not found.complete
+    assert any(low < 3 < high for low, high in found.unknown) or any(
+        low < 3 < high for _, low, high in found.undecided
+    )
+
+
+def test_a_cycle_with_two_turning_points_counts_once() -> None:
+    # -r sin(x) at r = pi/2 takes its turning points pi/2 and -pi/2 to each other: one cycle (exact).
+    found = superstable(own_map("-r*sin(x)", low="-4", high="4"), "1", "2", 2).found
+    assert [(item.period, item.r) for item in found] == [(2, pytest.approx(1.5707963267948966, abs=1e-12))]
+    # r sin(x) at r = pi/2 keeps each of them: two steady states.
+    mirrored = superstable(own_map("r*sin(x)", low="-4", high="4"), "1", "2", 1).found
+    assert [(item.period, item.r) for item in mirrored] == [
+        (1, pytest.approx(1.5707963267948966, abs=1e-12))
+    ] * 2
 
 
 def test_border_collisions_are_listed_and_not_taken_for_flips() -> None:

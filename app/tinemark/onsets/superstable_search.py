@@ -15,6 +15,7 @@ from fractions import Fraction
 from typing import Any
 
 from tinemark.onsets.ball_orbits import ball_of, precision
+from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
 from tinemark.onsets.results import Step
 from tinemark.onsets.turning_points import SlopeBalls, Turning, contracted, turning_points
@@ -29,6 +30,8 @@ NARROWEST = Fraction(1, 10**13)
 MOST_SPLITS, HOPELESS = 100, 30
 THINNEST = 512
 """The range is divided into parts no thinner than one in so many to tell turning points apart."""
+SAME = 1e-11
+"""Relative distance of parameters within which two superstable cycles may be one."""
 SLICE = 24
 """Intervals between two chances to cancel."""
 
@@ -94,6 +97,7 @@ class _Orbits:
             x, dx, centre = at, d, at
             xs = c
             for _ in range(most):
+                self.slopes.check_smooth(xs, rs)
                 fx, fr = self.first(xs, rs)
                 (x,) = self.value(x, middle)
                 dx = fx * dx + fr
@@ -158,8 +162,24 @@ def superstable_cycles(
                     yield Step("looking for superstable cycles", min(max(share, 0.0), 1.0))
             with precision(BITS):
                 search.found += _narrowed(orbits, turning, isolated)
-    search.found.sort(key=lambda item: item.r)
+    search.found = _distinct(one, search.found)
     return search
+
+
+def _distinct(one: OneMap, found: list[Superstable]) -> list[Superstable]:
+    """Superstable cycles by parameter, one that holds two turning points counted once."""
+    cycles = float_map(one)
+    kept: list[Superstable] = []
+    for item in sorted(found, key=lambda item: (item.r, item.x)):
+        near = [
+            other
+            for other in kept[-8:]
+            if other.period == item.period and abs(other.r - item.r) <= SAME * max(abs(item.r), SAME)
+        ]
+        points = cycles.points(item.x, item.r, item.period)
+        if not any(min(abs(points - other.x)) < 1e-6 * cycles.scale for other in near):
+            kept.append(item)
+    return kept
 
 
 def _parts(

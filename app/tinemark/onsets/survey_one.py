@@ -34,6 +34,8 @@ COLUMNS = 480
 """Places of the range at which orbits are settled."""
 ENDED_WELL = {"left", "joined", "stopped"}
 """How a stable stretch ends where nothing is amiss: out of the range, at a flip, or past an onset."""
+TAKEN_FOR_OTHERS = (Kind.TRANSCRITICAL, Kind.PITCHFORK, Kind.BORDER_COLLISION)
+"""Kinds whose other branches may look like folds or flips there."""
 BORDER_REACH = 1e-6
 """Share of the range within which a border collision lies of where the search has put it."""
 SURVEYED = ONE_STATE_KINDS - {Kind.CRISIS}
@@ -79,6 +81,7 @@ def survey_one(
     fresh = yield from _scan(cycles, screen, request.max_period, found)
     onsets: list[Onset] = []
     candidates = [c for c in found.candidates if c.period <= request.max_period and wanted(request, c.kind)]
+    candidates = [c for c in candidates if screen.holds(c.r)]
     candidates.sort(key=lambda candidate: candidate.r)
     for number, candidate in enumerate(candidates):
         yield Step(
@@ -238,7 +241,7 @@ def _message(
     if not search.found and search.unknown:
         text += f"; found from {settled}: others may be missing, narrow ones before all"
     elif search.complete:
-        text += f"; {_searched_words(len(search.found))}"
+        text += f"; {_searched_words(len(search.found), _within(request))}"
         if not search.sure_of_turning:
             text += ", if the map has no turning points but those seen"
         text += f"; others were looked for from {settled}"
@@ -247,7 +250,7 @@ def _message(
     else:
         missing = _missing(search)
         text += f"; superstable cycles were found in ball arithmetic but for {missing}, and {settled}"
-    lost = _lost(found, onsets, float(high - low))
+    lost = _lost(found, onsets, float(low), float(high))
     if lost:
         text += "; " + "; ".join(lost[:3])
         if len(lost) > 3:
@@ -255,22 +258,32 @@ def _message(
     return text
 
 
-def _searched_words(number: int) -> str:
+def _within(request: SurveyRequest) -> str:
+    """The states among which turning points were looked for, in words."""
+    one = one_map(request.system, request.parameter)
+    low, high = one.extent or _wandered(float_map(one))
+    return f"turning points with {one.state} from {fraction_text(low, 6)} to {fraction_text(high, 6)}"
+
+
+def _searched_words(number: int, within: str) -> str:
     if number == 0:
-        return "no cycle of these periods is superstable in the range, by ball arithmetic"
+        return f"no cycle of these periods through {within} is superstable in the range, by ball arithmetic"
     how = "found in ball arithmetic and followed to the onsets of"
-    so = "so none is missing of a cycle that becomes superstable in the range"
+    so = "so none is missing of a cycle that becomes superstable there"
     if number == 1:
-        return f"the one superstable cycle of these periods was {how} its branch, {so}"
-    return f"all {number} superstable cycles of these periods were {how} their branches, {so}"
+        return f"the one superstable cycle of these periods through {within} was {how} its branch, {so}"
+    return (
+        f"all {number} superstable cycles of these periods through {within} were {how} their branches, {so}"
+    )
 
 
-def _lost(found: _Found, onsets: tuple[Onset, ...], width: float) -> list[str]:
-    """What was seen and could not be solved for, and is no second sight of what was."""
-    crossings = [
-        float(onset.value_fraction) for onset in onsets if onset.kind in (Kind.TRANSCRITICAL, Kind.PITCHFORK)
+def _lost(found: _Found, onsets: tuple[Onset, ...], low: float, high: float) -> list[str]:
+    """What was seen in the range and could not be solved for, and is no second sight of what was."""
+    places = [float(onset.value_fraction) for onset in onsets if onset.kind in TAKEN_FOR_OTHERS]
+    near = 1e-5 * (high - low)
+    texts = [
+        text for r, text in found.lost if low <= r <= high and all(abs(r - other) > near for other in places)
     ]
-    texts = [text for r, text in found.lost if all(abs(r - other) > 1e-5 * width for other in crossings)]
     return list(dict.fromkeys(texts))
 
 

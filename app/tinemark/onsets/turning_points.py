@@ -12,8 +12,9 @@ from flint import arb
 from tinemark.onsets.ball_orbits import ball_of
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
-from tinemark.systems.balls import BallFunction, ball_function
+from tinemark.systems.balls import BallFunction, ball_floor, ball_function, ball_less
 from tinemark.systems.errors import SwitchingTouched
+from tinemark.systems.expression import Call, Expr, walk
 
 CELLS = 48
 DEEPEST = 2
@@ -56,15 +57,49 @@ class SlopeBalls:
         names = (one.state, one.parameter)
         self.slope: BallFunction = ball_function((exprs["fx"],), names)
         self.bends: BallFunction = ball_function((exprs["fx"], exprs["fxx"], exprs["fxr"]), names)
+        surfaces, angles = one.exact_surfaces, tuple(_angles(exprs["f"]))
+        self.kinds = [surface.kind for surface in surfaces]
+        self.sides = ball_function(tuple(surface.expr for surface in surfaces), names) if surfaces else None
+        self.cuts = ball_function(angles, names) if angles else None
+
+    def check_smooth(self, xs: Any, rs: Any) -> None:
+        """Make sure that one smooth piece of the formula holds on all of the balls.
+
+        Evaluation at middles does not see a surface, and derivatives may have lost it.
+
+        Raises
+        ------
+        SwitchingTouched
+            A switching surface may run through.
+        """
+        if self.sides is not None:
+            for kind, side in zip(self.kinds, self.sides(xs, rs), strict=True):
+                if kind == "zero":
+                    ball_less(side, 0)
+                else:
+                    ball_floor(side)
+        if self.cuts is not None:
+            angles = self.cuts(xs, rs)
+            for rise, run in zip(angles[::2], angles[1::2], strict=True):
+                if rise.contains(0) and not run > 0:
+                    raise SwitchingTouched("the orbit touches the cut of atan2")
 
     def over(self, xs: Any, rs: Any) -> Any:
         """The slope over balls, in mean-value form along the parameter.
 
         So that a parameter that is a factor of the formula, as so many are, does not blur its sign.
         """
+        self.check_smooth(xs, rs)
         _, _, mixed = self.bends(xs, rs)
         middle = rs.mid()
         return self.slope(xs, middle)[0] + mixed * (rs - middle)
+
+
+def _angles(formula: Expr) -> list[Expr]:
+    """Arguments of every atan2 in a formula, in pairs."""
+    return [
+        arg for node in walk(formula) if isinstance(node, Call) and node.fn == "atan2" for arg in node.args
+    ]
 
 
 def turning_points(
