@@ -199,11 +199,13 @@ def test_hovering_tells_and_a_click_on_a_sign_picks_there(window, desks, qtbot):
     QTest.mouseMove(diagram, spot)
     qtbot.waitUntil(lambda: diagram.branches.spot is not None)
     assert diagram.branches.words(diagram.words_at).startswith("Fold of a cycle of period 3")
-    picked = []
-    diagram.picked.connect(lambda *at: picked.append(at))
+    diagram.picked.connect(lambda *_: pytest.fail("a sign was clicked, not the place"))
     QTest.mouseClick(diagram, Qt.MouseButton.LeftButton, Qt.KeyboardModifier.NoModifier, spot)
     view = window.keeper.session.view
-    assert picked == [(view.left + view.width / 4, view.bottom + Fraction(0.9) * view.height)]
+    request = desks.refinery.asked[-1]
+    assert request.near == view.left + view.width / 4
+    assert request.observed == view.bottom + Fraction(0.9) * view.height
+    assert request.kinds == {Kind.FOLD} and request.width < view.width / 10
     assert not diagram.grab().isNull()
 
 

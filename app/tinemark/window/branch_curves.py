@@ -73,8 +73,8 @@ class BranchCurves:
             wide, 0.0, 0.0, -high, plot.left() + left * plot.width(), plot.bottom() - bottom * plot.height()
         )
 
-    def paint(self, painter: QPainter, theme: Theme, view: View, plot: QRectF, lit: int = -1) -> None:
-        """Draw all pieces; the one that the pointer is on is drawn stronger."""
+    def paint(self, painter: QPainter, theme: Theme, view: View, plot: QRectF, only: int = -1) -> None:
+        """Draw all pieces; or, stronger, only the one that the pointer is on."""
         shift = self.transform(view, plot)
         if not _sane(shift):
             return
@@ -85,7 +85,9 @@ class BranchCurves:
         shown = [shift.map(line) for line in self._lines]
         # A casing in the ground's colour lets a line be seen over a dense picture.
         for number, (line, piece) in enumerate(zip(shown, self.result.pieces, strict=True)):
-            wide = 2.8 if number == lit else 1.5
+            if only not in (-1, number):
+                continue
+            wide = 1.5 if only == -1 else 2.8
             for pen in (QPen(color(theme.plot, 0.6), wide + 2.0), QPen(color(theme.branch), wide)):
                 pen.setCapStyle(Qt.PenCapStyle.FlatCap)
                 if not piece.stable:

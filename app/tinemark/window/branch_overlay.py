@@ -5,10 +5,11 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from fractions import Fraction
 
-from PySide6.QtCore import QPointF, QRectF
-from PySide6.QtGui import QPainter
+from PySide6.QtCore import QPointF, QRectF, QSize, Qt
+from PySide6.QtGui import QPainter, QPixmap
 
 from tinemark.density.request import View
+from tinemark.onsets.results import Kind
 from tinemark.window import diagram_paint as paint
 from tinemark.window.branch_curves import BranchCurves, CyclePoint, Spot, cycle_words, spot_words
 from tinemark.window.marks import Mark
@@ -23,10 +24,13 @@ class BranchOverlay:
         self.curves: BranchCurves | None = None
         self.point: CyclePoint | None = None
         self.spot: Spot | None = None
+        self._drawn: tuple[object, ...] = ()
+        self._layer = QPixmap()
 
     def show(self, curves: BranchCurves | None) -> None:
         """Have other curves, or none."""
         self.curves, self.point, self.spot = curves, None, None
+        self._drawn, self._layer = (), QPixmap()
 
     def hover(self, view: View, plot: QRectF, position: QPointF | None) -> bool:
         """Find what a position is on; True where that has changed. An onset's sign comes before a curve."""
@@ -38,23 +42,43 @@ class BranchOverlay:
                 self.point = self.curves.cycle_at(view, plot, position)
         return (self.point, self.spot) != before
 
-    def snapped(self, parameter: Fraction, observed: Fraction) -> tuple[Fraction, Fraction]:
-        """The place of the sign that the pointer is on, else the place given."""
+    def sign(self) -> tuple[Kind, Fraction, Fraction] | None:
+        """Kind, parameter and observed quantity of the onset's sign that the pointer is on."""
         if self.curves is None or self.spot is None:
-            return parameter, observed
-        return self.curves.value_at(self.spot.across, self.spot.up)
+            return None
+        return self.spot.kind, *self.curves.value_at(self.spot.across, self.spot.up)
 
     def paint(self, painter: QPainter, theme: Theme, view: View, plot: QRectF, marks: Sequence[Mark]) -> None:
         """Draw the curves, and the onsets on them that have no mark."""
         if self.curves is None:
             return
-        self.curves.paint(painter, theme, view, plot, self.point.piece if self.point else -1)
+        self._paint_curves(painter, theme, view, plot)
+        if self.point is not None:
+            self.curves.paint(painter, theme, view, plot, self.point.piece)
         taken = tuple(
             plot.left() + unit_x(view, mark.value) * plot.width()
             for mark in marks
             if view.left <= mark.value <= view.right
         )
         self.curves.paint_spots(painter, theme, view, plot, taken)
+
+    def _paint_curves(self, painter: QPainter, theme: Theme, view: View, plot: QRectF) -> None:
+        """The curves, from a layer that is drawn anew only when something has changed: thousands of dashes
+        take 20 ms, and the diagram is painted for every move of the pointer.
+        """
+        assert self.curves is not None
+        ratio = painter.device().devicePixelRatioF()
+        drawn = (self.curves, theme.name, view, plot.getRect(), ratio)
+        if drawn != self._drawn:
+            self._drawn = drawn
+            self._layer = QPixmap((plot.size() * ratio).toSize() + QSize(1, 1))
+            self._layer.setDevicePixelRatio(ratio)
+            self._layer.fill(Qt.GlobalColor.transparent)
+            brush = QPainter(self._layer)
+            brush.translate(-plot.topLeft())
+            self.curves.paint(brush, theme, view, plot)
+            brush.end()
+        painter.drawPixmap(plot.topLeft(), self._layer)
 
     def words(self, place_words: Callable[[Fraction, Fraction], str]) -> str:
         """What the pointer is on; empty away from every curve."""

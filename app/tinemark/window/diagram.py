@@ -63,6 +63,8 @@ class Diagram(QWidget):
         Another view; True when it goes on with the gesture of the one before.
     picked, read_by_eye, probe_wanted : Fraction, Fraction
         Parameter and observed quantity under a click with one of the tools.
+    sign_picked : Kind, Fraction, Fraction
+        Kind and place of an onset that a branch passes, under a click.
     pointed : Fraction | None, Fraction | None
         What the pointer is on; None outside the plot.
     mark_chosen : str
@@ -73,6 +75,7 @@ class Diagram(QWidget):
 
     view_wanted = Signal(object, bool)
     picked = Signal(object, object)
+    sign_picked = Signal(object, object, object)
     read_by_eye = Signal(object, object)
     probe_wanted = Signal(object, object)
     pointed = Signal(object, object)

@@ -141,11 +141,14 @@ class Gestures:
             tool = "probe"
         elif event.modifiers() & Qt.KeyboardModifier.ShiftModifier:
             tool = "read"
-        at = diagram.values_at(position)
         self._hover(position)
-        self._use(tool, *(diagram.branches.snapped(*at) if tool == "pick" else at))
+        self._use(tool, *diagram.values_at(position))
 
     def _use(self, tool: str, parameter: Fraction, observed: Fraction) -> None:
+        sign = self.diagram.branches.sign() if tool == "pick" else None
+        if sign is not None:
+            self.diagram.sign_picked.emit(*sign)
+            return
         signals = {
             "pick": self.diagram.picked,
             "read": self.diagram.read_by_eye,

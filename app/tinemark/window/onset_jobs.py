@@ -14,6 +14,7 @@ from PySide6.QtCore import QObject, Signal
 from tinemark.density.request import View
 from tinemark.document.row import Row
 from tinemark.onsets.results import (
+    Kind,
     LadderLevel,
     LadderRequest,
     LadderResult,
@@ -33,6 +34,8 @@ from tinemark.work.jobs import Cancelled, Crashed, Failed, Finished, LevelFound,
 LEAST_DIGITS = 20
 SPARE_DIGITS = 8
 MOST_DIGITS = 150
+SIGN_SHARE = 50
+"""A sign of an onset is searched around within this part of the view."""
 WAITING = "getting ready\N{HORIZONTAL ELLIPSIS}"
 
 
@@ -115,9 +118,19 @@ class OnsetJobs(QObject):
         self.jobs.clear()
         self.refinery = None
 
-    def pick(self, system: System, parameter: str, view: View, near: Fraction, observed: Fraction) -> None:
-        """A click."""
-        request = RefineRequest(system, parameter, near, view.width, observed, view.height, digits_for(view))
+    def pick(
+        self,
+        system: System,
+        parameter: str,
+        view: View,
+        near: Fraction,
+        observed: Fraction,
+        kinds: frozenset[Kind] | None = None,
+    ) -> None:
+        """A click; with `kinds`, on a place that is known to be one of these within a part of a pixel."""
+        near_by = 1 if kinds is None else SIGN_SHARE
+        width, height = view.width / near_by, view.height / near_by
+        request = RefineRequest(system, parameter, near, width, observed, height, digits_for(view), kinds)
         self.ask(Job(request, "", near, observed))
 
     def refine_row(self, system: System, row: Row, view: View) -> None:

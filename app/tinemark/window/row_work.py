@@ -11,7 +11,7 @@ from PySide6.QtGui import QGuiApplication
 from tinemark.document import ledger as ledgers
 from tinemark.document.row import Row
 from tinemark.document.session import system_of_row
-from tinemark.onsets.results import LadderResult, Onset, Status
+from tinemark.onsets.results import Kind, LadderResult, Onset, Status
 from tinemark.systems.system import System
 from tinemark.window.ladder_questions import further_levels, ladder_question, ladder_request
 from tinemark.window.ledger_marks import marks_of
@@ -37,6 +37,7 @@ class RowWork(QObject):
         """Listen to the ledger's panel, the diagram and the answers of the refinery."""
         window, panel = self._window, self._window.ledger_panel
         window.diagram.picked.connect(self.pick)
+        window.diagram.sign_picked.connect(self.pick_sign)
         window.diagram.read_by_eye.connect(self.read_by_eye)
         window.diagram.mark_chosen.connect(self.select)
         window.onsets.onsets_found.connect(self._keep_onsets)
@@ -87,6 +88,13 @@ class RowWork(QObject):
         """A click: find its onset."""
         session = self._keeper.session
         self._window.onsets.pick(self._keeper.system, session.parameter, session.view, parameter, observed)
+        self._window.hint.picked()
+
+    def pick_sign(self, kind: Kind, parameter: Fraction, observed: Fraction) -> None:
+        """A click on an onset that a branch passes: find that one, and none beside it."""
+        session, system = self._keeper.session, self._keeper.system
+        kinds = frozenset({kind})
+        self._window.onsets.pick(system, session.parameter, session.view, parameter, observed, kinds)
         self._window.hint.picked()
 
     def read_by_eye(self, parameter: Fraction, _observed: Fraction) -> None:
