@@ -204,6 +204,16 @@ def test_a_neimark_sacker_onset() -> None:
         assert "closed curve grows softly" in onset.consequence
 
 
+@pytest.mark.parametrize("width", ["0.05", "0.2", "0.5"])
+def test_a_click_exactly_on_an_onset(width: str) -> None:
+    """Predator and prey with b = 1, d = 4: the fixed point x = 1/4 has trace 2 - r/4 and determinant r/2,
+    so its pair meets the unit circle at r = 2, where a search started at the click stands on a zero."""
+    system = own_system({"x": "r*x*(1 - x) - x*y", "y": "4*x*y"}, low="0", start="0.3")
+    (onset,) = click(system, "2", width)
+    assert_is(onset, Fraction(2), Kind.NEIMARK_SACKER, 1, 1)
+    assert onset.status is Status.PROVED
+
+
 def test_nothing_there() -> None:
     with pytest.raises(NoOnsetFound, match="lies within reach"):
         click(own_system({"x": "0.5*x + r/10", "y": "0.2*y + x"}), "1", "0.5")

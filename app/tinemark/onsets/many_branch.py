@@ -233,13 +233,18 @@ def _close_enough(here: BranchPoint, following: BranchPoint, window: Window, ste
 
 def _events(a: BranchPoint, b: BranchPoint) -> list[Event]:
     found = []
-    if a.move_r * b.move_r < 0:
+    if _changes_sign(a.move_r, b.move_r):
         found.append(Event(Crossing.FOLD, a, b))
-    if a.flip_test * b.flip_test < 0:
+    if _changes_sign(a.flip_test, b.flip_test):
         found.append(Event(Crossing.FLIP, a, b))
-    if len(a.multipliers) > 1 and a.circle_test * b.circle_test < 0 and _pair_crosses(a, b):
+    if len(a.multipliers) > 1 and _changes_sign(a.circle_test, b.circle_test) and _pair_crosses(a, b):
         found.append(Event(Crossing.NEIMARK_SACKER, a, b))
     return found
+
+
+def _changes_sign(before: float, after: float) -> bool:
+    # Zero counts as positive: a branch that has a place exactly at an onset shows it on one side of it, once.
+    return (before >= 0) != (after >= 0)
 
 
 def narrowed(float_map: FloatManyMap, event: Event, window: Window, bracket: float) -> Event:
@@ -286,7 +291,10 @@ def _pair_crosses(a: BranchPoint, b: BranchPoint) -> bool:
         return [0.0 if abs(size - 1) < ON_THE_CIRCLE else size - 1 for size in pairs]
 
     before, after = sizes(a), sizes(b)
-    return len(before) == len(after) and any(x * y < 0 for x, y in zip(before, after, strict=True))
+    # A place exactly at the onset lies on neither side; which stretch shows it, `_changes_sign` decides.
+    return len(before) == len(after) and any(
+        x * y < 0 or (x == 0) != (y == 0) for x, y in zip(before, after, strict=True)
+    )
 
 
 def _test(kind: Crossing, point: BranchPoint) -> float:
