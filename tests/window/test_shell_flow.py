@@ -10,6 +10,7 @@ from PySide6.QtTest import QTest
 from PySide6.QtWidgets import QApplication, QMessageBox
 from shell_window import at, window_on
 
+from tinemark.document import ledger as ledgers
 from tinemark.onsets.results import Status
 from tinemark.window.ladder_questions import ladder_request, offered_question
 from tinemark.window.onset_jobs import Job
@@ -61,6 +62,13 @@ def test_look_click_prove_keep_and_reopen(window, qtbot, tmp_path):
     rows = window.keeper.session.ledger.rows
     assert sorted(row.level for row in rows) == list(range(1, 9))
     qtbot.waitUntil(lambda: len(window.ratios._known) == 1, timeout=30_000)
+    # Its cycles' alpha stands beside delta (Briggs 1991), and goes where the ladder is another.
+    panel = window.ratio_panel
+    qtbot.waitUntil(lambda: panel.alpha.isVisibleTo(panel), timeout=30_000)
+    assert panel.alpha.text().startswith("2.502")
+    window.keeper.set_ledger("remove a row", ledgers.remove(window.keeper.session.ledger, [rows[-1].id]))
+    assert not panel.alpha.isVisibleTo(panel)
+    window.keeper.undo()
     # Keep.
     path = tmp_path / "kept.tinemark"
     assert window.isWindowModified()

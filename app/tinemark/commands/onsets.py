@@ -148,7 +148,7 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
         There is no first level.
     """
     from tinemark.onsets import engine
-    from tinemark.onsets.alpha import alpha_of_ladder
+    from tinemark.onsets.ladder_points import COVERAGE, Estimate
     from tinemark.onsets.results import Step
     from tinemark.onsets.scaling import points_of, scaling
 
@@ -163,10 +163,11 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
         onset = item.onset
         progress.line(f"level {item.level}: {onset.parameter} = {onset.value} ({onset.status.value})")
 
-    message = ""
+    message, alpha, alpha_reason = "", None, ""
     try:
         result = run_steps(engine.ladder(request), hear)
         levels, message = list(result.levels), result.message
+        alpha, alpha_reason = result.alpha, result.alpha_reason
     except NoOnsetFound as error:
         # What was found before it gave out still counts.
         if not levels:
@@ -177,13 +178,8 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
     found: list[Found] = [(item.level, item.onset) for item in levels]
     if not levels:
         return found, None, message
-    try:
-        alpha = run_steps(
-            alpha_of_ladder(request.system, request.parameter, levels), lambda step: progress.step(step.text)
-        )
-    finally:
-        progress.clear()
-    scaled = replace(scaling(points_of(levels)), alpha=alpha.estimate, alpha_reason=alpha.reason)
+    number = Estimate(*alpha, COVERAGE) if alpha is not None else None
+    scaled = replace(scaling(points_of(levels)), alpha=number, alpha_reason=alpha_reason)
     return found, scaled, message
 
 

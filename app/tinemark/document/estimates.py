@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import lru_cache
 
@@ -117,6 +117,9 @@ class LadderEstimates:
         The limit if the class is taken for granted; None without one.
     used_levels
         Levels that limit, delta and predictions rest on.
+    alpha, alpha_reason
+        How the cycles shrink from level to level, known where the whole ladder was followed at once; None,
+        and then why, in words. Both empty where it was not worked out.
     """
 
     ladder: str
@@ -134,6 +137,14 @@ class LadderEstimates:
     predictions: tuple[Prediction, ...]
     class_limit: Estimate | None = None
     used_levels: tuple[int, ...] = ()
+    alpha: Estimate | None = None
+    alpha_reason: str = ""
+
+
+def with_alpha(estimates: LadderEstimates, alpha: tuple[str, str] | None, reason: str) -> LadderEstimates:
+    """The same with the alpha of a followed ladder: its value and uncertainty, or why there is none."""
+    number = None if alpha is None else Estimate(Fraction(alpha[0]), Fraction(alpha[1]))
+    return replace(estimates, alpha=number, alpha_reason=reason)
 
 
 def estimates_of(ladder: str, rows: Sequence[Row]) -> LadderEstimates:

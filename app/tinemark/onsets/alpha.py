@@ -30,6 +30,8 @@ from tinemark.systems.system import System
 
 LEAST_LEVELS = 5
 """Superstable cycles, and so ladder levels, below which there is no alpha."""
+LONGEST_CYCLE = 2**17
+"""Longer superstable cycles are left out: those up to here tell twenty digits of alpha."""
 WORKING_DIGITS = 50
 HIGHEST_ORDER = 40
 ORDER_IS_WHOLE = Decimal("0.05")
@@ -115,6 +117,8 @@ def _first_levels(levels: Sequence[LadderLevel]) -> list[LadderLevel]:
     for item in sorted(levels, key=lambda item: item.level):
         sound = item.onset.kind is Kind.FLIP and item.onset.status is Status.PROVED
         if item.level != len(run) + 1 or not sound:
+            break
+        if item.onset.period_after > LONGEST_CYCLE:
             break
         run.append(item)
     return run

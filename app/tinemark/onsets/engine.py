@@ -89,10 +89,22 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
     if len(request.system.states) == 1:
         from tinemark.onsets.ladder import ladder_one
 
-        return (yield from _with_sensitivities(request, ladder_one(request)))
-    from tinemark.onsets.many_engine import ladder_many
+        levels = ladder_one(request)
+    else:
+        from tinemark.onsets.many_engine import ladder_many
 
-    return (yield from _with_sensitivities(request, ladder_many(request)))
+        levels = ladder_many(request)
+    result = yield from _with_sensitivities(request, levels)
+    return (yield from _with_alpha(request, result))
+
+
+def _with_alpha(request: LadderRequest, result: LadderResult) -> Generator[Step, None, LadderResult]:
+    from tinemark.onsets.alpha import alpha_of_ladder
+
+    found = yield from alpha_of_ladder(request.system, request.parameter, result.levels)
+    number = found.estimate
+    texts = (number.value, number.expanded_text) if number is not None else None
+    return replace(result, alpha=texts, alpha_reason=found.reason)
 
 
 def _with_sensitivities(

@@ -215,11 +215,22 @@ class LadderLevel:
 
 @dataclass(frozen=True)
 class LadderResult:
-    """A finished ladder. `message` says why it ended before the levels asked for, if it did."""
+    """A finished ladder.
+
+    Attributes
+    ----------
+    message
+        Why it ended before the levels asked for, if it did.
+    alpha
+        How its cycles shrink from level to level, a decimal text and its uncertainty at 95 % coverage;
+        None, and then `alpha_reason` says why.
+    """
 
     base_period: int
     levels: tuple[LadderLevel, ...]
     message: str = ""
+    alpha: tuple[str, str] | None = None
+    alpha_reason: str = ""
 
 
 @dataclass(frozen=True)

@@ -229,6 +229,9 @@ class RatioPanel(QWidget):
             grid, "limit given the class", "The limit if the class is taken for granted"
         )
         self.delta = self._number(grid, "delta", "What the ratios tend to")
+        self.alpha_name, self.alpha = self._named_number(
+            grid, "alpha", "By which factor the cycles shrink from level to level"
+        )
         self.next_name, self.next = self._named_number(grid, "next onset", "Where to look for the next split")
         outer.addLayout(grid)
         self.coverage = QLabel(
@@ -283,6 +286,9 @@ class RatioPanel(QWidget):
         if estimates.class_limit is not None:
             _show(self.class_limit, estimates.class_limit, "", estimates.parameter)
         _show(self.delta, estimates.delta, estimates.delta_reason, "")
+        for widget in (self.alpha_name, self.alpha):
+            widget.setVisible(bool(estimates.alpha or estimates.alpha_reason))
+        _show(self.alpha, estimates.alpha, estimates.alpha_reason, "")
         if estimates.predictions:
             first = estimates.predictions[0]
             self.next_name.setText(f"onset {first.level}")

@@ -139,6 +139,7 @@ class RowWork(QObject):
     def _keep_ladder(self, system: System, result: LadderResult) -> None:
         if result.levels and self.knows(system):
             place = ledgers.place_of(system, result.levels[0].onset.parameter)
+            self._window.ratios.keep_alpha(result)
             ledger = ledgers.add_ladder(self._keeper.session.ledger, result, place)
             self._keeper.set_ledger("follow the ladder", ledger)
 
