@@ -4,15 +4,18 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator
+from fractions import Fraction
 
-from tinemark.verify import blame, many_states, one_state
+from tinemark.verify import blame, branch_points, many_states, one_state
 from tinemark.verify.claims import (
+    BRANCH_POINTS,
     KINDS,
     NEIMARK_SACKER,
     Claim,
     NotCheckable,
     Numbers,
     Outcome,
+    Paper,
     Part,
     Refused,
     Undecided,
@@ -20,7 +23,7 @@ from tinemark.verify.claims import (
 )
 from tinemark.verify.compare import compared, same_digest
 from tinemark.verify.cycles import OneState
-from tinemark.verify.decimals import rational
+from tinemark.verify.decimals import last_unit, rational
 from tinemark.verify.many_cycles import ManyStates
 from tinemark.verify.system import programs
 
@@ -62,7 +65,7 @@ def check(claim: Claim) -> Verdict:
 
 def _check(claim: Claim) -> None:
     paper, numbers, plain = compared(claim)
-    if paper.kind not in KINDS:
+    if paper.kind not in (*KINDS, *BRANCH_POINTS) or (paper.kind in BRANCH_POINTS and len(plain.states) > 1):
         raise NotCheckable(
             f"proofs of the kind {paper.kind[:40]} are not checked by the second implementation"
         )
@@ -86,12 +89,24 @@ def _check(claim: Claim) -> None:
         return
     one = OneState(formulas[0], plain.states[0], paper.parameter)
     printed = dict(claim.states).get(one.state)
+    if paper.kind in BRANCH_POINTS:
+        _branch_point(one, paper, numbers, bits, printed)
+        same_digest(claim, paper)
+        return
     try:
         one_state.prove(one, paper, numbers, bits, printed)
     except Undecided as error:
         start = numbers.states[0][0] if printed is None else rational(printed)
         blame.find(one, paper, numbers, bits, start, error.reason)
     same_digest(claim, paper)
+
+
+def _branch_point(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str | None) -> None:
+    shown = None if printed is None else rational(printed)
+    if printed is not None and shown is None:
+        raise Refused(Part.STATE, "the printed cycle point is no number to work with")
+    unit = last_unit(printed) if printed is not None else Fraction(0)
+    branch_points.prove(one, paper, numbers, bits, shown, unit)
 
 
 def _bits(numbers: Numbers, period: int) -> int:

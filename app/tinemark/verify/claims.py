@@ -7,8 +7,9 @@ from enum import Enum
 from fractions import Fraction
 
 NEIMARK_SACKER = "Neimark-Sacker"
+BRANCH_POINTS = ("transcritical", "pitchfork")
 KINDS = ("flip", "fold", NEIMARK_SACKER)
-"""Kinds of onsets whose proofs are checked."""
+"""Kinds of onsets whose proofs are checked, besides those of `BRANCH_POINTS` that can be."""
 
 
 @dataclass(frozen=True)

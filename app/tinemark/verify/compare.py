@@ -6,6 +6,7 @@ import hashlib
 import json
 
 from tinemark.verify.claims import (
+    BRANCH_POINTS,
     KINDS,
     NEIMARK_SACKER,
     Claim,
@@ -74,6 +75,7 @@ def _same_words(claim: Claim, paper: Paper) -> None:
         )
     period = paper.period
     expected = {"flip": (period, 2 * period), "fold": (0, period), NEIMARK_SACKER: (period, period)}
+    expected |= dict.fromkeys(BRANCH_POINTS, (period, period))
     before, after = expected.get(paper.kind, (claim.period_before, claim.period_after))
     if period < 1 or (claim.period_before, claim.period_after) != (before, after):
         raise Refused(Part.PERIOD, "the row's periods are not those of the certificate")
