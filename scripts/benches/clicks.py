@@ -131,15 +131,19 @@ def _random_click(chance: random.Random, split: Any) -> Any:
     if chance.random() < 0.2:
         width *= 10 ** -chance.uniform(1, 6)
     height = (split.high - split.low) * 10 ** chance.uniform(-1.5, 0)
-    point = chance.choice(split.points)
+    point = chance.choice(split.points) if split.points else None
     radius, angle = CLICK_PIXELS * math.sqrt(chance.random()), chance.uniform(0, 2 * math.pi)
     near = split.value + Fraction(width * radius * math.cos(angle) / COLUMNS)
+    if point is None:
+        return RefineRequest(split.system, split.parameter, near, Fraction(width))
     observed = Fraction(point + height * radius * math.sin(angle) / ROWS)
     return RefineRequest(split.system, split.parameter, near, Fraction(width), observed, Fraction(height))
 
 
 def _distance(split: Any, request: Any) -> float:
     across = float((split.value - request.near) / request.width) * COLUMNS
+    if request.observed is None or not split.points:
+        return abs(across)
     up = min(abs(point - float(request.observed)) for point in split.points)
     return math.hypot(across, up / float(request.height) * ROWS)
 
@@ -230,7 +234,7 @@ def click_figures(clicks: tuple[Click, ...], words: str, most_seconds: float) ->
 
 
 def _figures_by_kind(clicks: tuple[Click, ...]) -> Iterator[Figure]:
-    for group in SHARES:
+    for group in dict.fromkeys(click.split.group for click in clicks):
         own = [click for click in clicks if click.split.group == group]
         kinds = Counter(click.split.kind for click in own)
         for kind in sorted(kinds):

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import cache
 from typing import Any
@@ -34,10 +34,10 @@ class Split:
         What it belongs to: "one state", "other kinds" or "many states".
     kind, period
         Kind in the engine's words, and least period of the cycle that splits, or that a fold opens.
-    value, value_places
-        The parameter value, and to how many decimals it is known; None where it is exact.
+    value
+        The parameter value, exact or to 20 digits and more.
     points
-        The observed quantity at each cycle point.
+        The observed quantity at each cycle point; none where the split has no place there.
     size
         How far the parameter goes before the next split of the same cascade.
     formula
@@ -141,6 +141,43 @@ def _pieces(a: Fraction, b: Fraction) -> Callable[..., Any]:
     return pieces
 
 
+def jumps() -> Iterator[Split]:
+    """Subcritical splits at r = 1, and the fold at r = 3/4 where the pair beside x = 0 appears.
+
+    Fixed points of r x + x^3 - x^5 have r + x^2 - x^4 = 1; with the other sign they are a 2-cycle.
+    """
+    beside = math.sqrt(0.5)
+    flipping = _of_one_state(lambda x, r, m: -r * x - x**3 + x**5)
+    system = own_map("-r*x - x**3 + x**5")
+    yield replace(_one(system, "flip", 1, Fraction(1), (0.0,), 0.2, flipping), group="other kinds")
+    forking = _of_one_state(lambda x, r, m: r * x + x**3 - x**5)
+    system = own_map("r*x + x**3 - x**5")
+    yield _one(system, "pitchfork", 1, Fraction(1), (0.0,), 0.2, forking)
+    for side in (beside, -beside):
+        fold = _one(system, "fold", 1, Fraction(3, 4), (side,), 0.2, forking)
+        yield replace(fold, group="other kinds")
+
+
+def crises() -> Iterator[Split]:
+    """Ends of windows and of the whole cascade of the logistic map, the odd cubic's two images merging.
+
+    A crisis has no place of its own in the observed quantity, so that it is aimed at along the parameter
+    alone. r = 4 is exact; the others are recomputed (Grebogi, Ott and Yorke 1982, from memory).
+    """
+    known = (
+        ("logistic", "4", 1, 0.002),
+        ("logistic", "3.85680065247776482189058051", 3, 0.0002),
+        ("logistic", "3.96159552339497476672310273", 4, 0.00001),
+        ("logistic", "3.74471033348969346311562748", 5, 0.00006),
+        ("logistic", "3.6785735104283222651037051293065732", 1, 0.001),
+        ("logistic", "3.5925721841069786491021528020446585", 2, 0.0001),
+        ("cubic", "2.59807621135331594029116951225880", 1, 0.002),
+    )
+    for name, value, period, size in known:
+        system = builtin_system(name)
+        yield _one(system, "crisis", period, Fraction(value), (), size, _BRANCH_FORMULAS[name])
+
+
 def maps_of_several_states() -> Iterator[Split]:
     """Hénon's fold and first two flips in closed form for several b, his ladder, and others.
 
@@ -226,6 +263,8 @@ SOURCES: tuple[Callable[[], Iterator[Split]], ...] = (
     one_state_ladders,
     branch_points,
     border_collisions,
+    jumps,
+    crises,
     maps_of_several_states,
 )
 """Where splits come from."""
