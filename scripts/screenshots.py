@@ -22,7 +22,7 @@ from typing import Any
 
 ROOT = Path(__file__).resolve().parents[1]
 LOOKS = ("light-100", "dark-100", "light-200", "dark-200")
-SCENES = ("first", "work", "tolerances")
+SCENES = ("first", "work", "tolerances", "branches")
 SIZE = (1280, 800)
 PATIENCE_S = 90.0
 
@@ -125,6 +125,9 @@ def _scene(window: Any, scene: str) -> Iterator[Any]:
         window.tolerances.bring_up("tolerances")
         window.rows.select(window.keeper.session.ledger.rows[1].id)
         yield lambda: True
+    if scene == "branches":
+        window.branches.switch()
+        yield lambda: window.diagram.branches.curves is not None and window.branches.is_up_to_date
     if scene == "work":
         view = window.keeper.session.view
         window.keeper.show_view(type(view)(Fraction(128), Fraction("142"), Fraction(0), Fraction(82)))

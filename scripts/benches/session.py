@@ -18,12 +18,15 @@ from benches.measuring import Figure, at_most, reading
 SIZE = (1280, 800)
 PATIENCE_S = 120.0
 BEAT_MS = 2
+REST_S = 0.5
 LONGEST_PAUSE_MS = 50.0
 MOST_MEMORY_MB = 500.0
 
 
 def figures() -> Iterator[Figure]:
-    """Pauses while refining, while following a ladder and while zooming; peak memory."""
+    """Pauses while zooming, refining, probing, changing the theme, opening panels and drawing branches; peak
+    memory.
+    """
     with tempfile.TemporaryDirectory() as private:
         surroundings = os.environ | {
             "QT_QPA_PLATFORM": "offscreen",
@@ -137,6 +140,28 @@ def _parts(window: Any) -> Iterator[tuple[str, Any]]:
         yield "refining", lambda: not window.onsets.jobs
     window.keeper.set_probe(Fraction("139.4"))
     yield "probing", lambda: window.probes.is_up_to_date
+    for theme in ("dark", "light"):
+        window.set_theme(theme)
+        yield "changing the theme", _rested()
+    for panel in ("probe", "system", "picture", "ledger"):
+        for _ in range(2):
+            window.panels.toggle(panel)
+            yield "opening and folding panels", _rested()
+    window.files.may_leave = lambda: True
+    window.files.open_builtin("henon")
+    yield "changing the system", _rested(2.0)
+    window.keeper.undo()
+    yield "undoing a system", _rested(2.0)
+    window.branches.switch()
+    yield "following branches", lambda: window.diagram.branches.curves is not None
+    window.surveys.ask(6)
+    yield "picking every onset of the view", lambda: not window.surveys.busy
+
+
+def _rested(seconds: float = REST_S) -> Any:
+    """True some time from now: by then whatever an action has put off is done."""
+    end = time.perf_counter() + seconds
+    return lambda: time.perf_counter() > end
 
 
 if __name__ == "__main__":
