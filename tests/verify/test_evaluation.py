@@ -204,3 +204,46 @@ def test_what_is_not_defined_there_is_undecided(text: str) -> None:
         series_at(text, {"x": Fraction(0), "y": Fraction(0), "r": Fraction(0)}, Fraction(1, 100))
     with pytest.raises(Undecided):
         series_at("exp(exp(exp(exp(x))))", {"x": Fraction(9), "y": Fraction(0), "r": Fraction(0)})
+
+
+@settings(max_examples=300, deadline=None)
+@given(
+    *[st.fractions(-50, 50, max_denominator=10**12)] * 4,
+    st.sampled_from(["add", "sub", "mul", "div", "square", "power"]),
+)
+def test_arithmetic_rounds_outward(
+    a: Fraction, b: Fraction, c: Fraction, d: Fraction, operation: str
+) -> None:
+    """Against exact rationals, at a precision that has to round: every corner's value is inside."""
+    bits = 24
+    x, y = (
+        (iv.of_fraction(min(low, high), bits)[0], iv.of_fraction(max(low, high), bits)[1])
+        for low, high in ((a, b), (c, d))
+    )
+    try:
+        result = {
+            "add": lambda: iv.add(x, y, bits),
+            "sub": lambda: iv.sub(x, y, bits),
+            "mul": lambda: iv.mul(x, y, bits),
+            "div": lambda: iv.div(x, y, bits),
+            "square": lambda: iv.whole_power(x, 2, bits),
+            "power": lambda: iv.whole_power(x, 5, bits),
+        }[operation]()
+    except Undecided:
+        assert operation == "div"
+        assert min(c, d) <= Fraction(1, 10**6)
+        assert max(c, d) >= -Fraction(1, 10**6)
+        return
+    low, high = iv.ends(result)
+    for first in (a, b, (a + b) / 2):
+        for second in (c, d, (c + d) / 2):
+            value = {
+                "add": first + second,
+                "sub": first - second,
+                "mul": first * second,
+                "div": first / second if second else None,
+                "square": first**2,
+                "power": first**5,
+            }[operation]
+            assert value is not None
+            assert low <= value <= high
