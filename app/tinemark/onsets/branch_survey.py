@@ -35,6 +35,8 @@ LONGEST_SETTLED = 256
 MOST_BRANCHES = 60
 MOST_PLACES = 30_000
 """Places of all branches together: the work is bounded, and the message says when the bound was met."""
+MOST_OF_A_STRETCH = 400
+"""Places of one stable stretch; a few tens are usual."""
 NARROWEST = 1e-10
 """Views narrower than this share of the parameter cannot be told apart in doubles."""
 ON_IT = 1e-5
@@ -237,7 +239,7 @@ def _split_off(family: Family, branch: Branch, most_period: int) -> list[Place]:
 
 def stretch(family: Family, screen: Screen, start: Place) -> Generator[Step, None, Branch]:
     """The stable stretch of a branch around one of its cycles, both ways to where it loses stability."""
-    return (yield from followed(family, screen, start, MOST_PLACES, pace=BRISK, stop=_unstable))
+    return (yield from followed(family, screen, start, MOST_OF_A_STRETCH, pace=BRISK, stop=_unstable))
 
 
 def _unstable(place: Place) -> bool:

@@ -18,13 +18,15 @@ from tinemark.onsets.ball_orbits import ball_of, precision
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.one_map import OneMap
 from tinemark.onsets.results import Step
+from tinemark.onsets.smooth_pieces import switches
 from tinemark.onsets.turning_points import SlopeBalls, Turning, contracted, turning_points
 from tinemark.systems.balls import ball_function
 from tinemark.systems.errors import SwitchingTouched
 
 BITS = 80
-MOST_BOXES = 60_000
-"""Intervals looked at, over all turning points: the work is bounded, and what is left is reported."""
+MOST_BOXES, MOST_SWITCHING = 40_000, 4_000
+"""Intervals looked at, over all turning points, of smooth maps and of those that switch, where orbits
+that touch a surface cannot be told. The work is bounded, and what is left is reported."""
 NARROWEST = Fraction(1, 10**13)
 """Intervals are not halved below this share of the parameter."""
 MOST_SPLITS, HOPELESS = 100, 30
@@ -140,7 +142,7 @@ def superstable_cycles(
     parts = yield from _parts(one, orbits.slopes, start - room, stop + room, extent, search)
     if not search.turning:
         return search
-    boxes = 0
+    boxes, most = 0, MOST_SWITCHING if switches(one) else MOST_BOXES
     for low, high, found in parts:
         for turning in found:
             waiting = [(low, high, frozenset(range(1, max_period + 1)))]
@@ -148,7 +150,7 @@ def superstable_cycles(
             while waiting:
                 a, b, periods = waiting.pop()
                 boxes += 1
-                if boxes > MOST_BOXES or b - a < NARROWEST * max(abs(a), abs(b)):
+                if boxes > most or b - a < NARROWEST * max(abs(a), abs(b)):
                     if b >= start and a <= stop:
                         search.undecided += [(period, a, b) for period in sorted(periods)]
                     continue

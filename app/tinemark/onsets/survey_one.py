@@ -9,6 +9,7 @@ zero can be found only by settling orbits in between.
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Generator
 from dataclasses import dataclass, field
 from fractions import Fraction
@@ -38,6 +39,8 @@ TAKEN_FOR_OTHERS = (Kind.TRANSCRITICAL, Kind.PITCHFORK, Kind.BORDER_COLLISION)
 """Kinds whose other branches may look like folds or flips there."""
 BORDER_REACH = 1e-6
 """Share of the range within which a border collision lies of where the search has put it."""
+PATIENCE = 12
+"""Branches of one period followed in vain, after which no more of it are."""
 SURVEYED = ONE_STATE_KINDS - {Kind.CRISIS}
 """Kinds that a survey of a one-state map looks for."""
 SEARCH_SHARE, SCAN_SHARE = 0.4, 0.5
@@ -153,9 +156,13 @@ def _scan(cycles: FloatMap, screen: Screen, most: int, found: _Found) -> Generat
             break
         yield Step(step.text, SEARCH_SHARE + 0.05 + 0.05 * (step.share or 0.0))
     fresh = 0
+    in_vain: Counter[int] = Counter()
     for r, place in seeds:
         if place.period <= most:
             _add_borders(cycles, screen, place, found)
+        # Cycles in a corner of the map, say, lie on branches that cannot be followed: a few tries are enough.
+        if in_vain[place.period] >= PATIENCE:
+            continue
         if place.period > most or any(lies_on(family, branch, place) for branch in found.stretches):
             continue
         near = stretch_family(cycles, screen.width, float(place.points[0, 0]), r, place.period)
@@ -164,6 +171,7 @@ def _scan(cycles: FloatMap, screen: Screen, most: int, found: _Found) -> Generat
             continue
         branch = yield from stretch(near, screen, start)
         _take(cycles, near, branch, found)
+        in_vain[place.period] += not set(branch.ends) <= ENDED_WELL
         fresh += 1
     return fresh
 
