@@ -9,6 +9,7 @@ import pytest
 from running import click, finish, own_map, system_of
 
 from tinemark.onsets.engine import refine
+from tinemark.onsets.exact_identities import vanishes
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.polish import Lost, Rough
 from tinemark.onsets.proofs import NotProved
@@ -16,6 +17,7 @@ from tinemark.onsets.results import Criticality, Kind, Onset, RefineRequest, Sta
 from tinemark.onsets.settling import settle_any
 from tinemark.onsets.verification import verify_onset
 from tinemark.systems.errors import NoOnsetFound
+from tinemark.systems.formula import read_formula
 from tinemark.systems.system import System
 
 
@@ -108,6 +110,26 @@ def test_pitchfork_without_symmetry() -> None:
     onset = click(own_map("r*x - x**3 + x**4"), "1.01", "0.1").onsets[0]
     assert (onset.kind, onset.status) == (Kind.PITCHFORK, Status.PROVED)
     assert "though no symmetry" in onset.consequence
+
+
+@pytest.mark.parametrize(
+    ("text", "zero"),
+    [
+        ("(x + r)**2 - x**2 - 2*x*r - r**2", True),
+        ("sin(pi - x) - sin(x)", True),
+        ("x/(1 + x) + 1/(1 + x) - 1", True),
+        ("0.1 + 0.2 - 0.3", True),
+        ("sqrt(x**2) - x", False),
+        ("1e-30*x", False),
+        ("atan(tan(x)) - x", False),
+        ("abs(x) - x", False),
+        # Too long to expand, and told from zero without trying.
+        ("(1 + x + r)**12*(1 - x + r*x)**12 - x", False),
+    ],
+)
+def test_identities_hold_by_algebra_or_not_at_all(text: str, zero: bool) -> None:
+    """Only what cancels exactly counts, whatever numbers say."""
+    assert vanishes(read_formula(text, ("x", "r"), key="next.x")) is zero
 
 
 def test_straight_line_has_no_pitchfork() -> None:

@@ -13,15 +13,19 @@ from fractions import Fraction
 from functools import lru_cache
 from typing import Any
 
+from tinemark.onsets.ball_orbits import ball_of, precision
 from tinemark.onsets.one_map import OneMap
 from tinemark.onsets.smooth_pieces import Sides, smooth_piece
+from tinemark.systems.balls import ball_function
 from tinemark.systems.derivatives import derivative
-from tinemark.systems.expression import Call, Cond, Expr, Name, Num, Pi, children, walk
+from tinemark.systems.expression import Call, Cond, Expr, Name, Num, Pi, children, names_in, walk
 
 MOST_NODES = 150
-MOST_DEGREE = 40
+MOST_DEGREE = 24
 """Largest formula that is checked, and its degree counted without cancelling: bounds what expanding costs."""
 MOST_BITS = 64
+SAMPLES, SAMPLE_BITS = 12, 200
+"""How many places a formula is tried at before algebra is asked, and how precisely."""
 LARGEST_DENOMINATOR = 10**6
 _ANALYTIC = ("sin", "cos", "tan", "asin", "acos", "atan", "sinh", "cosh", "tanh", "exp", "log", "sqrt")
 
@@ -51,15 +55,37 @@ def vanishes(expr: Expr) -> bool:
     expr
         A formula without conditions, min, max, abs, floor and atan2; with any of them the answer is False.
     """
-    if not _is_small(expr):
+    if not _is_small(expr) or not _may_vanish(expr):
         return False
     import sympy
 
     try:
-        whole = sympy.expand(_to_sympy(expr, sympy))
+        whole = _to_sympy(expr, sympy)
+        if whole == 0:
+            return True
+        whole = sympy.expand(whole)
         return bool(whole == 0 or sympy.cancel(sympy.together(whole)) == 0)
     except (ValueError, TypeError, ArithmeticError, NotImplementedError, AttributeError, RecursionError):
         return False
+
+
+def _may_vanish(expr: Expr) -> bool:
+    """Whether a formula is zero at sample places, as far as balls tell: algebra is slow, and most are not."""
+    names = tuple(sorted(names_in(expr)))
+    evaluate = ball_function((expr,), names)
+    seen = 0
+    for place in range(SAMPLES):
+        with precision(SAMPLE_BITS):
+            values = [
+                ball_of(Fraction(7 * (place + 1) * (3 * count + 5) % 97 - 48, 41))
+                for count in range(len(names))
+            ]
+            result = evaluate(*values)[0]
+            if result.is_finite():
+                seen += 1
+                if not result.contains(0):
+                    return False
+    return seen > 0
 
 
 def _is_small(expr: Expr) -> bool:
