@@ -35,6 +35,8 @@ from tinemark.verify.one_state import STATE_UNITS, TARGETS, VALUE_UNITS, prime_f
 ATTEMPTS = 3
 NEWTON_STEPS = 6
 CIRCLE_BITS = 64
+MOST_EXTRA = 400
+"""Steps of a cycle for which precision is added, two bits each, once the onset is known to be there."""
 
 
 def prove(
@@ -75,6 +77,15 @@ def prove(
         raise Refused(Part.VALUE, "the printed value is not the onset's, rounded")
     if not (numbers.lower <= low and high <= numbers.upper):
         _narrowed(many, paper, numbers, found, bits)
+    # The one zero is in the image, and in the image of that: on so narrow a box signs are told best.
+    bits += 2 * min(paper.period, MOST_EXTRA)
+    try:
+        *box, r = found
+        start = _image(many, paper, found, mc.carried(many, box, r, paper.period, bits, second=True), bits)
+        *box, r = start
+        end = mc.carried(many, box, r, paper.period, bits, second=True, visits=steps, look_for=look_for)
+    except Undecided as error:
+        raise NotCheckable(error.reason) from error
     _least_period(paper, start, end, bits)
     if paper.kind == NEIMARK_SACKER:
         rows = _shifted(paper, end.first, many.size, bits)
