@@ -133,6 +133,9 @@ def test_kinds_and_digits_that_were_asked_for() -> None:
     assert fold.value.startswith("3.828427124746190097603377448419396157139")
     assert fold.digits == 40
     assert result.message.startswith("1 fold of periods up to 3")
+    both = surveyed(system_of("logistic"), "3.8", "3.83", 3, kinds=frozenset({Kind.FOLD, Kind.CRISIS}))
+    assert [onset.kind for onset in both.onsets] == [Kind.FOLD]
+    assert "not looked for in such a survey: crisis" in both.message
 
 
 def test_a_range_that_cuts_a_window_still_gives_the_onset_inside() -> None:

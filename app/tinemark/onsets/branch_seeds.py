@@ -20,6 +20,8 @@ from tinemark.onsets.searches import settled
 
 TRANSIENT = 3000
 TOLERANCES = (1e-9, 1e-6, 1e-4)
+PUT = 1e-9
+"""A multiplier as close to 1 as this is that of a state which stays where it is put."""
 SCATTERED_STARTS = 3
 GRID = 240
 """Places of the state at which short unstable cycles are looked for."""
@@ -45,9 +47,12 @@ def settled_one(
         for (_, r), end, counts in zip(jobs, ends, periods, strict=True):
             for count in dict.fromkeys(n for n in counts if n > 0):
                 place = cycle_place(family, float(end), r, count)
-                if place is not None and place.stable:
+                if place is None or not place.stable:
+                    continue
+                # Where every state stays put, as far out as a formula has died away, there are no branches.
+                if abs(place.multipliers[0] - 1) > PUT:
                     found.append((r, place))
-                    break
+                break
         yield Step("settling orbits across the view", first / len(rs))
     return found
 

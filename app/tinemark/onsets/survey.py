@@ -69,6 +69,14 @@ def check_kinds(request: SurveyRequest, surveyed: frozenset[Kind], of_what: str)
     )
 
 
+def left_out(request: SurveyRequest, surveyed: frozenset[Kind]) -> str:
+    """Kinds asked for among others that a survey does not look for, as the end of a sentence."""
+    if request.kinds is None or request.kinds <= surveyed:
+        return ""
+    names = ", ".join(kind.value for kind in Kind if kind in request.kinds - surveyed)
+    return f"; not looked for in such a survey: {names}"
+
+
 def same(a: Onset, b: Onset) -> bool:
     """Whether two onsets are one.
 

@@ -21,7 +21,7 @@ from tinemark.onsets.many_map import float_many_map, many_map
 from tinemark.onsets.many_onset import settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
-from tinemark.onsets.survey import check_kinds, counted, same, wanted
+from tinemark.onsets.survey import check_kinds, counted, left_out, same, wanted
 from tinemark.systems.errors import SwitchingTouched
 from tinemark.systems.exact import fraction_text
 
@@ -127,6 +127,7 @@ def _message(request: SurveyRequest, survey: Survey, onsets: tuple[Onset, ...], 
         f"and {len(survey.branches)} branches of their cycles followed: others may be missing, since nothing "
         "bounds the cycles of a map of several states"
     )
+    text += left_out(request, KINDS)
     if survey.cut:
         text += "; there are more branches than were followed: narrow the range, or lower the longest period"
     if lost:

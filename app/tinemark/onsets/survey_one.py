@@ -28,7 +28,7 @@ from tinemark.onsets.polish import Lost, Rough
 from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
 from tinemark.onsets.settling import ONE_STATE_KINDS, settle_any
 from tinemark.onsets.superstable_search import Superstable, SuperstableSearch, superstable_cycles
-from tinemark.onsets.survey import check_kinds, counted, same, wanted
+from tinemark.onsets.survey import check_kinds, counted, left_out, same, wanted
 from tinemark.systems.exact import fraction_text
 
 COLUMNS = 480
@@ -245,6 +245,7 @@ def _message(
         f"{counted(onsets)} of periods up to {request.max_period} between {request.parameter} = "
         f"{fraction_text(low, 10)} and {fraction_text(high, 10)}"
     )
+    text += left_out(request, SURVEYED)
     settled = f"orbits settled at {COLUMNS + 2} places of the range"
     if not search.found and search.unknown:
         text += f"; found from {settled}: others may be missing, narrow ones before all"
