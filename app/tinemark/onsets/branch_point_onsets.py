@@ -6,7 +6,10 @@ from collections.abc import Generator
 from dataclasses import dataclass
 from fractions import Fraction
 
+from flint import arb
+
 from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, precision
+from tinemark.onsets.border_search import SEARCH_BITS, on_side
 from tinemark.onsets.branch_point_proofs import (
     constant_ball,
     fixed_cycle_newton,
@@ -32,7 +35,8 @@ from tinemark.onsets.onset_values import Naming, estimated_onset, proved_onset
 from tinemark.onsets.polish import LEAST_SIZE, Lost, Rough, Settled, first_bits, shown_state
 from tinemark.onsets.proofs import Box, NotProved, Proof, box_around
 from tinemark.onsets.results import Criticality, Kind, Onset, Step
-from tinemark.onsets.smooth_pieces import sides_at
+from tinemark.onsets.smooth_pieces import Sides as Pieces
+from tinemark.onsets.smooth_pieces import sides_at, smooth_piece, switches
 from tinemark.systems.errors import SwitchingTouched
 from tinemark.systems.expression import ZERO, Call, Expr, Name
 
@@ -80,9 +84,22 @@ def identity_at(one: OneMap, x: float, r: float, period: int) -> Identity | None
         if is_mirror(one, total):
             return Identity(total=total, points=known, straight=True)
     word = tuple(sides_at(one, point, r) for point in orbit)
-    if is_fixed_cycle(one, known, word):
+    if _is_certain(one, known, word, r) and is_fixed_cycle(one, known, word):
         return Identity(points=known, straight=period == 1 and is_straight_at(one, known[0], word[0]))
     return None
+
+
+def _is_certain(one: OneMap, points: tuple[Expr, ...], word: tuple[Pieces, ...], r: float) -> bool:
+    """Whether the formula's pieces that doubles tell are the ones that hold at the points themselves."""
+    if not switches(one):
+        return True
+    with precision(SEARCH_BITS):
+        around = ball_of(Fraction(r)) + arb(0, 1e-12 + 1e-9 * abs(r))
+        for point, sides in zip(points, word, strict=True):
+            values = smooth_piece(one, sides).evaluate(constant_ball(point), around)
+            if not all(on_side(one, at, values[3 + 3 * at], side) for at, side in enumerate(sides)):
+                return False
+    return True
 
 
 def settle_branch_point(

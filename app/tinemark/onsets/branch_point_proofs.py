@@ -123,7 +123,8 @@ def prove_symmetry_breaking(
         gaps += [(point + first - constant_ball(total)).abs_lower() for point in visited]
         if not all(gap > 0 for gap in gaps):
             raise NotProved(f"the least period may be less than {2 * half}", refuted=True)
-        speed = z + w * v / 2
+        # Of g = total - f^q along its branch, on which dx/dr = -v / 2.
+        speed = w * v / 2 - z
         if not speed.abs_lower() > 0:
             raise NotProved("the symmetry may be touched without being lost")
         criticality, degenerate, words = _softness(-schwarzian / 6)

@@ -1,0 +1,48 @@
+"""Attacks on proofs of further kinds: numbers printed beside the value, formulas in pieces.
+
+Each case once came out wrong, or is one that a proof must not be taken in by.
+"""
+
+from __future__ import annotations
+
+from fractions import Fraction
+
+import pytest
+from running import finish, own_map
+
+from tinemark.onsets.branch_point_onsets import settle_branch_point
+from tinemark.onsets.one_map import one_map
+from tinemark.onsets.polish import Rough
+from tinemark.onsets.results import Kind, Onset, Status
+
+
+def branch_point(formula: str, period: int, x: str, r: str) -> Onset:
+    """What is made of a rough branch point."""
+    system = own_map(formula, low=None)
+    rough = Rough(Kind.PITCHFORK, period, Fraction(x), Fraction(r))
+    return finish(settle_branch_point(one_map(system, "r"), rough, 20)).onset
+
+
+@pytest.mark.parametrize(
+    ("formula", "speed"),
+    [
+        # x^2 = r - 1 on the branch, so -f has the multiplier r - 3 (r - 1) = 3 - 2 r.
+        ("-r*x + x**3", -2.0),
+        # x^2 = (r - 1)/2 on the branch: r - 6 x^2 = 3 - 2 r as well.
+        ("-r*x + 2*x**3", -2.0),
+    ],
+)
+def test_speed_of_the_half_way_multiplier(formula: str, speed: float) -> None:
+    onset = branch_point(formula, 2, "1" if "2*" not in formula else "0.7071067811865", "2")
+    assert onset.status is Status.PROVED
+    assert onset.kind is Kind.PITCHFORK
+    assert float(dict(onset.evidence)["the half-way multiplier passes with speed"]) == pytest.approx(speed)
+
+
+def test_identity_of_a_piece_that_does_not_hold_at_the_point_itself() -> None:
+    """1/3 lies above the surface, its double below it: the piece where 1/3 stays put does not hold there."""
+    apart = "(x - 0.3333333333333333334333333333333333)"
+    formula = f"x + (x - 1/3)*(r - 1) if x < 0.3333333333333333332 else x + {apart}*(r - 1 + {apart})"
+    onset = branch_point(formula, 1, "1/3", "1")
+    assert onset.status is not Status.PROVED
+    assert dict(onset.states)["x"].startswith("0.3333333333333333334")
