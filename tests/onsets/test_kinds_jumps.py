@@ -56,3 +56,12 @@ def test_supercritical_flip_says_nothing_of_a_jump() -> None:
     """The soft flip of the logistic map has no more to say than its periods."""
     onset = click(system_of("logistic"), "3.01", "0.1").onsets[0]
     assert onset.consequence == ""
+
+
+@pytest.mark.parametrize("near", ["0.7499", "0.7503"])
+@pytest.mark.parametrize("width", ["0.06", "0.3"])
+def test_fold_of_a_second_stable_cycle_is_not_missed(near: str, width: str) -> None:
+    """At r = 3/4 a second stable cycle of period 1 opens beside x = 0: each has its branch."""
+    onset = click(own_map("r*x + x**3 - x**5"), near, width, "0.71", "0.5").onsets[0]
+    assert (onset.kind, onset.period_after) == (Kind.FOLD, 1)
+    assert Fraction(onset.lower) < Fraction(3, 4) < Fraction(onset.upper)

@@ -17,6 +17,8 @@ from tinemark.onsets.crises import band_offsets
 from tinemark.onsets.float_map import FloatMap, float_map
 from tinemark.onsets.results import Kind, RefineRequest, Step
 
+APART = 0.1
+"""Cycles of one period further apart than this share of the state's scale are not taken for one branch."""
 PIXEL = 1 / 1280
 """The share of a view that a pixel takes, for what can be seen in it."""
 ASPECT = 0.625
@@ -53,6 +55,18 @@ class Candidate:
     offset: float
 
 
+@dataclass(frozen=True)
+class Span:
+    """A branch that was followed: from where to where, in offsets, and the cycle it was taken up at.
+
+    Where two cycles of one period are stable at a time, the points tell which of them the branch is of.
+    """
+
+    low: float
+    high: float
+    points: tuple[float, ...]
+
+
 @dataclass
 class Search:
     """What has been found so far in one view."""
@@ -60,7 +74,7 @@ class Search:
     request: RefineRequest
     cycles: CycleMap
     candidates: list[Candidate] = field(default_factory=list)
-    spans: dict[tuple[int, int], list[tuple[float, float]]] = field(default_factory=dict)
+    spans: dict[tuple[int, int], list[Span]] = field(default_factory=dict)
     periods: set[int] = field(default_factory=set)
     escaped: int = 0
     orbits: int = 0
@@ -73,9 +87,13 @@ class Search:
         """Width of the view."""
         return float(self.request.width)
 
-    def known(self, start: int, period: int, offset: float) -> bool:
+    def known(self, start: int, period: int, offset: float, x: Any) -> bool:
         """Whether the branch that an orbit from this start settled on has been followed already."""
-        return any(low <= offset <= high for low, high in self.spans.get((start, period), ()))
+        return any(
+            span.low <= offset <= span.high
+            and min(abs(float(x) - point) for point in span.points) <= APART * self.cycles.scale
+            for span in self.spans.get((start, period), ())
+        )
 
     def add(self, crossing: Crossing) -> None:
         """Take a crossing in, unless it is known or out of reach."""
@@ -183,16 +201,17 @@ def _take_seed(search: Search, label: int, x: Any, r: Any, periods: Iterable[int
     near, cycles = search.request.near, search.cycles
     offset = cycles.offset(r, near)
     for period in dict.fromkeys(periods):
-        if search.known(label, period, offset):
+        if search.known(label, period, offset, x):
             return
         cycle = find_cycle(cycles, x, r, period)
         if cycle is None or not abs(cycle.multiplier) < 20:
             continue
         search.periods.add(cycle.period)
-        if search.known(label, cycle.period, offset):
+        if search.known(label, cycle.period, offset, cycle.x):
             return
         crossings, span = crossings_from(cycles, cycle, near, search.width)
-        search.spans.setdefault((label, cycle.period), []).append(span)
+        points = tuple(float(point) for point in cycles.points(cycle.x, cycle.r, cycle.period))
+        search.spans.setdefault((label, cycle.period), []).append(Span(*span, points))
         for crossing in crossings:
             search.add(crossing)
         _add_meetings(search, cycle, crossings)
