@@ -1,10 +1,11 @@
-"""Attacks on proofs of further kinds: numbers printed beside the value, formulas in pieces.
+"""Attacks on proofs of further kinds and on their check: numbers beside the value, formulas in pieces.
 
 Each case once came out wrong, or is one that a proof must not be taken in by.
 """
 
 from __future__ import annotations
 
+import dataclasses
 from fractions import Fraction
 
 import pytest
@@ -14,6 +15,8 @@ from tinemark.onsets.branch_point_onsets import settle_branch_point
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.polish import Rough
 from tinemark.onsets.results import Kind, Onset, Status
+from tinemark.verify.check import check
+from tinemark.verify.claims import Claim, Outcome, Paper, Part
 
 
 def branch_point(formula: str, period: int, x: str, r: str) -> Onset:
@@ -46,3 +49,31 @@ def test_identity_of_a_piece_that_does_not_hold_at_the_point_itself() -> None:
     onset = branch_point(formula, 1, "1/3", "1")
     assert onset.status is not Status.PROVED
     assert dict(onset.states)["x"].startswith("0.3333333333333333334")
+
+
+@pytest.mark.parametrize("state", ["0.1", "1", "-0.0000001"])
+def test_printed_cycle_point_a_unit_off_is_refused(state: str) -> None:
+    """The transcritical point of r x (1 - x) lies at x = 0."""
+    onset = branch_point("r*x*(1 - x)", 1, "0", "1")
+    assert onset.status is Status.PROVED
+    held = onset.certificate
+    assert held is not None
+    paper = Paper(**{field.name: getattr(held, field.name) for field in dataclasses.fields(held)})
+    claim = Claim(
+        name="a row",
+        status="proved",
+        waits=False,
+        kind=onset.kind.value,
+        period_before=onset.period_before,
+        period_after=onset.period_after,
+        criticality=onset.criticality.value,
+        parameter=onset.parameter,
+        value=onset.value,
+        lower=onset.lower,
+        upper=onset.upper,
+        states=onset.states,
+        paper=paper,
+    )
+    assert check(claim).outcome is Outcome.CONFIRMED
+    moved = check(dataclasses.replace(claim, states=(("x", state),)))
+    assert (moved.outcome, moved.part) == (Outcome.REFUSED, Part.STATE)

@@ -19,8 +19,8 @@ from tinemark.verify.newton import Side, image, inside
 ATTEMPTS = 4
 VALUE_UNITS = Fraction(3, 5)
 """How far, in units of its last digit, a value may lie from the onset: half, and the enclosure's width."""
-STATE_UNITS = 1
-"""How far, in units of its last digit, a printed cycle point may lie from the cycle: it is rounded."""
+STATE_UNITS = Fraction(3, 5)
+"""The same for a printed cycle point: 0.1 is not a rounded zero."""
 TARGETS = {"flip": -1, "fold": 1}
 
 
