@@ -11,9 +11,10 @@ from fractions import Fraction
 import pytest
 from running import finish, own_map
 
+from tinemark.onsets.border_onsets import settle_border
 from tinemark.onsets.branch_point_onsets import settle_branch_point
 from tinemark.onsets.one_map import one_map
-from tinemark.onsets.polish import Rough
+from tinemark.onsets.polish import Lost, Rough
 from tinemark.onsets.results import Kind, Onset, Status
 from tinemark.verify.check import check
 from tinemark.verify.claims import Claim, Outcome, Paper, Part
@@ -77,3 +78,17 @@ def test_printed_cycle_point_a_unit_off_is_refused(state: str) -> None:
     assert check(claim).outcome is Outcome.CONFIRMED
     moved = check(dataclasses.replace(claim, states=(("x", state),)))
     assert (moved.outcome, moved.part) == (Outcome.REFUSED, Part.STATE)
+
+
+@pytest.mark.parametrize(
+    "formula",
+    [
+        "0.5*x + r if x < 0 else 0.5*x + r",
+        "0.5*x + r - x**2 if x < 0 else 0.5*x + r + x**2",
+        "0.5*x + r + x*max(x, 0)",
+    ],
+)
+def test_surface_without_a_kink_is_no_border_collision(formula: str) -> None:
+    rough = Rough(Kind.BORDER_COLLISION, 1, Fraction(0), Fraction(0))
+    with pytest.raises(Lost, match="no kink"):
+        finish(settle_border(one_map(own_map(formula, low=None), "r"), rough, 20))

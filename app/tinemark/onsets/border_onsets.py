@@ -11,6 +11,7 @@ from tinemark.onsets.ball_orbits import ball_of, fraction_of, precision
 from tinemark.onsets.border_outcomes import outcome
 from tinemark.onsets.border_proofs import (
     SideProof,
+    bends_sharply,
     exact_sides,
     fitted_box,
     is_continuous,
@@ -166,6 +167,9 @@ def prove_in(one: OneMap, touch: Touch, box: Box, bits: int) -> _Found:
         here = prove_side(one, touch, box, inverse)
         x, r = proved_ball(here.state), proved_ball(here.parameter)
         if is_continuous(one, touch):
+            if not bends_sharply(one, touch, x, r):
+                reason = "the formula may have one and the same slope on both sides of the surface: no kink"
+                raise NotProved(reason, refuted=True)
             beyond = other_side(one, touch)
             across = walk_pieces(one, beyond.word, x, r)
             _, speed = side_claims(one, beyond, across)

@@ -107,6 +107,12 @@ def jumps(one: OneMap, touch: Touch, x: Any, r: Any) -> bool:
     return not (values[0] - values[1]).contains(0)
 
 
+def bends_sharply(one: OneMap, touch: Touch, x: Any, r: Any) -> bool:
+    """Whether the two pieces certainly have different slopes at a point, so that the map has a kink there."""
+    slopes = [smooth_piece(one, sides).evaluate(x, r)[1] for sides in _both(one, touch)]
+    return not (slopes[0] - slopes[1]).contains(0)
+
+
 def prove_side(one: OneMap, touch: Touch, box: Box, inverse: Inverse) -> SideProof:
     """Prove that one side's cycle reaches the surface once in a box, and crosses it with speed.
 
