@@ -8,14 +8,19 @@ from __future__ import annotations
 import dataclasses
 from fractions import Fraction
 
+import numpy as np
 import pytest
 from running import finish, own_map
 
 from tinemark.onsets.border_onsets import settle_border
 from tinemark.onsets.branch_point_onsets import settle_branch_point
+from tinemark.onsets.many_cycles import Cycle
+from tinemark.onsets.many_map import float_many_map, many_map
+from tinemark.onsets.many_onset import settle_onset as settle_many
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.polish import Lost, Rough
-from tinemark.onsets.results import Kind, Onset, Status
+from tinemark.onsets.results import Criticality, Kind, Onset, Status
+from tinemark.systems.system_file import read_system_text
 from tinemark.verify.check import check
 from tinemark.verify.claims import Claim, Outcome, Paper, Part
 
@@ -92,3 +97,30 @@ def test_surface_without_a_kink_is_no_border_collision(formula: str) -> None:
     rough = Rough(Kind.BORDER_COLLISION, 1, Fraction(0), Fraction(0))
     with pytest.raises(Lost, match="no kink"):
         finish(settle_border(one_map(own_map(formula, low=None), "r"), rough, 20))
+
+
+def test_flip_with_another_multiplier_at_plus_one() -> None:
+    """At r = 0 both meet: the coefficient's equations are singular, and no more than an estimate is left."""
+    system = read_system_text(
+        """
+title = "two competitors"
+kind = "map"
+[states.x]
+start = "0.1"
+[states.y]
+start = "0.1"
+[parameters.r]
+value = "1"
+[next]
+x = "x*exp(r - x - 2*y)"
+y = "y*exp(r - 0.5*x - y)"
+[diagram]
+parameter = "r"
+observe = "x"
+"""
+    )
+    rough = Cycle(np.array([[4.0, -2.0]]), 1.6e-16)
+    float_map = float_many_map(many_map(system, "r"))
+    onset = finish(settle_many(float_map, Kind.FLIP, rough, 20, np.array([1.0, 1.0]), 1e-3)).onset
+    assert onset.status is Status.ESTIMATED
+    assert onset.criticality is Criticality.UNDECIDED

@@ -98,7 +98,11 @@ def findings(
         return Findings(critical, others, is_simple, False, crossing, bend, _undecided(kind), flat)
     drift = np.linalg.lstsq(np.eye(n) - matrix, slope, rcond=None)[0]
     crossing = float(p @ (turn @ drift + turn_r))
-    coefficient, spread = yield from _flip_coefficient(many, found, matrix, p * size, q / size)
+    try:
+        coefficient, spread = yield from _flip_coefficient(many, found, matrix, p * size, q / size)
+    except ZeroDivisionError:
+        # Another multiplier is +1: there the coefficient is not defined.
+        return Findings(critical, others, False, False, crossing, None, Criticality.UNDECIDED)
     clear = abs(coefficient) > ONE_SIGN and spread < abs(coefficient) / 10
     criticality = Criticality.UNDECIDED
     if clear and is_simple:
