@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Protocol
 
-from PySide6.QtCore import QElapsedTimer, QObject, QTimer
+from PySide6.QtCore import QElapsedTimer, QObject, Qt, QTimer, Signal
 
 from tinemark.density.request import PictureRequest
 from tinemark.density.sampling import columns_distinct
@@ -34,6 +34,8 @@ class DeskLike(Protocol):
 class PictureJobs(QObject):
     """Asks for pictures of what the session shows; the newest wins, and a stale answer is dropped."""
 
+    _wants = Signal()
+
     def __init__(
         self, diagram: Diagram, status: StatusLine, bridge: Bridge, parent: QObject | None = None
     ) -> None:
@@ -49,7 +51,10 @@ class PictureJobs(QObject):
         self._since = QElapsedTimer()
         self._shown_system = ""
         self._tones: Tones | None = None
-        # Everything that happens in one turn of the event loop asks for one picture.
+        # Everything that happens in one turn of the event loop asks for one picture. A posted call comes
+        # before the widgets are painted: the desk draws while the window shows the old picture stretched.
+        self._posted = False
+        self._wants.connect(self._ask_posted, Qt.ConnectionType.QueuedConnection)
         self._soon = QTimer(self)
         self._soon.setSingleShot(True)
         self._soon.timeout.connect(self._ask)
@@ -82,7 +87,9 @@ class PictureJobs(QObject):
         wanted = (request, BUDGETS[picture.budget])
         if wanted != self._wanted:
             self._wanted = wanted
-            self._soon.start(0)
+            if not self._posted:
+                self._posted = True
+                self._wants.emit()
 
     def _set_tones(self, session: Session) -> None:
         theme = current_theme()
@@ -95,6 +102,10 @@ class PictureJobs(QObject):
         self._bridge.set_tones(tones)
         if self._diagram.field is not None and self._asked:
             self._bridge.on_field(self._newest_shown, self._diagram.field)
+
+    def _ask_posted(self) -> None:
+        self._posted = False
+        self._ask()
 
     def _ask(self) -> None:
         if self.desk is None or self._wanted is None:
