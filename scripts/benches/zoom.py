@@ -58,7 +58,7 @@ def run_zooms() -> tuple[list[float], list[float]]:
         paint(diagram, event)
         painted.append((diagram.image_view, time.perf_counter()))
 
-    Diagram.paintEvent = noted  # type: ignore[method-assign]
+    Diagram.paintEvent = noted
     app = application()
     window = make_window()
     window.resize(*SIZE)
