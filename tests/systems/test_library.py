@@ -21,7 +21,8 @@ from tinemark.systems.errors import SystemFileError
 from tinemark.systems.library import DEMO, builtin_names, builtin_system, builtin_text, find_system
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
-from tinemark.systems.system_file import read_system_text, write_system_text
+from tinemark.systems.system_file import read_system_text
+from tinemark.systems.system_text import write_system_text
 
 WANTED = {
     *("logistic", "cubic", "sine", "ricker", "gaussian", "quadratic", "quartic", "tent", "hassell"),

@@ -18,12 +18,11 @@ from tinemark.systems.library import builtin_text
 from tinemark.systems.system import MAX_MAP_STATES, Parameter, State, System
 from tinemark.systems.system_file import (
     MAX_FILE_BYTES,
-    edit_system_text,
     read_system_bytes,
     read_system_file,
     read_system_text,
-    write_system_text,
 )
+from tinemark.systems.system_text import edit_system_text, write_system_text
 
 GOOD = """\
 # A comment that must survive.

@@ -70,6 +70,7 @@ def kernels_for(system: System, parameter: str, observe: str) -> Kernels:
     SystemFileError, FormulaError
         The parameter is not known, or the observed quantity cannot be read.
     """
+    system.must_be_map()
     system.parameter(parameter)
     observed = read_formula(observe, system.names, key="diagram.observe")
     return _kernels(system.state_names, system.parameter_names, system.expressions, parameter, observed)

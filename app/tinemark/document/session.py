@@ -16,7 +16,8 @@ from tinemark.resources_path import resource
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.library import DEMO, builtin_text
 from tinemark.systems.system import System
-from tinemark.systems.system_file import read_system_text, write_system_text
+from tinemark.systems.system_file import read_system_text
+from tinemark.systems.system_text import write_system_text
 
 BUDGETS = {"quick": 2_000, "standard": 20_000, "thorough": 200_000}
 """Names of the picture budgets, and the steps per column after which the picture rests."""

@@ -16,7 +16,7 @@ from functools import lru_cache
 from tinemark.onsets.decimals import fixed_text, leading_power, rounded
 from tinemark.onsets.results import Certificate, Kind, Onset, Status
 from tinemark.systems.system import System
-from tinemark.systems.system_file import write_system_text
+from tinemark.systems.system_text import write_system_text
 
 MOST_DIGITS = 1000
 """Decimals of the texts of a box; a proof that needs more leaves no certificate."""

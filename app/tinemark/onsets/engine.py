@@ -49,6 +49,7 @@ def refine(request: RefineRequest) -> Generator[Step, None, RefineResult]:
         Nothing in reach; says what was looked at.
     """
     _check(request.digits)
+    request.system.must_be_map()
     if len(request.system.states) == 1:
         from tinemark.onsets.clicks import refine_one
 
@@ -86,6 +87,7 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
     _check(request.digits)
     if request.base_period < 1 or request.levels < 1:
         raise TinemarkError("a ladder has a base period and levels of 1 or more")
+    request.system.must_be_map()
     if len(request.system.states) == 1:
         from tinemark.onsets.ladder import ladder_one
 
@@ -171,6 +173,7 @@ def survey(request: SurveyRequest) -> Generator[Step | SurveyFind, None, SurveyR
         The range is empty, or too narrow for double precision.
     """
     _check(request.digits)
+    request.system.must_be_map()
     from tinemark.onsets.sensitivities import with_sensitivities
     from tinemark.onsets.survey import survey_of
 
@@ -212,6 +215,7 @@ def branches(request: BranchRequest) -> Generator[Step, None, BranchResult]:
     """
     if request.max_period < 1:
         raise TinemarkError("branches have a longest period of 1 or more")
+    request.system.must_be_map()
     from tinemark.onsets.branch_survey import branches_of
 
     return (yield from branches_of(request))

@@ -42,7 +42,13 @@ _BINARY: dict[type[ast.operator], str] = {
 _COMPARISON: dict[type[ast.cmpop], str] = {ast.Lt: "<", ast.LtE: "<=", ast.Gt: ">", ast.GtE: ">="}
 
 
-def read_formula(text: str, names: Collection[str], *, key: str = "") -> Expr:
+def read_formula(
+    text: str,
+    names: Collection[str],
+    *,
+    key: str = "",
+    timeless: str = "time t has no meaning in a map",
+) -> Expr:
     """Read a formula.
 
     Parameters
@@ -53,18 +59,21 @@ def read_formula(text: str, names: Collection[str], *, key: str = "") -> Expr:
         Names it may use: states, parameters, and "t" where time is meant.
     key
         Field the formula stands in, for the errors.
+    timeless
+        Why t cannot be used, where it is not among the names.
 
     Raises
     ------
     FormulaError
         The text is no formula of the whitelist, or goes beyond a limit; says the column.
     """
-    return _Reader(text, frozenset(names), key).read()
+    return _Reader(text, frozenset(names), key, timeless).read()
 
 
 class _Reader:
-    def __init__(self, text: str, names: frozenset[str], key: str) -> None:
+    def __init__(self, text: str, names: frozenset[str], key: str, timeless: str) -> None:
         self.text = text
+        self.timeless = timeless
         self.names = names
         self.key = key
         self.nodes = 0
@@ -204,7 +213,7 @@ class _Reader:
         if name in ARITIES:
             self.fail(f'"{name}" is a function', column, f"give it its argument: {name}(...)")
         if name == "t":
-            self.fail("time t has no meaning in a map", column, "use a state or a parameter")
+            self.fail(self.timeless, column, "use a state or a parameter")
         shown = name if len(name) <= MAX_NAME_LENGTH else name[: MAX_NAME_LENGTH - 3] + "..."
         close = difflib.get_close_matches(name[:MAX_NAME_LENGTH], sorted(self.names), 1)
         known = ", ".join(sorted(self.names)) or "none"

@@ -5,19 +5,32 @@ from __future__ import annotations
 import difflib
 import re
 import tomllib
-from collections.abc import Mapping, MutableMapping, Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
 from tinemark.systems.errors import FormulaError, NumberError, SystemFileError
 from tinemark.systems.exact import Exact, exact
 from tinemark.systems.formula import MAX_NAME_LENGTH, NAME, RESERVED, read_formula
-from tinemark.systems.system import MAX_MAP_STATES, Parameter, State, System
+from tinemark.systems.system import (
+    DIRECTIONS,
+    KINDS,
+    MAX_MAP_STATES,
+    MAX_RATE_STATES,
+    TIMELESS,
+    Parameter,
+    Sample,
+    State,
+    System,
+    formula_names,
+    formula_section,
+)
 
 MAX_FILE_BYTES = 256 * 1024
 MAX_PARAMETERS = 40
 _PLACE = re.compile(r"\(at (?:line (\d+), column (\d+)|end of document)\)")
-_TOP_KEYS = ("title", "kind", "notes", "states", "parameters", "next", "diagram")
+_TOP_KEYS = ("title", "kind", "notes", "states", "parameters")
+_SAMPLE_KEYS = {"driven": ("every",), "flow": ("crosses", "direction")}
 
 
 def read_system_file(path: str | Path) -> System:
@@ -148,19 +161,24 @@ class _Reader:
 
     def system(self, data: Mapping[str, Any]) -> System:
         kind = self.text(data, "kind", "")
-        if kind not in ("map",):
+        if kind not in KINDS:
             raise self.error(
-                f'the kind "{_short(kind)}" is not known', "kind", 'this version reads kind = "map"'
+                f'the kind "{_short(kind)}" is not known', "kind", 'write "map", "driven" or "flow"'
             )
-        self.known(data, _TOP_KEYS, "")
-        states = self.states(self.table(data, "states"))
+        section = formula_section(kind)
+        self.own_sections(data, kind)
+        states = self.states(self.table(data, "states"), kind)
         parameters = self.parameters(self.table(data, "parameters"))
-        names = [state.name for state in states] + [parameter.name for parameter in parameters]
+        names = (*(state.name for state in states), *(parameter.name for parameter in parameters))
         self.names(names)
-        following = self.table(data, "next")
+        formulas_table = self.table(data, section)
         state_names = [state.name for state in states]
-        self.known(following, state_names, "next")
-        formulas = tuple(self.formula(following, name, "next", names) for name in state_names)
+        self.known(formulas_table, state_names, section)
+        allowed = formula_names(kind, names)
+        formulas = tuple(
+            self.formula(formulas_table, name, section, allowed, TIMELESS[kind]) for name in state_names
+        )
+        sample = None if kind == "map" else self.sample(data, kind, names, parameters)
         parameter, observe = self.diagram(data, states, parameters, names)
         return System(
             title=self.text(data, "title", ""),
@@ -171,11 +189,57 @@ class _Reader:
             diagram_parameter=parameter,
             observe=observe,
             notes=self.text(data, "notes", "", ""),
+            sample=sample,
         )
 
-    def states(self, table: Mapping[str, Any]) -> tuple[State, ...]:
-        if not 1 <= len(table) <= MAX_MAP_STATES:
-            raise self.error(f"has {len(table)} states", "states", f"a map has 1 to {MAX_MAP_STATES}")
+    def own_sections(self, data: Mapping[str, Any], kind: str) -> None:
+        """Sections of another kind are named as such: the mistake is then the kind, not the spelling."""
+        if kind == "map":
+            for name in ("rate", "sample"):
+                if name in data:
+                    raise self.error(
+                        "has no place in a map", name, 'use [next], or kind = "driven" or "flow" with [rate]'
+                    )
+            self.known(data, (*_TOP_KEYS, "next", "diagram"), "")
+            return
+        if "next" in data:
+            raise self.error(
+                f'has no place in kind = "{kind}"',
+                "next",
+                'give time derivatives in [rate], or use kind = "map"',
+            )
+        self.known(data, (*_TOP_KEYS, "rate", "sample", "diagram"), "")
+
+    def sample(
+        self, data: Mapping[str, Any], kind: str, names: tuple[str, ...], parameters: tuple[Parameter, ...]
+    ) -> Sample:
+        table = self.table(data, "sample")
+        other = _SAMPLE_KEYS["flow" if kind == "driven" else "driven"]
+        for name in other:
+            if name in table:
+                hint = (
+                    "a driven system is strobed: every = the drive period, a formula in the parameters"
+                    if kind == "driven"
+                    else "a free-running system is sampled at a section: crosses = a formula in the states"
+                )
+                raise self.error(f'has no place in kind = "{kind}"', f"sample.{name}", hint)
+        self.known(table, _SAMPLE_KEYS[kind], "sample")
+        if kind == "driven":
+            known = [parameter.name for parameter in parameters]
+            return Sample(every=self.formula(table, "every", "sample", known, TIMELESS["driven"]))
+        crosses = self.formula(table, "crosses", "sample", names, TIMELESS["flow"])
+        direction = self.text(table, "direction", "sample", "rising")
+        if direction not in DIRECTIONS:
+            raise self.error(
+                f'"{_short(direction)}" is no direction', "sample.direction", 'write "rising" or "falling"'
+            )
+        return Sample(crosses=crosses, direction=direction)
+
+    def states(self, table: Mapping[str, Any], kind: str) -> tuple[State, ...]:
+        most = MAX_MAP_STATES if kind == "map" else MAX_RATE_STATES
+        what = {"map": "a map", "driven": "a driven system", "flow": "a free-running system"}[kind]
+        if not 1 <= len(table) <= most:
+            raise self.error(f"has {len(table)} states", "states", f"{what} has 1 to {most}")
         found = []
         for name in table:
             key = f"states.{_short(name)}"
@@ -238,14 +302,16 @@ class _Reader:
                 )
             seen.add(name)
 
-    def formula(self, data: Mapping[str, Any], name: str, key: str, names: Sequence[str]) -> str:
+    def formula(
+        self, data: Mapping[str, Any], name: str, key: str, names: Sequence[str], timeless: str
+    ) -> str:
         text = self.text(data, name, key)
-        self.check(text, f"{key}.{name}", names)
+        self.check(text, f"{key}.{name}", names, timeless)
         return text
 
-    def check(self, text: str, key: str, names: Sequence[str]) -> None:
+    def check(self, text: str, key: str, names: Sequence[str], timeless: str) -> None:
         try:
-            read_formula(text, names, key=key)
+            read_formula(text, names, key=key, timeless=timeless)
         except FormulaError as error:
             if not self.file:
                 raise
@@ -275,89 +341,8 @@ class _Reader:
                 f'"{_short(parameter)}" is not a parameter', "diagram.parameter", "known: " + ", ".join(known)
             )
         observe = self.text(table, "observe", "diagram", default_observe)
-        self.check(observe, "diagram.observe", names)
+        self.check(observe, "diagram.observe", names, TIMELESS["driven"])
         return parameter, observe
-
-
-def write_system_text(system: System) -> str:
-    """The system as TOML text; reading it gives an equal system."""
-    import tomlkit
-
-    document = tomlkit.document()
-    document["title"] = system.title
-    document["kind"] = system.kind
-    if system.notes:
-        document["notes"] = system.notes
-    states = tomlkit.table(is_super_table=True)
-    for state in system.states:
-        table = tomlkit.table()
-        table["start"] = state.start.text
-        if state.range:
-            table["range"] = [end.text for end in state.range]
-        if state.unit:
-            table["unit"] = state.unit
-        states[state.name] = table
-    document["states"] = states
-    parameters = tomlkit.table(is_super_table=True)
-    for parameter in system.parameters:
-        table = tomlkit.table()
-        table["value"] = parameter.value.text
-        if parameter.range:
-            table["range"] = [end.text for end in parameter.range]
-        if parameter.unit:
-            table["unit"] = parameter.unit
-        if parameter.tolerance is not None:
-            table["tolerance"] = parameter.tolerance.text
-        parameters[parameter.name] = table
-    document["parameters"] = parameters
-    following = tomlkit.table()
-    for name, formula in zip(system.state_names, system.formulas, strict=True):
-        following[name] = formula
-    document["next"] = following
-    diagram = tomlkit.table()
-    diagram["parameter"] = system.diagram_parameter
-    diagram["observe"] = system.observe
-    document["diagram"] = diagram
-    return tomlkit.dumps(document)
-
-
-def edit_system_text(text: str, changes: Mapping[str, str | Sequence[str] | None]) -> str:
-    """Change keys of a system's TOML text and keep its comments and layout.
-
-    Parameters
-    ----------
-    text
-        TOML text that can be parsed.
-    changes
-        Dotted key -> new text, list of texts, or None to remove the key. Sections are made
-        where they are missing.
-
-    Raises
-    ------
-    SystemFileError
-        The text is no TOML, or has a plain value where a section is needed.
-    """
-    import tomlkit
-    import tomlkit.exceptions
-
-    try:
-        document = tomlkit.parse(text)
-    except tomlkit.exceptions.TOMLKitError as error:
-        raise SystemFileError("is not TOML", what_to_do="mend the text before changing a field") from error
-    for key, value in changes.items():
-        *sections, last = key.split(".")
-        table: Any = document
-        for section in sections:
-            if section not in table:
-                table[section] = tomlkit.table()
-            table = table[section]
-            if not isinstance(table, MutableMapping):
-                raise SystemFileError("should be a section", key=key, what_to_do=f"write it as [{section}]")
-        if value is None:
-            table.pop(last, None)
-        else:
-            table[last] = value if isinstance(value, str) else list(value)
-    return tomlkit.dumps(document)
 
 
 def _short(name: object) -> str:

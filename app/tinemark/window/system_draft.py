@@ -15,7 +15,8 @@ from tinemark.systems.errors import FormulaError, NumberError, SystemFileError, 
 from tinemark.systems.exact import exact
 from tinemark.systems.formula import read_formula
 from tinemark.systems.system import System
-from tinemark.systems.system_file import edit_system_text, read_system_text
+from tinemark.systems.system_file import read_system_text
+from tinemark.systems.system_text import edit_system_text
 
 _QUOTED_NAME = re.compile(r'"([^"]*)"')
 
