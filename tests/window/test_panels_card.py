@@ -14,17 +14,9 @@ from tinemark.systems.errors import TinemarkError
 from tinemark.systems.library import builtin_names, builtin_text
 from tinemark.systems.system_file import read_system_text
 from tinemark.window.builtin_chooser import SENTENCE, library_builtins
+from tinemark.window.draft_edits import edited, renamed, with_parameter, with_state, without
 from tinemark.window.system_card import SystemCard
-from tinemark.window.system_draft import (
-    check_text,
-    edited,
-    line_of,
-    read_draft,
-    renamed,
-    with_parameter,
-    with_state,
-    without,
-)
+from tinemark.window.system_draft import check_text, line_of, read_draft
 
 TANK = """# a tank, invented
 title = "Tank"

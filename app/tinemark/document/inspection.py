@@ -7,6 +7,7 @@ from pathlib import Path
 
 from tinemark.document.onsets_file import MAX_FILE_BYTES, read_onsets_bytes
 from tinemark.systems.errors import TinemarkError
+from tinemark.systems.system import System, formula_section
 from tinemark.systems.system_file import read_system_bytes
 
 _ZIP = b"PK\x03\x04"
@@ -80,11 +81,23 @@ def _system(path: Path, data: bytes) -> Inspection:
         f'a system: "{system.title}" ({system.kind}, {_count(len(system.states), "state")})',
         "states: " + ", ".join(system.state_names),
         "parameters: " + ", ".join(f"{p.name} = {p.value}" for p in system.parameters),
-        *(f"next {name} = {text}" for name, text in zip(system.state_names, system.formulas, strict=True)),
+        *(
+            f"{formula_section(system.kind)} {name} = {text}"
+            for name, text in zip(system.state_names, system.formulas, strict=True)
+        ),
+        *_sample(system),
         f"diagram: {system.observe} against {system.diagram_parameter}",
         "smooth" if surfaces == 0 else f"piecewise, with {_count(surfaces, 'switching surface')}",
     ]
     return Inspection("system", tuple(lines))
+
+
+def _sample(system: System) -> tuple[str, ...]:
+    if system.sample is None:
+        return ()
+    if system.kind == "driven":
+        return (f"sampled every {system.sample.every}",)
+    return (f"sampled where {system.sample.crosses} crosses zero, {system.sample.direction}",)
 
 
 def _session(path: Path) -> Inspection:

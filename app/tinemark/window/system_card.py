@@ -25,19 +25,9 @@ from PySide6.QtWidgets import (
 
 from tinemark.systems.errors import TinemarkError
 from tinemark.window.builtin_chooser import BuiltIn, BuiltinChooser, library_builtins
+from tinemark.window.draft_edits import edited, renamed, with_kind, with_parameter, with_state, without
 from tinemark.window.faces import FaceKeeper
-from tinemark.window.system_draft import (
-    Trouble,
-    check_text,
-    edited,
-    line_of,
-    read_draft,
-    renamed,
-    trouble_of,
-    with_parameter,
-    with_state,
-    without,
-)
+from tinemark.window.system_draft import Trouble, check_text, line_of, read_draft, trouble_of
 from tinemark.window.system_fields import SystemFields
 from tinemark.window.system_text_edit import TomlEdit
 
@@ -128,6 +118,7 @@ class SystemCard(QWidget):
         self.fields.rename_asked.connect(self._rename)
         self.fields.add_asked.connect(self._add)
         self.fields.remove_asked.connect(self._remove)
+        self.fields.kind_asked.connect(lambda kind: self._restructure(lambda text: with_kind(text, kind)))
         scroll = QScrollArea()
         scroll.setWidgetResizable(True)
         scroll.setHorizontalScrollBarPolicy(Qt.ScrollBarPolicy.ScrollBarAsNeeded)

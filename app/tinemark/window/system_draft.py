@@ -1,29 +1,28 @@
 """A system that is being typed: its text read leniently, edited by field, and every mistake found at once.
 
 The TOML text is the one truth. The fields of the system card show what the text says, right or
-wrong, and each edit of a field is an edit of the text. No Qt here.
+wrong, and each edit of a field is an edit of the text (`draft_edits`). No Qt here.
 """
 
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from tinemark.systems.errors import FormulaError, NumberError, SystemFileError, TinemarkError
+from tinemark.systems.errors import FormulaError, NumberError, TinemarkError
 from tinemark.systems.exact import exact
 from tinemark.systems.formula import read_formula
-from tinemark.systems.system import System
+from tinemark.systems.system import TIMELESS, System, formula_names, formula_section
 from tinemark.systems.system_file import read_system_text
-from tinemark.systems.system_text import edit_system_text
 
 _QUOTED_NAME = re.compile(r'"([^"]*)"')
 
 
 @dataclass(frozen=True)
 class DraftState:
-    """A state as typed; `formula` gives it one step later."""
+    """A state as typed; `formula` gives it one step later, or its rate of change."""
 
     name: str
     start: str = ""
@@ -47,7 +46,7 @@ class DraftParameter:
 
 @dataclass(frozen=True)
 class Draft:
-    """What the fields show."""
+    """What the fields show. Of the sample a driven system has `every`, a free-running one the others."""
 
     title: str
     kind: str
@@ -56,6 +55,14 @@ class Draft:
     parameters: tuple[DraftParameter, ...]
     parameter: str
     observe: str
+    every: str = ""
+    crosses: str = ""
+    direction: str = ""
+
+    @property
+    def section(self) -> str:
+        """The section that holds the formulas."""
+        return formula_section(self.kind or "map")
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -82,30 +89,35 @@ def read_draft(text: str) -> Draft | None:
         document = tomlkit.parse(text)
     except (TOMLKitError, ValueError, RecursionError):
         return None
-    following = _table(document.get("next"))
-    diagram = _table(document.get("diagram"))
+    kind = _typed(document.get("kind"))
+    formulas = table_of(document.get(formula_section(kind or "map")))
+    sample = table_of(document.get("sample"))
+    diagram = table_of(document.get("diagram"))
     states = []
-    for name, entry in _table(document.get("states")).items():
-        table = _table(entry)
+    for name, entry in table_of(document.get("states")).items():
+        table = table_of(entry)
         low, high = _pair(table.get("range"))
-        formula = _typed(following.get(name))
+        formula = _typed(formulas.get(name))
         states.append(
             DraftState(str(name), _typed(table.get("start")), low, high, _typed(table.get("unit")), formula)
         )
     parameters = []
-    for name, entry in _table(document.get("parameters")).items():
-        table = _table(entry)
+    for name, entry in table_of(document.get("parameters")).items():
+        table = table_of(entry)
         low, high = _pair(table.get("range"))
         value, tolerance = _typed(table.get("value")), _typed(table.get("tolerance"))
         parameters.append(DraftParameter(str(name), value, low, high, _typed(table.get("unit")), tolerance))
     return Draft(
         title=_typed(document.get("title")),
-        kind=_typed(document.get("kind")),
+        kind=kind,
         notes=_typed(document.get("notes")),
         states=tuple(states),
         parameters=tuple(parameters),
         parameter=_typed(diagram.get("parameter")) or (parameters[0].name if parameters else ""),
         observe=_typed(diagram.get("observe")) or (states[0].name if states else ""),
+        every=_typed(sample.get("every")),
+        crosses=_typed(sample.get("crosses")),
+        direction=_typed(sample.get("direction")) or ("rising" if kind == "flow" else ""),
     )
 
 
@@ -141,7 +153,9 @@ def _field_troubles(draft: Draft | None) -> list[Trouble]:
         return []
     found: list[Trouble] = []
     for state in draft.states:
-        found += _formula_trouble(state.formula, f"next.{state.name}", draft.names)
+        found += _formula_trouble(
+            state.formula, f"{draft.section}.{state.name}", formula_names(draft.kind, draft.names), draft.kind
+        )
         found += _number_trouble(state.start, f"states.{state.name}.start")
         found += _range_trouble(state.low, state.high, f"states.{state.name}.range")
     for parameter in draft.parameters:
@@ -150,13 +164,18 @@ def _field_troubles(draft: Draft | None) -> list[Trouble]:
         found += _range_trouble(parameter.low, parameter.high, f"{key}.range")
         if parameter.tolerance:
             found += _number_trouble(parameter.tolerance, f"{key}.tolerance")
-    found += _formula_trouble(draft.observe, "diagram.observe", draft.names)
+    if draft.kind == "driven":
+        parameters = tuple(parameter.name for parameter in draft.parameters)
+        found += _formula_trouble(draft.every, "sample.every", parameters, draft.kind)
+    elif draft.kind == "flow":
+        found += _formula_trouble(draft.crosses, "sample.crosses", draft.names, draft.kind)
+    found += _formula_trouble(draft.observe, "diagram.observe", draft.names, draft.kind)
     return found
 
 
-def _formula_trouble(text: str, key: str, names: Sequence[str]) -> list[Trouble]:
+def _formula_trouble(text: str, key: str, names: tuple[str, ...], kind: str) -> list[Trouble]:
     try:
-        read_formula(text, names, key=key)
+        read_formula(text, names, key=key, timeless=TIMELESS.get(kind, TIMELESS["map"]))
     except FormulaError as error:
         return [trouble_of(error)]
     return []
@@ -177,110 +196,8 @@ def _range_trouble(low: str, high: str, key: str) -> list[Trouble]:
     return _number_trouble(low, key) or _number_trouble(high, key)
 
 
-def edited(text: str, changes: Mapping[str, str | Sequence[str] | None]) -> str:
-    """The text with some fields changed, comments kept (see `systems.system_file.edit_system_text`)."""
-    return edit_system_text(text, changes)
-
-
-def with_state(text: str) -> str:
-    """One more state, which stays where it starts until its formula is edited."""
-    draft = _draft_of(text)
-    name = _free_name(draft.names, ("y", "z", "u", "v", "w", "s"))
-    return edited(text, {f"states.{name}.start": "0", f"next.{name}": name})
-
-
-def with_parameter(text: str) -> str:
-    """One more parameter, of value 1, which no formula uses yet."""
-    name = _free_name(_draft_of(text).names, ("b", "c", "d", "k", "m", "q"))
-    return edited(text, {f"parameters.{name}.value": "1"})
-
-
-def without(text: str, section: str, name: str) -> str:
-    """The text without one state ("states") or parameter ("parameters"), and without its formula."""
-    gone: dict[str, str | Sequence[str] | None] = {f"{section}.{name}": None}
-    if section == "states":
-        gone[f"next.{name}"] = None
-    return edited(text, gone)
-
-
-def renamed(text: str, section: str, old: str, new: str) -> str:
-    """The text with a state or parameter renamed, in its section, in every formula and in the diagram.
-
-    Section headings and keys are changed where they stand, so that order and comments stay.
-    """
-    before = _draft_of(text)
-    kept = _renamed_headings(text, section, old, new)
-    after = read_draft(kept)
-    wanted = [new if item.name == old else item.name for item in _items(before, section)]
-    if after is None or [item.name for item in _items(after, section)] != wanted:
-        kept = _renamed_keys(text, section, old, new)
-    word = re.compile(rf"(?<![A-Za-z0-9_.]){re.escape(old)}(?![A-Za-z0-9_])")
-    changes: dict[str, str | Sequence[str] | None] = {}
-    for state in before.states:
-        name = new if section == "states" and state.name == old else state.name
-        if word.search(state.formula):
-            changes[f"next.{name}"] = word.sub(new, state.formula)
-    # What the text leaves to the defaults follows by itself.
-    said = _said_of_diagram(text)
-    if "observe" in said and word.search(before.observe):
-        changes["diagram.observe"] = word.sub(new, before.observe)
-    if "parameter" in said and section == "parameters" and before.parameter == old:
-        changes["diagram.parameter"] = new
-    return edited(kept, changes)
-
-
-def _said_of_diagram(text: str) -> Mapping[str, Any]:
-    import tomlkit
-
-    return _table(tomlkit.parse(text).get("diagram"))
-
-
-def _renamed_headings(text: str, section: str, old: str, new: str) -> str:
-    heading = re.compile(rf"^(\s*\[\s*{section}\s*\.\s*)(?:{re.escape(old)}|\"{re.escape(old)}\")(\s*\])")
-    key = re.compile(rf"^(\s*)(?:{re.escape(old)}|\"{re.escape(old)}\")(\s*=)")
-    inside, lines = "", []
-    for line in text.splitlines(keepends=True):
-        opened = re.match(r"^\s*\[\s*([^\]]*?)\s*\]", line)
-        if opened:
-            inside = opened[1]
-            line = heading.sub(rf"\g<1>{new}\g<2>", line)
-        elif section == "states" and inside == "next":
-            line = key.sub(rf"\g<1>{new}\g<2>", line)
-        lines.append(line)
-    return "".join(lines)
-
-
-def _renamed_keys(text: str, section: str, old: str, new: str) -> str:
-    # Inline tables and dotted keys: rebuilt in order, which loses only the comments between them.
-    import tomlkit
-
-    document: Any = tomlkit.parse(text)
-    sections = [section, "next"] if section == "states" else [section]
-    for name in sections:
-        if name in document:
-            document[name] = {
-                new if key == old else key: value for key, value in document[name].unwrap().items()
-            }
-    return tomlkit.dumps(document)
-
-
-def _items(draft: Draft, section: str) -> tuple[DraftState, ...] | tuple[DraftParameter, ...]:
-    return draft.states if section == "states" else draft.parameters
-
-
-def _draft_of(text: str) -> Draft:
-    draft = read_draft(text)
-    if draft is None:
-        raise SystemFileError("is not TOML", what_to_do="mend the text first")
-    return draft
-
-
-def _free_name(taken: Sequence[str], wished: Sequence[str]) -> str:
-    numbered = (f"{wished[0]}{number}" for number in range(2, 100))
-    return next(name for name in (*wished, *numbered) if name not in taken)
-
-
-def _table(item: Any) -> Mapping[str, Any]:
+def table_of(item: Any) -> Mapping[str, Any]:
+    """An entry as a section, empty where it is none."""
     return item if isinstance(item, Mapping) else {}
 
 

@@ -20,6 +20,7 @@ from PySide6.QtWidgets import (
 )
 
 from tinemark.systems.formula import NAME
+from tinemark.systems.system import MAX_MAP_STATES, MAX_RATE_STATES
 from tinemark.window.faces import wear
 from tinemark.window.field_editors import (
     FieldEdit,
@@ -30,9 +31,10 @@ from tinemark.window.field_editors import (
     field_label,
     show_as,
 )
+from tinemark.window.sample_fields import DirectionChooser, KindChooser, build_sample
 from tinemark.window.system_draft import Draft, DraftParameter, DraftState, Trouble
 
-MAX_STATES = 6
+_MOST_STATES = {"map": MAX_MAP_STATES}
 
 
 class SystemFields(QWidget):
@@ -46,6 +48,8 @@ class SystemFields(QWidget):
         Section ("states" or "parameters"), old name, new name.
     add_asked, remove_asked
         Section; section and name.
+    kind_asked : str
+        Another kind of system.
     settled
         An editor was left or Enter was pressed: no need to wait longer.
     """
@@ -54,6 +58,7 @@ class SystemFields(QWidget):
     rename_asked = Signal(str, str, str)
     add_asked = Signal(str)
     remove_asked = Signal(str, str)
+    kind_asked = Signal(str)
     settled = Signal()
 
     def __init__(self, parent: QWidget | None = None) -> None:
@@ -63,6 +68,7 @@ class SystemFields(QWidget):
         self._errors: dict[str, QLabel] = {}
         self._error_rows: dict[str, tuple[QGridLayout, int]] = {}
         self._names: tuple[str, ...] = ()
+        self.direction: DirectionChooser | None = None
         self._troubles: tuple[Trouble, ...] = ()
         self._body = QWidget()
         self._outer = QVBoxLayout(self)
@@ -73,7 +79,7 @@ class SystemFields(QWidget):
 
     def show_draft(self, draft: Draft) -> None:
         """Show what a text says; fields that say so already are left alone, with their cursors."""
-        shape = (tuple(s.name for s in draft.states), tuple(p.name for p in draft.parameters))
+        shape = (draft.kind, tuple(s.name for s in draft.states), tuple(p.name for p in draft.parameters))
         self._names = draft.names
         if shape != self._shape:
             self._shape = shape
@@ -130,9 +136,13 @@ class SystemFields(QWidget):
         page.setContentsMargins(2, 2, 6, 2)
         page.setSpacing(4)
         self._build_title(page)
-        self._heading(page, "States", "states", "Add a state", len(draft.states) < MAX_STATES)
+        most = _MOST_STATES.get(draft.kind, MAX_RATE_STATES)
+        self._heading(page, "States", "states", "Add a state", len(draft.states) < most)
         for state in draft.states:
-            self._build_state(page, state, removable=len(draft.states) > 1)
+            self._build_state(page, state, draft.section, removable=len(draft.states) > 1)
+        if draft.section == "rate":
+            self._heading(page, "Sample")
+            self.direction = build_sample(self, field_grid(page), draft)
         self._heading(page, "Parameters", "parameters", "Add a parameter", True)
         for parameter in draft.parameters:
             self._build_parameter(page, parameter, removable=len(draft.parameters) > 1)
@@ -145,7 +155,7 @@ class SystemFields(QWidget):
         notes.setFixedHeight(QFontMetrics(notes.font()).lineSpacing() * 4 + 16)
         notes.textChanged.connect(lambda: self._notes_changed(notes))
         notes.left.connect(self.settled)
-        self._register("notes", notes)
+        self.register("notes", notes)
         page.addWidget(notes)
         page.addWidget(self._error("notes"))
         page.addStretch(1)
@@ -158,59 +168,61 @@ class SystemFields(QWidget):
         title.setAccessibleName("Title of the system")
         title.textEdited.connect(lambda: self.changed.emit({"title": title.text()}))
         title.editingFinished.connect(self.settled)
-        self._register("title", title)
+        self.register("title", title)
         grid.addWidget(field_label("Title", title), 0, 0)
         grid.addWidget(title, 0, 1, 1, 4)
-        self._error_row(grid, 1, "title")
-        self.kind = QLabel()
-        self.kind.setProperty("rank", "second")
-        self.kind.setWordWrap(True)
-        grid.addWidget(field_label("Kind"), 2, 0, Qt.AlignmentFlag.AlignTop)
+        self.error_row(grid, 1, "title")
+        self.kind = KindChooser()
+        self.kind.chosen.connect(self.kind_asked)
+        self.register("kind", self.kind)
+        grid.addWidget(field_label("Kind", self.kind), 2, 0)
         grid.addWidget(self.kind, 2, 1, 1, 4)
-        self._error_row(grid, 3, "kind")
+        self.error_row(grid, 3, "kind")
 
-    def _build_state(self, page: QVBoxLayout, state: DraftState, *, removable: bool) -> None:
+    def _build_state(self, page: QVBoxLayout, state: DraftState, section: str, *, removable: bool) -> None:
         name, key = state.name, f"states.{state.name}"
         grid = field_grid(page)
         self._name_row(grid, "states", name, "state", removable)
-        formula = self._line(f"next.{name}", f"{name} one step later, formula", digits=12)
-        after = field_label(f"next {name} =", formula)
+        formula_key = f"{section}.{name}"
+        words = f"{name} one step later, formula" if section == "next" else f"Rate of {name}, formula"
+        formula = self.line(formula_key, words, digits=12)
+        after = field_label(f"{section} {name} =", formula)
         wear(after, "number")
         grid.addWidget(after, 2, 0)
         grid.addWidget(formula, 2, 1, 1, 4)
-        self._error_row(grid, 3, f"next.{name}")
-        start = self._line(f"{key}.start", f"Start of {name}", number=True)
-        unit = self._line(f"{key}.unit", f"Unit of {name}", optional=True, digits=4)
+        self.error_row(grid, 3, formula_key)
+        start = self.line(f"{key}.start", f"Start of {name}", number=True)
+        unit = self.line(f"{key}.unit", f"Unit of {name}", optional=True, digits=4)
         grid.addWidget(field_label("start", start), 4, 0)
         grid.addWidget(start, 4, 1)
         grid.addWidget(field_label("unit", unit), 4, 2)
         grid.addWidget(unit, 4, 3, 1, 2)
-        self._error_row(grid, 5, f"{key}.start")
+        self.error_row(grid, 5, f"{key}.start")
         self._range_row(grid, 6, key, name)
 
     def _build_parameter(self, page: QVBoxLayout, parameter: DraftParameter, *, removable: bool) -> None:
         name, key = parameter.name, f"parameters.{parameter.name}"
         grid = field_grid(page)
         self._name_row(grid, "parameters", name, "parameter", removable)
-        value = self._line(f"{key}.value", f"Value of {name}", number=True)
-        unit = self._line(f"{key}.unit", f"Unit of {name}", optional=True, digits=4)
+        value = self.line(f"{key}.value", f"Value of {name}", number=True)
+        unit = self.line(f"{key}.unit", f"Unit of {name}", optional=True, digits=4)
         grid.addWidget(field_label("value", value), 2, 0)
         grid.addWidget(value, 2, 1)
         grid.addWidget(field_label("unit", unit), 2, 2)
         grid.addWidget(unit, 2, 3, 1, 2)
-        self._error_row(grid, 3, f"{key}.value")
+        self.error_row(grid, 3, f"{key}.value")
         self._range_row(grid, 4, key, name)
-        tolerance = self._line(f"{key}.tolerance", f"Tolerance of {name}", number=True, optional=True)
+        tolerance = self.line(f"{key}.tolerance", f"Tolerance of {name}", number=True, optional=True)
         tolerance.setToolTip(f"Standard uncertainty of {name}, in its unit. May be left empty.")
         grid.addWidget(field_label("tolerance ±", tolerance), 6, 0)
         grid.addWidget(tolerance, 6, 1)
-        self._error_row(grid, 7, f"{key}.tolerance")
+        self.error_row(grid, 7, f"{key}.tolerance")
 
     def _name_row(self, grid: QGridLayout, section: str, name: str, what: str, removable: bool) -> None:
         edit = FieldEdit(f"Name of the {what} {name}", digits=4)
         edit.setText(name)
         edit.editingFinished.connect(lambda: self._rename(section, name, edit))
-        self._register(f"name.{name}", edit)
+        self.register(f"name.{name}", edit)
         remove = QToolButton()
         remove.setText("Remove")
         remove.setAccessibleName(f"Remove the {what} {name}")
@@ -220,7 +232,7 @@ class SystemFields(QWidget):
         grid.addWidget(field_label("name", edit), 0, 0)
         grid.addWidget(edit, 0, 1)
         grid.addWidget(remove, 0, 3, 1, 2, Qt.AlignmentFlag.AlignRight)
-        self._error_row(grid, 1, f"name.{name}")
+        self.error_row(grid, 1, f"name.{name}")
 
     def _range_row(self, grid: QGridLayout, row: int, key: str, name: str) -> None:
         full = f"{key}.range"
@@ -235,12 +247,12 @@ class SystemFields(QWidget):
             edit.setToolTip("Range of the first view. May be left empty.")
             edit.textEdited.connect(emit)
             edit.editingFinished.connect(self.settled)
-            self._register(full, edit)
+            self.register(full, edit)
         grid.addWidget(field_label("range", low), row, 0)
         grid.addWidget(low, row, 1)
         grid.addWidget(field_label("to", high), row, 2)
         grid.addWidget(high, row, 3, 1, 2)
-        self._error_row(grid, row + 1, full)
+        self.error_row(grid, row + 1, full)
 
     def _build_diagram(self, page: QVBoxLayout, draft: Draft) -> None:
         grid = field_grid(page)
@@ -248,11 +260,11 @@ class SystemFields(QWidget):
         self.swept.setAccessibleName("Swept parameter")
         self.swept.addItems([p.name for p in draft.parameters])
         self.swept.activated.connect(lambda: self.choose({"diagram.parameter": self.swept.currentText()}))
-        self._register("diagram.parameter", self.swept)
+        self.register("diagram.parameter", self.swept)
         grid.addWidget(field_label("swept", self.swept), 0, 0)
         grid.addWidget(self.swept, 0, 1, 1, 4)
-        self._error_row(grid, 1, "diagram.parameter")
-        observe = self._line("diagram.observe", "Observed quantity, a state or a formula", digits=10)
+        self.error_row(grid, 1, "diagram.parameter")
+        observe = self.line("diagram.observe", "Observed quantity, a state or a formula", digits=10)
         observe.setToolTip("A state, or a formula in the states")
         menu = QMenu()
         for state in draft.states:
@@ -265,7 +277,7 @@ class SystemFields(QWidget):
         line.addWidget(choose)
         grid.addWidget(field_label("observed", observe), 2, 0)
         grid.addLayout(line, 2, 1, 1, 4)
-        self._error_row(grid, 3, "diagram.observe")
+        self.error_row(grid, 3, "diagram.observe")
 
     def _heading(
         self, page: QVBoxLayout, words: str, section: str = "", add: str = "", possible: bool = False
@@ -287,21 +299,24 @@ class SystemFields(QWidget):
 
     # -- single fields ---------------------------------------------------------------------
 
-    def _line(
+    def line(
         self, key: str, name: str, *, number: bool = False, optional: bool = False, digits: int = 6
     ) -> FieldEdit:
+        """An editor of one text, registered under its key."""
         edit = FieldEdit(name, number=number, digits=digits)
         edit.textEdited.connect(
             lambda: self.changed.emit({key: (edit.typed() or None) if optional else edit.typed()})
         )
         edit.editingFinished.connect(self.settled)
-        self._register(key, edit)
+        self.register(key, edit)
         return edit
 
-    def _register(self, key: str, editor: QWidget) -> None:
+    def register(self, key: str, editor: QWidget) -> None:
+        """Make an editor findable by its key."""
         self._editors.setdefault(key, []).append(editor)
 
-    def _error_row(self, grid: QGridLayout, row: int, key: str) -> None:
+    def error_row(self, grid: QGridLayout, row: int, key: str) -> None:
+        """Say where a mistake in a field is shown."""
         # Labels for mistakes are made when there is one: most fields never have any.
         self._error_rows[key] = (grid, row)
 
@@ -316,14 +331,20 @@ class SystemFields(QWidget):
         return label
 
     def _fill(self, draft: Draft) -> None:
-        self.kind.setText("map: each state one step later" if draft.kind == "map" else draft.kind)
+        self.kind.show_kind(draft.kind)
         self._set("title", draft.title)
         self._set("notes", draft.notes)
         self._set("diagram.observe", draft.observe)
         self.swept.setCurrentIndex(self.swept.findText(draft.parameter))
+        if draft.kind == "driven":
+            self._set("sample.every", draft.every)
+        elif draft.section == "rate":
+            self._set("sample.crosses", draft.crosses)
+            if self.direction is not None:
+                self.direction.show_direction(draft.direction)
         for state in draft.states:
             key = f"states.{state.name}"
-            self._set(f"next.{state.name}", state.formula)
+            self._set(f"{draft.section}.{state.name}", state.formula)
             self._set(f"{key}.start", state.start)
             self._set(f"{key}.unit", state.unit)
             self._set(f"{key}.range", state.low, state.high)
