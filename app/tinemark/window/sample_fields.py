@@ -12,9 +12,9 @@ from tinemark.window.field_editors import FieldEdit, QuietCombo, field_label
 from tinemark.window.system_draft import Draft
 
 KIND_WORDS = {
-    "map": "map: each state one step later",
-    "driven": "driven: rates, strobed each period",
-    "flow": "flow: rates, sampled at a section",
+    "map": "map: next states",
+    "driven": "driven: rates, strobed",
+    "flow": "flow: rates, a section",
 }
 DIRECTION_WORDS = {"rising": "rising", "falling": "falling"}
 
