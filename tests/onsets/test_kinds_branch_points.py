@@ -36,6 +36,8 @@ def _holds(onset: Onset, value: Fraction | int) -> bool:
         ("x - (x - 1)*(x - 1 - r)/2", "0.02", "0.5", "0"),
         # The 2-cycle 0 <-> 1 does not move; its multiplier (-1/2)*(-3/2 - r) is 1 at r = 1/2.
         ("(1 - x)*(1 + x/2) + r*x**2*(1 - x)", "0.48", "0.2", "1/2"),
+        # x = r and x = r^2 cross at 1; that the first is a fixed point for every r cancels in the formula.
+        ("x + (x - r)*(x - r**2)/2", "0.98", "0.2", "1"),
         # A piecewise formula, off its surface.
         ("r*x*(1 - x) if x < 1/2 else r/4 - x/9", "0.98", "0.2", "1"),
     ],
@@ -53,8 +55,9 @@ def test_transcritical_point_is_proved(formula: str, near: str, width: str, valu
 
 
 def test_crossing_of_two_moving_branches_is_estimated() -> None:
-    """x = r and x = r^2 cross at r = 1 exactly, but no enclosure can show that: the reason says so."""
-    onset = click(own_map("x + (x - r)*(x - r**2)/2", low="0", high="2"), "0.98", "0.2").onsets[0]
+    """x^3 + x = 2 r and x^5 + x = 2 r^2 cross at r = 1 exactly, but no enclosure can show that."""
+    system = own_map("x + (x**3 + x - 2*r)*(x**5 + x - 2*r**2)/20", low="0", high="2")
+    onset = click(system, "0.98", "0.2").onsets[0]
     assert (onset.kind, onset.status) == (Kind.TRANSCRITICAL, Status.ESTIMATED)
     assert "no enclosure can show" in onset.reason
     assert _holds(onset, 1)

@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator
+from collections.abc import Generator, Iterator
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import Any
 
 from flint import arb
 
-from tinemark.onsets.ball_orbits import BallLoops, ball_loops, ball_of, fraction_of, precision
-from tinemark.onsets.border_search import SEARCH_BITS, on_side
+from tinemark.onsets.ball_orbits import ball_loops, ball_of, fraction_of, precision
+from tinemark.onsets.border_search import on_side
 from tinemark.onsets.branch_point_proofs import (
-    constant_ball,
     fixed_cycle_newton,
     mirrored_correction,
     mirrored_newton,
@@ -21,13 +21,7 @@ from tinemark.onsets.branch_point_proofs import (
 from tinemark.onsets.branch_points import BranchPoint, polished_branch_point
 from tinemark.onsets.certificates import certified
 from tinemark.onsets.decimals import GUARD_DIGITS, decimal_places
-from tinemark.onsets.exact_identities import (
-    doubled,
-    is_fixed_cycle,
-    is_mirror,
-    is_straight_at,
-    nearby_constant,
-)
+from tinemark.onsets.exact_identities import is_fixed_cycle, is_straight_at
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.formula_words import formula_words
 from tinemark.onsets.one_map import OneMap
@@ -36,31 +30,37 @@ from tinemark.onsets.polish import LEAST_SIZE, Lost, Rough, Settled, first_bits,
 from tinemark.onsets.proofs import Box, NotProved, Proof, box_around
 from tinemark.onsets.results import Criticality, Kind, Onset, Step
 from tinemark.onsets.smooth_pieces import Sides as Pieces
-from tinemark.onsets.smooth_pieces import sides_at, smooth_piece, switches
+from tinemark.onsets.smooth_pieces import sides_at, switches, walk_pieces
+from tinemark.onsets.symmetry import Curve, curves_through, total_of_cycle
 from tinemark.systems.errors import SwitchingTouched
-from tinemark.systems.expression import ZERO, Call, Expr, Name
+from tinemark.systems.expression import ZERO, Call, Name
 
 LONGEST_IDENTITY = 8
-"""Longest cycle whose points are tried as constants."""
+"""Longest cycle whose points are tried as known curves."""
+LONGEST_WORD = 4096
+"""Longest cycle of a piecewise map whose pieces are told at each point."""
 ATTEMPTS = 3
 
 
 @dataclass(frozen=True)
 class Identity:
-    """What holds exactly of the map and the cycle.
+    """What holds exactly of the map and the cycle, around it and for every parameter value nearby.
 
     Attributes
     ----------
+    word
+        The smooth pieces of the formula that hold at the cycle's points, told by doubles.
     total
         The map commutes with x -> total - x, and the cycle is its own mirror image.
     points
-        The cycle's points, where the parameter does not move them.
+        The cycle's points, where they are known curves of the parameter.
     straight
         Whether (f^p)'' is zero on such a cycle for every value of the parameter.
     """
 
-    total: Expr | None = None
-    points: tuple[Expr, ...] = ()
+    word: tuple[Pieces, ...]
+    total: Curve | None = None
+    points: tuple[Curve, ...] = ()
     straight: bool = False
 
 
@@ -68,38 +68,59 @@ def identity_at(one: OneMap, x: float, r: float, period: int) -> Identity | None
     """The exact identity that makes two branches meet there; None where none is found."""
     cycles = float_map(one)
     orbit = [float(point) for point in cycles.points(x, r, period)]
-    if period % 2 == 0:
-        total = nearby_constant(orbit[0] + orbit[period // 2], cycles.scale)
-        if total is not None and is_mirror(one, total):
-            return Identity(total=total)
+    if period > LONGEST_WORD and switches(one):
+        return None
+    if period % 2 == 0 or period == 1:
+        half = period // 2
+        totals = [orbit[place] + orbit[(place + half) % period] for place in range(max(half, 1))]
+        if max(totals) - min(totals) <= 1e-8 * cycles.scale:
+            mirrored = total_of_cycle(one, orbit, r)
+            if mirrored is not None:
+                total, word = mirrored
+                # A reflection's own centre stays put, whatever the parameter.
+                points = (total.times(Fraction(1, 2)),) if period == 1 else ()
+                return Identity(word, total=total, points=points, straight=period == 1)
     if period > LONGEST_IDENTITY:
         return None
-    points = [nearby_constant(point, cycles.scale) for point in orbit]
-    known = tuple(point for point in points if point is not None)
-    if len(known) < period:
-        return None
-    if period == 1:
-        total = doubled(known[0])
-        # A reflection's own centre stays put, whatever the parameter.
-        if is_mirror(one, total):
-            return Identity(total=total, points=known, straight=True)
     word = tuple(sides_at(one, point, r) for point in orbit)
-    if _is_certain(one, known, word, r) and is_fixed_cycle(one, known, word):
-        return Identity(points=known, straight=period == 1 and is_straight_at(one, known[0], word[0]))
+    for known in _known_cycles(one, orbit, r):
+        exprs = tuple(point.expr for point in known)
+        if is_fixed_cycle(one, exprs, word):
+            straight = period == 1 and is_straight_at(one, exprs[0], word[0])
+            return Identity(word, points=known, straight=straight)
     return None
 
 
-def _is_certain(one: OneMap, points: tuple[Expr, ...], word: tuple[Pieces, ...], r: float) -> bool:
-    """Whether the formula's pieces that doubles tell are the ones that hold at the points themselves."""
+def _known_cycles(one: OneMap, orbit: list[float], r: float) -> Iterator[tuple[Curve, ...]]:
+    """Curves that a cycle's points may lie on: of a fixed point any, of a longer cycle numbers alone."""
+    scale = float_map(one).scale
+    if len(orbit) == 1:
+        yield from ((curve,) for curve in curves_through(one, orbit[0], r, scale))
+        return
+    curves = [next(curves_through(one, point, r, scale), None) for point in orbit]
+    known = tuple(curve for curve in curves if curve is not None and not curve.moves)
+    if len(known) == len(orbit):
+        yield known
+
+
+def _certain(one: OneMap, identity: Identity, x: Any, r: Any, bits: int) -> None:
+    """Make sure that the pieces which doubles tell hold at the orbit of a point of the box.
+
+    The proof itself shows that no surface is touched anywhere in the box, so that they hold in all of it.
+
+    Raises
+    ------
+    NotProved
+        They do not, or it cannot be told.
+    """
     if not switches(one):
-        return True
-    with precision(SEARCH_BITS):
-        around = ball_of(Fraction(r)) + arb(0, 1e-12 + 1e-9 * abs(r))
-        for point, sides in zip(points, word, strict=True):
-            values = smooth_piece(one, sides).evaluate(constant_ball(point), around)
-            if not all(on_side(one, at, values[3 + 3 * at], side) for at, side in enumerate(sides)):
-                return False
-    return True
+        return
+    with precision(bits):
+        walk = walk_pieces(one, identity.word, x, r)
+        first = tuple(surface[0] for surface in walk.first)
+        for sides, values in zip(identity.word, (first, *walk.surfaces), strict=True):
+            if not all(on_side(one, place, values[place], side) for place, side in enumerate(sides)):
+                raise NotProved("which piece of the formula holds on the cycle could not be told")
 
 
 def settle_branch_point(
@@ -134,7 +155,7 @@ def settle_branch_point(
         wanted = Fraction(1, 10) ** (places + 1)
         for _ in range(ATTEMPTS):
             try:
-                proof, sides = yield from _proved(loops, identity, point, rough.period, bits)
+                proof, sides = yield from _proved(one, identity, point, rough.period, bits)
             except SwitchingTouched as error:
                 reason = error.message
                 break
@@ -165,8 +186,9 @@ Sides = tuple[tuple[Fraction, Fraction], tuple[Fraction, Fraction]]
 
 
 def _proved(
-    loops: BallLoops, identity: Identity, point: BranchPoint, period: int, bits: int
+    one: OneMap, identity: Identity, point: BranchPoint, period: int, bits: int
 ) -> Generator[Step, None, tuple[Proof, Sides]]:
+    loops = ball_loops(one)
     with precision(bits):
         x, r = ball_of(point.x).mid(), ball_of(point.r).mid()
     if identity.points:
@@ -176,7 +198,8 @@ def _proved(
                 break
         with precision(bits):
             half = (abs(r) * 2 ** (24 - bits) + ball_of(Fraction(1, 2 ** (bits - 24)))).abs_upper()
-            place = constant_ball(identity.points[0])
+            place = identity.points[0].at(arb(r, half))
+        _certain(one, identity, place.mid(), r, bits)
         proof = yield from prove_fixed_cycle(loops, identity.points, identity.straight, r, half, bits)
         at, around = fraction_of(place.mid()), max(fraction_of(place.rad()), fraction_of(half))
         return proof, ((fraction_of(r), fraction_of(half)), (at, around))
@@ -186,6 +209,7 @@ def _proved(
         x, r = step.x, step.r
         if step.size < 2.0 ** (-0.9 * bits):
             break
+    _certain(one, identity, x, r, bits)
     correction = yield from mirrored_correction(loops, period // 2, identity.total, x, r, step.inverse, bits)
     box = box_around(x, r, correction, step.inverse, bits)
     proof = yield from prove_symmetry_breaking(
@@ -223,14 +247,16 @@ def prove_claim(one: OneMap, kind: Kind, period: int, box: Box, bits: int) -> Ge
         raise NotProved(f"what happens there is no {kind.value}", refuted=True)
     if identity.points:
         with precision(bits):
-            miss = abs(constant_ball(identity.points[0]) - box.x).abs_upper()
-            if not miss < box.half_x:
+            place = identity.points[0].at(box.r)
+            if not abs(place - box.x).abs_upper() < box.half_x:
                 raise NotProved("the cycle's point is not in the box", refuted=True)
+        _certain(one, identity, place.mid(), box.r, bits)
         proof = yield from prove_fixed_cycle(
             loops, identity.points, identity.straight, box.r, box.half_r, bits
         )
         return proof
     assert identity.total is not None
+    _certain(one, identity, box.x, box.r, bits)
     step = yield from mirrored_newton(loops, period // 2, identity.total, box.x, box.r, bits)
     correction = yield from mirrored_correction(
         loops, period // 2, identity.total, box.x, box.r, step.inverse, bits
@@ -251,25 +277,31 @@ def _naming(one: OneMap, period: int, identity: Identity, proof: Proof, point: B
     if identity.straight:
         pair = "soft" if proof.criticality is Criticality.SUPERCRITICAL else "with a jump"
         words = (
-            f"a pair of cycles of period {period} branches off the one that {one.parameter} does not move, "
-            f"{pair}; the formula has no second-order term there, though no symmetry was recognised"
+            f"a pair of cycles of period {period} branches off the one at {one.state} = "
+            f"{formula_words(identity.points[0].expr)}, {pair}; "
+            "the formula has no second-order term there, though no symmetry was recognised"
         )
         return Naming(Kind.PITCHFORK, period, period, words)
-    cycle = ", ".join(formula_words(place) for place in identity.points)
+    cycle = ", ".join(formula_words(place.expr) for place in identity.points)
+    if any(place.moves for place in identity.points):
+        known = f"which stays one for every {one.parameter}"
+    else:
+        known = f"which {one.parameter} does not move"
     words = (
         f"two cycles of period {period} cross and exchange stability: the one at {one.state} = {cycle}, "
-        f"which {one.parameter} does not move, is stable {before} the onset and unstable {after} it, the "
+        f"{known}, is stable {before} the onset and unstable {after} it, the "
         "other one the other way round"
     )
     return Naming(Kind.TRANSCRITICAL, period, period, words)
 
 
-def _symmetry_words(one: OneMap, period: int, total: Expr, criticality: Criticality) -> str:
+def _symmetry_words(one: OneMap, period: int, total: Curve, criticality: Criticality) -> str:
     state = Name(one.state)
-    mirror = formula_words(Call("neg", (state,)) if total == ZERO else Call("sub", (total, state)))
+    mirror = formula_words(Call("neg", (state,)) if total.expr == ZERO else Call("sub", (total.expr, state)))
+    of_pieces = " of the pieces visited" if switches(one) else ""
     words = (
-        f"the symmetry {one.state} -> {mirror} breaks: the cycle of period {period} that is its own mirror "
-        "image loses its stability"
+        f"the symmetry {one.state} -> {mirror}{of_pieces} breaks: the cycle of period {period} that is its own "
+        "mirror image loses its stability"
     )
     if criticality is Criticality.SUPERCRITICAL:
         return f"{words} to a pair of cycles of the same period that are each other's mirror images"

@@ -30,13 +30,7 @@ from tinemark.onsets.proofs import (
     prime_factors,
 )
 from tinemark.onsets.results import Criticality, Step
-from tinemark.systems.balls import ball_function
-from tinemark.systems.expression import Expr
-
-
-def constant_ball(expr: Expr) -> Any:
-    """A formula without names as a ball, at the precision in force."""
-    return ball_function((expr,), ())()[0]
+from tinemark.onsets.symmetry import Curve
 
 
 @dataclass(frozen=True)
@@ -50,7 +44,7 @@ class MirroredStep:
 
 
 def mirrored_newton(
-    loops: BallLoops, half: int, total: Expr, x: Any, r: Any, bits: int
+    loops: BallLoops, half: int, total: Curve, x: Any, r: Any, bits: int
 ) -> Generator[Step, None, MirroredStep]:
     """One Newton step on total - f^q(x) = x with (f^q)' = 1."""
     with precision(bits):
@@ -61,15 +55,15 @@ def mirrored_newton(
     )
     with precision(bits):
         end, u, v, w, z = state
-        inverse = inverse_of(-u, -v, -w, -z)
-        shift_x, shift_r = inverse.times(constant_ball(total).mid() - end - x, 1 - u.mid())
+        inverse = inverse_of(-u, total.slope(r) - v, -w, -z)
+        shift_x, shift_r = inverse.times(total.at(r).mid() - end - x, 1 - u.mid())
         if not (shift_x.is_finite() and shift_r.is_finite()):
             raise NotProved("the orbit escaped")
         return MirroredStep((x - shift_x).mid(), (r - shift_r).mid(), inverse, abs(float(shift_r)))
 
 
 def mirrored_correction(
-    loops: BallLoops, half: int, total: Expr, x: Any, r: Any, inverse: Inverse, bits: int
+    loops: BallLoops, half: int, total: Curve, x: Any, r: Any, inverse: Inverse, bits: int
 ) -> Generator[Step, None, Correction]:
     """Rigorous -C G(m) of the mirrored equations at an exact point."""
     with precision(bits):
@@ -78,16 +72,16 @@ def mirrored_correction(
         lambda state, n: loops.point(state[0], r, state[1], n), (x, one), half, bits, "evaluating"
     )
     with precision(bits):
-        shift_x, shift_r = inverse.times(constant_ball(total) - end - x, 1 - u)
+        shift_x, shift_r = inverse.times(total.at(r) - end - x, 1 - u)
         return Correction(-shift_x, -shift_r)
 
 
 def prove_symmetry_breaking(
-    loops: BallLoops, half: int, total: Expr, box: Box, inverse: Inverse, correction: Correction, bits: int
+    loops: BallLoops, half: int, total: Curve, box: Box, inverse: Inverse, correction: Correction, bits: int
 ) -> Generator[Step, None, Proof]:
     """Prove one pitchfork of a cycle of period 2 * half that is its own mirror image.
 
-    The map must commute with x -> total - x exactly; that is the caller's to know.
+    The map must commute with x -> total - x exactly around the cycle; that is the caller's to know.
 
     Raises
     ------
@@ -117,14 +111,16 @@ def prove_symmetry_breaking(
         if not (whole[0].is_finite() and whole[0].overlaps(first)):
             raise NotProved("the formula is not defined on the whole cycle")
         end, u, v, w, z, schwarzian = state
-        image_x, image_r = krawczyk_image(box, inverse, correction, (end, -u, -v, -w, -z, schwarzian))
+        drift = v - total.slope(whole_r)
+        image_x, image_r = krawczyk_image(box, inverse, correction, (end, -u, -drift, -w, -z, schwarzian))
         # f^q(x) = total - x. The cycle closes early only at x = total/2, or where f^(q/l) has mirrored it.
-        gaps = [(2 * first - constant_ball(total)).abs_lower()]
-        gaps += [(point + first - constant_ball(total)).abs_lower() for point in visited]
+        centre = total.at(whole_r)
+        gaps = [(2 * first - centre).abs_lower()]
+        gaps += [(point + first - centre).abs_lower() for point in visited]
         if not all(gap > 0 for gap in gaps):
             raise NotProved(f"the least period may be less than {2 * half}", refuted=True)
-        # Of g = total - f^q along its branch, on which dx/dr = -v / 2.
-        speed = w * v / 2 - z
+        # Of g = total - f^q along its branch, on which dx/dr = -drift / 2.
+        speed = w * drift / 2 - z
         if not speed.abs_lower() > 0:
             raise NotProved("the symmetry may be touched without being lost")
         criticality, degenerate, words = _softness(-schwarzian / 6)
@@ -147,33 +143,33 @@ def prove_symmetry_breaking(
 
 
 def fixed_cycle_newton(
-    loops: BallLoops, period: int, point: Expr, r: Any, bits: int
+    loops: BallLoops, period: int, point: Curve, r: Any, bits: int
 ) -> Generator[Step, None, tuple[Any, float]]:
-    """One Newton step on the multiplier of a cycle that the parameter does not move: new r, and its size."""
+    """One Newton step on the multiplier of a cycle known for every parameter value: new r, and its size."""
     with precision(bits):
         zero = arb(0)
-        start = (constant_ball(point).mid(), arb(1), zero, zero, zero)
+        start = (point.at(r).mid(), arb(1), zero, zero, zero)
     state = yield from in_chunks(
         lambda now, n: loops.newton(now[0], r, *now[1:], n), start, period, bits, "polishing"
     )
     with precision(bits):
-        _, u, _, _, z = state
-        shift = ((u - 1) / z).mid()
+        _, u, _, w, z = state
+        shift = ((u - 1) / (z + w * point.slope(r))).mid()
         if not shift.is_finite():
             raise NotProved("the multiplier does not move with the parameter")
         return (r - shift).mid(), abs(float(shift))
 
 
 def prove_fixed_cycle(
-    loops: BallLoops, points: Sequence[Expr], straight: bool, r: Any, half_r: Any, bits: int
+    loops: BallLoops, points: Sequence[Curve], straight: bool, r: Any, half_r: Any, bits: int
 ) -> Generator[Step, None, Proof]:
-    """Prove that a cycle which the parameter does not move is crossed by another branch, once in an interval.
+    """Prove that a cycle known for every parameter value is crossed by another branch, once in an interval.
 
     Parameters
     ----------
     points
-        The cycle's points. That they are run through in turn for every parameter value is the caller's
-        to know, exactly.
+        The cycle's points, as they move with the parameter. That they are run through in turn for every
+        parameter value is the caller's to know, exactly.
     straight
         Whether (f^p)'' is zero there by an exact identity: then the crossing is a pitchfork.
 
@@ -184,22 +180,25 @@ def prove_fixed_cycle(
     """
     period = len(points)
     with precision(bits):
-        places = [constant_ball(point) for point in points]
-        first, zero = places[0], arb(0)
         whole_r = arb(r, half_r)
+        places = [point.at(whole_r) for point in points]
+        first, zero, moves = places[0], arb(0), points[0].slope(whole_r)
+        middle = points[0].at(r)
         spread = whole_r - r
         start = (first, arb(1), zero, zero, zero, zero)
         gaps = [(place - first).abs_lower() for place in places[1:]]
         if not all(gap > 0 for gap in gaps):
             raise NotProved("the cycle's points are not distinct", refuted=True)
     _, at_middle = yield from in_chunks(
-        lambda state, n: loops.point(state[0], r, state[1], n), (first, start[1]), period, bits, "evaluating"
+        lambda state, n: loops.point(state[0], r, state[1], n), (middle, start[1]), period, bits, "evaluating"
     )
     state = yield from in_chunks(
         lambda now, n: loops.box(now[0], whole_r, r, spread, *now[1:], n), start, period, bits, "proving"
     )
     with precision(bits):
         _, u, _, w, z, schwarzian = state
+        # Along the cycle, whose point moves by `moves`.
+        z = z + w * moves
         if not z.abs_lower() > 0:
             raise NotProved("the multiplier may touch +1 without crossing it")
         # A little wider than the Newton image, which is a point where everything came out exact: a printed

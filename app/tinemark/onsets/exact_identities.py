@@ -163,22 +163,36 @@ def times_pi(turns: Fraction) -> Expr:
     return Pi() if turns == 1 else Call("mul", (Num(turns), Pi()))
 
 
-def doubled(constant: Expr) -> Expr:
-    """Twice a constant of `nearby_constant`."""
-    match constant:
-        case Num(value):
-            return Num(2 * value)
-        case Call("mul", (Num(turns), Pi())):
-            return times_pi(2 * turns)
-    return times_pi(Fraction(2))
+@lru_cache(maxsize=512)
+def is_mirrored_along(one: OneMap, total: Expr, pairs: frozenset[tuple[Sides, Sides]]) -> bool:
+    """Whether pieces of the map are mirror images, f(total - x) = total - f(x) for every x and parameter.
 
-
-@lru_cache(maxsize=256)
-def is_mirror(one: OneMap, total: Expr) -> bool:
-    """Whether the map commutes with the reflection x -> total - x, for every x and parameter value."""
-    formula = one.exact_derivatives["f"]
-    image = replaced(formula, {one.state: Call("sub", (total, Name(one.state)))})
-    return vanishes(Call("sub", (Call("add", (image, formula)), total)))
+    Parameters
+    ----------
+    total
+        Twice the centre of the reflection, a formula of the parameter alone.
+    pairs
+        Smooth pieces that hold at a place and at its mirror image.
+    """
+    mirror = Call("sub", (total, Name(one.state)))
+    return all(
+        vanishes(
+            Call(
+                "sub",
+                (
+                    Call(
+                        "add",
+                        (
+                            replaced(smooth_piece(one, there).formula, {one.state: mirror}),
+                            smooth_piece(one, here).formula,
+                        ),
+                    ),
+                    total,
+                ),
+            )
+        )
+        for here, there in sorted(pairs)
+    )
 
 
 @lru_cache(maxsize=256)
