@@ -177,16 +177,6 @@ def test_more_states(extra: int) -> None:
     assert len(onset.states) == 2 + extra
 
 
-def test_area_preserving_maps_have_two_critical_multipliers() -> None:
-    """a = 3 and a = 4 for b = -1 (exact; Greene et al. 1981)."""
-    system = system_of("henon", (("b", "-1"),))
-    for near, exact, period in (("3.02", 3, 1), ("4.01", 4, 2)):
-        (onset,) = click(system, near, "0.2")
-        assert_is(onset, Fraction(exact), Kind.FLIP, period, 2 * period, status=Status.ESTIMATED)
-        assert onset.criticality is Criticality.UNDECIDED
-        assert onset.reason.startswith("two multipliers meet at -1")
-
-
 def test_a_neimark_sacker_onset() -> None:
     """r = 2 with multipliers exp(±i pi/3) (exact; Maynard Smith 1968, from memory).
 

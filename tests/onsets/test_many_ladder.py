@@ -68,9 +68,9 @@ def test_henon_ten_levels() -> None:
 def test_conservative_seven_levels() -> None:
     """b = -1 (Greene, MacKay, Vivaldi and Feigenbaum 1981; recomputed to 28 digits)."""
     result = ladder("henon", "a", "2.9", "4.3", 7, (("b", "-1"),))
-    assert_holds(result, ONSETS["conservative"].onsets, 7, status=Status.ESTIMATED)
-    assert all("two multipliers meet at -1" in item.onset.reason for item in result.levels)
-    assert all(item.onset.criticality is Criticality.UNDECIDED for item in result.levels)
+    assert_holds(result, ONSETS["conservative"].onsets, 7)
+    assert all("both multipliers exactly -1" in dict(item.onset.evidence) for item in result.levels)
+    assert all(item.onset.criticality is Criticality.SUPERCRITICAL for item in result.levels)
     assert scaling(points_of(result.levels)).verdict.name == "conservative"
 
 

@@ -13,8 +13,8 @@ from enum import Enum
 
 import numpy as np
 
+from tinemark.onsets.cycle_map import CycleMap, Floats
 from tinemark.onsets.many_cycles import Cycle, condensed, eigenvalues, least_period, newton, tangent
-from tinemark.onsets.many_map import FloatManyMap, Floats
 from tinemark.onsets.results import Step
 
 FIRST_STEP = 0.02
@@ -131,7 +131,7 @@ def between(a: Cycle, b: Cycle, share: float) -> Cycle:
 
 
 def branch_point(
-    float_map: FloatManyMap, cycle: Cycle, window: Window, before: BranchPoint | None = None
+    float_map: CycleMap, cycle: Cycle, window: Window, before: BranchPoint | None = None
 ) -> BranchPoint | None:
     """A cycle with its multipliers and tangent; the tangent goes on from the point before."""
     parts = condensed(float_map, cycle.points, cycle.r)
@@ -145,7 +145,7 @@ def branch_point(
 
 
 def follow(
-    float_map: FloatManyMap,
+    float_map: CycleMap,
     start: BranchPoint,
     window: Window,
     direction: int,
@@ -198,7 +198,7 @@ def _is_lost(here: BranchPoint, start: BranchPoint, window: Window) -> bool:
     return bool(np.max(away) > FARTHEST) or max(map(abs, here.multipliers)) > MOST_UNSTABLE
 
 
-def _advance(float_map: FloatManyMap, here: BranchPoint, window: Window, step: float) -> BranchPoint | None:
+def _advance(float_map: CycleMap, here: BranchPoint, window: Window, step: float) -> BranchPoint | None:
     guess = Cycle(here.cycle.points + step * here.moves, here.cycle.r + step * here.move_r)
     along = here.moves / window.scales**2 / len(here.moves)
     along_r = here.move_r / window.width**2
@@ -247,7 +247,7 @@ def _changes_sign(before: float, after: float) -> bool:
     return (before >= 0) != (after >= 0)
 
 
-def narrowed(float_map: FloatManyMap, event: Event, window: Window, bracket: float) -> Event:
+def narrowed(float_map: CycleMap, event: Event, window: Window, bracket: float) -> Event:
     """A flip with its bracket in the parameter narrowed, so that a neighbouring flip is not taken for it."""
     low, high = event.before, event.after
     for place in range(MOST_NARROWING):
@@ -267,7 +267,7 @@ def narrowed(float_map: FloatManyMap, event: Event, window: Window, bracket: flo
     return replace(event, before=low, after=high)
 
 
-def _joins(float_map: FloatManyMap, a: BranchPoint, b: BranchPoint, window: Window) -> list[Event]:
+def _joins(float_map: CycleMap, a: BranchPoint, b: BranchPoint, window: Window) -> list[Event]:
     """The flip at which a branch of doubled cycles was left for the one it split from."""
     half = a.cycle.period // 2
     if a.cycle.period % 2 or least_period(b.cycle.points, window.scales, JOINED) > half:

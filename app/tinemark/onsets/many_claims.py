@@ -73,7 +73,7 @@ def claims_of(
     carried = Condensed(kind, box, frames, local)
     yield from carried.carry(bits, text)
     with precision(bits):
-        back = _return_of(carried, frames)
+        back = return_of(carried, frames)
         multiplier = acb(-1 if kind is Kind.FLIP else 1) if box.angle is None else acb(*box.angle)
         q = critical_vector(box, 0)
         left = _left_vector(back.monodromy, multiplier, q)
@@ -95,7 +95,8 @@ def claims_of(
         return _judged(many, kind, box, multiplier, others, speed, coefficient)
 
 
-def _return_of(carried: Condensed, frames: Frames) -> ReturnMap:
+def return_of(carried: Condensed, frames: Frames) -> ReturnMap:
+    """Derivatives of f^p at the first point, from the equations carried round."""
     basis, inverse = frames.bases[-1], frames.inverses[0]
     n = basis.nrows()
 
@@ -207,7 +208,7 @@ def _resonant(
     evidence = (
         (_multiplier_claim(kind), _multiplier_words(kind, multiplier)),
         _other_words(others),
-        ("the pair crosses the circle with speed", f"{_number(speed)} per unit of {many.parameter}"),
+        ("the pair crosses the circle with speed", f"{number_words(speed)} per unit of {many.parameter}"),
         ("resonance", resonance),
     )
     undecided = Criticality.UNDECIDED
@@ -231,14 +232,14 @@ def _judged(
         if coefficient.contains(0):
             raise NotProved("the tangency may be of higher order: no true fold")
         evidence += [
-            ("speed of the parameter", f"{_number(speed)} {unit}"),
-            ("curvature at the tangency", f"{_number(coefficient)} in scaled states"),
+            ("speed of the parameter", f"{number_words(speed)} {unit}"),
+            ("curvature at the tangency", f"{number_words(coefficient)} in scaled states"),
         ]
         nothing = Criticality.NOT_APPLICABLE
         return Claims(complex(multiplier), others, speed, coefficient, nothing, "", "", tuple(evidence))
     flip = kind is Kind.FLIP
     crosses = "crosses -1 with speed" if flip else "the pair crosses the circle with speed"
-    evidence.append((crosses, f"{_number(speed)} {unit}"))
+    evidence.append((crosses, f"{number_words(speed)} {unit}"))
     name = "flip coefficient" if flip else "Neimark-Sacker coefficient"
     criticality, degenerate, consequence = Criticality.UNDECIDED, "", ""
     if coefficient.contains(0):
@@ -246,7 +247,7 @@ def _judged(
     else:
         soft = coefficient > 0 if flip else coefficient < 0
         criticality = Criticality.SUPERCRITICAL if soft else Criticality.SUBCRITICAL
-        evidence.append((name, f"{_number(coefficient)} in scaled states: {criticality.value}"))
+        evidence.append((name, f"{number_words(coefficient)} in scaled states: {criticality.value}"))
         if not flip:
             consequence = _curve_words(box.period, soft, multiplier)
     return Claims(
@@ -300,5 +301,6 @@ def _curve_words(period: int, soft: bool, multiplier: Any) -> str:
     return f"an unstable closed curve shrinks onto {what}: beyond the onset orbits leave it with a jump"
 
 
-def _number(ball: Any) -> str:
+def number_words(ball: Any) -> str:
+    """The middle of a ball to six digits."""
     return str(ball.str(6, radius=False))

@@ -23,7 +23,7 @@ from typing import Any
 from flint import acb, acb_mat, arb_mat
 
 from tinemark.onsets.ball_orbits import precision
-from tinemark.onsets.many_jets import jet_evaluators
+from tinemark.onsets.many_jets import jets_along
 from tinemark.onsets.many_map import ManyMap
 from tinemark.onsets.many_shooting import Frames, Local, Place, entries, in_turn
 from tinemark.onsets.proofs import NotProved
@@ -53,11 +53,11 @@ def coefficient_of(
     text: str,
 ) -> Generator[Step, None, Any]:
     """The raw normal-form coefficient, for the critical vector as it is."""
-    jets, n, r = jet_evaluators(many), many.size, box.r
+    jets, n, r = jets_along(many, box.period), many.size, box.r
     matrix = acb_mat if kind is Kind.NEIMARK_SACKER else arb_mat
 
     def second(at: int, v: Sequence[Any], w: Sequence[Any]) -> Any:
-        return matrix(n, 1, list(jets.second(*box.points[at], r, *v, *w)))
+        return matrix(n, 1, list(jets[at].second(*box.points[at], r, *v, *w)))
 
     def step(at: int, now: Any, force: Any) -> Any:
         return matrix(local.turn[at]) * now + matrix(frames.inverses[at + 1]) * force
@@ -92,7 +92,7 @@ def coefficient_of(
 
         def thirds(at: int, now: Sequence[Any]) -> tuple[Any, ...]:
             (v,) = box.vectors[at]
-            cubic = matrix(n, 1, list(jets.third(*box.points[at], r, *v, *v, *v)))
+            cubic = matrix(n, 1, list(jets[at].third(*box.points[at], r, *v, *v, *v)))
             return second(at, v, v) / 2, second(at, v, shown(at, now[0])) + cubic / 6
 
         _, end = yield from _carried(box.period, [first, zero], thirds, step, bits, text)
@@ -115,7 +115,7 @@ def coefficient_of(
 
     def cubes(at: int, now: Sequence[Any]) -> tuple[Any, ...]:
         q, conjugate = pair(at)
-        cubic = matrix(n, 1, list(jets.third(*box.points[at], r, *q, *q, *conjugate)))
+        cubic = matrix(n, 1, list(jets[at].third(*box.points[at], r, *q, *q, *conjugate)))
         mixed = second(at, q, shown(at, now[0])) * 2 + second(at, conjugate, shown(at, now[1]))
         return (*squares(at), cubic + mixed)
 

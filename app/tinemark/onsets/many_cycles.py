@@ -11,7 +11,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tinemark.onsets.many_map import ESCAPED, FloatManyMap, Floats
+from tinemark.onsets.cycle_map import CycleMap, Floats
+from tinemark.onsets.many_map import ESCAPED
 
 MOST_STEPS = 14
 SETTLED = 1e-11
@@ -56,13 +57,13 @@ class Condensed:
         return self.closing[:, :n]
 
 
-def condensed(float_map: FloatManyMap, points: Floats, r: float) -> Condensed:
+def condensed(float_map: CycleMap, points: Floats, r: float) -> Condensed:
     """Condense the linearised shooting equations of a cycle; not finite where an orbit escapes."""
     with np.errstate(over="ignore", invalid="ignore"):
         return _condensed(float_map, points, r)
 
 
-def _condensed(float_map: FloatManyMap, points: Floats, r: float) -> Condensed:
+def _condensed(float_map: CycleMap, points: Floats, r: float) -> Condensed:
     linear = float_map.linearised(points, r)
     count, n = points.shape
     residual = linear.image - np.concatenate((points[1:], points[:1]))
@@ -81,7 +82,7 @@ def _condensed(float_map: FloatManyMap, points: Floats, r: float) -> Condensed:
     return Condensed(steps[:count, :n], steps[count, :n])
 
 
-def multipliers(float_map: FloatManyMap, cycle: Cycle) -> list[complex]:
+def multipliers(float_map: CycleMap, cycle: Cycle) -> list[complex]:
     """Eigenvalues of the derivative of f^p, largest first; none where it is not finite."""
     return eigenvalues(condensed(float_map, cycle.points, cycle.r).monodromy)
 
@@ -94,7 +95,7 @@ def eigenvalues(matrix: Floats) -> list[complex]:
 
 
 def newton(
-    float_map: FloatManyMap,
+    float_map: CycleMap,
     guess: Cycle,
     scales: Floats,
     *,
@@ -190,7 +191,7 @@ def same_cycle(a: Cycle, b: Cycle, scales: Floats, tolerance: float = SAME_POINT
 
 
 def orbit_ends(
-    float_map: FloatManyMap, states: Floats, rs: Floats, transient: int, kept: int
+    float_map: CycleMap, states: Floats, rs: Floats, transient: int, kept: int
 ) -> tuple[Floats, Floats]:
     """Run orbits; gives the last `kept` states (kept, n, lanes) of those that stayed finite, and their rs."""
     for place in range(transient):

@@ -56,6 +56,16 @@ class JetEvaluators:
                 ball_less(side, 0)
 
 
+def jets_along(many: ManyMap, count: int) -> list[JetEvaluators]:
+    """The evaluators at each of so many points of a cycle."""
+    known: dict[int, JetEvaluators] = {}
+    maps = many.along(count)
+    for each in maps:
+        if id(each) not in known:
+            known[id(each)] = jet_evaluators(each)
+    return [known[id(each)] for each in maps]
+
+
 @lru_cache(maxsize=64)
 def jet_evaluators(many: ManyMap) -> JetEvaluators:
     """Compile the evaluators of a map."""

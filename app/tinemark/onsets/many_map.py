@@ -39,6 +39,9 @@ class ManyMap:
         Range in which each state is shown, or None.
     system
         The system it was made of, for what is written down of a proof; two maps are the same without it.
+    steps
+        The maps applied at the points of a cycle one after the other, where they differ: pieces of a
+        piecewise map, or a symmetry put after the last one. Empty: this map at every point.
     """
 
     states: tuple[str, ...]
@@ -48,6 +51,11 @@ class ManyMap:
     starts: tuple[Fraction, ...]
     extents: tuple[tuple[Fraction, Fraction] | None, ...]
     system: System = field(compare=False, repr=False)
+    steps: tuple[ManyMap, ...] = ()
+
+    def along(self, count: int) -> list[ManyMap]:
+        """The maps applied at each of so many points."""
+        return [self.steps[place] if self.steps else self for place in range(count)]
 
     @property
     def size(self) -> int:
@@ -182,6 +190,17 @@ class BallEvaluators:
 
     step: Callable[..., tuple[Any, ...]]
     critical: Callable[..., tuple[Any, ...]]
+
+
+def evaluators_along(many: ManyMap, count: int) -> list[BallEvaluators]:
+    """The evaluators at each of so many points of a cycle."""
+    # By identity: to compare two maps means to walk through their formulas.
+    known: dict[int, BallEvaluators] = {}
+    maps = many.along(count)
+    for each in maps:
+        if id(each) not in known:
+            known[id(each)] = ball_evaluators(each)
+    return [known[id(each)] for each in maps]
 
 
 @lru_cache(maxsize=64)

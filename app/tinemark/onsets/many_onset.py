@@ -18,6 +18,7 @@ from tinemark.onsets.decimals import (
     leading_power,
     rounded,
 )
+from tinemark.onsets.many_conservative import preserves_areas
 from tinemark.onsets.many_cycles import Cycle, condensed, least_period
 from tinemark.onsets.many_map import FloatManyMap, Floats, ManyMap
 from tinemark.onsets.many_normal_form import Findings, findings
@@ -40,8 +41,6 @@ HOW_ESTIMATED = (
     "the value is solved at two precisions, and its error estimated from the last Newton step and their "
     "difference"
 )
-PRESERVES = 1e-9
-"""A product of all multipliers this near to 1 means that areas are preserved."""
 POINTS_ONE = 1e-9
 """Points of an onset's cycle closer than this share of the state's scale are one point."""
 REAL = 1e-9
@@ -178,7 +177,9 @@ def _proved(
                 places = max(places, decimal_places((low + high) / 2, digits + GUARD_DIGITS))
             if high - low <= Fraction(1, 10) ** (places + 1):
                 onset = _proved_onset(many, kind, proof, first.place.period, digits, places)
-                return Settled(_with_certificate(many, onset, proof, bits), first, _findings_of(proof))
+                if not proof.conservative:
+                    onset = _with_certificate(many, onset, proof, bits)
+                return Settled(onset, first, _findings_of(proof))
             reason = "the enclosure stayed wider than the digits asked for"
         bits = max(bits * 3 // 2, working_bits(places, first.place.period))
     return reason
@@ -308,7 +309,7 @@ def _estimated_onset(
         upper=texts.upper,
         digits=held,
         status=Status.ESTIMATED,
-        reason=_reason(found, why),
+        reason=_reason(many, found, len(solution.points), why),
         states=_state_texts(many, [fraction_of(ball) for ball in solution.points[0]], digits),
         evidence=_evidence(many, kind, solution, found, half, scales),
     )
@@ -342,11 +343,10 @@ def _enclosed_state_texts(many: ManyMap, proof: ManyProof, digits: int) -> tuple
     return tuple(texts)
 
 
-def _reason(found: Findings, why: str) -> str:
+def _reason(many: ManyMap, found: Findings, period: int, why: str) -> str:
     if found.doubled:
         value = "-1" if found.critical.real < 0 else "1"
-        product = abs(complex(np.prod([found.critical, *found.others])))
-        preserves = ", as they must where the map preserves areas" if abs(product - 1) < PRESERVES else ""
+        preserves = ", as they must where the map preserves areas" if preserves_areas(many, period) else ""
         return (
             f"two multipliers meet at {value}{preserves}, "
             f"so whether the change is soft is not decided; {HOW_ESTIMATED}"

@@ -15,7 +15,7 @@ from typing import Any
 from flint import arb, arb_mat
 
 from tinemark.onsets.ball_orbits import precision
-from tinemark.onsets.many_map import Floats, ManyMap, ball_evaluators
+from tinemark.onsets.many_map import Floats, ManyMap, evaluators_along
 from tinemark.onsets.many_shooting import (
     Condensed,
     Frames,
@@ -91,17 +91,17 @@ def rough_place(
 ) -> Place:
     """A place from rough cycle points and the rough critical vectors at the first of them, carried along."""
     n = many.size
-    evaluate = ball_evaluators(many).critical
+    along = evaluators_along(many, len(points))
     with precision(bits):
         x = [[arb(value).mid() for value in point] for point in points]
         rr = arb(r).mid()
         length = math.sqrt(sum(float(value) ** 2 for vector in vectors for value in vector))
         now = [[arb(float(value) / length) for value in vector] for vector in vectors]
         carried = [now]
-        for point in x[:-1]:
+        for point, evaluators in zip(x[:-1], along, strict=False):
             following = []
             for vector in now:
-                values = evaluate(*point, rr, *vector)
+                values = evaluators.critical(*point, rr, *vector)
                 moved = arb_mat(n, n, list(values[n : n + n * n])) * arb_mat(n, 1, vector)
                 following.append([value.mid() for value in entries(moved)])
             now = following

@@ -8,7 +8,7 @@ no matrix larger than a few times the number of states is formed, and the cost g
 
 from __future__ import annotations
 
-from collections.abc import Generator
+from collections.abc import Generator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -16,7 +16,8 @@ from flint import arb
 
 from tinemark.onsets.ball_orbits import fraction_of, precision
 from tinemark.onsets.many_claims import Claims, claims_of
-from tinemark.onsets.many_jets import jet_evaluators
+from tinemark.onsets.many_conservative import conservative_claims, preserves_areas
+from tinemark.onsets.many_jets import jets_along
 from tinemark.onsets.many_map import Floats, ManyMap
 from tinemark.onsets.many_shooting import (
     Condensed,
@@ -53,6 +54,8 @@ class ManyProof:
         Everything else that was shown.
     evidence
         (claim, finding) pairs in words.
+    conservative
+        Whether both multipliers are -1 because the map preserves areas.
     """
 
     parameter: Interval
@@ -60,6 +63,7 @@ class ManyProof:
     box: tuple[Interval, ...]
     claims: Claims
     evidence: tuple[tuple[str, str], ...]
+    conservative: bool = False
 
 
 @dataclass(frozen=True)
@@ -111,7 +115,12 @@ def prove_many(
         test = f"interval Newton test on {middle.period} points with their critical vectors, {half}"
         evidence = [("one onset in the box", test)]
         evidence += _least_period(found.box, scales)
-    claims = yield from claims_of(many, kind, found.box, found.frames, found.local, scales, bits)
+    parts = found.box, found.frames, found.local, scales, bits
+    conservative = kind is Kind.FLIP and preserves_areas(many, middle.period)
+    if conservative:
+        claims = yield from conservative_claims(many, *parts)
+    else:
+        claims = yield from claims_of(many, kind, *parts)
     with precision(bits):
         return ManyProof(
             _interval(found.r),
@@ -119,6 +128,7 @@ def prove_many(
             tuple(_interval(value) for value in (found.box.r, *found.box.points[0])),
             claims,
             (*evidence, *claims.evidence),
+            conservative,
         )
 
 
@@ -154,8 +164,12 @@ def enclose(
     with precision(bits):
         box = _box_of(first, arb(2) ** -bits)
         balls = _around(middle, frames, box)
-    jets = jet_evaluators(many)
-    on_box = yield from local_at(many, kind, balls, frames, bits, text, jets.check_sides)
+    jets = jets_along(many, middle.period)
+
+    def check(at: int, x: Sequence[Any], r: Any) -> None:
+        jets[at].check_sides(x, r)
+
+    on_box = yield from local_at(many, kind, balls, frames, bits, text, check)
     curved = yield from _curved(kind, middle, balls, frames, local, on_box, box, right, bits, text)
     image = yield from condensed.solve(curved, bits, text)
     with precision(bits):

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from tinemark.onsets.cycle_map import CycleMap, Floats
 from tinemark.onsets.many_cycles import (
     Cycle,
     least_period,
@@ -16,7 +17,6 @@ from tinemark.onsets.many_cycles import (
     returns,
     same_cycle,
 )
-from tinemark.onsets.many_map import FloatManyMap, Floats
 from tinemark.onsets.results import Step
 
 OFFSETS = (0.0, 0.004, -0.004, 0.012, -0.012, 0.03, -0.03, 0.07, -0.07, 0.15, -0.15, 0.3, -0.3, 0.5, -0.5)
@@ -26,6 +26,8 @@ MANY_STARTS = 60
 SCATTERED_FOR_NEWTON = 24
 FAR_FROM_STABLE = 4.0
 """Cycles with a multiplier larger than this are looked at last."""
+ATTRACTING = 1e-3
+"""Multipliers closer to 1 than this do not show that orbits settle on a cycle."""
 TRANSIENT = 1500
 LONGEST_PERIOD = 128
 TOLERANCES = (1e-9, 1e-6, 1e-4, 3e-3)
@@ -45,7 +47,7 @@ class Place:
     width: float
     height: float | None
 
-    def distance(self, float_map: FloatManyMap, cycle: Cycle) -> float:
+    def distance(self, float_map: CycleMap, cycle: Cycle) -> float:
         """Distance on the screen from the click to the nearest point of a cycle."""
         across = (cycle.r - self.r) / self.width
         if self.observed is None or not self.height:
@@ -54,9 +56,7 @@ class Place:
         return float(np.hypot(across, np.min(np.abs(up))))
 
 
-def cycles_around(
-    float_map: FloatManyMap, place: Place, scales: Floats
-) -> Generator[Step, None, list[Cycle]]:
+def cycles_around(float_map: CycleMap, place: Place, scales: Floats) -> Generator[Step, None, list[Cycle]]:
     """Distinct cycles at parameters around a click, nearest on the screen first."""
     rs = place.r + place.width * np.array(OFFSETS)
     history, lanes = yield from _settled(float_map, _starts(float_map), rs)
@@ -76,7 +76,7 @@ def cycles_around(
         for guess, r in _close_returns(history, lanes, scales):
             _keep(found, _polished(float_map, guess, r, scales), scales)
         yield Step("looking for cycles that orbits come close to")
-    if not found:
+    if not any(_attracts(float_map, cycle) for cycle in found):
         # Nothing settles, as where the map preserves areas: Newton's method from scattered places.
         for cycle in scattered_cycles(float_map, place.r, scales):
             _keep(found, cycle, scales)
@@ -89,15 +89,17 @@ def cycles_around(
     return sorted(found, key=lambda cycle: _order(float_map, place, cycle))
 
 
-def _order(float_map: FloatManyMap, place: Place, cycle: Cycle) -> tuple[bool, float, int]:
+def _attracts(float_map: CycleMap, cycle: Cycle) -> bool:
+    return max(map(abs, multipliers(float_map, cycle)), default=np.inf) < 1 - ATTRACTING
+
+
+def _order(float_map: CycleMap, place: Place, cycle: Cycle) -> tuple[bool, float, int]:
     # Nothing is seen of cycles that are far from stable, and little splits from them.
     largest = max(map(abs, multipliers(float_map, cycle)), default=np.inf)
     return largest > FAR_FROM_STABLE, place.distance(float_map, cycle), cycle.period
 
 
-def _settled(
-    float_map: FloatManyMap, starts: Floats, rs: Floats
-) -> Generator[Step, None, tuple[Floats, Floats]]:
+def _settled(float_map: CycleMap, starts: Floats, rs: Floats) -> Generator[Step, None, tuple[Floats, Floats]]:
     """Last states of orbits from every start at every parameter, those that escape left out."""
     states, lanes = np.repeat(starts, len(rs), axis=1), np.tile(rs, starts.shape[1])
     for _ in range(5):
@@ -107,7 +109,7 @@ def _settled(
     return orbit_ends(float_map, states, lanes, 0, LONGEST_PERIOD + 1)
 
 
-def parents(float_map: FloatManyMap, cycle: Cycle, scales: Floats) -> Iterator[Cycle]:
+def parents(float_map: CycleMap, cycle: Cycle, scales: Floats) -> Iterator[Cycle]:
     """Cycles of half the period that a cycle may have split from: the means of opposite points."""
     while cycle.period % 2 == 0:
         half = cycle.period // 2
@@ -120,7 +122,7 @@ def parents(float_map: FloatManyMap, cycle: Cycle, scales: Floats) -> Iterator[C
 
 
 def scattered_cycles(
-    float_map: FloatManyMap, r: float, scales: Floats, periods: Sequence[int] = (1, 2, 3, 4)
+    float_map: CycleMap, r: float, scales: Floats, periods: Sequence[int] = (1, 2, 3, 4)
 ) -> Iterator[Cycle]:
     """Cycles that Newton's method finds from scattered starts, whether orbits settle on them or not."""
     for start in _starts(float_map, SCATTERED_FOR_NEWTON).T:
@@ -135,7 +137,7 @@ def scattered_cycles(
                 yield cycle
 
 
-def _starts(float_map: FloatManyMap, scattered_starts: int = SCATTERED_STARTS) -> Floats:
+def _starts(float_map: CycleMap, scattered_starts: int = SCATTERED_STARTS) -> Floats:
     """Own start of the system and a few scattered in the states' ranges; shape (n, starts)."""
     many = float_map.many
     own = np.array([float(value) for value in many.starts])
@@ -152,7 +154,7 @@ def _starts(float_map: FloatManyMap, scattered_starts: int = SCATTERED_STARTS) -
     return np.array(columns).T
 
 
-def _polished(float_map: FloatManyMap, points: Floats, r: float, scales: Floats) -> Cycle | None:
+def _polished(float_map: CycleMap, points: Floats, r: float, scales: Floats) -> Cycle | None:
     cycle = newton(float_map, Cycle(np.ascontiguousarray(points), r), scales)
     if cycle is None:
         return None

@@ -23,7 +23,7 @@ import numpy as np
 from flint import arb, arb_mat
 
 from tinemark.onsets.ball_orbits import precision
-from tinemark.onsets.many_map import Floats, ManyMap, ball_evaluators
+from tinemark.onsets.many_map import Floats, ManyMap, evaluators_along
 from tinemark.onsets.results import Kind, Step
 
 CHUNK = 32
@@ -116,7 +116,7 @@ def frames_along(
 ) -> Generator[Step, None, Frames]:
     """Frames in which the derivatives along the cycle are upper triangular up to rounding of doubles."""
     n = many.size
-    evaluate = ball_evaluators(many).critical
+    along = evaluators_along(many, middle.period)
     sizes = np.exp2(np.round(np.log2(scales)))  # powers of two: scaling rounds nothing
     basis = np.eye(n)
     bases: list[Any] = []
@@ -126,7 +126,7 @@ def frames_along(
 
     def advance(place: int) -> None:
         nonlocal basis
-        values = evaluate(*middle.points[place], middle.r, *middle.vectors[place][0])
+        values = along[place].critical(*middle.points[place], middle.r, *middle.vectors[place][0])
         matrix = np.array([float(value) for value in values[n : n + n * n]]).reshape(n, n)
         moved = matrix * (sizes / sizes[:, None]) @ basis
         if not np.isfinite(moved).all():
@@ -147,11 +147,11 @@ def local_at(
     frames: Frames,
     bits: int,
     text: str,
-    check: Callable[[Sequence[Any], Any], None] | None = None,
+    check: Callable[[int, Sequence[Any], Any], None] | None = None,
 ) -> Generator[Step, None, Local]:
     """Residuals and derivatives of the defining equations, enclosed on the balls of a place."""
     n, count, width = many.size, place.period, place.width
-    evaluate = ball_evaluators(many).critical
+    along = evaluators_along(many, count)
     found = Local([], [], [], [], [], [])
     with precision(bits):
         back = returned(kind, place)
@@ -161,12 +161,12 @@ def local_at(
         if at + 1 < count:
             vectors_after = place.vectors[at + 1]
         if check is not None:
-            check(x, place.r)
+            check(at, x, place.r)
         basis, inverse = frames.bases[at], frames.inverses[at + 1]
         gaps_v, bends, bends_r = [], [], []
         for which in range(width):
             vector = place.vectors[at][which]
-            values = evaluate(*x, place.r, *vector)
+            values = along[at].critical(*x, place.r, *vector)
             jacobian = arb_mat(n, n, list(values[n : n + n * n]))
             rest = values[n + n * n :]
             moved = jacobian * column(vector)
