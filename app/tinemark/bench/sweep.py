@@ -1,4 +1,4 @@
-"""A measured sweep as a value: knob settings in the order in which they were visited, each with its samples."""
+"""A measured sweep as a value: knob settings in the order in which they were visited, with their samples."""
 
 from __future__ import annotations
 
