@@ -33,6 +33,7 @@ KEYS = [
     "ratio",
     "ratio_uncertainty",
     "sensitivities",
+    "consequence",
     "margin",
     "certificate",
 ]

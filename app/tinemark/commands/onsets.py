@@ -14,7 +14,7 @@ from tinemark.systems.exact import Exact
 
 if TYPE_CHECKING:
     from tinemark.document.onsets_file import Found
-    from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, Step
+    from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, Onset, Step
     from tinemark.onsets.scaling import Scaling
     from tinemark.systems.system import System
 
@@ -83,26 +83,33 @@ def ladder(options: LadderOptions) -> None:
         found, scaled, message = _downwards(request, error)
     if not found:
         raise NoOnsetFound(message or "no cascade was found there", where=options.system)
-    if kinds is not None and kinds != {Kind.FLIP}:
-        found = _opened(request, found, kinds)
+    if kinds is not None:
+        found = [item for item in found if item[1].kind in kinds]
+        if kinds != {Kind.FLIP}:
+            found = _opened(request, found, kinds)
     print_onsets(options.system, parameter, found, scaled, options.json, system)
+    for level, onset in found:
+        if level is not None and onset.consequence:
+            say(f"level {level}: {onset.consequence}")
     if message:
         say(message)
 
 
 def _opened(request: LadderRequest, found: list[Found], kinds: frozenset[Kind]) -> list[Found]:
     """The levels, and before them the onset at which the cycle that splits first appears."""
+    from tinemark.document.ledger import same_onset
     from tinemark.onsets import engine
 
     progress = Progress()
+    first = next(onset for level, onset in found if level is not None)
     try:
-        opening = run_steps(
-            engine.opening(request, found[0][1], kinds), lambda item: progress.step(item.text)
-        )
+        opening = run_steps(engine.opening(request, first, kinds), lambda item: progress.step(item.text))
     finally:
         progress.clear()
     if opening is None:
         say("the cycle that splits first appears in no onset of these kinds within reach")
+        return found
+    if any(same_onset(opening, onset) for _, onset in found):
         return found
     return [(None, opening), *found]
 
@@ -140,7 +147,8 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
     Returns
     -------
     found, scaled, message
-        The levels, what they say together (None without levels), and why the ladder ended early if it did.
+        The levels, and between them (without a level) what else was met on the way; what the levels say
+        together (None without levels); and why the ladder ended early if it did.
 
     Raises
     ------
@@ -164,10 +172,11 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
         progress.line(f"level {item.level}: {onset.parameter} = {onset.value} ({onset.status.value})")
 
     message, alpha, alpha_reason = "", None, ""
+    besides: tuple[Onset, ...] = ()
     try:
         result = run_steps(engine.ladder(request), hear)
         levels, message = list(result.levels), result.message
-        alpha, alpha_reason = result.alpha, result.alpha_reason
+        alpha, alpha_reason, besides = result.alpha, result.alpha_reason, result.besides
     except NoOnsetFound as error:
         # What was found before it gave out still counts.
         if not levels:
@@ -176,6 +185,8 @@ def follow(request: LadderRequest) -> tuple[list[Found], Scaling | None, str]:
     finally:
         progress.clear()
     found: list[Found] = [(item.level, item.onset) for item in levels]
+    found += [(None, onset) for onset in besides]
+    found.sort(key=lambda item: item[1].value_fraction, reverse=request.stop < request.start)
     if not levels:
         return found, None, message
     number = Estimate(*alpha, COVERAGE) if alpha is not None else None

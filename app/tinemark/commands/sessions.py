@@ -103,8 +103,9 @@ def _with_a_ladder(session: Session, system: System) -> Session:
         say(str(error))
         return session
     levels = tuple(LadderLevel(level, onset) for level, onset in found if level is not None)
+    besides = tuple(onset for level, onset in found if level is None)
     place = place_of(system, session.parameter)
-    ledger = add_ladder(session.ledger, LadderResult(1, levels, message), place)
+    ledger = add_ladder(session.ledger, LadderResult(1, levels, message, besides=besides), place)
     return replace(session, ledger=ledger)
 
 

@@ -83,10 +83,12 @@ def add(ledger: Ledger, onset: Onset, place: Place, *, stated_base: int = 0) -> 
 
 
 def add_ladder(ledger: Ledger, result: LadderResult, place: Place) -> Ledger:
-    """Add every level of a followed ladder; see `add`."""
+    """Add every level of a followed ladder, and what else it met; see `add`."""
     rows, number = ledger.rows, ledger.next_number
     for level in result.levels:
         rows, number, _ = _insert(rows, number, level.onset, place, result.base_period)
+    for onset in result.besides:
+        rows, number, _ = _insert(rows, number, onset, place, 0)
     return Ledger(grouped(rows), number)
 
 

@@ -117,6 +117,7 @@ class Entry(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     ratio: str | None
     ratio_uncertainty: str | None
     sensitivities: list[Slope] = []
+    consequence: str = ""
     margin: MarginEntry | None = None
     certificate: CertificateEntry | None = None
 
@@ -177,6 +178,7 @@ def onsets_file(
                 ratio=ratio.value if ratio else None,
                 ratio_uncertainty=ratio.expanded_text if ratio else None,
                 sensitivities=_slopes(onset, known),
+                consequence=onset.consequence,
                 margin=_margin(onset, known),
                 certificate=_certificate(onset.certificate),
             )

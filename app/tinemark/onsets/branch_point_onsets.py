@@ -300,8 +300,8 @@ def _symmetry_words(one: OneMap, period: int, total: Curve, criticality: Critica
     mirror = formula_words(Call("neg", (state,)) if total.expr == ZERO else Call("sub", (total.expr, state)))
     of_pieces = " of the pieces visited" if switches(one) else ""
     words = (
-        f"the symmetry {one.state} -> {mirror}{of_pieces} breaks: the cycle of period {period} that is its own "
-        "mirror image loses its stability"
+        f"the symmetry {one.state} -> {mirror}{of_pieces} breaks: the cycle of period {period} that is "
+        "its own mirror image loses its stability"
     )
     if criticality is Criticality.SUPERCRITICAL:
         return f"{words} to a pair of cycles of the same period that are each other's mirror images"

@@ -24,14 +24,15 @@ from tinemark.onsets.branches import (
     follow_to_multiplier,
     least_period,
 )
-from tinemark.onsets.float_map import CycleStep
+from tinemark.onsets.float_map import FloatMap
+from tinemark.onsets.mirrored_cycles import symmetry_breaking_of
 from tinemark.onsets.results import Kind, Step
 from tinemark.systems.errors import SwitchingTouched
 
 CLOSENESS = (0.7, 0.9, 0.98)
 """Multipliers at which the branch is left for the point ahead of it, one after the other."""
-MIRRORED_GAP = 1e-6
-"""Share of the state's scale within which a cycle counts as its own mirror image."""
+EXTENT = 100
+"""A fold or flip that so many times the parameter's size belongs to is where following a branch stalled."""
 
 
 def branch_point_ahead(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Crossing | None:
@@ -98,75 +99,6 @@ def _crossing_of(cycles: CycleMap, found: tuple[Any, Any], start: Cycle) -> Cros
     return Crossing(kind, start.period, x, r, 2 / abs(z) if z else math.inf)
 
 
-class MirroredMap:
-    """The return map g = S f^q of a map that commutes with the reflection S, x -> total - x.
-
-    A cycle of period 2q that is its own mirror image is a fixed point of g, and it loses that symmetry
-    where the multiplier of g is -1: a pitchfork of f is a flip of g. Answers what `CycleMap` does.
-    """
-
-    def __init__(self, cycles: CycleMap, total: Any) -> None:
-        self.cycles, self.total = cycles, total
-        self.one = cycles.one
-        self.scale, self.fine, self.coincident = cycles.scale, cycles.fine, cycles.coincident
-        self.slice_steps = cycles.slice_steps
-        self.number, self.exact, self.offset, self.midway = (
-            cycles.number,
-            cycles.exact,
-            cycles.offset,
-            cycles.midway,
-        )
-        self.points, self.observed_offsets = cycles.points, cycles.observed_offsets
-        self.settle, self.critical_points = cycles.settle, cycles.critical_points
-
-    def newton(self, x: Any, r: Any, period: int, target: float | None) -> CycleStep | None:
-        """One Newton step for g(x) = x, with a multiplier of g as target where one is given."""
-        end = self.cycles.points(x, r, period + 1)[period]
-        u, v, w, z = self.slopes(x, r, period)
-        gap = float(self.total - end - x)
-        shift_r = 0.0
-        if target is None:
-            shift_x = -gap / (u - 1) if u != 1 else math.nan
-        else:
-            miss = u - target
-            determinant = (u - 1) * z - v * w
-            if determinant == 0:
-                return None
-            shift_x = -(z * gap - v * miss) / determinant
-            shift_r = -((u - 1) * miss - w * gap) / determinant
-        if not (math.isfinite(shift_x) and math.isfinite(shift_r)):
-            return None
-        return CycleStep(x + self.number(shift_x), r + self.number(shift_r), shift_x, shift_r, u)
-
-    def slopes(self, x: Any, r: Any, period: int) -> tuple[float, float, float, float]:
-        """Derivatives of g."""
-        u, v, w, z = self.cycles.slopes(x, r, period)
-        return -u, -v, -w, -z
-
-
-def symmetry_breaking_of(cycles: CycleMap, start: Cycle, origin: Fraction, reach: float) -> Crossing | None:
-    """The pitchfork at which a cycle that is its own mirror image ceases to be stable, if there is one.
-
-    The cycle's multiplier is the square of that of its half, so following the multiplier itself cannot
-    tell the end where the cycle was born from the end where it loses its symmetry.
-    """
-    if start.period % 2:
-        return None
-    half = start.period // 2
-    points = cycles.points(start.x, start.r, start.period)
-    totals = [float(points[place] + points[place + half]) for place in range(half)]
-    if max(totals) - min(totals) > MIRRORED_GAP * cycles.scale:
-        return None
-    mirrored = MirroredMap(cycles, points[0] + points[half])
-    multiplier = mirrored.slopes(start.x, start.r, half)[0]
-    found, _ = follow_to_multiplier(mirrored, Cycle(half, start.x, start.r, multiplier), -1.0, origin, reach)
-    if found is None or abs(float(found.x + found.x - mirrored.total)) < MIRRORED_GAP * cycles.scale:
-        return None
-    _, v, w, z = mirrored.slopes(found.x, found.r, half)
-    speed = abs(z + w * v / 2)
-    return Crossing(Kind.PITCHFORK, start.period, found.x, found.r, 2 / speed if speed else math.inf)
-
-
 @dataclass(frozen=True)
 class Meetings:
     """What else lies on a branch: points where it meets others, and where its multiplier only touches -1."""
@@ -175,22 +107,26 @@ class Meetings:
     touching: Cycle | None
 
 
+def is_stalled(crossing: Crossing, reach: float) -> bool:
+    """Whether a crossing is no onset but where following the multiplier stalled: its extent is unbounded."""
+    return not crossing.extent < EXTENT * max(abs(float(crossing.r)), reach)
+
+
 def meetings_of(
-    cycles: CycleMap, start: Cycle, origin: Fraction, reach: float, known: Sequence[Crossing]
+    cycles: FloatMap, start: Cycle, origin: Fraction, reach: float, known: Sequence[Crossing]
 ) -> Meetings:
     """Branch points and touchings of the branch a cycle lies on.
 
     Parameters
     ----------
     known
-        Flips and folds of that branch. One of an extent beyond all bounds is where following the
-        multiplier stalled, not an onset.
+        Flips and folds of that branch.
     """
     found = []
     breaking = symmetry_breaking_of(cycles, start, origin, reach)
     if breaking is not None and abs(cycles.offset(breaking.r, origin)) <= reach:
         found.append(breaking)
-    true = [crossing for crossing in known if crossing.extent < 100 * max(abs(float(crossing.r)), reach)]
+    true = [crossing for crossing in known if not is_stalled(crossing, reach)]
     if not any(crossing.kind is Kind.FOLD or crossing.period < start.period for crossing in true):
         ahead = branch_point_ahead(cycles, start, origin, reach)
         if ahead is not None:

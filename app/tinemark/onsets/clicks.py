@@ -16,6 +16,7 @@ from tinemark.onsets.crises import crises_in_view, crossing_of
 from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.float_map import float_map
 from tinemark.onsets.jumps import jump_of
+from tinemark.onsets.mirrored_cycles import pitchforks_in_view
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.onset_words import consequence_sentence, describe, short_number
 from tinemark.onsets.polish import Lost, Rough
@@ -76,6 +77,10 @@ def _search(one: OneMap, request: RefineRequest) -> Generator[Step, None, Search
     yield from run_sweep(search, NEAR)
     for landing in crises_in_view(cycles, float(request.near), search.width):
         search.add(crossing_of(landing))
+    observed = request.observed if one.observes_state else None
+    where = None if observed is None else float(observed)
+    for crossing in pitchforks_in_view(cycles, request.near, where, search.width):
+        search.add(crossing)
     yield Step("comparing the critical orbit with unstable cycles")
     if not search.done(0.03):
         yield from run_sweep(search, WIDE)

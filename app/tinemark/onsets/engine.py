@@ -121,7 +121,11 @@ def _with_sensitivities(
             item = next(levels)
         except StopIteration as done:
             result: LadderResult = done.value
-            return replace(result, levels=tuple(filled.get(item.level, item) for item in result.levels))
+            besides: tuple[Onset, ...] = ()
+            for onset in result.besides:
+                besides += ((yield from with_sensitivities(request.system, onset, longest=LONGEST_UNASKED)),)
+            levels_found = tuple(filled.get(item.level, item) for item in result.levels)
+            return replace(result, levels=levels_found, besides=besides)
         if isinstance(item, LadderLevel):
             onset = yield from with_sensitivities(request.system, item.onset, longest=LONGEST_UNASKED)
             item = filled[item.level] = replace(item, onset=onset)

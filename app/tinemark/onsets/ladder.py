@@ -24,6 +24,7 @@ from tinemark.onsets.branches import (
 from tinemark.onsets.decimals import leading_power
 from tinemark.onsets.doubled_branch import born_at, flip_of_doubled
 from tinemark.onsets.float_map import FloatMap, float_map
+from tinemark.onsets.ladder_passages import besides_words, passage_to
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Lost, Rough, Settled, first_bits, settle_onset
 from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Status, Step
@@ -116,8 +117,9 @@ def ladder_one(request: LadderRequest) -> Generator[Step | LadderLevel, None, La
         settled = yield from settle_onset(one, _rough(first, period), request.digits, reach=reach)
     except Lost as error:
         raise NoOnsetFound(f"the first level could not be solved for: {error}") from error
-    levels = [LadderLevel(1, settled.onset)]
-    found = [(yield from _anchored(course, settled, period))]
+    passage = yield from passage_to(one, course.cycles, settled, 1, request.start, request.digits)
+    levels, besides = [LadderLevel(1, passage.settled.onset)], list(passage.besides)
+    found = [(yield from _anchored(course, passage.settled, period))]
     yield levels[0]
     message = ""
     while len(levels) < request.levels:
@@ -131,10 +133,14 @@ def ladder_one(request: LadderRequest) -> Generator[Step | LadderLevel, None, La
         if isinstance(following, str):
             message = f"the ladder ends at level {number - 1}: {following}"
             break
+        passage = yield from passage_to(one, course.cycles, following, number, found[-1].r, request.digits)
+        following = passage.settled
+        besides += passage.besides
         levels.append(LadderLevel(number, following.onset))
         found.append(following)
         yield levels[-1]
-    return LadderResult(request.base_period, tuple(levels), message)
+    message = "; ".join(part for part in (message, besides_words(besides)) if part)
+    return LadderResult(request.base_period, tuple(levels), message, besides=tuple(besides))
 
 
 def _rough(crossing: Crossing, period: int) -> Rough:

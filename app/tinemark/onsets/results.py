@@ -220,10 +220,13 @@ class LadderResult:
     Attributes
     ----------
     message
-        Why it ended before the levels asked for, if it did.
+        Why it ended before the levels asked for, if it did, and what else was met on the way.
     alpha
         How its cycles shrink from level to level, a decimal text and its uncertainty at 95 % coverage;
         None, and then `alpha_reason` says why.
+    besides
+        Onsets met on the way that are no levels: pitchforks passed, and folds that bound the hysteresis of
+        a subcritical level.
     """
 
     base_period: int
@@ -231,6 +234,7 @@ class LadderResult:
     message: str = ""
     alpha: tuple[str, str] | None = None
     alpha_reason: str = ""
+    besides: tuple[Onset, ...] = ()
 
 
 @dataclass(frozen=True)

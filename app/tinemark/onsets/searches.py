@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from tinemark.onsets.border_search import border_crossings
-from tinemark.onsets.branch_points import meetings_of
+from tinemark.onsets.branch_points import is_stalled, meetings_of
 from tinemark.onsets.branches import Crossing, Cycle, CycleMap, crossings_from, find_cycle
 from tinemark.onsets.crises import band_offsets
 from tinemark.onsets.float_map import FloatMap, float_map
@@ -213,7 +213,8 @@ def _take_seed(search: Search, label: int, x: Any, r: Any, periods: Iterable[int
         points = tuple(float(point) for point in cycles.points(cycle.x, cycle.r, cycle.period))
         search.spans.setdefault((label, cycle.period), []).append(Span(*span, points))
         for crossing in crossings:
-            search.add(crossing)
+            if not is_stalled(crossing, search.width):
+                search.add(crossing)
         _add_meetings(search, cycle, crossings)
         return
 

@@ -138,7 +138,9 @@ def centres(one: OneMap, r: float) -> tuple[Curve, ...]:
 
     Only the fixed points are tried, since the centre of a reflection stays put.
     """
-    return _centres(one, float(f"{r:.2g}") if r else 0.0)
+    # A little off round numbers, where plain formulas like to be degenerate.
+    rounded = float(f"{r:.2g}")
+    return _centres(one, rounded + 0.0137 * max(abs(rounded), 0.1))
 
 
 @lru_cache(maxsize=256)
