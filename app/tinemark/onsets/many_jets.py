@@ -66,9 +66,14 @@ def jets_along(many: ManyMap, count: int) -> list[JetEvaluators]:
     return [known[id(each)] for each in maps]
 
 
-@lru_cache(maxsize=64)
 def jet_evaluators(many: ManyMap) -> JetEvaluators:
-    """Compile the evaluators of a map."""
+    """The evaluators of a map: its own, or compiled from its formulas."""
+    own: JetEvaluators | None = many.own_jets()
+    return own or _compiled(many)
+
+
+@lru_cache(maxsize=64)
+def _compiled(many: ManyMap) -> JetEvaluators:
     n = many.size
     # A space cannot stand in a name, so these never meet a name of the system.
     u, v, w = (tuple(f"{letter} {place}" for place in range(n)) for letter in "uvw")

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Generator, Sequence
 from copy import copy
 from dataclasses import dataclass, field
 from fractions import Fraction
@@ -13,11 +13,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tinemark.onsets.one_map import put_in
+from tinemark.onsets.results import Step
 from tinemark.systems.expression import ZERO, Call, Expr, Name
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
 
 Floats = NDArray[np.float64]
+Preparation = Callable[[Sequence[Any], Any, Sequence[Sequence[Any]], int, str], Generator[Step, None, None]]
+"""(point, parameter, vectors, bits, what is done): the evaluations at a point along each of the vectors."""
 ESCAPED = 1e100
 
 
@@ -56,6 +59,18 @@ class ManyMap:
     def along(self, count: int) -> list[ManyMap]:
         """The maps applied at each of so many points."""
         return [self.steps[place] if self.steps else self for place in range(count)]
+
+    def own_evaluators(self) -> BallEvaluators | None:
+        """What evaluates the map over balls where its formulas do not."""
+        return None
+
+    def own_jets(self) -> Any | None:
+        """What evaluates its higher derivatives then: `many_jets.JetEvaluators`."""
+        return None
+
+    def own_preparation(self) -> Preparation | None:
+        """What works out beforehand, in small steps, what these will be asked; None where they are quick."""
+        return None
 
     @property
     def size(self) -> int:
@@ -203,9 +218,13 @@ def evaluators_along(many: ManyMap, count: int) -> list[BallEvaluators]:
     return [known[id(each)] for each in maps]
 
 
-@lru_cache(maxsize=64)
 def ball_evaluators(many: ManyMap) -> BallEvaluators:
-    """Compile the evaluators of a map."""
+    """The evaluators of a map: its own, or compiled from its formulas."""
+    return many.own_evaluators() or _compiled(many)
+
+
+@lru_cache(maxsize=64)
+def _compiled(many: ManyMap) -> BallEvaluators:
     from tinemark.systems.balls import ball_function
     from tinemark.systems.derivatives import derivative
 

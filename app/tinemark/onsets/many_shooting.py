@@ -17,6 +17,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Generator, Sequence
 from dataclasses import dataclass
+from time import perf_counter
 from typing import Any
 
 import numpy as np
@@ -27,7 +28,9 @@ from tinemark.onsets.many_map import Floats, ManyMap, evaluators_along
 from tinemark.onsets.results import Kind, Step
 
 CHUNK = 32
-"""Cycle points between two chances to cancel."""
+"""Most cycle points between two chances to cancel …"""
+SLICE_S = 0.02
+"""… and seconds after which there is one."""
 
 
 @dataclass(frozen=True)
@@ -94,11 +97,24 @@ class Local:
 
 def in_turn(count: int, bits: int, text: str, work: Callable[[int], None]) -> Generator[Step, None, None]:
     """Call `work(place)` for all places, in slices with a chance to cancel between them."""
-    for start in range(0, count, CHUNK):
+    done = 0
+    while done < count:
+        begun = perf_counter()
         with precision(bits):
-            for place in range(start, min(start + CHUNK, count)):
+            for place in range(done, min(done + CHUNK, count)):
                 work(place)
+                done += 1
+                if perf_counter() - begun > SLICE_S:
+                    break
         yield Step(text)
+
+
+def _prepared(many: ManyMap, place: Place, width: int, bits: int, text: str) -> Generator[Step, None, None]:
+    """Have a map that takes long prepare what it will be asked at each point along its first vectors."""
+    for at, each in enumerate(many.along(place.period)):
+        prepare = each.own_preparation()
+        if prepare is not None:
+            yield from prepare(place.points[at], place.r, place.vectors[at][:width], bits, text)
 
 
 def column(values: Sequence[Any]) -> Any:
@@ -135,6 +151,7 @@ def frames_along(
         keep()
 
     keep()
+    yield from _prepared(many, middle, 1, bits, text)
     yield from in_turn(middle.period, bits, text, advance)
     with precision(bits):
         return Frames(bases, [basis.inv() for basis in bases])
@@ -180,6 +197,7 @@ def local_at(
         found.bend.append(bends)
         found.bend_r.append(bends_r)
 
+    yield from _prepared(many, place, width, bits, text)
     yield from in_turn(count, bits, text, look)
     return found
 

@@ -7,7 +7,7 @@ ball touches a switching surface no smooth piece holds on all of it, and `Switch
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from functools import lru_cache
 from typing import Any, TypeAlias
 
@@ -146,8 +146,19 @@ def ball_function(expressions: tuple[Expr, ...], names: tuple[str, ...]) -> Ball
         formula is constant. It raises `SwitchingTouched` on a switching surface; outside a
         function's domain it gives balls that are not finite, as arb does.
     """
+    return compiled(expressions, names, _TOOLS)
+
+
+def compiled(expressions: Sequence[Expr], names: Sequence[str], tools: Mapping[str, Any]) -> BallFunction:
+    """Compile expressions to one Python function, over whatever numbers the tools work on.
+
+    Parameters
+    ----------
+    tools
+        What stands for each name of `ball_tools`: for power series or complex balls, say, instead of balls.
+    """
     source, constants = _source(expressions, names)
-    space: dict[str, Any] = {**_TOOLS, **constants}
+    space: dict[str, Any] = {**tools, **constants}
     # The source is our own print of checked nodes: names are replaced, texts never pass through.
     exec(compile(source, "<ball evaluator>", "exec"), space)  # noqa: S102
     function: BallFunction = space["evaluate"]
