@@ -36,7 +36,7 @@ from tinemark.systems.expression import Call, Num
 @lru_cache(maxsize=256)
 def area_factor(many: ManyMap) -> int:
     """1 or -1 where the Jacobian determinant of a map of two states is that everywhere, exactly; else 0."""
-    if many.size != 2:
+    if many.size != 2 or not many.formulas:
         return 0
     (a, b), (c, d) = ([derivative(formula, state) for state in many.states] for formula in many.formulas)
     determinant = Call("sub", (Call("mul", (a, d)), Call("mul", (b, c))))
