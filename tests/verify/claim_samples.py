@@ -38,6 +38,7 @@ def claim_of(onset: Onset, **changes: Any) -> Claim:
         upper=onset.upper,
         states=onset.states,
         paper=paper,
+        consequence=onset.consequence,
     )
     return dataclasses.replace(claim, **changes)
 

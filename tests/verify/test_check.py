@@ -243,14 +243,14 @@ def test_a_row_of_another_system_is_refused() -> None:
     assert verdict_of(dataclasses.replace(claim, values=(("c", "1"),))) == (Outcome.REFUSED, Part.SYSTEM)
 
 
-@pytest.mark.parametrize("period", [10**5, 10**9, 2**53])
+@pytest.mark.parametrize("period", [10**8, 10**12, 2**53])
 def test_long_cycles_are_not_worked_on_for_ever(period: int) -> None:
     claim = dataclasses.replace(
         claim_of(ladder("logistic")[2]), period_before=period, period_after=2 * period
     )
     verdict = check(damaged(claim, period=period, sealed=True))
     assert verdict.outcome is Outcome.NOT_CHECKABLE
-    assert "points" in verdict.reason
+    assert "longer than 10 minutes" in verdict.reason
 
 
 def test_what_claims_no_proof_is_said_to_be_none() -> None:

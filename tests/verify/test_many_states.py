@@ -16,6 +16,7 @@ from tinemark.onsets.results import Kind, Onset
 from tinemark.systems.library import builtin_system
 from tinemark.systems.system_file import read_system_text
 from tinemark.verify import intervals as iv
+from tinemark.verify.calculus import Real
 from tinemark.verify.check import check
 from tinemark.verify.claims import Claim, Outcome, Part, Undecided
 from tinemark.verify.matrices import (
@@ -128,11 +129,11 @@ def numbers(vector: list[iv.Interval]) -> list[Fraction]:
 def test_determinants_and_systems() -> None:
     rows = whole((2, -1, 0, 3), (1, 0, 5, -2), (0, 4, 1, 1), (3, 2, -2, 0))
     assert numbers([determinant(rows, BITS)]) == [293]
-    assert numbers(solved(whole((2, 1), (1, -3)), [iv.of_whole(5), iv.of_whole(-1)], BITS)) == [2, 1]
+    assert numbers(solved(Real(BITS), whole((2, 1), (1, -3)), [iv.of_whole(5), iv.of_whole(-1)])) == [2, 1]
     assert numbers(characteristic(whole((2, 1), (7, -3)), BITS)) == [-13, 1, 1]
     # (z - 2)(z + 1)(z - 5) without its root at -1.
     assert numbers(without_root([iv.of_whole(n) for n in (10, 3, -6, 1)], -1, BITS)) == [10, -7, 1]
-    x, y, z = numbers(null_vector(whole((1, 2, 3), (0, 1, 1), (1, 3, 4)), BITS))
+    x, y, z = numbers(null_vector(Real(BITS), whole((1, 2, 3), (0, 1, 1), (1, 3, 4))))
     assert (x + 2 * y + 3 * z, y + z) == (0, 0)
     assert (x, y, z) != (0, 0, 0)
 

@@ -59,6 +59,7 @@ def _claim_of_row(session: Session, row: Row) -> Claim:
         paper=None if onset.certificate is None else _paper(onset.certificate),
         formulas=formulas,
         values=row.fixed,
+        consequence=onset.consequence,
     )
 
 

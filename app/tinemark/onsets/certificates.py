@@ -100,6 +100,9 @@ def certified(
 
 def cycle_period(onset: Onset) -> int:
     """Least period of the cycle that the equations of an onset are about."""
+    if onset.kind is Kind.BORDER_COLLISION:
+        # A pair of cycles that meets on the surface comes out of none.
+        return onset.period_before or onset.period_after
     return onset.period_after if onset.kind is Kind.FOLD else onset.period_before
 
 

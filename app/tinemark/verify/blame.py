@@ -22,6 +22,7 @@ CLOSE = Fraction(1, 10**5)
 FURTHER = 4
 """So many times the claimed period is looked along for the true one, up to `MOST_STEPS` steps."""
 MOST_STEPS = 4096
+NEAR_SLOPE = Fraction(1, 100)
 
 
 def find(
@@ -46,34 +47,32 @@ def find(
 
 
 def _other_period_or_kind(one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction) -> None:
-    most = max(paper.period, min(FURTHER * paper.period, MOST_STEPS))
-    points, along = middle_orbit(one, x, numbers.value, most, bits)
-    scale = max(abs(x), Fraction(1, 10**6)) * CLOSE
-
-    def closes(steps: int) -> bool:
-        return max(abs(end) for end in iv.ends(iv.sub(points[steps], points[0], bits))) <= scale
-
-    def slope_is(steps: int, target: int) -> bool:
-        return abs(iv.ends(along[steps])[0] - target) < Fraction(1, 100)
-
     period, target = paper.period, TARGETS[paper.kind]
-    for steps in range(1, period):
+    most = max(period, min(FURTHER * period, MOST_STEPS))
+    start = iv.middle(iv.of_fraction(x, bits), bits)
+    scale = max(abs(x), Fraction(1, 10**6)) * CLOSE
+    half_slope: Fraction | None = None
+    for steps, point, along in middle_orbit(one, x, numbers.value, most, bits):
+        if not (steps > period or period % steps == 0):
+            continue
+        if max(abs(end) for end in iv.ends(iv.sub(point, start, bits))) > scale:
+            continue
+        slope = iv.ends(along)[0]
         # Near a deep flip the orbit of half the period is close as well: the slope tells.
-        if period % steps == 0 and closes(steps) and slope_is(steps, target):
-            raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {period}")
-    if closes(period):
+        if steps != period:
+            if abs(slope - target) < NEAR_SLOPE:
+                raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {period}")
+            if 2 * steps == period:
+                half_slope = slope
+            continue
         for kind, other in TARGETS.items():
-            if kind == paper.kind or not slope_is(period, other):
+            if kind == paper.kind or abs(slope - other) >= NEAR_SLOPE:
                 continue
-            half = period // 2
-            if kind == "fold" and period % 2 == 0 and closes(half) and slope_is(half, -1):
+            if kind == "fold" and half_slope is not None and abs(half_slope + 1) < NEAR_SLOPE:
                 # A flip, seen over twice its period, has the slope of a fold.
-                raise Refused(Part.PERIOD, f"the cycle there has period {half}, not {period}")
+                raise Refused(Part.PERIOD, f"the cycle there has period {period // 2}, not {period}")
             raise Refused(Part.KIND, f"the onset there is a {kind}, not a {paper.kind}")
         return
-    for steps in range(period + 1, most + 1):
-        if closes(steps) and slope_is(steps, target):
-            raise Refused(Part.PERIOD, f"the cycle there has period {steps}, not {period}")
 
 
 def _solved(one: OneState, paper: Paper, numbers: Numbers, bits: int, x: Fraction) -> Fraction | None:

@@ -7,9 +7,10 @@ from enum import Enum
 from fractions import Fraction
 
 NEIMARK_SACKER = "Neimark-Sacker"
+BORDER_COLLISION = "border collision"
 BRANCH_POINTS = ("transcritical", "pitchfork")
-KINDS = ("flip", "fold", NEIMARK_SACKER)
-"""Kinds of onsets whose proofs are checked, besides those of `BRANCH_POINTS` that can be."""
+KINDS = ("flip", "fold", NEIMARK_SACKER, BORDER_COLLISION, *BRANCH_POINTS)
+"""Kinds of onsets whose proofs are checked."""
 
 
 @dataclass(frozen=True)
@@ -58,6 +59,8 @@ class Claim:
     formulas, values
         What the row itself says of its system, where it does: (state, formula) and (parameter, decimal
         text) pairs that the certificate's system must agree with; None where nothing is said.
+    consequence
+        What the row says in words of what follows; empty where it says nothing.
     """
 
     name: str
@@ -75,16 +78,18 @@ class Claim:
     paper: Paper | None
     formulas: tuple[tuple[str, str], ...] | None = None
     values: tuple[tuple[str, str], ...] | None = None
+    consequence: str = ""
 
 
 @dataclass(frozen=True)
 class Numbers:
-    """The claim's numbers: printed value, a unit of its last digit, its ends, and (middle, half-width) of the
-    box's sides.
+    """The claim's numbers: printed value, a unit of its last digit, how many digits it has, its ends, and
+    (middle, half-width) of the box's sides.
     """
 
     value: Fraction
     unit: Fraction
+    digits: int
     lower: Fraction
     upper: Fraction
     parameter: tuple[Fraction, Fraction]
@@ -111,6 +116,7 @@ class Part(Enum):
     CRITICALITY = "criticality"
     PARAMETER = "parameter"
     STATE = "state"
+    SURFACE = "surface"
     SYSTEM = "system"
     DIGEST = "digest"
     NOTHING = ""

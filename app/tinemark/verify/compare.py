@@ -6,9 +6,8 @@ import hashlib
 import json
 
 from tinemark.verify.claims import (
-    BRANCH_POINTS,
+    BORDER_COLLISION,
     KINDS,
-    NEIMARK_SACKER,
     Claim,
     NotCheckable,
     Numbers,
@@ -18,7 +17,7 @@ from tinemark.verify.claims import (
     Refused,
     Verdict,
 )
-from tinemark.verify.decimals import last_unit, rational
+from tinemark.verify.decimals import last_unit, rational, significant_digits, zeros_unit
 from tinemark.verify.system import Plain, read
 
 
@@ -54,8 +53,6 @@ def _paper(claim: Claim) -> Paper:
     if claim.paper is None:
         if not proved:
             raise NotCheckable(f"it is {claim.status}, and claims no proof")
-        if claim.kind not in KINDS:
-            raise NotCheckable("it has no certificate, and onsets of its kind may have none yet")
         raise Refused(Part.STATUS, "it says proved, and has no certificate; refine it to prove it again")
     if not proved and not claim.waits:
         raise Refused(Part.STATUS, f"it carries the certificate of a proof, and says {claim.status[:40]}")
@@ -73,12 +70,16 @@ def _same_words(claim: Claim, paper: Paper) -> None:
             Part.CRITICALITY,
             f'the row says "{claim.criticality[:40]}", the certificate "{paper.criticality[:40]}"',
         )
-    period = paper.period
-    expected = {"flip": (period, 2 * period), "fold": (0, period), NEIMARK_SACKER: (period, period)}
-    expected |= dict.fromkeys(BRANCH_POINTS, (period, period))
-    before, after = expected.get(paper.kind, (claim.period_before, claim.period_after))
-    if period < 1 or (claim.period_before, claim.period_after) != (before, after):
+    if paper.period < 1 or not _periods_fit(claim, paper):
         raise Refused(Part.PERIOD, "the row's periods are not those of the certificate")
+
+
+def _periods_fit(claim: Claim, paper: Paper) -> bool:
+    period, before, after = paper.period, claim.period_before, claim.period_after
+    if paper.kind == BORDER_COLLISION:
+        return (before, after) == (0, period) or (before == period and after % period == 0 <= after)
+    expected = {"flip": (period, 2 * period), "fold": (0, period)}
+    return paper.kind not in KINDS or (before, after) == expected.get(paper.kind, (period, period))
 
 
 def _numbers(claim: Claim, paper: Paper) -> Numbers:
@@ -95,7 +96,10 @@ def _numbers(claim: Claim, paper: Paper) -> Numbers:
         if size <= 0:
             raise Refused(Part.BOX, "a side of the box has no width above zero")
         sides.append((centre, size))
-    return Numbers(value, last_unit(claim.value), lower, upper, sides[0], tuple(sides[1:]))
+    # A whole number with more digits than were asked for ends in zeros that only fill it up.
+    digits = significant_digits(claim.value)
+    unit = max(last_unit(claim.value), min(zeros_unit(claim.value), upper - lower))
+    return Numbers(value, unit, digits, lower, upper, sides[0], tuple(sides[1:]))
 
 
 def _same_system(claim: Claim, plain: Plain) -> None:

@@ -7,7 +7,7 @@ intervals that it sees twice.
 
 from __future__ import annotations
 
-from collections.abc import Collection
+from collections.abc import Collection, Iterator
 from dataclasses import dataclass, field
 from fractions import Fraction
 
@@ -16,7 +16,12 @@ from tinemark.verify.claims import Undecided
 from tinemark.verify.formula import Program
 from tinemark.verify.intervals import ONE, ZERO, Interval
 from tinemark.verify.series import ONE_STATE, SLOPE, VALUE, Evaluator, Shape
+from tinemark.verify.watching import Watch, cost_of
 
+STEP_OPERATIONS = 12
+"""What the chain rule costs a step, in operations of a formula."""
+POINT_SHARE = 0.4
+"""Work of a step at a point, against one with all derivatives."""
 X, R, XX, XR, XXX = range(1, 6)
 """Places of the monomials in `ONE_STATE`."""
 
@@ -28,6 +33,11 @@ class OneState:
     program: Program
     state: str
     parameter: str
+    watch: Watch = field(default_factory=Watch, compare=False)
+
+    def cost(self, bits: int) -> float:
+        """Work of one step with all derivatives."""
+        return cost_of(len(self.program.steps) + STEP_OPERATIONS, bits)
 
 
 @dataclass(frozen=True)
@@ -46,20 +56,19 @@ class End:
 
 def middle_orbit(
     one: OneState, x: Fraction, r: Fraction, steps: int, bits: int
-) -> tuple[list[Interval], list[Interval]]:
-    """All points f^n(x) and the slopes of f^n, from n = 0 on, along midpoints: good numbers, no proof."""
+) -> Iterator[tuple[int, Interval, Interval]]:
+    """(n, f^n(x), slope of f^n) from n = 1 on, along midpoints: good numbers, no proof."""
     point, parameter = _point(x, bits), _point(r, bits)
     slope = ONE
     evaluate = _evaluator(one, SLOPE, bits, {0: parameter})
-    points, slopes = [point], [slope]
-    for _ in range(steps):
+    cost = one.cost(bits) * POINT_SHARE
+    for step in range(steps):
+        one.watch.spend(cost)
         series = evaluate({one.state: {0: point, X: ONE}})
         slope = iv.middle(iv.mul(series.get(X, ZERO), slope, bits), bits)
         point = iv.middle(series[0], bits)
-        _check(point)
-        points.append(point)
-        slopes.append(slope)
-    return points, slopes
+        check_bounded(point)
+        yield step + 1, point, slope
 
 
 def at_point(one: OneState, x: Interval, r: Interval, period: int, bits: int) -> tuple[Interval, Interval]:
@@ -67,13 +76,15 @@ def at_point(one: OneState, x: Interval, r: Interval, period: int, bits: int) ->
     slopes = _evaluator(one, SLOPE, bits, {0: r})
     values = _evaluator(one, VALUE, bits, {0: r})
     here, slope = x, ONE
+    cost = one.cost(bits) * POINT_SHARE
     for _ in range(period):
+        one.watch.spend(cost)
         local = slopes({one.state: {0: here, X: ONE}}).get(X, ZERO)
         middle = iv.middle(here, bits)
         image = values({one.state: {0: middle}})[0]
         here = iv.add(image, iv.mul(local, iv.sub(here, middle, bits), bits), bits)
         slope = iv.mul(local, slope, bits)
-        _check(here)
+        check_bounded(here)
     return here, slope
 
 
@@ -104,7 +115,9 @@ def on_box(
     here, u, v, w, z, t = x, ONE, ZERO, ZERO, ZERO, ZERO
     kept: dict[int, Interval] = {}
     near = False
+    cost = one.cost(bits)
     for step in range(period):
+        one.watch.spend(cost)
         if step in visits:
             kept[step] = here
         if look_for is not None and not near:
@@ -127,7 +140,7 @@ def on_box(
         image = values({one.state: {0: middle}})[0]
         move = add(mul(fx, iv.sub(here, middle, bits), bits), mul(fr, spread, bits), bits)
         here = add(image, move, bits)
-        _check(here)
+        check_bounded(here)
     return End(here, u, v, w, z, t, kept, near)
 
 
@@ -139,6 +152,7 @@ def _point(value: Fraction, bits: int) -> Interval:
     return iv.middle(iv.of_fraction(value, bits), bits)
 
 
-def _check(x: Interval) -> None:
+def check_bounded(x: Interval) -> None:
+    """Raise `Undecided` where an orbit escapes."""
     if not iv.is_finite(x) or x[1][2] + x[1][3] > 4096:
         raise Undecided("the orbit escapes")

@@ -28,6 +28,7 @@ MOST_STEPS = 1500
 MOST_DEPTH = 60
 MOST_BITS = 2000
 MOST_EXPONENT = 64
+MOST_TREE = 100_000
 FUNCTIONS: Mapping[str, int] = {
     "sin": 1,
     "cos": 1,
@@ -74,6 +75,18 @@ class Program:
     """A formula as steps; the last one is its value."""
 
     steps: tuple[Instruction, ...]
+
+    def upto(self, place: int) -> Program:
+        """The program of one of its steps."""
+        return Program(self.steps[: place + 1])
+
+    def tree(self, place: int | None = None) -> str:
+        """A step with all that it is made of, as one text that is the same for the same formula."""
+        texts: list[str] = []
+        for step in self.steps[: len(self.steps) if place is None else place + 1]:
+            inner = ",".join(texts[arg] for arg in step.args)
+            texts.append(f"{step.op}[{step.name}{step.value}]({inner})"[:MOST_TREE])
+        return texts[-1]
 
 
 def parse(text: str, names: Collection[str], constants: Mapping[str, Fraction]) -> Program:

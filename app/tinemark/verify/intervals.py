@@ -85,14 +85,6 @@ def sign(x: Interval) -> int:
     return 0
 
 
-def less(x: Interval, y: Interval, bits: int) -> bool:
-    """Whether x < y on the whole intervals; raises `Undecided` where they touch."""
-    side = sign(sub(x, y, bits))
-    if side == 0:
-        raise Undecided("the orbit touches a switching surface of the formula")
-    return side < 0
-
-
 def middle(x: Interval, bits: int) -> Interval:
     """A point of the interval near its middle. At `bits` bits or more than the ends have, it lies inside."""
     point = libmp.mpf_shift(libmp.mpf_add(x[0], x[1], bits, "n"), -1)
@@ -190,12 +182,14 @@ def cosh_sinh(x: Interval, bits: int) -> tuple[Interval, Interval]:
     return _halved(cosh), _halved(sinh)
 
 
-def floor(x: Interval) -> Interval:
-    """Whole part of an interval that holds no whole number."""
+def whole_part(x: Interval) -> int | None:
+    """Whole part of an interval that holds no whole number; None elsewhere."""
+    if not is_finite(x):
+        raise Undecided("a value is not bounded")
     low, high = (libmp.mpf_floor(end, 0, "f") for end in x)
-    if not is_finite(x) or low != high or low == x[0]:
-        raise Undecided("the orbit touches a switching surface of the formula")
-    return low, high
+    if low != high or low == x[0]:
+        return None
+    return int(to_fraction(low))
 
 
 def _halved(x: Interval) -> Interval:
@@ -236,3 +230,12 @@ def of_whole(value: int) -> Interval:
     """A whole number, exactly."""
     exact = libmp.from_int(value)
     return exact, exact
+
+
+def common(x: Interval, y: Interval) -> Interval:
+    """What two intervals have in common; raises `Undecided` where that is nothing."""
+    low = y[0] if libmp.mpf_gt(y[0], x[0]) else x[0]
+    high = y[1] if libmp.mpf_lt(y[1], x[1]) else x[1]
+    if not is_finite(x) or libmp.mpf_gt(low, high):
+        raise Undecided("there is no such onset in the box")
+    return low, high

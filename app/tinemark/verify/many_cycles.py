@@ -1,25 +1,31 @@
 """Cycles of maps of several states, carried along in intervals with the derivatives that a proof needs.
 
 Coordinates are the states and, as the last one, the swept parameter, which stays as it is. As for one
-state, the orbit's box goes on in mean-value form, and derivatives of f^p are put together from those of
-f at each point by the chain rule.
+state, the orbit's box goes on in mean-value form, here in frames that turn with it, and derivatives of
+f^p are put together from those of f at each point by the chain rule.
 """
 
 from __future__ import annotations
 
-from collections.abc import Collection, Sequence
+from collections.abc import Collection, Iterator, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from itertools import combinations_with_replacement
 from math import factorial
 
+from tinemark.verify import frames
 from tinemark.verify import intervals as iv
+from tinemark.verify.calculus import Calculus, Number, Real
 from tinemark.verify.claims import Undecided
 from tinemark.verify.formula import Program
+from tinemark.verify.frames import Rows
 from tinemark.verify.intervals import ONE, ZERO, Interval
 from tinemark.verify.series import Evaluator, Series, Shape, shape_of
+from tinemark.verify.watching import Watch, cost_of
 
 Vector = list[Interval]
+Tensor = Sequence[tuple[tuple[int, ...], Vector]]
+"""Derivatives of one order that are not zero: (sorted coordinates, value of each state)."""
 
 
 @dataclass(frozen=True)
@@ -29,11 +35,22 @@ class ManyStates:
     programs: tuple[Program, ...]
     states: tuple[str, ...]
     parameter: str
+    watch: Watch = field(default_factory=Watch, compare=False)
 
     @property
     def size(self) -> int:
         """How many states."""
         return len(self.states)
+
+    @property
+    def operations(self) -> int:
+        """Steps of all formulas."""
+        return sum(len(program.steps) for program in self.programs)
+
+    def cost(self, bits: int, order: int) -> float:
+        """Work of one step with derivatives up to an order."""
+        many_at_once = float((self.size + 1) ** order) / 2
+        return cost_of(self.operations + 4 * self.size**2, bits) * many_at_once
 
 
 @dataclass(frozen=True)
@@ -60,6 +77,12 @@ class Carried:
     second: dict[tuple[int, int], Vector] = field(default_factory=dict)
     visits: dict[int, Vector] = field(default_factory=dict)
     near: bool = False
+
+    @property
+    def rows(self) -> Rows:
+        """The derivative in the states, row by row."""
+        size = len(self.x)
+        return [[self.first[j][i] for j in range(size)] for i in range(size)]
 
 
 def total_degree(size: int, order: int) -> Shape:
@@ -98,8 +121,8 @@ class Local:
         }
         return [evaluate(values) for evaluate in self.evaluators]
 
-    def tensor(self, series: Sequence[Series], order: int) -> list[tuple[tuple[int, ...], Vector]]:
-        """Derivatives of one order that are not zero: (sorted coordinates, value of each state)."""
+    def tensor(self, series: Sequence[Series], order: int) -> Tensor:
+        """Derivatives of one order that are not zero."""
         found = []
         for place, monomial in enumerate(self.shape.monomials):
             if sum(monomial) != order or not any(place in one for one in series):
@@ -112,6 +135,97 @@ class Local:
             where = tuple(i for i, exponent in enumerate(monomial) for _ in range(exponent))
             found.append((where, values))
         return found
+
+
+@dataclass(frozen=True)
+class Stretch:
+    """One step of the orbit of a box.
+
+    Attributes
+    ----------
+    here, after
+        Upright boxes before and after the step.
+    map, push
+        Derivatives of f in the states and in the parameter, from this step's frame to the next one's.
+    frame, back
+        This step's frame, and the inverse of the next one's.
+    next_frame
+        The next step's frame.
+    bends, twists
+        Second and third derivatives, in upright coordinates; empty where not asked for.
+    """
+
+    here: Vector
+    after: Vector
+    map: Rows
+    push: Vector
+    frame: Rows
+    back: Rows
+    next_frame: Rows
+    bends: Tensor
+    twists: Tensor
+
+    def shown(self, numbers: Calculus[Number], column: Sequence[Number]) -> list[Number]:
+        """A column of this step's frame in upright coordinates."""
+        return matrix_times(numbers, self.frame, column)
+
+    def framed(self, numbers: Calculus[Number], column: Sequence[Number]) -> list[Number]:
+        """A column in upright coordinates, after the step, in the next step's frame."""
+        return matrix_times(numbers, self.back, column)
+
+
+def walk(
+    many: ManyStates, box: Sequence[Interval], r: Interval, period: int, bits: int, order: int
+) -> Iterator[Stretch]:
+    """Carry a box once round, with the map's derivatives up to an order; first and last frame are upright.
+
+    Raises
+    ------
+    Undecided
+        The orbit escapes, leaves a domain or touches a switching surface.
+    """
+    size = many.size
+    centre_r = iv.middle(r, bits)
+    spread = iv.sub(r, centre_r, bits)
+    local, values = Local(many, order, r, bits), Local(many, 0, centre_r, bits)
+    upright = frames.unit(size)
+    frame = upright
+    here = list(box)
+    middle = [iv.middle(side, bits) for side in here]
+    offsets = [iv.sub(side, point, bits) for side, point in zip(here, middle, strict=True)]
+    cost = many.cost(bits, order)
+    for step in range(period):
+        many.watch.spend(cost)
+        series = local.at(here)
+        slopes = local.tensor(series, 1)
+        rows = [[ZERO] * size for _ in range(size)]
+        push = [ZERO] * size
+        for (j,), column in slopes:
+            for i, value in enumerate(column):
+                if j == size:
+                    push[i] = value
+                else:
+                    rows[i][j] = value
+        if frame is not upright:
+            rows = frames.product(rows, frame, bits)
+        following = frames.turned(rows) if step < period - 1 else None
+        if following is None:
+            following = back = upright
+        else:
+            back = frames.inverse(following, bits)
+            rows = frames.product(back, rows, bits)
+            push = frames.applied(back, push, bits)
+        images = [one[0] for one in values.at(middle)]
+        middle = [iv.middle(side, bits) for side in images]
+        missed = [iv.sub(side, point, bits) for side, point in zip(images, middle, strict=True)]
+        offsets = added(frames.applied(rows, offsets, bits), frames.applied(back, missed, bits), bits)
+        offsets = [iv.add(x, iv.mul(y, spread, bits), bits) for x, y in zip(offsets, push, strict=True)]
+        after = added(middle, frames.applied(following, offsets, bits), bits)
+        check_bounded(after)
+        bends = local.tensor(series, 2) if order > 1 else ()
+        twists = local.tensor(series, 3) if order > 2 else ()
+        yield Stretch(here, after, rows, push, frame, back, following, bends, twists)
+        here, frame = after, following
 
 
 def carried(
@@ -127,90 +241,86 @@ def carried(
 ) -> Carried:
     """Carry a box and its derivatives once round; see `Carried`."""
     size = many.size
-    centre_r = iv.middle(r, bits)
-    spread = iv.sub(r, centre_r, bits)
-    local, values = Local(many, 2 if second else 1, r, bits), Local(many, 0, centre_r, bits)
-    here = list(box)
+    real = Real(bits)
     first = [[ONE if i == a else ZERO for i in range(size)] for a in range(size + 1)]
     mixed = {
         (a, b): [ZERO] * size for a in range(size + 1) for b in range(a, size + 1) if second and a < size
     }
     kept: dict[int, Vector] = {}
     near = False
-    for step in range(period):
+    here = list(box)
+    for step, stretch in enumerate(walk(many, box, r, period, bits, 2 if second else 1)):
         if step in visits:
-            kept[step] = here
+            kept[step] = stretch.here
         if look_for is not None and not near:
-            near = all(iv.sign(iv.sub(x, y, bits)) == 0 for x, y in zip(here, look_for, strict=True))
-        series = local.at(here)
-        slopes = local.tensor(series, 1)
+            near = all(iv.sign(iv.sub(x, y, bits)) == 0 for x, y in zip(stretch.here, look_for, strict=True))
         if second:
-            bends = local.tensor(series, 2)
-            for (a, b), values_ab in mixed.items():
-                new = linear(slopes, values_ab, None, bits)
-                mixed[a, b] = added(
-                    new, bilinear(bends, _full(first, a, size), _full(first, b, size), bits), bits
-                )
-        first = [linear(slopes, column, ONE if a == size else None, bits) for a, column in enumerate(first)]
-        middle = [iv.middle(side, bits) for side in here]
-        images = [one[0] for one in values.at(middle)]
-        offsets = [iv.sub(side, point, bits) for side, point in zip(here, middle, strict=True)]
-        here = added(images, linear(slopes, offsets, spread, bits), bits)
-        check_bounded(here)
+            full = [[*stretch.shown(real, column), ZERO] for column in first]
+            full[size][size] = ONE
+            for (a, b), column in mixed.items():
+                bent = stretch.framed(real, bilinear(real, stretch.bends, full[a], full[b]))
+                mixed[a, b] = added(frames.applied(stretch.map, column, bits), bent, bits)
+        first = [frames.applied(stretch.map, column, bits) for column in first]
+        first[size] = added(first[size], stretch.push, bits)
+        here = stretch.after
     return Carried(here, first, mixed, kept, near)
 
 
-def _full(first: Sequence[Vector], a: int, size: int) -> Vector:
-    """A column of first derivatives with the parameter's own at the end."""
-    return [*first[a], ONE if a == size else ZERO]
-
-
-def linear(
-    slopes: Sequence[tuple[tuple[int, ...], Vector]],
-    column: Sequence[Interval],
-    own: Interval | None,
-    bits: int,
-) -> Vector:
-    """First derivatives applied to a column of states and, where given, of the parameter."""
-    size = len(column)
-    total = [ZERO] * size
-    for (j,), values in slopes:
-        factor = column[j] if j < size else own
-        if factor is not None and factor != ZERO:
-            for i, value in enumerate(values):
-                if value != ZERO:
-                    total[i] = iv.add(total[i], iv.mul(value, factor, bits), bits)
-    return total
+def matrix_times(numbers: Calculus[Number], rows: Rows, column: Sequence[Number]) -> list[Number]:
+    """A real matrix applied to a column."""
+    found = []
+    for row in rows:
+        total = numbers.zero
+        for entry, value in zip(row, column, strict=True):
+            if entry != ZERO and value != numbers.zero:
+                total = numbers.add(total, numbers.scaled(entry, value))
+        found.append(total)
+    return found
 
 
 def bilinear(
-    bends: Sequence[tuple[tuple[int, ...], Vector]], u: Sequence[Interval], v: Sequence[Interval], bits: int
-) -> Vector:
+    numbers: Calculus[Number], bends: Tensor, u: Sequence[Number], v: Sequence[Number]
+) -> list[Number]:
     """Second derivatives applied to two columns in all coordinates."""
-    total: Vector | None = None
+    total = [numbers.zero] * (len(u) - 1)
     for (j, k), values in bends:
-        factor = iv.mul(u[j], v[k], bits)
+        factor = numbers.mul(u[j], v[k])
         if j != k:
-            factor = iv.add(factor, iv.mul(u[k], v[j], bits), bits)
-        terms = [iv.mul(value, factor, bits) for value in values]
-        total = terms if total is None else added(total, terms, bits)
-    return total if total is not None else [ZERO] * (len(u) - 1)
+            factor = numbers.add(factor, numbers.mul(u[k], v[j]))
+        if factor != numbers.zero:
+            _add_scaled(numbers, total, values, factor)
+    return total
 
 
-def trilinear(bends: Sequence[tuple[tuple[int, ...], Vector]], u: Sequence[Interval], bits: int) -> Vector:
-    """Third derivatives applied three times to one column in all coordinates."""
-    total: Vector | None = None
-    for where, values in bends:
-        # How many of the ordered triples are this sorted one.
-        ways = 6
-        for coordinate in set(where):
-            ways //= factorial(where.count(coordinate))
-        factor = iv.of_fraction(Fraction(ways), bits)
-        for coordinate in where:
-            factor = iv.mul(factor, u[coordinate], bits)
-        terms = [iv.mul(value, factor, bits) for value in values]
-        total = terms if total is None else added(total, terms, bits)
-    return total if total is not None else [ZERO] * (len(u) - 1)
+def trilinear(
+    numbers: Calculus[Number],
+    twists: Tensor,
+    u: Sequence[Number],
+    v: Sequence[Number],
+    w: Sequence[Number],
+) -> list[Number]:
+    """Third derivatives applied to three columns in all coordinates."""
+    total = [numbers.zero] * (len(u) - 1)
+    for where, values in twists:
+        factor = numbers.zero
+        for i, j, k in _orders(where):
+            factor = numbers.add(factor, numbers.mul(u[i], numbers.mul(v[j], w[k])))
+        if factor != numbers.zero:
+            _add_scaled(numbers, total, values, factor)
+    return total
+
+
+def _orders(where: tuple[int, ...]) -> set[tuple[int, int, int]]:
+    i, j, k = where
+    return {(i, j, k), (i, k, j), (j, i, k), (j, k, i), (k, i, j), (k, j, i)}
+
+
+def _add_scaled(
+    numbers: Calculus[Number], total: list[Number], values: Sequence[Interval], factor: Number
+) -> None:
+    for i, value in enumerate(values):
+        if value != ZERO:
+            total[i] = numbers.add(total[i], numbers.scaled(value, factor))
 
 
 def added(a: Sequence[Interval], b: Sequence[Interval], bits: int) -> Vector:

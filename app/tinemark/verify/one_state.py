@@ -12,7 +12,7 @@ from fractions import Fraction
 from tinemark.verify import intervals as iv
 from tinemark.verify.claims import Numbers, Paper, Part, Refused, Undecided
 from tinemark.verify.cycles import End, OneState, at_point, on_box
-from tinemark.verify.decimals import last_unit, rational
+from tinemark.verify.decimals import rational, state_unit
 from tinemark.verify.intervals import ONE, Interval
 from tinemark.verify.newton import Side, image, inside
 
@@ -34,15 +34,21 @@ def prove(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str
     Refused
         The test succeeds, and the claim is another one than what is there.
     """
-    sides = [_ends(numbers.states[0]), _ends(numbers.parameter)]
+    sides = [ends_of(numbers.states[0]), ends_of(numbers.parameter)]
     target = iv.of_fraction(Fraction(TARGETS[paper.kind]), bits)
-    start = [_hull(side, bits) for side in sides]
+    start = [hull(side, bits) for side in sides]
     box, reason = start, ""
     steps = sorted({paper.period // prime for prime in prime_factors(paper.period)})
     for _ in range(ATTEMPTS):
         try:
             end = on_box(
-                one, box[0], box[1], paper.period, bits, visits=steps, look_for=_printed(printed, bits)
+                one,
+                box[0],
+                box[1],
+                paper.period,
+                bits,
+                visits=steps,
+                look_for=printed_side(printed, bits, numbers),
             )
             centre = [iv.middle(side, bits) for side in box]
             there, slope = at_point(one, centre[0], centre[1], paper.period, bits)
@@ -57,13 +63,7 @@ def prove(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str
             reason = reason or "the interval Newton test does not map the box into itself"
             bits, box = bits * 3 // 2, start
             continue
-        low, high = iv.ends(found[1])
-        if high < numbers.lower or low > numbers.upper:
-            raise Refused(Part.VALUE, "the onset in the box does not lie between the printed ends")
-        unit = numbers.unit
-        if low > numbers.value + VALUE_UNITS * unit or high < numbers.value - VALUE_UNITS * unit:
-            raise Refused(Part.VALUE, "the printed value is not the onset's, rounded")
-        if numbers.lower <= low and high <= numbers.upper:
+        if is_within(numbers, found[1]):
             _least_period(paper, box[0], end, bits)
             _claims(paper, end, bits)
             if printed is not None and not end.near:
@@ -76,7 +76,25 @@ def prove(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str
     raise Undecided(reason or "the enclosure does not become narrow enough for the printed ends")
 
 
-def _ends(side: Side) -> Side:
+def is_within(numbers: Numbers, found: Interval) -> bool:
+    """Whether an enclosure of the onset lies between the printed ends for certain.
+
+    Raises
+    ------
+    Refused
+        It lies beyond them, or the printed value is not the onset's, rounded.
+    """
+    low, high = iv.ends(found)
+    if high < numbers.lower or low > numbers.upper:
+        raise Refused(Part.VALUE, "the onset in the box does not lie between the printed ends")
+    far = VALUE_UNITS * numbers.unit
+    if low > numbers.value + far or high < numbers.value - far:
+        raise Refused(Part.VALUE, "the printed value is not the onset's, rounded")
+    return numbers.lower <= low and high <= numbers.upper
+
+
+def ends_of(side: Side) -> Side:
+    """Lower and upper end of a side given by its middle and half-width."""
     middle, half = side
     return middle - half, middle + half
 
@@ -87,18 +105,20 @@ def _widened(side: Interval) -> Side:
     return low - room, high + room
 
 
-def _hull(side: Side, bits: int) -> Interval:
+def hull(side: Side, bits: int) -> Interval:
+    """Interval from one end to the other."""
     return iv.of_fraction(side[0], bits)[0], iv.of_fraction(side[1], bits)[1]
 
 
-def _printed(text: str | None, bits: int) -> Interval | None:
+def printed_side(text: str | None, bits: int, numbers: Numbers) -> Interval | None:
+    """Where a printed cycle point may lie; None where none is printed."""
     if text is None:
         return None
     value = rational(text)
     if value is None:
         raise Refused(Part.STATE, "the printed cycle point is no number to work with")
-    room = STATE_UNITS * last_unit(text)
-    return _hull((value - room, value + room), bits)
+    room = STATE_UNITS * state_unit(text, numbers.digits)
+    return hull((value - room, value + room), bits)
 
 
 def _least_period(paper: Paper, first: Interval, end: End, bits: int) -> None:

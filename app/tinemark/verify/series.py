@@ -17,7 +17,8 @@ from typing import TypeAlias
 from tinemark.verify import intervals as iv
 from tinemark.verify.claims import Undecided
 from tinemark.verify.formula import COMPARISONS, Instruction, Program
-from tinemark.verify.intervals import ONE, ZERO, Interval
+from tinemark.verify.intervals import ONE, Interval
+from tinemark.verify.switches import Switch, always, switch_of
 
 Series: TypeAlias = dict[int, Interval]
 """Coefficients by the place of their monomial in the shape; place 0 is the value."""
@@ -56,7 +57,19 @@ def shape_of(monomials: tuple[tuple[int, ...], ...]) -> Shape:
 
 VALUE = shape_of(((0, 0),))
 SLOPE = shape_of(((0, 0), (1, 0)))
+SLOPES = shape_of(((0, 0), (1, 0), (0, 1)))
 ONE_STATE = shape_of(((0, 0), (1, 0), (0, 1), (2, 0), (1, 1), (3, 0)))
+
+
+SWITCHING = (*COMPARISONS, "min", "max", "abs", "floor")
+
+
+class Touching(Undecided):
+    """An interval touches a switching surface; says which."""
+
+    def __init__(self, switch: Switch) -> None:
+        super().__init__("the orbit touches a switching surface of the formula")
+        self.switch = switch
 
 
 class Evaluator:
@@ -72,29 +85,105 @@ class Evaluator:
         self.steady = steady
         self.moves = _moving(program, frozenset(moving))
         self.known: dict[int, Series] = {}
-        self.always = _always(program)
+        self.always = always(program)
+        self.switch = {
+            place: switch
+            for place in range(len(program.steps))
+            if (switch := switch_of(program, place)) is not None
+        }
 
-    def __call__(self, values: Mapping[str, Series]) -> Series:
+    def __call__(self, values: Mapping[str, Series], sides: dict[Switch, int] | None = None) -> Series:
         """The program's series where the moving names have these.
+
+        Parameters
+        ----------
+        sides
+            Switches that are set to a side, whatever the values say; every other one that is met is told by
+            the values and put in.
 
         Raises
         ------
         Undecided
-            An interval leaves a function's domain, or touches a switching surface.
+            An interval leaves a function's domain.
+        Touching
+            It touches a switching surface.
         """
+        done = self._done(values, sides)
+        return self._step(len(self.steps) - 1, values, done, sides)
+
+    def difference(self, place: int, values: Mapping[str, Series], sides: dict[Switch, int]) -> Series:
+        """What the switch at a step compares: its first argument less its second, or its only one."""
         done: dict[int, Series] = {}
+        step = self.steps[place]
+        first = self._step(step.args[0], values, done, sides)
+        if step.op == "floor" or step.op == "abs":
+            return first
+        return self._sum(first, self._negative(self._step(step.args[1], values, done, sides)))
+
+    def _done(self, values: Mapping[str, Series], sides: dict[Switch, int] | None) -> dict[int, Series]:
+        done: dict[int, Series] = {}
+        if sides is not None:
+            # What does not move may still hang on a switch that is set otherwise next time.
+            self.known = {}
         # In the order they were written, so that a long sum is not a deep one; branches only as needed.
         for place in self.always:
-            self._step(place, values, done)
-        return self._step(len(self.steps) - 1, values, done)
+            self._step(place, values, done, sides)
+        return done
 
-    def _step(self, place: int, values: Mapping[str, Series], done: dict[int, Series]) -> Series:
+    def _step(
+        self,
+        place: int,
+        values: Mapping[str, Series],
+        done: dict[int, Series],
+        sides: dict[Switch, int] | None,
+    ) -> Series:
         keep = done if self.moves[place] else self.known
         if place not in keep:
-            keep[place] = self._work(self.steps[place], values, done)
+            step = self.steps[place]
+            if step.op in SWITCHING:
+                keep[place] = self._switched(place, step, values, done, sides)
+            else:
+                args = [self._step(arg, values, done, sides) for arg in step.args]
+                keep[place] = self._work(step, args, values)
         return keep[place]
 
-    def _work(self, step: Instruction, values: Mapping[str, Series], done: dict[int, Series]) -> Series:
+    def _switched(
+        self,
+        place: int,
+        step: Instruction,
+        values: Mapping[str, Series],
+        done: dict[int, Series],
+        sides: dict[Switch, int] | None,
+    ) -> Series:
+        at = [self._step(arg, values, done, sides) for arg in step.args[:2]]
+        switch = self.switch[place]
+        side = None if sides is None else sides.get(switch)
+        if side is None:
+            side = self._side(step, switch, at)
+            if sides is not None:
+                sides[switch] = side
+        if step.op in COMPARISONS:
+            chosen = step.args[2 if (side < 0) == (step.op in ("<", "<=")) else 3]
+            return self._step(chosen, values, done, sides)
+        if step.op == "floor":
+            return {0: iv.of_whole(side)}
+        if step.op == "abs":
+            return self._negative(at[0]) if side < 0 else at[0]
+        return at[0] if (side < 0) == (step.op == "min") else at[1]
+
+    def _side(self, step: Instruction, switch: Switch, at: Sequence[Series]) -> int:
+        if step.op == "floor":
+            whole = iv.whole_part(at[0][0])
+            if whole is None:
+                raise Touching(switch)
+            return whole
+        value = at[0][0] if step.op == "abs" else iv.sub(at[0][0], at[1][0], self.bits)
+        side = iv.sign(value)
+        if side == 0:
+            raise Touching(switch)
+        return side
+
+    def _work(self, step: Instruction, args: Sequence[Series], values: Mapping[str, Series]) -> Series:
         op, bits = step.op, self.bits
         if op == "number":
             return {0: iv.of_fraction(step.value, bits)}
@@ -102,11 +191,6 @@ class Evaluator:
             return {0: iv.pi(bits)}
         if op == "name":
             return values[step.name] if step.name in values else self.steady[step.name]
-        if op in COMPARISONS:
-            left, right = (self._step(place, values, done)[0] for place in step.args[:2])
-            below = iv.less(left, right, bits)
-            return self._step(step.args[2 if below == (op in ("<", "<=")) else 3], values, done)
-        args = [self._step(place, values, done) for place in step.args]
         match op:
             case "add":
                 return self._sum(args[0], args[1])
@@ -122,13 +206,6 @@ class Evaluator:
                 return self._power(args[0], int(step.value))
             case "general power":
                 return self._of(_exp, self._product(args[1], self._of(_log, args[0])))
-            case "abs":
-                return self._negative(args[0]) if iv.less(args[0][0], ZERO, bits) else args[0]
-            case "min" | "max":
-                below = iv.less(args[0][0], args[1][0], bits)
-                return args[0] if below == (op == "min") else args[1]
-            case "floor":
-                return {0: iv.floor(args[0][0])}
             case "atan2":
                 return self._angle(args[0], args[1])
             case "tan":
@@ -321,18 +398,6 @@ _FUNCTIONS: Mapping[str, Function] = {
     "log": _log,
     "sqrt": _sqrt,
 }
-
-
-def _always(program: Program) -> list[int]:
-    """Places of the steps that are needed whatever branch is taken, rising."""
-    needed, waiting = set(), [len(program.steps) - 1]
-    while waiting:
-        place = waiting.pop()
-        if place not in needed:
-            needed.add(place)
-            step = program.steps[place]
-            waiting.extend(step.args[:2] if step.op in COMPARISONS else step.args)
-    return sorted(needed)
 
 
 def _moving(program: Program, names: frozenset[str]) -> list[bool]:
