@@ -30,10 +30,19 @@ class FakePictures:
         self.on_field = on_field
         self.asked: list[PictureRequest] = []
         self.cancelled = 0
+        self.shade: int | None = None
+        self.glimpsed: list[PictureRequest] = []
 
     def request(self, request: PictureRequest, budget_steps: int) -> int:
         self.asked.append(request)
         return len(self.asked)
+
+    def glimpse(self, request: PictureRequest, tone: str, colours: np.ndarray) -> np.ndarray | None:
+        """All cells of the colour `shade`, where there is one."""
+        self.glimpsed.append(request)
+        if self.shade is None:
+            return None
+        return np.full((request.rows, request.columns + request.columns % 2), colours[self.shade], np.uint32)
 
     def answer(self, number: int = 0) -> Field:
         """A field for the newest request, or for one by number: two lines, periods 1 and 2, then escape."""

@@ -13,6 +13,8 @@ from shell_window import FakeDesks, at, window_on
 
 from tinemark.onsets.results import Status
 from tinemark.window.picture_jobs import TOO_DEEP
+from tinemark.window.picture_tones import table
+from tinemark.window.theme import current_theme
 from tinemark.window.view_navigation import place
 
 
@@ -119,6 +121,62 @@ def test_the_old_picture_moves_at_once(window, desks, qtbot):
     x = round((plot.left() + plot.width() * 0.5 - 30) * ratio)
     assert moved.pixelColor(x - 60, y) == still.pixelColor(x, y)
     assert moved.pixelColor(x, y) != still.pixelColor(x, y)
+
+
+def seen_at(window, u: float, v: float) -> str:
+    image = window.diagram.grab().toImage()
+    plot, ratio = window.diagram.parts.plot, window.diagram.devicePixelRatioF()
+    across, up = plot.left() + u * plot.width(), plot.bottom() - v * plot.height()
+    return image.pixelColor(int(across * ratio), int(up * ratio)).name()
+
+
+def test_a_zoom_shows_a_first_look_before_anything_else_happens(window, desks, qtbot):
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.image is not None)
+    desks.pictures.shade = 200
+    shown: list[tuple[bool, object]] = []
+    window.keeper.changed.connect(lambda *_: shown.append((window.diagram.glimpse, window.diagram.view)))
+    drag(window.diagram, at(window, "3.2", "0.2"), at(window, "3.8", "0.8"))
+    view = window.keeper.session.view
+    # It was there when the session heard of the view, and is what is painted of it.
+    assert shown[0][0].view == shown[0][1] == view == window.diagram.view
+    looked = desks.pictures.glimpsed[-1]
+    assert (looked.view, looked.columns) == (view, window.diagram.parts.columns)
+    shade = f"#{int(table(window.pictures._tones)[200]) & 0xFFFFFF:06x}"
+    assert {seen_at(window, u, v) for u in (0.3, 0.7) for v in (0.3, 0.7)} == {shade}
+    qtbot.waitUntil(lambda: desks.pictures.asked[-1].view == view)
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.image_view == view)
+    assert window.diagram.glimpse is None
+    assert seen_at(window, 0.3, 0.7) == current_theme().plot
+
+
+def test_the_way_back_shows_a_first_look_and_a_pan_the_picture_itself(window, desks, qtbot):
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.image is not None)
+    desks.pictures.shade = 200
+    before = window.keeper.session.view
+    window.diagram.gestures.zoom(Fraction(1, 2))
+    looks = len(desks.pictures.glimpsed)
+    window.keeper.view_back()
+    assert window.diagram.glimpse.view == before == window.diagram.view
+    assert len(desks.pictures.glimpsed) == looks + 1
+    start = at(window, "3.5", "0.5")
+    drag(window.diagram, start, start + QPoint(-60, 0), Qt.MouseButton.RightButton)
+    assert len(desks.pictures.glimpsed) == looks + 1
+    assert window.diagram.glimpse.view != window.diagram.view
+
+
+def test_the_plot_alone_is_painted_as_in_the_whole(window, desks, qtbot):
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.image is not None)
+    QApplication.processEvents()
+    whole = window.diagram.grab().toImage()
+    area = window.diagram.parts.plot.toAlignedRect()
+    part = window.diagram.grab(area).toImage()
+    ratio = window.diagram.devicePixelRatioF()
+    corner = (round(area.x() * ratio), round(area.y() * ratio))
+    assert part == whole.copy(*corner, part.width(), part.height())
 
 
 def test_the_wheel_zooms_at_the_pointer_as_one_view(window):

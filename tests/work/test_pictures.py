@@ -114,6 +114,19 @@ def test_a_pan_by_whole_columns_equals_a_fresh_picture(desk, heard, logistic) ->
     assert np.array_equal(last.counts, fresh.counts)
 
 
+def test_a_first_look_is_had_at_once_when_the_system_has_been_drawn(desk, heard, logistic) -> None:
+    colours = np.arange(256, dtype=np.uint32)
+    asked = request(logistic)
+    assert desk.glimpse(asked, "log", colours) is None
+    heard.picture(desk.request(asked, 4096))
+    assert desk.wait_idle(PATIENCE)
+    look = desk.glimpse(request(logistic, "3.2", "3.4"), "log", colours)
+    # Two branches, thin beside what lies between them.
+    assert look.shape == (40, 64)
+    assert 2 <= (look > 0).sum() / 64 <= 3
+    assert desk.glimpse(request(logistic.with_value("r", "2")), "log", colours) is None
+
+
 def test_where_doubles_end_nothing_is_drawn(desk, heard, logistic) -> None:
     deep = request(logistic, "3.5", "3.5000000000000000001")
     fields, end = heard.picture(desk.request(deep, 512))

@@ -21,6 +21,9 @@ otherwise leave everything else in the first colour."""
 
 _SAMPLE = 1 << 17
 
+EVENED_STEPS = 4096
+"""Steps a column from which on a picture shows its own grain."""
+
 
 def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]:
     """Colour indices of counts.
@@ -44,29 +47,129 @@ def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]
     ValueError
         The mode is not known.
     """
-    if mode not in TONES:
-        raise ValueError(f'there is no tone "{mode}"; known tones: {", ".join(TONES)}')
     # The compiler is loaded with the first picture, not with the window.
-    from tinemark.density.tone_kernels import KEYS, largest, toned, visits_of_keys
+    from tinemark.density.tone_kernels import toned
 
     cells = counts if counts.ndim == 2 else counts.reshape(1, -1)
-    table = np.zeros(KEYS, np.uint8)
-    values = _values()
+    return toned(cells, _indices_by_key(cells, mode)).reshape(counts.shape)
+
+
+def coloured(counts: NDArray[np.uint32], mode: str, colours: NDArray[np.uint32]) -> NDArray[np.uint32]:
+    """Counts to colours at once, as `tone_map` and a look-up in `colours`, shape (256,), would give them.
+
+    Parameters
+    ----------
+    counts
+        uint32, shape (rows, columns), any strides.
+
+    Returns
+    -------
+    uint32, shape (rows, columns), in memory order.
+    """
+    from tinemark.density.tone_kernels import toned
+
+    return toned(counts, colours[_indices_by_key(counts, mode)])
+
+
+def even(counts: NDArray[np.uint32], steps: float) -> NDArray[np.uint32]:
+    """The counts of a picture of a few `steps` a column, without the grain that so few steps have.
+
+    Where a cell has hardly been visited, its neighbours tell better than its own count how often it will
+    be: they share their visits (`tone_kernels.evened`), and all counts grow by one factor. A picture of
+    many steps is returned as it is.
+
+    Parameters
+    ----------
+    counts
+        uint32, shape (rows, columns), in memory order.
+    """
+    from tinemark.density.tone_kernels import evened, shared_out
+
+    if steps >= EVENED_STEPS:
+        return counts
+    shares = shares_of(*counts.shape)
+    shared_out(counts, 0, shares)
+    return evened(counts, shares)
+
+
+def shares_of(lines: int, places: int) -> NDArray[np.uint32]:
+    """Memory for the shares of the squares of so many cells."""
+    from tinemark.density.tone_kernels import EVEN_SIDE
+
+    return np.zeros((-(-lines // EVEN_SIDE), -(-places // EVEN_SIDE)), np.uint32)
+
+
+def colour_columns(
+    counts: NDArray[np.uint32],
+    mode: str,
+    colours: NDArray[np.uint32],
+    shares: NDArray[np.uint32],
+    pixels: NDArray[np.uint32],
+) -> None:
+    """Colours of a picture of few steps, evened, from a drawing's counts; a column is two pixels wide.
+
+    Parameters
+    ----------
+    counts
+        uint32, shape (columns, rows + 2): from the bottom up, with a cell below and one above the view. No
+        count is much larger than a hundred thousand.
+    colours
+        uint32, shape (256,).
+    shares
+        `shares_of` columns and rows; overwritten.
+    pixels
+        uint32, shape (rows, 2 * columns), row 0 at the top; overwritten.
+    """
+    from tinemark.density.tone_kernels import evened, shared_out, upright
+
+    highest = shared_out(counts, 1, shares)
     if mode == "log":
-        highest = max(float(largest(cells)), 1.0)
-        share = np.log1p(values * (_LOG_SPAN / highest)) / np.log1p(_LOG_SPAN)
+        by_key = _indices_of_log(highest)
     else:
-        visits = visits_of_keys(cells, _stride(counts.size))
-        visits[0] = 0
-        below = np.cumsum(visits)
-        total = max(int(below[-1]), 1)
-        if mode == "linear":
-            cap = values[int(np.searchsorted(below[:-1], _LINEAR_SHARE * total))]
-            share = values / max(cap, 1.0)
-        else:
-            share = (below - 0.5 * visits) / total
-    table[1:] = 1.0 + np.clip(share[1:] * 254.0, 0.0, 254.0)
-    return toned(cells, table).reshape(counts.shape)
+        by_key = _indices_by_key(evened(np.ascontiguousarray(counts[:, 1:-1]), shares), mode)
+    # Counts are small enough for a table of all of them, which spares a logarithm a cell.
+    upright(counts, shares, colours[by_key[_keys(np.arange(highest + 1, dtype=np.float32))]], pixels)
+
+
+def _indices_by_key(cells: NDArray[np.uint32], mode: str) -> NDArray[np.uint8]:
+    if mode not in TONES:
+        raise ValueError(f'there is no tone "{mode}"; known tones: {", ".join(TONES)}')
+    from tinemark.density.tone_kernels import largest, visits_of_keys
+
+    if mode == "log":
+        return _indices_of_log(int(largest(cells)))
+    visits = visits_of_keys(cells, _stride(cells.size))
+    visits[0] = 0
+    below = np.cumsum(visits)
+    total = max(int(below[-1]), 1)
+    values = _values()
+    if mode == "linear":
+        cap = values[int(np.searchsorted(below[:-1], _LINEAR_SHARE * total))]
+        return _indices(values / max(cap, 1.0))
+    return _indices((below - 0.5 * visits) / total)
+
+
+def _indices_of_log(highest: int) -> NDArray[np.uint8]:
+    # No cell has a key beyond that of the highest count.
+    values = _values()
+    values = values[: int(np.searchsorted(values, highest)) + 2]
+    return _indices(np.log1p(values * (_LOG_SPAN / max(highest, 1))) / np.log1p(_LOG_SPAN))
+
+
+def _indices(shares: NDArray[np.float64]) -> NDArray[np.uint8]:
+    """Colour indices by key from the shares of the colours that the keys reach; missing keys are not met."""
+    from tinemark.density.tone_kernels import KEYS
+
+    table = np.zeros(KEYS, np.uint8)
+    table[1 : len(shares)] = 1.0 + np.clip(shares[1:] * 254.0, 0.0, 254.0)
+    return table
+
+
+def _keys(counts: NDArray[np.float32]) -> NDArray[np.int64]:
+    """Keys of counts, as the kernels take them."""
+    from tinemark.density.tone_kernels import KEY_SHIFT, KEY_ZERO
+
+    return np.maximum((counts.view(np.uint32) >> KEY_SHIFT).astype(np.int64) - KEY_ZERO, 0)
 
 
 def _stride(cells: int) -> int:

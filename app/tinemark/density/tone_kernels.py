@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import TypeVar
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -12,6 +14,12 @@ KEY_ZERO = (127 << 8) - 1
 KEYS = (32 << 8) + 2
 """A count's key is its logarithm in steps of 1/256 octave, the leading bits of its float; exact up to 512.
 No visit has key 0, one visit key 1."""
+
+EVEN_SIDE, EVEN_BELOW, EVEN_SCALE = 4, 4, 16
+
+_UPRIGHT_AT_ONCE = 64
+
+Entry = TypeVar("Entry", np.uint8, np.uint32)
 
 
 @jit
@@ -38,13 +46,100 @@ def largest(counts: NDArray[np.uint32]) -> int:
 
 
 @jit
-def toned(counts: NDArray[np.uint32], table: NDArray[np.uint8]) -> NDArray[np.uint8]:
-    """The table's entry for the key of each count."""
+def toned(counts: NDArray[np.uint32], table: NDArray[Entry]) -> NDArray[Entry]:
+    """The table's entry for the key of each count: colour indices, or colours."""
     rows, columns = counts.shape
-    indices = np.empty((rows, columns), np.uint8)
+    entries = np.empty((rows, columns), table.dtype)
     for i in range(rows):
         for j in range(columns):
             bits = np.float32(counts[i, j]).view(np.uint32)
             key = int(bits >> KEY_SHIFT) - KEY_ZERO
-            indices[i, j] = table[key if key > 0 else 0]  # noqa: FURB136
-    return indices
+            entries[i, j] = table[key if key > 0 else 0]  # noqa: FURB136
+    return entries
+
+
+@jit
+def shared_out(counts: NDArray[np.uint32], beside: int, shares: NDArray[np.uint32]) -> int:
+    """What each cell of a square gets where hardly any visits are shared out; the largest evened count.
+
+    In each square of `EVEN_SIDE` cells a side, cells of fewer than `EVEN_BELOW` visits share theirs: each
+    gets the mean, times `EVEN_SCALE` and rounded up. The others keep their own count, times `EVEN_SCALE`, so
+    that a branch stays one cell wide.
+
+    Parameters
+    ----------
+    counts
+        uint32, shape (lines, places + 2 * beside), in memory order.
+    beside
+        Cells to leave out at both ends of each line.
+    shares
+        uint32, shape (squares, squares), for `square_count` of lines and places; overwritten.
+    """
+    lines, places = counts.shape[0], counts.shape[1] - 2 * beside
+    few, none, one, scale = np.uint32(EVEN_BELOW), np.uint32(0), np.uint32(1), np.uint32(EVEN_SCALE)
+    # The last square may reach beyond the edge; what is summed up there stays zero.
+    visits, cells = np.empty(places + EVEN_SIDE, np.uint32), np.empty(places + EVEN_SIDE, np.uint32)
+    most, highest = none, none
+    for top in range(0, lines, EVEN_SIDE):
+        visits[:] = 0
+        cells[:] = 0
+        # Loops along memory that choose instead of branching: they become vector code.
+        for i in range(top, min(top + EVEN_SIDE, lines)):
+            for j in range(places):
+                count = counts[i, j + beside]
+                visits[j] += count if count < few else none
+                cells[j] += one if count < few else none
+                most = max(most, count)
+        for square in range(shares.shape[1]):
+            seen, among = none, none
+            for j in range(square * EVEN_SIDE, (square + 1) * EVEN_SIDE):
+                seen += visits[j]
+                among += cells[j]
+            among = max(among, one)
+            share = (seen * scale + among - one) // among
+            shares[top // EVEN_SIDE, square] = share
+            highest = max(highest, share)
+    return int(max(highest, most * scale if most >= few else none))
+
+
+@jit
+def evened(counts: NDArray[np.uint32], shares: NDArray[np.uint32]) -> NDArray[np.uint32]:
+    """The evened counts of `shared_out`, in full."""
+    lines, places = counts.shape
+    even = np.empty((lines, places), np.uint32)
+    for i in range(lines):
+        for j in range(places):
+            count = counts[i, j]
+            share = shares[i // EVEN_SIDE, j // EVEN_SIDE]
+            even[i, j] = share if count < EVEN_BELOW else count * np.uint32(EVEN_SCALE)
+    return even
+
+
+@jit
+def upright(
+    counts: NDArray[np.uint32], shares: NDArray[np.uint32], table: NDArray[Entry], entries: NDArray[Entry]
+) -> None:
+    """The table's entry for each evened count, columns stood upright, each twice as wide as a cell is high.
+
+    Parameters
+    ----------
+    counts
+        uint32, shape (columns, rows + 2): from the bottom up, with a cell below and one above.
+    shares
+        As `shared_out` leaves them.
+    table
+        Shape (largest evened count + 1,).
+    entries
+        Shape (rows, 2 * columns), from the top down; overwritten.
+    """
+    rows, columns = entries.shape[0], counts.shape[0]
+    for first in range(0, columns, _UPRIGHT_AT_ONCE):
+        end = min(first + _UPRIGHT_AT_ONCE, columns)
+        for i in range(rows):
+            line = entries[rows - 1 - i]
+            for j in range(first, end):
+                count = counts[j, i + 1]
+                share = shares[j // EVEN_SIDE, i // EVEN_SIDE]
+                entry = table[share if count < EVEN_BELOW else count * np.uint32(EVEN_SCALE)]
+                line[2 * j] = entry
+                line[2 * j + 1] = entry

@@ -32,6 +32,12 @@ class Painted:
     image: QImage
 
 
+def image_of(pixels: NDArray[np.uint32]) -> QImage:
+    """An image that looks at pixels 0xffRRGGBB, shape (rows, columns), which must outlive it."""
+    rows, columns = pixels.shape
+    return QImage(pixels.data, columns, rows, columns * 4, QImage.Format.Format_RGB32)
+
+
 class Bridge(QObject):
     """Carries fields and events to the window's thread.
 
@@ -107,8 +113,7 @@ class Bridge(QObject):
                     if not self._closed:
                         self.trouble.emit(f"The picture could not be coloured: {error}")
                 continue
-            rows, columns = pixels.shape
-            image = QImage(pixels.data, columns, rows, columns * 4, QImage.Format.Format_RGB32)
+            image = image_of(pixels)
             with self._lock:
                 knock = self._mail is None
                 self._mail = Painted(number, field, pixels, image)

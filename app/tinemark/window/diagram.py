@@ -54,6 +54,15 @@ class Labels:
     observe_unit: str = ""
 
 
+@dataclass(frozen=True)
+class Glimpse:
+    """A first look at a view, shown until its picture comes. `pixels` is the memory that `image` looks at."""
+
+    image: QImage
+    pixels: object
+    view: View
+
+
 class Diagram(QWidget):
     """The diagram.
 
@@ -91,6 +100,7 @@ class Diagram(QWidget):
         self.image: QImage | None = None
         self._pixels: object = None
         self.image_view = UNIT_VIEW
+        self.glimpse: Glimpse | None = None
         self._strip = LyapunovStrip()
         self.marks: tuple[Mark, ...] = ()
         self.selected = ""
@@ -130,12 +140,23 @@ class Diagram(QWidget):
         self.image = image
         self._pixels = pixels
         self.field, self.image_view = field, view
+        if view == self.view:
+            self.glimpse = None
         self._strip.show(field.lyapunov)
+        self.update()
+
+    def show_glimpse(self, glimpse: Glimpse) -> None:
+        """Show another view with a first look at it: the plot before this returns, what is around it in the
+        next turn.
+        """
+        self.glimpse, self.view = glimpse, glimpse.view
+        self.close_callout()
+        self.repaint(self.parts.plot.toAlignedRect())
         self.update()
 
     def forget_picture(self) -> None:
         """Drop a picture that belongs to another system."""
-        self.image, self.field = None, None
+        self.image, self.field, self.glimpse = None, None, None
         self._strip.show(None)
         self.update()
 
@@ -298,18 +319,17 @@ class Diagram(QWidget):
 
     # --- painting ------------------------------------------------------------------------------------------
 
-    def paintEvent(self, event: QPaintEvent) -> None:  # noqa: ARG002, D102
+    def paintEvent(self, event: QPaintEvent) -> None:  # noqa: D102
         painter = QPainter(self)
         painter.setFont(self._font())
-        self._paint_ground(painter)
+        around = not self.parts.plot.toAlignedRect().contains(event.rect())
+        if around:
+            painter.fillRect(self.rect(), color(current_theme().surface))
         self._paint_picture(painter)
-        self._paint_over(painter)
+        if around:
+            self._paint_around(painter)
+        self._paint_over(painter, around=around)
         painter.end()
-
-    def _paint_ground(self, painter: QPainter) -> None:
-        theme, parts = current_theme(), self.parts
-        painter.fillRect(self.rect(), color(theme.surface))
-        painter.fillRect(parts.plot, color(theme.plot))
 
     def _picture_extent(self) -> tuple[float, float]:
         """Left edge and width of the drawn columns on the screen."""
@@ -318,26 +338,35 @@ class Diagram(QWidget):
         return plot.left() + left * plot.width(), (right - left) * plot.width()
 
     def _paint_picture(self, painter: QPainter) -> None:
-        theme, parts = current_theme(), self.parts
-        left, width = self._picture_extent()
-        field = None if self.notice else self.field
-        if self.image is not None and not self.notice:
-            exact = (
-                self.image_view == self.view
-                and self.image.width() == parts.columns
-                and self.image.height() == parts.rows
-            )
-            paint.paint_picture(painter, parts.plot, self.view, self.image, self.image_view, exact=exact)
-        if field is not None:
-            paint.paint_escaped(painter, theme, parts.plot, field.escaped, left, width)
-            paint.paint_periods(painter, theme, parts.periods, field.period, left, width)
-        self._strip.paint(painter, theme, parts.strip, left, width, empty=bool(self.notice))
+        theme, plot, view = current_theme(), self.parts.plot, self.view
+        glimpse = self.glimpse
+        if self.notice or self.image is None:
+            painter.fillRect(plot, color(theme.plot))
+        elif glimpse is not None and glimpse.view == view != self.image_view:
+            self._paint_glimpse(painter, glimpse.image)
+        elif self.image_view == view and self.image.size() == QSize(self.parts.columns, self.parts.rows):
+            painter.drawImage(plot, self.image)
+        else:
+            painter.fillRect(plot, color(theme.plot))
+            paint.paint_stretched(painter, plot, view, self.image, self.image_view)
+        if self.field is not None and not self.notice:
+            paint.paint_escaped(painter, theme, plot, self.field.escaped, *self._picture_extent())
         if self.image is None and not self.notice:
             painter.setPen(color(theme.muted))
-            painter.drawText(parts.plot, Qt.AlignmentFlag.AlignCenter, "Drawing\N{HORIZONTAL ELLIPSIS}")
+            painter.drawText(plot, Qt.AlignmentFlag.AlignCenter, "Drawing\N{HORIZONTAL ELLIPSIS}")
 
-    def _paint_over(self, painter: QPainter) -> None:
+    def _paint_glimpse(self, painter: QPainter, image: QImage) -> None:
+        plot, columns, rows = self.parts.plot, self.parts.columns, self.parts.rows
+        thin = max(1, round(rows / image.height()))
+        # Its last column may lie half outside the view.
+        painter.drawImage(plot, image, QRectF(0, 0, min(image.width(), columns / thin), image.height()))
+
+    def _paint_around(self, painter: QPainter) -> None:
         theme, parts, view, labels = current_theme(), self.parts, self.view, self.labels
+        left, width = self._picture_extent()
+        if self.field is not None and not self.notice:
+            paint.paint_periods(painter, theme, parts.periods, self.field.period, left, width)
+        self._strip.paint(painter, theme, parts.strip, left, width, empty=bool(self.notice))
         paint_left_axis(
             painter,
             theme,
@@ -351,6 +380,9 @@ class Diagram(QWidget):
         paint_bottom_axis(
             painter, theme, parts.axis, view.left, view.right, labels.parameter, labels.parameter_unit
         )
+
+    def _paint_over(self, painter: QPainter, *, around: bool) -> None:
+        theme, parts, view = current_theme(), self.parts, self.view
         if self.probe is not None and view.left <= self.probe <= view.right:
             x = parts.plot.left() + unit_x(view, self.probe) * parts.plot.width()
             painter.setPen(QPen(color(theme.text, 0.8), 1.0, Qt.PenStyle.DashDotLine))
@@ -367,40 +399,15 @@ class Diagram(QWidget):
             parts.strip.bottom(),
             self.selected,
             self.hovered,
+            in_lane=around,
         )
         if self.notice:
-            self._paint_notice(painter)
+            paint.paint_notice(painter, theme, parts.plot, self.notice)
         for parameter, observed, words in self.pending.values():
-            self._paint_pending(painter, self.point(parameter, observed), words)
+            paint.paint_pending(painter, theme, parts.plot, self.point(parameter, observed), words)
         self.branches.paint_words(painter, theme, view, parts.plot, self.words_at)
         self.gestures.paint(painter, theme)
         if self.hasFocus():
             painter.setPen(QPen(color(theme.accent), 1.5))
             painter.setBrush(Qt.BrushStyle.NoBrush)
             painter.drawRect(parts.plot.adjusted(-1, -1, 1, 1))
-
-    def _paint_notice(self, painter: QPainter) -> None:
-        theme, plot = current_theme(), self.parts.plot
-        metrics = QFontMetricsF(painter.font())
-        wide = min(metrics.horizontalAdvance(self.notice) + 40, plot.width() - 40)
-        card = QRectF(0, 0, wide, metrics.height() * 3.2)
-        card.moveCenter(plot.center())
-        painter.setPen(QPen(color(theme.line), 1.0))
-        painter.setBrush(color(theme.raised))
-        painter.drawRoundedRect(card, 6, 6)
-        painter.setPen(color(theme.text))
-        flags = Qt.AlignmentFlag.AlignCenter | Qt.TextFlag.TextWordWrap
-        painter.drawText(card.adjusted(12, 2, -12, -2), int(flags), self.notice)
-
-    def _paint_pending(self, painter: QPainter, point: QPointF, words: str) -> None:
-        theme, plot = current_theme(), self.parts.plot
-        if not plot.contains(point):
-            return
-        painter.save()
-        painter.setRenderHint(QPainter.RenderHint.Antialiasing)
-        painter.setPen(QPen(color(theme.accent), 1.6))
-        painter.setBrush(Qt.BrushStyle.NoBrush)
-        painter.drawEllipse(point, 7, 7)
-        painter.drawEllipse(point, 1.2, 1.2)
-        painter.restore()
-        paint.paint_tag(painter, theme, plot, QPointF(point.x() + 11, point.y() - 9), words)

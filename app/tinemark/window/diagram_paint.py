@@ -14,13 +14,8 @@ from tinemark.window.theme import Theme, color
 from tinemark.window.view_navigation import unit_x, unit_y
 
 
-def paint_picture(
-    painter: QPainter, plot: QRectF, view: View, image: QImage, image_view: View, *, exact: bool
-) -> None:
-    """The picture where its own view lies in the present one: stretched until its replacement comes."""
-    if exact:
-        painter.drawImage(plot, image)
-        return
+def paint_stretched(painter: QPainter, plot: QRectF, view: View, image: QImage, image_view: View) -> None:
+    """A picture where its own view lies in the present one: stretched until its replacement comes."""
     left, right = unit_x(view, image_view.left), unit_x(view, image_view.right)
     bottom, top = unit_y(view, image_view.bottom), unit_y(view, image_view.top)
     # Only the part that is seen is handed to Qt: a deep zoom would ask for a target of millions of pixels.
@@ -164,3 +159,31 @@ def paint_box(painter: QPainter, theme: Theme, plot: QRectF, box: QRectF, words:
     painter.setBrush(Qt.BrushStyle.NoBrush)
     painter.drawRect(box)
     paint_tag(painter, theme, plot, QPointF(box.left(), box.top() - 4), words)
+
+
+def paint_notice(painter: QPainter, theme: Theme, plot: QRectF, words: str) -> None:
+    """A card in the middle of the plot."""
+    metrics = QFontMetricsF(painter.font())
+    wide = min(metrics.horizontalAdvance(words) + 40, plot.width() - 40)
+    card = QRectF(0, 0, wide, metrics.height() * 3.2)
+    card.moveCenter(plot.center())
+    painter.setPen(QPen(color(theme.line), 1.0))
+    painter.setBrush(color(theme.raised))
+    painter.drawRoundedRect(card, 6, 6)
+    painter.setPen(color(theme.text))
+    flags = Qt.AlignmentFlag.AlignCenter | Qt.TextFlag.TextWordWrap
+    painter.drawText(card.adjusted(12, 2, -12, -2), int(flags), words)
+
+
+def paint_pending(painter: QPainter, theme: Theme, plot: QRectF, point: QPointF, words: str) -> None:
+    """The place of a click that is being worked on."""
+    if not plot.contains(point):
+        return
+    painter.save()
+    painter.setRenderHint(QPainter.RenderHint.Antialiasing)
+    painter.setPen(QPen(color(theme.accent), 1.6))
+    painter.setBrush(Qt.BrushStyle.NoBrush)
+    painter.drawEllipse(point, 7, 7)
+    painter.drawEllipse(point, 1.2, 1.2)
+    painter.restore()
+    paint_tag(painter, theme, plot, QPointF(point.x() + 11, point.y() - 9), words)

@@ -98,8 +98,12 @@ def paint_marks(
     bottom: float,
     selected: str,
     hovered: str,
+    *,
+    in_lane: bool = True,
 ) -> None:
-    """Draw the marks: lines from the lane through the plot down to `bottom`, signs and labels in the lane."""
+    """Draw the marks: lines from the lane through the plot down to `bottom`, and signs and labels in the lane
+    unless only the plot is painted.
+    """
     shown = visible(marks, view)
     y = lane.center().y()
     painter.save()
@@ -121,19 +125,14 @@ def paint_marks(
             painter.setPen(QPen(color(theme.accent), 2.0 if strong else 1.4))
             painter.setBrush(Qt.BrushStyle.NoBrush)
             painter.drawEllipse(point, 4.5, 4.5)
-    for u, mark in shown:
-        strong = mark.row in (selected, hovered)
-        paint_sign(
-            painter,
-            theme,
-            mark.status,
-            QPointF(plot.left() + u * plot.width(), y),
-            SIGN * (1.35 if strong else 1.0),
-            mark.kind,
-        )
         if mark.jumps:
-            _paint_jump(painter, theme, QPointF(plot.left() + u * plot.width(), plot.top()))
-    _paint_labels(painter, theme, shown, plot, lane, (selected, hovered))
+            _paint_jump(painter, theme, QPointF(x, plot.top()))
+    if in_lane:
+        for u, mark in shown:
+            x = plot.left() + u * plot.width()
+            size = SIGN * (1.35 if mark.row in (selected, hovered) else 1.0)
+            paint_sign(painter, theme, mark.status, QPointF(x, y), size, mark.kind)
+        _paint_labels(painter, theme, shown, plot, lane, (selected, hovered))
     painter.restore()
 
 

@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Protocol
 
+import numpy as np
+from numpy.typing import NDArray
 from PySide6.QtCore import QElapsedTimer, QObject, Qt, QTimer, Signal
 
-from tinemark.density.request import PictureRequest
+from tinemark.density.request import PictureRequest, View
 from tinemark.density.sampling import columns_distinct
 from tinemark.document.session import BUDGETS, Session
 from tinemark.systems.system import System
-from tinemark.window.bridge import Bridge, Painted
-from tinemark.window.diagram import Diagram
-from tinemark.window.picture_tones import Tones
+from tinemark.window.bridge import Bridge, Painted, image_of
+from tinemark.window.diagram import Diagram, Glimpse
+from tinemark.window.picture_tones import Tones, table
 from tinemark.window.status_line import StatusLine
 from tinemark.window.theme import current_theme
 from tinemark.work.pictures import PictureFailed
@@ -28,6 +31,9 @@ class DeskLike(Protocol):
     """What is needed of `work.pictures.PictureDesk`."""
 
     def request(self, request: PictureRequest, budget_steps: int) -> int: ...  # noqa: D102
+    def glimpse(  # noqa: D102
+        self, request: PictureRequest, tone: str, colours: NDArray[np.uint32]
+    ) -> NDArray[np.uint32] | None: ...
     def cancel(self) -> None: ...  # noqa: D102
 
 
@@ -58,6 +64,8 @@ class PictureJobs(QObject):
         self._soon = QTimer(self)
         self._soon.setSingleShot(True)
         self._soon.timeout.connect(self._ask)
+        # Connected before the window is: a gesture's first look is on screen before the session has changed.
+        diagram.view_wanted.connect(self._look)
 
     def attach(self, desk: DeskLike) -> None:
         """The drawing desk is there."""
@@ -86,8 +94,13 @@ class PictureJobs(QObject):
         self._set_tones(session)
         wanted = (request, BUDGETS[picture.budget])
         if wanted != self._wanted:
+            self._look(session.view)
             self._wanted = wanted
-            if not self._posted:
+            glimpse = self._diagram.glimpse
+            if glimpse is not None and glimpse.view == session.view:
+                # There is something to see: what is around it is painted first, undisturbed by the desk.
+                self._soon.start(0)
+            elif not self._posted:
                 self._posted = True
                 self._wants.emit()
 
@@ -102,6 +115,22 @@ class PictureJobs(QObject):
         self._bridge.set_tones(tones)
         if self._diagram.field is not None and self._asked:
             self._bridge.on_field(self._newest_shown, self._diagram.field)
+
+    def _look(self, view: View) -> None:
+        """Show a first look at a view at once, where there is one and the old picture does not tell more."""
+        if self.desk is None or self._wanted is None or self._tones is None or not self._asked:
+            return
+        request = self._wanted[0]
+        shown = self._diagram.glimpse
+        moved_only = (view.width, view.height) == (request.view.width, request.view.height)
+        if moved_only or (shown is not None and shown.view == view):
+            return
+        # On a screen with fine pixels a branch is drawn several of them wide (`picture_tones.toned`).
+        coarse = self._tones.thickness
+        looked = replace(request, view=view, columns=request.columns // coarse, rows=request.rows // coarse)
+        pixels = self.desk.glimpse(looked, self._tones.tone, table(self._tones))
+        if pixels is not None:
+            self._diagram.show_glimpse(Glimpse(image_of(pixels), pixels, view))
 
     def _ask_posted(self) -> None:
         self._posted = False

@@ -1,4 +1,4 @@
-"""Counts to screen colours. Runs on the bridge's own thread, never on the window's."""
+"""Counts to screen colours. A whole picture is toned on the bridge's own thread, never on the window's."""
 
 from __future__ import annotations
 
@@ -30,19 +30,21 @@ def toned(field: Field, tones: Tones) -> NDArray[np.uint32]:
     On a screen with fine pixels a branch one cell high would fade away. Where the orbit is periodic,
     and only there, each cell is drawn `thickness` pixels high.
     """
-    from tinemark.density.tone import tone_map
+    from tinemark.density.tone import coloured, even, tone_map
 
-    indices = tone_map(field.counts[::-1], tones.tone)
-    if tones.thickness > 1:
-        periodic = np.flatnonzero(field.period > 0)
-        lines = indices[:, periodic]
-        thick = lines.copy()
-        for step in range(1, tones.thickness):
-            # Down and up in turn, so that the branch stays where it is.
-            by = (step + 1) // 2 * (1 if step % 2 else -1)
-            target, source = (thick[by:], lines[:-by]) if by > 0 else (thick[:by], lines[-by:])
-            np.maximum(target, source, out=target)
-        indices[:, periodic] = thick
+    counts = even(field.counts, field.steps / field.counts.shape[1])[::-1]
+    if tones.thickness == 1:
+        return coloured(counts, tones.tone, table(tones))
+    indices = tone_map(counts, tones.tone)
+    periodic = np.flatnonzero(field.period > 0)
+    lines = indices[:, periodic]
+    thick = lines.copy()
+    for step in range(1, tones.thickness):
+        # Down and up in turn, so that the branch stays where it is.
+        by = (step + 1) // 2 * (1 if step % 2 else -1)
+        target, source = (thick[by:], lines[:-by]) if by > 0 else (thick[:by], lines[-by:])
+        np.maximum(target, source, out=target)
+    indices[:, periodic] = thick
     return np.ascontiguousarray(table(tones)[indices])
 
 

@@ -6,6 +6,9 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, TypeAlias
 
+import numpy as np
+from numpy.typing import NDArray
+
 from tinemark.density.field import Field
 from tinemark.density.request import PictureRequest
 from tinemark.density.stopping import StopFlag
@@ -13,10 +16,14 @@ from tinemark.systems.errors import TinemarkError
 from tinemark.work.newest import NewestWins
 
 if TYPE_CHECKING:
+    from tinemark.density.glimpse import Glimpses
     from tinemark.density.renderer import Drawing
 
 BUDGET_STEPS = 20_000
 """Steps a column after which a picture rests, where nothing else is asked."""
+
+REHEARSED_LEVEL = 2048
+"""Steps a column after which the kernels that a glimpse needs have been used."""
 
 
 @dataclass(frozen=True)
@@ -68,6 +75,8 @@ class PictureDesk:
         self._threads = threads
         # Touched by the desk's thread alone.
         self._drawing: Drawing | None = None
+        # Made by the desk's thread, which loads the compiler; asked by any.
+        self._glimpses: Glimpses | None = None
         self._desk: NewestWins[tuple[PictureRequest, int], StopFlag] = NewestWins(
             "pictures", self._run, StopFlag
         )
@@ -75,6 +84,16 @@ class PictureDesk:
     def request(self, request: PictureRequest, budget_steps: int = BUDGET_STEPS) -> int:
         """Ask for a picture in place of every earlier one; returns its id. Any thread, at once."""
         return self._desk.submit((request, budget_steps))
+
+    def glimpse(
+        self, request: PictureRequest, tone: str, colours: NDArray[np.uint32]
+    ) -> NDArray[np.uint32] | None:
+        """Colours of a first look at a picture, drawn at once on the calling thread; None where none is had.
+
+        Takes a few milliseconds, or next to nothing: there is no look before a picture of the same system
+        has been drawn, and none at systems too slow for it (`density.glimpse`).
+        """
+        return self._glimpses.look(request, tone, colours) if self._glimpses is not None else None
 
     def cancel(self) -> None:
         """Stop drawing; what has been drawn stays for a later request of it. Any thread, at once."""
@@ -91,8 +110,10 @@ class PictureDesk:
     def _run(self, id_: int, asked: tuple[PictureRequest, int], stop: StopFlag) -> None:
         # The compiler is loaded here and not with the window.
         from tinemark.density import renderer
+        from tinemark.density.glimpse import Glimpses
 
         request, budget_steps = asked
+        glimpses = self._glimpses = self._glimpses or Glimpses()
         steps = 0
         try:
             if not renderer.columns_distinct(request):
@@ -111,6 +132,9 @@ class PictureDesk:
             for field in fields:
                 steps = field.steps
                 self._hand_out(id_, field, stop)
+                glimpses.learn(drawing)
+                if drawing.level >= REHEARSED_LEVEL:
+                    glimpses.rehearse()
         except TinemarkError as error:
             if not stop.is_set():
                 self._on_event(PictureFailed(id_, request, error))
