@@ -11,14 +11,16 @@ from tinemark.onsets.branch_places import Family, Floats, Place, least_period
 from tinemark.onsets.branches import find_cycle
 from tinemark.onsets.continuation import UPRIGHT
 from tinemark.onsets.cycle_families import ManyFamily, OneFamily
+from tinemark.onsets.cycle_map import Along
 from tinemark.onsets.float_map import FloatMap
 from tinemark.onsets.many_cycles import Cycle, newton, orbit_ends, returns
-from tinemark.onsets.many_map import ManyMap
 from tinemark.onsets.many_search import scattered_cycles
 from tinemark.onsets.results import Step
 from tinemark.onsets.searches import settled
 
 TRANSIENT = 3000
+SAMPLED_TRANSIENT = 400
+"""The same for equations, whose samples cost more."""
 TOLERANCES = (1e-9, 1e-6, 1e-4)
 PUT = 1e-9
 """A multiplier as close to 1 as this is that of a state which stays where it is put."""
@@ -114,10 +116,11 @@ def settled_many(
     starts = [own, *(_scattered(many, random) for _ in range(SCATTERED_STARTS))]
     states = np.repeat(np.array(starts).T, len(rs), axis=1)
     lanes = np.tile(np.array(rs), len(starts))
+    transient = TRANSIENT if many.system.is_map else SAMPLED_TRANSIENT
     slices = 40
     for place in range(slices):
         yield Step("settling orbits across the view", place / slices)
-        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // slices, 1)
+        history, lanes = orbit_ends(float_map, states, lanes, transient // slices, 1)
         states = history[-1]
     history, lanes = orbit_ends(float_map, states, lanes, 0, most + 1)
     found: list[tuple[float, Place]] = []
@@ -134,7 +137,7 @@ def settled_many(
     return found
 
 
-def _scattered(many: ManyMap, random: np.random.Generator) -> Floats:
+def _scattered(many: Along, random: np.random.Generator) -> Floats:
     """A start somewhere in the states' ranges, or around the system's own."""
     return np.array(
         [

@@ -7,8 +7,8 @@ import math
 import numpy as np
 
 from tinemark.onsets.branch_places import MOST_UNSTABLE, Floats, Place
+from tinemark.onsets.cycle_map import CycleMap
 from tinemark.onsets.float_map import FloatMap
-from tinemark.onsets.many_map import FloatManyMap
 
 MOST_STEPS = 12
 SETTLED = 1e-12
@@ -144,7 +144,7 @@ def stretch_family(cycles: FloatMap, widest: float, x: float, r: float, period: 
 class ManyFamily:
     """Cycles of a map of several states, by the solvers of `many_cycles`."""
 
-    def __init__(self, float_map: FloatManyMap, scales: Floats, width: float) -> None:
+    def __init__(self, float_map: CycleMap, scales: Floats, width: float) -> None:
         self.float_map = float_map
         self.scales = scales
         self.width = width

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tinemark.onsets.cycle_map import CycleMap, Floats
+from tinemark.onsets.cycle_map import CycleMap, Floats, Linear
 from tinemark.onsets.many_map import ESCAPED
 
 MOST_STEPS = 14
@@ -60,11 +60,11 @@ class Condensed:
 def condensed(float_map: CycleMap, points: Floats, r: float) -> Condensed:
     """Condense the linearised shooting equations of a cycle; not finite where an orbit escapes."""
     with np.errstate(over="ignore", invalid="ignore"):
-        return _condensed(float_map, points, r)
+        return condense(float_map.linearised(points, r), points)
 
 
-def _condensed(float_map: CycleMap, points: Floats, r: float) -> Condensed:
-    linear = float_map.linearised(points, r)
+def condense(linear: Linear, points: Floats) -> Condensed:
+    """Condense the shooting equations that the linearised map gives at the points of a cycle."""
     count, n = points.shape
     residual = linear.image - np.concatenate((points[1:], points[:1]))
     # Affine maps of (shift, parameter shift, 1), then all their products from the left by doubling

@@ -1,0 +1,114 @@
+"""Where branches of cycles cross: one branch is followed through, and its critical multiplier solved for 1.
+
+At a transcritical point or a pitchfork two branches meet, so cycles cannot be solved for at the very place.
+On one branch the critical multiplier is a smooth function of the parameter. It is taken at Chebyshev places
+on both sides, none at the crossing, and the polynomial through them is solved.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Generator
+from typing import Any
+
+import numpy as np
+from numpy.polynomial import chebyshev
+
+from tinemark.onsets.cycle_map import Floats
+from tinemark.onsets.flow_map import FlowMap
+from tinemark.onsets.flow_polish import Solution
+from tinemark.onsets.many_cycles import Cycle, condense, condensed, newton
+from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.results import Kind, Step
+
+NODES = 8
+FIRST_SHARE = 1e-3
+"""Of the reach: where the branch is looked at first."""
+MULTIPLIER_SPAN = 0.05
+"""How far from 1 the critical multiplier is at the outermost places."""
+FARTHEST = 30.0
+"""Spans by which the middle is moved at once."""
+ROUNDS = 8
+
+
+def solve_crossing(
+    flow: FlowMap, kind: Kind, start: Cycle, scales: Floats, reach: float
+) -> Generator[Step, None, Solution]:
+    """The crossing near a rough cycle; see `flow_polish.solve_onset`."""
+    centre, span = start, FIRST_SHARE * reach
+    text = f"solving for a {kind.value} of period {start.period}"
+    last_step = math.inf
+    for _ in range(ROUNDS):
+        rs, cycles, tests = yield from _nodes(flow, centre, span, scales, text)
+        series: Any = chebyshev.chebfit((rs - centre.r) / span, tests, NODES - 1)
+        shorter: Any = chebyshev.chebfit((rs - centre.r) / span, tests, NODES - 3)
+        slope = float(chebyshev.chebval(0.0, chebyshev.chebder(series)))
+        place, other = _root(series), _root(shorter)
+        if slope == 0:
+            raise NotFound("no multiplier passes 1 on the branch")
+        if place is None or other is None:
+            # Far off as yet: as far as the slope says, within bounds.
+            place = other = float(np.clip(-chebyshev.chebval(0.0, series) / slope, -FARTHEST, FARTHEST))
+        r = centre.r + span * place
+        if abs(r - start.r) > reach:
+            raise NotFound("the crossing lies out of reach")
+        step = abs(r - centre.r)
+        centre = Cycle(_interpolated(rs, cycles, r, centre, span), r)
+        wanted = MULTIPLIER_SPAN * span / max(abs(slope), 1e-12)
+        settled = 0.3 < wanted / span < 3.0
+        last_step = abs(place - other) * span if settled else math.inf
+        if settled and step < 0.2 * span:
+            break
+        span = min(max(wanted, span / 30), 30 * span, reach)
+    else:
+        raise NotFound("the crossing could not be closed in on")
+    return _crossing(flow, centre, scales, slope / span, last_step)
+
+
+def _nodes(
+    flow: FlowMap, centre: Cycle, span: float, scales: Floats, text: str
+) -> Generator[Step, None, tuple[Floats, list[Floats], Floats]]:
+    places = np.cos(np.pi * (np.arange(NODES) + 0.5) / NODES)
+    # From the middle outwards, each side by itself: the next is predicted from the centre and the last.
+    order = sorted(range(NODES), key=lambda at: (places[at] < 0, abs(places[at])))
+    cycles: dict[int, Floats] = {}
+    tests = np.empty(NODES)
+    lean: Floats = np.zeros_like(centre.points)
+    for at in order:
+        yield Step(text)
+        r = centre.r + span * places[at]
+        found = newton(flow, Cycle(centre.points + places[at] * lean, r), scales)
+        if found is None:
+            raise NotFound(flow.why() or "the branch could not be followed through the crossing")
+        lean = (found.points - centre.points) / places[at]
+        cycles[at] = found.points
+        matrix = condensed(flow, found.points, r).monodromy
+        tests[at] = float(min(np.linalg.eigvals(matrix) - 1, key=abs).real)
+    return centre.r + span * places, [cycles[at] for at in range(NODES)], tests
+
+
+def _root(series: Any) -> float | None:
+    """The root nearest the middle, within twice the span."""
+    roots = chebyshev.chebroots(series)
+    real = [float(root.real) for root in roots if abs(root.imag) < 1e-6 and abs(root.real) < 2]
+    return min(real, key=abs, default=None)
+
+
+def _interpolated(rs: Floats, cycles: list[Floats], r: float, centre: Cycle, span: float) -> Floats:
+    shape = centre.points.shape
+    values = np.array([points.ravel() for points in cycles])
+    series = chebyshev.chebfit((rs - centre.r) / span, values, NODES - 1)
+    return np.asarray(chebyshev.chebval((r - centre.r) / span, series)).reshape(shape)
+
+
+def _crossing(flow: FlowMap, cycle: Cycle, scales: Floats, speed: float, last_step: float) -> Solution:
+    linear = flow.linearised(cycle.points, cycle.r)
+    parts, n = condense(linear, cycle.points), len(scales)
+    matrix = parts.monodromy
+    scaled = matrix * scales / scales[:, None]
+    vector = np.linalg.svd(scaled - np.eye(n))[2][-1] * scales
+    vectors = [vector]
+    for jacobian in linear.jacobian[:-1]:
+        vectors.append(jacobian @ vectors[-1])
+    slope = parts.closing[:, n]
+    return Solution(cycle, np.array(vectors), 0.0, matrix, slope, speed, last_step, None, None)
