@@ -1,4 +1,4 @@
-"""Switched linear systems: rates that are linear in the states between switchings, told apart from all others.
+"""Switched linear systems: rates that are linear in the states between switchings.
 
 Power converters and other circuits with ideal switches are of this kind. Their flow between switchings
 is known exactly, so their samples need no error control, only the switching times.

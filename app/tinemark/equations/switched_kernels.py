@@ -26,7 +26,8 @@ TERMS = 20
 """Terms of the series: (1/2)^20/20! is far below rounding."""
 
 LEAST_STEPS = 16
-"""Steps of a period at least; a switch that goes over and back within a quarter of a step is not seen."""
+"""Steps of a period when nothing else is said; a switch that goes over and back within a quarter of a step is
+not seen."""
 
 MOST_SWITCHINGS = 400
 """Switchings of a period at most."""
@@ -39,9 +40,9 @@ class SwitchedKernel:
     Attributes
     ----------
     travel
-        ``(states, swept, fixed, varied, bounds, stop, image, jacobian, slope, codes)``: carries the states,
-        shape (n, lanes), over one period into `image`; where `varied`, fills `jacobian` (lanes, n, n)
-        and `slope` (lanes, n). The codes are those of `tinemark.equations.reasons`.
+        ``(states, swept, fixed, least_steps, varied, bounds, stop, image, jacobian, slope, times, codes)``:
+        carries the states, shape (n, lanes), over one period into `image`; where `varied`, fills
+        `jacobian` (lanes, n, n) and `slope` (lanes, n). The codes are those of `tinemark.equations.reasons`.
     """
 
     travel: Callable[..., None]
@@ -71,10 +72,8 @@ class _Template:
             "from tinemark.systems.native import jit\n"
         )
         constants = {
-            "N": self.n,
             "COUNT": self.count,
             "TERMS": TERMS,
-            "LEAST_STEPS": LEAST_STEPS,
             "MOST_SWITCHINGS": MOST_SWITCHINGS,
             "WHOLE": "np.array(" + repr([int(s.whole) for s in self.motion.switches]) + ")",
         }
@@ -133,35 +132,37 @@ def _at_zero(expr: Expr, states: frozenset[str]) -> Expr:
 _TRAVEL = '''
 @jit
 def series(matrix, by_p, x, around, h, varied, terms, turned):
-    """Taylor terms over a step h: of the states, and of N columns in the start and one in the parameter."""
-    for i in range(N):
+    """Taylor terms over a step h: of the states, and of columns in the start and one in the parameter."""
+    n = x.shape[0]
+    for i in range(n):
         terms[0, i] = x[i]
     for k in range(TERMS):
-        for i in range(N):
-            total = matrix[i, N] if k == 0 else 0.0
-            for j in range(N):
+        for i in range(n):
+            total = matrix[i, n] if k == 0 else 0.0
+            for j in range(n):
                 total += matrix[i, j] * terms[k, j]
             terms[k + 1, i] = total * h / (k + 1)
     if varied:
-        for i in range(N):
-            for c in range(N + 1):
+        for i in range(n):
+            for c in range(n + 1):
                 turned[0, i, c] = around[i, c]
         for k in range(TERMS):
-            for i in range(N):
-                for c in range(N + 1):
+            for i in range(n):
+                for c in range(n + 1):
                     total = 0.0
-                    for j in range(N):
+                    for j in range(n):
                         total += matrix[i, j] * turned[k, j, c]
-                    if c == N:
-                        total += by_p[i, N] if k == 0 else 0.0
-                        for j in range(N):
+                    if c == n:
+                        total += by_p[i, n] if k == 0 else 0.0
+                        for j in range(n):
                             total += by_p[i, j] * terms[k, j]
                     turned[k + 1, i, c] = total * h / (k + 1)
 
 
 @jit
 def summed(terms, share, x):
-    for i in range(N):
+    n = x.shape[0]
+    for i in range(n):
         total = terms[TERMS, i]
         for k in range(TERMS - 1, -1, -1):
             total = total * share + terms[k, i]
@@ -172,7 +173,7 @@ def summed(terms, share, x):
 def first_changed(x, t, p, fixed, sides, level):
     """The first switch whose side is no longer what it was, or -1."""
     levels(x, t, p, fixed, sides, level)
-    for k in range(COUNT):
+    for k in range(level.shape[0]):
         if WHOLE[k] == 1:
             if np.floor(level[k]) != sides[k]:
                 return k
@@ -184,7 +185,7 @@ def first_changed(x, t, p, fixed, sides, level):
 @jit
 def settle_sides(x, t, p, fixed, sides, level):
     # Each switch may use the sides of those before it, so they are set one after another.
-    for k in range(COUNT):
+    for k in range(level.shape[0]):
         levels(x, t, p, fixed, sides, level)
         if WHOLE[k] == 1:
             sides[k] = np.floor(level[k])
@@ -193,24 +194,25 @@ def settle_sides(x, t, p, fixed, sides, level):
 
 
 @jit
-def travel(states, swept, fixed, varied, bounds, stop, image, jacobian, slope, codes):
-    x, y = np.empty(N), np.empty(N)
-    around = np.empty((N, N + 1))
-    terms, turned = np.empty((TERMS + 1, N)), np.empty((TERMS + 1, N, N + 1))
-    matrix, by_p = np.empty((N, N + 1)), np.empty((N, N + 1))
-    sides, level, grade = np.empty(COUNT), np.empty(COUNT), np.empty((COUNT, N + 2))
-    before, after, clock = np.empty(N), np.empty(N), np.empty(2)
+def travel(states, swept, fixed, least_steps, varied, bounds, stop, image, jacobian, slope, times, codes):
+    n = states.shape[0]
+    x, y = np.empty(n), np.empty(n)
+    around = np.empty((n, n + 1))
+    terms, turned = np.empty((TERMS + 1, n)), np.empty((TERMS + 1, n, n + 1))
+    matrix, by_p = np.empty((n, n + 1)), np.empty((n, n + 1))
+    sides, level, grade = np.empty(COUNT), np.empty(COUNT), np.empty((COUNT, n + 2))
+    before, after, clock = np.empty(n), np.empty(n), np.empty(2)
     for lane in range(states.shape[1]):
         p = swept[lane]
         period(p, fixed, clock)
         whole = clock[0]
-        for i in range(N):
+        for i in range(n):
             x[i] = states[i, lane]
-            for c in range(N + 1):
+            for c in range(n + 1):
                 around[i, c] = 1.0 if c == i else 0.0
         t = 0.0
         code = 0 if whole > 0.0 and whole < np.inf else 2
-        for k in range(COUNT):
+        for k in range(level.shape[0]):
             sides[k] = 0.0
         settle_sides(x, t, p, fixed, sides, level)
         pieces(p, fixed, sides, matrix, by_p)
@@ -220,12 +222,12 @@ def travel(states, swept, fixed, varied, bounds, stop, image, jacobian, slope, c
                 code = 3
                 break
             size = 0.0
-            for i in range(N):
+            for i in range(n):
                 row = 0.0
-                for j in range(N):
+                for j in range(n):
                     row += abs(matrix[i, j])
                 size = max(size, row)
-            h = whole / LEAST_STEPS
+            h = whole / least_steps
             if size * h > 0.5:
                 h = 0.5 / size
             if not h > 1e-7 * whole:
@@ -261,52 +263,53 @@ def travel(states, swept, fixed, varied, bounds, stop, image, jacobian, slope, c
                 changed, share = -1, 1.0
             summed(terms, share, x)
             if varied:
-                for i in range(N):
-                    for c in range(N + 1):
+                for i in range(n):
+                    for c in range(n + 1):
                         total = turned[TERMS, i, c]
                         for k in range(TERMS - 1, -1, -1):
                             total = total * share + turned[k, i, c]
                         around[i, c] = total
             t = whole if last and changed < 0 else t + share * h
-            for i in range(N):
+            for i in range(n):
                 if not abs(x[i]) < bounds[i]:
                     code = 1
             if changed >= 0 and code == 0:
                 switchings += 1
                 if switchings > MOST_SWITCHINGS:
                     code = 2
-                for i in range(N):
-                    before[i] = matrix[i, N]
-                    for j in range(N):
+                for i in range(n):
+                    before[i] = matrix[i, n]
+                    for j in range(n):
                         before[i] += matrix[i, j] * x[j]
                 level_slopes(x, t, p, fixed, sides, grade)
-                speed = grade[changed, N]
-                for j in range(N):
+                speed = grade[changed, n]
+                for j in range(n):
                     speed += grade[changed, j] * before[j]
                 settle_sides(x, t, p, fixed, sides, level)
                 pieces(p, fixed, sides, matrix, by_p)
                 if varied:
                     if speed == 0.0:
                         code = 4
-                    for i in range(N):
-                        after[i] = matrix[i, N]
-                        for j in range(N):
+                    for i in range(n):
+                        after[i] = matrix[i, n]
+                        for j in range(n):
                             after[i] += matrix[i, j] * x[j]
-                    for c in range(N + 1):
-                        moved = grade[changed, N + 1] if c == N else 0.0
-                        for j in range(N):
+                    for c in range(n + 1):
+                        moved = grade[changed, n + 1] if c == n else 0.0
+                        for j in range(n):
                             moved += grade[changed, j] * around[j, c]
                         later = -moved / speed
-                        for i in range(N):
+                        for i in range(n):
                             around[i, c] += (before[i] - after[i]) * later
         codes[lane] = code
-        for i in range(N):
+        times[lane] = whole
+        for i in range(n):
             image[i, lane] = x[i] if code == 0 else np.nan
         if varied:
-            for i in range(N):
-                rate = matrix[i, N]
-                for j in range(N):
+            for i in range(n):
+                rate = matrix[i, n]
+                for j in range(n):
                     rate += matrix[i, j] * x[j]
                     jacobian[lane, i, j] = around[i, j]
-                slope[lane, i] = around[i, N] + rate * clock[1]
+                slope[lane, i] = around[i, n] + rate * clock[1]
 '''
