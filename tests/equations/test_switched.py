@@ -153,18 +153,3 @@ def test_sliding_is_said_and_does_not_hang() -> None:
     strobed = exact_map(driven("a if x < 1 else b", B.replace("0.5", "-1")))
     assert np.isnan(strobed.step(np.array([[0.5]]), 1.0)).all()
     assert "slides" in strobed.reasons()[0]
-
-
-def test_curvature_is_the_derivative_of_the_jacobian() -> None:
-    """In closed form for b (2 - (1 - x)/a); by other differences for the converter."""
-    plain = exact_map(driven("a if x < 1 else b", B))
-    along, across = plain.curvature(np.array([[0.25]]), 1.5, np.array([[1.0]]))
-    assert along[0, 0, 0] == pytest.approx(0, abs=1e-8)
-    assert across[0, 0] == pytest.approx(-0.5 / 1.5**2, abs=1e-8)
-    strobed = exact_map(read_system_text(BUCK))
-    points, vectors = np.array([[12.05, 0.52]]), np.array([[0.3, 1.0]])
-    in_states, in_parameter = strobed.curvature(points, 26.0, vectors)
-    step = 3e-5
-    ends = [strobed.linearised(points, 26.0 + sign * step).jacobian[0] @ vectors[0] for sign in (1, -1)]
-    assert in_parameter[0] == pytest.approx((ends[0] - ends[1]) / (2 * step), abs=1e-7)
-    assert np.isfinite(in_states).all()

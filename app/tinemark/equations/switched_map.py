@@ -12,14 +12,11 @@ from tinemark.equations.switched_kernels import LEAST_STEPS, MOST_SWITCHINGS, sw
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import TIME, System
 
-DIFFERENCE = 1e-5
-"""Step of the differences behind `curvature`, as a share of a state's length: errors near 1e-9."""
-
 
 class SwitchedReturnMap:
     """The strobe map of a switched linear system along one parameter, the others at their values.
 
-    It has the same methods as `tinemark.equations.return_map.FloatReturnMap`.
+    It is asked as `tinemark.equations.return_map.FloatReturnMap` is.
 
     Parameters
     ----------
@@ -51,30 +48,6 @@ class SwitchedReturnMap:
         """The map and its first derivatives at points of shape (p, n)."""
         image, jacobian, slope, times = self._travel(np.ascontiguousarray(points.T), r, True)
         return Linearised(np.ascontiguousarray(image.T), jacobian, slope, times)
-
-    def curvature(self, points: Floats, r: Floats | float, vectors: Floats) -> tuple[Floats, Floats]:
-        """Derivatives of A v, A the map's Jacobian at each point and v a fixed vector there, by differences.
-
-        Returns
-        -------
-        (p, n, n) and (p, n): the derivative of (A v)_i in state j, and in the swept parameter.
-        """
-        swept = np.broadcast_to(np.asarray(r, dtype=np.float64), (len(points),))
-        scales = self.scales(float(swept[0]))
-
-        def turned(at: Floats, value: Floats) -> Floats:
-            product: Floats = np.einsum("pij,pj->pi", self.linearised(at, value).jacobian, vectors)
-            return product
-
-        in_states = np.empty((len(points), self.size, self.size))
-        for j in range(self.size):
-            shift = np.zeros(self.size)
-            shift[j] = DIFFERENCE * scales[j]
-            ends = turned(points + shift, swept), turned(points - shift, swept)
-            in_states[:, :, j] = (ends[0] - ends[1]) / (2 * shift[j])
-        reach = DIFFERENCE * max(abs(float(swept[0])), 1e-3)
-        ends = turned(points, swept + reach), turned(points, swept - reach)
-        return in_states, (ends[0] - ends[1]) / (2 * reach)
 
     def observed(self, points: Floats, r: Floats | float) -> Floats:
         """Observed quantity at points of shape (p, n)."""

@@ -20,6 +20,7 @@ from tinemark.systems.system import System
 
 if TYPE_CHECKING:
     from tinemark.equations.return_map import FloatReturnMap
+    from tinemark.equations.switched_map import SwitchedReturnMap
 
 Values = NDArray[Any]
 """Real numbers, or complex ones at a Neimark-Sacker point."""
@@ -84,13 +85,13 @@ class FlowMap:
         self.level = level
 
     @cached_property
-    def integrated(self) -> FloatReturnMap:
-        """The integrator; compiled when it is first used."""
-        from tinemark.equations.return_map import FloatReturnMap
+    def integrated(self) -> FloatReturnMap | SwitchedReturnMap:
+        """The integrator, or the exact travel of a switched linear system; compiled when it is first used."""
+        from tinemark.equations.returns import return_map
         from tinemark.equations.tableau import Method
 
         method = Method.EIGHT if self.level.order == 8 else Method.FIVE
-        return FloatReturnMap(self.many.system, self.many.parameter, self.level.tolerance, method)
+        return return_map(self.many.system, self.many.parameter, self.level.tolerance, method)
 
     def at(self, level: Level) -> FlowMap:
         """The same map at another level."""
