@@ -32,8 +32,10 @@ def test_every_onset_of_a_range_as_json(tinemark) -> None:
     read = json.loads(ended.out)
     assert (read["format"], read["version"]) == ("tinemark-onsets", 1)
     assert (read["system"], read["parameter"]) == ("logistic", "r")
-    assert len(read["onsets"]) == len(EXPECTED)
-    for entry, (kind, period, true) in zip(read["onsets"], EXPECTED, strict=True):
+    crises = [entry for entry in read["onsets"] if entry["kind"] == "crisis"]
+    splits = [entry for entry in read["onsets"] if entry["kind"] != "crisis"]
+    assert len(splits) == len(EXPECTED)
+    for entry, (kind, period, true) in zip(splits, EXPECTED, strict=True):
         assert entry["kind"] == kind
         assert entry["period_before" if kind == "flip" else "period_after"] == period
         assert (entry["level"], entry["status"]) == (None, "proved")
@@ -41,6 +43,10 @@ def test_every_onset_of_a_range_as_json(tinemark) -> None:
         assert encloses(entry, true)
         # The logistic map has no other parameter that the onset could move with.
         assert list(entry["sensitivities"]) == []
+    # The end of the whole cascade, of the windows of period 3 and 4, and before each its bands merge: from
+    # two to one, four to two and eight to four in the whole one.
+    assert {entry["status"] for entry in crises} == {"estimated"}
+    assert sorted(entry["period_before"] for entry in crises) == [1, 1, 2, 3, 3, 4, 4, 4]
     assert read["delta"]["class"] == "undecided"
     # Finds and the sentence on completeness went elsewhere.
     assert ended.err.count("(proved)") == len(EXPECTED)
@@ -56,8 +62,9 @@ def test_the_table_lists_them_in_order_and_a_file_holds_the_same(tinemark, tmp_p
     assert lines[1].split()[:4] == ["-", "fold", "new", "3"]
     assert lines[1].split()[4].startswith("3.82842712474619009760337744841")
     assert lines[2].split()[:6] == ["-", "supercritical", "flip", "3", "->", "6"]
+    assert lines[5].split()[:2] == ["-", "crisis"]
     read = json.loads((tmp_path / "out.json").read_text(encoding="utf-8"))
-    assert [entry["kind"] for entry in read["onsets"]] == ["fold", "flip"]
+    assert [entry["kind"] for entry in read["onsets"]] == ["fold", "flip", "crisis", "crisis", "crisis"]
 
 
 def test_the_file_can_be_read_again(tinemark, tmp_path) -> None:

@@ -8,6 +8,7 @@ from typing import Any
 
 import pytest
 from known_onsets import WINDOWS
+from known_splits import crises as known_crises
 from running import finish, own_map, system_of
 
 from tinemark.onsets.engine import survey
@@ -84,7 +85,8 @@ def test_superstable_parameters_are_those_of_the_tables() -> None:
 
 
 def test_every_flip_and_fold_up_to_period_seven_is_found_and_proved(logistic) -> None:
-    assert all(onset.status is Status.PROVED for onset in logistic.onsets)
+    crises = Kind.CRISIS
+    assert all((onset.status is Status.PROVED) is (onset.kind is not crises) for onset in logistic.onsets)
     flips = Counter(onset.period_before for onset in logistic.onsets if onset.kind is Kind.FLIP)
     folds = Counter(onset.period_after for onset in logistic.onsets if onset.kind is Kind.FOLD)
     # Each superstable cycle's stretch ends in one flip; windows that are no doublings open with a fold.
@@ -92,8 +94,35 @@ def test_every_flip_and_fold_up_to_period_seven_is_found_and_proved(logistic) ->
     assert folds == {3: 1, 4: 1, 5: 3, 6: 4, 7: 9}
     values = [onset.value_fraction for onset in logistic.onsets]
     assert values == sorted(values)
-    assert logistic.message.startswith("22 flips and 18 folds of periods up to 7")
+    assert logistic.message.startswith("22 flips, 41 crises and 18 folds of periods up to 7")
     assert "all 21 superstable cycles" in logistic.message
+
+
+def test_every_window_of_a_survey_has_the_crisis_that_ends_it(logistic) -> None:
+    crises = [onset for onset in logistic.onsets if onset.kind is Kind.CRISIS]
+    assert {onset.status for onset in crises} == {Status.ESTIMATED}
+    # A window of period n that opens with a fold ends on a cycle of n points, on which its bands, two for
+    # each, have merged before. The whole one ends at 4; four bands are two before, and so on.
+    folds = Counter({1: 1, 3: 1, 4: 1, 5: 3, 6: 4, 7: 9})
+    assert Counter(onset.period_before for onset in crises) == folds + folds + Counter({2: 1, 4: 1, 6: 1})
+    assert crises[-1].value_fraction == 4
+    for split in known_crises():
+        if split.system.title == system_of("logistic").title:
+            (one,) = [o for o in crises if abs(o.value_fraction - split.value) < Fraction(1, 10**15)]
+            assert one.period_before == split.period
+    assert "crises were looked for in doubles" in logistic.message
+    alone = surveyed(system_of("logistic"), "3.6", "3.9", 3, kinds=frozenset({Kind.CRISIS}))
+    assert [onset.period_before for onset in alone.onsets] == [1, 3, 3]
+    assert alone.message.startswith("3 crises of periods up to 3")
+    # Several turning points: 3 sqrt(3)/2, exact.
+    cubic = surveyed(system_of("cubic"), "2.3", "2.7", 3, kinds=frozenset({Kind.CRISIS})).onsets
+    assert any(abs(o.value_fraction**2 - Fraction(27, 4)) < Fraction(1, 10**15) for o in cubic)
+
+
+def test_no_bands_merge_where_the_critical_orbit_lands_too_late() -> None:
+    """f^4(c) is the fixed point at 3.9277… too, though not from the mirror image: no bands merge there."""
+    found = surveyed(system_of("logistic"), "3.92", "3.935", 2, kinds=frozenset({Kind.CRISIS}))
+    assert found.onsets == ()
 
 
 def test_all_windows_of_the_table_are_enclosed(logistic) -> None:
@@ -135,7 +164,11 @@ def test_kinds_and_digits_that_were_asked_for() -> None:
     assert result.message.startswith("1 fold of periods up to 3")
     both = surveyed(system_of("logistic"), "3.8", "3.83", 3, kinds=frozenset({Kind.FOLD, Kind.CRISIS}))
     assert [onset.kind for onset in both.onsets] == [Kind.FOLD]
-    assert "not looked for in such a survey: crisis" in both.message
+    assert "not looked for" not in both.message
+    wave = surveyed(
+        system_of("logistic"), "3.8", "3.83", 3, kinds=frozenset({Kind.FOLD, Kind.NEIMARK_SACKER})
+    )
+    assert "not looked for in such a survey: Neimark-Sacker" in wave.message
 
 
 def test_a_range_that_cuts_a_window_still_gives_the_onset_inside() -> None:

@@ -31,6 +31,8 @@ from tinemark.onsets.polish import LEAST_SIZE, Lost, Rough, Settled, first_bits
 from tinemark.onsets.results import Kind, Step
 
 MOST_BANDS = 24
+LANDS_WITHIN = 1e-7
+"""Share of the state's scale within which two points that must be one are told as one."""
 COLUMNS = (0.0, -1 / 40, 1 / 40, -1 / 10, 1 / 10, -1 / 4, 1 / 4, -1 / 2, 1 / 2)
 """Where in the view the critical orbit is compared with unstable cycles, as shares of its width."""
 REASON = (
@@ -60,21 +62,27 @@ class Landing:
     extent: float
 
 
-def crises_in_view(cycles: FloatMap, near: float, width: float) -> list[Landing]:
-    """Landings in a view at which bands end, merge or are lost."""
+def crises_in_view(cycles: FloatMap, near: float, width: float, most: int = MOST_BANDS) -> list[Landing]:
+    """Landings in a view at which up to `most` bands end, merge or are lost."""
     found: list[Landing] = []
     for share in COLUMNS:
         r = near + share * width
         turnings = [x for x in cycles.critical_points(r)[:4] if math.isfinite(x)]
         for turning in turnings:
-            for bands in range(1, MOST_BANDS + 1):
+            for bands in range(1, most + 1):
                 landing = _landing(cycles, turning, r, bands, near, width)
-                if landing is None or abs(landing.r - near) > width / 2:
+                if landing is None or abs(landing.r - near) > width * (0.5 + 1e-9):
                     continue
                 # The same value is found with any multiple of its bands; the least one tells.
                 if all(abs(landing.r - other.r) > 1e-9 * width for other in found):
                     found.append(landing)
     return found
+
+
+def landing_near(cycles: FloatMap, turning: float, r: float, bands: int, reach: float) -> Landing | None:
+    """The landing of a turning point's orbit that Newton's method reaches from a parameter value."""
+    found = _turned(cycles, turning, r)
+    return None if found is None else _landing(cycles, found, r, bands, r, reach)
 
 
 def _landing(
@@ -152,6 +160,10 @@ def _checked(cycles: FloatMap, turning: float, x: float, r: float, bands: int) -
         for band in around[:-1]
     ]
     if any(others) or any(more) or not _within(turning, around[-1]):
+        return None
+    # In the last band f^n has one fold, at c: so the other point that it takes to b is b's mirror image.
+    beyond = float(cycles.points(turning, r, bands + 2)[-1])
+    if abs(beyond - float(cycles.points(x, r, 2)[1])) > LANDS_WITHIN * cycles.scale:
         return None
     if any(_overlap(one, other) for place, one in enumerate(around) for other in around[:place]):
         return None

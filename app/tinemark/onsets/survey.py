@@ -92,7 +92,7 @@ def counted(onsets: tuple[Onset, ...]) -> str:
     numbers: dict[str, int] = {}
     for onset in onsets:
         numbers[onset.kind.value] = numbers.get(onset.kind.value, 0) + 1
-    words = [f"{number} {kind}{_plural(kind) if number != 1 else ''}" for kind, number in numbers.items()]
+    words = [f"{number} {_plural(kind) if number != 1 else kind}" for kind, number in numbers.items()]
     if not words:
         return "no onset"
     return words[0] if len(words) == 1 else f"{', '.join(words[:-1])} and {words[-1]}"
@@ -100,5 +100,6 @@ def counted(onsets: tuple[Onset, ...]) -> str:
 
 def _plural(kind: str) -> str:
     if kind == Kind.CRISIS.value:
-        return ""
-    return {"Neimark-Sacker": " points", "transcritical": " points", "pitchfork": "s"}.get(kind, "s")
+        return "crises"
+    ending = " points" if kind in (Kind.NEIMARK_SACKER.value, Kind.TRANSCRITICAL.value) else "s"
+    return kind + ending

@@ -25,10 +25,11 @@ from tinemark.onsets.float_map import FloatMap, float_map
 from tinemark.onsets.jumps import jump_of
 from tinemark.onsets.one_map import OneMap, one_map
 from tinemark.onsets.polish import Lost, Rough
-from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
+from tinemark.onsets.results import Kind, Onset, Status, Step, SurveyFind, SurveyRequest, SurveyResult
 from tinemark.onsets.settling import ONE_STATE_KINDS, settle_any
 from tinemark.onsets.superstable_search import Superstable, SuperstableSearch, superstable_cycles
 from tinemark.onsets.survey import check_kinds, counted, left_out, same, wanted
+from tinemark.onsets.survey_crises import crises_of_windows
 from tinemark.systems.exact import fraction_text
 
 COLUMNS = 480
@@ -41,8 +42,6 @@ BORDER_REACH = 1e-6
 """Share of the range within which a border collision lies of where the search has put it."""
 PATIENCE = 12
 """Branches of one period followed in vain, after which no more of it are."""
-SURVEYED = ONE_STATE_KINDS - {Kind.CRISIS}
-"""Kinds that a survey of a one-state map looks for."""
 SEARCH_SHARE, SCAN_SHARE = 0.4, 0.5
 """Shares of the progress at which the search for superstable cycles and the scan end."""
 
@@ -70,7 +69,7 @@ def survey_one(
     request: SurveyRequest, low: Fraction, high: Fraction
 ) -> Generator[Step | SurveyFind, None, SurveyResult]:
     """Find the onsets of a one-state map between two parameter values; see `engine.survey`."""
-    check_kinds(request, SURVEYED, "maps of one state")
+    check_kinds(request, ONE_STATE_KINDS, "maps of one state")
     one = one_map(request.system, request.parameter)
     cycles = float_map(one)
     screen = Screen(float(low), float(high - low), 0.0, cycles.scale, margin=1e-3)
@@ -82,8 +81,19 @@ def survey_one(
             "following superstable cycles to their onsets", SEARCH_SHARE + 0.05 * number / len(search.found)
         )
     fresh = yield from _scan(cycles, screen, request.max_period, found)
+    if wanted(request, Kind.CRISIS):
+        landings = yield from crises_of_windows(
+            cycles, found.stretches, float(low), float(high), request.max_period
+        )
+        found.candidates += [
+            _Candidate(Kind.CRISIS, landing.bands, landing.x, landing.r, 0.1 * landing.extent)
+            for landing in landings
+        ]
     onsets: list[Onset] = []
-    candidates = [c for c in found.candidates if c.period <= request.max_period and wanted(request, c.kind)]
+    # A crisis counts by its unstable cycle, which where bands merge has half as many points.
+    most = {Kind.CRISIS: 2 * request.max_period}
+    candidates = [c for c in found.candidates if wanted(request, c.kind)]
+    candidates = [c for c in candidates if c.period <= most.get(c.kind, request.max_period)]
     candidates = [c for c in candidates if screen.holds(c.r)]
     candidates.sort(key=lambda candidate: candidate.r)
     for number, candidate in enumerate(candidates):
@@ -93,7 +103,12 @@ def survey_one(
             SCAN_SHARE + (1 - SCAN_SHARE) * number / len(candidates),
         )
         for onset in (yield from _settled(one, candidate, request, found)):
-            if low <= onset.value_fraction <= high and not any(same(onset, other) for other in onsets):
+            if max(onset.period_before, onset.period_after // 2) > request.max_period:
+                continue
+            inside = Fraction(onset.lower) <= high and low <= Fraction(onset.upper)
+            if onset.status is Status.PROVED:
+                inside = low <= onset.value_fraction <= high
+            if inside and not any(same(onset, other) for other in onsets):
                 onsets.append(onset)
                 yield SurveyFind(onset)
     onsets.sort(key=lambda onset: onset.value_fraction)
@@ -245,7 +260,7 @@ def _message(
         f"{counted(onsets)} of periods up to {request.max_period} between {request.parameter} = "
         f"{fraction_text(low, 10)} and {fraction_text(high, 10)}"
     )
-    text += left_out(request, SURVEYED)
+    text += left_out(request, ONE_STATE_KINDS)
     settled = f"orbits settled at {COLUMNS + 2} places of the range"
     if not search.found and search.unknown:
         text += f"; found from {settled}: others may be missing, narrow ones before all"
@@ -259,6 +274,11 @@ def _message(
     else:
         missing = _missing(search)
         text += f"; superstable cycles were found in ball arithmetic but for {missing}, and {settled}"
+    if wanted(request, Kind.CRISIS):
+        text += (
+            "; crises were looked for in doubles where windows end and bands merge: they are estimated, and "
+            "others may be there"
+        )
     lost = _lost(found, onsets, float(low), float(high))
     if lost:
         text += "; " + "; ".join(lost[:3])
