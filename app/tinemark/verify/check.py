@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Iterator
-from fractions import Fraction
 
 from tinemark.verify import blame, border, branch_points, many_states, one_state
 from tinemark.verify.claims import (
@@ -16,7 +15,6 @@ from tinemark.verify.claims import (
     NotCheckable,
     Numbers,
     Outcome,
-    Paper,
     Part,
     Refused,
     Undecided,
@@ -24,7 +22,7 @@ from tinemark.verify.claims import (
 )
 from tinemark.verify.compare import compared, same_digest
 from tinemark.verify.cycles import OneState
-from tinemark.verify.decimals import last_unit, rational
+from tinemark.verify.decimals import rational
 from tinemark.verify.many_cycles import ManyStates
 from tinemark.verify.system import programs
 from tinemark.verify.watching import Watch
@@ -90,7 +88,7 @@ def _check(claim: Claim, watch: Watch) -> None:
         same_digest(claim, paper)
         return
     if paper.kind in BRANCH_POINTS:
-        _branch_point(one, paper, numbers, bits, printed)
+        branch_points.prove(one, paper, numbers, bits, printed)
         same_digest(claim, paper)
         return
     try:
@@ -99,14 +97,6 @@ def _check(claim: Claim, watch: Watch) -> None:
         start = numbers.states[0][0] if printed is None else rational(printed)
         blame.find(one, paper, numbers, bits, start, error.reason)
     same_digest(claim, paper)
-
-
-def _branch_point(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str | None) -> None:
-    shown = None if printed is None else rational(printed)
-    if printed is not None and shown is None:
-        raise Refused(Part.STATE, "the printed cycle point is no number to work with")
-    unit = last_unit(printed) if printed is not None else Fraction(0)
-    branch_points.prove(one, paper, numbers, bits, shown, unit)
 
 
 def _bits(numbers: Numbers, period: int) -> int:

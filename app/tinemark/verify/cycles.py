@@ -15,7 +15,8 @@ from tinemark.verify import intervals as iv
 from tinemark.verify.claims import Undecided
 from tinemark.verify.formula import Program
 from tinemark.verify.intervals import ONE, ZERO, Interval
-from tinemark.verify.series import ONE_STATE, SLOPE, VALUE, Evaluator, Shape
+from tinemark.verify.series import ONE_STATE, SLOPE, SLOPES, VALUE, Evaluator, Shape
+from tinemark.verify.switches import Switch, switches
 from tinemark.verify.watching import Watch, cost_of
 
 STEP_OPERATIONS = 12
@@ -142,6 +143,29 @@ def on_box(
         here = add(image, move, bits)
         check_bounded(here)
     return End(here, u, v, w, z, t, kept, near)
+
+
+def sides_along(one: OneState, x: Interval, r: Interval, period: int, bits: int) -> list[dict[Switch, int]]:
+    """For each point of a cycle the side of every switch that the formula meets there, on the whole box."""
+    if not switches(one.program):
+        return [{}] * period
+    slopes = _evaluator(one, SLOPES, bits, {0: r, SLOPES.place(0, 1): ONE})
+    centre_r = iv.middle(r, bits)
+    values = _evaluator(one, VALUE, bits, {0: centre_r})
+    spread = iv.sub(r, centre_r, bits)
+    here, word = x, []
+    for _ in range(period):
+        one.watch.spend(one.cost(bits))
+        sides: dict[Switch, int] = {}
+        local = slopes({one.state: {0: here, X: ONE}}, sides)
+        word.append(sides)
+        middle = iv.middle(here, bits)
+        at = values({one.state: {0: middle}})[0]
+        move = iv.mul(local.get(X, ZERO), iv.sub(here, middle, bits), bits)
+        drift = iv.mul(local.get(SLOPES.place(0, 1), ZERO), spread, bits)
+        here = iv.add(at, iv.add(move, drift, bits), bits)
+        check_bounded(here)
+    return word
 
 
 def _evaluator(one: OneState, shape: Shape, bits: int, parameter: dict[int, Interval]) -> Evaluator:

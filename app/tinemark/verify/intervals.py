@@ -239,3 +239,9 @@ def common(x: Interval, y: Interval) -> Interval:
     if not is_finite(x) or libmp.mpf_gt(low, high):
         raise Undecided("there is no such onset in the box")
     return low, high
+
+
+def size_power(x: Interval) -> int:
+    """The power of two just above the upper end's size; of zero a very low one."""
+    _, mantissa, exponent, length = x[1]
+    return int(exponent + length) if mantissa else -(10**6)
