@@ -17,7 +17,7 @@ from tinemark.onsets.certificates import digest_of
 from tinemark.onsets.decimals import fixed_text
 from tinemark.onsets.many_engine import refine_many
 from tinemark.onsets.many_map import float_many_map, many_map
-from tinemark.onsets.many_onset import Settled, settle_onset
+from tinemark.onsets.many_polish import Polished, polish
 from tinemark.onsets.many_proof import ManyProof, enclose, prove_many
 from tinemark.onsets.many_shooting import Place
 from tinemark.onsets.many_verification import verify_onset_many
@@ -225,9 +225,10 @@ def test_a_certificate_names_its_own_system() -> None:
         assert tuple(held.parameter(name).value.text for name in "bc") == values
 
 
-def solved(period: int) -> tuple[System, Settled]:
+def solved(period: int) -> tuple[System, Polished]:
     """A flip of Hénon's ladder as the engine solves it."""
     from tinemark.onsets.many_cycles import Cycle, newton
+    from tinemark.onsets.many_onset import rough_start
 
     system = system_of("henon")
     near, width = {2: ("0.92", "0.1"), 4: ("1.0260", "0.02")}[period]
@@ -243,16 +244,16 @@ def solved(period: int) -> tuple[System, Settled]:
 
     cycle = newton(float_map, Cycle(np.array(points), r), scales)
     assert cycle is not None
-    return system, finish(settle_onset(float_map, Kind.FLIP, cycle, 20, scales, 1e-3))
+    start = rough_start(float_map, Kind.FLIP, cycle)
+    return system, finish(polish(float_map.many, Kind.FLIP, start, 180, scales, 1e-3))
 
 
 def test_the_prover_refuses_a_damaged_solution_or_still_encloses_the_onset() -> None:
     """A middle moved by 1e-15 makes the box wider; what comes out must hold the exact 0.9125 all the same."""
-    system, settled = solved(2)
+    system, solution = solved(2)
     many = many_map(system, "a")
     scales = float_many_map(many).scales(0.9)
-    place = settled.solution.place
-    bits = settled.solution.bits
+    place, bits = solution.place, solution.bits
     for shift in (0.0, 1e-15, -1e-12):
         with precision(bits):
             middle = replace(place, r=(place.r + arb(shift)).mid())
@@ -273,12 +274,9 @@ def test_the_prover_refuses_a_damaged_solution_or_still_encloses_the_onset() -> 
 
 def test_the_box_holds_the_solution_at_higher_precision() -> None:
     """All unknowns, polished to twice the digits, lie inside the box of the interval Newton test."""
-    from tinemark.onsets.many_polish import polish
-
-    system, settled = solved(4)
+    system, solution = solved(4)
     many = many_map(system, "a")
     scales = float_many_map(many).scales(1.0)
-    solution = settled.solution
     found = finish(enclose(many, Kind.FLIP, solution.place, scales, solution.bits))
     fine = finish(polish(many, Kind.FLIP, solution.place, 3 * solution.bits, scales, 1e-6)).place
     with precision(3 * solution.bits):

@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Generator, Sequence
 from dataclasses import dataclass, replace
 from enum import Enum
+from itertools import pairwise
 
 import numpy as np
 
@@ -44,6 +45,7 @@ class Crossing(Enum):
     FLIP = "flip"
     FOLD = "fold"
     NEIMARK_SACKER = "Neimark-Sacker"
+    BRANCHES = "crossing of branches"
 
 
 @dataclass(frozen=True)
@@ -59,6 +61,11 @@ class BranchPoint:
     def flip_test(self) -> float:
         """Product of (1 + multiplier): changes sign where one of them passes -1."""
         return float(np.real(np.prod([1 + value for value in self.multipliers])))
+
+    @property
+    def fold_test(self) -> float:
+        """Product of (multiplier - 1): changes sign where one of them passes 1."""
+        return float(np.real(np.prod([value - 1 for value in self.multipliers])))
 
     @property
     def circle_test(self) -> float:
@@ -92,6 +99,7 @@ class Event:
     before: BranchPoint
     after: BranchPoint
     joined_from: BranchPoint | None = None
+    near: Cycle | None = None
 
     @property
     def share(self) -> float:
@@ -102,7 +110,7 @@ class Event:
     @property
     def rough(self) -> Cycle:
         """A cycle near the crossing."""
-        return between(self.before.cycle, self.after.cycle, self.share)
+        return self.near or between(self.before.cycle, self.after.cycle, self.share)
 
 
 @dataclass(frozen=True)
@@ -178,6 +186,7 @@ def follow(
             break
         events += _events(here, following)
         trace.append(following)
+        events += _left_at_crossing(trace[-3:])
         here = following
         if len(trace) % 8 == 0:
             yield Step(f"following the branch of period {here.cycle.period}")
@@ -235,11 +244,34 @@ def _events(a: BranchPoint, b: BranchPoint) -> list[Event]:
     found = []
     if _changes_sign(a.move_r, b.move_r):
         found.append(Event(Crossing.FOLD, a, b))
+    elif _changes_sign(a.fold_test, b.fold_test):
+        # A multiplier passes 1 while the branch goes straight on: another one crosses it there.
+        found.append(Event(Crossing.BRANCHES, a, b))
     if _changes_sign(a.flip_test, b.flip_test):
         found.append(Event(Crossing.FLIP, a, b))
     if len(a.multipliers) > 1 and _changes_sign(a.circle_test, b.circle_test) and _pair_crosses(a, b):
         found.append(Event(Crossing.NEIMARK_SACKER, a, b))
     return found
+
+
+def _left_at_crossing(last: list[BranchPoint]) -> list[Event]:
+    """A crossing of branches at which the branch was left for the other one.
+
+    The multiplier then seems to turn back just before it reaches 1.
+    """
+    if len(last) < 3:
+        return []
+    before, there, after = (point.fold_test for point in last)
+    sign = 1 if before > 0 else -1
+    if not (sign * before > sign * there >= 0 and sign * after > sign * there):
+        return []
+    steps = [
+        np.hypot(np.max(np.abs(b.cycle.points - a.cycle.points)), b.cycle.r - a.cycle.r)
+        for a, b in pairwise(last)
+    ]
+    if there / (before - there) * steps[0] > 1.5 * steps[1]:
+        return []
+    return [Event(Crossing.BRANCHES, last[0], last[2], near=last[1].cycle)]
 
 
 def _changes_sign(before: float, after: float) -> bool:
@@ -300,6 +332,8 @@ def _pair_crosses(a: BranchPoint, b: BranchPoint) -> bool:
 def _test(kind: Crossing, point: BranchPoint) -> float:
     if kind is Crossing.FLIP:
         return point.flip_test
+    if kind is Crossing.BRANCHES:
+        return point.fold_test
     return point.move_r if kind is Crossing.FOLD else point.circle_test
 
 

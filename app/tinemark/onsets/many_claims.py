@@ -76,7 +76,7 @@ def claims_of(
         back = return_of(carried, frames)
         multiplier = acb(-1 if kind is Kind.FLIP else 1) if box.angle is None else acb(*box.angle)
         q = critical_vector(box, 0)
-        left = _left_vector(back.monodromy, multiplier, q)
+        left = left_vector(back.monodromy, multiplier, q)
         others = _others(back.monodromy, multiplier, q, left, kind)
         size = sum(
             (abs(value.mid()) / float(scale)) ** 2 for value, scale in zip(entries(q), scales, strict=True)
@@ -157,7 +157,7 @@ def _conjugate(matrix: Any) -> Any:
     return acb_mat(rows, columns, values)
 
 
-def _left_vector(monodromy: Any, multiplier: Any, q: Any) -> Any:
+def left_vector(monodromy: Any, multiplier: Any, q: Any) -> Any:
     """The left critical vector p with p q = 1, as a row.
 
     Bordering makes the equations regular: with M - m exactly singular the slack they have is exactly zero.

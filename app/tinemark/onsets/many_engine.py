@@ -33,7 +33,9 @@ from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
 
 __all__ = ["ladder_many", "refine_many"]
 
-FOUND = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
+CROSSED = frozenset({Kind.TRANSCRITICAL, Kind.PITCHFORK})
+"""Kinds of crossings of branches."""
+FOUND = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER}) | CROSSED
 """Kinds that are looked for."""
 MOST_BRANCHES = 6
 NARROWEST = 1e-8
@@ -77,7 +79,7 @@ class _Candidate:
 
 
 def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
-    """The flips, folds and Neimark-Sacker onsets nearest to a click.
+    """The onsets nearest to a click.
 
     Orbits are settled around the click, the cycles they lead to are followed through the view by
     continuation, their unstable parts and folds included, and the crossings nearest to the click on the
@@ -136,7 +138,10 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
 def _may_be(crossing: Crossing, wanted: frozenset[Kind]) -> bool:
     """Whether a crossing can turn out to be of a kind that is wanted."""
     if crossing is Crossing.FOLD:
-        return bool(wanted & {Kind.FOLD, Kind.FLIP})  # a branch of doubled cycles turns round at its flip
+        # A branch of doubled cycles turns round at its flip, a pair of mirror images at its pitchfork.
+        return bool(wanted & {Kind.FOLD, Kind.FLIP, *CROSSED})
+    if crossing is Crossing.BRANCHES:
+        return bool(wanted & CROSSED)
     return Kind(crossing.value) in wanted
 
 
@@ -191,6 +196,8 @@ def _candidates(
         for event in (*events, *more):
             share = _stable_stretch(onward, backward, event) / window.width
             rough = event.rough
+            if event.kind is Crossing.BRANCHES and _exchanges_stability(event):
+                share = max(share, LEAST_VISIBLE)
             found.append(_Candidate(event.kind, rough, event, place.distance(float_map, rough), share))
         yield Step("looking at the crossings found")
     return sorted(found, key=lambda candidate: candidate.rank)
@@ -212,6 +219,12 @@ def _stable_stretch(onward: list[BranchPoint], backward: list[BranchPoint], even
             place += step
         lengths.append(abs(end - at))
     return max(lengths)
+
+
+def _exchanges_stability(event: Event) -> bool:
+    """Whether of the branches that cross there one is stable on either side, followed or not."""
+    values = sorted(event.before.multipliers, key=lambda value: abs(value - 1))
+    return all(abs(value) <= 1 + NEUTRAL for value in values[1:])
 
 
 def _is_on(float_map: FloatManyMap, cycle: Cycle, traces: list[list[BranchPoint]], scales: Floats) -> bool:
@@ -309,6 +322,8 @@ def _onset_at(
         if candidate.kind is Crossing.NEIMARK_SACKER:
             rough = _turned(float_map, _closed_in(float_map, candidate), place)
             return (yield from settle_onset(float_map, Kind.NEIMARK_SACKER, rough, digits, scales, reach))
+        if candidate.kind is Crossing.BRANCHES:
+            return (yield from settle_onset(float_map, Kind.PITCHFORK, rough, digits, scales, reach))
         half = rough.period // 2
         if rough.period % 2 == 0:
             # A branch of doubled cycles turns round where it joins the branch it split from: a flip.
@@ -322,7 +337,11 @@ def _onset_at(
             )
             if spread <= 2 * apart:
                 return (yield from settle_onset(float_map, Kind.FLIP, mean, digits, scales, reach))
-        return (yield from settle_onset(float_map, Kind.FOLD, rough, digits, scales, reach))
+        try:
+            return (yield from settle_onset(float_map, Kind.FOLD, rough, digits, scales, reach))
+        except NotFound:
+            # Where it turns round on another branch, no fold does it: it crosses that branch.
+            return (yield from settle_onset(float_map, Kind.PITCHFORK, rough, digits, scales, reach))
     except (NotFound, SwitchingTouched):
         return None
 
@@ -348,6 +367,8 @@ def _words(onset: Onset) -> str:
         return f"flip from period {onset.period_before} to {onset.period_after}"
     if onset.kind is Kind.NEIMARK_SACKER:
         return f"Neimark-Sacker onset of period {onset.period_before}"
+    if onset.kind in CROSSED:
+        return f"{onset.kind.value} of period {onset.period_before}"
     return f"fold that opens period {onset.period_after}"
 
 
@@ -367,8 +388,8 @@ def _message(
             "but no regular Neimark-Sacker onset could be solved for there"
         )
     if not sentences:
-        kinds = [kind.value for kind in (Kind.FLIP, Kind.FOLD) if kind in wanted]
-        kinds += ["Neimark-Sacker onset"] * (Kind.NEIMARK_SACKER in wanted)
+        names = {Kind.NEIMARK_SACKER: "Neimark-Sacker onset", Kind.TRANSCRITICAL: "transcritical point"}
+        kinds = [names.get(kind, kind.value) for kind in Kind if kind in wanted & FOUND]
         what = " or ".join(filter(None, [", ".join(kinds[:-1]), kinds[-1]]))
         return f"no {what} of the cycles around the click lies within reach"
     text = "; ".join(sentences)

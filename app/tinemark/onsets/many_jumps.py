@@ -12,9 +12,9 @@ from dataclasses import replace
 
 import numpy as np
 
+from tinemark.onsets.cycle_map import CycleMap, Floats
 from tinemark.onsets.many_branch import Crossing, Window, branch_point, follow
 from tinemark.onsets.many_cycles import Cycle, newton, orbit_ends, returns
-from tinemark.onsets.many_map import FloatManyMap, Floats
 from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.many_search import TOLERANCES
@@ -36,7 +36,7 @@ LONGEST_SEEN = 64
 
 
 def with_jump(
-    float_map: FloatManyMap, settled: Settled, digits: int, scales: Floats, reach: float
+    float_map: CycleMap, settled: Settled, digits: int, scales: Floats, reach: float
 ) -> Generator[Step, None, Onset]:
     """An onset with what follows in words where it is a subcritical flip; any other as it is.
 
@@ -63,7 +63,7 @@ def _past(settled: Settled) -> int:
 
 
 def _bounding_fold(
-    float_map: FloatManyMap, settled: Settled, digits: int, scales: Floats, far: float
+    float_map: CycleMap, settled: Settled, digits: int, scales: Floats, far: float
 ) -> Generator[Step, None, Onset | None]:
     """The fold at which the unstable doubled branch turns round, or None where it was not found."""
     origin = settled.cycle
@@ -93,9 +93,7 @@ def _bounding_fold(
     return None
 
 
-def _landing(
-    float_map: FloatManyMap, settled: Settled, scales: Floats, far: float
-) -> Generator[Step, None, str]:
+def _landing(float_map: CycleMap, settled: Settled, scales: Floats, far: float) -> Generator[Step, None, str]:
     """Where an orbit let go beside the cycle ends, past the onset."""
     vector = settled.vector[0] / np.max(np.abs(settled.vector[0]) / scales)
     states = (settled.cycle.points[0] + PUSH * vector)[:, None]

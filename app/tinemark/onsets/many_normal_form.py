@@ -85,11 +85,14 @@ def findings(
     near = [value for value in others if abs(value - target) < 1e-3]
     doubled = bool(near) or abs(cosine) < DEFECTIVE
     is_simple = not doubled and all(abs(abs(value) - 1) > ON_THE_CIRCLE for value in others)
-    if doubled:
-        return Findings(critical, others, False, True, 0.0, None, _undecided(kind))
-    turn, turn_r = _floats(found.turn), np.array([float(value) for value in found.turn_r])
     slope = np.array([float(value) for value in found.slope])
     size = float(np.linalg.norm(q / scales))
+    if doubled:
+        # A fold that the parameter does not push is none, whether its multiplier is a simple one or not.
+        push = abs(float((left * scales) @ (slope / scales))) / float(np.linalg.norm(left * scales))
+        flat = kind is Kind.FOLD and push * reach < FLAT
+        return Findings(critical, others, False, True, 0.0, None, _undecided(kind), flat)
+    turn, turn_r = _floats(found.turn), np.array([float(value) for value in found.turn_r])
     p = left / float(left @ q)
     if kind is Kind.FOLD:
         bend = float(p @ turn @ q) / 2 / size

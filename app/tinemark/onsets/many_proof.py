@@ -55,7 +55,7 @@ class ManyProof:
     evidence
         (claim, finding) pairs in words.
     conservative
-        Whether both multipliers are -1 because the map preserves areas.
+        Whether both multipliers are critical because the map preserves areas.
     """
 
     parameter: Interval
@@ -111,21 +111,19 @@ def prove_many(
     """
     found = yield from enclose(many, kind, middle, scales, bits)
     with precision(bits):
-        half = f"half-width {rounded_down(found.half_r)} in the parameter"
-        test = f"interval Newton test on {middle.period} points with their critical vectors, {half}"
-        evidence = [("one onset in the box", test)]
-        evidence += _least_period(found.box, scales)
+        evidence = [("one onset in the box", newton_words(found.half_r, middle.period))]
+        evidence += least_period_words(found.box.points, scales)
     parts = found.box, found.frames, found.local, scales, bits
-    conservative = kind is Kind.FLIP and preserves_areas(many, middle.period)
+    conservative = kind is not Kind.NEIMARK_SACKER and preserves_areas(many, middle.period)
     if conservative:
-        claims = yield from conservative_claims(many, *parts)
+        claims = yield from conservative_claims(many, kind, *parts)
     else:
         claims = yield from claims_of(many, kind, *parts)
     with precision(bits):
         return ManyProof(
-            _interval(found.r),
-            tuple(_interval(value) for value in found.first),
-            tuple(_interval(value) for value in (found.box.r, *found.box.points[0])),
+            interval_of(found.r),
+            tuple(interval_of(value) for value in found.first),
+            tuple(interval_of(value) for value in (found.box.r, *found.box.points[0])),
             claims,
             (*evidence, *claims.evidence),
             conservative,
@@ -284,13 +282,26 @@ def _inside(image: Shift, box: Shift) -> bool:
     return all(part.abs_upper() < whole.rad() for part, whole in pairs)
 
 
-def _least_period(box: Place, scales: Floats) -> list[tuple[str, str]]:
-    period = box.period
+def newton_words(half_r: Any, period: int) -> str:
+    """What the interval Newton test was made on."""
+    half = f"half-width {rounded_down(half_r)} in the parameter"
+    return f"interval Newton test on {period} points with their critical vectors, {half}"
+
+
+def least_period_words(points: Sequence[Sequence[Any]], scales: Floats) -> list[tuple[str, str]]:
+    """The claim that a cycle of so many enclosed points has no smaller period, shown.
+
+    Raises
+    ------
+    NotProved
+        The cycle may close earlier.
+    """
+    period = len(points)
     gaps = []
     for steps in sorted(period // prime for prime in prime_factors(period)):
         apart = [
             ((a - b) / float(scale)).abs_lower()
-            for a, b, scale in zip(box.points[steps], box.points[0], scales, strict=True)
+            for a, b, scale in zip(points[steps], points[0], scales, strict=True)
         ]
         clear = [gap for gap in apart if gap > 0]
         if not clear:
@@ -304,6 +315,7 @@ def _least_period(box: Place, scales: Floats) -> list[tuple[str, str]]:
     return [(f"least period exactly {period}", finding)]
 
 
-def _interval(ball: Any) -> Interval:
+def interval_of(ball: Any) -> Interval:
+    """Both ends of a ball."""
     middle, half = fraction_of(ball.mid()), fraction_of(ball.rad())
     return middle - half, middle + half

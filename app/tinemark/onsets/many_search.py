@@ -22,10 +22,15 @@ from tinemark.onsets.results import Step
 OFFSETS = (0.0, 0.004, -0.004, 0.012, -0.012, 0.03, -0.03, 0.07, -0.07, 0.15, -0.15, 0.3, -0.3, 0.5, -0.5)
 """Where orbits are settled, in widths of the view from the click."""
 SCATTERED_STARTS = 3
+STARTS_THERE = 4
+THERE = 0.03
+"""Farther on the screen than this a cycle is not the one that was clicked."""
 MANY_STARTS = 60
 SCATTERED_FOR_NEWTON = 24
 FAR_FROM_STABLE = 4.0
 """Cycles with a multiplier larger than this are looked at last."""
+PASSES = 1e-8
+"""An orbit that ends closer than this to a cycle has settled on it."""
 ATTRACTING = 1e-3
 """Multipliers closer to 1 than this do not show that orbits settle on a cycle."""
 TRANSIENT = 1500
@@ -59,19 +64,23 @@ class Place:
 def cycles_around(float_map: CycleMap, place: Place, scales: Floats) -> Generator[Step, None, list[Cycle]]:
     """Distinct cycles at parameters around a click, nearest on the screen first."""
     rs = place.r + place.width * np.array(OFFSETS)
-    history, lanes = yield from _settled(float_map, _starts(float_map), rs)
+    starts = np.concatenate((_starts(float_map), _starts_there(float_map, place)), axis=1)
+    history, lanes = yield from _settled(float_map, starts, rs)
     if not len(lanes):
         # The basin is small: the usual starts escape, so many are tried at fewer places.
         history, lanes = yield from _settled(float_map, _starts(float_map, MANY_STARTS), rs[:7])
     found: list[Cycle] = []
     for place_, periods in enumerate(returns(history, scales, TOLERANCES)):
+        r = float(lanes[place_])
+        if any(other.r == r and _passes(other, history[-1, :, place_], scales) for other in found):
+            continue
         for period in periods:
-            _keep(
-                found,
-                _polished(float_map, history[-period:, :, place_], float(lanes[place_]), scales),
-                scales,
-            )
+            _keep(found, _polished(float_map, history[-period:, :, place_], r, scales), scales)
     yield Step("settling orbits around the click")
+    # Of several behaviours side by side orbits may settle on another one than was clicked.
+    for cycle in _newton_from(float_map, _starts_there(float_map, place), place.r, scales, (1, 2)):
+        if place.distance(float_map, cycle) < THERE:
+            _keep(found, cycle, scales)
     if not found:
         for guess, r in _close_returns(history, lanes, scales):
             _keep(found, _polished(float_map, guess, r, scales), scales)
@@ -87,6 +96,10 @@ def cycles_around(float_map: CycleMap, place: Place, scales: Floats) -> Generato
             _keep(found, parent, scales)
     yield Step("ordering the cycles found")
     return sorted(found, key=lambda cycle: _order(float_map, place, cycle))
+
+
+def _passes(cycle: Cycle, state: Floats, scales: Floats) -> bool:
+    return bool(np.min(np.max(np.abs(cycle.points - state) / scales, axis=1)) < PASSES)
 
 
 def _attracts(float_map: CycleMap, cycle: Cycle) -> bool:
@@ -125,7 +138,13 @@ def scattered_cycles(
     float_map: CycleMap, r: float, scales: Floats, periods: Sequence[int] = (1, 2, 3, 4)
 ) -> Iterator[Cycle]:
     """Cycles that Newton's method finds from scattered starts, whether orbits settle on them or not."""
-    for start in _starts(float_map, SCATTERED_FOR_NEWTON).T:
+    yield from _newton_from(float_map, _starts(float_map, SCATTERED_FOR_NEWTON), r, scales, periods)
+
+
+def _newton_from(
+    float_map: CycleMap, starts: Floats, r: float, scales: Floats, periods: Sequence[int]
+) -> Iterator[Cycle]:
+    for start in starts.T:
         for period in periods:
             points = np.empty((period, float_map.size))
             state = start[:, None]
@@ -152,6 +171,16 @@ def _starts(float_map: CycleMap, scattered_starts: int = SCATTERED_STARTS) -> Fl
         ]
         columns.append(np.array(scattered))
     return np.array(columns).T
+
+
+def _starts_there(float_map: CycleMap, place: Place) -> Floats:
+    """Starts whose observed state is where the click fell: of several behaviours, that one was meant."""
+    many = float_map.many
+    if place.observed is None or many.system.observe not in many.states or not many.system.is_map:
+        return np.empty((float_map.size, 0))
+    starts = _starts(float_map, STARTS_THERE)[:, 1:]
+    starts[many.states.index(many.system.observe)] = place.observed
+    return starts
 
 
 def _polished(float_map: CycleMap, points: Floats, r: float, scales: Floats) -> Cycle | None:

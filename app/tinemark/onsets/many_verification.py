@@ -7,20 +7,31 @@ from fractions import Fraction
 from typing import Any
 
 import numpy as np
+from flint import arb
 
 from tinemark.onsets.ball_orbits import ball_of, precision
 from tinemark.onsets.decimals import decimal_places
-from tinemark.onsets.many_cycles import Cycle
-from tinemark.onsets.many_map import BallEvaluators, FloatManyMap, ball_evaluators, float_many_map, many_map
-from tinemark.onsets.many_onset import periods, rough_start
+from tinemark.onsets.many_branch_points import identity_of, start_of
+from tinemark.onsets.many_cycles import Cycle, condensed
+from tinemark.onsets.many_map import (
+    BallEvaluators,
+    FloatManyMap,
+    Floats,
+    ball_evaluators,
+    float_many_map,
+    many_map,
+)
+from tinemark.onsets.many_onset import rough_start
 from tinemark.onsets.many_polish import NotFound, polish, working_bits
 from tinemark.onsets.many_proof import ManyProof, prove_many
 from tinemark.onsets.many_shooting import in_turn
+from tinemark.onsets.many_texts import periods
 from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Onset, Step
 from tinemark.systems.system import System
 
-KINDS = (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER)
+CROSSED = (Kind.TRANSCRITICAL, Kind.PITCHFORK)
+KINDS = (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, *CROSSED)
 STATE_UNITS = 50
 """How far a state may lie from the printed one, in units of its last printed digit."""
 REACH = 1e-6
@@ -99,12 +110,35 @@ def _proof(
         raise NotProved("the printed point leaves the domain of the formula", refuted=True)
     scales = float_map.scales(cycle.r)
     reach = REACH * max(abs(cycle.r), 1e-3)
+    if kind in CROSSED:
+        return (yield from _crossing(float_map, kind, cycle, scales, reach, bits))
     try:
         start = rough_start(float_map, kind, cycle)
         rough = yield from polish(many, kind, start, bits, scales, reach)
     except NotFound as error:
         raise NotProved(f"no {kind.value} of period {period} is there: {error}", refuted=True) from error
     return (yield from prove_many(many, kind, rough.place, scales, bits))
+
+
+def _crossing(
+    float_map: FloatManyMap, kind: Kind, cycle: Cycle, scales: Floats, reach: float, bits: int
+) -> Generator[Step, None, ManyProof]:
+    """Prove a crossing of branches at a printed cycle, by the identity that makes them meet."""
+    crossed = identity_of(float_map, cycle.points, cycle.r, scales)
+    if crossed is None:
+        raise NotProved("no exact identity of the formulas makes two branches meet there", refuted=True)
+    if crossed.kind is not kind:
+        raise NotProved(f"what happens there is no {kind.value}", refuted=True)
+    points = [[arb(float(value)) for value in point] for point in cycle.points]
+    matrix = condensed(float_map, cycle.points, cycle.r).monodromy
+    vector = np.linalg.svd(matrix - np.eye(len(matrix)))[2][-1]
+    start = start_of(crossed, points, vector.tolist(), arb(cycle.r), bits)
+    try:
+        rough = yield from polish(crossed.seen, Kind.FLIP, start, bits, scales, reach)
+    except NotFound as error:
+        period = len(points)
+        raise NotProved(f"no {kind.value} of period {period} is there: {error}", refuted=True) from error
+    return (yield from crossed.prove(float_map.many, rough.place, scales, bits))
 
 
 def _last_unit(text: str, digits: int) -> Fraction:

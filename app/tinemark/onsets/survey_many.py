@@ -17,8 +17,8 @@ from tinemark.onsets.branch_survey import Survey, follow_all, kind_of
 from tinemark.onsets.continuation import Pace
 from tinemark.onsets.cycle_families import ManyFamily
 from tinemark.onsets.many_cycles import Cycle
-from tinemark.onsets.many_map import float_many_map, many_map
-from tinemark.onsets.many_onset import settle_onset
+from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
+from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
 from tinemark.onsets.survey import check_kinds, counted, left_out, same, wanted
@@ -33,7 +33,7 @@ FAR_FROM_STABLE = 30.0
 """Past multipliers of this size a branch is left alone: where it is stable again orbits settle on it."""
 FOLLOWED_SHARE = 0.5
 """Share of the progress at which all branches are followed."""
-KINDS = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
+KINDS = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, Kind.TRANSCRITICAL, Kind.PITCHFORK})
 """Kinds that a survey of a map of several states looks for."""
 
 
@@ -75,9 +75,7 @@ def survey_many(
         yield Step(f"{text} ({number + 1} of {len(candidates)})", share)
         rough = Cycle(candidate.place.points, candidate.place.r)
         try:
-            settled = yield from settle_onset(
-                float_map, candidate.kind, rough, request.digits, scales, candidate.reach
-            )
+            settled = yield from _settled(float_map, candidate, rough, request.digits, scales)
         except (NotFound, SwitchingTouched) as error:
             lost.append(f"a {candidate.kind.value} near {rough.r:.9g} could not be solved for ({error})")
             continue
@@ -88,6 +86,18 @@ def survey_many(
         yield SurveyFind(onset)
     onsets.sort(key=lambda onset: onset.value_fraction)
     return SurveyResult(tuple(onsets), _message(request, survey, tuple(onsets), lost))
+
+
+def _settled(
+    float_map: FloatManyMap, candidate: _Candidate, rough: Cycle, digits: int, scales: Floats
+) -> Generator[Step, None, Settled]:
+    try:
+        return (yield from settle_onset(float_map, candidate.kind, rough, digits, scales, candidate.reach))
+    except NotFound:
+        if candidate.kind is not Kind.FOLD:
+            raise
+        # A pair of mirror images that turns round at the cycle it branches off from.
+        return (yield from settle_onset(float_map, Kind.PITCHFORK, rough, digits, scales, candidate.reach))
 
 
 def _candidates(survey: Survey) -> list[_Candidate]:
