@@ -5,6 +5,7 @@ from __future__ import annotations
 from fractions import Fraction
 
 import numpy as np
+from numpy.typing import NDArray
 
 from tinemark.density.request import View
 from tinemark.document.views import tidy
@@ -42,7 +43,13 @@ def parameter_range(system: System) -> tuple[Fraction, Fraction]:
 
 
 def _reached(system: System, left: Fraction, right: Fraction) -> tuple[Fraction, Fraction]:
-    """Extent of the observed quantity on settled orbits across the sweep, escaped ones left out."""
+    """Extent of the observed quantity on settled orbits across the sweep, escaped ones left out.
+
+    Of equations it is the extent of one orbit in the middle of the sweep, between samples as well: many
+    settled ones would keep the window waiting.
+    """
+    if not system.is_map:
+        return _extent(_pilot_values(system, float((left + right) / 2)))
     step = plain_function(system.expressions, system.names)
     observe = plain_function((system.observe_expression,), system.names)
     parameters: list[Value] = [
@@ -63,7 +70,22 @@ def _reached(system: System, left: Fraction, right: Fraction) -> tuple[Fraction,
         states = [np.broadcast_to(value, _COLUMNS) for value in new]
         if number >= _TRANSIENT:
             seen.append(np.broadcast_to(observe([*states, *parameters])[0], _COLUMNS))
-    values = np.stack(seen)[:, ~escaped]
+    return _extent(np.stack(seen)[:, ~escaped])
+
+
+def _pilot_values(system: System, value: float) -> NDArray[np.float64]:
+    from tinemark.equations.pilot import pilot_orbit
+
+    orbit = pilot_orbit(system, system.diagram_parameter, value)
+    constants = [value if p.name == system.diagram_parameter else float(p.value) for p in system.parameters]
+    observe = plain_function((system.observe_expression,), system.names)
+    values = np.empty(len(orbit))
+    values[:] = observe([*orbit.T, *constants])[0]
+    # The way from the start to where the orbit settles belongs to no diagram.
+    return values[len(values) // 2 :]
+
+
+def _extent(values: NDArray[np.float64]) -> tuple[Fraction, Fraction]:
     values = values[np.isfinite(values)]
     if not values.size:
         return Fraction(-1), Fraction(1)

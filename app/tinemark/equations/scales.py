@@ -5,13 +5,11 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
 
 Floats = NDArray[np.float64]
 
 ESCAPE_FACTOR = 1e15
-_PILOT_STEPS = 400
 
 
 def state_scales(system: System, parameter: str, value: float) -> Floats:
@@ -34,26 +32,10 @@ def state_scales(system: System, parameter: str, value: float) -> Floats:
 
 
 def _wandered(system: System, parameter: str, value: float, start: Floats) -> Floats:
-    from scipy.integrate import RK45
+    from tinemark.equations.pilot import pilot_orbit
 
-    constants = [value if p.name == parameter else float(p.value) for p in system.parameters]
-    names = (*system.state_names, *system.parameter_names, "t")
-    rates = plain_function(system.expressions, names)
-
-    def rate(time: float, states: Floats) -> list[float]:
-        return [float(entry) for entry in rates([*states, *constants, time])]
-
-    low, high = start.copy(), start.copy()
-    with np.errstate(all="ignore"):
-        if np.isfinite(rate(0.0, start)).all():
-            # Without a floor the size of each state is found however small its unit makes it.
-            solver = RK45(rate, 0.0, start, np.inf, rtol=1e-3, atol=1e-30)
-            for _ in range(_PILOT_STEPS):
-                if solver.status != "running" or not (np.abs(solver.y) < ESCAPE_FACTOR).all():
-                    break
-                solver.step()
-                low, high = np.minimum(low, solver.y), np.maximum(high, solver.y)
-    spread = high - low
+    orbit = pilot_orbit(system, parameter, value)
+    spread: Floats = orbit.max(axis=0) - orbit.min(axis=0)
     return np.where(spread > 0, spread, np.where(start != 0, np.abs(start), 1.0))
 
 

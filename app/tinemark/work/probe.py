@@ -18,12 +18,14 @@ from tinemark.work.newest import NewestWins
 
 CURVE_POINTS = 801
 MAX_STEPS = 100_000
-_STOP_EVERY = 256
+SAMPLE_TOLERANCE = 1e-9
+"""Error of an integration step of a probed orbit, as a share of a state's size: far below what is drawn."""
+_STOP_EVERY = 64
 
 
 @dataclass(frozen=True)
 class ProbeRequest:
-    """An orbit of `steps` steps from the states' starts, at one value of one parameter."""
+    """An orbit of `steps` steps, or samples, from the states' starts, at one value of one parameter."""
 
     system: System
     parameter: str
@@ -100,11 +102,11 @@ def request_probe(
         float(value) if name == parameter else float(system.parameter(name).value)
         for name in system.parameter_names
     ]
-    step = plain_function(system.expressions, system.names)
+    step = _stepper(system, parameter, float(value), fixed)
     states = np.full((steps, len(system.states)), np.nan)
     point = [float(state.start) for state in system.states]
     for row in range(steps):
-        point = [float(x) for x in step([*point, *fixed])]
+        point = step(point)
         if not np.isfinite(point).all() or (stop is not None and row % _STOP_EVERY == 0 and stop.is_set()):
             break
         states[row] = point
@@ -113,8 +115,21 @@ def request_probe(
     observed[:] = observe([*states.T, *fixed])[0]
     # A constant formula is defined everywhere, an escaped orbit is not.
     observed[np.isnan(states).any(axis=1)] = np.nan
-    curve = _curve(system, states[:, 0], fixed) if len(system.states) == 1 else None
+    curve = _curve(system, states[:, 0], fixed) if system.is_map and len(system.states) == 1 else None
     return ProbeOrbit(value, states, observed, curve)
+
+
+def _stepper(
+    system: System, parameter: str, value: float, fixed: list[float]
+) -> Callable[[list[float]], list[float]]:
+    """The map itself, or the way from one sample of equations to the next."""
+    if system.is_map:
+        step = plain_function(system.expressions, system.names)
+        return lambda point: [float(x) for x in step([*point, *fixed])]
+    from tinemark.equations.returns import return_map
+
+    sampled = return_map(system, parameter, SAMPLE_TOLERANCE)
+    return lambda point: [float(x) for x in sampled.step(np.array(point)[:, None], value)[:, 0]]
 
 
 def _curve(
