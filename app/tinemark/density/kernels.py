@@ -3,6 +3,10 @@
 A kernel moves a block of `LANES` columns side by side, one column a lane, so that the step of the map
 becomes vector code. The cells it hits are noted in a small buffer and counted afterwards, four
 columns at a time: counting on the spot would wait for one column's memory again and again.
+
+The inner loop comes in two forms: on processors with wide registers `lane_block` writes it, with the
+counting of one buffer between the steps of the next; elsewhere, and where the compiler is off, it is
+plain code whose loops over lanes the compiler turns into vector code.
 """
 
 from __future__ import annotations
@@ -11,26 +15,25 @@ import textwrap
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cache, lru_cache
+from pathlib import Path
 from typing import Any
 
+from tinemark.density import lane_block
+from tinemark.density.lane_block import BUFFER, GROUP, LANES, TILE
 from tinemark.density.tangent import tangent
 from tinemark.systems.emit import emit
 from tinemark.systems.expression import ARITIES, ONE, Expr, Name
 from tinemark.systems.formula import read_formula
+from tinemark.systems.lane_turns import HALF_TURNS, in_half_turns
+from tinemark.systems.lane_wide import wide_registers
 from tinemark.systems.native import native_module
 from tinemark.systems.system import System
 
-LANES = 64
-"""Columns of a block; loops of this fixed length become vector code."""
-
-BUFFER = 128
-"""Steps noted before they are counted. Passes are whole buffers, so that a picture does not depend on how
-its steps were divided into passes."""
+__all__ = ["BUFFER", "LANES", "MAX_ROWS", "Kernels", "kernels_for"]
 
 MAX_ROWS = 65533
 """Bins are noted in 16 bits; two of them lie outside the view."""
 
-_GROUP = 4
 _LOG_EVERY = 16
 """Factors multiplied before a logarithm is taken: the product of so many stays inside a double."""
 
@@ -85,8 +88,10 @@ def _kernels(
     observed: Expr,
 ) -> Kernels:
     fixed = tuple(name for name in parameters if name != swept)
+    wide = wide_registers()
     _interleave_lanes()
-    module: Any = native_module(_Template(states, expressions, swept, fixed, observed).source(), "density")
+    template = (_WideTemplate if wide else _Template)(states, expressions, swept, fixed, observed)
+    module: Any = native_module(template.source(), "density", [Path(lane_block.__file__)] if wide else [])
     return Kernels(module.advance, module.advance_counting, module.trace, module.carry, fixed)
 
 
@@ -124,13 +129,16 @@ class _Template:
 
     def source(self) -> str:
         names = ", ".join(["lane_whole", *(f"lane_{fn}" for fn in [*ARITIES, "pow"])])
+        turns = ", ".join(f"lane_{fn}" for fn in HALF_TURNS.values())
         head = (
             f"import numpy as np\n\nfrom tinemark.systems.lane_math import {names}\n"
+            f"from tinemark.systems.lane_turns import {turns}\n"
             "from tinemark.systems.native import jit\n"
         )
         return "\n\n".join(
             [
                 head,
+                *self.blocks(),
                 self.advance("advance", True),
                 self.advance("advance_counting", False),
                 self.trace(),
@@ -141,8 +149,17 @@ class _Template:
     def bind(self, letter: str) -> dict[str, str]:
         return {**{name: f"{letter}{i}" for i, name in enumerate(self.states)}, **self.parameters}
 
+    def blocks(self) -> list[str]:
+        """What the functions need beside what they import."""
+        return []
+
+    @staticmethod
+    def printed(targets: Sequence[tuple[str, Expr]], bind: dict[str, str], prefix: str) -> list[str]:
+        return emit([(name, in_half_turns(expr)) for name, expr in targets], bind, "native", prefix)
+
     def step(self) -> list[str]:
-        return emit([(f"y{i}", e) for i, e in enumerate(self.expressions)], self.bind("x"), "native", "u")
+        targets = [(f"y{i}", e) for i, e in enumerate(self.expressions)]
+        return self.printed(targets, self.bind("x"), "u")
 
     def step_and_tangent(self) -> list[str]:
         targets = [(f"y{i}", e) for i, e in enumerate(self.expressions)]
@@ -154,23 +171,13 @@ class _Template:
             bind |= {f"tangent {i}": f"v{i}" for i in range(self.n)}
             direction = {name: Name(f"tangent {i}") for i, name in enumerate(self.states)}
             targets += [(f"w{i}", tangent(e, direction)) for i, e in enumerate(self.expressions)]
-        return emit(targets, bind, "native", "u")
+        return self.printed(targets, bind, "u")
+
+    def seen(self) -> list[str]:
+        return self.printed([("seen", self.observed)], self.bind("y"), "g")
 
     def advance(self, name: str, growth: bool) -> str:
         many = self.n > 1
-        loads = [*self.each("x# = X#[l]"), "p = P[l]"]
-        stores = self.each("X#[l] = y#")
-        if growth and many:
-            loads += self.each("v# = V#[l]")
-            stores += self.each("V#[l] = w#")
-        elif growth:
-            stores.append("D[l] *= d")
-        step = self.step_and_tangent() if growth else self.step()
-        observe = emit([("seen", self.observed)], self.bind("y"), "native", "g")
-        note = [
-            "cell = lane_whole(seen * scale + offset)",
-            "K[s, l] = np.uint16(cell if cell < outside else outside)",
-        ]
         lines = [*self.hoisted(), *self.lane_arrays(growth)]
         lines += ["for l in range(LANES):", "    c = first + min(l, columns - 1)"]
         lines += self.indented(1, [*self.each("X#[l] = states[#, c]"), "P[l] = swept[c]"])
@@ -179,18 +186,8 @@ class _Template:
             lines.append("    G[l] = growth[c]")
         if growth and many:
             lines += self.indented(1, self.each("V#[l] = tangents[#, c]"))
-        lines += ["done = 0", "while done < steps and stop[0] == 0:"]
-        lines.append(f"    m = min({BUFFER}, steps - done)")
-        lines += [
-            f"    for h in range(0, m, {_LOG_EVERY}):",
-            f"        for s in range(h, min(h + {_LOG_EVERY}, m)):",
-        ]
-        lines.append("            for l in range(lanes):")
-        lines += self.indented(4, [*loads, *step, *stores, *observe, *note])
-        if growth:
-            lines += self.indented(2, self.renormalised())
-        lines += self.indented(1, ["if counted:", *self.indented(1, self.counting())])
-        lines += ["    done += m", "for l in range(columns):"]
+        lines += self.passes(growth)
+        lines += ["for l in range(columns):"]
         lines += self.indented(1, self.each("states[#, first + l] = X#[l]"))
         if growth:
             lines.append("    growth[first + l] = G[l]")
@@ -203,6 +200,33 @@ class _Template:
         )
         return self.function(name, arguments, lines)
 
+    def passes(self, growth: bool) -> list[str]:
+        """The loop over buffers: steps are noted, then counted."""
+        loads = [*self.each("x# = X#[l]"), "p = P[l]"]
+        stores = self.each("X#[l] = y#")
+        if growth and self.n > 1:
+            loads += self.each("v# = V#[l]")
+            stores += self.each("V#[l] = w#")
+        elif growth:
+            stores.append("D[l] *= d")
+        step = self.step_and_tangent() if growth else self.step()
+        note = [
+            "cell = lane_whole(seen * scale + offset)",
+            "K[s, l] = np.uint16(cell if cell < outside else outside)",
+        ]
+        lines = ["done = 0", "while done < steps and stop[0] == 0:"]
+        lines.append(f"    m = min({BUFFER}, steps - done)")
+        lines += [
+            f"    for h in range(0, m, {_LOG_EVERY}):",
+            f"        for s in range(h, min(h + {_LOG_EVERY}, m)):",
+        ]
+        lines.append("            for l in range(lanes):")
+        lines += self.indented(4, [*loads, *step, *stores, *self.seen(), *note])
+        if growth:
+            lines += self.indented(2, self.renormalised())
+        lines += self.indented(1, ["if counted:", *self.indented(1, self.counting("m", "K[s, {}]"))])
+        return [*lines, "    done += m"]
+
     def hoisted(self) -> list[str]:
         return [f"c{i} = fixed[{i}]" for i in range(self.fixed)]
 
@@ -214,7 +238,7 @@ class _Template:
         lines += [
             f"K = np.empty(({BUFFER}, LANES), np.uint16)",
             "outside = np.uint32(counts.shape[1] - 1)",
-            f"grouped = columns - columns % {_GROUP}",
+            f"grouped = columns - columns % {GROUP}",
             # Always LANES, unknown to the compiler: a loop of known length it would unroll altogether, and
             # then keep the constants of an exponential in memory instead of in registers.
             "lanes = min(LANES, LANES * stop.shape[0])",
@@ -238,16 +262,16 @@ class _Template:
         return [*lines, "    G[l] += lane_log(length) if measured else 0.0"]
 
     @staticmethod
-    def counting() -> list[str]:
-        one = "counts[first + {}, np.uint32(K[s, {}])] += np.uint32(1)"
-        group = [one.format(f"l + {j}", f"l + {j}") for j in range(_GROUP)]
+    def counting(steps: str, noted: str) -> list[str]:
+        """Count the first of the noted steps; `noted` is where the cell of step s and a column stands."""
+        one = f"counts[first + {{0}}, np.uint32({noted.format('{0}')})] += np.uint32(1)"
         return [
-            f"for l in range(0, grouped, {_GROUP}):",
-            "    for s in range(m):",
-            *(f"        {line}" for line in group),
+            f"for l in range(0, grouped, {GROUP}):",
+            f"    for s in range({steps}):",
+            *(f"        {one.format(f'(l + {j})')}" for j in range(GROUP)),
             "for l in range(grouped, columns):",
-            "    for s in range(m):",
-            f"        {one.format('l', 'l')}",
+            f"    for s in range({steps}):",
+            f"        {one.format('l')}",
         ]
 
     def trace(self) -> str:
@@ -289,3 +313,64 @@ class _Template:
     def function(name: str, arguments: str, lines: Sequence[str]) -> str:
         text = f"@jit\ndef {name}({arguments}):\n" + textwrap.indent("\n".join(lines), "    ") + "\n"
         return text.replace("LANES", str(LANES))
+
+
+class _WideTemplate(_Template):
+    """The same module with the inner loop written by `lane_block`; lane arrays are rows of one array."""
+
+    def blocks(self) -> list[str]:
+        kind = "factor" if self.n == 1 else "tangent"
+        plain, growing = [*self.step(), *self.seen()], [*self.step_and_tangent(), *self.seen()]
+        lines = ["from tinemark.density.lane_block import lane_block", ""]
+        for stem, statements, growth in (("move", plain, ""), ("grow", growing, kind)):
+            listed = ",\n    ".join(repr(statement) for statement in statements)
+            lines.append(f"{stem}_code = [\n    {listed},\n]")
+            for suffix, counting in (("", False), ("_and_count", True)):
+                settings = f"{self.n}, {self.fixed}, {growth!r}, {counting}"
+                lines.append(f"{stem}{suffix} = lane_block({stem}_code, {settings})")
+        return ["\n".join(lines)]
+
+    def lane_arrays(self, growth: bool) -> list[str]:
+        rows = [*self.each("X#"), "P"]
+        if growth:
+            rows += self.each("V#") if self.n > 1 else ["D"]
+        # A vector that crosses a line of the cache costs two accesses; lines are 64 bytes.
+        lines = [
+            f"room = np.empty({len(rows)} * LANES + 8)",
+            "skipped = (64 - np.int64(room.ctypes.data) % 64) % 64 // 8",
+            f"lanes = room[skipped : skipped + {len(rows)} * LANES].reshape(({len(rows)}, LANES))",
+            *(f"{row} = lanes[{place}]" for place, row in enumerate(rows)),
+            f"space = np.empty(2 * {BUFFER} * LANES + 32, np.uint16)",
+            "skipped = (64 - np.int64(space.ctypes.data) % 64) % 64 // 2",
+            f"K = space[skipped : skipped + 2 * {BUFFER} * LANES]",
+            f"K = K.reshape((2, LANES // {TILE}, {BUFFER}, {TILE}))",
+            f"grouped = columns - columns % {GROUP}",
+        ]
+        if growth:
+            lines.append("G = np.empty(LANES)")
+            lines += ["D[:] = 1.0"] if self.n == 1 else []
+        return lines
+
+    def passes(self, growth: bool) -> list[str]:
+        stem = "grow" if growth else "move"
+        arguments = "(lanes, fixed, K, which, counts, first, {}, {}, scale, offset)"
+        part = arguments.format("h", f"min(h + {_LOG_EVERY}, m)") if growth else arguments.format("0", "m")
+        tally = self.counting("waiting", f"K[1 - which, {{0}} // {TILE}, s, {{0}} % {TILE}]")
+        lines = ["done = 0", "which = 0", "waiting = 0", "while done < steps and stop[0] == 0:"]
+        lines += [
+            f"    m = min({BUFFER}, steps - done)",
+            f"    meanwhile = m == {BUFFER} and waiting == {BUFFER} and columns == LANES",
+            "    if not meanwhile:",
+            *self.indented(2, tally),
+        ]
+        moves = ["if meanwhile:", f"    {stem}_and_count{part}", "else:", f"    {stem}{part}"]
+        if growth:
+            lines.append(f"    for h in range(0, m, {_LOG_EVERY}):")
+            lines += self.indented(2, [*moves, *self.renormalised()])
+        else:
+            lines += self.indented(1, moves)
+        lines += ["    waiting = m if counted else 0", "    which = 1 - which", "    done += m"]
+        return [*lines, *tally]
+
+    def renormalised(self) -> list[str]:
+        return [line.replace("range(lanes)", "range(LANES)") for line in super().renormalised()]

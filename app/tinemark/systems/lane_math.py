@@ -32,14 +32,15 @@ Real: TypeAlias = Any
 """A double; what numba and NumPy make of it is known to neither type checker nor reader."""
 
 
-def _lane(function: Function) -> Function:
+def lane_function(function: Function) -> Function:
+    """The decorator of elementary functions: inlined into kernels, with arithmetic exactly as written."""
     compiled: Function = numba.njit(
         cache=True, nogil=True, fastmath=False, error_model="numpy", forceinline=True
     )(function)
     return compiled
 
 
-def _fma_exactly(a: float, b: float, c: float) -> float:
+def fma_exactly(a: float, b: float, c: float) -> float:
     """a*b + c rounded once; the slow form that serves where the compiler is off."""
     plain = a * b + c
     if not np.isfinite(plain):
@@ -79,7 +80,7 @@ def _truncated_fused(_typing, _x):  # type: ignore[no-untyped-def]
     return signature, generate
 
 
-_fma: Any = _fma_exactly if numba.config.DISABLE_JIT else _fma_fused
+lane_fma: Any = fma_exactly if numba.config.DISABLE_JIT else _fma_fused
 lane_whole: Any = _truncated_slowly if numba.config.DISABLE_JIT else _truncated_fused
 """Truncation to an unsigned 32-bit number. Negative, huge and undefined arguments give some large
 number, or 0 for nan on some processors: clamp the result before it is used as an index."""
@@ -108,24 +109,24 @@ _HALF_PI_REST = 6.123233995736766e-17
 _TWO_THIRDS, _TWO_THIRDS_REST = 0.6666666666666666, 3.700743415417188e-17
 
 
-@_lane
+@lane_function
 def _exp_parts(x: Real, rest: Real, doublings: Real) -> Real:
     """exp(x + rest) * 2**doublings; the scaling is done in two halves, so that subnormals are kept."""
     c = 712.0 if x > 712.0 else x  # noqa: FURB136  # keeps nan
     c = -747.0 if c < -747.0 else c  # noqa: FURB136
     n = (c * _LOG2_E + _ROUND) - _ROUND
-    r = _fma(-n, _LN2, c)
-    r = _fma(-n, _LN2_REST, r) + rest
-    q = _fma(2.5117989767413088e-08, r, 2.763129238959598e-07)
-    q = _fma(q, r, 2.755721592313393e-06)
-    q = _fma(q, r, 2.4801489911924246e-05)
-    q = _fma(q, r, 0.00019841269917766636)
-    q = _fma(q, r, 0.0013888888947042072)
-    q = _fma(q, r, 0.008333333333307045)
-    q = _fma(q, r, 0.04166666666651533)
-    q = _fma(q, r, 0.166666666666667)
-    q = _fma(q, r, 0.5000000000000012)
-    p = _fma(r * r, q, r) + 1.0
+    r = lane_fma(-n, _LN2, c)
+    r = lane_fma(-n, _LN2_REST, r) + rest
+    q = lane_fma(2.5117989767413088e-08, r, 2.763129238959598e-07)
+    q = lane_fma(q, r, 2.755721592313393e-06)
+    q = lane_fma(q, r, 2.4801489911924246e-05)
+    q = lane_fma(q, r, 0.00019841269917766636)
+    q = lane_fma(q, r, 0.0013888888947042072)
+    q = lane_fma(q, r, 0.008333333333307045)
+    q = lane_fma(q, r, 0.04166666666651533)
+    q = lane_fma(q, r, 0.166666666666667)
+    q = lane_fma(q, r, 0.5000000000000012)
+    p = lane_fma(r * r, q, r) + 1.0
     n = n + doublings
     half = (n * 0.5 + _ROUND) - _ROUND
     first = np.uint64(np.float64(half + _ROUND_BIASED).view(np.uint64) << _SHIFT).view(np.float64)
@@ -133,24 +134,24 @@ def _exp_parts(x: Real, rest: Real, doublings: Real) -> Real:
     return p * first * second
 
 
-@_lane
+@lane_function
 def lane_exp(x: Real) -> Real:
     """Exponential; 0 where the result would be below the smallest normal number."""
-    t = _fma(x, _LOG2_E, _ROUND)
+    t = lane_fma(x, _LOG2_E, _ROUND)
     n = t - _ROUND
-    r = _fma(-n, _LN2, x)
-    r = _fma(-n, _LN2_REST, r)
-    q = _fma(2.5117989767413088e-08, r, 2.763129238959598e-07)
-    q = _fma(q, r, 2.755721592313393e-06)
-    q = _fma(q, r, 2.4801489911924246e-05)
-    q = _fma(q, r, 0.00019841269917766636)
-    q = _fma(q, r, 0.0013888888947042072)
-    q = _fma(q, r, 0.008333333333307045)
-    q = _fma(q, r, 0.04166666666651533)
-    q = _fma(q, r, 0.166666666666667)
-    q = _fma(q, r, 0.5000000000000012)
-    q = _fma(q, r, 1.0)
-    p = _fma(q, r, 1.0)
+    r = lane_fma(-n, _LN2, x)
+    r = lane_fma(-n, _LN2_REST, r)
+    q = lane_fma(2.5117989767413088e-08, r, 2.763129238959598e-07)
+    q = lane_fma(q, r, 2.755721592313393e-06)
+    q = lane_fma(q, r, 2.4801489911924246e-05)
+    q = lane_fma(q, r, 0.00019841269917766636)
+    q = lane_fma(q, r, 0.0013888888947042072)
+    q = lane_fma(q, r, 0.008333333333307045)
+    q = lane_fma(q, r, 0.04166666666651533)
+    q = lane_fma(q, r, 0.166666666666667)
+    q = lane_fma(q, r, 0.5000000000000012)
+    q = lane_fma(q, r, 1.0)
+    p = lane_fma(q, r, 1.0)
     # The whole number in the low bits of t goes straight onto the exponent field.
     power = np.float64(t).view(np.uint64) << _SHIFT
     scaled = np.uint64(np.float64(p).view(np.uint64) + power).view(np.float64)
@@ -158,7 +159,7 @@ def lane_exp(x: Real) -> Real:
     return result if x < 709.782712893384 else x + np.inf
 
 
-@_lane
+@lane_function
 def lane_log(x: Real) -> Real:
     """Natural logarithm: -inf at 0, nan below."""
     tiny = x < _SMALLEST_NORMAL
@@ -170,21 +171,21 @@ def lane_log(x: Real) -> Real:
     f = m - 1.0
     s = f / (2.0 + f)
     z = s * s
-    q = _fma(0.13251508617427754, z, 0.13250098303136273)
-    q = _fma(q, z, 0.15387091640538897)
-    q = _fma(q, z, 0.18181775645270018)
-    q = _fma(q, z, 0.22222222647048967)
-    q = _fma(q, z, 0.28571428569084234)
-    q = _fma(q, z, 0.40000000000006253)
-    q = _fma(q, z, 0.6666666666666666)
+    q = lane_fma(0.13251508617427754, z, 0.13250098303136273)
+    q = lane_fma(q, z, 0.15387091640538897)
+    q = lane_fma(q, z, 0.18181775645270018)
+    q = lane_fma(q, z, 0.22222222647048967)
+    q = lane_fma(q, z, 0.28571428569084234)
+    q = lane_fma(q, z, 0.40000000000006253)
+    q = lane_fma(q, z, 0.6666666666666666)
     h = 0.5 * f * f
-    small = _fma(s, _fma(z, q, h), k * _LN2_SHORT_REST)
-    result = _fma(k, _LN2_SHORT, f - (h - small))
+    small = lane_fma(s, lane_fma(z, q, h), k * _LN2_SHORT_REST)
+    result = lane_fma(k, _LN2_SHORT, f - (h - small))
     result = result if x < np.inf else x
     return result if x > 0.0 else (-np.inf if x == 0.0 else np.nan)
 
 
-@_lane
+@lane_function
 def lane_pow(x: Real, y: Real) -> Real:
     """Power x**y; nan where x is negative and y is not whole."""
     a = abs(x)
@@ -199,27 +200,27 @@ def lane_pow(x: Real, y: Real) -> Real:
     d = m + 1.0
     d_rest = m - (d - 1.0)
     s = f / d
-    s_rest = _fma(-s, d_rest, _fma(-s, d, f)) / d
+    s_rest = lane_fma(-s, d_rest, lane_fma(-s, d, f)) / d
     z = s * s
-    z_rest = _fma(s, s, -z) + 2.0 * s * s_rest
+    z_rest = lane_fma(s, s, -z) + 2.0 * s * s_rest
     c = s * z
-    c_rest = _fma(s, z, -c) + (s * z_rest + s_rest * z)
+    c_rest = lane_fma(s, z, -c) + (s * z_rest + s_rest * z)
     t = c * _TWO_THIRDS
-    t_rest = _fma(c, _TWO_THIRDS, -t) + (c * _TWO_THIRDS_REST + c_rest * _TWO_THIRDS)
-    q = _fma(0.11989168580614906, z, 0.11674799851185098)
-    q = _fma(q, z, 0.13336318337291564)
-    q = _fma(q, z, 0.15384556847179)
-    q = _fma(q, z, 0.18181818870662264)
-    q = _fma(q, z, 0.22222222217533655)
-    q = _fma(q, z, 0.28571428571445123)
-    q = _fma(q, z, 0.3999999999999998)
+    t_rest = lane_fma(c, _TWO_THIRDS, -t) + (c * _TWO_THIRDS_REST + c_rest * _TWO_THIRDS)
+    q = lane_fma(0.11989168580614906, z, 0.11674799851185098)
+    q = lane_fma(q, z, 0.13336318337291564)
+    q = lane_fma(q, z, 0.15384556847179)
+    q = lane_fma(q, z, 0.18181818870662264)
+    q = lane_fma(q, z, 0.22222222217533655)
+    q = lane_fma(q, z, 0.28571428571445123)
+    q = lane_fma(q, z, 0.3999999999999998)
     top: Real = 2.0 * s + t
     tail = t - (top - 2.0 * s)
     tail = tail + (2.0 * s_rest + t_rest + c * z * q)
     whole = k * _LN2_SHORT
     log_high = whole + top
     log_low = top - (log_high - whole)
-    log_low = log_low + _fma(k, _LN2_SHORT_REST, tail)
+    log_low = log_low + lane_fma(k, _LN2_SHORT_REST, tail)
     fold = log_high + log_low
     log_low = log_low - (fold - log_high)
     log_high = fold
@@ -227,7 +228,7 @@ def lane_pow(x: Real, y: Real) -> Real:
     high: Real = log_high if finite else (-np.inf if a == 0.0 else a)
     low: Real = log_low if finite else 0.0
     p = y * high
-    rest = _fma(y, high, -p) + y * low
+    rest = lane_fma(y, high, -p) + y * low
     rest = rest if abs(p) < 800.0 else 0.0
     size = _exp_parts(p, rest, 0.0)
     size = 1.0 if a == 1.0 else size
@@ -240,52 +241,52 @@ def lane_pow(x: Real, y: Real) -> Real:
     return 1.0 if (y == 0.0 or x == 1.0) else result
 
 
-@_lane
+@lane_function
 def _sin_reduced(r: Real) -> Real:
     """Sine on [-pi/2, pi/2]."""
     z = r * r
-    q = _fma(2.722249449528847e-15, z, -7.643097193994393e-13)
-    q = _fma(q, z, 1.6058943921093008e-10)
-    q = _fma(q, z, -2.5052106960004334e-08)
-    q = _fma(q, z, 2.7557319212129985e-06)
-    q = _fma(q, z, -0.00019841269841215273)
-    q = _fma(q, z, 0.008333333333333212)
-    q = _fma(q, z, -0.16666666666666666)
-    return _fma(r * z, q, r)
+    q = lane_fma(2.722249449528847e-15, z, -7.643097193994393e-13)
+    q = lane_fma(q, z, 1.6058943921093008e-10)
+    q = lane_fma(q, z, -2.5052106960004334e-08)
+    q = lane_fma(q, z, 2.7557319212129985e-06)
+    q = lane_fma(q, z, -0.00019841269841215273)
+    q = lane_fma(q, z, 0.008333333333333212)
+    q = lane_fma(q, z, -0.16666666666666666)
+    return lane_fma(r * z, q, r)
 
 
-@_lane
+@lane_function
 def lane_sin(x: Real) -> Real:
     """Sine; nan beyond 2**45."""
-    t = _fma(x, _PI_INVERSE, _ROUND)
+    t = lane_fma(x, _PI_INVERSE, _ROUND)
     n = t - _ROUND
-    r = _fma(-n, _PI, x)
-    r = _fma(-n, _PI_REST, r)
+    r = lane_fma(-n, _PI, x)
+    r = lane_fma(-n, _PI_REST, r)
     turn = np.float64(t).view(np.uint64) << _SIGN
     result = np.uint64(np.float64(_sin_reduced(r)).view(np.uint64) ^ turn).view(np.float64)
     return result if abs(x) < _FURTHEST_ANGLE else np.nan
 
 
-@_lane
+@lane_function
 def lane_cos(x: Real) -> Real:
     """Cosine; nan beyond 2**45."""
     # cos(r + (m + 1/2) pi) = -(-1)**m sin(r)
-    t = _fma(x, _PI_INVERSE, -0.5) + _ROUND
+    t = lane_fma(x, _PI_INVERSE, -0.5) + _ROUND
     n = (t - _ROUND) + 0.5
-    r = _fma(-n, _PI, x)
-    r = _fma(-n, _PI_REST, r)
+    r = lane_fma(-n, _PI, x)
+    r = lane_fma(-n, _PI_REST, r)
     turn = (np.float64(t).view(np.uint64) + _ONE) << _SIGN
     result = np.uint64(np.float64(_sin_reduced(r)).view(np.uint64) ^ turn).view(np.float64)
     return result if abs(x) < _FURTHEST_ANGLE else np.nan
 
 
-@_lane
+@lane_function
 def lane_tan(x: Real) -> Real:
     """Tangent; nan beyond 2**45."""
     return lane_sin(x) / lane_cos(x)
 
 
-@_lane
+@lane_function
 def _atan_positive(a: Real) -> Real:
     """Arc tangent of a >= 0, infinity included."""
     far = a > 2.414213562373095
@@ -296,26 +297,26 @@ def _atan_positive(a: Real) -> Real:
     base = _HALF_PI if far else (0.0 if near else _QUARTER_PI)
     rest = _HALF_PI_REST if far else (0.0 if near else _QUARTER_PI_REST)
     z = t * t
-    q = _fma(-0.017907339566705167, z, 0.03806494978342426)
-    q = _fma(q, z, -0.05039330560866183)
-    q = _fma(q, z, 0.05847897313123742)
-    q = _fma(q, z, -0.06663105441163482)
-    q = _fma(q, z, 0.07692060360062764)
-    q = _fma(q, z, -0.09090897766946304)
-    q = _fma(q, z, 0.11111110783807983)
-    q = _fma(q, z, -0.14285714280203834)
-    q = _fma(q, z, 0.1999999999995366)
-    q = _fma(q, z, -0.333333333333332)
-    return base + (_fma(t * z, q, rest) + t)
+    q = lane_fma(-0.017907339566705167, z, 0.03806494978342426)
+    q = lane_fma(q, z, -0.05039330560866183)
+    q = lane_fma(q, z, 0.05847897313123742)
+    q = lane_fma(q, z, -0.06663105441163482)
+    q = lane_fma(q, z, 0.07692060360062764)
+    q = lane_fma(q, z, -0.09090897766946304)
+    q = lane_fma(q, z, 0.11111110783807983)
+    q = lane_fma(q, z, -0.14285714280203834)
+    q = lane_fma(q, z, 0.1999999999995366)
+    q = lane_fma(q, z, -0.333333333333332)
+    return base + (lane_fma(t * z, q, rest) + t)
 
 
-@_lane
+@lane_function
 def lane_atan(x: Real) -> Real:
     """Arc tangent."""
     return np.copysign(_atan_positive(abs(x)), x)
 
 
-@_lane
+@lane_function
 def lane_atan2(y: Real, x: Real) -> Real:
     """Angle of the point (x, y), in (-pi, pi]."""
     a, b = abs(y), abs(x)
@@ -330,111 +331,111 @@ def lane_atan2(y: Real, x: Real) -> Real:
     return x + y if (x != x or y != y) else angle
 
 
-@_lane
+@lane_function
 def _asin_small(t: Real, z: Real) -> Real:
     """Arc sine of |t| <= 1/2, with z = t**2."""
-    q = _fma(0.031981585691168476, z, -0.016326550514871814)
-    q = _fma(q, z, 0.019594254802977138)
-    q = _fma(q, z, 0.006503550983822869)
-    q = _fma(q, z, 0.012174935229491052)
-    q = _fma(q, z, 0.01388435153854521)
-    q = _fma(q, z, 0.017359795532143053)
-    q = _fma(q, z, 0.02237175194528388)
-    q = _fma(q, z, 0.030381959395125287)
-    q = _fma(q, z, 0.044642856821987334)
-    q = _fma(q, z, 0.0750000000034478)
-    q = _fma(q, z, 0.16666666666665375)
-    return _fma(t * z, q, t)
+    q = lane_fma(0.031981585691168476, z, -0.016326550514871814)
+    q = lane_fma(q, z, 0.019594254802977138)
+    q = lane_fma(q, z, 0.006503550983822869)
+    q = lane_fma(q, z, 0.012174935229491052)
+    q = lane_fma(q, z, 0.01388435153854521)
+    q = lane_fma(q, z, 0.017359795532143053)
+    q = lane_fma(q, z, 0.02237175194528388)
+    q = lane_fma(q, z, 0.030381959395125287)
+    q = lane_fma(q, z, 0.044642856821987334)
+    q = lane_fma(q, z, 0.0750000000034478)
+    q = lane_fma(q, z, 0.16666666666665375)
+    return lane_fma(t * z, q, t)
 
 
-@_lane
+@lane_function
 def lane_asin(x: Real) -> Real:
     """Arc sine; nan outside [-1, 1]."""
     a = abs(x)
     inner = a <= 0.5
     z = a * a if inner else 0.5 * (1.0 - a)
     s = _asin_small(a if inner else np.sqrt(z), z)
-    return np.copysign(s if inner else _fma(-2.0, s, _HALF_PI) + _HALF_PI_REST, x)
+    return np.copysign(s if inner else lane_fma(-2.0, s, _HALF_PI) + _HALF_PI_REST, x)
 
 
-@_lane
+@lane_function
 def lane_acos(x: Real) -> Real:
     """Arc cosine; nan outside [-1, 1]."""
     a = abs(x)
     inner = a <= 0.5
     z = a * a if inner else 0.5 * (1.0 - a)
     s = _asin_small(x if inner else np.sqrt(z), z)
-    outer = 2.0 * s if x > 0.0 else _fma(-2.0, s, _PI) + _PI_REST
+    outer = 2.0 * s if x > 0.0 else lane_fma(-2.0, s, _PI) + _PI_REST
     return (_HALF_PI - (s - _HALF_PI_REST)) if inner else outer
 
 
-@_lane
+@lane_function
 def lane_sinh(x: Real) -> Real:
     """Hyperbolic sine."""
     a = abs(x)
     e = _exp_parts(a, 0.0, -1.0)
     far = e - 0.25 / e
     z = a * a
-    q = _fma(7.759426604638952e-13, z, 1.6057236666871576e-10)
-    q = _fma(q, z, 2.5052123444418118e-08)
-    q = _fma(q, z, 2.755731915505737e-06)
-    q = _fma(q, z, 0.00019841269841438535)
-    q = _fma(q, z, 0.008333333333333137)
-    q = _fma(q, z, 0.16666666666666669)
-    return np.copysign(_fma(a * z, q, a) if a < 1.0 else far, x)
+    q = lane_fma(7.759426604638952e-13, z, 1.6057236666871576e-10)
+    q = lane_fma(q, z, 2.5052123444418118e-08)
+    q = lane_fma(q, z, 2.755731915505737e-06)
+    q = lane_fma(q, z, 0.00019841269841438535)
+    q = lane_fma(q, z, 0.008333333333333137)
+    q = lane_fma(q, z, 0.16666666666666669)
+    return np.copysign(lane_fma(a * z, q, a) if a < 1.0 else far, x)
 
 
-@_lane
+@lane_function
 def lane_cosh(x: Real) -> Real:
     """Hyperbolic cosine."""
     e = _exp_parts(abs(x), 0.0, -1.0)
     return e + 0.25 / e
 
 
-@_lane
+@lane_function
 def lane_tanh(x: Real) -> Real:
     """Hyperbolic tangent."""
     a = abs(x)
     far = 1.0 - 2.0 / (lane_exp(a + a) + 1.0)
     z = a * a
-    q = _fma(-1.7210833125788047e-05, z, 7.93772372986566e-05)
-    q = _fma(q, z, -0.00023045062058973866)
-    q = _fma(q, z, 0.000587214222515362)
-    q = _fma(q, z, -0.0014552230382258713)
-    q = _fma(q, z, 0.0035920388405725296)
-    q = _fma(q, z, -0.008863226955269256)
-    q = _fma(q, z, 0.02186948801594331)
-    q = _fma(q, z, -0.053968253949874125)
-    q = _fma(q, z, 0.133333333333009)
-    q = _fma(q, z, -0.3333333333333313)
-    return np.copysign(_fma(a * z, q, a) if a < 0.6 else far, x)
+    q = lane_fma(-1.7210833125788047e-05, z, 7.93772372986566e-05)
+    q = lane_fma(q, z, -0.00023045062058973866)
+    q = lane_fma(q, z, 0.000587214222515362)
+    q = lane_fma(q, z, -0.0014552230382258713)
+    q = lane_fma(q, z, 0.0035920388405725296)
+    q = lane_fma(q, z, -0.008863226955269256)
+    q = lane_fma(q, z, 0.02186948801594331)
+    q = lane_fma(q, z, -0.053968253949874125)
+    q = lane_fma(q, z, 0.133333333333009)
+    q = lane_fma(q, z, -0.3333333333333313)
+    return np.copysign(lane_fma(a * z, q, a) if a < 0.6 else far, x)
 
 
-@_lane
+@lane_function
 def lane_sqrt(x: Real) -> Real:
     """Square root; nan below 0."""
     return np.sqrt(x)
 
 
-@_lane
+@lane_function
 def lane_abs(x: Real) -> Real:
     """Absolute value."""
     return abs(x)
 
 
-@_lane
+@lane_function
 def lane_floor(x: Real) -> Real:
     """Largest whole number not above x, as a float."""
     return np.floor(x)
 
 
-@_lane
+@lane_function
 def lane_min(x: Real, y: Real) -> Real:
     """Smaller of two; nan when either is."""
     return x if (x < y or x != x) else y
 
 
-@_lane
+@lane_function
 def lane_max(x: Real, y: Real) -> Real:
     """Larger of two; nan when either is."""
     return x if (x > y or x != x) else y

@@ -11,7 +11,7 @@ import importlib.util
 import os
 import sys
 import tempfile
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from functools import cache
 from pathlib import Path
 from types import ModuleType
@@ -77,12 +77,12 @@ def _foundation() -> str:
         str(numba.config.DISABLE_JIT),
     ):
         digest.update(part.encode() + b"\0")
-    for file in (Path(__file__), Path(__file__).with_name("lane_math.py")):
+    for file in (Path(__file__), *sorted(Path(__file__).parent.glob("lane_*.py"))):
         digest.update(file.read_bytes() if file.exists() else b"")
     return digest.hexdigest()
 
 
-def native_module(source: str, stem: str) -> ModuleType:
+def native_module(source: str, stem: str, built_on: Sequence[Path] = ()) -> ModuleType:
     """Import generated source from the cache folder, writing it there first when it is new.
 
     Parameters
@@ -91,10 +91,15 @@ def native_module(source: str, stem: str) -> ModuleType:
         Module text. It imports what it needs and decorates with `jit` from here.
     stem
         Start of the module's name: letters, digits and underscores.
+    built_on
+        Files that write code into the module when it is compiled, beside those of this room: a change
+        there makes another module.
     """
     text = _HEADER + source
-    digest = hashlib.sha256((_foundation() + text).encode()).hexdigest()[:24]
-    name = f"tinemark_{stem}_{digest}"
+    digest = hashlib.sha256((_foundation() + text).encode())
+    for file in built_on:
+        digest.update(file.read_bytes() if file.exists() else b"")
+    name = f"tinemark_{stem}_{digest.hexdigest()[:24]}"
     known = sys.modules.get(name)
     if known is not None:
         return known
