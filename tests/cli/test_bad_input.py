@@ -164,6 +164,10 @@ ARGUMENTS = {
     "negative window": (["refine", "logistic", "--near", "3", "--window", "-1"], ["--window"]),
     "picture of no range": (["picture", "logistic", "-o", "a.png"], ["--range"]),
     "picture of NaN": (["picture", "logistic", "--range", "nan", "4", "-o", "a.png"], ["--range"]),
+    "picture from right to left": (
+        ["picture", "logistic", "--range", "4", "3", "-o", "a.png"],
+        ["--range", "from 4 down to 3", "--range 3 4"],
+    ),
     "picture of no width": (["picture", "logistic", "--range", "3", "3.0", "-o", "a.png"], ["--range"]),
     "picture of a bad size": (
         ["picture", "logistic", "--range", "3", "4", "--size", "big", "-o", "a.png"],

@@ -14,6 +14,7 @@ from tinemark.density.request import SweepRule, View
 from tinemark.density.tone import PALETTE_NAMES
 from tinemark.document import ledger as led
 from tinemark.document import session as ses
+from tinemark.document.ledger import FollowedAlpha
 from tinemark.document.session import PictureSettings, Session
 from tinemark.document.session_file import session_bytes
 from tinemark.onsets.results import Certificate, Kind, Onset, Sensitivity, Status
@@ -179,3 +180,16 @@ def sessions(draw: st.DrawFn) -> Session:
                 else:
                     session = ses.with_system(session, CUBIC_TEXT)
     return session
+
+
+def followed_session() -> Session:
+    """The same, and what following two of its ladders said of their cycles."""
+    session = certified_session()
+    ledger = session.ledger
+    flips = [row for row in ledger.rows if row.onset.kind is Kind.FLIP]
+    first, window = (tuple(row.id for row in flips if row.ladder == name) for name in ("L1", "L7"))
+    alphas = (
+        FollowedAlpha(first, "-2.50290787509589", "0.00000000000003"),
+        FollowedAlpha(window, reason="alpha needs at least 5 successive proved levels"),
+    )
+    return dataclasses.replace(session, ledger=dataclasses.replace(ledger, alphas=alphas))

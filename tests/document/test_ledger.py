@@ -177,9 +177,45 @@ def test_a_reading_holds_half_a_pixel() -> None:
 def test_a_full_ledger_says_so(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(led, "MAX_ROWS", 3)
     ledger = filled(known.flips(known.LOGISTIC[:3]))
-    with pytest.raises(TinemarkError, match="is full; remove some"):
+    with pytest.raises(TinemarkError, match=r"is full.*remove some"):
         led.add(ledger, known.flip(known.LOGISTIC[3], 8), known.PLACE)
     assert led.add(ledger, known.flip(known.LOGISTIC[2], 4), known.PLACE) == (ledger, "r3")
+
+
+def test_what_fits_into_a_nearly_full_ledger_is_kept(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(led, "MAX_ROWS", 4)
+    levels = tuple(LadderLevel(n, onset) for n, onset in enumerate(known.flips(known.LOGISTIC[:6]), 1))
+    with pytest.raises(led.LedgerFull, match="4 rows and is full; 2 of what was found had no room") as full:
+        led.add_ladder(led.Ledger(), LadderResult(1, levels, alpha=("-2.5", "0.1")), known.PLACE)
+    assert [row.level for row in full.value.ledger.rows] == [1, 2, 3, 4]
+    # What was said of six levels is not said of four.
+    assert full.value.ledger.alphas == ()
+    again = [level.onset for level in levels[1:]]
+    with pytest.raises(led.LedgerFull) as still:
+        led.add_all(full.value.ledger, again, known.PLACE)
+    assert (still.value.left_out, still.value.ledger) == (2, full.value.ledger)
+
+
+def test_a_ladder_brings_its_alpha_and_what_it_met() -> None:
+    levels = tuple(LadderLevel(n, onset) for n, onset in enumerate(known.flips(known.LOGISTIC[:6]), 1))
+    met = known.onset(Kind.PITCHFORK, "2.9", 1, 1, "1e-20", Status.PROVED)
+    result = LadderResult(1, levels, alpha=("-2.5029", "0.0001"), besides=(met,))
+    ledger = led.add_ladder(led.Ledger(), result, known.PLACE)
+    assert [row.level for row in ledger.rows] == [1, 2, 3, 4, 5, 6, None]
+    found = led.estimates(ledger, "L1")
+    assert found is not None
+    assert found.alpha is not None
+    assert found.alpha.value == Fraction("-2.5029")
+    # Followed again, deeper: the new one takes the old one's place.
+    deeper = (*levels, LadderLevel(7, known.flip(known.LOGISTIC[6], 64)))
+    again = led.add_ladder(ledger, LadderResult(1, deeper, alpha=("-2.50291", "0.00001")), known.PLACE)
+    assert [alpha.value for alpha in again.alphas] == ["-2.50291"]
+    # One more level by a click: what was said is of another set of rows.
+    longer, _ = led.add(ledger, known.flip(known.LOGISTIC[6], 64), known.PLACE)
+    found = led.estimates(longer, "L1")
+    assert found is not None
+    assert found.alpha is None
+    assert led.note(ledger, "r1", "x").alphas == ledger.alphas
 
 
 def test_estimates_of_the_logistic_ladder() -> None:

@@ -8,15 +8,26 @@ import os
 import stat
 import zipfile
 from dataclasses import replace
+from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
 import onset_samples as known
 import pytest
 from hypothesis import given, settings
-from session_samples import CUBIC_TEXT, certified_session, full_session, json_of, packed, pick, sessions
+from session_samples import (
+    CUBIC_TEXT,
+    certified_session,
+    followed_session,
+    full_session,
+    json_of,
+    packed,
+    pick,
+    sessions,
+)
 
 from tinemark.document import atomic_file, session_file
+from tinemark.document import ledger as led
 from tinemark.document import session as ses
 from tinemark.document.ladders import grouped
 from tinemark.document.proofs import with_doubts
@@ -75,11 +86,35 @@ def test_the_version_1_file_still_opens() -> None:
     assert regrouped[0] == regrouped[1]
 
 
-def test_the_present_version_is_written_to_the_byte() -> None:
-    """A change of what is written needs a new schema version: then this file gets a younger brother."""
+def test_the_version_2_file_still_opens() -> None:
+    """Written once by schema version 2 and never again. No alpha was kept then, so none is there."""
     data = (FILES / "version_2.tinemark").read_bytes()
     assert read_session(data) == certified_session()
+    assert read_session(data).ledger.alphas == ()
+
+
+def test_the_present_version_is_written_to_the_byte() -> None:
+    """A change of what is written needs a new schema version: then this file gets a younger brother."""
+    data = (FILES / "version_3.tinemark").read_bytes()
+    assert read_session(data) == followed_session()
     assert session_bytes(read_session(data)) == data
+
+
+def test_alpha_of_a_followed_ladder_is_there_again() -> None:
+    """As the ratio panel shows it: the number while the ladder's rows are the same, else nothing."""
+    opened = read_session(session_bytes(followed_session()))
+    found = led.estimates(opened.ledger, "L1")
+    assert found is not None
+    assert found.alpha is not None
+    assert (found.alpha.value, found.alpha.uncertainty) == (Fraction("-2.50290787509589"), Fraction("3e-14"))
+    without = led.remove(opened.ledger, ["r6"])
+    assert without.alphas == opened.ledger.alphas[1:]
+    shorter = led.estimates(without, "L1")
+    assert shorter is not None
+    assert (shorter.alpha, shorter.alpha_reason) == (None, "")
+    window = led.estimates(opened.ledger, "L7")
+    assert window is not None
+    assert (window.alpha, window.alpha_reason) == (None, "alpha needs at least 5 successive proved levels")
 
 
 def test_a_repacked_session_opens(tmp_path: Path) -> None:
@@ -132,9 +167,9 @@ def test_an_older_file_is_brought_up_to_date(monkeypatch: pytest.MonkeyPatch) ->
 
 
 def test_a_newer_version_is_refused_in_words() -> None:
-    data = packed(json_of(full_session()).replace(b'"version": 2', b'"version": 7'))
+    data = packed(json_of(full_session()).replace(b'"version": 3', b'"version": 7'))
     with pytest.raises(
-        SessionFileError, match=r"f, version: has schema version 7.*reads up to 2; open it with a newer"
+        SessionFileError, match=r"f, version: has schema version 7.*reads up to 3; open it with a newer"
     ):
         read_session(data, file="f")
 

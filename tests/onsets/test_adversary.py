@@ -13,6 +13,7 @@ from tinemark.onsets.ball_orbits import LONGEST_EXPONENT, fraction_of
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.polish import Rough, settle_onset
 from tinemark.onsets.results import Kind, Onset, Status
+from tinemark.onsets.verification import verify_onset
 from tinemark.systems.errors import NoOnsetFound, SystemFileError, Unbounded
 from tinemark.systems.system import System
 
@@ -47,6 +48,10 @@ def test_onset_at_zero_is_enclosed() -> None:
         assert onset.status is Status.PROVED
         assert onset.value_fraction == 0
         assert Fraction(onset.lower) < 0 < Fraction(onset.upper)
+        # As many decimals as a number of the parameter's size with these digits has, and no row of zeros.
+        assert onset.digits == 20
+        assert len(onset.value) <= len("0.") + 22
+        finish(verify_onset(own_map("(r + 3)*x*(1 - x)", low="0"), onset))
 
 
 @pytest.mark.parametrize("low", ["-1", None])

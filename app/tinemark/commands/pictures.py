@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 
 from tinemark.commands.output import check_target, not_written
 from tinemark.commands.progress import Progress
-from tinemark.systems.errors import NoOnsetFound
+from tinemark.systems.errors import NoOnsetFound, TinemarkError
 from tinemark.systems.exact import Exact
 
 if TYPE_CHECKING:
@@ -46,7 +46,13 @@ def picture(options: PictureOptions) -> None:
 
     check_target(options.output)
     system = find_system(options.system)
-    left, right = sorted((options.start.fraction, options.stop.fraction))
+    left, right = options.start.fraction, options.stop.fraction
+    if left > right:
+        raise TinemarkError(
+            f"runs from {options.start.text} down to {options.stop.text}, but a picture goes left to right",
+            where="--range",
+            what_to_do=f"write --range {options.stop.text} {options.start.text}",
+        )
     session = replace(new_session(system), view=first_view(swept_over(system, left, right)))
     steps = draw(session, system, options.size, options.output)
     print(f"{options.output}: {options.size[0]} x {options.size[1]} pixels, {steps} steps")

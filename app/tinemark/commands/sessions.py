@@ -111,7 +111,8 @@ def _with_a_ladder(session: Session, system: System) -> Session:
 
 def _groups(session: Session) -> list[tuple[str, list[Found], Scaling | None]]:
     """The ledger's ladders with what they say together, then what belongs to none."""
-    from tinemark.document.ledger import ladder_ids, ladder_rows, loose_rows
+    from tinemark.document.ledger import alpha_of, ladder_ids, ladder_rows, loose_rows
+    from tinemark.onsets.ladder_points import COVERAGE, Estimate
     from tinemark.onsets.results import LadderLevel
     from tinemark.onsets.scaling import points_of, scaling
 
@@ -119,7 +120,12 @@ def _groups(session: Session) -> list[tuple[str, list[Found], Scaling | None]]:
     for name in ladder_ids(session.ledger):
         rows = ladder_rows(session.ledger, name)
         flips = [LadderLevel(row.level, row.onset) for row in rows if row.level]
-        groups.append((name, [(row.level, row.onset) for row in rows], scaling(points_of(flips))))
+        said = scaling(points_of(flips))
+        alpha = alpha_of(session.ledger, name)
+        if alpha is not None:
+            number = Estimate(alpha.value, alpha.uncertainty, COVERAGE) if alpha.value else None
+            said = replace(said, alpha=number, alpha_reason=alpha.reason)
+        groups.append((name, [(row.level, row.onset) for row in rows], said))
     loose: list[Found] = [(None, row.onset) for row in loose_rows(session.ledger)]
     return groups + ([("", loose, None)] if loose else [])
 

@@ -7,7 +7,7 @@ from collections.abc import Collection, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
-from tinemark.document.estimates import LadderEstimates, estimates_of
+from tinemark.document.estimates import LadderEstimates, estimates_of, with_alpha
 from tinemark.document.ladders import direction, grouped
 from tinemark.document.rounding import decimal_text, exponent
 from tinemark.document.row import Place, Row, place_of, row_id
@@ -15,12 +15,16 @@ from tinemark.onsets.results import Criticality, Kind, LadderResult, Onset, Stat
 from tinemark.systems.errors import TinemarkError
 
 __all__ = [
+    "FollowedAlpha",
     "LadderEstimates",
     "Ledger",
+    "LedgerFull",
     "Place",
     "Row",
     "add",
+    "add_all",
     "add_ladder",
+    "alpha_of",
     "estimates",
     "eye_pick",
     "ladder_ids",
@@ -43,15 +47,46 @@ _RANK = {Status.PROVED: 3, Status.ESTIMATED: 2, Status.READ_BY_EYE: 1, Status.ME
 
 
 @dataclass(frozen=True)
+class FollowedAlpha:
+    """What following a ladder said of how its cycles shrink.
+
+    Attributes
+    ----------
+    rows
+        Names of the ladder's rows by level; it holds while they are that ladder's flips.
+    value, uncertainty
+        Decimal texts, the uncertainty at 95 % coverage; empty where there is none, and `reason` says why.
+    """
+
+    rows: tuple[str, ...]
+    value: str = ""
+    uncertainty: str = ""
+    reason: str = ""
+
+
+@dataclass(frozen=True)
 class Ledger:
-    """Rows in the user's order, and the number the next row will carry."""
+    """Rows in the user's order, the number the next row will carry, and the alpha of followed ladders."""
 
     rows: tuple[Row, ...] = ()
     next_number: int = 1
+    alphas: tuple[FollowedAlpha, ...] = ()
 
     def row(self, row_id: str) -> Row | None:
         """The row of that name, None when it is gone."""
         return next((row for row in self.rows if row.id == row_id), None)
+
+
+class LedgerFull(TinemarkError):
+    """Not all that was to be kept fits; `ledger` holds what did, and nothing that was there is lost."""
+
+    def __init__(self, ledger: Ledger, left_out: int) -> None:
+        super().__init__(
+            f"the ledger holds {MAX_ROWS} rows and is full; {left_out} of what was found had no room",
+            what_to_do="remove some rows first, then ask again",
+        )
+        self.ledger = ledger
+        self.left_out = left_out
 
 
 # Changes
@@ -75,21 +110,75 @@ def add(ledger: Ledger, onset: Onset, place: Place, *, stated_base: int = 0) -> 
 
     Raises
     ------
-    TinemarkError
-        The ledger is full (`MAX_ROWS`).
+    LedgerFull
+        There is no room (`MAX_ROWS`).
     """
-    rows, number, held_by = _insert(ledger.rows, ledger.next_number, onset, place, stated_base)
-    return Ledger(grouped(rows), number), held_by
+    try:
+        rows, number, held_by = _insert(ledger.rows, ledger.next_number, onset, place, stated_base)
+    except _NoRoom:
+        raise LedgerFull(ledger, 1) from None
+    return replace(ledger, rows=grouped(rows), next_number=number), held_by
+
+
+def add_all(ledger: Ledger, onsets: Sequence[Onset], place: Place) -> tuple[Ledger, tuple[str, ...]]:
+    """Add several picks; see `add`. Gives the rows that now hold them.
+
+    Raises
+    ------
+    LedgerFull
+        Not all of them fit; those that do are in the ledger that the error brings.
+    """
+    rows, number, held = ledger.rows, ledger.next_number, []
+    left_out = 0
+    for onset in onsets:
+        try:
+            rows, number, row = _insert(rows, number, onset, place, 0)
+        except _NoRoom:
+            left_out += 1
+            continue
+        held.append(row)
+    changed = replace(ledger, rows=grouped(rows), next_number=number)
+    if left_out:
+        raise LedgerFull(changed, left_out)
+    return changed, tuple(held)
 
 
 def add_ladder(ledger: Ledger, result: LadderResult, place: Place) -> Ledger:
-    """Add every level of a followed ladder, and what else it met; see `add`."""
-    rows, number = ledger.rows, ledger.next_number
-    for level in result.levels:
-        rows, number, _ = _insert(rows, number, level.onset, place, result.base_period)
-    for onset in result.besides:
-        rows, number, _ = _insert(rows, number, onset, place, 0)
-    return Ledger(grouped(rows), number)
+    """Add every level of a followed ladder, what else it met, and its alpha; see `add`.
+
+    Raises
+    ------
+    LedgerFull
+        Not all of them fit; those that do are in the ledger that the error brings.
+    """
+    rows, number, held = ledger.rows, ledger.next_number, []
+    left_out = 0
+    onsets = [(level.onset, result.base_period) for level in result.levels]
+    onsets += [(onset, 0) for onset in result.besides]
+    for onset, base in onsets:
+        try:
+            rows, number, row = _insert(rows, number, onset, place, base)
+        except _NoRoom:
+            left_out += 1
+            continue
+        held.append(row)
+    alphas = ledger.alphas
+    names = tuple(held[: len(result.levels)])
+    if not left_out and names and (result.alpha is not None or result.alpha_reason):
+        value, uncertainty = result.alpha or ("", "")
+        kept = [alpha for alpha in alphas if not set(alpha.rows) & set(names)]
+        alphas = (*kept, FollowedAlpha(names, value, uncertainty, result.alpha_reason))
+    changed = _with_rows(replace(ledger, next_number=number, alphas=alphas), rows)
+    if left_out:
+        raise LedgerFull(changed, left_out)
+    return changed
+
+
+def _with_rows(ledger: Ledger, rows: Sequence[Row]) -> Ledger:
+    """The ledger with other rows; what was said of ladders whose rows are gone goes with them."""
+    names = {row.id for row in rows}
+    alphas = tuple(alpha for alpha in ledger.alphas if names.issuperset(alpha.rows))
+    return replace(ledger, rows=grouped(rows), alphas=alphas)
 
 
 def replace_onset(ledger: Ledger, row_id: str, onset: Onset) -> Ledger:
@@ -113,12 +202,12 @@ def replace_onset(ledger: Ledger, row_id: str, onset: Onset) -> Ledger:
     new = _taking_in(new, doubles)
     gone = {row.id for row in doubles}
     rows = tuple(new if row.id == row_id else row for row in ledger.rows if row.id not in gone)
-    return replace(ledger, rows=grouped(rows))
+    return _with_rows(ledger, rows)
 
 
 def remove(ledger: Ledger, row_ids: Collection[str]) -> Ledger:
     """Remove rows; names that are not there are passed over."""
-    return replace(ledger, rows=grouped([row for row in ledger.rows if row.id not in row_ids]))
+    return _with_rows(ledger, [row for row in ledger.rows if row.id not in row_ids])
 
 
 def note(ledger: Ledger, row_id: str, text: str) -> Ledger:
@@ -140,15 +229,17 @@ def reorder(ledger: Ledger, row_ids: Sequence[str]) -> Ledger:
     return replace(ledger, rows=(*named, *(row for row in ledger.rows if row.id not in taken)))
 
 
+class _NoRoom(Exception):
+    """The ledger is full."""
+
+
 def _insert(
     rows: tuple[Row, ...], number: int, onset: Onset, place: Place, stated_base: int
 ) -> tuple[tuple[Row, ...], int, str]:
     doubles = [row for row in rows if row.place == place and same_onset(row.onset, onset)]
     if not doubles:
         if len(rows) >= MAX_ROWS:
-            raise TinemarkError(
-                f"the ledger holds {MAX_ROWS} rows and is full", what_to_do="remove some rows first"
-            )
+            raise _NoRoom
         new = Row(row_id(number), onset, place.system_key, place.fixed, stated_base=stated_base)
         return (*rows, new), number + 1, new.id
     best = max(doubles, key=lambda row: _quality(row.onset))
@@ -243,7 +334,18 @@ def ladder_title(ledger: Ledger, ladder_id: str) -> str:
 def estimates(ledger: Ledger, ladder_id: str) -> LadderEstimates | None:
     """Gaps, ratios, limit, class and next onset of a ladder; None when there is no such ladder."""
     rows = ladder_rows(ledger, ladder_id)
-    return estimates_of(ladder_id, rows) if rows else None
+    if not rows:
+        return None
+    found, alpha = estimates_of(ladder_id, rows), alpha_of(ledger, ladder_id)
+    if alpha is None:
+        return found
+    return with_alpha(found, (alpha.value, alpha.uncertainty) if alpha.value else None, alpha.reason)
+
+
+def alpha_of(ledger: Ledger, ladder_id: str) -> FollowedAlpha | None:
+    """What following this very ladder said of its cycles; None where its rows are others by now."""
+    flips = {row.id for row in ladder_rows(ledger, ladder_id) if row.onset.kind is Kind.FLIP}
+    return next((alpha for alpha in ledger.alphas if flips == set(alpha.rows)), None)
 
 
 # Reading by eye

@@ -20,5 +20,10 @@ def with_certificates(plain: dict[str, Any]) -> dict[str, Any]:
     return {**plain, "ledger": {**plain["ledger"], "rows": rows}, "certified": []}
 
 
-MIGRATIONS: Mapping[int, Migration] = {1: with_certificates}
+def with_alphas(plain: dict[str, Any]) -> dict[str, Any]:
+    """Version 2 to 3: the ledger keeps the alpha of ladders that were followed. None was kept before."""
+    return {**plain, "ledger": {**plain["ledger"], "alphas": []}}
+
+
+MIGRATIONS: Mapping[int, Migration] = {1: with_certificates, 2: with_alphas}
 """For each old schema version the step to the next one."""

@@ -1,4 +1,4 @@
-"""A session as plain data: what stands in `session.json`, version 2, and the limits of every field.
+"""A session as plain data: what stands in `session.json`, version 3, and the limits of every field.
 
 The file knows no class of ours: these structs only check shapes, and two functions translate. A
 change here is a new schema version with a migration from the one before.
@@ -16,7 +16,7 @@ from msgspec import Meta
 from tinemark.density.request import SweepRule, View
 from tinemark.density.tone import PALETTE_NAMES
 from tinemark.document.ladders import MAX_LEVEL
-from tinemark.document.ledger import MAX_ROWS, Ledger
+from tinemark.document.ledger import MAX_ROWS, FollowedAlpha, Ledger
 from tinemark.document.row import Row
 from tinemark.document.session import BUDGETS, TONES, PictureSettings, Session
 from tinemark.document.views import (
@@ -32,7 +32,7 @@ from tinemark.onsets.results import Certificate, Criticality, Kind, Onset, Sensi
 from tinemark.systems.errors import NumberError
 
 FORMAT: Final = "tinemark-session"
-VERSION: Final = 2
+VERSION: Final = 3
 MAX_SYSTEM_TEXT = 512 * 1024
 """Characters of all system texts together: each is read when a session is opened."""
 
@@ -136,11 +136,21 @@ class PlainRow(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     note: Words
 
 
+class PlainAlpha(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
+    """The alpha of a ladder that was followed, or why there is none."""
+
+    rows: Annotated[list[RowId], Meta(min_length=1, max_length=MAX_LEVEL)]
+    value: Decimal | None
+    uncertainty: Decimal | None
+    reason: Words
+
+
 class PlainLedger(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     """The ledger."""
 
     rows: Annotated[list[PlainRow], Meta(max_length=MAX_ROWS)]
     next_number: Annotated[int, Meta(ge=1, le=999_999_999)]
+    alphas: Annotated[list[PlainAlpha], Meta(max_length=MAX_ROWS)]
 
 
 class PlainSystem(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
@@ -154,7 +164,7 @@ class PlainSession(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     """All of `session.json`."""
 
     format: Literal["tinemark-session"]
-    version: Literal[2]
+    version: Literal[3]
     title: Words
     notes: LongText
     system: LongText
@@ -210,7 +220,12 @@ def to_plain(session: Session) -> PlainSession:
         ),
         probe=None if session.probe is None else number_text(session.probe),
         ledger=PlainLedger(
-            [_plain_row(row, places) for row in session.ledger.rows], session.ledger.next_number
+            [_plain_row(row, places) for row in session.ledger.rows],
+            session.ledger.next_number,
+            [
+                PlainAlpha(list(alpha.rows), alpha.value or None, alpha.uncertainty or None, alpha.reason)
+                for alpha in session.ledger.alphas
+            ],
         ),
         systems=[PlainSystem(key, text) for key, text in session.systems],
         certified=texts,
@@ -348,7 +363,17 @@ def _ledger(plain: PlainLedger, certified: list[str]) -> Ledger:
             if (row.ladder, row.level) in levels:
                 raise Misfit(f"{key}.level", f"level {row.level} of ladder {row.ladder} is there twice")
             levels.add((row.ladder, row.level))
-    return Ledger(tuple(_row(row, certified) for row in plain.rows), plain.next_number)
+    for n, alpha in enumerate(plain.alphas):
+        key = f"ledger.alphas[{n}]"
+        if not seen.issuperset(alpha.rows):
+            raise Misfit(f"{key}.rows", "names a row that is not in the ledger")
+        if (alpha.value is None) != (alpha.uncertainty is None):
+            raise Misfit(key, "value and uncertainty go together")
+    alphas = tuple(
+        FollowedAlpha(tuple(alpha.rows), alpha.value or "", alpha.uncertainty or "", alpha.reason)
+        for alpha in plain.alphas
+    )
+    return Ledger(tuple(_row(row, certified) for row in plain.rows), plain.next_number, alphas)
 
 
 def _certificate(plain: PlainCertificate, certified: list[str]) -> Certificate:

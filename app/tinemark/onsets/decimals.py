@@ -50,6 +50,16 @@ def rounded(value: Fraction, places: int) -> int:
     return round(value * Fraction(10) ** places)
 
 
+def places_shown(lower: Fraction, upper: Fraction, places: int, digits: int, size: Fraction) -> int:
+    """Decimal places for an enclosure: those worked for; where it holds zero those of a number of some size.
+
+    Zero, as far as it can be told, has no significant digits; its digits are those of a number of that size.
+    """
+    if not lower <= 0 <= upper:
+        return places
+    return min(places, decimal_places(size, digits + GUARD_DIGITS))
+
+
 def enclosure_texts(
     lower: Fraction, upper: Fraction, places: int, *, centre: Fraction | None = None
 ) -> EnclosureTexts:

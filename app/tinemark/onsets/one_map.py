@@ -68,6 +68,14 @@ class OneMap:
         return tuple(Surface(put_in(surface.expr, values), surface.kind) for surface in self.surfaces)
 
     @property
+    def parameter_size(self) -> Fraction:
+        """A size that is typical of the swept parameter: its range, else its value, else 1."""
+        swept = self.system.parameter(self.parameter)
+        if swept.range is not None:
+            return swept.range[1].fraction - swept.range[0].fraction or Fraction(1)
+        return abs(swept.value.fraction) or Fraction(1)
+
+    @property
     def observes_state(self) -> bool:
         """Whether the observed quantity is the state itself."""
         return self.observe == Name(self.state)

@@ -10,6 +10,7 @@ from tinemark.onsets.decimals import (
     enclosure_texts,
     fixed_text,
     leading_power,
+    places_shown,
     rounded,
 )
 from tinemark.onsets.one_map import OneMap
@@ -31,6 +32,7 @@ def proved_onset(
     one: OneMap, naming: Naming, proof: Proof, digits: int, places: int, shown: Fraction
 ) -> Onset:
     """An onset with the enclosure a proof found; estimated where the proof calls it degenerate."""
+    places = places_shown(*proof.parameter, places, digits, one.parameter_size)
     texts = enclosure_texts(*proof.parameter, places)
     return Onset(
         parameter=one.parameter,
@@ -72,6 +74,7 @@ def estimated_onset(
     """
     x, r = at
     places = decimal_places(half, 2)
+    places = places_shown(r - half, r + half, places, digits, one.parameter_size)
     texts = enclosure_texts(r - half, r + half, places)
     hold = leading_power(r) - leading_power(half) if r else 1
     return Onset(

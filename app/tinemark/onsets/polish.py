@@ -26,6 +26,7 @@ from tinemark.onsets.decimals import (
     enclosure_texts,
     fixed_text,
     leading_power,
+    places_shown,
     rounded,
 )
 from tinemark.onsets.float_map import float_map
@@ -49,7 +50,7 @@ MOST_STEPS = 30
 SLOW_STEPS = 6
 """So many Newton steps in a row that each shrink by a factor near a constant: the equations are singular."""
 LEAST_SIZE = Fraction(1, 10**40)
-"""An onset at zero has no significant digits: those of this size are given instead."""
+"""An onset at zero has no significant digits: it is worked out as one of this size."""
 
 
 @dataclass(frozen=True)
@@ -259,6 +260,7 @@ def shown_state(loops: BallLoops, proof: Proof, steps: int, bits: int) -> Genera
 
 
 def _onset_of(one: OneMap, rough: Rough, proof: Proof, digits: int, places: int) -> Onset:
+    places = places_shown(*proof.parameter, places, digits, one.parameter_size)
     texts = enclosure_texts(*proof.parameter, places)
     flip = rough.kind is Kind.FLIP
     return Onset(
@@ -314,6 +316,7 @@ def _estimate_of(one: OneMap, rough: Rough, digits: int, half: Fraction, reason:
     """An onset that could not be proved, with an error estimate."""
     flip = rough.kind is Kind.FLIP
     places = decimal_places(half, 2)
+    places = places_shown(rough.r - half, rough.r + half, places, digits, one.parameter_size)
     texts = enclosure_texts(rough.r - half, rough.r + half, places)
     hold = leading_power(rough.r) - leading_power(half) if rough.r else 1
     return Onset(

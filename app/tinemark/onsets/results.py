@@ -104,7 +104,8 @@ class Onset:
         Decimal texts. `lower <= onset <= upper`: rigorously when proved, at 95 % coverage
         when estimated; half a pixel each way when read by eye.
     digits
-        Significant digits of `value` that hold.
+        Significant digits of `value` that hold; of a value that may be zero, those of a number as large as
+        the parameter's range.
     reason
         Why the value is not proved; empty when it is.
     states

@@ -15,7 +15,7 @@ from tinemark.onsets.results import Kind, LadderResult, Onset, Status
 from tinemark.systems.system import System
 from tinemark.window.ladder_questions import further_levels, ladder_question, ladder_request
 from tinemark.window.ledger_marks import marks_of
-from tinemark.window.onset_jobs import Job
+from tinemark.window.onset_jobs import Job, sentence
 
 if TYPE_CHECKING:
     from tinemark.window.main_window import MainWindow
@@ -103,7 +103,11 @@ class RowWork(QObject):
         half = session.view.width / diagram.parts.columns / 2
         onset = ledgers.eye_pick(session.parameter, parameter, half)
         place = ledgers.place_of(self._keeper.system, session.parameter)
-        ledger, row = ledgers.add(session.ledger, onset, place)
+        try:
+            ledger, row = ledgers.add(session.ledger, onset, place)
+        except ledgers.LedgerFull as full:
+            self._window.status.show_words(sentence(str(full)), "warning")
+            return
         self._keeper.set_ledger("read by eye", ledger)
         self.select(row)
         words = f"Read by eye: {session.parameter} = {diagram.gestures.by_eye(parameter)}"
@@ -128,10 +132,17 @@ class RowWork(QObject):
                 self._window.status.show_words("The row already holds this onset as well as it is known.")
             self._keeper.set_ledger("refine a row", refined)
         else:
-            for onset in onsets:
-                ledger, row = ledgers.add(ledger, onset, place)
-            if ledger == self._keeper.session.ledger:
-                self._window.status.show_words("This onset is in the ledger already; its row is selected.")
+            try:
+                ledger, rows = ledgers.add_all(ledger, onsets, place)
+                row = rows[-1]
+            except ledgers.LedgerFull as full:
+                ledger, row = full.ledger, self.selected
+                self._window.status.show_words(sentence(str(full)), "warning")
+            else:
+                if ledger == self._keeper.session.ledger:
+                    self._window.status.show_words(
+                        "This onset is in the ledger already; its row is selected."
+                    )
             label = "pick an onset" if len(onsets) == 1 else f"pick {len(onsets)} onsets"
             self._keeper.set_ledger(label, ledger)
         self.select(row)
@@ -140,7 +151,11 @@ class RowWork(QObject):
         if result.levels and self.knows(system):
             place = ledgers.place_of(system, result.levels[0].onset.parameter)
             self._window.ratios.keep_alpha(result)
-            ledger = ledgers.add_ladder(self._keeper.session.ledger, result, place)
+            try:
+                ledger = ledgers.add_ladder(self._keeper.session.ledger, result, place)
+            except ledgers.LedgerFull as full:
+                ledger = full.ledger
+                self._window.status.show_words(sentence(str(full)), "warning")
             self._keeper.set_ledger("follow the ladder", ledger)
 
     # --- changes -------------------------------------------------------------------------------------------
