@@ -201,7 +201,8 @@ def _proved(
             place = identity.points[0].at(arb(r, half))
         _certain(one, identity, place.mid(), r, bits)
         proof = yield from prove_fixed_cycle(loops, identity.points, identity.straight, r, half, bits)
-        at, around = fraction_of(place.mid()), max(fraction_of(place.rad()), fraction_of(half))
+        # Wider than the place is known, so that a certificate's rounded side still holds all of it.
+        at, around = fraction_of(place.mid()), max(2 * fraction_of(place.rad()), fraction_of(half))
         return proof, ((fraction_of(r), fraction_of(half)), (at, around))
     assert identity.total is not None
     for _ in range(4):

@@ -70,14 +70,14 @@ def certified(
         Bits the proof worked with.
     parameter, states
         Middle and half-width of the proved box: the parameter, and one cycle point as (name, side) in
-        the system's order of states.
+        the system's order of states. A state that is known exactly has no width.
     keep_within
         Enclosures found by the proof, as (lower, upper): the parameter, then each state. Where the
         rounded box does not hold them, there is no certificate.
     """
     if onset.status is not Status.PROVED:
         return onset
-    sides = [side_texts(*side) for side in (parameter, *(side for _, side in states))]
+    sides = [side_texts(*side) for side in _with_width((parameter, *(side for _, side in states)))]
     if any(text is None for text in sides):
         return onset
     texts = [text for text in sides if text is not None]
@@ -96,6 +96,12 @@ def certified(
         digest="",
     )
     return replace(onset, certificate=replace(certificate, digest=digest_of(certificate, onset)))
+
+
+def _with_width(sides: Sequence[Side]) -> list[Side]:
+    """The sides; one without width, of a state known exactly, as narrow as the narrowest of the others."""
+    least = min((half for _, half in sides if half > 0), default=Fraction(0))
+    return [(middle, half or least) for middle, half in sides]
 
 
 def cycle_period(onset: Onset) -> int:

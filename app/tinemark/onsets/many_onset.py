@@ -69,7 +69,7 @@ def settle_onset(
     ----------
     kind
         Flip, fold or Neimark-Sacker; or a crossing of branches, for which the kind of the answer is the one
-        of the two that holds.
+        of the two that holds; or a border collision, where the rough cycle's first point touches.
     digits
         Significant digits wanted of the parameter.
     scales
@@ -86,6 +86,10 @@ def settle_onset(
         from tinemark.onsets.flow_onset import settle_flow
 
         return (yield from settle_flow(float_map, kind, rough, digits, scales, reach))
+    if kind is Kind.BORDER_COLLISION:
+        from tinemark.onsets.many_borders import settle_border
+
+        return (yield from settle_border(float_map, rough, digits, scales, reach))
     if kind in (Kind.TRANSCRITICAL, Kind.PITCHFORK):
         from tinemark.onsets.many_branch_points import settle_branch_point
 
@@ -174,8 +178,7 @@ def _proved(
                 places = max(places, decimal_places((low + high) / 2, digits + GUARD_DIGITS))
             if high - low <= Fraction(1, 10) ** (places + 1):
                 onset = proved_onset(many, kind, proof, first.place.period, digits, places)
-                if not proof.conservative:
-                    onset = with_certificate(many, onset, proof, bits)
+                onset = with_certificate(many, onset, proof, bits)
                 return _settled_on(onset, first, findings_of(proof))
             reason = "the enclosure stayed wider than the digits asked for"
         bits = max(bits * 3 // 2, working_bits(places, first.place.period))

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Iterator
 
-from tinemark.verify import blame, border, branch_points, many_states, one_state
+from tinemark.verify import blame, border, branch_points, many_branch_points, many_states, one_state
 from tinemark.verify.claims import (
     BORDER_COLLISION,
     BRANCH_POINTS,
@@ -77,7 +77,12 @@ def _check(claim: Claim, watch: Watch) -> None:
     if len(plain.states) > 1:
         many = ManyStates(formulas, plain.states, paper.parameter, watch)
         watch.expect(PASSES_MANY * paper.period * many.cost(bits, 2))
-        many_states.prove(many, paper, numbers, bits, claim.states)
+        if paper.kind == BORDER_COLLISION:
+            raise NotCheckable(
+                "border collisions of several states are not proved, so there is nothing to check"
+            )
+        prove = many_branch_points.prove if paper.kind in BRANCH_POINTS else many_states.prove
+        prove(many, paper, numbers, bits, claim.states)
         same_digest(claim, paper)
         return
     one = OneState(formulas[0], plain.states[0], paper.parameter, watch)

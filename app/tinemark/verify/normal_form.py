@@ -21,12 +21,18 @@ from tinemark.verify.frames import Rows
 from tinemark.verify.intervals import Interval
 from tinemark.verify.many_cycles import ManyStates, Stretch
 from tinemark.verify.matrices import null_vector, solved, transposed
+from tinemark.verify.mirrors import Mirror
 
 
 def flip_coefficient(
-    many: ManyStates, box: Sequence[Interval], rows: Rows, period: int, bits: int
+    many: ManyStates,
+    box: Sequence[Interval],
+    rows: Rows,
+    period: int,
+    bits: int,
+    mirror: Mirror | None = None,
 ) -> Interval:
-    """Six times the flip coefficient, but for a positive factor.
+    """Six times the flip coefficient, but for a positive factor, of f^p or of f^p seen in a mirror.
 
     Raises
     ------
@@ -35,11 +41,41 @@ def flip_coefficient(
     """
     real = Real(bits)
     q, p = null_vectors(real, shifted(real, rows, iv.of_whole(-1)))
-    zero = [real.zero] * many.size
-    square = _carried(real, many, box, period, q, [zero], bits, 2)[0]
+    return real.mul(cubic(many, box, rows, period, q, p, bits, mirror), dot(real, p, q))
+
+
+def cubic(
+    many: ManyStates,
+    box: Sequence[Interval],
+    rows: Rows,
+    period: int,
+    q: Sequence[Interval],
+    p: Sequence[Interval],
+    bits: int,
+    mirror: Mirror | None = None,
+) -> Interval:
+    """The bracket of a flip on its own: <p, C(q, q, q) + 3 B(q, (1 - A)^-1 B(q, q))>."""
+    real = Real(bits)
+    square = _carried(real, many, box, period, q, [[real.zero] * many.size], bits, 2)[0]
+    if mirror is not None:
+        square = mirror.turned(square)
     w = solved(real, _less(real, rows, real.one), square)
     cube = _carried(real, many, box, period, q, [w], bits, 3)[-1]
-    return real.mul(dot(real, p, cube), dot(real, p, q))
+    return dot(real, p, cube if mirror is None else mirror.turned(cube))
+
+
+def quadratic(
+    many: ManyStates,
+    box: Sequence[Interval],
+    period: int,
+    q: Sequence[Interval],
+    p: Sequence[Interval],
+    bits: int,
+) -> Interval:
+    """<p, B(q, q)>."""
+    real = Real(bits)
+    square = _carried(real, many, box, period, q, [[real.zero] * many.size], bits, 2)[0]
+    return dot(real, p, square)
 
 
 def lyapunov_coefficient(
