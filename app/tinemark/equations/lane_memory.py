@@ -128,18 +128,21 @@ class _Vectors:
             total = term if total is None else self.add(total, term)
         return total
 
-    def each(self, count: int, body: Callable[[Any], None]) -> None:
-        """A loop over `count` numbers, a vector at a time."""
-        with cgutils.for_range(self.builder, ir.Constant(_PLACE, count // _WIDTH)) as loop:
+    def lanes(self, count: Any, body: Callable[[Any], None]) -> None:
+        """A loop over the first `count` lanes of a row, a vector at a time; the last may reach beyond."""
+        up = self.builder.add(count, ir.Constant(_PLACE, _WIDTH - 1))
+        with cgutils.for_range(self.builder, self.builder.lshr(up, ir.Constant(_PLACE, 3))) as loop:
             body(self.builder.mul(loop.index, ir.Constant(_PLACE, _WIDTH)))
 
-    def lane(self, offset: Any) -> Any:
-        """Place within its row of a place within a block of rows."""
-        return self.builder.and_(offset, ir.Constant(_PLACE, LANES - 1))
+    def rows(self, rows: int, count: Any, body: Callable[[Any, Any, Any], None]) -> None:
+        """A loop over rows and lanes: number of the row, place of the lane, place in the block."""
+        with cgutils.for_range(self.builder, ir.Constant(_PLACE, rows)) as loop:
+            row = self.builder.mul(loop.index, ir.Constant(_PLACE, LANES))
+            self.lanes(count, lambda lane: body(loop.index, lane, self.builder.add(row, lane)))
 
 
 def stage_points(rows: int, start: int, target: int, step: int, stages: Sequence[Terms]) -> Any:
-    """``f(W, s)``: point s of a Runge-Kutta step, `start` + `step` times stage sum number s, into `target`.
+    """``f(W, lanes, s)``: point s of a Runge-Kutta step into `target`: `start` + `step` times sum number s.
 
     Parameters
     ----------
@@ -154,7 +157,7 @@ def stage_points(rows: int, start: int, target: int, step: int, stages: Sequence
     """
     size = rows * LANES
 
-    def slow(memory: Any, s: int) -> None:
+    def slow(memory: Any, _lanes: int, s: int) -> None:
         total = np.zeros(size)
         for base, weight in stages[s - 1]:
             total += weight * memory[base : base + size]
@@ -165,11 +168,11 @@ def stage_points(rows: int, start: int, target: int, step: int, stages: Sequence
         return slow
 
     @intrinsic
-    def fast(_typing, _memory, _s):  # type: ignore[no-untyped-def]
-        signature = types.void(_memory, types.intp)
+    def fast(_typing, _memory, _lanes, _s):  # type: ignore[no-untyped-def]
+        signature = types.void(_memory, types.intp, types.intp)
 
         def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
-            memory, s = arguments
+            memory, lanes, s = arguments
             vectors = _Vectors(builder, _data(context, builder, signature.args[0], memory))
             after = builder.append_basic_block("points.after")
             choice = builder.switch(s, after)
@@ -178,12 +181,12 @@ def stage_points(rows: int, start: int, target: int, step: int, stages: Sequence
                 choice.add_case(ir.Constant(_PLACE, number), block)
                 builder.position_at_end(block)
 
-                def one(offset: Any, terms: Terms = terms) -> None:
-                    steps = vectors.load(step, vectors.lane(offset))
+                def one(_row: Any, lane: Any, offset: Any, terms: Terms = terms) -> None:
+                    steps = vectors.load(step, lane)
                     moved = vectors.mul(steps, vectors.sum(terms, offset))
                     vectors.store(vectors.add(vectors.load(start, offset), moved), target, offset)
 
-                vectors.each(size, one)
+                vectors.rows(rows, lanes, one)
                 builder.branch(after)
             builder.position_at_end(after)
             return context.get_dummy_value()
@@ -194,7 +197,7 @@ def stage_points(rows: int, start: int, target: int, step: int, stages: Sequence
 
 
 def error_sums(rows: int, start: int, end: int, moved: int, sums: Sequence[tuple[int, Terms]]) -> Any:
-    """``f(W, allowed, relative)``: squares of error estimates summed over rows, in units of what is allowed.
+    """``f(W, lanes, allowed, relative)``: squares of errors, in units of what is allowed, summed over rows.
 
     Parameters
     ----------
@@ -206,7 +209,7 @@ def error_sums(rows: int, start: int, end: int, moved: int, sums: Sequence[tuple
         Place of each estimate's row, and the estimate as a sum of stages.
     """
 
-    def slow(memory: Any, allowed: Any, relative: float) -> None:
+    def slow(memory: Any, _lanes: int, allowed: Any, relative: float) -> None:
         results = {place: np.zeros(LANES) for place in (moved, *(place for place, _ in sums))}
         for i in range(rows):
             row = slice(i * LANES, (i + 1) * LANES)
@@ -225,38 +228,35 @@ def error_sums(rows: int, start: int, end: int, moved: int, sums: Sequence[tuple
         return slow
 
     @intrinsic
-    def fast(_typing, _memory, _allowed, _relative):  # type: ignore[no-untyped-def]
-        signature = types.void(_memory, _allowed, types.float64)
+    def fast(_typing, _memory, _lanes, _allowed, _relative):  # type: ignore[no-untyped-def]
+        signature = types.void(_memory, types.intp, _allowed, types.float64)
 
         def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
-            memory, allowed, relative = arguments
+            memory, lanes, allowed, relative = arguments
             vectors = _Vectors(builder, _data(context, builder, signature.args[0], memory))
-            floors = _data(context, builder, signature.args[1], allowed)
+            floors = _data(context, builder, signature.args[2], allowed)
             places = (moved, *(place for place, _ in sums))
 
             def clear(lane: Any) -> None:
                 for place in places:
                     vectors.store(vectors.constant(0.0), place, lane)
 
-            vectors.each(LANES, clear)
+            vectors.lanes(lanes, clear)
             share = vectors.all(relative)
-            with cgutils.for_range(builder, ir.Constant(_PLACE, rows)) as loop:
-                row = builder.mul(loop.index, ir.Constant(_PLACE, LANES))
-                floor = vectors.all(builder.load(builder.gep(floors, [loop.index], inbounds=True)))
 
-                def one(lane: Any) -> None:
-                    offset = builder.add(row, lane)
-                    before, after = vectors.load(start, offset), vectors.load(end, offset)
-                    room = vectors.add(floor, vectors.mul(share, vectors.larger_size(before, after)))
-                    unit = builder.fdiv(vectors.constant(1.0), room)
-                    distances = [(moved, vectors.sub(after, before))]
-                    distances += [(place, vectors.sum(terms, offset)) for place, terms in sums]
-                    for place, distance in distances:
-                        scaled = vectors.mul(distance, unit)
-                        total = vectors.add(vectors.load(place, lane), vectors.mul(scaled, scaled))
-                        vectors.store(total, place, lane)
+            def one(row: Any, lane: Any, offset: Any) -> None:
+                floor = vectors.all(builder.load(builder.gep(floors, [row], inbounds=True)))
+                before, after = vectors.load(start, offset), vectors.load(end, offset)
+                room = vectors.add(floor, vectors.mul(share, vectors.larger_size(before, after)))
+                unit = builder.fdiv(vectors.constant(1.0), room)
+                distances = [(moved, vectors.sub(after, before))]
+                distances += [(place, vectors.sum(terms, offset)) for place, terms in sums]
+                for place, distance in distances:
+                    scaled = vectors.mul(distance, unit)
+                    total = vectors.add(vectors.load(place, lane), vectors.mul(scaled, scaled))
+                    vectors.store(total, place, lane)
 
-                vectors.each(LANES, one)
+            vectors.rows(rows, lanes, one)
             return context.get_dummy_value()
 
         return signature, generate
@@ -265,49 +265,62 @@ def error_sums(rows: int, start: int, end: int, moved: int, sums: Sequence[tuple
 
 
 def chosen_rows(rows: int, pairs: Sequence[tuple[int, int]], flag: int) -> Any:
-    """``f(W)``: blocks copied, (target, source) each, in the lanes whose number in row `flag` exceeds 1/2."""
+    """``f(W, lanes)``: blocks copied, (target, source) each, where the lane's number in row `flag` is 1."""
     size = rows * LANES
 
-    def slow(memory: Any) -> None:
+    def slow(memory: Any, _lanes: int) -> None:
         chosen = np.tile(memory[flag : flag + LANES] > 0.5, rows)
         for target, source in pairs:
             block = memory[target : target + size]
             block[chosen] = memory[source : source + size][chosen]
 
-    def vector(vectors: _Vectors, offset: Any) -> None:
+    def vector(vectors: _Vectors, lane: Any, offset: Any) -> None:
         builder = vectors.builder
-        flags = vectors.load(flag, vectors.lane(offset))
-        chosen = builder.fcmp_ordered(">", flags, vectors.constant(0.5))
+        chosen = builder.fcmp_ordered(">", vectors.load(flag, lane), vectors.constant(0.5))
         for target, source in pairs:
             new, old = vectors.load(source, offset), vectors.load(target, offset)
             vectors.store(builder.select(chosen, new, old), target, offset)
 
-    return slow if numba.config.DISABLE_JIT else _over_rows(size, vector)
+    return slow if numba.config.DISABLE_JIT else _over_rows(rows, vector)
 
 
 def scaled_rows(rows: int, target: int, source: int, scale: int) -> Any:
-    """``f(W)``: a block multiplied by the row `scale`, lane by lane."""
+    """``f(W, lanes)``: a block multiplied by the row `scale`, lane by lane."""
     size = rows * LANES
 
-    def slow(memory: Any) -> None:
+    def slow(memory: Any, _lanes: int) -> None:
         scales = np.tile(memory[scale : scale + LANES], rows)
         memory[target : target + size] = memory[source : source + size] * scales
 
-    def vector(vectors: _Vectors, offset: Any) -> None:
-        scales = vectors.load(scale, vectors.lane(offset))
-        vectors.store(vectors.mul(vectors.load(source, offset), scales), target, offset)
+    def vector(vectors: _Vectors, lane: Any, offset: Any) -> None:
+        product = vectors.mul(vectors.load(source, offset), vectors.load(scale, lane))
+        vectors.store(product, target, offset)
 
-    return slow if numba.config.DISABLE_JIT else _over_rows(size, vector)
+    return slow if numba.config.DISABLE_JIT else _over_rows(rows, vector)
 
 
-def _over_rows(size: int, vector: Callable[[_Vectors, Any], None]) -> Any:
+def copied_rows(rows: int, target: int, source: int) -> Any:
+    """``f(W, lanes)``: a block copied to another place."""
+    size = rows * LANES
+
+    def slow(memory: Any, _lanes: int) -> None:
+        memory[target : target + size] = memory[source : source + size]
+
+    def vector(vectors: _Vectors, _lane: Any, offset: Any) -> None:
+        vectors.store(vectors.load(source, offset), target, offset)
+
+    return slow if numba.config.DISABLE_JIT else _over_rows(rows, vector)
+
+
+def _over_rows(rows: int, vector: Callable[[_Vectors, Any, Any], None]) -> Any:
     @intrinsic
-    def fast(_typing, _memory):  # type: ignore[no-untyped-def]
-        signature = types.void(_memory)
+    def fast(_typing, _memory, _lanes):  # type: ignore[no-untyped-def]
+        signature = types.void(_memory, types.intp)
 
         def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
-            vectors = _Vectors(builder, _data(context, builder, signature.args[0], arguments[0]))
-            vectors.each(size, lambda offset: vector(vectors, offset))
+            memory, lanes = arguments
+            vectors = _Vectors(builder, _data(context, builder, signature.args[0], memory))
+            vectors.rows(rows, lanes, lambda _row, lane, offset: vector(vectors, lane, offset))
             return context.get_dummy_value()
 
         return signature, generate

@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-import hashlib
 from dataclasses import dataclass
-from functools import cache, lru_cache
+from functools import lru_cache
 from pathlib import Path
 from typing import Any
 
@@ -142,10 +141,8 @@ def _compiled(motion: Motion, method: Method) -> Any:
     from tinemark.systems.native import native_module
 
     source = sample_source(motion, tableau(method))
-    return native_module(f"{source}\n# {foundation()}\n", "equations").sample
+    return native_module(source, "equations", BUILT_ON).sample
 
 
-@cache
-def foundation() -> str:
-    """Hash of the compiled code that printed kernels call: a change there must not meet an old cache."""
-    return hashlib.sha256(Path(__file__).with_name("lane_memory.py").read_bytes()).hexdigest()[:16]
+BUILT_ON = tuple(Path(__file__).with_name(name) for name in ("lane_control.py", "lane_memory.py"))
+"""Compiled code that printed kernels call: a change there must not meet an old cache."""

@@ -1,0 +1,291 @@
+"""Step control of lanes: what every system's kernel does between its rates, compiled once for all of them.
+
+Each lane has its own step and its own time; a lane whose step is refused, or that is done, keeps its
+state while the others go on. The rows named here lie at the same places in every kernel's memory,
+before the blocks of states and stages.
+
+Loops without branches that load before they choose become vector code; the passage of a section is
+decided lane by lane.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tinemark.equations.lane_memory import LANES, get, put
+from tinemark.systems.lane_math import lane_pow
+from tinemark.systems.native import jit
+
+Memory = NDArray[np.float64]
+
+STEP, TIME, SWEPT, WANTED, LAST, SCALE = (LANES * place for place in range(6))
+"""The step that is tried; the time since the last sample; the swept parameter; the step that errors would
+allow; whether the step tried ends at the sample; what the rates are multiplied by."""
+
+FIRST_SUM, SECOND_SUM, MOVED = (LANES * place for place in range(6, 9))
+"""Sums of squares of the error estimates and of the movement."""
+
+GOING, CODE, ACCEPTED, LANDED, OUT, TRIES, REFUSED, STILL = (LANES * place for place in range(9, 17))
+"""Whether a lane is under way, the reason why not, whether its step was allowed, whether it stands at its
+sample, whether it left every bound; steps tried and refused; steps in a row that moved nothing."""
+
+PERIOD = LANES * 17
+"""Strobe period."""
+
+LANDING, LEVEL, SLOPE, START_LEVEL, START_SLOPE, REACH = (LANES * place for place in range(18, 24))
+"""Whether a lane is on its last way to the section; the section's formula and its rate at the new point and
+where the step starts; how far a step of the formula may reach."""
+
+ARMED, LEFT, LOOKS, STEEPEST, HIGHEST, MISSED = (LANES * place for place in range(24, 30))
+"""Whether a passage counts; whether the section was left; closer looks; the formula's largest rate and size
+on the way, and the highest peak below zero."""
+
+BLOCKS = LANES * 30
+"""Where the blocks of rows begin."""
+
+ESCAPED, TOO_MANY, STOPPED, GRAZES, RESTS = 1.0, 2.0, 3.0, 4.0, 5.0
+"""Codes, as in `Reason`."""
+
+RESTING_STEPS = 20.0
+"""Steps in a row that move less than is allowed as an error: the orbit has come to rest."""
+
+CLOSER_LOOKS = 60.0
+"""Looks after which a section met along its own direction counts as grazed."""
+
+SAFETY, SMALLEST_FACTOR, LARGEST_FACTOR = 0.9, 0.2, 5.0
+
+
+@jit
+def clear(W: Memory) -> None:
+    """Forget everything of the orbits before."""
+    for index in range(W.size):
+        put(W, index, 0.0)
+
+
+@jit
+def depart(W: Memory, lanes: int, near: float) -> None:
+    """Lanes set out for their first sample; the section's formula has been computed where they stand."""
+    for k in range(lanes):
+        put(W, GOING + k, 1.0)
+        put(W, STEEPEST + k, 0.0)
+        put(W, HIGHEST + k, 0.0)
+        put(W, MISSED + k, -np.inf)
+        put(W, REACH + k, np.inf)
+        level = get(W, LEVEL + k)
+        put(W, START_LEVEL + k, level)
+        put(W, START_SLOPE + k, get(W, SLOPE + k))
+        # On or just before the section an orbit has to leave it before a passage counts.
+        put(W, ARMED + k, 1.0 if level < -near else 0.0)
+        put(W, LEFT + k, 1.0 if level >= 0.0 else 0.0)
+
+
+@jit
+def first_steps(
+    W: Memory, lanes: int, X: int, F: int, states: int, allowed: Memory, relative: float, longest: float
+) -> None:
+    """A first step that moves the states by a hundredth of their size (Hairer et al. 1993, II.4)."""
+    for k in range(lanes):
+        size, speed = 1e-4, 0.0
+        for i in range(states):
+            state, rate = get(W, X + i * LANES + k), get(W, F + i * LANES + k)
+            unit = allowed[i] / relative + abs(state)
+            size += (state / unit) ** 2
+            speed += (rate / unit) ** 2
+        guess = 0.01 * np.sqrt(size / speed) if speed > 0.0 else longest
+        put(W, WANTED + k, guess if guess < longest else longest)  # noqa: FURB136
+
+
+@jit
+def begin_driven(W: Memory, lanes: int) -> None:
+    """The step of each lane: even pieces, so that no splinter is left at the end of the period."""
+    for k in range(lanes):
+        rest, wanted, going = get(W, PERIOD + k) - get(W, TIME + k), get(W, WANTED + k), get(W, GOING + k)
+        pieces = np.ceil(rest / wanted)
+        piece = rest / pieces
+        put(W, LAST + k, 1.0 if pieces < 1.5 else 0.0)
+        put(W, STEP + k, piece if going > 0.5 else 0.0)
+        put(W, SCALE + k, 1.0)
+
+
+@jit
+def begin_flow(W: Memory, lanes: int) -> None:
+    """The step of each lane: in time, or in the section's formula where it is landing (Hénon 1982)."""
+    for k in range(lanes):
+        level, reach, wanted = get(W, START_LEVEL + k), get(W, REACH + k), get(W, WANTED + k)
+        landing, going, steepness = get(W, LANDING + k), get(W, GOING + k), 1.0 / get(W, START_SLOPE + k)
+        size = abs(level)
+        away = -reach if level > 0.0 else reach
+        across = -level if size < reach else away
+        put(W, LAST + k, 1.0 if size < reach else 0.0)
+        step = across if landing > 0.5 else wanted
+        put(W, STEP + k, step if going > 0.5 else 0.0)
+        put(W, SCALE + k, steepness if landing > 0.5 else 1.0)
+
+
+@jit
+def judge(W: Memory, lanes: int, checked: int, order: int) -> None:
+    """What each lane's error means: whether the step is allowed, and by which factor to change it.
+
+    ACCEPTED is set where it is, LANDED gets the factor.
+    """
+    count = float(checked)
+    for k in range(lanes):
+        step, going, first, second = (
+            abs(get(W, STEP + k)),
+            get(W, GOING + k),
+            get(W, FIRST_SUM + k),
+            get(W, SECOND_SUM + k),
+        )
+        tries, refused = get(W, TRIES + k), get(W, REFUSED + k)
+        if order == 8:
+            # What is added keeps 0 by 0 from being undefined; not-a-number stays one.
+            error = step * first / np.sqrt((first + 0.01 * second) * count + 1e-300)
+            root = np.sqrt(np.sqrt(np.sqrt(error)))
+        else:
+            error = step * np.sqrt(first / count)
+            root = lane_pow(error, 1.0 / order)
+        factor = SAFETY / root
+        # An undefined error counts as far too large.
+        factor = factor if factor > SMALLEST_FACTOR else SMALLEST_FACTOR  # noqa: FURB136
+        factor = factor if factor < LARGEST_FACTOR else LARGEST_FACTOR  # noqa: FURB136
+        accepted = going if error <= 1.0 else 0.0
+        put(W, TRIES + k, tries + going)
+        put(W, REFUSED + k, refused + going - accepted)
+        put(W, ACCEPTED + k, accepted)
+        put(W, LANDED + k, factor)
+
+
+@jit
+def end_driven(W: Memory, lanes: int) -> None:
+    """Times and next steps after `judge`; LANDED where the period is over."""
+    for k in range(lanes):
+        before, step, factor = get(W, WANTED + k), get(W, STEP + k), get(W, LANDED + k)
+        going, accepted, last = get(W, GOING + k), get(W, ACCEPTED + k), get(W, LAST + k)
+        time, period = get(W, TIME + k), get(W, PERIOD + k)
+        wanted = step * factor
+        kept = wanted if wanted > before else before  # noqa: FURB136
+        wanted = kept if factor >= 1.0 else wanted
+        put(W, WANTED + k, wanted if going > 0.5 else before)
+        landed = accepted * last
+        later = time + step * accepted
+        put(W, TIME + k, period if landed > 0.5 else later)
+        put(W, LANDED + k, landed)
+
+
+@jit
+def end_flow(W: Memory, lanes: int, near: float) -> None:
+    """Next steps after `judge`, and what the step means for the section; LANDED where it was reached."""
+    for k in range(lanes):
+        factor, step = get(W, LANDED + k), get(W, STEP + k)
+        put(W, LANDED + k, 0.0)
+        if get(W, GOING + k) < 0.5:
+            continue
+        if get(W, ACCEPTED + k) < 0.5:
+            if get(W, LANDING + k) > 0.5:
+                put(W, REACH + k, abs(step) * factor)
+                put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
+            else:
+                put(W, WANTED + k, step * factor)
+        elif get(W, LANDING + k) > 0.5:
+            put(W, LANDED + k, get(W, LAST + k))
+        else:
+            put(W, ACCEPTED + k, _passed(W, k, step, factor, near))
+        if get(W, LOOKS + k) > CLOSER_LOOKS:
+            put(W, CODE + k, GRAZES)
+        elif get(W, STILL + k) > RESTING_STEPS:
+            put(W, CODE + k, RESTS)
+        if get(W, ACCEPTED + k) > 0.5:
+            put(W, START_LEVEL + k, get(W, LEVEL + k))
+            put(W, START_SLOPE + k, get(W, SLOPE + k))
+
+
+@jit
+def _passed(W: Memory, k: int, step: float, factor: float, near: float) -> float:
+    """A step in time whose error is allowed: 1 where it is taken, 0 where a closer look is needed."""
+    g0, g1, d0, d1 = (
+        get(W, START_LEVEL + k),
+        get(W, LEVEL + k),
+        get(W, START_SLOPE + k),
+        get(W, SLOPE + k),
+    )
+    armed = get(W, ARMED + k) > 0.5
+    if armed and g1 >= 0.0 and d1 <= 0.0:
+        # Through the section and turned round within the step.
+        put(W, WANTED + k, 0.5 * step)
+        put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
+        return 0.0
+    if armed and g1 < 0.0 < d0 and d1 < 0.0:
+        # Highest point of the cubic through both ends and their slopes.
+        two = 3.0 * (g1 - g0) - step * (2.0 * d0 + d1)
+        three = 2.0 * (g0 - g1) + step * (d0 + d1)
+        place = step * d0 / (np.sqrt(two * two - 3.0 * three * step * d0) - two)
+        peak = g0 + place * (step * d0 + place * (two + place * three))
+        if peak > 0.0 or (peak > -0.02 * (peak - g0) and 0.05 < place < 0.95):
+            put(W, WANTED + k, step * place)
+            put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
+            return 0.0
+        put(W, MISSED + k, max(get(W, MISSED + k), peak))
+    put(W, LOOKS + k, 0.0)
+    put(W, STEEPEST + k, max(get(W, STEEPEST + k), abs(d1)))
+    put(W, HIGHEST + k, max(get(W, HIGHEST + k), abs(g1)))
+    put(W, STILL + k, get(W, STILL + k) + 1.0 if get(W, MOVED + k) < 1.0 else 0.0)
+    put(W, WANTED + k, step * factor)
+    if armed and g1 >= 0.0:
+        put(W, LANDING + k, 1.0)
+    elif g1 > 0.0:
+        put(W, LEFT + k, 1.0)
+    elif get(W, LEFT + k) > 0.5 or g1 < -near:
+        put(W, ARMED + k, 1.0)
+    return 1.0
+
+
+@jit
+def rearm(W: Memory, k: int) -> None:
+    """A lane at its sample sets out for the next one."""
+    put(W, TIME + k, 0.0)
+    put(W, LANDING + k, 0.0)
+    put(W, REACH + k, np.inf)
+    put(W, ARMED + k, 0.0)
+    put(W, LEFT + k, 0.0)
+    put(W, STEEPEST + k, 0.0)
+    put(W, HIGHEST + k, 0.0)
+    put(W, MISSED + k, -np.inf)
+    put(W, LOOKS + k, 0.0)
+    put(W, START_LEVEL + k, 0.0)
+
+
+@jit
+def watch(W: Memory, lanes: int, X: int, states: int, bounds: Memory) -> None:
+    """Lanes that have left every bound, or have a reason to, stop."""
+    for k in range(lanes):
+        put(W, OUT + k, 0.0)
+    for i in range(states):
+        bound = bounds[i]
+        for k in range(lanes):
+            out, size = get(W, OUT + k), abs(get(W, X + i * LANES + k))
+            put(W, OUT + k, out if size < bound else ESCAPED)
+    for k in range(lanes):
+        code, going, out = get(W, CODE + k), get(W, GOING + k), get(W, OUT + k)
+        code = out if code < out else code  # noqa: FURB136
+        put(W, CODE + k, code)
+        put(W, GOING + k, 0.0 if code > 0.5 else going)
+
+
+@jit
+def pending(W: Memory, lanes: int) -> int:
+    """How many lanes are under way."""
+    count = 0
+    for k in range(lanes):
+        count += 1 if get(W, GOING + k) > 0.5 else 0
+    return count
+
+
+@jit
+def give_up(W: Memory, lanes: int, stopped: Any) -> None:
+    """Lanes still under way get the reason why they end here."""
+    for k in range(lanes):
+        if get(W, GOING + k) > 0.5:
+            put(W, CODE + k, STOPPED if stopped != 0 else TOO_MANY)
