@@ -262,6 +262,11 @@ def _verify_parser() -> argparse.ArgumentParser:
         "code with the first. Exit code 0 when all are confirmed, 1 when one is not.",
     )
     parser.add_argument("file", metavar="FILE")
+    parser.add_argument(
+        "--longest",
+        metavar="MINUTES",
+        help="how long the check of one proof may take, about (default 10); long cycles may ask for more",
+    )
     return parser
 
 
@@ -354,7 +359,10 @@ def _verify(given: argparse.Namespace) -> int:
     """Check the proofs of a file again."""
     from tinemark.commands import proofs
 
-    return DONE if proofs.verify(Path(given.file)) else NO_ANSWER
+    minutes = None if given.longest is None else float(_number(given.longest, "--longest"))
+    if minutes is not None and not minutes > 0:
+        raise _UsageError("is not above zero", where="--longest", what_to_do="give a number of minutes")
+    return DONE if proofs.verify(Path(given.file), minutes) else NO_ANSWER
 
 
 def _range(texts: Sequence[str]) -> tuple[Exact, Exact]:

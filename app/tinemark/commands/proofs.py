@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -12,8 +13,13 @@ if TYPE_CHECKING:
     from tinemark.verify.claims import Claim, Verdict
 
 
-def verify(path: Path) -> bool:
+def verify(path: Path, minutes: float | None = None) -> bool:
     """Check every proof of a session or an onsets file, and print what came of each.
+
+    Parameters
+    ----------
+    minutes
+        How long one proof may take, about; by default as `verify.watching` has it.
 
     Returns
     -------
@@ -30,6 +36,7 @@ def verify(path: Path) -> bool:
     from tinemark.document.proofs import summary
     from tinemark.verify.check import check
     from tinemark.verify.claims import Outcome
+    from tinemark.verify.watching import MINUTES, Watch
 
     claims = claims_in(path)
     if not claims:
@@ -37,13 +44,18 @@ def verify(path: Path) -> bool:
     progress = Progress()
     verdicts: list[Verdict] = []
     for number, claim in enumerate(claims, 1):
-        progress.step(f"checking {claim.name} ({number} of {len(claims)})")
-        verdict = check(claim)
+        words = f"checking {claim.name} ({number} of {len(claims)})"
+        progress.step(words)
+        verdict = check(claim, Watch(partial(_tell, progress, words), minutes or MINUTES))
         progress.clear()
         print(f"{_plain(claim.name)}: {_plain(verdict.words)}", flush=True)
         verdicts.append(verdict)
     print(f"{summary(verdicts)}")
     return all(verdict.outcome is Outcome.CONFIRMED for verdict in verdicts)
+
+
+def _tell(progress: Progress, words: str, share: float) -> None:
+    progress.step(f"{words}, {share:.0%}")
 
 
 def claims_in(path: Path) -> tuple[Claim, ...]:

@@ -15,7 +15,7 @@ from tinemark.verify.claims import Numbers, Paper, Part, Refused, Undecided
 from tinemark.verify.cycles import OneState, at_point, middle_orbit, on_box
 from tinemark.verify.intervals import ONE
 from tinemark.verify.newton import inverse, times
-from tinemark.verify.one_state import TARGETS
+from tinemark.verify.one_state import LONG, TARGETS
 
 STEPS = 8
 CLOSE = Fraction(1, 10**5)
@@ -30,11 +30,13 @@ def find(
 ) -> NoReturn:
     """Raise `Refused` with the part to blame."""
     x = numbers.states[0][0] if start is None else start
-    try:
-        _other_period_or_kind(one, paper, numbers, bits, x)
-        reached = _solved(one, paper, numbers, bits, x)
-    except Undecided:
-        reached = None
+    reached = None
+    if paper.period < LONG:
+        try:
+            _other_period_or_kind(one, paper, numbers, bits, x)
+            reached = _solved(one, paper, numbers, bits, x)
+        except Undecided:
+            reached = None
     middle, half = numbers.parameter
     room = 100 * (numbers.upper - numbers.lower)
     if reached is not None and numbers.lower - room <= reached <= numbers.upper + room:

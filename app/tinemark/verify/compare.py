@@ -98,7 +98,7 @@ def _numbers(claim: Claim, paper: Paper) -> Numbers:
         sides.append((centre, size))
     # A whole number with more digits than were asked for ends in zeros that only fill it up.
     digits = significant_digits(claim.value)
-    unit = max(last_unit(claim.value), min(zeros_unit(claim.value), upper - lower))
+    unit = max(last_unit(claim.value), min(zeros_unit(claim.value), 2 * (upper - lower)))
     return Numbers(value, unit, digits, lower, upper, sides[0], tuple(sides[1:]))
 
 

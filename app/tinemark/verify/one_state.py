@@ -16,7 +16,9 @@ from tinemark.verify.decimals import rational, state_unit
 from tinemark.verify.intervals import ONE, Interval
 from tinemark.verify.newton import Side, image, inside
 
-ATTEMPTS = 4
+ATTEMPTS, ATTEMPTS_LONG = 4, 2
+LONG = 2**15
+"""Cycles from here on are tried less often with more bits, and not gone along to find what is to blame."""
 VALUE_UNITS = Fraction(3, 5)
 """How far, in units of its last digit, a value may lie from the onset: half, and the enclosure's width."""
 STATE_UNITS = Fraction(3, 5)
@@ -39,7 +41,7 @@ def prove(one: OneState, paper: Paper, numbers: Numbers, bits: int, printed: str
     start = [hull(side, bits) for side in sides]
     box, reason = start, ""
     steps = sorted({paper.period // prime for prime in prime_factors(paper.period)})
-    for _ in range(ATTEMPTS):
+    for _ in range(ATTEMPTS if paper.period < LONG else ATTEMPTS_LONG):
         try:
             end = on_box(
                 one,

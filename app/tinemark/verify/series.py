@@ -8,7 +8,7 @@ left out. Several states have one a each, and series to second order.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
@@ -19,6 +19,7 @@ from tinemark.verify.claims import Undecided
 from tinemark.verify.formula import COMPARISONS, Instruction, Program
 from tinemark.verify.intervals import ONE, Interval
 from tinemark.verify.switches import Switch, always, switch_of
+from tinemark.verify.taylor import FUNCTIONS, Function
 
 Series: TypeAlias = dict[int, Interval]
 """Coefficients by the place of their monomial in the shape; place 0 is the value."""
@@ -205,15 +206,17 @@ class Evaluator:
             case "power":
                 return self._power(args[0], int(step.value))
             case "general power":
-                return self._of(_exp, self._product(args[1], self._of(_log, args[0])))
+                return self._of(FUNCTIONS["exp"], self._product(args[1], self._of(FUNCTIONS["log"], args[0])))
             case "atan2":
                 return self._angle(args[0], args[1])
             case "tan":
-                return self._quotient(self._of(_sin, args[0]), self._of(_cos, args[0]))
+                return self._quotient(
+                    self._of(FUNCTIONS["sin"], args[0]), self._of(FUNCTIONS["cos"], args[0])
+                )
             case "acos":
                 quarter: Series = {0: iv.half_pi(bits)}
-                return self._sum(quarter, self._negative(self._of(_asin, args[0])))
-        return self._of(_FUNCTIONS[op], args[0])
+                return self._sum(quarter, self._negative(self._of(FUNCTIONS["asin"], args[0])))
+        return self._of(FUNCTIONS[op], args[0])
 
     def _sum(self, a: Series, b: Series) -> Series:
         if len(a) < len(b):
@@ -270,13 +273,13 @@ class Evaluator:
     def _angle(self, y: Series, x: Series) -> Series:
         """Angle of the point (x, y), away from the cut along the negative x axis."""
         if iv.sign(x[0]) > 0:
-            return self._of(_atan, self._quotient(y, x))
+            return self._of(FUNCTIONS["atan"], self._quotient(y, x))
         side = iv.sign(y[0])
         if side == 0:
             raise Undecided("the orbit touches the cut of atan2")
         quarter = iv.half_pi(self.bits)
         start: Series = {0: quarter if side > 0 else iv.neg(quarter)}
-        return self._sum(start, self._negative(self._of(_atan, self._quotient(x, y))))
+        return self._sum(start, self._negative(self._of(FUNCTIONS["atan"], self._quotient(x, y))))
 
     def _of(self, function: Function, a: Series) -> Series:
         """A function of one argument applied to a series."""
@@ -292,112 +295,6 @@ class Evaluator:
         for coefficient in reversed(coefficients[:-1]):
             result = self._product(result, beyond) | {0: coefficient}
         return result
-
-
-Function: TypeAlias = Callable[[Interval, int, int], list[Interval]]
-"""Taylor coefficients of a function on an interval: function(x, order, bits), order at most 3."""
-
-
-def _scaled(values: Sequence[Interval], factors: Sequence[Fraction], bits: int) -> list[Interval]:
-    return [
-        value if factor == 1 else iv.mul(iv.of_fraction(factor, bits), value, bits)
-        for value, factor in zip(values, factors, strict=False)
-    ]
-
-
-_FACTORIALS = (Fraction(1), Fraction(1), Fraction(1, 2), Fraction(1, 6))
-
-
-def _exp(x: Interval, order: int, bits: int) -> list[Interval]:
-    return _scaled([iv.exp(x, bits)] * (order + 1), _FACTORIALS, bits)
-
-
-def _log(x: Interval, order: int, bits: int) -> list[Interval]:
-    found = [iv.log(x, bits)]
-    if order:
-        inverse = iv.div(ONE, x, bits)
-        powers = [iv.whole_power(inverse, n, bits) for n in range(1, order + 1)]
-        found += _scaled(powers, (Fraction(1), Fraction(-1, 2), Fraction(1, 3)), bits)
-    return found
-
-
-def _sqrt(x: Interval, order: int, bits: int) -> list[Interval]:
-    root = iv.sqrt(x, bits)
-    found = [root]
-    for n in range(order):
-        factor = (Fraction(1, 2) - n) / (n + 1)
-        found.append(iv.mul(iv.of_fraction(factor, bits), iv.div(found[-1], x, bits), bits))
-    return found
-
-
-def _sin(x: Interval, order: int, bits: int) -> list[Interval]:
-    cosine, sine = iv.cos_sin(x, bits)
-    values = [sine, cosine, iv.neg(sine), iv.neg(cosine)]
-    return _scaled(values[: order + 1], _FACTORIALS, bits)
-
-
-def _cos(x: Interval, order: int, bits: int) -> list[Interval]:
-    cosine, sine = iv.cos_sin(x, bits)
-    values = [cosine, iv.neg(sine), iv.neg(cosine), sine]
-    return _scaled(values[: order + 1], _FACTORIALS, bits)
-
-
-def _cosh(x: Interval, order: int, bits: int) -> list[Interval]:
-    cosh, sinh = iv.cosh_sinh(x, bits)
-    return _scaled([cosh, sinh, cosh, sinh][: order + 1], _FACTORIALS, bits)
-
-
-def _sinh(x: Interval, order: int, bits: int) -> list[Interval]:
-    cosh, sinh = iv.cosh_sinh(x, bits)
-    return _scaled([sinh, cosh, sinh, cosh][: order + 1], _FACTORIALS, bits)
-
-
-def _tanh(x: Interval, order: int, bits: int) -> list[Interval]:
-    # t' = 1 - t^2, t'' = -2 t t', t''' = -2 t'^2 - 2 t t''
-    t = iv.tanh(x, bits)
-    first = iv.sub(ONE, iv.whole_power(t, 2, bits), bits)
-    second = _times(-2, iv.mul(t, first, bits), bits)
-    third = _times(-2, iv.add(iv.whole_power(first, 2, bits), iv.mul(t, second, bits), bits), bits)
-    return _scaled([t, first, second, third][: order + 1], _FACTORIALS, bits)
-
-
-def _atan(x: Interval, order: int, bits: int) -> list[Interval]:
-    # With q = 1 / (1 + x^2): q, -2 x q^2, (6 x^2 - 2) q^3.
-    square = iv.whole_power(x, 2, bits)
-    q = iv.div(ONE, iv.add(ONE, square, bits), bits)
-    second = _times(-2, iv.mul(x, iv.whole_power(q, 2, bits), bits), bits)
-    factor = iv.sub(_times(6, square, bits), iv.of_fraction(Fraction(2), bits), bits)
-    third = iv.mul(factor, iv.whole_power(q, 3, bits), bits)
-    return _scaled([iv.atan(x, bits), q, second, third][: order + 1], _FACTORIALS, bits)
-
-
-def _asin(x: Interval, order: int, bits: int) -> list[Interval]:
-    # With s = 1 / sqrt(1 - x^2): s, x s^3, (1 + 2 x^2) s^5.
-    square = iv.whole_power(x, 2, bits)
-    value = iv.asin(x, bits)
-    s = iv.div(ONE, iv.sqrt(iv.sub(ONE, square, bits), bits), bits)
-    second = iv.mul(x, iv.whole_power(s, 3, bits), bits)
-    third = iv.mul(iv.add(ONE, _times(2, square, bits), bits), iv.whole_power(s, 5, bits), bits)
-    return _scaled([value, s, second, third][: order + 1], _FACTORIALS, bits)
-
-
-def _times(factor: int, x: Interval, bits: int) -> Interval:
-    product: Interval = iv.mul(iv.of_fraction(Fraction(factor), bits), x, bits)
-    return product
-
-
-_FUNCTIONS: Mapping[str, Function] = {
-    "sin": _sin,
-    "cos": _cos,
-    "asin": _asin,
-    "atan": _atan,
-    "sinh": _sinh,
-    "cosh": _cosh,
-    "tanh": _tanh,
-    "exp": _exp,
-    "log": _log,
-    "sqrt": _sqrt,
-}
 
 
 def _moving(program: Program, names: frozenset[str]) -> list[bool]:

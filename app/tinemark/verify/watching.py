@@ -13,7 +13,7 @@ from tinemark.verify.claims import NotCheckable
 
 MINUTES = 10.0
 """How long one row may take, about, on a machine of 2026."""
-UNITS_A_SECOND = 20_000.0
+UNITS_A_SECOND = 10_000.0
 """Steps of formulas with one unknown at low precision in a second, about."""
 EVERY_S = 0.2
 

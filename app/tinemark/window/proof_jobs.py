@@ -66,7 +66,7 @@ class ProofJobs:
             return
         if isinstance(event, Checked):
             words = f"Checked {event.done} of {event.count} proofs\N{HORIZONTAL ELLIPSIS}"
-            self._window.status.show_busy(words, event.done / event.count)
+            self._window.status.show_busy(words, (event.done + event.share) / event.count)
             return
         self._running = 0
         self._window.status.show_idle()

@@ -11,6 +11,7 @@ import signal
 import threading
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
 from multiprocessing.connection import Connection
 from multiprocessing.process import BaseProcess
 from typing import TypeAlias
@@ -26,11 +27,12 @@ NamedClaims: TypeAlias = Sequence[tuple[str, Claim]]
 
 @dataclass(frozen=True)
 class Checked:
-    """One more proof has been checked: how many of how many."""
+    """So many proofs of so many have been checked, and a share (0 to 1) of the next one."""
 
     id: int
     done: int
     count: int
+    share: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -51,14 +53,20 @@ class ChecksEnded:
 
 
 def serve(answers: Connection, claims: NamedClaims) -> None:
-    """Check claims one after the other and send (place, verdict); the child's side."""
+    """Check claims one after the other and send (place, share) and (place, verdict); the child's side."""
     from tinemark.verify.check import check
+    from tinemark.verify.watching import Watch
 
     # Ctrl-C in a terminal reaches every process of the group; only the parent decides here.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
     with contextlib.suppress(BrokenPipeError, ConnectionResetError):
         for place, (_, claim) in enumerate(claims):
-            answers.send((place, check(claim)))
+            watch = Watch(partial(_tell, answers, place))
+            answers.send((place, check(claim, watch)))
+
+
+def _tell(answers: Connection, place: int, share: float) -> None:
+    answers.send((place, share))
 
 
 class ProofDesk:
@@ -121,6 +129,9 @@ class ProofDesk:
         with contextlib.suppress(EOFError, OSError):
             while len(found) < len(claims):
                 place, verdict = reader.recv()
+                if isinstance(verdict, float):
+                    self._on_event(Checked(id_, len(found), len(claims), verdict))
+                    continue
                 row, claim = claims[place]
                 found.append((row, claim, verdict))
                 self._on_event(Checked(id_, len(found), len(claims)))
