@@ -179,19 +179,14 @@ def test_damaged_claims_are_refused(which: str, request: pytest.FixtureRequest) 
 
 
 def test_a_survey_names_them() -> None:
-    request = SurveyRequest(system_of("two_patch"), "r", Fraction("0.8"), Fraction("3.42"), 2)
+    request = SurveyRequest(system_of("two_patch"), "r", Fraction("0.9"), Fraction("1.4"), 1)
     onsets = finish(survey(request)).onsets
-    found = {(onset.kind, onset.period_before, round(float(onset.value), 9)) for onset in onsets}
-    fork = round(float(out_of_step()), 9)
-    # 1, 1.25 = 1/(1 - 2 e), 3, 3.25 = 2 + 1/(1 - 2 e) (exact); the pair that leaves at 1.25 flips where the
-    # alternating cycle meets its pitchfork.
-    assert found >= {
-        (Kind.TRANSCRITICAL, 1, 1.0),
-        (Kind.PITCHFORK, 1, 1.25),
-        (Kind.FLIP, 1, 3.0),
-        (Kind.FLIP, 1, 3.25),
-        (Kind.PITCHFORK, 2, fork),
-    }
+    # The empty state's multipliers are r and (1 - 2 e) r, the latter across x = y (exact).
+    assert [(onset.kind, round(float(onset.value), 9)) for onset in onsets] == [
+        (Kind.TRANSCRITICAL, 1.0),
+        (Kind.PITCHFORK, 1.25),
+    ]
+    assert all(onset.status is Status.PROVED for onset in onsets)
 
 
 @pytest.mark.parametrize(

@@ -121,8 +121,10 @@ def test_the_kinds_asked_for_are_kept_to() -> None:
     assert all(onset.kind is Kind.FLIP for onset in asked("0.1", frozenset({Kind.FLIP})))
     with pytest.raises(NoOnsetFound, match="no Neimark-Sacker"):
         asked("0.1", frozenset({Kind.NEIMARK_SACKER}))
-    with pytest.raises(NoOnsetFound, match=r"asked for \(border collision\)"):
+    with pytest.raises(NoOnsetFound, match="no border collision"):
         asked("0.1", frozenset({Kind.BORDER_COLLISION}))
+    with pytest.raises(NoOnsetFound, match=r"asked for \(crisis\)"):
+        asked("0.1", frozenset({Kind.CRISIS}))
 
 
 def test_a_surface_under_the_cycle_is_not_proved_over() -> None:

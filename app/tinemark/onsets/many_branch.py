@@ -46,6 +46,7 @@ class Crossing(Enum):
     FOLD = "fold"
     NEIMARK_SACKER = "Neimark-Sacker"
     BRANCHES = "crossing of branches"
+    BORDER = "border collision"
 
 
 @dataclass(frozen=True)

@@ -3,24 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Generator
-from dataclasses import dataclass
 from fractions import Fraction
-from itertools import pairwise
 
 import numpy as np
 
 from tinemark.onsets.decimals import decimal_places
-from tinemark.onsets.many_branch import (
-    BranchPoint,
-    Crossing,
-    Event,
-    Window,
-    between,
-    branch_point,
-    circle_test,
-    follow,
-    narrowed,
-)
+from tinemark.onsets.many_branch import Crossing, Window, circle_test, narrowed
+from tinemark.onsets.many_candidates import LEAST_VISIBLE, Candidate, candidates_of
 from tinemark.onsets.many_cycles import Cycle, multipliers, newton, same_cycle
 from tinemark.onsets.many_jumps import with_jump
 from tinemark.onsets.many_ladder import ladder_many
@@ -35,9 +24,8 @@ __all__ = ["ladder_many", "refine_many"]
 
 CROSSED = frozenset({Kind.TRANSCRITICAL, Kind.PITCHFORK})
 """Kinds of crossings of branches."""
-FOUND = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER}) | CROSSED
+FOUND = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, Kind.BORDER_COLLISION}) | CROSSED
 """Kinds that are looked for."""
-MOST_BRANCHES = 6
 NARROWEST = 1e-8
 """Views narrower than this share of the parameter are searched as if they were this wide."""
 NARROW = 2e-4
@@ -48,34 +36,6 @@ CLOSE_FLOOR = 0.02
 """… or within this much of the screen."""
 IN_REACH = 0.75
 """Farther on the screen than this an onset does not count as what was meant."""
-LEAST_VISIBLE = 0.0015
-"""Stable stretches shorter than this share of the view, about two pixels, cannot have been aimed at."""
-NEUTRAL = 1e-6
-"""Multipliers may exceed 1 by this much and count as stable: area-preserving maps have them at 1."""
-GOOD_ENOUGH = 0.03
-"""Branches that start farther from the click than this, and than the nearest onset, are left out."""
-
-
-@dataclass(frozen=True)
-class _Candidate:
-    """Something that happens on a branch near the click.
-
-    Attributes
-    ----------
-    stable_share
-        Length of the stable stretch beside it, in widths of the view: what can be seen of it.
-    """
-
-    kind: Crossing
-    rough: Cycle
-    event: Event
-    distance: float
-    stable_share: float
-
-    @property
-    def rank(self) -> tuple[bool, float]:
-        """What can be seen comes first, then what is near."""
-        return self.stable_share < LEAST_VISIBLE, self.distance
 
 
 def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
@@ -127,7 +87,7 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
             what_to_do="click nearer to a split, or check the start values of the states",
         )
     window = _window(place, full_scales, request)
-    found = yield from _candidates(float_map, cycles, place, window)
+    found = yield from candidates_of(float_map, cycles, place, window, full_scales)
     wanted = FOUND if request.kinds is None else request.kinds
     candidates = [candidate for candidate in found if _may_be(candidate.kind, wanted)]
     digits = request.digits + (_digits_to_tell_apart(request) if deep else 0)
@@ -174,77 +134,9 @@ def _window(place: Place, scales: Floats, request: RefineRequest) -> Window:
     return Window(place.r - IN_REACH * place.width, place.r + IN_REACH * place.width, place.width, lengths)
 
 
-def _candidates(
-    float_map: FloatManyMap, cycles: list[Cycle], place: Place, window: Window
-) -> Generator[Step, None, list[_Candidate]]:
-    """Crossings on the branches through the cycles, nearest to the click first."""
-    traces: list[list[BranchPoint]] = []
-    found: list[_Candidate] = []
-    followed = 0
-    for cycle in cycles:
-        seen = (candidate.distance for candidate in found if candidate.stable_share >= LEAST_VISIBLE)
-        nearest = min(seen, default=np.inf)
-        if followed >= MOST_BRANCHES or place.distance(float_map, cycle) > max(nearest, GOOD_ENOUGH):
-            break
-        start = branch_point(float_map, cycle, window)
-        if start is None or _is_on(float_map, cycle, traces, window.scales):
-            continue
-        followed += 1
-        onward, events = yield from follow(float_map, start, window, 1)
-        backward, more = yield from follow(float_map, start, window, -1)
-        traces += [onward, backward]
-        for event in (*events, *more):
-            share = _stable_stretch(onward, backward, event) / window.width
-            rough = event.rough
-            if event.kind is Crossing.BRANCHES and _exchanges_stability(event):
-                share = max(share, LEAST_VISIBLE)
-            found.append(_Candidate(event.kind, rough, event, place.distance(float_map, rough), share))
-        yield Step("looking at the crossings found")
-    return sorted(found, key=lambda candidate: candidate.rank)
-
-
-def _stable_stretch(onward: list[BranchPoint], backward: list[BranchPoint], event: Event) -> float:
-    """Length in the parameter of the stable part of the branch that ends at a crossing, on either side."""
-    whole = [*backward[:0:-1], *onward]
-    order = {id(point): place for place, point in enumerate(whole)}
-    order[id(backward[0])] = order[id(onward[0])]
-    beside = [event.joined_from] if event.joined_from else [event.before, event.after]
-    sides = sorted(order[id(point)] for point in beside)
-    at = event.rough.r
-    lengths = []
-    for place, step in ((sides[0], -1), (sides[-1], 1)):
-        end = at
-        while 0 <= place < len(whole) and max(map(abs, whole[place].multipliers)) <= 1 + NEUTRAL:
-            end = whole[place].cycle.r
-            place += step
-        lengths.append(abs(end - at))
-    return max(lengths)
-
-
-def _exchanges_stability(event: Event) -> bool:
-    """Whether of the branches that cross there one is stable on either side, followed or not."""
-    values = sorted(event.before.multipliers, key=lambda value: abs(value - 1))
-    return all(abs(value) <= 1 + NEUTRAL for value in values[1:])
-
-
-def _is_on(float_map: FloatManyMap, cycle: Cycle, traces: list[list[BranchPoint]], scales: Floats) -> bool:
-    """Whether a cycle lies on a branch that was followed already."""
-    for trace in traces:
-        if trace[0].cycle.period != cycle.period:
-            continue
-        for a, b in pairwise(trace):
-            low, high = sorted((a.cycle.r, b.cycle.r))
-            if low <= cycle.r <= high and high > low:
-                guess = between(a.cycle, b.cycle, (cycle.r - a.cycle.r) / (b.cycle.r - a.cycle.r))
-                there = newton(float_map, Cycle(guess.points, cycle.r), scales)
-                if there is not None and same_cycle(there, cycle, scales):
-                    return True
-    return False
-
-
 def _settle(
     float_map: FloatManyMap,
-    candidates: list[_Candidate],
+    candidates: list[Candidate],
     place: Place,
     window: Window,
     scales: Floats,
@@ -253,7 +145,7 @@ def _settle(
 ) -> Generator[Step, None, RefineResult]:
     """Polish the nearest candidates and put the result into words."""
     settled: list[tuple[float, Settled]] = []
-    lost: _Candidate | None = None
+    lost: Candidate | None = None
     for candidate in candidates:
         if candidate.distance > IN_REACH or _far_beyond(settled, candidate.distance):
             continue
@@ -280,7 +172,7 @@ def _settle(
     return RefineResult(tuple(onsets), message)
 
 
-def _closed_in(float_map: FloatManyMap, candidate: _Candidate) -> Cycle:
+def _closed_in(float_map: FloatManyMap, candidate: Candidate) -> Cycle:
     """A cycle near a Neimark-Sacker crossing, by the secant method."""
     cycle = candidate.rough
     low, high = candidate.event.before, candidate.event.after
@@ -304,7 +196,7 @@ def _far_beyond(settled: list[tuple[float, Settled]], distance: float) -> bool:
 
 def _onset_at(
     float_map: FloatManyMap,
-    candidate: _Candidate,
+    candidate: Candidate,
     place: Place,
     window: Window,
     scales: Floats,
@@ -322,6 +214,10 @@ def _onset_at(
         if candidate.kind is Crossing.NEIMARK_SACKER:
             rough = _turned(float_map, _closed_in(float_map, candidate), place)
             return (yield from settle_onset(float_map, Kind.NEIMARK_SACKER, rough, digits, scales, reach))
+        if candidate.kind is Crossing.BORDER:
+            # Its first point is the one that touches, wherever the click fell.
+            kind = Kind.BORDER_COLLISION
+            return (yield from settle_onset(float_map, kind, candidate.rough, digits, scales, reach))
         if candidate.kind is Crossing.BRANCHES:
             return (yield from settle_onset(float_map, Kind.PITCHFORK, rough, digits, scales, reach))
         half = rough.period // 2
@@ -367,6 +263,8 @@ def _words(onset: Onset) -> str:
         return f"flip from period {onset.period_before} to {onset.period_after}"
     if onset.kind is Kind.NEIMARK_SACKER:
         return f"Neimark-Sacker onset of period {onset.period_before}"
+    if onset.kind is Kind.BORDER_COLLISION:
+        return f"border collision of period {onset.period_before or onset.period_after}"
     if onset.kind in CROSSED:
         return f"{onset.kind.value} of period {onset.period_before}"
     return f"fold that opens period {onset.period_after}"
@@ -375,7 +273,7 @@ def _words(onset: Onset) -> str:
 def _message(
     parameter: str,
     shown: list[tuple[float, Settled]],
-    lost: _Candidate | None,
+    lost: Candidate | None,
     wanted: frozenset[Kind],
 ) -> str:
     sentences = []

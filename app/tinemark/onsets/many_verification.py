@@ -11,6 +11,7 @@ from flint import arb
 
 from tinemark.onsets.ball_orbits import ball_of, precision
 from tinemark.onsets.decimals import decimal_places
+from tinemark.onsets.many_borders import prove_claim
 from tinemark.onsets.many_branch_points import identity_of, start_of
 from tinemark.onsets.many_cycles import Cycle, condensed
 from tinemark.onsets.many_map import (
@@ -31,7 +32,7 @@ from tinemark.onsets.results import Kind, Onset, Step
 from tinemark.systems.system import System
 
 CROSSED = (Kind.TRANSCRITICAL, Kind.PITCHFORK)
-KINDS = (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, *CROSSED)
+KINDS = (Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, Kind.BORDER_COLLISION, *CROSSED)
 STATE_UNITS = 50
 """How far a state may lie from the printed one, in units of its last printed digit."""
 REACH = 1e-6
@@ -66,7 +67,17 @@ def verify_onset_many(system: System, onset: Onset) -> Generator[Step, None, Man
         raise NotProved("the claim names no cycle point", refuted=True)
     texts = [printed[name] for name in float_map.many.states]
     bits = working_bits(decimal_places((upper - lower) / 2, 6), period)
-    proof = yield from _proof(float_map, onset.kind, period, [Fraction(text) for text in texts], value, bits)
+    state = [Fraction(text) for text in texts]
+    if onset.kind is Kind.BORDER_COLLISION:
+        yield Step("verifying")
+        scales = float_map.scales(float(value))
+        collision = prove_claim(float_map, period, state, value, scales, bits + 8 * period)
+        if (collision.before, collision.after) != (onset.period_before, onset.period_after):
+            reason = "the periods before and after do not belong to such an onset"
+            raise NotProved(reason, refuted=True)
+        proof = collision.proof
+    else:
+        proof = yield from _proof(float_map, onset.kind, period, state, value, bits)
     if not (lower <= proof.parameter[0] and proof.parameter[1] <= upper):
         raise NotProved("the onset lies outside the printed interval", refuted=True)
     for text, interval in zip(texts, proof.states, strict=True):
@@ -83,6 +94,8 @@ def verify_onset_many(system: System, onset: Onset) -> Generator[Step, None, Man
 def _claimed_period(onset: Onset) -> int:
     if onset.kind not in KINDS:
         raise NotProved(f"a {onset.kind.value} is not proved for maps of several states", refuted=True)
+    if onset.kind is Kind.BORDER_COLLISION:
+        return onset.period_before or onset.period_after
     period = onset.period_after if onset.kind is Kind.FOLD else onset.period_before
     if period < 1 or periods(onset.kind, period) != (onset.period_before, onset.period_after):
         raise NotProved("the periods before and after do not belong to such an onset", refuted=True)

@@ -6,16 +6,17 @@ Here no turning points bound what there is, so nothing is said to be complete.
 from __future__ import annotations
 
 from collections.abc import Generator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 import numpy as np
 
 from tinemark.onsets.branch_places import Place, Screen
 from tinemark.onsets.branch_seeds import settled_many, short_many
-from tinemark.onsets.branch_survey import Survey, follow_all, kind_of
+from tinemark.onsets.branch_survey import Branch, Survey, follow_all, kind_of
 from tinemark.onsets.continuation import Pace
 from tinemark.onsets.cycle_families import ManyFamily
+from tinemark.onsets.many_border_search import borders_along
 from tinemark.onsets.many_cycles import Cycle
 from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
 from tinemark.onsets.many_onset import Settled, settle_onset
@@ -29,11 +30,14 @@ COLUMNS = 120
 SHORT = 2
 SHORT_SHARES = (0.03, 0.5, 0.97)
 SURVEYED = Pace(0.01, 0.06, smooth=False, farthest=12.0)
+BORDER_REACH = 0.1
+"""Share of the range by which a surface may lie ahead of a branch's last place."""
 FAR_FROM_STABLE = 30.0
 """Past multipliers of this size a branch is left alone: where it is stable again orbits settle on it."""
 FOLLOWED_SHARE = 0.5
 """Share of the progress at which all branches are followed."""
-KINDS = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, Kind.TRANSCRITICAL, Kind.PITCHFORK})
+SMOOTH = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER, Kind.TRANSCRITICAL, Kind.PITCHFORK})
+KINDS = SMOOTH | {Kind.BORDER_COLLISION}
 """Kinds that a survey of a map of several states looks for."""
 
 
@@ -109,15 +113,31 @@ def _candidates(survey: Survey) -> list[_Candidate]:
         for event in branch.events:
             place = branch.places[event.at]
             kind = kind_of(survey.family, place, event.passed)
-            if kind in KINDS:
+            if kind in SMOOTH:
                 found.append(_Candidate(kind, place, reach))
         found += [_Candidate(Kind.FLIP, parent, reach) for parent in branch.parents]
+        found += _borders(survey, branch)
     found.sort(key=lambda candidate: candidate.place.r)
     kept: list[_Candidate] = []
     for candidate in found:
         if not any(_alike(candidate, other, survey) for other in kept[-8:]):
             kept.append(candidate)
     return kept
+
+
+def _borders(survey: Survey, branch: Branch) -> list[_Candidate]:
+    """Switching surfaces that the stable cycles of a branch meet."""
+    family, width = survey.family, survey.screen.width
+    if not isinstance(family, ManyFamily) or not isinstance(family.float_map, FloatManyMap):
+        return []
+    cycles = [Cycle(place.points, place.r) for place in branch.places]
+    found = []
+    for at, cycle in borders_along(family.float_map, cycles, family.scales, BORDER_REACH * width):
+        beside = branch.places[max(0, at - 1) : at + 2]
+        if any(place.stable for place in beside):
+            place = replace(branch.places[at], points=cycle.points, r=cycle.r)
+            found.append(_Candidate(Kind.BORDER_COLLISION, place, BORDER_REACH * width))
+    return found
 
 
 def _alike(a: _Candidate, b: _Candidate, survey: Survey) -> bool:
