@@ -44,7 +44,8 @@ def figures() -> Iterator[Figure]:
         told = session.stdout.read()
     if session.returncode != 0:
         raise RuntimeError("the session did not come to its end")
-    for name, seconds in json.loads(told).items():
+    pauses, work = json.loads(told)
+    for name, seconds in pauses.items():
         figure = f"longest pause of the window's thread while {name} (ms)"
         # The first picture of a session comes while modules are still being loaded; nothing is asked of it.
         yield (
@@ -52,6 +53,11 @@ def figures() -> Iterator[Figure]:
             if name == "starting"
             else at_most(figure, seconds * 1e3, LONGEST_PAUSE_MS)
         )
+    worst = max((name for name in work if name != "starting"), key=work.__getitem__)
+    # What a pause is made of where nothing else keeps the machine busy.
+    yield reading(
+        f"most work of the window's thread between two beats, while {worst} (ms)", work[worst] * 1e3
+    )
     if peak:
         yield at_most("peak memory of a session, all processes, shared pages once (MB)", peak, MOST_MEMORY_MB)
 
@@ -79,8 +85,10 @@ def _tree(pid: int) -> list[int]:
     return members
 
 
-def run_session() -> dict[str, float]:
-    """Longest pause in seconds of each part. Runs in the session's own process."""
+def run_session() -> tuple[dict[str, float], dict[str, float]]:
+    """Longest pause of each part, and most processor time between two beats, in seconds. Runs in the session's
+    own process.
+    """
     from PySide6.QtCore import Qt, QTimer
 
     from tinemark.window.app import application, make_window
@@ -92,17 +100,18 @@ def run_session() -> dict[str, float]:
     window.workers.start()
     parts = _parts(window)
     name, ready = next(parts)
-    pauses = {name: 0.0}
-    last = time.perf_counter()
+    pauses, work = {name: 0.0}, {name: 0.0}
+    last, worked = time.perf_counter(), time.thread_time()
     deadline = last + PATIENCE_S
     beat = QTimer()
     beat.setTimerType(Qt.TimerType.PreciseTimer)
 
     def look() -> None:
-        nonlocal last, name, ready
-        now = time.perf_counter()
+        nonlocal last, worked, name, ready
+        now, used = time.perf_counter(), time.thread_time()
         pauses[name] = max(pauses[name], now - last)
-        last = now
+        work[name] = max(work[name], used - worked)
+        last, worked = now, used
         if ready():
             try:
                 name, ready = next(parts)
@@ -113,6 +122,7 @@ def run_session() -> dict[str, float]:
                 app.quit()
                 return
             pauses.setdefault(name, 0.0)
+            work.setdefault(name, 0.0)
         elif now > deadline:
             app.exit(1)
 
@@ -120,7 +130,7 @@ def run_session() -> dict[str, float]:
     beat.start(BEAT_MS)
     if app.exec() != 0:
         raise SystemExit(f"{name} did not come to its end")
-    return pauses
+    return pauses, work
 
 
 def _parts(window: Any) -> Iterator[tuple[str, Any]]:

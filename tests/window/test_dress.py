@@ -4,8 +4,18 @@ from __future__ import annotations
 
 import pytest
 from PySide6.QtGui import QColor, QPalette
-from PySide6.QtWidgets import QApplication, QCheckBox, QLineEdit, QMenu, QVBoxLayout, QWidget
+from PySide6.QtWidgets import (
+    QApplication,
+    QCheckBox,
+    QLineEdit,
+    QMenu,
+    QScrollArea,
+    QVBoxLayout,
+    QWidget,
+)
 
+from tinemark.window import dressing
+from tinemark.window.dressing import Dressing
 from tinemark.window.panel_plot import PanelPlot
 from tinemark.window.readying import Readying
 from tinemark.window.style_sheet import ROLE_WORDS, style_sheet
@@ -51,6 +61,33 @@ def test_another_theme_reaches_every_widget_and_reads_no_sheet_anew(dressed, qtb
         for edit in (seen, folded):
             assert edit.grab().toImage().pixelColor(edit.width() - 8, 6) == QColor(theme.raised)
         folded.hide()
+
+
+def test_windows_keep_still_until_all_that_is_seen_is_dressed(dressed, qtbot, qapp, monkeypatch):
+    dressed(LIGHT)
+    page = QWidget()
+    qtbot.addWidget(page)
+    column = QVBoxLayout(page)
+    edits = [QLineEdit() for _ in range(30)]
+    for edit in edits:
+        column.addWidget(edit)
+    area = QScrollArea()
+    column.addWidget(area)
+    page.show()
+    # No time for more than one widget a turn.
+    monkeypatch.setattr(dressing, "TURN_MS", 0)
+    turn = Dressing.of(qapp)._go_on
+    still = []
+    monkeypatch.setattr(dressing.QTimer, "singleShot", lambda *_: still.append(page.updatesEnabled()))
+    dressed(DARK)
+    turn()
+    # Another theme in the middle takes over from there.
+    dressed(LIGHT)
+    while not Dressing.of(qapp).is_done:
+        turn()
+    assert still[0] is False and still[-1] is True
+    assert page.updatesEnabled() and area.updatesEnabled()
+    assert {edit.palette().color(QPalette.ColorRole.Base).name() for edit in edits} == {LIGHT.raised}
 
 
 def test_a_plot_brings_no_menu_of_its_own(qtbot, qapp):

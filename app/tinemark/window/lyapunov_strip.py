@@ -9,8 +9,9 @@ import math
 
 import numpy as np
 from numpy.typing import NDArray
+from pyqtgraph.functions import arrayToQPolygonF
 from PySide6.QtCore import QPointF, QRectF, Qt
-from PySide6.QtGui import QBrush, QFontMetricsF, QPainter, QPainterPath, QPen, QPixmap, QPolygonF
+from PySide6.QtGui import QBrush, QFontMetricsF, QPainter, QPainterPath, QPen, QPixmap
 
 from tinemark.window.diagram_paint import runs
 from tinemark.window.theme import Theme, color
@@ -129,17 +130,20 @@ def _paint_curve(
     zero: float,
     strip: QRectF,
 ) -> None:
-    points = QPolygonF([QPointF(a, b) for a, b in zip(x.tolist(), y.tolist(), strict=True)])
+    points = arrayToQPolygonF(x, y)
     area = QPainterPath()
     area.addPolygon(points)
     area.lineTo(float(x[-1]), zero)
     area.lineTo(float(x[0]), zero)
     area.closeSubpath()
     painter.save()
+    # The line covers the areas' edges, which therefore need no smoothing.
+    painter.setRenderHint(QPainter.RenderHint.Antialiasing, on=False)
     painter.setClipRect(QRectF(0, zero, strip.width(), strip.height() - zero))
     painter.fillPath(area, color(theme.cool, 0.22))
     painter.setClipRect(QRectF(0, 0, strip.width(), zero))
     painter.fillPath(area, QBrush(color(theme.text, 0.75), Qt.BrushStyle.BDiagPattern))
     painter.restore()
-    painter.setPen(QPen(color(theme.text), 1.1))
+    # A line one pixel wide is drawn thirty times as fast as any other.
+    painter.setPen(QPen(color(theme.text), 1.0))
     painter.drawPolyline(points)

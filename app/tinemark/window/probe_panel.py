@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from PySide6.QtCore import QEvent, Qt, Signal
+from PySide6.QtCore import QEvent, Qt, QTimer, Signal
 from PySide6.QtGui import QColor, QShowEvent
 from PySide6.QtWidgets import (
     QHBoxLayout,
@@ -268,7 +268,8 @@ class ProbePanel(QWidget):
         super().changeEvent(event)
         if event.type() == QEvent.Type.PaletteChange and self._dress != current_theme().name:
             self._dress = current_theme().name
-            self._redress()
+            # In a turn of its own: a change of theme has enough to do. The plots' axes redress themselves.
+            QTimer.singleShot(0, self, self._draw)
 
     def _redress(self) -> None:
         self.series.redress()

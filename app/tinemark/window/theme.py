@@ -11,15 +11,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import cast
 
-from PySide6.QtCore import Qt, QTimer
+from PySide6.QtCore import Qt
 from PySide6.QtGui import QColor, QFont, QFontDatabase, QGuiApplication, QPalette
-from PySide6.QtWidgets import QApplication, QStyle, QStyleFactory, QWidget
-from shiboken6 import isValid
+from PySide6.QtWidgets import QApplication, QStyleFactory
 
+from tinemark.window.dressing import Dressing
 from tinemark.window.style_sheet import style_sheet
 
 THEME_PROPERTY = "tinemark_theme"
-POLISHED_AT_ONCE = 50
 
 
 @dataclass(frozen=True)
@@ -148,36 +147,7 @@ def apply_theme(app: QApplication, theme: Theme) -> None:
         app.setStyleSheet(sheet)
         return
     app.setPalette(qt_palette(theme))
-    # Qt keeps the colours that it has looked up for a widget until that widget is polished anew: at once
-    # where it is seen, a few at a time where it is not.
-    hidden = []
-    style = app.style()
-    for widget in app.allWidgets():
-        if widget.isVisible():
-            _polish(style, widget)
-        else:
-            hidden.append(widget)
-    _polish_soon(app, hidden)
-
-
-def _polish(style: QStyle, widget: QWidget) -> None:
-    font = widget.font()
-    style.polish(widget)
-    # Polishing puts back the font that the widget had when it was first polished.
-    if widget.font() != font:
-        widget.setFont(font)
-
-
-def _polish_soon(app: QApplication, waiting: list[QWidget]) -> None:
-    def go_on() -> None:
-        style = app.style()
-        for widget in waiting[:POLISHED_AT_ONCE]:
-            if isValid(widget):
-                _polish(style, widget)
-        _polish_soon(app, waiting[POLISHED_AT_ONCE:])
-
-    if waiting:
-        QTimer.singleShot(0, app, go_on)
+    Dressing.of(app).start()
 
 
 def qt_palette(theme: Theme) -> QPalette:
