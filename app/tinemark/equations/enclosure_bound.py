@@ -21,6 +21,7 @@ from flint import acb, acb_series, arb
 from tinemark.equations.enclosure_discs import NotAnalytic
 from tinemark.equations.series import working
 from tinemark.equations.taylor_rates import RateFunctions
+from tinemark.systems.errors import SwitchingTouched
 
 BOUND_BITS = 53
 ROOM = 0.0625
@@ -34,7 +35,9 @@ TERMS = 6
 ROUNDS = 6
 SHRINK = 0.75
 TRIALS = 60
-LARGEST = 1e200
+MOST_REACH = 2.0**9
+"""Reaches beyond this multiple of the least one, and of what the rates at the start would lead to, say too
+little: shorter times are tried instead."""
 SWELL = 1.06
 
 
@@ -108,8 +111,6 @@ def bound_of(
     SwitchingTouched
         Starts lie on a switching surface.
     """
-    from tinemark.systems.errors import SwitchingTouched
-
     radius = guess
     touched: SwitchingTouched | None = None
     with working(BOUND_BITS):
@@ -118,11 +119,10 @@ def bound_of(
         parameter = acb(wide, arb(0, wide.rad()))
         for _ in range(TRIALS):
             try:
-                begun = likely or floors
-                likely = ()
-                reach = _tested(functions, middle, spread, parameter, clock, begun, radius)
+                reach = _tested(functions, middle, spread, parameter, clock, floors, likely, radius)
             except SwitchingTouched as error:
                 touched, reach = error, None
+            likely = ()
             if reach is not None:
                 room = [arb(ROOM * value) for value in reach]
                 return Bound(arb(radius), [arb(value) for value in reach], room, arb(room_r))
@@ -139,11 +139,13 @@ def _tested(
     parameter: Any,
     clock: Any,
     floors: Sequence[float],
+    likely: Sequence[float],
     radius: float,
 ) -> list[float] | None:
     """A reach that passes the test over a disc of this radius, or None."""
     spreads = [float(value.abs_upper()) for value in spread]
-    reach = [max(floor, 8 * value) for floor, value in zip(floors, spreads, strict=True)]
+    least = [max(floor, 8 * value) for floor, value in zip(floors, spreads, strict=True)]
+    reach = [max(a, b) for a, b in zip(least, likely, strict=True)] if likely else least
     disc = acb(arb(clock, radius), arb(0, radius))
     for _ in range(ROUNDS):
         starts = [s + arb(ROOM * b) for s, b in zip(spread, reach, strict=True)]
@@ -165,7 +167,8 @@ def _tested(
             return reach
         wanted = [SWELL * float(size) for size in needed]
         reach = [max(b, want) for want, b in zip(wanted, reach, strict=True)]
-        if not all(b < LARGEST for b in reach):
+        straight = [float(abs(first[1]).abs_upper()) * radius for first in near]
+        if any(b > MOST_REACH * max(pair) for b, *pair in zip(reach, least, straight, strict=True)):
             return None
     return None
 

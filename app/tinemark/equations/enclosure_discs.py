@@ -78,15 +78,13 @@ def _entire(name: str) -> Callable[[Any], Any]:
 def _sinh(x: Any) -> Any:
     if not isinstance(x, acb_series):
         return _complex(x).sinh()
-    grown = x.exp()
-    return (grown - 1 / grown) / 2
+    return (x.exp() - (-x).exp()) / 2
 
 
 def _cosh(x: Any) -> Any:
     if not isinstance(x, acb_series):
         return _complex(x).cosh()
-    grown = x.exp()
-    return (grown + 1 / grown) / 2
+    return (x.exp() + (-x).exp()) / 2
 
 
 def _tanh(x: Any) -> Any:
@@ -179,4 +177,13 @@ def disc_function(expressions: tuple[Expr, ...], names: tuple[str, ...]) -> Disc
         `SwitchingTouched` where the real part of the boxes touches a switching surface. At poles the
         enclosures are not finite.
     """
-    return compiled(expressions, names, _DISCS)
+    function = compiled(expressions, names, _DISCS)
+
+    def evaluate(*values: Any) -> tuple[Any, ...]:
+        try:
+            return function(*values)
+        except ValueError as error:
+            # A series that may begin with zero divides nothing.
+            raise NotAnalytic from error
+
+    return evaluate

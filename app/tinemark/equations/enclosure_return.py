@@ -76,6 +76,8 @@ class Carried:
         How long it took: 1 for a strobe, otherwise a ball.
     steps
         Taylor steps taken.
+    sizes
+        Largest size of each state between steps.
     """
 
     image: list[Any]
@@ -85,6 +87,7 @@ class Carried:
     bend_r: Any | None
     time: Any
     steps: int
+    sizes: list[float]
 
 
 class _Run:
@@ -327,7 +330,7 @@ def carry(
         jacobian, push = _parts(first)
         bend, bend_r = (None, None) if after is None else _parts(after)
         taken = arb(1) if moment is None else moment + run.elapsed
-        return Carried(image, jacobian, push, bend, bend_r, taken, run.steps)
+        return Carried(image, jacobian, push, bend, bend_r, taken, run.steps, run.sizes)
 
 
 def carry_curve(

@@ -47,13 +47,11 @@ def _either(name: str, over_series: Callable[[Any], Any]) -> Callable[[Any], Any
 
 
 def _sinh(x: Any) -> Any:
-    grown = x.exp()
-    return (grown - 1 / grown) / 2
+    return (x.exp() - (-x).exp()) / 2
 
 
 def _cosh(x: Any) -> Any:
-    grown = x.exp()
-    return (grown + 1 / grown) / 2
+    return (x.exp() + (-x).exp()) / 2
 
 
 def _tanh(x: Any) -> Any:
@@ -164,7 +162,8 @@ def series_function(expressions: tuple[Expr, ...], names: tuple[str, ...]) -> Se
     -------
     callable
         f(*series) -> one series an expression; None where the expression is the constant zero.
-        Precision and length are those in force. Outside a function's domain coefficients are not finite.
+        Precision and length are those in force. Outside a function's domain coefficients are not finite, or
+        it raises `ArithmeticError`.
     """
     zero = tuple(is_zero(expression) for expression in expressions)
     wanted = tuple(expr for expr, nothing in zip(expressions, zero, strict=True) if not nothing)
@@ -179,7 +178,11 @@ def series_function(expressions: tuple[Expr, ...], names: tuple[str, ...]) -> Se
     def evaluate(*values: Any) -> tuple[Any, ...]:
         # What is remembered of the last argument may be of another precision.
         circle.argument = None
-        found = iter(function(*values))
+        try:
+            found = iter(function(*values))
+        except ValueError as error:
+            # A series that may begin with zero divides nothing.
+            raise ArithmeticError("the orbit left the domain of a formula") from error
         return tuple(None if nothing else _as_series(next(found)) for nothing in zero)
 
     return evaluate

@@ -8,7 +8,7 @@ orders and two sequences of steps as well; the error is told from how far they d
 from __future__ import annotations
 
 import math
-from collections.abc import Generator, Sequence
+from collections.abc import Generator
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -20,7 +20,6 @@ from tinemark.onsets.decimals import GUARD_DIGITS, decimal_places
 from tinemark.onsets.flow_proofs import prove
 from tinemark.onsets.flow_proofs_map import IntegratedMap, TooLong, integrated_map
 from tinemark.onsets.many_map import Floats
-from tinemark.onsets.many_onset import LEAST_SIZE
 from tinemark.onsets.many_polish import NotFound, Polished, polish
 from tinemark.onsets.many_proof import ManyProof
 from tinemark.onsets.many_shooting import Place
@@ -35,6 +34,8 @@ SECOND_PRECISION_BITS = 40
 SAFETY = 4
 """Factor on the observed disagreement and the last Newton step, for 95 % coverage or better."""
 PROOF_ATTEMPTS = 2
+LEAST_SIZE = Fraction(1, 10**40)
+"""An onset at zero has no significant digits: those of this size are given instead."""
 
 
 @dataclass(frozen=True)
@@ -170,8 +171,3 @@ def _estimated(
     apart = abs(fraction_of(high.r) - fraction_of(low.r))
     half = SAFETY * (apart + Fraction(high.last_step))
     return MoreDigits(high.place, fraction_of(high.r), half, None, reason, (low.bits, high.bits))
-
-
-def state_values(found: MoreDigits) -> Sequence[Fraction]:
-    """The first cycle point."""
-    return [fraction_of(value) for value in found.place.points[0]]

@@ -20,6 +20,8 @@ from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Step
 from tinemark.systems.errors import SwitchingTouched
 
+STEADY, STEADY_STATE = "a steady state", "the steady state"
+"""What a point that comes back at once is called in a map."""
 NOT_REPEATING = "that the rates repeat with the strobe period could not be shown"
 
 
@@ -61,5 +63,9 @@ def prove(
         way += "strobe to the next"
     else:
         way += "passage of the section to the very next in the same direction, at non-zero speed"
+    once = "the orbit closes after one strobe" if driven else "the orbit closes after one passage"
     first, *rest = proof.evidence
-    return replace(proof, evidence=(first, ("equations enclosed", way), *rest))
+    lines = [(claim, once if finding == STEADY else finding) for claim, finding in rest]
+    evidence = (first, ("equations enclosed", way), *lines)
+    consequence = proof.claims.consequence.replace(STEADY_STATE, "the cycle")
+    return replace(proof, evidence=evidence, claims=replace(proof.claims, consequence=consequence))
