@@ -189,8 +189,7 @@ def follow(
         trace.append(following)
         events += _left_at_crossing(trace[-3:])
         here = following
-        if len(trace) % 8 == 0:
-            yield Step(f"following the branch of period {here.cycle.period}")
+        yield Step(f"following the branch of period {here.cycle.period}")
         seen += bool(events)
         if (
             seen > AFTER_EVENT

@@ -24,6 +24,7 @@ from tinemark.onsets.ball_orbits import precision
 from tinemark.onsets.many_cycles import Cycle, condensed
 from tinemark.onsets.many_map import FloatManyMap, Floats, ManyMap, evaluators_along
 from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.many_shooting import column, entries, in_turn
 from tinemark.onsets.results import Step
 
@@ -137,6 +138,7 @@ def crossing_point(
         No convergence, the parameter left its reach, or the branches miss each other.
     """
     many, n, text = float_map.many, float_map.many.size, f"polishing a crossing of period {rough.period}"
+    yield from worked_out(many, 2)
     matrix = condensed(float_map, rough.points, rough.r).monodromy * scales / scales[:, None]
     if not np.isfinite(matrix).all():
         raise NotFound("the orbit left the domain of the formula")

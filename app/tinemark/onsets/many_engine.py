@@ -16,6 +16,7 @@ from tinemark.onsets.many_ladder import ladder_many
 from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
 from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.many_search import Place, cycles_around
 from tinemark.onsets.results import Kind, Onset, RefineRequest, RefineResult, Step
 from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
@@ -68,6 +69,7 @@ def refine_many(request: RefineRequest) -> Generator[Step, None, RefineResult]:
         )
     yield Step("reading the map")
     many = many_map(request.system, request.parameter)
+    yield from worked_out(many, 1)
     float_map = float_many_map(many)
     place = Place(
         float(request.near),

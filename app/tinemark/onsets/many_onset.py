@@ -15,6 +15,7 @@ from tinemark.onsets.many_cycles import Cycle, condensed, least_period
 from tinemark.onsets.many_map import FloatManyMap, Floats, ManyMap
 from tinemark.onsets.many_normal_form import Findings, findings
 from tinemark.onsets.many_polish import NotFound, Polished, polish, rough_place, working_bits
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.many_proof import prove_many
 from tinemark.onsets.many_shooting import Place
 from tinemark.onsets.many_texts import (
@@ -104,6 +105,7 @@ def _settled(
     float_map: FloatManyMap, kind: Kind, rough: Cycle, digits: int, scales: Floats, reach: float
 ) -> Generator[Step, None, Settled]:
     many = float_map.many
+    yield from worked_out(many, 2)
     start = rough_start(float_map, kind, rough)
     first = yield from polish(many, kind, start, FIRST_BITS, scales, reach)
     _check_period(first, scales)

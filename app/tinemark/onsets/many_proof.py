@@ -19,6 +19,7 @@ from tinemark.onsets.many_claims import Claims, claims_of
 from tinemark.onsets.many_conservative import conservative_claims, preserves_areas
 from tinemark.onsets.many_jets import jets_along
 from tinemark.onsets.many_map import Floats, ManyMap
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.many_shooting import (
     Condensed,
     Frames,
@@ -162,7 +163,11 @@ def enclose(
     with precision(bits):
         box = _box_of(first, arb(2) ** -bits)
         balls = _around(middle, frames, box)
+    for each in dict.fromkeys(many.steps or (many,)):
+        yield from worked_out(each, 3)
+    yield Step(text)
     jets = jets_along(many, middle.period)
+    yield Step(text)
 
     def check(at: int, x: Sequence[Any], r: Any) -> None:
         jets[at].check_sides(x, r)

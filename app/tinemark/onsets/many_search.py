@@ -33,7 +33,7 @@ PASSES = 1e-8
 """An orbit that ends closer than this to a cycle has settled on it."""
 ATTRACTING = 1e-3
 """Multipliers closer to 1 than this do not show that orbits settle on a cycle."""
-TRANSIENT = 1500
+TRANSIENT, SLICES = 1500, 30
 LONGEST_PERIOD = 128
 TOLERANCES = (1e-9, 1e-6, 1e-4, 3e-3)
 PARENTS_OF = 6
@@ -115,9 +115,9 @@ def _order(float_map: CycleMap, place: Place, cycle: Cycle) -> tuple[bool, float
 def _settled(float_map: CycleMap, starts: Floats, rs: Floats) -> Generator[Step, None, tuple[Floats, Floats]]:
     """Last states of orbits from every start at every parameter, those that escape left out."""
     states, lanes = np.repeat(starts, len(rs), axis=1), np.tile(rs, starts.shape[1])
-    for _ in range(5):
+    for _ in range(SLICES):
         yield Step("settling orbits around the click")
-        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // 5, 1)
+        history, lanes = orbit_ends(float_map, states, lanes, TRANSIENT // SLICES, 1)
         states = history[-1]
     return orbit_ends(float_map, states, lanes, 0, LONGEST_PERIOD + 1)
 

@@ -24,6 +24,7 @@ from tinemark.onsets.many_map import (
 )
 from tinemark.onsets.many_onset import rough_start
 from tinemark.onsets.many_polish import NotFound, polish, working_bits
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.many_proof import ManyProof, prove_many
 from tinemark.onsets.many_shooting import in_turn
 from tinemark.onsets.many_texts import periods
@@ -57,7 +58,9 @@ def verify_onset_many(system: System, onset: Onset) -> Generator[Step, None, Man
     SwitchingTouched
         The box of a cycle point touches a switching surface.
     """
-    float_map = float_many_map(many_map(system, onset.parameter))
+    many = many_map(system, onset.parameter)
+    yield from worked_out(many, 2)
+    float_map = float_many_map(many)
     period = _claimed_period(onset)
     lower, value, upper = (Fraction(text) for text in (onset.lower, onset.value, onset.upper))
     if not lower <= value <= upper or lower == upper:
