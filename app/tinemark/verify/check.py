@@ -5,7 +5,15 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Iterator
 
-from tinemark.verify import blame, border, branch_points, many_branch_points, many_states, one_state
+from tinemark.verify import (
+    blame,
+    border,
+    branch_points,
+    many_border,
+    many_branch_points,
+    many_states,
+    one_state,
+)
 from tinemark.verify.claims import (
     BORDER_COLLISION,
     BRANCH_POINTS,
@@ -78,11 +86,11 @@ def _check(claim: Claim, watch: Watch) -> None:
         many = ManyStates(formulas, plain.states, paper.parameter, watch)
         watch.expect(PASSES_MANY * paper.period * many.cost(bits, 2))
         if paper.kind == BORDER_COLLISION:
-            raise NotCheckable(
-                "border collisions of several states are not proved, so there is nothing to check"
-            )
-        prove = many_branch_points.prove if paper.kind in BRANCH_POINTS else many_states.prove
-        prove(many, paper, numbers, bits, claim.states)
+            many_border.prove(many, claim, paper, numbers, bits, dict(plain.values))
+        elif paper.kind in BRANCH_POINTS:
+            many_branch_points.prove(many, paper, numbers, bits, claim.states)
+        else:
+            many_states.prove(many, paper, numbers, bits, claim.states)
         same_digest(claim, paper)
         return
     one = OneState(formulas[0], plain.states[0], paper.parameter, watch)

@@ -15,10 +15,12 @@ Arithmetic on numbers alone is done at once, exactly.
 
 from __future__ import annotations
 
+import hashlib
 import re
 from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import cached_property
 
 from tinemark.verify.claims import NotCheckable, Part, Refused
 from tinemark.verify.decimals import rational
@@ -28,7 +30,6 @@ MOST_STEPS = 1500
 MOST_DEPTH = 60
 MOST_BITS = 2000
 MOST_EXPONENT = 64
-MOST_TREE = 100_000
 FUNCTIONS: Mapping[str, int] = {
     "sin": 1,
     "cos": 1,
@@ -80,13 +81,14 @@ class Program:
         """The program of one of its steps."""
         return Program(self.steps[: place + 1])
 
-    def tree(self, place: int | None = None) -> str:
-        """A step with all that it is made of, as one text that is the same for the same formula."""
-        texts: list[str] = []
-        for step in self.steps[: len(self.steps) if place is None else place + 1]:
-            inner = ",".join(texts[arg] for arg in step.args)
-            texts.append(f"{step.op}[{step.name}{step.value}]({inner})"[:MOST_TREE])
-        return texts[-1]
+    @cached_property
+    def marks(self) -> tuple[str, ...]:
+        """For each step a text that is the same where the same is worked out, also in another program."""
+        found: list[str] = []
+        for step in self.steps:
+            parts = [step.op, step.name, str(step.value), *(found[arg] for arg in step.args)]
+            found.append(hashlib.sha256("\n".join(parts).encode()).hexdigest())
+        return tuple(found)
 
 
 def parse(text: str, names: Collection[str], constants: Mapping[str, Fraction]) -> Program:

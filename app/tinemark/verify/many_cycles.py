@@ -21,6 +21,7 @@ from tinemark.verify.formula import Program
 from tinemark.verify.frames import Rows
 from tinemark.verify.intervals import ONE, ZERO, Interval
 from tinemark.verify.series import Evaluator, Series, Shape, shape_of
+from tinemark.verify.switches import Sides, Switch
 from tinemark.verify.watching import Watch, cost_of
 
 Vector = list[Interval]
@@ -113,13 +114,17 @@ class Local:
             Evaluator(program, self.shape, bits, steady, many.states) for program in many.programs
         ]
 
-    def at(self, box: Sequence[Interval]) -> list[Series]:
-        """One series a state."""
-        values: dict[str, Series] = {
+    def at(self, box: Sequence[Interval], sides: dict[Switch, int] | None = None) -> list[Series]:
+        """One series a state; `sides` as `series.Evaluator` takes it."""
+        values = self.values(box)
+        return [evaluate(values, sides) for evaluate in self.evaluators]
+
+    def values(self, box: Sequence[Interval]) -> dict[str, Series]:
+        """The states as series."""
+        return {
             name: {0: side} | ({self.units[place]: ONE} if self.order else {})
             for place, (name, side) in enumerate(zip(self.many.states, box, strict=True))
         }
-        return [evaluate(values) for evaluate in self.evaluators]
 
     def tensor(self, series: Sequence[Series], order: int) -> Tensor:
         """Derivatives of one order that are not zero."""
@@ -175,9 +180,17 @@ class Stretch:
 
 
 def walk(
-    many: ManyStates, box: Sequence[Interval], r: Interval, period: int, bits: int, order: int
+    many: ManyStates,
+    box: Sequence[Interval],
+    r: Interval,
+    period: int,
+    bits: int,
+    order: int,
+    sides: Sides | None = None,
 ) -> Iterator[Stretch]:
     """Carry a box once round, with the map's derivatives up to an order; first and last frame are upright.
+
+    `sides` are switches that are set at the first point, whatever the box says.
 
     Raises
     ------
@@ -196,7 +209,7 @@ def walk(
     cost = many.cost(bits, order)
     for step in range(period):
         many.watch.spend(cost)
-        series = local.at(here)
+        series = local.at(here, chosen(sides, step))
         slopes = local.tensor(series, 1)
         rows = [[ZERO] * size for _ in range(size)]
         push = [ZERO] * size
@@ -215,7 +228,7 @@ def walk(
             back = frames.inverse(following, bits)
             rows = frames.product(back, rows, bits)
             push = frames.applied(back, push, bits)
-        images = [one[0] for one in values.at(middle)]
+        images = [one[0] for one in values.at(middle, chosen(sides, step))]
         middle = [iv.middle(side, bits) for side in images]
         missed = [iv.sub(side, point, bits) for side, point in zip(images, middle, strict=True)]
         offsets = added(frames.applied(rows, offsets, bits), frames.applied(back, missed, bits), bits)
@@ -228,6 +241,11 @@ def walk(
         here, frame = after, following
 
 
+def chosen(sides: Sides | None, step: int) -> dict[Switch, int] | None:
+    """Switches to set at a step."""
+    return None if sides is None or step else dict(sides)
+
+
 def carried(
     many: ManyStates,
     box: Sequence[Interval],
@@ -238,6 +256,7 @@ def carried(
     second: bool = False,
     visits: Collection[int] = (),
     look_for: Sequence[Interval] | None = None,
+    sides: Sides | None = None,
 ) -> Carried:
     """Carry a box and its derivatives once round; see `Carried`."""
     size = many.size
@@ -249,7 +268,7 @@ def carried(
     kept: dict[int, Vector] = {}
     near = False
     here = list(box)
-    for step, stretch in enumerate(walk(many, box, r, period, bits, 2 if second else 1)):
+    for step, stretch in enumerate(walk(many, box, r, period, bits, 2 if second else 1, sides)):
         if step in visits:
             kept[step] = stretch.here
         if look_for is not None and not near:

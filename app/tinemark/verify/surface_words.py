@@ -79,9 +79,9 @@ def _same_program(
     """For surfaces that hold switches themselves: the words must be the very steps of the formula."""
     step = program.steps[place]
     texts = match.groups()
-    written = [parse(text, names, constants).tree() for text in texts]
+    written = [parse(text, names, constants).marks[-1] for text in texts]
     if len(step.args) == 1:
         written = written[:1]
-    there = [program.tree(arg) for arg in step.args[: len(written)]]
+    there = [program.marks[arg] for arg in step.args[: len(written)]]
     if written not in (there, there[::-1]):
         raise Refused(Part.SURFACE, "the words name another surface than the one that is touched")

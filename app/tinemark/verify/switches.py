@@ -15,31 +15,31 @@ from tinemark.verify.formula import COMPARISONS, Program
 
 @dataclass(frozen=True)
 class Switch:
-    """What is compared, by steps of a formula: (the formula's place, the step's).
+    """What is compared, by the marks of steps (`Program.marks`).
 
     `kind` "zero" is left against right, or against zero where that is None; "whole" is a whole part.
     """
 
     kind: str
-    left: tuple[int, int]
-    right: tuple[int, int] | None = None
+    left: str
+    right: str | None = None
 
 
 Sides = Mapping[Switch, int]
 
 
-def switch_of(program: Program, place: int, at: int = 0) -> Switch | None:
-    """The switch that a step is, if it is one. `at` is the formula's place among those of a system."""
-    step = program.steps[place]
+def switch_of(program: Program, place: int) -> Switch | None:
+    """The switch that a step is, if it is one."""
+    step, marks = program.steps[place], program.marks
     if step.op in COMPARISONS or step.op in ("min", "max"):
-        return Switch("zero", (at, step.args[0]), (at, step.args[1]))
+        return Switch("zero", marks[step.args[0]], marks[step.args[1]])
     if step.op == "abs":
         inner = program.steps[step.args[0]]
         if inner.op == "sub":
-            return Switch("zero", (at, inner.args[0]), (at, inner.args[1]))
-        return Switch("zero", (at, step.args[0]))
+            return Switch("zero", marks[inner.args[0]], marks[inner.args[1]])
+        return Switch("zero", marks[step.args[0]])
     if step.op == "floor":
-        return Switch("whole", (at, step.args[0]))
+        return Switch("whole", marks[step.args[0]])
     return None
 
 
