@@ -97,6 +97,34 @@ def test_twelve_levels_give_ten_digits_of_delta_and_a_tight_limit() -> None:
     assert found.class_limit.uncertainty_fraction < found.limit.uncertainty_fraction
 
 
+@pytest.mark.parametrize(
+    "ladder",
+    [ladder for ladder in LONG_LADDERS if ladder.order and len(ladder.onsets) >= 12],
+    ids=lambda ladder: ladder.name,
+)
+def test_twelve_levels_of_every_quadratic_ladder_give_ten_digits_of_delta(ladder: LongLadder) -> None:
+    """The flatter Gaussian begins among bubbles and comes a little short; a quartic maximum settles slower."""
+    found = scaling(points(ladder.onsets[:12])).delta
+    assert found is not None
+    power = {"gaussian 4.9": 19, "quartic": 17}.get(ladder.name, 20)
+    # In half powers of ten: 10, 9.5 or 8.5 digits.
+    assert found.uncertainty_fraction**2 < 5 * Fraction(1, 10**power)
+    assert abs(found.value_fraction - Fraction(class_of(ladder).delta)) <= found.uncertainty_fraction
+
+
+def test_known_rates_of_a_class_do_not_make_its_delta() -> None:
+    """Ratios that go to 4.7 or do not settle are not drawn to the quadratic class by its rates."""
+    onsets, gap = [Fraction(1)], Fraction(1)
+    for level in range(11):
+        onsets.append(onsets[-1] + gap)
+        gap /= Fraction("4.7") + Fraction(-1, 9) ** level
+    for count in range(4, 13):
+        found = scaling(points(onsets[:count])).delta
+        assert found is None or found.lower <= Fraction("4.7") <= found.upper
+    assert found is not None
+    assert found.uncertainty_fraction < Fraction(1, 10**5)
+
+
 def test_intervals_shrink_with_the_levels() -> None:
     widths = []
     for count in (4, 6, 8, 10, 12):

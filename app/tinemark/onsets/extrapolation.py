@@ -21,7 +21,8 @@ from fractions import Fraction
 from itertools import pairwise
 
 from tinemark.onsets.acceleration import ONE, ZERO, eliminate, levin_t, wynn_epsilon
-from tinemark.onsets.class_values import CascadeClass
+from tinemark.onsets.class_values import CLASSES, CascadeClass
+from tinemark.onsets.known_rates import known_rate_table
 from tinemark.onsets.ladder_points import COVERAGE, Estimate, LadderPoint, decimal, estimate
 
 SAFETY = Decimal(6)
@@ -36,6 +37,10 @@ LEAST_CONTRACTION = Decimal("0.15")
 """Moves of a limit are taken to go on shrinking as they did, by no more than this factor a level. The
 ratios of maps with a high order converge unevenly, so for delta no shrinking is counted on."""
 PREDICTED_LEVELS = 3
+LEAST_LEVELS_FOR_RATES = 7
+"""Levels from which on the known rates of a class are removed, where the ratios tell one."""
+LEVELS_FOR_CONTRACTION, HIGHEST_STEADY_ORDER = 10, 4
+"""Where what is left of ratios without their known rates is counted on to go on shrinking as it did."""
 GAPS_DO_NOT_SHRINK = "the last gaps do not shrink, so no limit is in sight"
 
 _Table = Mapping[str, Sequence[Decimal]]
@@ -177,7 +182,27 @@ def _from_ratios(run: Sequence[LadderPoint], values: Sequence[Decimal]) -> Extra
     if delta.value <= 1:
         reason = "the ratios differ too much to say where they tend"
         return Extrapolation(limit.result(), "", None, reason, ())
-    return Extrapolation(limit.result(), "", delta.result(), "", _predictions(run, values, delta))
+    # How ratios go on from here is modelled roughly, and a rough delta says how roughly.
+    predictions = _predictions(run, values, delta)
+    return Extrapolation(limit.result(), "", _of_known_class(values, run, delta).result(), "", predictions)
+
+
+def _of_known_class(values: Sequence[Decimal], run: Sequence[LadderPoint], delta: _Choice) -> _Choice:
+    """Delta again, with the rates of the one class that it tells; as it was where that does not help."""
+    low, high = Fraction(delta.value - delta.uncertainty), Fraction(delta.value + delta.uncertainty)
+    told = [item for item in CLASSES if item.lies_within(low, high)]
+    if len(run) < LEAST_LEVELS_FOR_RATES or len(told) != 1 or not told[0].rates:
+        return delta
+
+    def table_of(terms: Sequence[Decimal]) -> _Table:
+        return known_rate_table(_ratios(terms), told[0])
+
+    steady = len(run) >= LEVELS_FOR_CONTRACTION and told[0].order <= HIGHEST_STEADY_ORDER
+    finer = _choose(values, run, table_of, LEAST_CONTRACTION if steady else ONE)
+    if finer is None or finer.uncertainty >= delta.uncertainty:
+        return delta
+    # Both intervals hold the true number, so they meet; where they do not, neither is to be trusted much.
+    return finer if abs(finer.value - delta.value) <= finer.uncertainty + delta.uncertainty else delta
 
 
 def _delta_of_two_ratios(run: Sequence[LadderPoint], values: Sequence[Decimal]) -> _Choice:
