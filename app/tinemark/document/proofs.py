@@ -40,8 +40,10 @@ def _claim_of_row(session: Session, row: Row) -> Claim:
     onset = row.onset
     formulas: tuple[tuple[str, str], ...] | None = None
     text = dict(session.systems).get(row.system_key)
+    of_map = True
     if text is not None:
         system = read_system(text)
+        of_map = system.is_map
         formulas = tuple(zip(system.state_names, system.formulas, strict=True))
     return Claim(
         name=f"{row.id}, {onset.parameter} = {onset.value[:24]}",
@@ -60,6 +62,7 @@ def _claim_of_row(session: Session, row: Row) -> Claim:
         formulas=formulas,
         values=row.fixed,
         consequence=onset.consequence,
+        of_map=of_map,
     )
 
 

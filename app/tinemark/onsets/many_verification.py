@@ -30,6 +30,7 @@ from tinemark.onsets.many_shooting import in_turn
 from tinemark.onsets.many_texts import periods
 from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Onset, Step
+from tinemark.onsets.verification import last_unit
 from tinemark.systems.system import System
 
 CROSSED = (Kind.TRANSCRITICAL, Kind.PITCHFORK)
@@ -84,7 +85,7 @@ def verify_onset_many(system: System, onset: Onset) -> Generator[Step, None, Man
     if not (lower <= proof.parameter[0] and proof.parameter[1] <= upper):
         raise NotProved("the onset lies outside the printed interval", refuted=True)
     for text, interval in zip(texts, proof.states, strict=True):
-        if max(abs(end - Fraction(text)) for end in interval) > STATE_UNITS * _last_unit(text, onset.digits):
+        if max(abs(end - Fraction(text)) for end in interval) > STATE_UNITS * last_unit(text, onset.digits):
             raise NotProved("the onset's cycle does not pass through the printed point", refuted=True)
     if proof.claims.degenerate:
         raise NotProved(proof.claims.degenerate)
@@ -155,9 +156,3 @@ def _crossing(
         period = len(points)
         raise NotProved(f"no {kind.value} of period {period} is there: {error}", refuted=True) from error
     return (yield from crossed.prove(float_map.many, rough.place, scales, bits))
-
-
-def _last_unit(text: str, digits: int) -> Fraction:
-    _, _, decimals = text.partition(".")
-    # A state printed as plain zero is zero to far more digits than are asked for.
-    return Fraction(1, 10 ** (len(decimals) or digits))

@@ -54,7 +54,7 @@ def verify_onset(system: System, onset: Onset) -> Generator[Step, None, Proof]:
         raise NotProved("the printed interval is empty", refuted=True)
     text = states[one.state]
     x, r = Fraction(text), (lower + upper) / 2
-    half_x = STATE_UNITS * _last_unit(text)
+    half_x = STATE_UNITS * last_unit(text, onset.digits)
     places = decimal_places((upper - lower) / 2, 6)
     bits = 2 * first_bits(Rough(onset.kind, period, x, r), places)
     with precision(bits):
@@ -84,9 +84,16 @@ def _proof(one: OneMap, kind: Kind, period: int, box: Box, bits: int) -> Generat
     return (yield from prove(loops, kind, period, box, inverse, correction, bits))
 
 
-def _last_unit(text: str) -> Fraction:
-    _, _, decimals = text.partition(".")
-    return Fraction(1, 10 ** len(decimals))
+def last_unit(text: str, digits: int) -> Fraction:
+    """One unit of the last digit that counts of a state printed to a number of significant digits."""
+    whole, _, decimals = text.partition(".")
+    if decimals:
+        return Fraction(1, 10 ** len(decimals))
+    if not whole.strip("-0"):
+        # A state printed as plain zero is zero to far more digits than are asked for.
+        return Fraction(1, 10**digits)
+    # The zeros that end a whole number with more digits than were asked for only fill it up.
+    return Fraction(10) ** max(0, len(whole.lstrip("-")) - digits)
 
 
 def _below(half: Fraction) -> arb:

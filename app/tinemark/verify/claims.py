@@ -61,6 +61,8 @@ class Claim:
         text) pairs that the certificate's system must agree with; None where nothing is said.
     consequence
         What the row says in words of what follows; empty where it says nothing.
+    of_map
+        Whether the row's system is a map, as far as is known.
     """
 
     name: str
@@ -79,6 +81,7 @@ class Claim:
     formulas: tuple[tuple[str, str], ...] | None = None
     values: tuple[tuple[str, str], ...] | None = None
     consequence: str = ""
+    of_map: bool = True
 
 
 @dataclass(frozen=True)

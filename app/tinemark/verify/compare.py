@@ -53,6 +53,8 @@ def _paper(claim: Claim) -> Paper:
     if claim.paper is None:
         if not proved:
             raise NotCheckable(f"it is {claim.status}, and claims no proof")
+        if not claim.of_map:
+            raise NotCheckable("proofs about driven and free-running systems have no certificate")
         raise Refused(Part.STATUS, "it says proved, and has no certificate; refine it to prove it again")
     if not proved and not claim.waits:
         raise Refused(Part.STATUS, f"it carries the certificate of a proof, and says {claim.status[:40]}")
