@@ -21,7 +21,7 @@ from tinemark.onsets.branch_seeds import (
 from tinemark.onsets.continuation import BRISK, DRAWN, Pace, follow
 from tinemark.onsets.cycle_families import ManyFamily, OneFamily
 from tinemark.onsets.float_map import float_map
-from tinemark.onsets.many_map import float_many_map, many_map
+from tinemark.onsets.flow_map import cycle_map_of
 from tinemark.onsets.one_map import one_map
 from tinemark.onsets.results import BranchPiece, BranchRequest, BranchResult, Kind, Step
 from tinemark.systems.errors import NoOnsetFound
@@ -157,13 +157,13 @@ def _stage(request: BranchRequest) -> tuple[Family, Screen]:
     if request.observe != system.observe or request.parameter != system.diagram_parameter:
         system = system.with_diagram(request.parameter, request.observe)
     family: Family
-    if len(system.states) == 1:
+    if system.is_map and len(system.states) == 1:
         one = one_map(system, request.parameter)
         cycles = float_map(one)
         scale = min(cycles.scale, float(height)) if one.observes_state else cycles.scale
         family = OneFamily(cycles, scale, float(width))
     else:
-        many = float_many_map(many_map(system, request.parameter))
+        many = cycle_map_of(system, request.parameter)
         scales = many.scales(float(request.left + request.right) / 2)
         if system.observe in system.state_names:
             at = system.state_names.index(system.observe)

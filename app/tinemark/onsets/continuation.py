@@ -120,7 +120,7 @@ def follow(
         _append(family, trace, here, following, step)
         seen = [seen[-1], shown]
         here = following
-        if len(trace.places) % 8 == 0:
+        if len(trace.places) % 2 == 0:
             yield Step(text)
         ended = _ended(family, start, trace, here, screen, pace, step, stop)
         if ended:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Generator
 from dataclasses import replace
+from fractions import Fraction
 
 from tinemark.onsets.results import (
     BranchRequest,
@@ -25,6 +26,7 @@ from tinemark.onsets.results import (
     SurveyResult,
 )
 from tinemark.systems.errors import TinemarkError
+from tinemark.systems.system import System
 
 MOST_DIGITS = 250
 """Significant digits that may be asked for."""
@@ -49,8 +51,11 @@ def refine(request: RefineRequest) -> Generator[Step, None, RefineResult]:
         Nothing in reach; says what was looked at.
     """
     _check(request.digits)
-    request.system.must_be_map()
-    if len(request.system.states) == 1:
+    if not request.system.is_map:
+        from tinemark.onsets.flow_engine import refine_flow
+
+        result = yield from refine_flow(request)
+    elif len(request.system.states) == 1:
         from tinemark.onsets.clicks import refine_one
 
         result = yield from refine_one(request)
@@ -87,8 +92,11 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
     _check(request.digits)
     if request.base_period < 1 or request.levels < 1:
         raise TinemarkError("a ladder has a base period and levels of 1 or more")
-    request.system.must_be_map()
-    if len(request.system.states) == 1:
+    if not request.system.is_map:
+        from tinemark.onsets.flow_ladder import ladder_flow
+
+        levels = ladder_flow(request)
+    elif len(request.system.states) == 1:
         from tinemark.onsets.ladder import ladder_one
 
         levels = ladder_one(request)
@@ -101,6 +109,8 @@ def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, Ladder
 
 
 def _with_alpha(request: LadderRequest, result: LadderResult) -> Generator[Step, None, LadderResult]:
+    if not request.system.is_map:
+        return replace(result, alpha_reason="alpha is worked out for maps of one state")
     from tinemark.onsets.alpha import alpha_of_ladder
 
     found = yield from alpha_of_ladder(request.system, request.parameter, result.levels)
@@ -177,7 +187,7 @@ def survey(request: SurveyRequest) -> Generator[Step | SurveyFind, None, SurveyR
         The range is empty, or too narrow for double precision.
     """
     _check(request.digits)
-    request.system.must_be_map()
+    yield from _ready(request.system, request.parameter, (request.start + request.stop) / 2)
     from tinemark.onsets.sensitivities import with_sensitivities
     from tinemark.onsets.survey import survey_of
 
@@ -219,10 +229,18 @@ def branches(request: BranchRequest) -> Generator[Step, None, BranchResult]:
     """
     if request.max_period < 1:
         raise TinemarkError("branches have a longest period of 1 or more")
-    request.system.must_be_map()
+    yield from _ready(request.system, request.parameter, (request.left + request.right) / 2)
     from tinemark.onsets.branch_survey import branches_of
 
     return (yield from branches_of(request))
+
+
+def _ready(system: System, parameter: str, value: Fraction) -> Generator[Step, None, None]:
+    """Refuse equations that have no return map there."""
+    if not system.is_map:
+        from tinemark.onsets.flow_limits import check_equations
+
+        yield from check_equations(system, parameter, float(value))
 
 
 def _check(digits: int) -> None:

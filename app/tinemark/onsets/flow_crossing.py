@@ -8,12 +8,13 @@ on both sides, none at the crossing, and the polynomial through them is solved.
 from __future__ import annotations
 
 import math
-from collections.abc import Generator
+from collections.abc import Generator, Iterator
 from typing import Any
 
 import numpy as np
 from numpy.polynomial import chebyshev
 
+from tinemark.onsets.branch_places import Place, fold_test
 from tinemark.onsets.cycle_map import Floats
 from tinemark.onsets.flow_map import FlowMap
 from tinemark.onsets.flow_polish import Solution
@@ -63,6 +64,32 @@ def solve_crossing(
     else:
         raise NotFound("the crossing could not be closed in on")
     return _crossing(flow, centre, scales, slope / span, last_step)
+
+
+def leaps(places: list[Place]) -> Iterator[tuple[int, Place]]:
+    """Crossings at which a followed branch was left for another: the place before each, and a rough place.
+
+    A multiplier then nears 1 and turns back. Seen from either side it reaches 1 at the same parameter.
+    """
+    for at in range(1, len(places) - 2):
+        a, b, c, d = places[at - 1 : at + 3]
+        tests = [fold_test(place.multipliers) for place in (a, b, c, d)]
+        if not (tests[0] * tests[3] > 0 and abs(tests[1]) < abs(tests[0]) and abs(tests[2]) < abs(tests[3])):
+            continue
+        if tests[1] * tests[2] < 0 or (b.r - a.r) * (c.r - b.r) <= 0 or (d.r - c.r) * (c.r - b.r) <= 0:
+            continue
+        onward = b.r + tests[1] * (b.r - a.r) / (tests[0] - tests[1])
+        back = c.r - tests[2] * (d.r - c.r) / (tests[3] - tests[2])
+        low, high = sorted((b.r, c.r))
+        slack = 0.5 * (high - low)
+        if abs(onward - back) > slack or not low - slack <= (onward + back) / 2 <= high + slack:
+            continue
+        # The branch that goes through leans less than those that split off, as the root of a distance.
+        first = np.max(np.abs(b.points - a.points)) / abs(b.r - a.r)
+        second = np.max(np.abs(d.points - c.points)) / abs(d.r - c.r)
+        r, (p, q) = (onward, (a, b)) if first < second else (back, (d, c))
+        points = q.points + (r - q.r) / (q.r - p.r) * (q.points - p.points)
+        yield at, Place(points, r, b.multipliers, q.moves, q.move_r)
 
 
 def _nodes(

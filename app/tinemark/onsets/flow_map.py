@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from tinemark.onsets.cycle_map import Floats, Linear
+from tinemark.onsets.cycle_map import CycleMap, Floats, Linear
 from tinemark.systems.exact import exact
 from tinemark.systems.system import System
 
@@ -48,6 +48,8 @@ SEARCH = Level(8, 1e-9)
 FINEST = Level(8, 1e-14)
 OTHERS = (Level(8, 1e-13), Level(5, 1e-13))
 """Another tolerance, and another order of the method: how far they come out from the finest is the error."""
+SPARE = Level(8, 1e-12)
+"""Stands in where the other order does not get there."""
 
 
 @dataclass(frozen=True)
@@ -74,6 +76,15 @@ class FlowAlong:
             (state.range[0].fraction, state.range[1].fraction) if state.range else None
             for state in self.system.states
         )
+
+
+def cycle_map_of(system: System, parameter: str) -> CycleMap:
+    """What cycles of a system of any kind are searched with, its own formulas or its equations'."""
+    if not system.is_map:
+        return FlowMap(system, parameter)
+    from tinemark.onsets.many_map import float_many_map, many_map
+
+    return float_many_map(many_map(system, parameter))
 
 
 class FlowMap:

@@ -66,8 +66,8 @@ class Solution:
     matrix
         Jacobian of the defining equations f^p(x) - x = 0 and g = 0 in (first point, parameter[, angle]);
         None where branches cross.
-    border
-        What g is defined by; None where branches cross.
+    border, rows
+        What g is defined by, and its derivative in each point, (p, n); None where branches cross.
     """
 
     cycle: Cycle
@@ -79,6 +79,7 @@ class Solution:
     last_step: float
     matrix: Floats | None
     border: Border | None
+    rows: Values | None = None
 
 
 @dataclass(frozen=True)
@@ -173,6 +174,7 @@ class _Equations:
     """g, its derivatives in the first point, the parameter and mu, and what closing the gaps adds to it."""
 
     vectors: Values
+    rows: Values
     g: complex
     g_x: Values
     g_r: complex
@@ -218,7 +220,13 @@ def _equations(
     n = len(border.scales)
     g_r = total[n] - np.sum(left * turns_r)
     return _Equations(
-        vectors, solved.g, total[:n], complex(g_r), complex(total[n + 1]), complex(solved.left @ solved.right)
+        vectors,
+        rows,
+        solved.g,
+        total[:n],
+        complex(g_r),
+        complex(total[n + 1]),
+        complex(solved.left @ solved.right),
     )
 
 
@@ -258,7 +266,9 @@ def _solution(
     if np.iscomplexobj(eq.vectors):
         # Of a pair: how fast its modulus changes.
         speed = float(np.real(change * cmath.exp(-1j * angle)))
-    return Solution(cycle, eq.vectors, angle, parts.monodromy, slope, speed, last_step, system, border)
+    return Solution(
+        cycle, eq.vectors, angle, parts.monodromy, slope, speed, last_step, system, border, eq.rows
+    )
 
 
 def solve_again(flow: FlowMap, kind: Kind, found: Solution, reach: float) -> Generator[Step, None, Solution]:

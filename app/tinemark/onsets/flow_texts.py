@@ -9,27 +9,25 @@ import numpy as np
 
 from tinemark.onsets.cycle_map import Floats
 from tinemark.onsets.decimals import decimal_places, enclosure_texts, fixed_text, leading_power, rounded
-from tinemark.onsets.flow_map import FINEST, OTHERS, FlowMap
+from tinemark.onsets.flow_map import FINEST, FlowMap, Level
 from tinemark.onsets.flow_polish import Solution
 from tinemark.onsets.flow_symmetry import symmetries, symmetry_words
 from tinemark.onsets.many_normal_form import Findings
 from tinemark.onsets.results import Criticality, Kind, Onset, Status
 
-HOW_ESTIMATED = (
-    "the equations are integrated in double precision, and the error of the value is told by how far other "
-    "step sizes and another method come out"
-)
+HOW_ESTIMATED = "integrated in double precision, and the error told by other step sizes and another method"
 REAL = 1e-9
 
 
 @dataclass(frozen=True)
 class Judged:
-    """The value with its error and that of the cycle's first point, at 95 % coverage."""
+    """The value and the cycle's first point, their errors at 95 % coverage, and the levels that told them."""
 
     value: float
     half: float
     point: Floats
     point_half: Floats
+    levels: tuple[Level, ...]
 
 
 def periods(kind: Kind, period: int) -> tuple[int, int]:
@@ -111,7 +109,7 @@ def _evidence(
             word = seen.criticality.value
             text = f"coefficient {seen.coefficient:.4g} in scaled states"
             lines.append(("normal form", f"{text}: {word}" if word else text))
-    levels = "; ".join(level.words for level in (FINEST, *OTHERS))
+    levels = "; ".join(level.words for level in (FINEST, *judged.levels))
     lines.append(("error estimate", f"{judged.half:.1e}, from the values of {levels}, all points unknown"))
     return tuple(lines)
 

@@ -12,6 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from tinemark.onsets.cycle_map import CycleMap, Floats
 from tinemark.onsets.many_branch import (
     Crossing,
     Event,
@@ -30,9 +31,10 @@ from tinemark.onsets.many_cycles import (
     orbit_ends,
     returns,
 )
-from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
+from tinemark.onsets.many_map import float_many_map, many_map
 from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.many_search import TOLERANCES, parents, scattered_cycles
 from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Step
 from tinemark.systems.errors import NoOnsetFound, SwitchingTouched
@@ -82,18 +84,18 @@ def ladder_many(request: LadderRequest) -> Generator[Step | LadderLevel, None, L
     """
     yield Step("reading the map")
     many = many_map(request.system, request.parameter)
+    yield from worked_out(many, 1)
     float_map = float_many_map(many)
-    start, stop = float(request.start), float(request.stop)
-    base = request.base_period
-    if start == stop:
-        raise NoOnsetFound("the ladder starts and stops at the same value", what_to_do="give two values")
-    scales = float_map.scales(start)
-    cycle = yield from _base_cycle(float_map, start, base, scales)
-    if cycle is None:
-        raise NoOnsetFound(
-            f"no cycle of period {base} was found at {many.parameter} = {start:.12g}",
-            what_to_do="start where the system settles on it",
-        )
+    cycle = yield from base_cycle(float_map, request)
+    return (yield from ladder_cycles(float_map, request, cycle))
+
+
+def ladder_cycles(
+    float_map: CycleMap, request: LadderRequest, cycle: Cycle
+) -> Generator[Step | LadderLevel, None, LadderResult]:
+    """Follow a cascade of flips from a cycle of the base period; see `ladder_many`."""
+    stop, base = float(request.stop), request.base_period
+    scales = float_map.scales(float(request.start))
     settled = yield from _first_flip(float_map, cycle, stop, scales, request.digits)
     before: Settled | None = None
     levels: list[LadderLevel] = []
@@ -108,8 +110,29 @@ def ladder_many(request: LadderRequest) -> Generator[Step | LadderLevel, None, L
         before, settled = settled, following
 
 
+def base_cycle(float_map: CycleMap, request: LadderRequest) -> Generator[Step, None, Cycle]:
+    """The cycle of the base period that a ladder starts with.
+
+    Raises
+    ------
+    NoOnsetFound
+        The ladder has no extent, or there is no such cycle.
+    """
+    start, stop = float(request.start), float(request.stop)
+    if start == stop:
+        raise NoOnsetFound("the ladder starts and stops at the same value", what_to_do="give two values")
+    base = request.base_period
+    cycle = yield from _base_cycle(float_map, start, base, float_map.scales(start))
+    if cycle is None:
+        raise NoOnsetFound(
+            f"no cycle of period {base} was found at {float_map.many.parameter} = {start:.12g}",
+            what_to_do="start where the system settles on it",
+        )
+    return cycle
+
+
 def _base_cycle(
-    float_map: FloatManyMap, start: float, base: int, scales: Floats
+    float_map: CycleMap, start: float, base: int, scales: Floats
 ) -> Generator[Step, None, Cycle | None]:
     """A cycle of the base period at the start; settled ones first, then any, stable ones first."""
     text = f"looking for a cycle of period {base}"
@@ -142,7 +165,7 @@ def _base_cycle(
 
 
 def _first_flip(
-    float_map: FloatManyMap, cycle: Cycle, stop: float, scales: Floats, digits: int
+    float_map: CycleMap, cycle: Cycle, stop: float, scales: Floats, digits: int
 ) -> Generator[Step, None, Settled]:
     """The first flip of the base cycle on the way to the stop."""
     start = cycle.r
@@ -180,7 +203,7 @@ def _first_flip(
 
 
 def _flip_of(
-    float_map: FloatManyMap, event: Event, window: Window, digits: int
+    float_map: CycleMap, event: Event, window: Window, digits: int
 ) -> Generator[Step, None, Settled | None]:
     """The flip that a branch's crossing stands for, or None where it cannot be polished."""
     close = narrowed(float_map, event, window, NARROW * window.width)
@@ -197,7 +220,7 @@ def _turns(events: list[Event]) -> bool:
 
 
 def _next_flip(
-    float_map: FloatManyMap,
+    float_map: CycleMap,
     settled: Settled,
     before: Settled | None,
     stop: float,
@@ -231,7 +254,7 @@ def _next_flip(
 
 
 def _take_up(
-    float_map: FloatManyMap, settled: Settled, gap: float, scales: Floats
+    float_map: CycleMap, settled: Settled, gap: float, scales: Floats
 ) -> Generator[Step, None, _Doubled | None]:
     """A doubled cycle soon after its flip, with positive flip test."""
     origin = settled.cycle
@@ -264,13 +287,13 @@ def _take_up(
     return best
 
 
-def _doubled(float_map: FloatManyMap, cycle: Cycle) -> _Doubled | None:
+def _doubled(float_map: CycleMap, cycle: Cycle) -> _Doubled | None:
     values = multipliers(float_map, cycle)
     return _Doubled(cycle, tuple(values)) if values else None
 
 
 def _follow_doubled(
-    float_map: FloatManyMap, origin: Cycle, here: _Doubled, stop: float, scales: Floats
+    float_map: CycleMap, origin: Cycle, here: _Doubled, stop: float, scales: Floats
 ) -> Generator[Step, None, tuple[_Doubled, _Doubled] | str]:
     """Two doubled cycles between which the multiplier passes -1, or why there are none."""
     name = float_map.many.parameter
@@ -302,7 +325,7 @@ def _follow_doubled(
 
 
 def _doubled_at(
-    float_map: FloatManyMap,
+    float_map: CycleMap,
     origin: Cycle,
     previous: _Doubled | None,
     here: _Doubled,
@@ -332,7 +355,7 @@ def _doubled_at(
     return _doubled(float_map, cycle)
 
 
-def _closed_in(float_map: FloatManyMap, low: _Doubled, high: _Doubled, scales: Floats) -> Cycle:
+def _closed_in(float_map: CycleMap, low: _Doubled, high: _Doubled, scales: Floats) -> Cycle:
     """A cycle near the flip between two, by the secant of the flip test kept inside the bracket."""
     for _ in range(8):
         share = low.flip_test / (low.flip_test - high.flip_test)

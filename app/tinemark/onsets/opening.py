@@ -35,7 +35,7 @@ def opening_of(
     width = abs(float(request.stop - request.start))
     screen = Screen(r - width, 2 * width, 0.0, 1.0, margin=0.0)
     states = np.array([float(Fraction(text)) for _, text in first.states])
-    if len(request.system.states) == 1:
+    if request.system.is_map and len(request.system.states) == 1:
         return (yield from _opening_one(request, first, kinds, screen, float(states[0]), r))
     return (yield from _opening_many(request, first, kinds, screen, states, r))
 
@@ -72,13 +72,13 @@ def _opening_many(
     request: LadderRequest, first: Onset, kinds: frozenset[Kind], screen: Screen, x: Floats, r: float
 ) -> Generator[Step, None, Onset | None]:
     from tinemark.onsets.cycle_families import ManyFamily
+    from tinemark.onsets.flow_map import cycle_map_of
     from tinemark.onsets.many_cycles import Cycle
-    from tinemark.onsets.many_map import float_many_map, many_map
     from tinemark.onsets.many_onset import settle_onset
     from tinemark.onsets.many_polish import NotFound
     from tinemark.systems.errors import SwitchingTouched
 
-    float_map = float_many_map(many_map(request.system, request.parameter))
+    float_map = cycle_map_of(request.system, request.parameter)
     scales = float_map.scales(r)
     family = ManyFamily(float_map, scales, screen.width)
     points = [x[:, None]]

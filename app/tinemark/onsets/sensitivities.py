@@ -100,6 +100,10 @@ def with_sensitivities(
     longest
         Longest period for which they are made; None for any.
     """
+    if not system.is_map:
+        from tinemark.onsets.flow_sensitivities import with_flow_sensitivities
+
+        return (yield from with_flow_sensitivities(system, onset, longest=longest))
     if onset.sensitivities or (longest is not None and _period(onset) > longest):
         return onset
     moves = yield from sensitivities(system, onset)

@@ -37,7 +37,7 @@ def survey_of(request: SurveyRequest) -> Generator[Step | SurveyFind, None, Surv
             f"the range is too narrow to be surveyed ({fraction_text(high - low, 3)})",
             what_to_do="widen it; single onsets in so narrow a view are found by a click",
         )
-    if len(request.system.states) == 1:
+    if request.system.is_map and len(request.system.states) == 1:
         from tinemark.onsets.survey_one import survey_one
 
         return (yield from survey_one(request, low, high))

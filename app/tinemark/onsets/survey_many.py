@@ -16,11 +16,15 @@ from tinemark.onsets.branch_seeds import settled_many, short_many
 from tinemark.onsets.branch_survey import Branch, Survey, follow_all, kind_of
 from tinemark.onsets.continuation import Pace
 from tinemark.onsets.cycle_families import ManyFamily
+from tinemark.onsets.cycle_map import CycleMap, Floats
+from tinemark.onsets.flow_crossing import leaps
+from tinemark.onsets.flow_map import cycle_map_of
 from tinemark.onsets.many_border_search import borders_along
 from tinemark.onsets.many_cycles import Cycle
-from tinemark.onsets.many_map import FloatManyMap, Floats, float_many_map, many_map
+from tinemark.onsets.many_map import FloatManyMap, many_map
 from tinemark.onsets.many_onset import Settled, settle_onset
 from tinemark.onsets.many_polish import NotFound
+from tinemark.onsets.many_preparation import worked_out
 from tinemark.onsets.results import Kind, Onset, Step, SurveyFind, SurveyRequest, SurveyResult
 from tinemark.onsets.survey import check_kinds, counted, left_out, same, wanted
 from tinemark.systems.errors import SwitchingTouched
@@ -52,9 +56,13 @@ def survey_many(
     request: SurveyRequest, low: Fraction, high: Fraction
 ) -> Generator[Step | SurveyFind, None, SurveyResult]:
     """Find onsets of a map of several states between two parameter values; see `engine.survey`."""
-    check_kinds(request, KINDS, "maps of several states")
-    yield Step("reading the map", 0.0)
-    float_map = float_many_map(many_map(request.system, request.parameter))
+    is_map = request.system.is_map
+    check_kinds(request, KINDS if is_map else SMOOTH, "maps of several states" if is_map else "equations")
+    yield Step("reading the system", 0.0)
+    if is_map:
+        for step in worked_out(many_map(request.system, request.parameter), 1):
+            yield Step(step.text, 0.0)
+    float_map = cycle_map_of(request.system, request.parameter)
     scales = float_map.scales(float(low + high) / 2)
     family = ManyFamily(float_map, scales, float(high - low))
     screen = Screen(float(low), float(high - low), 0.0, 1.0, margin=1e-3)
@@ -74,7 +82,8 @@ def survey_many(
     lost: list[str] = []
     candidates = [c for c in _candidates(survey) if wanted(request, c.kind)]
     for number, candidate in enumerate(candidates):
-        text = f"proving the {candidate.kind.value} of period {candidate.place.period}"
+        doing = "proving" if is_map else "solving for"
+        text = f"{doing} the {candidate.kind.value} of period {candidate.place.period}"
         share = FOLLOWED_SHARE + (1 - FOLLOWED_SHARE) * number / len(candidates)
         yield Step(f"{text} ({number + 1} of {len(candidates)})", share)
         rough = Cycle(candidate.place.points, candidate.place.r)
@@ -93,7 +102,7 @@ def survey_many(
 
 
 def _settled(
-    float_map: FloatManyMap, candidate: _Candidate, rough: Cycle, digits: int, scales: Floats
+    float_map: CycleMap, candidate: _Candidate, rough: Cycle, digits: int, scales: Floats
 ) -> Generator[Step, None, Settled]:
     try:
         return (yield from settle_onset(float_map, candidate.kind, rough, digits, scales, candidate.reach))
@@ -117,6 +126,8 @@ def _candidates(survey: Survey) -> list[_Candidate]:
                 found.append(_Candidate(kind, place, reach))
         found += [_Candidate(Kind.FLIP, parent, reach) for parent in branch.parents]
         found += _borders(survey, branch)
+        if isinstance(survey.family, ManyFamily) and not survey.family.float_map.many.system.is_map:
+            found += [_Candidate(Kind.PITCHFORK, place, reach) for _, place in leaps(branch.places)]
     found.sort(key=lambda candidate: candidate.place.r)
     kept: list[_Candidate] = []
     for candidate in found:
@@ -155,9 +166,9 @@ def _message(request: SurveyRequest, survey: Survey, onsets: tuple[Onset, ...], 
         f"{counted(onsets)} of periods up to {request.max_period} between {request.parameter} = "
         f"{fraction_text(low, 10)} and {fraction_text(high, 10)}; orbits were settled at {COLUMNS} places "
         f"and {len(survey.branches)} branches of their cycles followed: others may be missing, since nothing "
-        "bounds the cycles of a map of several states"
+        f"bounds the cycles of {'a map of several states' if request.system.is_map else 'equations'}"
     )
-    text += left_out(request, KINDS)
+    text += left_out(request, KINDS if request.system.is_map else SMOOTH)
     if survey.cut:
         text += "; there are more branches than were followed: narrow the range, or lower the longest period"
     if lost:
