@@ -16,10 +16,10 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cache, lru_cache
 from pathlib import Path
+from types import ModuleType
 from typing import Any
 
-from tinemark.density import lane_block
-from tinemark.density.lane_block import BUFFER, GROUP, LANES, TILE
+from tinemark.density.lane_block import BUFFER, GROUP, LANES
 from tinemark.density.tangent import tangent
 from tinemark.systems.emit import emit
 from tinemark.systems.expression import ARITIES, ONE, Expr, Name
@@ -33,6 +33,8 @@ __all__ = ["BUFFER", "LANES", "MAX_ROWS", "Kernels", "kernels_for"]
 
 MAX_ROWS = 65533
 """Bins are noted in 16 bits; two of them lie outside the view."""
+
+_BLOCK, _PASSES = (Path(__file__).with_name(name) for name in ("lane_block.py", "lane_passes.py"))
 
 _LOG_EVERY = 16
 """Factors multiplied before a logarithm is taken: the product of so many stays inside a double."""
@@ -91,7 +93,7 @@ def _kernels(
     wide = wide_registers()
     _interleave_lanes()
     template = (_WideTemplate if wide else _Template)(states, expressions, swept, fixed, observed)
-    module: Any = native_module(template.source(), "density", [Path(lane_block.__file__)] if wide else [])
+    module: Any = native_module(template.source(), "density", [_BLOCK] if wide else [])
     return Kernels(module.advance, module.advance_counting, module.trace, module.carry, fixed)
 
 
@@ -107,8 +109,18 @@ def _interleave_lanes() -> None:
     llvmlite.binding.set_option("tinemark", "-force-vector-interleave=8")
 
 
+def _shared_passes() -> ModuleType:
+    """`lane_passes` as a module of the cache folder, where no change of what it calls meets old code."""
+    return native_module(_PASSES.read_text(encoding="utf-8"), "passes", [_BLOCK])
+
+
 class _Template:
     """Prints the module of one system. Names: x state, y next state, v tangent, w next tangent, c fixed."""
+
+    ARGUMENTS = (
+        "states, tangents, growth, swept, fixed, counts, "
+        "first, columns, steps, counted, measured, scale, offset, stop"
+    )
 
     def __init__(
         self,
@@ -194,11 +206,7 @@ class _Template:
         if growth and many:
             lines += self.indented(1, self.each("tangents[#, first + l] = V#[l]"))
         lines.append("return done")
-        arguments = (
-            "states, tangents, growth, swept, fixed, counts, "
-            "first, columns, steps, counted, measured, scale, offset, stop"
-        )
-        return self.function(name, arguments, lines)
+        return self.function(name, self.ARGUMENTS, lines)
 
     def passes(self, growth: bool) -> list[str]:
         """The loop over buffers: steps are noted, then counted."""
@@ -224,7 +232,7 @@ class _Template:
         lines += self.indented(4, [*loads, *step, *stores, *self.seen(), *note])
         if growth:
             lines += self.indented(2, self.renormalised())
-        lines += self.indented(1, ["if counted:", *self.indented(1, self.counting("m", "K[s, {}]"))])
+        lines += self.indented(1, ["if counted:", *self.indented(1, self.counting())])
         return [*lines, "    done += m"]
 
     def hoisted(self) -> list[str]:
@@ -262,15 +270,14 @@ class _Template:
         return [*lines, "    G[l] += lane_log(length) if measured else 0.0"]
 
     @staticmethod
-    def counting(steps: str, noted: str) -> list[str]:
-        """Count the first of the noted steps; `noted` is where the cell of step s and a column stands."""
-        one = f"counts[first + {{0}}, np.uint32({noted.format('{0}')})] += np.uint32(1)"
+    def counting() -> list[str]:
+        one = "counts[first + {0}, np.uint32(K[s, {0}])] += np.uint32(1)"
         return [
             f"for l in range(0, grouped, {GROUP}):",
-            f"    for s in range({steps}):",
+            "    for s in range(m):",
             *(f"        {one.format(f'(l + {j})')}" for j in range(GROUP)),
             "for l in range(grouped, columns):",
-            f"    for s in range({steps}):",
+            "    for s in range(m):",
             f"        {one.format('l')}",
         ]
 
@@ -316,61 +323,69 @@ class _Template:
 
 
 class _WideTemplate(_Template):
-    """The same module with the inner loop written by `lane_block`; lane arrays are rows of one array."""
+    """The same module with the inner loop written by `lane_block`, and the rest shared by all systems."""
 
     def blocks(self) -> list[str]:
         kind = "factor" if self.n == 1 else "tangent"
         plain, growing = [*self.step(), *self.seen()], [*self.step_and_tangent(), *self.seen()]
-        lines = ["from tinemark.density.lane_block import lane_block", ""]
-        for stem, statements, growth in (("move", plain, ""), ("grow", growing, kind)):
-            listed = ",\n    ".join(repr(statement) for statement in statements)
-            lines.append(f"{stem}_code = [\n    {listed},\n]")
-            for suffix, counting in (("", False), ("_and_count", True)):
-                settings = f"{self.n}, {self.fixed}, {growth!r}, {counting}"
-                lines.append(f"{stem}{suffix} = lane_block({stem}_code, {settings})")
+        shared = "buffers, closed, factors_taken, opened, sums_closed, sums_opened, tally"
+        shared += ", tangents_closed, tangents_opened, tangents_taken" if self.n > 1 else ""
+        lines = [
+            "from tinemark.density.lane_block import lane_block",
+            f"from {_shared_passes().__name__} import {shared}\n",
+        ]
+        for name, statements, growth, counting in (
+            ("move", plain, "", False),
+            ("move_and_count", plain, "", True),
+            ("grow", growing, kind, False),
+        ):
+            settings = f"{self.n}, {self.fixed}, {growth!r}, {counting}"
+            lines.append(f"{name} = lane_block({statements!r}, {settings})")
         return ["\n".join(lines)]
 
-    def lane_arrays(self, growth: bool) -> list[str]:
-        rows = [*self.each("X#"), "P"]
+    def advance(self, name: str, growth: bool) -> str:
+        many = self.n > 1
+        lines = ["lanes = opened(states, swept, first, columns)"]
+        if growth and many:
+            lines.append("tangents_opened(lanes, tangents, first, columns)")
         if growth:
-            rows += self.each("V#") if self.n > 1 else ["D"]
-        # A vector that crosses a line of the cache costs two accesses; lines are 64 bytes.
-        lines = [
-            f"room = np.empty({len(rows)} * LANES + 8)",
-            "skipped = (64 - np.int64(room.ctypes.data) % 64) % 64 // 8",
-            f"lanes = room[skipped : skipped + {len(rows)} * LANES].reshape(({len(rows)}, LANES))",
-            *(f"{row} = lanes[{place}]" for place, row in enumerate(rows)),
-            f"space = np.empty(2 * {BUFFER} * LANES + 32, np.uint16)",
-            "skipped = (64 - np.int64(space.ctypes.data) % 64) % 64 // 2",
-            f"K = space[skipped : skipped + 2 * {BUFFER} * LANES]",
-            f"K = K.reshape((2, LANES // {TILE}, {BUFFER}, {TILE}))",
-            f"grouped = columns - columns % {GROUP}",
-        ]
+            lines.append("sums = sums_opened(growth, first, columns)")
+        lines += self.passes(growth)
+        lines.append("closed(states, lanes, first, columns)")
         if growth:
-            lines.append("G = np.empty(LANES)")
-            lines += ["D[:] = 1.0"] if self.n == 1 else []
-        return lines
+            lines.append("sums_closed(growth, sums, first, columns)")
+        if growth and many:
+            lines.append("tangents_closed(tangents, lanes, first, columns)")
+        return self.function(name, self.ARGUMENTS, [*lines, "return done"])
 
     def passes(self, growth: bool) -> list[str]:
-        stem = "grow" if growth else "move"
-        arguments = "(lanes, fixed, K, which, counts, first, {}, {}, scale, offset)"
-        part = arguments.format("h", f"min(h + {_LOG_EVERY}, m)") if growth else arguments.format("0", "m")
-        tally = self.counting("waiting", f"K[1 - which, {{0}} // {TILE}, s, {{0}} % {TILE}]")
-        lines = ["done = 0", "which = 0", "waiting = 0", "while done < steps and stop[0] == 0:"]
-        lines += [
-            f"    m = min({BUFFER}, steps - done)",
-            f"    meanwhile = m == {BUFFER} and waiting == {BUFFER} and columns == LANES",
-            "    if not meanwhile:",
-            *self.indented(2, tally),
-        ]
-        moves = ["if meanwhile:", f"    {stem}_and_count{part}", "else:", f"    {stem}{part}"]
+        call = "{}(lanes, fixed, noted, which, counts, first, {}, {}, scale, offset)"
+        taken = "factors_taken(lanes, " if self.n == 1 else "tangents_taken(lanes, "
+        tally = "tally(counts, first, columns, noted, {}, {})"
+        # Typed zeros: a literal one would have what takes it compiled a second time.
+        lines = ["noted = buffers()", "done = which = waiting = np.int64(0)"]
+        lines += ["while done < steps and stop[0] == 0:", f"    m = min({BUFFER}, steps - done)"]
         if growth:
-            lines.append(f"    for h in range(0, m, {_LOG_EVERY}):")
-            lines += self.indented(2, [*moves, *self.renormalised()])
-        else:
-            lines += self.indented(1, moves)
-        lines += ["    waiting = m if counted else 0", "    which = 1 - which", "    done += m"]
-        return [*lines, *tally]
-
-    def renormalised(self) -> list[str]:
-        return [line.replace("range(lanes)", "range(LANES)") for line in super().renormalised()]
+            # Steps with a tangent are few; a second form of them would only take longer to compile.
+            return [
+                *lines,
+                f"    for h in range(0, m, {_LOG_EVERY}):",
+                "        " + call.format("grow", "h", f"min(h + {_LOG_EVERY}, m)"),
+                f"        {taken}sums, measured)",
+                "    waiting = m if counted else 0",
+                f"    {tally.format('which', 'waiting')}",
+                "    which = 1 - which",
+                "    done += m",
+            ]
+        return [
+            *lines,
+            f"    if m == {BUFFER} and waiting == {BUFFER} and columns == LANES:",
+            "        " + call.format("move_and_count", "0", "m"),
+            "    else:",
+            f"        {tally.format('1 - which', 'waiting')}",
+            "        " + call.format("move", "0", "m"),
+            "    waiting = m if counted else 0",
+            "    which = 1 - which",
+            "    done += m",
+            tally.format("1 - which", "waiting"),
+        ]
