@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import random
 from collections.abc import Sequence
 from fractions import Fraction
@@ -251,3 +252,65 @@ def test_made_up_cascades_are_told_apart(cascades: list[tuple[str, ...]], shuffl
     onsets = [onset for values in cascades for onset in known.flips(values, width="1e-25")]
     shuffler.shuffle(onsets)
     assert ladders(onsets) == {ladder(1, values) for values in cascades}
+
+
+def with_speed(onset: Onset, speed: str) -> Onset:
+    """The onset with what its proof says of how fast the multiplier passes -1."""
+    return dataclasses.replace(onset, evidence=(("crosses -1 with speed", speed),))
+
+
+# Speeds of the logistic map's flips as its proofs print them: at 3 the multiplier is 2 - r, at 1 + sqrt(6)
+# it is 4 + 2 r - r^2; in windows -2 over the stretch's extent.
+LOGISTIC_TWO = (
+    with_speed(known.flip("3", 1), "-1.00000"),
+    with_speed(known.flip("3.449489742783", 2), "-4.89898"),
+)
+WINDOW_OF_FIVE = (
+    with_speed(known.flip("3.741120756632", 5), "-342.8"),
+    with_speed(known.flip("3.742569902", 10), "-1600"),
+)
+OTHER_WINDOW_OF_FIVE = (
+    with_speed(known.flip("3.906107428138", 5), "-1878"),
+    with_speed(known.flip("3.906373363224", 10), "-8100"),
+)
+
+
+def test_two_lone_flips_join_where_the_first_foretells_the_second() -> None:
+    for pair in (LOGISTIC_TWO, WINDOW_OF_FIVE, OTHER_WINDOW_OF_FIVE):
+        for onsets in (pair, pair[::-1]):
+            assert ladders(onsets) == {ladder(pair[0].period_before, [onset.value for onset in pair])}
+    # In many states the speed comes with its unit; a level between may be missing.
+    henon = with_speed(known.flip("0.3675", 1), "-1.09890 per unit of a")
+    assert ladders([henon, known.flip("0.9125", 2)]) == {ladder(1, ["0.3675", "0.9125"])}
+    assert ladders([henon, known.flip("1.02585540507", 4)]) == {(1, ((1, "0.3675"), (3, "1.02585540507")))}
+
+
+def test_two_lone_flips_of_different_windows_make_two_ladders() -> None:
+    """The first flip of one window of period 5 and the second of another: too far for the first's speed."""
+    stray = [WINDOW_OF_FIVE[0], OTHER_WINDOW_OF_FIVE[1]]
+    assert len(ladders(stray)) == 2
+    assert len(ladders(stray[::-1])) == 2
+    # The rows that belong to them bring all together rightly.
+    whole = [*stray, WINDOW_OF_FIVE[1], OTHER_WINDOW_OF_FIVE[0]]
+    assert ladders(whole) == {
+        ladder(5, [onset.value for onset in pair]) for pair in (WINDOW_OF_FIVE, OTHER_WINDOW_OF_FIVE)
+    }
+
+
+def test_two_lone_flips_on_the_wrong_side_make_two_ladders() -> None:
+    """Both ends of a bubble: a cascade that rises and one that falls do not go on in each other."""
+    rising, falling = with_speed(known.flip("3", 1), "-1.0"), with_speed(known.flip("3.4", 2), "4.9")
+    assert len(ladders([rising, falling])) == 2
+    assert len(ladders([with_speed(known.flip("3.5", 1), "-1.0"), known.flip("3.2", 2)])) == 2
+    assert len(ladders([known.flip("3.5", 1), with_speed(known.flip("3.2", 2), "-4.9")])) == 2
+    # Nothing is known of the speed of what was read by eye: order and place alone decide, as before.
+    eye = [known.flip("3", 1, width="0.01"), known.flip("3.45", 2, width="0.01")]
+    assert len(ladders(eye)) == 1
+
+
+def test_levels_that_were_followed_stay_one_ladder_whatever_the_speeds_say() -> None:
+    """A first gap may be out of all proportion, where the parameter enters the formula unevenly."""
+    onsets = (with_speed(known.flip("3", 1), "-100"), with_speed(known.flip("3.449489742783", 2), "-4.89898"))
+    assert len(ladders(onsets)) == 2
+    followed = [dataclasses.replace(row, stated_base=1) for row in rows_of(onsets)]
+    assert {row.ladder for row in grouped(followed)} == {"L1"}

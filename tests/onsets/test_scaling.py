@@ -103,7 +103,7 @@ def test_twelve_levels_give_ten_digits_of_delta_and_a_tight_limit() -> None:
     ids=lambda ladder: ladder.name,
 )
 def test_twelve_levels_of_every_quadratic_ladder_give_ten_digits_of_delta(ladder: LongLadder) -> None:
-    """The flatter Gaussian begins among bubbles and comes a little short; a quartic maximum settles slower."""
+    """The flatter Gaussian begins among bubbles and comes a little short; a quartic maximum is slower."""
     found = scaling(points(ladder.onsets[:12])).delta
     assert found is not None
     power = {"gaussian 4.9": 19, "quartic": 17}.get(ladder.name, 20)

@@ -18,13 +18,21 @@ from fractions import Fraction
 from itertools import pairwise
 
 from tinemark.document.row import Place, Row
-from tinemark.onsets.results import Kind, Status
+from tinemark.onsets.results import Criticality, Kind, Onset, Status
 
 STEEPEST = 40
 """Largest ratio of successive gaps taken for a cascade: the ratios of an order-12 maximum tend to
 13.5, those of conservative maps to 8.7, and first ratios stay near them."""
 
 QUADRATIC_RATE = 4.669  # what ratios of nearly every cascade tend to, to break ties between rows
+
+SPEED_WORDS = "crosses -1 with speed"
+"""Name of the evidence that tells how fast a flip's multiplier passes -1."""
+
+NEAREST, FARTHEST = Fraction(1, 12), Fraction(8)
+"""Between what the way to a later flip lies, times the speed with which the multiplier passes -1. The doubled
+cycle's multiplier leaves +1 four times as fast, so the next flip is about half the inverse of the speed away:
+the product is 0.46 for a quadratic maximum, 1.2 for order 8, and up to 2.5 for first gaps."""
 
 _LEAST_FOLD_SHARE = 4
 """A fold may stand closer to the first flip than that to the second, but not this many times."""
@@ -62,12 +70,15 @@ class _Link:
         2*log2(period / odd part), one less for a fold, which comes before the flip of its cycle.
     value, spread
         The onset and its half-width, as whole numbers of one common unit: whole numbers compare fast.
+    speed
+        How fast the multiplier passes -1 at a flip, per that unit; None where it is not known.
     """
 
     row: Row
     order: int
     value: int
     spread: int
+    speed: Fraction | None = None
 
     @property
     def is_fold(self) -> bool:
@@ -97,12 +108,32 @@ def _chains(rows: Sequence[Row]) -> list[_Chain]:
         for row in family:
             odd, power = _odd_part(row)
             value, spread = (int(number * unit) for number in _numbers(row))
-            by_odd[odd].append(_Link(row, 2 * power - (row.onset.kind is Kind.FOLD), value, spread))
+            speed = _speed(row.onset)
+            by_odd[odd].append(
+                _Link(
+                    row,
+                    2 * power - (row.onset.kind is Kind.FOLD),
+                    value,
+                    spread,
+                    None if speed is None else speed / unit,
+                )
+            )
         for odd, links in by_odd.items():
             foreign = sorted(link.value for other in by_odd if other != odd for link in by_odd[other])
             chains += _join(links, foreign)
     # A fold alone opens no ladder yet.
     return [chain for chain in chains if not all(link.is_fold for link in chain)]
+
+
+def _speed(onset: Onset) -> Fraction | None:
+    """How fast the multiplier passes -1 at a soft flip, as its evidence says."""
+    if onset.kind is not Kind.FLIP or onset.criticality is Criticality.SUBCRITICAL:
+        return None
+    words = dict(onset.evidence).get(SPEED_WORDS, "").split()
+    try:
+        return Fraction(words[0]) if words else None
+    except (ValueError, ZeroDivisionError):
+        return None
 
 
 def _numbers(row: Row) -> tuple[Fraction, Fraction]:
@@ -244,6 +275,8 @@ def _is_cascade(chain: _Chain, foreign: Sequence[int]) -> bool:
         return False
     if any(not link.is_fold and link.row.onset.period_before % base for link in chain):
         return False
+    if not all(_speeds_fit(a, b) for a, b in pairwise(chain)):
+        return False
     if len(chain) == 2:
         # With no second gap to compare, an onset of another family in between tells against it:
         # between two flips of a cascade the cycle of that very cascade is what is stable.
@@ -251,6 +284,26 @@ def _is_cascade(chain: _Chain, foreign: Sequence[int]) -> bool:
         between = bisect_right(foreign, low)
         return between == len(foreign) or foreign[between] >= high
     return all(_gaps_fit(*chain[i : i + 3]) for i in range(len(chain) - 2))
+
+
+def _speeds_fit(a: _Link, b: _Link) -> bool:
+    """Whether a later flip lies on the side, and about as far away, as the speed at the earlier one foretells.
+
+    A multiplier that falls through -1 as the parameter rises leads to a cascade that rises, and all its
+    multipliers fall.
+    """
+    if a.row.stated_base and a.row.stated_base == b.row.stated_base:
+        return True  # followed or said to be one ladder
+    if a.speed and b.speed and (a.speed > 0) != (b.speed > 0):
+        return False
+    loose = a.spread + b.spread
+    if not a.speed:
+        # The later flip tells the side alone.
+        step = b.value - a.value
+        return not b.speed or abs(step) <= loose or step * b.speed < 0
+    way = -(b.value - a.value) * a.speed
+    room = loose * abs(a.speed)
+    return NEAREST - room <= way <= FARTHEST + room
 
 
 def _gaps_fit(a: _Link, b: _Link, c: _Link) -> bool:
