@@ -86,8 +86,8 @@ def _tree(pid: int) -> list[int]:
 
 
 def run_session() -> tuple[dict[str, float], dict[str, float]]:
-    """Longest pause of each part, and most processor time between two beats, in seconds. Runs in the session's
-    own process.
+    """Longest pause of each part, and most processor time between two beats; in seconds. Runs in the
+    session's own process.
     """
     from PySide6.QtCore import Qt, QTimer
 

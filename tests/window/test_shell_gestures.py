@@ -16,6 +16,7 @@ from tinemark.window.picture_jobs import TOO_DEEP
 from tinemark.window.picture_tones import table
 from tinemark.window.theme import current_theme
 from tinemark.window.view_navigation import place
+from tinemark.work.pictures import COMPILING, PictureWaits
 
 
 @pytest.fixture
@@ -309,6 +310,23 @@ def test_stale_pictures_never_follow_newer_ones(window, desks, qtbot):
     qtbot.waitUntil(lambda: window.bridge._mail is None and not window.bridge._toning)
     QApplication.processEvents()
     assert window.diagram.image_view == newest == window.keeper.session.view
+
+
+def test_what_a_picture_waits_for_is_said_until_its_kernels_have_drawn(window, desks, qtbot):
+    request = desks.pictures.asked[-1]
+    number = len(desks.pictures.asked)
+    window.pictures.hear(PictureWaits(number + 7, request, 0, "Nobody asked"))
+    assert window.diagram.waiting == ""
+    window.pictures.hear(PictureWaits(number, request, 123_456, COMPILING))
+    plain = window.diagram.grab().toImage()
+    # The first look has come too, drawn without the kernels.
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.image is not None)
+    assert window.diagram.waiting == COMPILING
+    window.pictures.hear(PictureWaits(number, request, 123_000, COMPILING))
+    desks.pictures.answer()
+    qtbot.waitUntil(lambda: window.diagram.waiting == "")
+    assert window.diagram.grab().toImage() != plain
 
 
 def test_a_press_outside_the_plot_does_nothing(window, desks):

@@ -11,8 +11,10 @@ import pytest
 
 from tinemark.density import renderer
 from tinemark.density.field import Field
+from tinemark.density.first_look import first_look
 from tinemark.density.request import PictureRequest, View
-from tinemark.work.pictures import PictureDesk, PictureDone, PictureFailed
+from tinemark.density.stopping import StopFlag
+from tinemark.work.pictures import LOADING, PictureDesk, PictureDone, PictureFailed, PictureWaits
 
 PATIENCE = 60
 
@@ -26,13 +28,17 @@ class Heard:
     def __init__(self) -> None:
         self.queue: queue.Queue[tuple[int, object]] = queue.Queue()
         self.threads: set[str] = set()
+        self.waits: list[PictureWaits] = []
 
     def field(self, id_: int, field: Field) -> None:
         self.threads.add(threading.current_thread().name)
         self.queue.put((id_, field))
 
     def event(self, event: object) -> None:
-        self.queue.put((event.id, event))
+        if isinstance(event, PictureWaits):
+            self.waits.append(event)
+        else:
+            self.queue.put((event.id, event))
 
     def picture(self, id_: int) -> tuple[list[Field], object]:
         """Fields and end of one request."""
@@ -94,8 +100,12 @@ def test_the_newest_wins(desk, heard, logistic) -> None:
 def test_cancel_stops_an_endless_picture_and_keeps_what_was_drawn(desk, heard, logistic) -> None:
     asked = request(logistic, columns=256, rows=200)
     first = desk.request(asked, 2_000_000_000)
-    id_, field = heard.queue.get(timeout=PATIENCE)
-    assert id_ == first
+    # The first look is kept by nobody.
+    look = first_look(asked, StopFlag())
+    field = look
+    while field.steps <= look.steps:
+        id_, field = heard.queue.get(timeout=PATIENCE)
+        assert id_ == first
     desk.cancel()
     assert desk.wait_idle(PATIENCE)
     while not heard.queue.empty():
@@ -125,6 +135,20 @@ def test_a_first_look_is_had_at_once_when_the_system_has_been_drawn(desk, heard,
     assert look.shape == (40, 64)
     assert 2 <= (look > 0).sum() / 64 <= 3
     assert desk.glimpse(request(logistic.with_value("r", "2")), "log", colours) is None
+
+
+def test_before_the_compiler_is_loaded_a_first_look_is_handed_out(desk, heard, logistic) -> None:
+    asked = request(logistic)
+    fields, _ = heard.picture(desk.request(asked, 1024))
+    look = first_look(asked, StopFlag())
+    assert np.array_equal(fields[0].counts, look.counts)
+    assert (heard.waits[0].words, heard.waits[0].steps) == (LOADING, look.steps)
+    assert all(field.steps > look.steps for field in fields[1:])
+    waited = len(heard.waits)
+    # From then on the kernels are there.
+    fields, _ = heard.picture(desk.request(request(logistic, "3"), 1024))
+    assert len(heard.waits) == waited
+    assert fields[0].steps % (128 * asked.columns) == 0
 
 
 def test_where_doubles_end_nothing_is_drawn(desk, heard, logistic) -> None:

@@ -131,7 +131,7 @@ class Glimpses:
     def rehearse(self) -> None:
         """Compile what a look needs and measure how long one takes, where that is not known."""
         ends = self._ends
-        if self._pace is not None or ends is None or not _is_compiled(ends.kernels):
+        if self._pace is not None or ends is None or not is_compiled(ends.kernels.advance_counting):
             return
         memory = _Memory.of(ends.request)
         colours = np.zeros(256, np.uint32)
@@ -283,6 +283,6 @@ def _system(request: PictureRequest) -> tuple[object, ...]:
     )
 
 
-def _is_compiled(kernels: Kernels) -> bool:
-    """Whether the kernel that counts has been compiled; it never is where compiling is switched off."""
-    return bool(getattr(kernels.advance_counting, "signatures", ()))
+def is_compiled(kernel: object) -> bool:
+    """Whether a kernel has been compiled or loaded; it never is where compiling is switched off."""
+    return bool(getattr(kernel, "signatures", ()))

@@ -5,10 +5,15 @@ Look-up tables have 256 entries: index 0 is the empty cell, which shows the grou
 
 from __future__ import annotations
 
+import sys
 from functools import cache
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+
+from tinemark.density import tone_plain
+from tinemark.density.tone_plain import EVEN_SIDE, KEY_SHIFT, KEY_ZERO, KEYS, keys
 
 TONES = ("linear", "log", "equalised")
 
@@ -47,11 +52,9 @@ def tone_map(counts: NDArray[np.uint32], mode: str = "log") -> NDArray[np.uint8]
     ValueError
         The mode is not known.
     """
-    # The compiler is loaded with the first picture, not with the window.
-    from tinemark.density.tone_kernels import toned
-
     cells = counts if counts.ndim == 2 else counts.reshape(1, -1)
-    return toned(cells, _indices_by_key(cells, mode)).reshape(counts.shape)
+    indices: NDArray[np.uint8] = _loops().toned(cells, _indices_by_key(cells, mode))
+    return indices.reshape(counts.shape)
 
 
 def coloured(counts: NDArray[np.uint32], mode: str, colours: NDArray[np.uint32]) -> NDArray[np.uint32]:
@@ -66,9 +69,8 @@ def coloured(counts: NDArray[np.uint32], mode: str, colours: NDArray[np.uint32])
     -------
     uint32, shape (rows, columns), in memory order.
     """
-    from tinemark.density.tone_kernels import toned
-
-    return toned(counts, colours[_indices_by_key(counts, mode)])
+    pixels: NDArray[np.uint32] = _loops().toned(counts, colours[_indices_by_key(counts, mode)])
+    return pixels
 
 
 def even(counts: NDArray[np.uint32], steps: float) -> NDArray[np.uint32]:
@@ -83,19 +85,11 @@ def even(counts: NDArray[np.uint32], steps: float) -> NDArray[np.uint32]:
     counts
         uint32, shape (rows, columns), in memory order.
     """
-    from tinemark.density.tone_kernels import evened, shared_out
-
-    if steps >= EVENED_STEPS:
-        return counts
-    shares = shares_of(*counts.shape)
-    shared_out(counts, 0, shares)
-    return evened(counts, shares)
+    return counts if steps >= EVENED_STEPS else _loops().even_counts(counts)
 
 
 def shares_of(lines: int, places: int) -> NDArray[np.uint32]:
     """Memory for the shares of the squares of so many cells."""
-    from tinemark.density.tone_kernels import EVEN_SIDE
-
     return np.zeros((-(-lines // EVEN_SIDE), -(-places // EVEN_SIDE)), np.uint32)
 
 
@@ -128,17 +122,16 @@ def colour_columns(
     else:
         by_key = _indices_by_key(evened(np.ascontiguousarray(counts[:, 1:-1]), shares), mode)
     # Counts are small enough for a table of all of them, which spares a logarithm a cell.
-    upright(counts, shares, colours[by_key[_keys(np.arange(highest + 1, dtype=np.float32))]], pixels)
+    upright(counts, shares, colours[by_key[keys(np.arange(highest + 1, dtype=np.uint32))]], pixels)
 
 
 def _indices_by_key(cells: NDArray[np.uint32], mode: str) -> NDArray[np.uint8]:
     if mode not in TONES:
         raise ValueError(f'there is no tone "{mode}"; known tones: {", ".join(TONES)}')
-    from tinemark.density.tone_kernels import largest, visits_of_keys
-
+    loops = _loops()
     if mode == "log":
-        return _indices_of_log(int(largest(cells)))
-    visits = visits_of_keys(cells, _stride(cells.size))
+        return _indices_of_log(loops.largest(cells))
+    visits = loops.visits_of_keys(cells, _stride(cells.size))
     visits[0] = 0
     below = np.cumsum(visits)
     total = max(int(below[-1]), 1)
@@ -158,18 +151,18 @@ def _indices_of_log(highest: int) -> NDArray[np.uint8]:
 
 def _indices(shares: NDArray[np.float64]) -> NDArray[np.uint8]:
     """Colour indices by key from the shares of the colours that the keys reach; missing keys are not met."""
-    from tinemark.density.tone_kernels import KEYS
-
     table = np.zeros(KEYS, np.uint8)
     table[1 : len(shares)] = 1.0 + np.clip(shares[1:] * 254.0, 0.0, 254.0)
     return table
 
 
-def _keys(counts: NDArray[np.float32]) -> NDArray[np.int64]:
-    """Keys of counts, as the kernels take them."""
-    from tinemark.density.tone_kernels import KEY_SHIFT, KEY_ZERO
+def _loops() -> Any:
+    """The loops over cells: compiled where whoever draws has loaded them, else NumPy's.
 
-    return np.maximum((counts.view(np.uint32) >> KEY_SHIFT).astype(np.int64) - KEY_ZERO, 0)
+    A picture of a system that is not compiled yet must not wait for the compiler because of its colours.
+    """
+    compiled = sys.modules.get("tinemark.density.tone_kernels")
+    return compiled if getattr(compiled, "LOADED", False) else tone_plain
 
 
 def _stride(cells: int) -> int:
@@ -182,10 +175,8 @@ def _stride(cells: int) -> int:
 @cache
 def _values() -> NDArray[np.float64]:
     """Count that each key stands for."""
-    from tinemark.density.tone_kernels import KEY_SHIFT, KEY_ZERO, KEYS
-
-    keys = (np.arange(KEYS, dtype=np.uint32) + np.uint32(KEY_ZERO)) << np.uint32(KEY_SHIFT)
-    values = keys.view(np.float32).astype(np.float64)
+    of_keys = (np.arange(KEYS, dtype=np.uint32) + np.uint32(KEY_ZERO)) << np.uint32(KEY_SHIFT)
+    values = of_keys.view(np.float32).astype(np.float64)
     values[0] = 0.0
     values.setflags(write=False)
     return values

@@ -1,25 +1,22 @@
-"""One-pass loops over the cells for the tones; loaded on first use, since the compiler comes with them."""
+"""One-pass loops over the cells for the tones; loaded by whoever draws: the compiler comes with them."""
 
 from __future__ import annotations
-
-from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tinemark.density.tone_plain import (
+    EVEN_BELOW,
+    EVEN_SCALE,
+    EVEN_SIDE,
+    KEY_SHIFT,
+    KEY_ZERO,
+    KEYS,
+    Entry,
+)
 from tinemark.systems.native import jit
 
-KEY_SHIFT = 15
-KEY_ZERO = (127 << 8) - 1
-KEYS = (32 << 8) + 2
-"""A count's key is its logarithm in steps of 1/256 octave, the leading bits of its float; exact up to 512.
-No visit has key 0, one visit key 1."""
-
-EVEN_SIDE, EVEN_BELOW, EVEN_SCALE = 4, 4, 16
-
 _UPRIGHT_AT_ONCE = 64
-
-Entry = TypeVar("Entry", np.uint8, np.uint32)
 
 
 @jit
@@ -73,7 +70,7 @@ def shared_out(counts: NDArray[np.uint32], beside: int, shares: NDArray[np.uint3
     beside
         Cells to leave out at both ends of each line.
     shares
-        uint32, shape (squares, squares), for `square_count` of lines and places; overwritten.
+        uint32, shape (squares, squares), as many as cover lines and places; overwritten.
     """
     lines, places = counts.shape[0], counts.shape[1] - 2 * beside
     few, none, one, scale = np.uint32(EVEN_BELOW), np.uint32(0), np.uint32(1), np.uint32(EVEN_SCALE)
@@ -143,3 +140,15 @@ def upright(
                 entry = table[share if count < EVEN_BELOW else count * np.uint32(EVEN_SCALE)]
                 line[2 * j] = entry
                 line[2 * j + 1] = entry
+
+
+def even_counts(counts: NDArray[np.uint32]) -> NDArray[np.uint32]:
+    """Evened counts of a picture, uint32 of shape (lines, places) in memory order."""
+    lines, places = counts.shape
+    shares = np.zeros((-(-lines // EVEN_SIDE), -(-places // EVEN_SIDE)), np.uint32)
+    shared_out(counts, 0, shares)
+    return evened(counts, shares)
+
+
+LOADED = True
+"""The last line: another thread that meets this module half loaded must not use it."""

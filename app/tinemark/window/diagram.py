@@ -107,6 +107,7 @@ class Diagram(QWidget):
         self.hovered = ""
         self.probe: Fraction | None = None
         self.notice = ""
+        self.waiting = ""
         self.pending: dict[int, tuple[Fraction, Fraction, str]] = {}
         self.cursor_place: tuple[float, float] | None = None
         self.branches = BranchOverlay()
@@ -187,6 +188,12 @@ class Diagram(QWidget):
         """Say something calm over the plot; an empty text removes it."""
         if words != self.notice:
             self.notice = words
+            self.update()
+
+    def show_waiting(self, words: str) -> None:
+        """Say at the foot of the plot what the picture waits for; an empty text removes it."""
+        if words != self.waiting:
+            self.waiting = words
             self.update()
 
     def set_tool(self, tool: str) -> None:
@@ -403,6 +410,9 @@ class Diagram(QWidget):
         )
         if self.notice:
             paint.paint_notice(painter, theme, parts.plot, self.notice)
+        elif self.waiting:
+            corner = parts.plot.bottomLeft() + QPointF(8, -8)
+            paint.paint_tag(painter, theme, parts.plot, corner, f"{self.waiting}\N{HORIZONTAL ELLIPSIS}")
         for parameter, observed, words in self.pending.values():
             paint.paint_pending(painter, theme, parts.plot, self.point(parameter, observed), words)
         self.branches.paint_words(painter, theme, view, parts.plot, self.words_at)

@@ -18,7 +18,7 @@ from tinemark.window.diagram import Diagram, Glimpse
 from tinemark.window.picture_tones import Tones, table
 from tinemark.window.status_line import StatusLine
 from tinemark.window.theme import current_theme
-from tinemark.work.pictures import PictureFailed
+from tinemark.work.pictures import PictureFailed, PictureWaits
 
 TOO_DEEP = "Columns are closer than double precision can tell; a click still refines."
 
@@ -53,6 +53,7 @@ class PictureJobs(QObject):
         self._wanted: tuple[PictureRequest, int] | None = None
         self._asked: dict[int, PictureRequest] = {}
         self._newest_shown = 0
+        self._waiting_steps = 0
         self._in_flight = 0
         self._since = QElapsedTimer()
         self._shown_system = ""
@@ -90,6 +91,7 @@ class PictureJobs(QObject):
         if identity != self._shown_system:
             self._shown_system = identity
             self._asked.clear()
+            self._diagram.show_waiting("")
             self._diagram.forget_picture()
         self._set_tones(session)
         wanted = (request, BUDGETS[picture.budget])
@@ -170,18 +172,25 @@ class PictureJobs(QObject):
             self._in_flight = 0
             if self._soon.isActive():
                 self._soon.start(0)
+        if painted.field.steps > self._waiting_steps:
+            self._diagram.show_waiting("")
         self._diagram.show_picture(painted.image, painted.pixels, painted.field, request.view)
         self._status.show_steps(painted.field.steps)
 
     def hear(self, event: object) -> None:
         """The desk says that a picture is done or cannot be drawn; other events are not meant for us."""
+        if isinstance(event, PictureWaits) and event.id in self._asked:
+            self._waiting_steps = event.steps
+            self._diagram.show_waiting(event.words)
         if isinstance(event, PictureFailed) and event.id in self._asked:
+            self._diagram.show_waiting("")
             self._in_flight = 0
             self._diagram.show_notice(f"No picture: {event.error}.")
             self._status.show_words(f"No picture: {event.error}.", "warning")
 
     def stop(self) -> None:
         """Stop drawing; what has been drawn stays."""
+        self._diagram.show_waiting("")
         if self.desk is not None:
             self.desk.cancel()
 

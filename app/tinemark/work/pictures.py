@@ -10,7 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tinemark.density.field import Field
+from tinemark.density.first_look import first_look
 from tinemark.density.request import PictureRequest
+from tinemark.density.sampling import columns_distinct
 from tinemark.density.stopping import StopFlag
 from tinemark.systems.errors import TinemarkError
 from tinemark.work.newest import NewestWins
@@ -44,7 +46,29 @@ class PictureFailed:
     error: TinemarkError
 
 
-PictureEvent: TypeAlias = PictureDone | PictureFailed
+@dataclass(frozen=True)
+class PictureWaits:
+    """A picture waits for its kernels; what is shown meanwhile was drawn without them.
+
+    Attributes
+    ----------
+    steps
+        Steps of the first look that has been handed out; 0 where there was none. A field of more has come
+        out of the kernels.
+    words
+        What it waits for, as a sentence without its full stop.
+    """
+
+    id: int
+    request: PictureRequest
+    steps: int
+    words: str
+
+
+PictureEvent: TypeAlias = PictureDone | PictureFailed | PictureWaits
+
+LOADING = "Loading the compiler"
+COMPILING = "Compiling the formulas, or loading them as compiled before"
 
 
 class PictureDesk:
@@ -108,21 +132,27 @@ class PictureDesk:
         self._desk.close()
 
     def _run(self, id_: int, asked: tuple[PictureRequest, int], stop: StopFlag) -> None:
-        # The compiler is loaded here and not with the window.
-        from tinemark.density import renderer
-        from tinemark.density.glimpse import Glimpses
-
         request, budget_steps = asked
-        glimpses = self._glimpses = self._glimpses or Glimpses()
         steps = 0
         try:
-            if not renderer.columns_distinct(request):
+            if not columns_distinct(request):
                 raise TinemarkError(
                     "the columns are closer than double precision can tell, so nothing is drawn",
                     what_to_do="a click there still refines, in higher precision",
                 )
+            if self._glimpses is None:
+                steps = self._first_look(id_, request, stop)
+                self._wait(id_, request, steps, LOADING, stop)
+            # The compiler is loaded here and not with the window.
+            from tinemark.density import renderer
+            from tinemark.density.glimpse import Glimpses, is_compiled
+
+            glimpses = self._glimpses = self._glimpses or Glimpses()
             drawing = self._kept(request) or renderer.create(request)
             self._drawing = drawing
+            if not is_compiled(drawing.kernels.advance):
+                steps = steps or self._first_look(id_, request, stop)
+                self._wait(id_, request, steps, COMPILING, stop)
             if drawing.level:
                 # What is kept is shown before anything is added to it.
                 field = renderer.snapshot(drawing)
@@ -141,6 +171,18 @@ class PictureDesk:
             return
         if not stop.is_set():
             self._on_event(PictureDone(id_, request, steps))
+
+    def _first_look(self, id_: int, request: PictureRequest, stop: StopFlag) -> int:
+        """Hand out a picture for which nothing has to be loaded, where there is one; returns its steps."""
+        field = first_look(request, stop)
+        if field is None:
+            return 0
+        self._hand_out(id_, field, stop)
+        return field.steps
+
+    def _wait(self, id_: int, request: PictureRequest, steps: int, words: str, stop: StopFlag) -> None:
+        if not stop.is_set():
+            self._on_event(PictureWaits(id_, request, steps, words))
 
     def _kept(self, request: PictureRequest) -> Drawing | None:
         from tinemark.density import renderer
