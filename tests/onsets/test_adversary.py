@@ -7,7 +7,7 @@ from typing import Any
 
 import pytest
 from flint import arb
-from running import click, climb, finish, own_map
+from running import click, climb, finish, own_map, system_of
 
 from tinemark.onsets.ball_orbits import LONGEST_EXPONENT, fraction_of
 from tinemark.onsets.one_map import one_map
@@ -52,6 +52,16 @@ def test_onset_at_zero_is_enclosed() -> None:
         assert onset.digits == 20
         assert len(onset.value) <= len("0.") + 22
         finish(verify_onset(own_map("(r + 3)*x*(1 - x)", low="0"), onset))
+
+
+def test_what_lies_at_the_end_of_a_printed_interval_is_proved_again() -> None:
+    """The cubic hump's flip of period 32 at 5.88760592022775227456291...: the digits after are 0 or 9."""
+    onset = click(system_of("cubic_hump"), "5.8876059", "0.0003").onsets[0]
+    assert (onset.kind, onset.period_before) == (Kind.FLIP, 32)
+    proof = finish(verify_onset(system_of("cubic_hump"), onset))
+    unit = Fraction(1, 10 ** len(onset.lower.partition(".")[2]))
+    assert Fraction(onset.lower) + unit / 4 < proof.parameter[0]
+    assert proof.parameter[1] < Fraction(onset.upper) - unit / 4
 
 
 @pytest.mark.parametrize("low", ["-1", None])

@@ -287,7 +287,7 @@ def _is_cascade(chain: _Chain, foreign: Sequence[int]) -> bool:
 
 
 def _speeds_fit(a: _Link, b: _Link) -> bool:
-    """Whether a later flip lies on the side, and about as far away, as the speed at the earlier one foretells.
+    """Whether a later flip lies on the side, and about as far off, as the speed at the earlier one foretells.
 
     A multiplier that falls through -1 as the parameter rises leads to a cascade that rises, and all its
     multipliers fall.

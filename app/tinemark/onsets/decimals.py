@@ -63,7 +63,7 @@ def places_shown(lower: Fraction, upper: Fraction, places: int, digits: int, siz
 def enclosure_texts(
     lower: Fraction, upper: Fraction, places: int, *, centre: Fraction | None = None
 ) -> EnclosureTexts:
-    """Texts of an interval: the ends rounded outward, the value to nearest.
+    """Texts of an interval: the ends rounded outward with some room, the value to nearest.
 
     The ends carry two places more than the value, and are moved out where the rounded value
     would lie beyond them, so that lower <= value <= upper holds for the texts as well.
@@ -81,8 +81,9 @@ def enclosure_texts(
     value = rounded(middle, places)
     fine = places + 2
     scale = Fraction(10) ** fine
-    low = (lower * scale).__floor__()
-    high = (upper * scale).__ceil__()
+    # Half a unit of room at least: what lies at the very end of a printed interval could not be proved anew.
+    low = (lower * scale - Fraction(1, 2)).__floor__()
+    high = (upper * scale + Fraction(1, 2)).__ceil__()
     shown = value * 100
     return EnclosureTexts(
         fixed_text(value, places), fixed_text(min(low, shown), fine), fixed_text(max(high, shown), fine)
