@@ -29,6 +29,8 @@ from tinemark.density.sampling import (
     scattered_starts,
 )
 from tinemark.density.stopping import StopFlag
+from tinemark.density.strobe_kernels import strobe_kernels
+from tinemark.density.strobe_preview import Periods, coarse_request, spread
 from tinemark.density.team import Team
 from tinemark.systems.errors import TinemarkError
 
@@ -120,7 +122,10 @@ def create(request: PictureRequest) -> Drawing:
             "the settings of the sweep are out of range",
             what_to_do="give at least 0 transient steps and 1 start",
         )
-    kernels = kernels_for(request.system, request.parameter, request.observe)
+    is_map = request.system.is_map
+    kernels = (
+        kernels_for(request.system, request.parameter, request.observe) if is_map else strobe_kernels(request)
+    )
     starts = scattered_starts(request)
     count, n = starts.shape
     columns = request.columns
@@ -218,7 +223,8 @@ def progressive(
     """Pictures that improve until every column has `budget_steps` steps (from each start).
 
     The first comes after a few hundred steps a column, the next after twice as many, and so on, and
-    no later than about half a second after the one before.
+    no later than about half a second after the one before. Before the first one of a system of equations
+    comes a coarse one.
 
     Parameters
     ----------
@@ -235,6 +241,14 @@ def progressive(
         rate = 0.0
         # The first picture of a new system does not wait for the trace to be compiled as well.
         told = bool(getattr(drawing.kernels.trace, "signatures", True))
+        is_map = drawing.request.system.is_map
+        coarse = None if is_map or drawing.level else coarse_request(drawing.request)
+        if coarse is not None:
+            preview = create(coarse)
+            append(preview, BUFFER, stop, team)
+            if not stop.is_set():
+                yield spread(snapshot(preview, False), drawing.request.columns)
+        periods = Periods()
         while not stop.is_set():
             level = drawing.level
             lagging = bool((drawing.drawn < level).any())
@@ -248,10 +262,12 @@ def progressive(
             if stop.is_set():
                 return
             rate = max(steps, 1) / max(time.perf_counter() - before, 1e-6)
-            field = snapshot(drawing, told or drawing.level >= budget_steps, stop)
+            ends = drawing.level >= budget_steps
+            due = told or ends if is_map else ends or periods.are_due(drawing.level)
+            field = snapshot(drawing, due, stop)
             if stop.is_set():
                 return
-            yield field
+            yield field if is_map else periods.kept(field, drawing.level, due)
             told = True
 
 

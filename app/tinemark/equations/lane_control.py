@@ -289,3 +289,36 @@ def give_up(W: Memory, lanes: int, stopped: Any) -> None:
     for k in range(lanes):
         if get(W, GOING + k) > 0.5:
             put(W, CODE + k, STOPPED if stopped != 0 else TOO_MANY)
+
+
+@jit
+def worst(W: Memory, lanes: int, checked: int) -> None:
+    """Keep the largest error of a lane's steps in OUT, in units of what is allowed; not-a-number stays."""
+    count = float(checked)
+    for k in range(lanes):
+        step, first, second = abs(get(W, STEP + k)), get(W, FIRST_SUM + k), get(W, SECOND_SUM + k)
+        before = get(W, OUT + k)
+        error = step * first / np.sqrt((first + 0.01 * second) * count + 1e-300)
+        put(W, OUT + k, before if error <= before else error)  # noqa: FURB136
+
+
+@jit
+def unsettled(W: Memory, lanes: int) -> int:
+    """Lanes that are to go one sample on with their own steps: those whose OUT exceeds what is allowed."""
+    count = 0
+    for k in range(lanes):
+        allowed = get(W, OUT + k) <= 1.0
+        going = 0.0 if allowed or get(W, CODE + k) > 0.5 else 1.0
+        put(W, GOING + k, going)
+        put(W, TIME + k, 0.0)
+        put(W, TRIES + k, 0.0)
+        count += 1 if going > 0.5 else 0
+    return count
+
+
+@jit
+def overdue(W: Memory, lanes: int, limit: int) -> None:
+    """Lanes that have tried too many steps for one sample get the reason."""
+    for k in range(lanes):
+        code, tries = get(W, CODE + k), get(W, TRIES + k)
+        put(W, CODE + k, TOO_MANY if tries >= limit and code < 0.5 else code)

@@ -120,8 +120,25 @@ class Stepper:
         """The fixed parameters as variables."""
         return [f"c{i} = fixed[{i}]" for i in range(len(self.motion.fixed))]
 
-    def rates(self, source: int, target: int | str, node: str, scaled: str = "") -> list[str]:
-        """A loop that computes the rates at a point; `scaled` names a flag that allows landing's scale."""
+    def rates(
+        self,
+        source: int,
+        target: int | str,
+        node: str,
+        scaled: str = "",
+        more: Mapping[str, str] | None = None,
+    ) -> list[str]:
+        """A loop that computes the rates at a point.
+
+        Parameters
+        ----------
+        node
+            How many steps beyond the lane's time.
+        scaled
+            Names a flag that allows a landing's scale.
+        more
+            What further names of the formulas are called in the code.
+        """
         motion = self.motion
         rates: list[tuple[str, Expr]] = [
             (f"f{i}", rate) for i, rate in enumerate((*motion.rates, *motion.rows))
@@ -130,7 +147,7 @@ class Stepper:
         loads.append(f"p = {at(place.SWEPT)}")
         if motion.is_driven:
             loads.append(f"t = {at(place.TIME)} + {node} * {at(place.STEP)}")
-        body = [*loads, *emit(rates, self.bind(), "native", "u")]
+        body = [*loads, *emit(rates, self.bind() | dict(more or {}), "native", "u")]
         if motion.section_slope is not None:
             body += emit([("slope", motion.section_slope)], self.bind(), "native", "g")
             body.append(f"{at(place.SLOPE)} = slope")

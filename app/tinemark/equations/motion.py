@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 
 from tinemark.systems.expression import ZERO, Call, Expr, Name
@@ -50,8 +51,16 @@ class Motion:
         return self.period is not None
 
 
-def motion(system: System, parameter: str) -> Motion:
+def motion(
+    system: System, parameter: str, along: Callable[[Expr, Mapping[str, Expr]], Expr] | None = None
+) -> Motion:
     """The motion of a driven or free-running system, without variations.
+
+    Parameters
+    ----------
+    along
+        Derivative of a formula along a direction, for the section's slope; by default one that takes
+        sympy along.
 
     Raises
     ------
@@ -64,7 +73,10 @@ def motion(system: System, parameter: str) -> Motion:
     if system.kind == "driven":
         return replace(plain, period=system.every_expression)
     section = rising_section(system)
-    return replace(plain, section=section, section_slope=_slope(section, system.state_names))
+    if along is None:
+        return replace(plain, section=section, section_slope=_slope(section, system.state_names))
+    direction = {name: Name(rate_name(i)) for i, name in enumerate(system.state_names)}
+    return replace(plain, section=section, section_slope=along(section, direction))
 
 
 def rising_section(system: System) -> Expr:
