@@ -6,9 +6,8 @@ import dataclasses
 from functools import lru_cache
 
 import pytest
-from claim_samples import claim_of, damaged, seal
+from claim_samples import box_by, claim_of, damaged, seal, shifted, with_formula
 from running import click, own_map
-from test_check import box_by, shifted, with_formula
 
 from tinemark.onsets.results import Status
 from tinemark.systems.library import builtin_system

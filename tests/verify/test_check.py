@@ -9,7 +9,7 @@ from functools import lru_cache
 from typing import Any
 
 import pytest
-from claim_samples import claim_of, damaged, seal
+from claim_samples import box_by, claim_of, damaged, moved, seal, shifted, with_formula
 from running import click, climb, own_map, system_of
 
 from tinemark.onsets.results import Onset
@@ -82,34 +82,6 @@ def test_elementary_functions_and_other_parameters() -> None:
 
 
 # Damage
-
-
-def moved(text: str, by: str) -> str:
-    """A decimal text moved by an amount, in as many digits as it needs."""
-    value = Fraction(text) + Fraction(by)
-    scaled = value * 10**80
-    assert scaled.denominator == 1
-    digits = str(abs(scaled.numerator)).rjust(81, "0")
-    return f"{'-' if value < 0 else ''}{digits[:-80]}.{digits[-80:]}"
-
-
-def shifted(claim: Claim, by: str) -> Claim:
-    """Value and ends moved together."""
-    return dataclasses.replace(
-        claim, value=moved(claim.value, by), lower=moved(claim.lower, by), upper=moved(claim.upper, by)
-    )
-
-
-def with_formula(claim: Claim, old: str, new: str) -> Claim:
-    assert claim.paper is not None
-    assert old in claim.paper.system_text
-    return damaged(claim, system_text=claim.paper.system_text.replace(old, new))
-
-
-def box_by(claim: Claim, by: str) -> Claim:
-    assert claim.paper is not None
-    middle, half = claim.paper.parameter_box
-    return damaged(claim, parameter_box=(moved(middle, by), half))
 
 
 DAMAGE: dict[str, tuple[Any, Part]] = {

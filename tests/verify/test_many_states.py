@@ -8,9 +8,8 @@ from functools import lru_cache
 from typing import Any
 
 import pytest
-from claim_samples import claim_of, damaged, seal
+from claim_samples import box_by, claim_of, damaged, moved, seal, shifted, with_formula
 from running import click, climb, system_of
-from test_check import box_by, moved, shifted, with_formula
 
 from tinemark.onsets.results import Kind, Onset
 from tinemark.systems.library import builtin_system

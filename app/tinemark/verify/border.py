@@ -10,7 +10,7 @@ it jumps the cycle ends.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from fractions import Fraction
 
 from tinemark.verify import intervals as iv
@@ -20,7 +20,7 @@ from tinemark.verify.claims import Claim, NotCheckable, Numbers, Paper, Part, Re
 from tinemark.verify.cycles import OneState, check_bounded
 from tinemark.verify.intervals import ONE, ZERO, Interval
 from tinemark.verify.newton import Side, image, inside
-from tinemark.verify.one_state import ends_of, hull, is_within, prime_factors, printed_side
+from tinemark.verify.one_state import ends_of, hull, is_within, printed_side
 from tinemark.verify.quotients import Untold, number
 from tinemark.verify.series import SLOPES, VALUE, Evaluator, Touching
 from tinemark.verify.surface_words import check_words, compared
@@ -37,7 +37,7 @@ X, R = 1, 2
 class Round:
     """The cycle once round with the touched switch on one side.
 
-    f^p and g with their slopes, f and its slope at the touching point, and boxes of points by their steps.
+    f^p and g with their slopes, and f with its slope at the touching point.
     """
 
     end: Interval
@@ -49,7 +49,6 @@ class Round:
     first_slope: Interval
     first_image: Interval
     first_sides: dict[Switch, int]
-    visits: dict[int, Interval] = field(default_factory=dict)
     near: bool = False
 
 
@@ -192,12 +191,6 @@ def _prove_on(
     if not is_within(numbers, narrow[1]):
         raise Undecided("the enclosure does not become narrow enough for the printed ends")
     _regular(here, bits)
-    for steps, place in here.visits.items():
-        if iv.sign(iv.sub(place, narrow[0], bits)) == 0:
-            raise Refused(
-                Part.PERIOD,
-                f"the cycle closes after {steps} steps already: its least period is not {paper.period}",
-            )
     if paper.criticality:
         raise Refused(Part.CRITICALITY, "a border collision has none")
     if printed is not None and not here.near:
@@ -241,8 +234,6 @@ def _round(
     spread = iv.sub(r, centre_r, bits)
     whole = Evaluator(one.program, SLOPES, bits, {one.parameter: {0: r, R: ONE}}, [one.state])
     values = Evaluator(one.program, VALUE, bits, {one.parameter: {0: centre_r}}, [one.state])
-    kept = {period // prime for prime in prime_factors(period)}
-    visits: dict[int, Interval] = {}
     here, u, v = x, ONE, ZERO
     g = gx = gr = first_slope = first_image = ZERO
     first_sides: dict[Switch, int] = {}
@@ -250,12 +241,15 @@ def _round(
     cost = one.cost(bits)
     for step in range(period):
         one.watch.spend(cost)
-        if step in kept:
-            visits[step] = here
         if look_for is not None and not near:
             near = iv.sign(iv.sub(here, look_for, bits)) == 0
         sides = {border.switch: side} if step == 0 else {}
         start = {one.state: {0: here, X: ONE}}
+        if step and iv.sign(iv.sub(here, x, bits)) == 0:
+            raise Refused(
+                Part.PERIOD,
+                f"the cycle closes after {step} steps already: its least period is not {period}",
+            )
         local = whole(start, sides)
         fx, fr = local.get(X, ZERO), local.get(R, ZERO)
         if step == 0:
@@ -270,7 +264,7 @@ def _round(
         move = iv.add(iv.mul(fx, iv.sub(here, middle, bits), bits), iv.mul(fr, spread, bits), bits)
         here = iv.add(at, move, bits)
         check_bounded(here)
-    return Round(here, u, v, g, gx, gr, first_slope, first_image, first_sides, visits, near)
+    return Round(here, u, v, g, gx, gr, first_slope, first_image, first_sides, near)
 
 
 def _regular(here: Round, bits: int) -> None:

@@ -28,6 +28,7 @@ from tinemark.verify.one_state import (
     is_within,
     prime_factors,
     printed_side,
+    see_box_at_value,
 )
 from tinemark.verify.quotients import Untold
 from tinemark.verify.switches import Sides
@@ -39,6 +40,7 @@ ONE_HALF, ONE_SIXTH, TWO = Fraction(1, 2), Fraction(1, 6), Fraction(2)
 FAR = Fraction(1, 10**5)
 """A cycle that misses its beginning by more than this share closes later, if at all."""
 NEAR = Fraction(1, 1000)
+SLIGHTLY = Fraction(1, 10**9)
 DISPROOF_BITS = 400
 UNTOLD = "no identity of the formula was found that makes two branches meet there"
 
@@ -113,17 +115,18 @@ def _blame(
     there = printed_side(printed, bits, numbers)
     if there is not None and iv.sign(iv.sub(there, box[0], bits)):
         raise Refused(Part.BOX, "the box does not hold the printed cycle point")
+    see_box_at_value(numbers)
     bits = max(2 * bits, DISPROOF_BITS)
     r = iv.middle(box[1], bits)
     tried = 0
-    for curve in curves_through(one, box[0], box[1], bits):
+    for curve in curves_through(one, _wider(box[0]), box[1], bits):
         tried += 1
         x, _ = curve.at(r, bits)
         if iv.sign(iv.sub(on_box(one, x, r, paper.period, bits).x, x, bits)) == 0:
             raise NotCheckable(UNTOLD)
     if paper.period % 2 == 0:
         half = on_box(one, box[0], box[1], paper.period // 2, bits).x
-        for curve in curves_through(one, iv.add(box[0], half, bits), box[1], bits):
+        for curve in curves_through(one, _wider(iv.add(box[0], half, bits)), box[1], bits):
             tried += 1
             x, t = iv.middle(box[0], bits), curve.at(r, bits)[0]
             images = [on_box(one, place, r, 1, bits).x for place in (x, iv.sub(t, x, bits))]
@@ -134,6 +137,13 @@ def _blame(
             Part.FORMULA, "nothing makes two branches meet there: no cycle stays, and no symmetry holds"
         )
     raise NotCheckable(UNTOLD)
+
+
+def _wider(value: Interval) -> Interval:
+    """An interval with room for what a slightly changed formula moves."""
+    low, high = iv.ends(value)
+    room = SLIGHTLY * max(Fraction(1), abs(low))
+    return hull((low - room, high + room), DISPROOF_BITS)
 
 
 # A cycle that is known for every value of the parameter

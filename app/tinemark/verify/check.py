@@ -28,7 +28,7 @@ from tinemark.verify.claims import (
     Undecided,
     Verdict,
 )
-from tinemark.verify.compare import compared, same_digest
+from tinemark.verify.compare import compared, digest_verdict, same_digest
 from tinemark.verify.cycles import OneState
 from tinemark.verify.decimals import rational
 from tinemark.verify.many_cycles import ManyStates
@@ -61,10 +61,10 @@ def check(claim: Claim, watch: Watch | None = None) -> Verdict:
         _check(claim, watch or Watch())
     except Refused as refused:
         return Verdict(Outcome.REFUSED, refused.part, refused.reason)
-    except NotCheckable as error:
-        return Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
-    except Undecided as error:
-        return Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
+    except (NotCheckable, Undecided) as error:
+        # What cannot be told of a certificate that was changed is told by its digest.
+        changed = digest_verdict(claim)
+        return changed or Verdict(Outcome.NOT_CHECKABLE, Part.NOTHING, error.reason)
     except (RecursionError, MemoryError, OverflowError):
         return Verdict(
             Outcome.NOT_CHECKABLE, Part.NOTHING, "the certificate is beyond what can be worked with"

@@ -20,6 +20,8 @@ from tinemark.verify.claims import (
 from tinemark.verify.decimals import last_unit, rational, significant_digits, zeros_unit
 from tinemark.verify.system import Plain, read
 
+NOT_THE_ONE = "the certificate is not the one that was made with these numbers"
+
 
 def mismatch(claim: Claim) -> Verdict | None:
     """Whether a certificate does not even fit its row; looks at words, numbers and the digest only.
@@ -120,7 +122,14 @@ def _same_system(claim: Claim, plain: Plain) -> None:
 def same_digest(claim: Claim, paper: Paper) -> None:
     """Refuse a digest that is not that of the certificate and the printed numbers."""
     if paper.digest != digest_of(claim, paper):
-        raise Refused(Part.DIGEST, "the certificate is not the one that was made with these numbers")
+        raise Refused(Part.DIGEST, NOT_THE_ONE)
+
+
+def digest_verdict(claim: Claim) -> Verdict | None:
+    """A refusal where the digest of a proved row does not fit; None elsewhere."""
+    if claim.paper is None or claim.paper.digest == digest_of(claim, claim.paper):
+        return None
+    return Verdict(Outcome.REFUSED, Part.DIGEST, NOT_THE_ONE)
 
 
 def digest_of(claim: Claim, paper: Paper) -> str:

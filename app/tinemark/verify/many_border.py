@@ -18,6 +18,7 @@ from tinemark.verify.many_border_following import BorderSide, check_periods
 from tinemark.verify.many_cycles import Carried, Local, ManyStates, Vector
 from tinemark.verify.many_states import printed_box
 from tinemark.verify.matrices import solved
+from tinemark.verify.newton import Side
 from tinemark.verify.normal_form import dot
 from tinemark.verify.one_state import ends_of, hull, prime_factors
 from tinemark.verify.quotients import Untold, number
@@ -130,6 +131,7 @@ def prove(
     """
     sides = [ends_of(side) for side in (*numbers.states, numbers.parameter)]
     reason = ""
+    touched: Touched | None = None
     for _ in range(ATTEMPTS):
         box = [hull(side, bits) for side in sides]
         try:
@@ -149,10 +151,20 @@ def prove(
                 claim.consequence,
             )
         return
+    if touched is not None:
+        _see_not_earlier(many, paper, touched, sides, bits)
     (low, high), room = sides[-1], 100 * (numbers.upper - numbers.lower)
     if low - room <= numbers.value <= high + room:
         raise Refused(Part.FORMULA, f"no such onset is where value and box say it is ({reason})")
     raise Refused(Part.BOX, f"{reason}; it is not where the value is")
+
+
+def _see_not_earlier(
+    many: ManyStates, paper: Paper, touched: Touched, sides: Sequence[Side], bits: int
+) -> None:
+    for side in touched.sides:
+        equations = BorderEquations(many, paper.period, touched, {touched.switch: side})
+        many_boxes.see_not_earlier(equations, paper.period, sides, bits)
 
 
 def _touched(many: ManyStates, box: list[Interval], bits: int) -> Touched:

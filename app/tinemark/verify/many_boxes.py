@@ -16,7 +16,7 @@ from tinemark.verify.intervals import Interval
 from tinemark.verify.many_cycles import Carried
 from tinemark.verify.many_equations import Equations, krawczyk, newton_step
 from tinemark.verify.newton import Side, inside
-from tinemark.verify.one_state import is_within
+from tinemark.verify.one_state import hull, is_within, prime_factors
 
 CUTS = 4
 """How often a box is cut down to its image at one precision."""
@@ -85,9 +85,22 @@ def see_period(period: int, end: Carried, point: Sequence[Interval], bits: int) 
             )
 
 
+def see_not_earlier(equations: Equations, period: int, sides: Sequence[Side], bits: int) -> None:
+    """Refuse a cycle that closes earlier on the whole box, as far as it can be gone along."""
+    box = [hull(side, bits) for side in sides]
+    for steps in sorted({period // prime for prime in prime_factors(period)}):
+        try:
+            point, _ = equations.place(box, bits)
+            end = equations.carried(box, bits, second=False, steps=steps)
+            see_period(period, Carried(end.x, end.first, visits={steps: end.x}), point, bits)
+        except Undecided:
+            return
+
+
 def blame(
     equations: Equations,
     numbers: Numbers,
+    period: int,
     start: Sequence[Fraction],
     sides: Sequence[Side],
     bits: int,
@@ -102,6 +115,7 @@ def blame(
     sides
         The box's sides in the unknowns that it has.
     """
+    see_not_earlier(equations, period, sides, bits)
     reached = _solved(equations, numbers, start, bits)
     room = 100 * (numbers.upper - numbers.lower)
     nothing = f"the formulas have no such onset where value and box say it is ({reason})"

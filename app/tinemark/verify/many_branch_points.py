@@ -27,6 +27,7 @@ from tinemark.verify.many_states import printed_box, see_cycle, see_flip_or_fold
 from tinemark.verify.matrices import characteristic, check_off_circle, determinant, without_root
 from tinemark.verify.mirrors import (
     Mirror,
+    Plane,
     commutes,
     constant_in,
     exchanges,
@@ -34,7 +35,7 @@ from tinemark.verify.mirrors import (
     preserves_areas,
 )
 from tinemark.verify.normal_form import null_vectors, quadratic
-from tinemark.verify.one_state import ends_of, hull, prime_factors
+from tinemark.verify.one_state import ends_of, hull, prime_factors, see_box_at_value
 
 ATTEMPTS = 3
 LONGEST_ON_PLANE = 64
@@ -59,30 +60,42 @@ def prove(
     look_for = printed_box(many, printed, bits, numbers)
     whole = _once_round(many, paper, box, bits)
     if paper.kind == "transcritical":
-        boxes = [whole.visits[step] for step in range(paper.period)] if whole.visits else []
-        plane = plane_through(many, boxes, bits) if boxes else None
+        plane = _plane(many, paper, whole, bits)
         if next(_mirrors(many, paper, box, bits), None) is not None:
             raise Refused(Part.KIND, "a symmetry breaks there: a pitchfork, no transcritical point")
         if plane is None:
-            _untold(many, paper, box, bits, look_for)
+            _untold(many, paper, numbers, box, bits, look_for)
         _transcritical(PlaneEquations(many, paper.period, plane), paper, numbers, bits, look_for)
         return
     for mirror, steps in _mirrors(many, paper, box, bits):
         equations = CycleEquations(many, steps, -1, mirror)
         _pitchfork(equations, paper, numbers, bits, look_for)
         return
-    if whole.visits and plane_through(many, [whole.visits[step] for step in range(paper.period)], bits):
+    if _plane(many, paper, whole, bits) is not None:
         raise Refused(Part.KIND, "a cycle on a plane is crossed there: transcritical, no pitchfork")
-    _untold(many, paper, box, bits, look_for)
+    _untold(many, paper, numbers, box, bits, look_for)
+
+
+def _plane(many: ManyStates, paper: Paper, whole: Carried, bits: int) -> Plane | None:
+    if paper.period > LONGEST_ON_PLANE:
+        return None
+    return plane_through(many, [whole.visits[step] for step in range(paper.period)], bits)
 
 
 def _once_round(many: ManyStates, paper: Paper, box: list[Interval], bits: int) -> Carried:
     """f^p on the box; refuses what is no cycle of this period, or has no multiplier near 1."""
-    steps = range(paper.period) if paper.period <= LONGEST_ON_PLANE else ()
+    early = sorted({paper.period // prime for prime in prime_factors(paper.period)})
+    steps = range(paper.period) if paper.period <= LONGEST_ON_PLANE else early
     try:
         end = mc.carried(many, box[:-1], box[-1], paper.period, bits, visits=steps)
     except Undecided as error:
         raise Refused(Part.FORMULA, f"no cycle is where value and box say it is ({error.reason})") from error
+    for step in early:
+        if not any(_gap(x, y, bits) > 0 for x, y in zip(end.visits[step], box, strict=False)):
+            raise Refused(
+                Part.PERIOD,
+                f"the cycle closes after {step} steps already: its least period is not {paper.period}",
+            )
     if any(_gap(x, y, bits) > NEAR for x, y in zip(end.x, box, strict=False)):
         raise Refused(Part.PERIOD, f"the cycle does not close after {paper.period} steps")
     if _gap(determinant(off_target(end.rows, 1, bits), bits), ZERO, bits) > NEAR:
@@ -96,11 +109,17 @@ def _gap(x: Interval, y: Interval, bits: int) -> Fraction:
 
 
 def _untold(
-    many: ManyStates, paper: Paper, box: list[Interval], bits: int, look_for: Sequence[Interval] | None
+    many: ManyStates,
+    paper: Paper,
+    numbers: Numbers,
+    box: list[Interval],
+    bits: int,
+    look_for: Sequence[Interval] | None,
 ) -> NoReturn:
     """Say why no identity was found: the box or the formula was changed, or what holds is not known here."""
     if look_for is not None and any(_gap(x, y, bits) > 0 for x, y in zip(look_for, box, strict=False)):
         raise Refused(Part.BOX, "the box does not hold the printed cycle point")
+    see_box_at_value(numbers)
     end = mc.carried(many, box[:-1], box[-1], paper.period, bits)
     if any(_gap(x, y, bits) > 0 for x, y in zip(end.x, box, strict=False)):
         raise Refused(Part.FORMULA, "the cycle does not close where value and box say it does")
@@ -148,7 +167,7 @@ def _pitchfork(
             reason, bits = error.reason, bits * 3 // 2
     if found is None:
         start = [*(middle for middle, _ in numbers.states), numbers.value]
-        many_boxes.blame(equations, numbers, start, sides, bits, reason)
+        many_boxes.blame(equations, numbers, paper.period, start, sides, bits, reason)
     conservative = preserves_areas(many, equations.steps, mirror)
 
     def claims(narrow: list[Interval], bits: int) -> None:
@@ -207,7 +226,7 @@ def _transcritical(
             reason, bits = error.reason, bits * 3 // 2
     if found is None:
         start = [*(middle for middle, _ in kept[:-1]), numbers.value]
-        many_boxes.blame(equations, numbers, start, sides, bits, reason)
+        many_boxes.blame(equations, numbers, paper.period, start, sides, bits, reason)
     if paper.criticality:
         raise Refused(Part.CRITICALITY, "a transcritical point has none")
 

@@ -60,7 +60,7 @@ def prove(
                 start.append(neimark_sacker.sum_near(there.rows, bits))
             except Undecided as error:
                 raise Refused(Part.FORMULA, f"no such onset is there ({error.reason})") from error
-        many_boxes.blame(equations, numbers, start, sides, bits, reason)
+        many_boxes.blame(equations, numbers, paper.period, start, sides, bits, reason)
     conservative = paper.kind != NEIMARK_SACKER and preserves_areas(many, paper.period, None)
 
     def claims(narrow: list[Interval], bits: int) -> None:

@@ -95,6 +95,13 @@ def is_within(numbers: Numbers, found: Interval) -> bool:
     return numbers.lower <= low and high <= numbers.upper
 
 
+def see_box_at_value(numbers: Numbers) -> None:
+    """Refuse a box that is not where the printed value is."""
+    low, high = ends_of(numbers.parameter)
+    if high < numbers.lower or low > numbers.upper:
+        raise Refused(Part.BOX, "the box is not where the value is")
+
+
 def ends_of(side: Side) -> Side:
     """Lower and upper end of a side given by its middle and half-width."""
     middle, half = side
