@@ -214,6 +214,7 @@ class _Search:
     def _value(
         self, period: int, birth: Fraction, gap: Fraction, share: Fraction, bits: int
     ) -> Generator[Step, None, _Value]:
+        yield Step("following superstable cycles")
         with precision(bits):
             placed = ball_of(share).mid()
             r = (ball_of(birth) + ball_of(gap) * placed).mid()
