@@ -109,7 +109,7 @@ SPIRAL = {"x": "r*x - y", "y": "x + r*y"}
 
 
 def test_a_spiral_comes_back_after_a_whole_turn() -> None:
-    # On the section y = 0, rising: x -> e^(2 pi r) x after the time 2 pi; off it the state is carried on first.
+    # On the section y = 0, rising: x -> e^(2 pi r) x after the time 2 pi.
     of = rates(SPIRAL, crosses="y")
     found = returned(of, ("2", "0"), "-0.125", ("1", "0"))
     with working(200):

@@ -8,7 +8,7 @@ import pytest
 from flint import arb
 
 from tinemark.equations.series import series_function, working
-from tinemark.equations.taylor_arc import LOW_BITS, LowArc, arc_from
+from tinemark.equations.taylor_arc import LOW_BITS, Arc, LowArc, arc_from
 from tinemark.equations.taylor_rates import Rates, rate_functions
 from tinemark.systems.expression import Expr
 from tinemark.systems.formula import read_formula
@@ -24,7 +24,7 @@ def read(*texts: str, names: tuple[str, ...]) -> tuple[Expr, ...]:
 
 def arc_of(
     texts: tuple[str, ...], start: tuple[str, ...], r: str = "1", clock: str = "0", order: int = ORDER
-):  # type: ignore[no-untyped-def]
+) -> Arc:
     """An arc of the system with these rates in x, y, z, r and t."""
     states = ("x", "y", "z")[: len(texts)]
     rates = Rates(states, "r", read(*texts, names=(*states, "r", "t")), None)
@@ -111,9 +111,9 @@ def test_a_driven_solution_and_its_variations_follow_the_closed_form() -> None:
     arc = arc_of(("r*x + t",), (x0,), r=r, clock=clock)
     with mpmath.workdps(60):
 
-        def solution(t, start=mpmath.mpf(x0), p=mpmath.mpf(r)):  # type: ignore[no-untyped-def]
-            c = mpmath.mpf(clock)
-            return (start + 1 / p**2 + c / p) * mpmath.exp(p * t) - (t + c) / p - 1 / p**2
+        def solution(t, p=None):  # type: ignore[no-untyped-def]
+            c, begun, p = mpmath.mpf(clock), mpmath.mpf(x0), mpmath.mpf(r) if p is None else p
+            return (begun + 1 / p**2 + c / p) * mpmath.exp(p * t) - (t + c) / p - 1 / p**2
 
         for k, value in enumerate(mpmath.taylor(solution, 0, 12)):
             assert holds(arc.x[0][k], value)

@@ -50,13 +50,16 @@ CLOCK_UNIT = 2.0**-40
 ORDER_SHARE = 0.5
 """Order by bits of precision: beyond, longer series cost more than longer steps save."""
 FLOOR = 2.0**-8
-"""Reach of a-priori boxes, in parts of the states' size, below which they are not made."""
+"""Reach of a-priori boxes, in parts of each state's size, below which they are not made …"""
+LEAST_FLOOR = 2.0**-30
+"""… and in parts of the largest state's size."""
 RETAKES = 8
 GROW = 1.12
 """How much longer than the last the next a-priori bound is tried …"""
 RESTART = 0.95
 """… and with how much of its reach."""
 LONGEST = 1e3
+NOTHING = 2.0**-20
 
 
 @dataclass(frozen=True)
@@ -123,7 +126,10 @@ class _Run:
             # The clock of a free-running system plays no part.
             clock = arb(self.clock)
         self.sizes = [max(a, abs(float(b))) for a, b in zip(self.sizes, self.set.middle, strict=True)]
-        floors = [FLOOR * (size or 1.0) for size in self.sizes]
+        largest = max(self.sizes)
+        # What is next to nothing does not tell how large it may become: then of the order of one.
+        least = FLOOR if largest < NOTHING else LEAST_FLOOR * largest
+        floors = [max(FLOOR * size, least) for size in self.sizes]
         likely = [max(b, floor) for b, floor in zip(self.reach, floors, strict=False)]
         guess = min(GROW * self.radius, LONGEST)
         bound = bound_of(self.functions, self.set.middle, spread, self.r, clock, floors, guess, likely)
@@ -180,7 +186,8 @@ def _look(run: _Run, arc: Arc, bound: Bound, spread: Sequence[Any], start: float
     assert run.section is not None
     with working(LOW_BITS):
         middle, half = (start + stop) / 2, (stop - start) / 2
-        time = arb(middle, half * (1 + 2.0**-40))
+        # A little wider than the stretch, for the rounding of its ends to doubles.
+        time = arb(middle, half * (1 + 2.0**-20))
         return local_at(run.section, _states_over(run, arc, bound, spread, time), run.r)
 
 

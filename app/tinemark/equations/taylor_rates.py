@@ -35,12 +35,15 @@ class Rates:
         Rate of each state; in a driven system the time unit is one period, and time is `t`.
     section
         Free-running: passes zero from below where a sample is taken. None: driven.
+    period
+        Driven: the strobe period, a formula in the parameter. None: free-running.
     """
 
     states: tuple[str, ...]
     parameter: str
     rates: tuple[Expr, ...]
     section: Expr | None
+    period: Expr | None = None
 
     @property
     def size(self) -> int:
@@ -72,7 +75,7 @@ def rates_of(system: System, parameter: str) -> Rates:
     period = put_in_all(system.every_expression, fixed)
     scaled = {**fixed, TIME: Call("mul", (period, Name(TIME)))}
     rates = tuple(Call("mul", (period, put_in_all(expr, scaled))) for expr in system.expressions)
-    return Rates(system.state_names, swept, rates, None)
+    return Rates(system.state_names, swept, rates, None, period)
 
 
 def put_in_all(expr: Expr, values: Mapping[str, Expr]) -> Expr:

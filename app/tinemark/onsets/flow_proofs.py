@@ -11,6 +11,7 @@ from __future__ import annotations
 from collections.abc import Generator
 from dataclasses import replace
 
+from tinemark.onsets.ball_orbits import precision
 from tinemark.onsets.flow_proofs_map import IntegratedMap
 from tinemark.onsets.flow_proofs_period import repeats
 from tinemark.onsets.many_map import Floats
@@ -18,11 +19,14 @@ from tinemark.onsets.many_proof import ManyProof, prove_many
 from tinemark.onsets.many_shooting import Place
 from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Step
+from tinemark.systems.balls import ball_function
 from tinemark.systems.errors import SwitchingTouched
 
-STEADY, STEADY_STATE = "a steady state", "the steady state"
+STEADY = "a steady state"
 """What a point that comes back at once is called in a map."""
+MAP_WORDS = (("the steady state", "the cycle"), ("a turn a step", "a turn a sample"), (" steps", " samples"))
 NOT_REPEATING = "that the rates repeat with the strobe period could not be shown"
+NO_PERIOD = "the strobe period is not a positive number"
 
 
 def prove(
@@ -52,8 +56,8 @@ def prove(
         A test failed or stayed undecided; says which.
     """
     driven = integrated.rates.section is None
-    if driven and not repeats(integrated.rates):
-        raise NotProved(NOT_REPEATING)
+    if driven:
+        _check_strobe(integrated, middle, bits)
     try:
         proof = yield from prove_many(integrated, kind, middle, scales, bits)
     except SwitchingTouched as error:
@@ -67,5 +71,19 @@ def prove(
     first, *rest = proof.evidence
     lines = [(claim, once if finding == STEADY else finding) for claim, finding in rest]
     evidence = (first, ("equations enclosed", way), *lines)
-    consequence = proof.claims.consequence.replace(STEADY_STATE, "the cycle")
+    consequence = proof.claims.consequence
+    for word, own in MAP_WORDS:
+        consequence = consequence.replace(word, own)
     return replace(proof, evidence=evidence, claims=replace(proof.claims, consequence=consequence))
+
+
+def _check_strobe(integrated: IntegratedMap, middle: Place, bits: int) -> None:
+    """That a state which comes back at the next strobe is a periodic orbit."""
+    rates = integrated.rates
+    if not repeats(rates):
+        raise NotProved(NOT_REPEATING)
+    assert rates.period is not None
+    with precision(bits):
+        period = ball_function((rates.period,), (rates.parameter,))(middle.r)[0]
+        if not (period.is_finite() and period > 0):
+            raise NotProved(NO_PERIOD, refuted=True)
