@@ -49,8 +49,9 @@ BLOCKS = LANES * 30
 ESCAPED, TOO_MANY, STOPPED, GRAZES, RESTS = 1.0, 2.0, 3.0, 4.0, 5.0
 """Codes, as in `Reason`."""
 
-RESTING_STEPS = 20.0
-"""Steps in a row that move less than is allowed as an error: the orbit has come to rest."""
+RESTING_STEPS, RESTING_MOVE = 40.0, 100.0
+"""Steps in a row that move less than some times what is allowed as an error: the orbit has come to rest.
+An explicit method hovers about a resting point by a few times that. The move is squared."""
 
 CLOSER_LOOKS = 60.0
 """Looks after which a section met along its own direction counts as grazed."""
@@ -231,7 +232,7 @@ def _passed(W: Memory, k: int, step: float, factor: float, near: float) -> float
     put(W, LOOKS + k, 0.0)
     put(W, STEEPEST + k, max(get(W, STEEPEST + k), abs(d1)))
     put(W, HIGHEST + k, max(get(W, HIGHEST + k), abs(g1)))
-    put(W, STILL + k, get(W, STILL + k) + 1.0 if get(W, MOVED + k) < 1.0 else 0.0)
+    put(W, STILL + k, get(W, STILL + k) + 1.0 if get(W, MOVED + k) < RESTING_MOVE else 0.0)
     put(W, WANTED + k, step * factor)
     if armed and g1 >= 0.0:
         put(W, LANDING + k, 1.0)
