@@ -17,7 +17,7 @@ from tinemark.systems.formula import read_formula
 from tinemark.systems.plain import plain_function
 
 COUNTED_STEPS = 192
-LONGEST_S = 0.3
+LONGEST_S = 1.0
 MOST_ORBITS = 20_000
 _LOOK_EVERY = 32
 

@@ -36,7 +36,12 @@ def toned(field: Field, tones: Tones) -> NDArray[np.uint32]:
     if tones.thickness == 1:
         return coloured(counts, tones.tone, table(tones))
     indices = tone_map(counts, tones.tone)
-    periodic = np.flatnonzero(field.period > 0)
+    is_periodic = field.period > 0
+    if np.isnan(field.lyapunov).all():
+        # A first look knows no periods; a settled orbit meets few cells again and again.
+        visited = np.count_nonzero(field.counts, axis=0)
+        is_periodic = is_periodic | (visited * 3 * len(visited) <= field.steps)
+    periodic = np.flatnonzero(is_periodic)
     lines = indices[:, periodic]
     thick = lines.copy()
     for step in range(1, tones.thickness):
