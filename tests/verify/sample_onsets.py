@@ -6,10 +6,21 @@ from collections.abc import Callable
 from functools import lru_cache
 
 from running import click, own_map, system_of
-from test_many_exact import click as many_click
-from test_many_exact import own_system
 
 from tinemark.onsets.results import Onset, Status
+from tinemark.systems.system import System
+from tinemark.systems.system_file import read_system_text
+
+
+def own_states(formulas: dict[str, str], low: str = "-1", high: str = "1", start: str = "0.1") -> System:
+    """A map of several states along r, all states alike."""
+    lines = ['title = "own states"', 'kind = "map"', "[parameters.r]", 'value = "1"', 'range = ["0", "2"]']
+    for name in formulas:
+        lines += [f"[states.{name}]", f'start = "{start}"', f'range = ["{low}", "{high}"]']
+    lines += ["[next]", *(f'{name} = "{formula}"' for name, formula in formulas.items())]
+    lines += ["[diagram]", 'parameter = "r"', f'observe = "{next(iter(formulas))}"']
+    return read_system_text("\n".join(lines))
+
 
 TWO_PIECES = "{}*x + r if x < 0 else {}*x + r"
 SAMPLES: dict[str, tuple[str, Callable[[], tuple[Onset, ...]]]] = {
@@ -65,44 +76,58 @@ SAMPLES: dict[str, tuple[str, Callable[[], tuple[Onset, ...]]]] = {
     "many: flip": ("flip", lambda: click(system_of("henon"), "0.37", "0.1").onsets),
     "many: turning": (
         "Neimark-Sacker",
-        lambda: many_click(
-            own_system({"x": "r*x*(1 - 0.7*y - 0.3*z)", "y": "x", "z": "y"}, "-1", "2", "0.5"), "1.9", "0.9"
+        lambda: (
+            click(
+                own_states({"x": "r*x*(1 - 0.7*y - 0.3*z)", "y": "x", "z": "y"}, "-1", "2", "0.5"),
+                "1.9",
+                "0.9",
+            ).onsets
         ),
     ),
     "many: areas kept": (
         "flip",
-        lambda: many_click(own_system({"x": "r - x**2 - y", "y": "x"}, "-2", "2"), "3.0", "0.5"),
+        lambda: click(own_states({"x": "r - x**2 - y", "y": "x"}, "-2", "2"), "3.0", "0.5").onsets,
     ),
     "many: a predator comes in": (
         "transcritical",
-        lambda: many_click(
-            own_system({"x": "r*x*(1 - x) - x*y", "y": "2*x*y"}, "0", "1", "0.3"), "2.01", "0.2"
+        lambda: (
+            click(own_states({"x": "r*x*(1 - x) - x*y", "y": "2*x*y"}, "0", "1", "0.3"), "2.01", "0.2").onsets
         ),
     ),
     "many: fork": (
         "pitchfork",
-        lambda: many_click(
-            own_system({"x": "r*x - x**3", "y": "0.5*y + 0.1*x"}), "1.02", "0.3", observed="0.1", height="1"
+        lambda: (
+            click(
+                own_states({"x": "r*x - x**3", "y": "0.5*y + 0.1*x"}),
+                "1.02",
+                "0.3",
+                observed="0.1",
+                height="1",
+            ).onsets
         ),
     ),
     "many: fork of a cycle": (
         "pitchfork",
-        lambda: many_click(
-            own_system({"x": "x + y + r*sin(x)", "y": "y + r*sin(x)"}, "-4", "4"),
-            "6.28",
-            "0.5",
-            observed="1.57",
-            height="2",
+        lambda: (
+            click(
+                own_states({"x": "x + y + r*sin(x)", "y": "y + r*sin(x)"}, "-4", "4"),
+                "6.28",
+                "0.5",
+                observed="1.57",
+                height="2",
+            ).onsets
         ),
     ),
     "many: border": (
         "border collision",
-        lambda: many_click(own_system({"x": "1 - r*x**2 + y", "y": "0.3*abs(x)"}, "-2", "2"), "0.5", "0.6"),
+        lambda: click(own_states({"x": "1 - r*x**2 + y", "y": "0.3*abs(x)"}, "-2", "2"), "0.5", "0.6").onsets,
     ),
     "many: border, a jump": (
         "border collision",
-        lambda: many_click(
-            own_system({"x": "r*x*(1 - x)", "y": "y/2 + floor(12*x/7)/9"}, "0", "1"), "2.39", "0.2"
+        lambda: (
+            click(
+                own_states({"x": "r*x*(1 - x)", "y": "y/2 + floor(12*x/7)/9"}, "0", "1"), "2.39", "0.2"
+            ).onsets
         ),
     ),
 }

@@ -1,4 +1,4 @@
-"""Every kind of onset that is printed as proved is confirmed; whatever is damaged in one is refused by name."""
+"""Every kind of onset printed as proved is confirmed; whatever is damaged in one is refused by name."""
 
 from __future__ import annotations
 
@@ -7,10 +7,8 @@ from fractions import Fraction
 
 import pytest
 from claim_samples import box_by, claim_of, damaged, every_damage, seal
-from running import climb, own_map
-from sample_onsets import SAMPLES, sample
-from test_many_exact import click as many_click
-from test_many_exact import own_system
+from running import click, climb, own_map
+from sample_onsets import SAMPLES, own_states, sample
 
 from tinemark.onsets.results import Kind
 from tinemark.verify.check import check
@@ -74,7 +72,7 @@ def test_a_map_that_nearly_keeps_areas() -> None:
     The fixed point x^2 + (1 + b) x = r has the trace -2 x = -(1 + b), so that r = 3 (1 + b)^2/4 (exact).
     """
     b = "0.99999999999999999999999999999"
-    (onset,) = many_click(own_system({"x": f"r - x**2 - {b}*y", "y": "x"}, "-2", "2"), "3", "0.5")
+    (onset,) = click(own_states({"x": f"r - x**2 - {b}*y", "y": "x"}, "-2", "2"), "3", "0.5").onsets
     exact = Fraction(3, 4) * (1 + Fraction(b)) ** 2
     assert onset.kind is Kind.FLIP
     assert Fraction(onset.lower) <= exact <= Fraction(onset.upper)
