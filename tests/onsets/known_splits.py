@@ -220,6 +220,13 @@ def maps_of_several_states() -> Iterator[Split]:
         yield _many(patches, "r", "flip", 2**level, value, points, size, _patches, (0.0, 1.0))
 
 
+def kinds_of_several_states() -> Iterator[Split]:
+    """See `known_many_splits`."""
+    from known_many_splits import several_states
+
+    yield from several_states()
+
+
 HENON_LADDER = (
     "0.3675",
     "0.9125",
@@ -266,6 +273,7 @@ SOURCES: tuple[Callable[[], Iterator[Split]], ...] = (
     jumps,
     crises,
     maps_of_several_states,
+    kinds_of_several_states,
 )
 """Where splits come from."""
 

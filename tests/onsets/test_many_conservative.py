@@ -83,6 +83,22 @@ def test_chirikovs_fixed_point() -> None:
     assert_is(found[0], Fraction(4), Kind.FLIP, 1, 2)
 
 
+def test_an_asymmetric_cycle_of_the_standard_map() -> None:
+    """The 2-cycle that has lost its symmetry flips at 2 sqrt(1 + pi^2) (exact; check values, section 5)."""
+    system = own_system({"x": "x + y + r*sin(x)", "y": "y + r*sin(x)"}, "-4", "4")
+    onset = click(system, "6.595", "0.05", observed="1.9", height="2")[0]
+    with workdps(40):
+        value = Fraction(mp.nstr(2 * mp.sqrt(1 + mp.pi**2), 36))
+    assert_is(onset, value, Kind.FLIP, 2, 4)
+
+
+@pytest.mark.parametrize(("near", "period"), [("4.1204", 4), ("4.13436", 8)])
+def test_clicks_on_later_levels(near: str, period: int) -> None:
+    """No orbit settles there: the doubled cycles are reached from the ones they split from."""
+    (onset,) = click(conservative_henon(), near, "0.001")
+    assert (onset.kind, onset.period_before, onset.status) == (Kind.FLIP, period, Status.PROVED)
+
+
 def test_damaged_claims_are_refused(doubled: Onset) -> None:
     system = conservative_henon()
     finish(verify_onset_many(system, doubled))

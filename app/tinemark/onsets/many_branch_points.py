@@ -150,7 +150,7 @@ def _proved(
         except SwitchingTouched as error:
             return error.message
         except NotFound as error:
-            return f"{NO_IDENTITY} ({error})"
+            return f"more meets there than two branches that cross: {error}"
         except NotProved as error:
             if error.refuted:
                 return error.reason

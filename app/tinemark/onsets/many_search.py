@@ -10,6 +10,7 @@ import numpy as np
 from tinemark.onsets.cycle_map import CycleMap, Floats
 from tinemark.onsets.many_cycles import (
     Cycle,
+    condensed,
     least_period,
     multipliers,
     newton,
@@ -22,17 +23,24 @@ from tinemark.onsets.results import Step
 OFFSETS = (0.0, 0.004, -0.004, 0.012, -0.012, 0.03, -0.03, 0.07, -0.07, 0.15, -0.15, 0.3, -0.3, 0.5, -0.5)
 """Where orbits are settled, in widths of the view from the click."""
 SCATTERED_STARTS = 3
-STARTS_THERE = 4
+AMPLITUDES = (0.02, 0.05, 0.1, 0.005)
+"""Shares of the states' scale at which a doubled cycle is looked for beside the one it split from."""
+FAR_PAST = 30.0
+"""Multipliers below minus this belong to cycles whose doubled ones have long split again."""
+SHORT_PARENT, LONGEST_CHILD, MOST_CHILDREN = 4, 64, 40
+STARTS_THERE = 10
 THERE = 0.03
 """Farther on the screen than this a cycle is not the one that was clicked."""
 MANY_STARTS = 60
-SCATTERED_FOR_NEWTON = 24
+SCATTERED_FOR_NEWTON, SCATTERED_BESIDE = 24, 8
+BESIDE = (0.006, -0.006, 0.03, -0.03, 0.1, -0.1)
 FAR_FROM_STABLE = 4.0
 """Cycles with a multiplier larger than this are looked at last."""
 PASSES = 1e-8
 """An orbit that ends closer than this to a cycle has settled on it."""
-ATTRACTING = 1e-3
-"""Multipliers closer to 1 than this do not show that orbits settle on a cycle."""
+CONTRACTING = 1e-3
+"""Volumes that shrink by less than this along a cycle do not show that orbits settle."""
+LONGEST_BY_CHANCE = 6
 TRANSIENT, SLICES = 1500, 30
 LONGEST_PERIOD = 128
 TOLERANCES = (1e-9, 1e-6, 1e-4, 3e-3)
@@ -85,11 +93,20 @@ def cycles_around(float_map: CycleMap, place: Place, scales: Floats) -> Generato
         for guess, r in _close_returns(history, lanes, scales):
             _keep(found, _polished(float_map, guess, r, scales), scales)
         yield Step("looking for cycles that orbits come close to")
-    if not any(_attracts(float_map, cycle) for cycle in found):
-        # Nothing settles, as where the map preserves areas: Newton's method from scattered places.
+    if not any(_contracts(float_map, cycle) for cycle in found):
+        # Nothing settles, as where the map preserves areas: Newton's method from scattered places. What
+        # orbits came close to is chance, and long cycles among it are not what was aimed at.
+        found = [cycle for cycle in found if cycle.period <= LONGEST_BY_CHANCE]
         for cycle in scattered_cycles(float_map, place.r, scales):
             _keep(found, cycle, scales)
             yield Step("looking for cycles from scattered starts")
+        # A click just off a fold has none of its cycles at its own parameter value.
+        for offset in BESIDE:
+            starts, r = _starts(float_map, SCATTERED_BESIDE), place.r + offset * place.width
+            for cycle in _newton_from(float_map, starts, r, scales, (1, 2)):
+                _keep(found, cycle, scales)
+            yield Step("looking for cycles from scattered starts")
+        yield from _with_children(float_map, found, scales)
     nearest = sorted(found, key=lambda cycle: abs(cycle.r - place.r))[:PARENTS_OF]
     for cycle in nearest:
         for parent in parents(float_map, cycle, scales):
@@ -102,8 +119,9 @@ def _passes(cycle: Cycle, state: Floats, scales: Floats) -> bool:
     return bool(np.min(np.max(np.abs(cycle.points - state) / scales, axis=1)) < PASSES)
 
 
-def _attracts(float_map: CycleMap, cycle: Cycle) -> bool:
-    return max(map(abs, multipliers(float_map, cycle)), default=np.inf) < 1 - ATTRACTING
+def _contracts(float_map: CycleMap, cycle: Cycle) -> bool:
+    """Whether volumes shrink along a cycle."""
+    return abs(float(np.prod(np.abs(multipliers(float_map, cycle))))) < 1 - CONTRACTING
 
 
 def _order(float_map: CycleMap, place: Place, cycle: Cycle) -> tuple[bool, float, int]:
@@ -132,6 +150,40 @@ def parents(float_map: CycleMap, cycle: Cycle, scales: Floats) -> Iterator[Cycle
             return
         yield parent
         cycle = parent
+
+
+def _with_children(float_map: CycleMap, found: list[Cycle], scales: Floats) -> Generator[Step, None, None]:
+    """Add the doubled cycles beside those past a flip, and so on: where nothing settles none else does it."""
+    waiting = [cycle for cycle in found if cycle.period <= SHORT_PARENT]
+    for _ in range(MOST_CHILDREN):
+        if not waiting:
+            return
+        child = _child(float_map, waiting.pop(0), scales)
+        yield Step("looking for cycles that split off")
+        if child is not None and child.period <= LONGEST_CHILD:
+            before = len(found)
+            _keep(found, child, scales)
+            waiting += found[before:]
+
+
+def _child(float_map: CycleMap, cycle: Cycle, scales: Floats) -> Cycle | None:
+    """The doubled cycle that has split off a cycle with a multiplier a little below -1."""
+    parts = condensed(float_map, cycle.points, cycle.r)
+    if not np.isfinite(parts.monodromy).all():
+        return None
+    values, vectors = np.linalg.eig(parts.monodromy)
+    past = [at for at, value in enumerate(values) if abs(value.imag) < 1e-9 and -FAR_PAST < value.real < -1]
+    if not past:
+        return None
+    n = float_map.size
+    along = parts.blocks[:, :, :n] @ vectors[:, past[0]].real
+    along = along / np.max(np.abs(along) / scales)
+    for amplitude in AMPLITUDES:
+        guess = np.concatenate((cycle.points + amplitude * along, cycle.points - amplitude * along))
+        child = _polished(float_map, guess, cycle.r, scales)
+        if child is not None and child.period == 2 * cycle.period:
+            return child
+    return None
 
 
 def scattered_cycles(
