@@ -127,6 +127,14 @@ def begin_flow(W: Memory, lanes: int) -> None:
 
 
 @jit
+def end_scale(W: Memory, lanes: int) -> None:
+    """SCALE for the rates at the new point, of a landing lane by the section's rate there."""
+    for k in range(lanes):
+        landing, steepness = get(W, LANDING + k), 1.0 / get(W, SLOPE + k)
+        put(W, SCALE + k, steepness if landing > 0.5 else 1.0)
+
+
+@jit
 def judge(W: Memory, lanes: int, checked: int, order: int) -> None:
     """What each lane's error means: whether the step is allowed, and by which factor to change it.
 

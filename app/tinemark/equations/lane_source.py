@@ -84,24 +84,38 @@ class Stepper:
         block = self.rows * LANES
         self.X, self.F, self.Y, self.K = (place.BLOCKS + block * k for k in range(4))
         self.size = self.K + block * (table.count + 1)
+        # Where errors ask for the rates at the new point, a landing lane needs them in the section's terms.
+        self.rescaled = motion.section_slope is not None and any(
+            number == table.count for row in table.errors for number, _ in row
+        )
+        self.E = self.size
+        self.size += block if self.rescaled else 0
 
     def operations(self) -> dict[str, str]:
         """Operations of a step, for the head of the module."""
         stages = tuple(self.terms(row) for row in (*self.table.stages[1:], self.table.weights))
         places = (place.FIRST_SUM, place.SECOND_SUM)
-        sums = tuple(zip(places, (self.terms(row) for row in self.table.errors), strict=False))
+        sums = tuple(zip(places, (self.error_terms(row) for row in self.table.errors), strict=False))
         pairs = ((self.X, self.Y), (self.F, self.stage(self.table.count)))
         return {
             "nodes": f"{(*self.table.nodes, 1.0)!r}",
             "points": f"stage_points({self.rows}, {self.X}, {self.Y}, {place.STEP}, {stages!r})",
             "errors": f"error_sums({self.checked}, {self.X}, {self.Y}, {place.MOVED}, {sums!r})",
             "first_stage": f"scaled_rows({self.rows}, {self.K}, {self.F}, {place.SCALE})",
+            "end_rates": f"scaled_rows({self.rows}, {self.E}, {self.stage(self.table.count)}, {place.SCALE})",
             "accepted": f"chosen_rows({self.rows}, {pairs!r}, {place.ACCEPTED})",
         }
 
     def terms(self, row: Row) -> Row:
         """A sum of stages as one of places."""
         return tuple((self.stage(stage), weight) for stage, weight in row)
+
+    def error_terms(self, row: Row) -> Row:
+        """The same for a sum of errors."""
+        end = self.stage(self.table.count)
+        return tuple(
+            (self.E if self.rescaled and at == end else at, weight) for at, weight in self.terms(row)
+        )
 
     def stage(self, number: int) -> int:
         """Place of a stage's rates."""
@@ -181,4 +195,5 @@ class Stepper:
         if not self.motion.is_driven:
             scaled = "scaling"
             lines.append(f"    scaling = 1.0 if s < {count} else 0.0")
-        return [*lines, *indented(1, self.rates(self.Y, "k", "node_of[s]", scaled))]
+        after = ["control.end_scale(W, lanes)", "end_rates(W, lanes)"] if self.rescaled else []
+        return [*lines, *indented(1, self.rates(self.Y, "k", "node_of[s]", scaled)), *after]
