@@ -55,8 +55,7 @@ def test_another_theme_reaches_every_widget_and_reads_no_sheet_anew(dressed, qtb
     monkeypatch.setattr(QApplication, "setStyleSheet", lambda *_: pytest.fail("the sheet was read anew"))
     for theme in (DARK, LIGHT, DARK):
         dressed(theme)
-        for _ in range(50):
-            qapp.processEvents()
+        qtbot.waitUntil(lambda: Dressing.of(qapp).is_done)
         folded.show()
         for edit in (seen, folded):
             assert edit.grab().toImage().pixelColor(edit.width() - 8, 6) == QColor(theme.raised)

@@ -7,13 +7,14 @@ from fractions import Fraction
 
 import numpy as np
 import pytest
-from PySide6.QtCore import QEvent, QObject, Qt
+from PySide6.QtCore import QObject, Qt
 from PySide6.QtGui import QKeyEvent
 from PySide6.QtWidgets import QApplication, QWidget
 
 from tinemark.density.request import SweepRule
 from tinemark.document.session import BUDGETS, PictureSettings
 from tinemark.systems.library import builtin_system
+from tinemark.window.dressing import Dressing
 from tinemark.window.guide_pages import guide_pages, key_table
 from tinemark.window.guide_panel import GuidePanel
 from tinemark.window.panel_plot import PanelAxis, round_ticks
@@ -96,6 +97,15 @@ def test_probe_empty_state(probe):
     assert "No probe yet" in probe._empty.text()
     probe.show_orbit(None, words="The orbit cannot be computed there.")
     assert probe._empty.text() == "The orbit cannot be computed there."
+
+
+def test_getting_ready_leaves_nothing_to_be_seen_and_an_orbit_as_it_is(probe):
+    probe.prepare()
+    assert not probe.series.plotItem.listDataItems() and not probe.returns.plotItem.listDataItems()
+    probe.show_orbit(orbit("logistic", "3.5"), parameter="r", value="3.5", observe="x", state="x")
+    drawn = [item.getData()[1].tolist() for item in probe.series.plotItem.listDataItems()]
+    probe.prepare()
+    assert [item.getData()[1].tolist() for item in probe.series.plotItem.listDataItems()] == drawn
 
 
 def test_one_state_orbit_has_curve_diagonal_cobweb_and_points(probe):
@@ -375,12 +385,11 @@ def test_missing_pages_are_said(qtbot, tmp_path):
 # --- all of them in both themes
 
 
-def test_panels_follow_the_theme(qtbot, dressed, probe, settings, guide):
+def test_panels_follow_the_theme(qtbot, qapp, dressed, probe, settings, guide):
     probe.show_orbit(orbit("logistic", "3.5"), parameter="r", value="3.5", observe="x", state="x")
     for theme in (DARK, LIGHT):
         dressed(theme)
-        QApplication.sendPostedEvents(None, QEvent.Type.PaletteChange)
-        QApplication.processEvents()
+        qtbot.waitUntil(lambda: Dressing.of(qapp).is_done)
         for panel in (probe, settings, guide):
             assert not panel.grab().isNull()
         assert probe.series.backgroundBrush().color().name() == theme.plot

@@ -253,9 +253,14 @@ class ProbePanel(QWidget):
             self.words.set_words(self._words)
 
     def prepare(self) -> None:
-        """Make what the first orbit is drawn with."""
-        self.series.plotItem.make_items(2)
-        self.returns.plotItem.make_items(4)
+        """Make what the first orbit is drawn with, and draw one: symbols are made on their first use."""
+        if self._orbit is not None:
+            return
+        values = np.linspace(0.0, 1.0, SETTLED_STEPS)
+        self._draw_series(values, range(SETTLED_STEPS))
+        self._draw_returns(values, (values, values))
+        for plot in (self.series, self.returns):
+            plot.plotItem.clear()
 
     def showEvent(self, event: QShowEvent) -> None:
         """Draw what came while the panel was folded."""
