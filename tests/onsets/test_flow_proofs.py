@@ -83,10 +83,10 @@ ROESSLER = system({"x": "-y - z", "y": "x + 0.2*y", "z": "0.2 + z*(x - r)"}, cro
     ("sign", "criticality"), [("-", Criticality.SUPERCRITICAL), ("+", Criticality.SUBCRITICAL)]
 )
 def test_an_exact_flip_is_proved(sign: str, criticality: Criticality) -> None:
-    found = finish(sharpened(half_turns(sign), estimate(Kind.FLIP, "0.3000000003", x="0", y="0"), 20))
+    found = finish(sharpened(half_turns(sign), estimate(Kind.FLIP, "0.3000000003", x="0", y="0"), 10))
     assert found.status is Status.PROVED and found.reason == ""
     assert Fraction(found.lower) <= Fraction(3, 10) <= Fraction(found.upper)
-    assert found.half_width < Fraction(1, 10**21)
+    assert found.half_width < Fraction(1, 10**11)
     assert found.criticality is criticality
     assert dict(found.evidence)["crosses -1 with speed"].startswith("-1.0000")
     assert (found.period_before, found.period_after) == (1, 2)
@@ -129,8 +129,8 @@ def test_the_first_flip_of_a_driven_oscillator_is_proved() -> None:
 
 def test_the_first_flip_of_a_free_running_system_is_proved() -> None:
     # Roessler's equations at a = b = 0.2: c = 2.832445027862 by variational equations in doubles.
-    rough = estimate(Kind.FLIP, "2.832445027862", x="5.108149175152", y="0", z="1.638400688946")
-    found = finish(sharpened(ROESSLER, rough, 12))
+    rough = estimate(Kind.FLIP, "2.8324450278625", x="5.1081491751523568", y="0", z="1.6384006889458855")
+    found = finish(sharpened(ROESSLER, rough, 8))
     assert found.status is Status.PROVED and found.criticality is Criticality.SUPERCRITICAL
     assert Fraction(found.lower) < Fraction("2.832445027862538913673846135653502") < Fraction(found.upper)
     assert dict(found.states)["y"].strip("0.") == ""
@@ -138,27 +138,28 @@ def test_the_first_flip_of_a_free_running_system_is_proved() -> None:
 
 
 def test_a_period_that_is_not_the_least_is_refused() -> None:
-    # The flip of period 1 solves the equations for three strobes as well.
-    with pytest.raises(NotFound):
-        finish(sharpened(half_turns(), estimate(Kind.FLIP, "0.3000000003", period=3, x="0", y="0"), 12))
+    # The fold of steady states solves the equations for two strobes as well.
+    folding = system({"x": "r - 0.3 - (x - 0.5)**2"}, every="1")
+    with pytest.raises(NotFound, match="least period"):
+        finish(sharpened(folding, estimate(Kind.FOLD, "0.3000000003", period=2, x="0.50000001"), 12))
 
 
 def test_no_onset_where_there_is_none() -> None:
     for damaged in (
-        estimate(Kind.FLIP, "0.35", x="0", y="0"),
+        estimate(Kind.FLIP, "0.35", x="0", y="0"),  # Newton would have to leave its reach
         estimate(Kind.FOLD, "0.3000000003", x="0", y="0"),
         estimate(Kind.NEIMARK_SACKER, "0.3000000003", x="0", y="0"),
         estimate(Kind.PITCHFORK, "0.3000000003", x="0", y="0"),
         replace(estimate(Kind.FLIP, "0.3000000003", x="0", y="0"), states=()),
     ):
         with pytest.raises(NotFound):
-            finish(sharpened(half_turns(), damaged, 12))
+            finish(sharpened(half_turns(), damaged, 6))
 
 
 def test_a_damaged_solution_is_refused_or_still_enclosed() -> None:
     integrated = integrated_map(half_turns(), "r")
-    bits, scales = 90, np.array([1.0, 1.0])
-    for off in (1e-3, 1e-6, 1e-12):
+    bits, scales = 70, np.array([1.0, 1.0])
+    for off in (1e-3, 1e-9):
         with precision(bits):
             place = start_place(np.zeros((1, 2)), np.array([[1.0, 0.0]]), 0.3 + off, None, bits)
         try:
@@ -169,14 +170,14 @@ def test_a_damaged_solution_is_refused_or_still_enclosed() -> None:
 
 
 def test_rates_that_do_not_repeat_prove_nothing() -> None:
-    # Strobed at a time that is not the drive's: an estimate may be had, a proof may not.
-    drifting = system({"x": "v", "v": "-0.3*v + x - x**3 + r*cos(1.2*t)"}, every="5.2359877559")
+    # Strobed at a time that is not the drive's: an estimate may be had (by scipy's integrator and solver:
+    # x = -0.00389609, r = -0.08414377), a proof may not.
+    drifting = system({"x": "r - x*x + 0.1*cos(t)"}, every="1")
     assert not repeats(integrated_map(drifting, "r").rates)
-    points, vectors = np.array([[0.4075755, 0.3226140]]), np.array([[0.9083669, 0.4181742]])
-    arguments = (Kind.FLIP, points, vectors, 0.26558178, 10, np.array([2.0, 2.0]), 1e-3)
+    arguments = (Kind.FOLD, np.array([[-0.0039]]), np.array([[1.0]]), -0.08414, 15, np.array([1.0]), 1e-3)
     found = finish(more_digits(drifting, "r", *arguments))
     assert found.proof is None and found.reason == NOT_REPEATING
-    assert abs(float(found.value) - 0.2655817860) < 1e-8 and found.half < Fraction(1, 10**10)
+    assert abs(float(found.value) + 0.08414377) < 1e-8 and found.half < Fraction(1, 10**16)
 
 
 @pytest.mark.parametrize(

@@ -41,7 +41,7 @@ from tinemark.equations.taylor_arc import LOW_BITS, Arc, LowArc, arc_from
 from tinemark.equations.taylor_rates import Rates, rate_functions, section_functions
 from tinemark.systems.errors import Unbounded
 
-GUARD_BITS = 24
+GUARD_BITS = 16
 MOST_STEPS = 20_000
 """Steps after which an orbit that has not come back is given up."""
 FINEST_STEP = 2.0**-24

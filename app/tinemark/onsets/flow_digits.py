@@ -28,8 +28,10 @@ from tinemark.onsets.results import Kind, Step
 from tinemark.systems.errors import SwitchingTouched, Unbounded
 from tinemark.systems.system import System
 
-GUARD_BITS = 40
+GUARD_BITS = 30
 """Bits beyond the digits wanted: what the integration loses it makes up for by itself."""
+LEAST_BITS = 96
+"""A box must be small for what is shown on all of it: fewer bits would not pay."""
 SECOND_PRECISION_BITS = 40
 SAFETY = 4
 """Factor on the observed disagreement and the last Newton step, for 95 % coverage or better."""
@@ -107,7 +109,7 @@ def more_digits(
     """
     integrated = integrated_map(system, parameter)
     places = decimal_places(max(abs(Fraction(r)), LEAST_SIZE), digits + GUARD_DIGITS)
-    bits = math.ceil(places * math.log2(10)) + GUARD_BITS
+    bits = max(LEAST_BITS, math.ceil(places * math.log2(10)) + GUARD_BITS)
     try:
         start = start_place(points, vectors, r, angle, bits)
         first = yield from polish(integrated, kind, start, bits, scales, reach)
@@ -157,9 +159,10 @@ def _proof(
             reason = error.reason
             continue
         low, high = proof.parameter
-        if high - low <= Fraction(1, 10) ** (places + 1):
+        if high - low > Fraction(1, 10) ** (places + 1):
+            reason = "the enclosure stayed wider than the digits asked for"
+        elif not proof.claims.degenerate or attempt == PROOF_ATTEMPTS - 1:
             return proof, "", first
-        reason = "the enclosure stayed wider than the digits asked for"
     return None, reason, first
 
 
