@@ -33,6 +33,13 @@ def test_equal_operations_are_kept_once_and_unused_ones_not_at_all() -> None:
     assert [op.name for op in program.ops].count("scaled") == 1
 
 
+def test_depth_is_that_of_the_longest_chain() -> None:
+    program = lane_program(
+        ["a = x + 1.0", "b = a * a", "c = x * 3.0", "y = b - c"], ["x"], ["y"], functions()
+    )
+    assert (program.length, program.depth) == (4, 3)
+
+
 def test_only_a_formulas_own_arithmetic_may_be_fused() -> None:
     program = lane_program(["y = lane_sin(x * 3.0)"], ["x"], ["y"], functions())
     assert [op.name for op in program.ops if op.fusible] == ["mul"]

@@ -15,7 +15,7 @@ from numba.core import types
 from numba.extending import intrinsic
 
 from tinemark.systems import lane_math, lane_turns
-from tinemark.systems.lane_code import Builder, Code, splat, vector, write_program
+from tinemark.systems.lane_code import Builder, Code, sliced, splat, vector, write_program
 from tinemark.systems.lane_code import intrinsic as of_llvm
 from tinemark.systems.lane_program import LaneProgram, lane_program
 from tinemark.systems.lane_wide import WIDE
@@ -28,8 +28,14 @@ BUFFER = 128
 its steps were divided into passes."""
 
 TILE = 16
-"""Columns whose cells lie side by side in the buffer, and lanes that are moved together: two registers, so
-that a chain of operations has company, and few enough values to need no memory."""
+"""Columns whose cells lie side by side in the buffer."""
+
+_NARROW, _WIDE, _DEEP = 16, LANES, 28
+"""Lanes that are moved together. Two registers give a chain of operations company enough, since the next
+ones follow soon, and their values need no memory; a chain so long needs all there are."""
+
+_RESIDENT_STATES = 2
+"""States of a block that fit the registers beside what is being calculated."""
 
 GROUP = 4
 """Columns counted together: what they count into fits the nearest memory."""
@@ -131,14 +137,16 @@ class _Writer:
         self.builder, self.program, self.names = builder, program, names
         self.lanes, self.fixed = arrays["lanes"].data, arrays["fixed"].data
         self.counting = counting
+        self.width = _NARROW if program.depth < _DEEP else _WIDE
+        self.parts = LANES // self.width
         half = self.whole(_TILES * BUFFER * TILE)
         noted = arrays["noted"].data
         self.buffer = self.at(noted, builder.mul(which, half))
         self.other = self.at(noted, builder.mul(builder.xor(which, self.whole(1)), half))
         self.row = builder.extract_value(arrays["counts"].shape, 1)
         self.counts = self.at(arrays["counts"].data, builder.mul(first, self.row))
-        self.outside = splat(builder, builder.trunc(builder.sub(self.row, self.whole(1)), _WHOLE), TILE)
-        self.scale, self.offset = splat(builder, scale, TILE), splat(builder, offset, TILE)
+        self.outside = splat(builder, builder.trunc(builder.sub(self.row, self.whole(1)), _WHOLE), self.width)
+        self.scale, self.offset = splat(builder, scale, self.width), splat(builder, offset, self.width)
         self.cells: list[Code] = []
 
     @staticmethod
@@ -148,89 +156,95 @@ class _Writer:
     def at(self, pointer: Code, place: Code) -> Code:
         return self.builder.gep(pointer, [place])
 
-    def vector_at(self, row: int, tile: int) -> Code:
-        place = self.at(self.lanes, self.whole(row * LANES + tile * TILE))
-        return self.builder.bitcast(place, vector(_DOUBLE, TILE).as_pointer())
+    def vector_at(self, row: int, part: int) -> Code:
+        place = self.at(self.lanes, self.whole(row * LANES + part * self.width))
+        return self.builder.bitcast(place, vector(_DOUBLE, self.width).as_pointer())
 
-    def load(self, row: int, tile: int) -> Code:
-        return self.builder.load(self.vector_at(row, tile), align=64)
+    def load(self, row: int, part: int) -> Code:
+        return self.builder.load(self.vector_at(row, part), align=64)
 
-    def store(self, value: Code, row: int, tile: int) -> None:
-        self.builder.store(value, self.vector_at(row, tile), align=64)
+    def store(self, value: Code, row: int, part: int) -> None:
+        self.builder.store(value, self.vector_at(row, part), align=64)
 
     def write(self, begin: Code, end: Code) -> None:
         builder = self.builder
         # The compiler cannot know that counting leaves the lanes alone, and would store and load them in
-        # each step. One state is few enough values to stay in registers.
-        resident = self.names.states == 1
+        # each step.
+        resident = range(self.names.states if self.names.states <= _RESIDENT_STATES else 0)
         before = builder.block
-        held = [self.load(0, tile) for tile in range(_TILES)] if resident else []
+        places = [(row, part) for row in resident for part in range(self.parts)]
+        held = [self.load(*place) for place in places]
         loop = builder.append_basic_block("steps")
         after = builder.append_basic_block("after")
         builder.branch(loop)
         builder.position_at_end(loop)
         step = builder.phi(_LONG)
         step.add_incoming(begin, before)
-        moving = [builder.phi(value.type) for value in held]
-        for value, start in zip(moving, held, strict=True):
-            value.add_incoming(start, before)
+        moving = {place: builder.phi(value.type) for place, value in zip(places, held, strict=True)}
+        for place, start in zip(places, held, strict=True):
+            moving[place].add_incoming(start, before)
         if self.counting:
             self.aim(step)
-        moved = [self.tile(tile, step, moving[tile] if resident else None) for tile in range(_TILES)]
+        moved: dict[tuple[int, int], Code] = {}
+        for part in range(self.parts):
+            results = self.part(part, step, {f"x{row}": moving[row, part] for row in resident})
+            moved |= {(row, part): results[f"y{row}"] for row in resident}
         following = builder.add(step, self.whole(1))
         step.add_incoming(following, builder.block)
-        for value, result in zip(moving, moved, strict=resident):
-            value.add_incoming(result, builder.block)
+        for place in places:
+            moving[place].add_incoming(moved[place], builder.block)
         builder.cbranch(builder.icmp_signed("<", following, end), loop, after)
         builder.position_at_end(after)
-        for tile in range(_TILES if resident else 0):
-            self.store(moved[tile], 0, tile)
+        for place in places:
+            self.store(moved[place], *place)
 
-    def tile(self, tile: int, step: Code, state: Code | None) -> Code:
-        """One step of one tile; gives the next first state."""
+    def part(self, part: int, step: Code, held: Mapping[str, Code]) -> dict[str, Code]:
+        """One step of some lanes; `held` are the states that are not in memory."""
         builder, names = self.builder, self.names
-        inputs = {name: self.load(row, tile) for row, name in enumerate(names.rows) if row or state is None}
-        if state is not None:
-            inputs["x0"] = state
+        inputs = {name: self.load(row, part) for row, name in enumerate(names.rows) if name not in held}
+        inputs |= held
         for i in range(names.fixed):
-            inputs[f"c{i}"] = splat(builder, builder.load(self.at(self.fixed, self.whole(i))), TILE)
+            inputs[f"c{i}"] = splat(builder, builder.load(self.at(self.fixed, self.whole(i))), self.width)
         done = 0
 
         def between() -> None:
             nonlocal done
             done += 1
-            while self.counting and len(self.cells) > self.remaining(tile, done):
+            while self.counting and len(self.cells) > self.remaining(part, done):
                 self.count(self.cells.pop())
 
-        results = write_program(builder, self.program, inputs, TILE, between)
+        results = write_program(builder, self.program, inputs, self.width, between)
         for row, name in names.stored:
-            if row or state is None:
-                self.store(results[name], row, tile)
+            if names.rows[row] not in held:
+                self.store(results[name], row, part)
         if names.factor:
             row = len(names.rows)
-            self.store(builder.fmul(self.load(row, tile), results["d"], flags=("nsz",)), row, tile)
-        self.note(results["seen"], tile, step)
-        return results["y0"]
+            self.store(builder.fmul(self.load(row, part), results["d"], flags=("nsz",)), row, part)
+        self.note(results["seen"], part, step)
+        return results
 
-    def remaining(self, tile: int, done: int) -> int:
-        """Cells that are still to be counted in this step once so much of a tile is written."""
+    def remaining(self, part: int, done: int) -> int:
+        """Cells that are still to be counted in this step once so much of a part is written."""
         length = max(self.program.length, 1)
-        return _COUNTED - (_COUNTED * (tile * length + done)) // (_TILES * length)
+        return _COUNTED - (_COUNTED * (part * length + done)) // (self.parts * length)
 
-    def note(self, seen: Code, tile: int, step: Code) -> None:
+    def note(self, seen: Code, part: int, step: Code) -> None:
         builder = self.builder
         fused = ("contract", "nsz")
         cell = builder.fadd(builder.fmul(seen, self.scale, flags=fused), self.offset, flags=fused)
-        whole = builder.fptosi(cell, vector(_WHOLE, TILE))
+        whole = builder.fptosi(cell, vector(_WHOLE, self.width))
         # Out of range the conversion gives no value at all in the compiler's eyes; frozen, it is some
         # number, and the clamp brings it inside.
         frozen = ir.instructions.Instruction(builder.block, whole.type, "freeze", [whole])
         builder._insert(frozen)  # noqa: SLF001 - llvmlite has no builder method for it
-        clamped = of_llvm(builder, f"llvm.umin.v{TILE}i32", whole.type, [frozen, self.outside])
-        row = builder.add(self.whole(tile * BUFFER), step)
-        place = self.at(self.buffer, builder.mul(row, self.whole(TILE)))
-        place = builder.bitcast(place, vector(_SHORT, TILE).as_pointer())
-        builder.store(builder.trunc(clamped, vector(_SHORT, TILE)), place, align=2 * TILE)
+        clamped = of_llvm(builder, f"llvm.umin.v{self.width}i32", whole.type, [frozen, self.outside])
+        short = builder.trunc(clamped, vector(_SHORT, self.width))
+        for first in range(0, self.width, TILE):
+            tile = (part * self.width + first) // TILE
+            row = builder.add(self.whole(tile * BUFFER), step)
+            place = self.at(self.buffer, builder.mul(row, self.whole(TILE)))
+            place = builder.bitcast(place, vector(_SHORT, TILE).as_pointer())
+            builder.store(sliced(builder, short, range(first, first + TILE)), place, align=2 * TILE)
 
     def aim(self, step: Code) -> None:
         """Find what is counted in a step: some steps of one group of columns."""

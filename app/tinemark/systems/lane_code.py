@@ -141,7 +141,7 @@ def _scaled(builder: Builder, x: Code, exponent: Code) -> Code:
 def _by_registers(builder: Builder, write: Callable[..., Code], parts: list[Code], width: int) -> Code:
     """An operation that exists for whole registers only: vectors taken apart, and put together again."""
     pieces = [
-        write(builder, *(_slice(builder, part, range(first, first + REGISTER)) for part in parts))
+        write(builder, *(sliced(builder, part, range(first, first + REGISTER)) for part in parts))
         for first in range(0, width, REGISTER)
     ]
     while len(pieces) > 1:
@@ -149,7 +149,8 @@ def _by_registers(builder: Builder, write: Callable[..., Code], parts: list[Code
     return pieces[0]
 
 
-def _slice(builder: Builder, whole: Code, places: range) -> Code:
+def sliced(builder: Builder, whole: Code, places: range) -> Code:
+    """Some lanes of a vector."""
     mask = ir.Constant(vector(ir.IntType(32), len(places)), list(places))
     return builder.shuffle_vector(whole, ir.Constant(whole.type, ir.Undefined), mask)
 

@@ -86,6 +86,15 @@ class LaneProgram:
         """Operations that something is done for."""
         return sum(op.name not in ("input", "constant") for op in self.ops)
 
+    @property
+    def depth(self) -> int:
+        """Operations of the longest chain in which each waits for the one before."""
+        depths: list[int] = []
+        for op in self.ops:
+            before = max((depths[i] for i in op.operands), default=0)
+            depths.append(before + (op.name not in ("input", "constant")))
+        return max(depths, default=0)
+
 
 def lane_program(
     statements: Sequence[str],
