@@ -16,9 +16,12 @@ from math import isqrt
 from tinemark.verify.formula import COMPARISONS, Program
 from tinemark.verify.quotients import Polynomial, Quotient, Untold, generator, number, reduced
 from tinemark.verify.switches import Sides, always, switch_of
+from tinemark.verify.watching import Watch
 
 ODD = ("sin", "asin", "atan", "sinh", "tanh")
 EVEN = ("cos", "cosh")
+UNITS_A_TERM = 0.05
+"""Work of one product of terms, in the units of `watching`."""
 AT_ZERO = {"sin": 0, "cos": 1, "asin": 0, "atan": 0, "sinh": 0, "cosh": 1, "tanh": 0, "exp": 1, "sqrt": 0}
 
 
@@ -34,6 +37,7 @@ class Atom:
 class Field:
     """Quotients in a growing list of generators."""
 
+    watch: Watch = field(default_factory=Watch)
     atoms: list[Atom] = field(default_factory=list)
 
     def named(self, name: str) -> Quotient:
@@ -106,6 +110,7 @@ class Field:
                 return -first if side < 0 else first
             return first if (side < 0) == (op == "min") else at(step.args[1])
         args = [at(arg) for arg in step.args]
+        self._spend(*args, power=abs(int(step.value)) if op == "power" else 1)
         match op:
             case "add":
                 return args[0] + args[1]
@@ -128,6 +133,13 @@ class Field:
             case "atan2":
                 raise Untold
         return self.function(op, args[0])
+
+    def _spend(self, *args: Quotient, power: int = 1) -> None:
+        """Count the work of an operation, by the terms that it has to do with."""
+        terms = 1
+        for arg in args:
+            terms *= len(arg.above) + len(arg.below)
+        self.watch.spend(UNITS_A_TERM * (terms + power * power))
 
     def function(self, name: str, u: Quotient) -> Quotient:
         """A function of one argument."""
@@ -225,6 +237,7 @@ class Field:
 
     def slope(self, u: Quotient, name: str) -> Quotient:
         """Derivative with respect to a name; `Untold` where a function has none here."""
+        self._spend(u, u)
         above, below = self._slope_of(u.above, name), self._slope_of(u.below, name)
         # (a/b)' = (a' - (a/b) b') / b
         one: Polynomial = {(): Fraction(1)}
@@ -281,6 +294,7 @@ class Field:
 
     def replaced(self, u: Quotient, values: Mapping[str, Quotient]) -> Quotient:
         """The same with names replaced."""
+        self._spend(u, u)
         return self.tidied(self._replaced(u.above, values) / self._replaced(u.below, values))
 
     def _replaced(self, polynomial: Polynomial, values: Mapping[str, Quotient]) -> Quotient:

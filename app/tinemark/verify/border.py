@@ -98,7 +98,9 @@ def prove(
         if claim.consequence:
             names = (one.state, one.parameter)
             constants = {name: value for name, value in constants.items() if name not in names}
-            check_words(one.program, (border.place, border.level), names, constants, claim.consequence)
+            check_words(
+                one.program, (border.place, border.level), names, constants, claim.consequence, one.watch
+            )
         return
     (low, high), room = sides[1], 100 * (numbers.upper - numbers.lower)
     if low - room <= numbers.value <= high + room:
@@ -284,7 +286,7 @@ def _is_continuous(border: Border, here: Round, there: Round) -> bool:
     if uses <= {"min", "max", "abs"}:
         # Smaller, larger and size are continuous wherever what they take is.
         return True
-    algebra = Field()
+    algebra = Field(border.one.watch)
     values = {name: algebra.named(name) for name in (state, border.one.parameter)}
     try:
         pieces = [algebra.value(program, values, side.first_sides) for side in (here, there)]

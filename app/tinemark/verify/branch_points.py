@@ -155,7 +155,7 @@ def _known_cycle(
     """The curve of the cycle's first point; a cycle of more points must stay at numbers."""
     if period > LONGEST_KNOWN:
         return None
-    field = Field()
+    field = Field(one.watch)
     values = {one.parameter: field.named(one.parameter)}
     for first in curves_through(one, box[0], box[1], bits):
         try:
@@ -218,7 +218,7 @@ def _prove_known(
 
 def _is_straight(one: OneState, curve: Curve, sides: Sides) -> bool:
     """Whether the second derivative is zero along the curve, identically."""
-    field = Field()
+    field = Field(one.watch)
     values = {name: field.named(name) for name in (one.state, one.parameter)}
     try:
         bend = field.slope(field.slope(field.value(one.program, values, sides), one.state), one.state)
@@ -282,7 +282,7 @@ def _mirror(
 
 def _commutes(one: OneState, total: Curve, pairs: list[tuple[Sides, Sides]]) -> bool:
     """Whether f(t - x) = t - f(x) identically, for the pieces at a point and at its mirror image."""
-    field = Field()
+    field = Field(one.watch)
     values = {name: field.named(name) for name in (one.state, one.parameter)}
     try:
         t = total.exact(field, values)

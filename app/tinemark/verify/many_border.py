@@ -149,6 +149,7 @@ def prove(
                 names,
                 {name: value for name, value in constants.items() if name not in names},
                 claim.consequence,
+                many.watch,
             )
         return
     if touched is not None:
@@ -309,7 +310,7 @@ def _is_continuous(
     if uses <= {"min", "max", "abs"}:
         # Smaller, larger and size are continuous wherever what they take is.
         return True
-    algebra = Field()
+    algebra = Field(many.watch)
     values = {name: algebra.named(name) for name in (*many.states, many.parameter)}
     try:
         pieces = []

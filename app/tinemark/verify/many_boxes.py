@@ -23,7 +23,7 @@ CUTS = 4
 NARROWER = 4
 """How often claims are tried to be told on a narrower box."""
 MOST_EXTRA = 400
-"""Steps of a cycle for which precision is added, two bits each, once the onset is known to be there."""
+"""Steps of a cycle for which precision is added, two bits each, where claims are not told at once."""
 NEWTON_STEPS = 6
 
 
@@ -62,8 +62,8 @@ def see_claims(
     """
     is_within(numbers, found[equations.parameter])
     reason = ""
-    for _ in range(NARROWER):
-        bits += 2 * min(period, MOST_EXTRA) + 64
+    for attempt in range(NARROWER):
+        bits += 64 + attempt * 2 * min(period, MOST_EXTRA)
         try:
             found = krawczyk(equations, found, bits)
             if not is_within(numbers, found[equations.parameter]):

@@ -50,7 +50,7 @@ class ManyStates:
 
     def cost(self, bits: int, order: int) -> float:
         """Work of one step with derivatives up to an order."""
-        many_at_once = float((self.size + 1) ** order) / 2
+        many_at_once = float((self.size + 1) ** order) / 6
         return cost_of(self.operations + 4 * self.size**2, bits) * many_at_once
 
 

@@ -110,7 +110,7 @@ def exchanges(size: int) -> Iterator[Exchange]:
 
 def commutes(many: ManyStates, mirror: Mirror) -> bool:
     """Whether f(S x + c) = S f(x) + c for all states and parameter values, as far as algebra tells."""
-    field = Field()
+    field = Field(many.watch)
     try:
         names = [field.named(name) for name in many.states]
         parameter = {many.parameter: field.named(many.parameter)}
@@ -169,7 +169,7 @@ def plane_through(many: ManyStates, boxes: Sequence[Sequence[Interval]], bits: i
 
 
 def _staying(many: ManyStates, table: Sequence[Sequence[Constant | None]], fixed: Sequence[int]) -> list[int]:
-    field = Field()
+    field = Field(many.watch)
     names = {name: field.named(name) for name in (*many.states, many.parameter)}
     staying = []
     for place in fixed:
@@ -196,7 +196,7 @@ def area_factor(many: ManyStates) -> int:
     """1 or -1 where the derivative of a map of two states has that determinant everywhere; else 0."""
     if many.size != 2:
         return 0
-    field = Field()
+    field = Field(many.watch)
     names = {name: field.named(name) for name in (*many.states, many.parameter)}
     try:
         rows = [

@@ -12,7 +12,7 @@ from fractions import Fraction
 from typing import TypeAlias
 
 MOST_TERMS = 400
-MOST_PRODUCTS = 20_000
+MOST_PRODUCTS = 10_000
 MOST_BITS = 4000
 
 Monomial: TypeAlias = tuple[tuple[int, int], ...]

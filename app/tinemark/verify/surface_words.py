@@ -10,6 +10,7 @@ from tinemark.verify.algebra import Field
 from tinemark.verify.claims import NotCheckable, Part, Refused
 from tinemark.verify.formula import COMPARISONS, Program, parse
 from tinemark.verify.quotients import Quotient, Untold, number
+from tinemark.verify.watching import Watch
 
 _NAMED = re.compile(r"touches the surface (.+?) = (.+?)(?:;|$)")
 CUT_OFF = "\N{HORIZONTAL ELLIPSIS}"
@@ -21,6 +22,7 @@ def check_words(
     names: tuple[str, ...],
     constants: Mapping[str, Fraction],
     consequence: str,
+    watch: Watch,
 ) -> None:
     """See that an equation in words is that of the touched surface.
 
@@ -44,7 +46,7 @@ def check_words(
     if CUT_OFF in match[0]:
         raise NotCheckable("the words of the touched surface are cut off")
     place, level = touched
-    algebra = Field()
+    algebra = Field(watch)
     values = {name: algebra.named(name) for name in names}
     try:
         said = [algebra.value(parse(text, names, constants), values, {}) for text in match.groups()]
