@@ -89,6 +89,8 @@ def _why(error: Exception) -> str:
 
 
 def _exactly(ball: Any) -> tuple[object, ...]:
+    if not ball.is_finite():
+        raise NotProved("a state or the parameter is lost in rounding")
     return tuple(tuple(int(part) for part in side.man_exp()) for side in (ball.mid(), ball.rad()))
 
 
