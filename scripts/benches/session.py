@@ -44,7 +44,9 @@ def figures() -> Iterator[Figure]:
         told = session.stdout.read()
     if session.returncode != 0:
         raise RuntimeError("the session did not come to its end")
-    pauses, work = json.loads(told)
+    pauses, work, first_s, drawn_s = json.loads(told)
+    yield reading("from showing the window to a first look at its picture (ms)", first_s * 1e3)
+    yield reading("from showing the window to a picture out of compiled kernels (ms)", drawn_s * 1e3)
     for name, seconds in pauses.items():
         figure = f"longest pause of the window's thread while {name} (ms)"
         # The first picture of a session comes while modules are still being loaded; nothing is asked of it.
@@ -85,10 +87,11 @@ def _tree(pid: int) -> list[int]:
     return members
 
 
-def run_session() -> tuple[dict[str, float], dict[str, float]]:
-    """Longest pause of each part, and most processor time between two beats; in seconds. Runs in the
-    session's own process.
+def run_session() -> tuple[dict[str, float], dict[str, float], float, float]:
+    """Longest pause of each part, most processor time between two beats, and when the first look and the
+    first picture came; in seconds. Runs in the session's own process.
     """
+    import numpy as np
     from PySide6.QtCore import Qt, QTimer
 
     from tinemark.window.app import application, make_window
@@ -97,6 +100,15 @@ def run_session() -> tuple[dict[str, float], dict[str, float]]:
     window = make_window()
     window.resize(*SIZE)
     window.show()
+    began = time.perf_counter()
+    came: list[float] = []
+
+    def note(painted: Any) -> None:
+        # A picture out of the kernels knows exponents.
+        if not came or (len(came) == 1 and not np.isnan(painted.field.lyapunov).all()):
+            came.append(time.perf_counter() - began)
+
+    window.bridge.picture_ready.connect(note)
     window.workers.start()
     parts = _parts(window)
     name, ready = next(parts)
@@ -130,7 +142,7 @@ def run_session() -> tuple[dict[str, float], dict[str, float]]:
     beat.start(BEAT_MS)
     if app.exec() != 0:
         raise SystemExit(f"{name} did not come to its end")
-    return pauses, work
+    return pauses, work, came[0], came[-1]
 
 
 def _parts(window: Any) -> Iterator[tuple[str, Any]]:
