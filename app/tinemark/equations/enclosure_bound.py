@@ -30,7 +30,7 @@ PARAMETER_ROOM = 2.0**-10
 """Room of the parameter, in parts of it …"""
 LEAST_ROOM = 2.0**-20
 """… and no less than this."""
-TERMS = 6
+TERMS = 8
 """m: the order of the expansion whose rest is taken over the box."""
 ROUNDS = 6
 SHRINK = 0.75

@@ -47,7 +47,7 @@ MOST_STEPS = 20_000
 FINEST_STEP = 2.0**-24
 """Steps are whole multiples of this part of a driven system's period."""
 CLOCK_UNIT = 2.0**-40
-ORDER_SHARE = 0.5
+ORDER_SHARE = 0.55
 """Order by bits of precision: beyond, longer series cost more than longer steps save."""
 FLOOR = 2.0**-8
 """Reach of a-priori boxes, in parts of each state's size, below which they are not made …"""
