@@ -17,7 +17,7 @@ from tinemark.verify.intervals import ONE, Interval
 from tinemark.verify.newton import Side, image, inside
 
 ATTEMPTS, ATTEMPTS_LONG = 4, 2
-LONG = 2**15
+LONG = 2**12
 """Cycles from here on are tried less often with more bits, and not gone along to find what is to blame."""
 VALUE_UNITS = Fraction(3, 5)
 """How far, in units of its last digit, a value may lie from the onset: half, and the enclosure's width."""
