@@ -15,16 +15,20 @@ from tinemark.verify.compare import digest_of
 def claim_of(onset: Onset, **changes: Any) -> Claim:
     """The claim of an onset, spelled out field by field, some of them changed."""
     held = onset.certificate
-    paper = held and Paper(
-        system_text=held.system_text,
-        kind=held.kind,
-        period=held.period,
-        parameter=held.parameter,
-        criticality=held.criticality,
-        precision=held.precision,
-        parameter_box=held.parameter_box,
-        state_boxes=held.state_boxes,
-        digest=held.digest,
+    paper = (
+        None
+        if held is None
+        else Paper(
+            system_text=held.system_text,
+            kind=held.kind,
+            period=held.period,
+            parameter=held.parameter,
+            criticality=held.criticality,
+            precision=held.precision,
+            parameter_box=held.parameter_box,
+            state_boxes=held.state_boxes,
+            digest=held.digest,
+        )
     )
     claim = Claim(
         name="a row",
@@ -88,18 +92,13 @@ def with_formula(claim: Claim, old: str, new: str) -> Claim:
     return damaged(claim, system_text=claim.paper.system_text.replace(old, new))
 
 
-PERIODS = {
-    "flip": lambda p: (p, 2 * p),
-    "fold": lambda p: (0, p),
-    "border collision": lambda p: (p, p),
-}
 SIDED = ("flip", "pitchfork", "Neimark-Sacker")
 KINDS = ("flip", "fold", "transcritical", "pitchfork", "border collision", "Neimark-Sacker")
 
 
 def of_kind(claim: Claim, kind: str, period: int) -> Claim:
     """The claim as one of another kind or period, in the row and in its certificate."""
-    before, after = PERIODS.get(kind, lambda p: (p, p))(period)
+    before, after = {"flip": (period, 2 * period), "fold": (0, period)}.get(kind, (period, period))
     side = (claim.criticality or "supercritical") if kind in SIDED else ""
     row = dataclasses.replace(claim, kind=kind, period_before=before, period_after=after, criticality=side)
     return damaged(row, kind=kind, period=period, criticality=side)
@@ -142,8 +141,8 @@ def every_damage(claim: Claim) -> Iterator[tuple[str, Claim, tuple[Part, ...]]]:
     if claim.kind == "border collision":
         head, mark, words = claim.consequence.partition("touches the surface ")
         for renamed in (f"{claim.states[0][0]}**3 = 0;", "nothing at all;", f"0.1 + {words}"):
-            other = dataclasses.replace(claim, consequence=head + mark + renamed)
-            yield f"surface renamed {renamed[:9]}", other, (Part.SURFACE,)
+            bad = dataclasses.replace(claim, consequence=head + mark + renamed)
+            yield f"surface renamed {renamed[:9]}", bad, (Part.SURFACE,)
         after = {0: period, period: 2 * period}.get(claim.period_after, period)
         before = claim.period_before or period
         row = dataclasses.replace(claim, period_before=before, period_after=after)
