@@ -12,7 +12,10 @@ from tinemark.systems.system import System
 from tinemark.systems.system_file import read_system_file
 
 DEMO = "hatchery"
-"""Name of the demo system: an invented scenario, found by name but not listed among the built-ins."""
+"""The demo that the program opens with."""
+
+DEMOS = (DEMO, "resonator_board")
+"""Names of the demo systems: invented scenarios, found by name but not listed among the built-ins."""
 
 
 @lru_cache(maxsize=1)
@@ -34,7 +37,7 @@ def builtin_names() -> tuple[str, ...]:
 
 
 def builtin_text(name: str) -> str:
-    """TOML text of a built-in system, comments and all, or of the demo.
+    """TOML text of a built-in system, comments and all, or of a demo.
 
     Raises
     ------
@@ -46,7 +49,7 @@ def builtin_text(name: str) -> str:
 
 @lru_cache(maxsize=64)
 def builtin_system(name: str) -> System:
-    """A built-in system, or the demo.
+    """A built-in system, or a demo.
 
     Raises
     ------
@@ -68,7 +71,7 @@ def find_system(name_or_path: str | Path) -> System:
         Neither a built-in nor a file, with the closest names; or what is wrong in the file.
     """
     text = str(name_or_path)
-    if isinstance(name_or_path, str) and (text == DEMO or text in builtin_names()):
+    if isinstance(name_or_path, str) and (text in DEMOS or text in builtin_names()):
         return builtin_system(text)
     if _is_path(name_or_path):
         return read_system_file(name_or_path)
@@ -77,8 +80,8 @@ def find_system(name_or_path: str | Path) -> System:
 
 def _builtin_file(name: str) -> Path:
     # The name is looked up, never joined unchecked: "../x" must not reach a file.
-    if name == DEMO:
-        return resource("demo", f"{DEMO}.toml")
+    if name in DEMOS:
+        return resource("demo", f"{name}.toml")
     if name not in builtin_names():
         raise _unknown(name)
     return resource("systems", f"{name}.toml")
@@ -98,7 +101,7 @@ def _is_path(name_or_path: str | Path) -> bool:
 
 
 def _unknown(name: str) -> SystemFileError:
-    known = (*builtin_names(), DEMO)
+    known = (*builtin_names(), *DEMOS)
     shown = name if len(name) <= 60 else name[:57] + "..."
     shown = shown if shown.isprintable() else ascii(shown)[1:-1]
     close = difflib.get_close_matches(name[:60].strip().lower(), known, 3, 0.5)
