@@ -44,7 +44,7 @@ from tinemark.systems.errors import Unbounded
 GUARD_BITS = 16
 MOST_STEPS = 20_000
 """Steps after which an orbit that has not come back is given up."""
-FINEST_STEP = 2.0**-24
+FINEST_STEP = 2.0**-20
 """Steps are whole multiples of this part of a driven system's period."""
 CLOCK_UNIT = 2.0**-40
 ORDER_SHARE = 0.55

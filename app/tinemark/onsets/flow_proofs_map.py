@@ -28,7 +28,7 @@ from tinemark.systems.system import System
 
 KEPT = 4096
 """Evaluations that are remembered."""
-MOST_WORK = 120_000
+MOST_WORK = 40_000
 """Taylor steps after which an onset is given up: some minutes."""
 
 _Result = TypeVar("_Result")
