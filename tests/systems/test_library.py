@@ -228,7 +228,8 @@ def test_the_library_is_found_in_a_wheel_and_loads_no_engine(tmp_path: Path) -> 
     script = (
         "import sys, tinemark\n"
         "from tinemark.systems.library import builtin_names, builtin_system\n"
-        "systems = [builtin_system(name).expressions for name in (*builtin_names(), 'hatchery', 'resonator_board')]\n"
+        "names = (*builtin_names(), 'hatchery', 'resonator_board')\n"
+        "systems = [builtin_system(name).expressions for name in names]\n"
         "heavy = {'sympy', 'numba', 'flint', 'scipy', 'mpmath', 'numpy', 'tomlkit', 'PySide6'}\n"
         "print(tinemark.__file__, len(systems), sorted(heavy & set(sys.modules)), sep='|')\n"
     )
