@@ -33,10 +33,16 @@ ROUNDS = 8
 
 
 def solve_crossing(
-    flow: FlowMap, kind: Kind, start: Cycle, scales: Floats, reach: float
+    flow: FlowMap, kind: Kind, start: Cycle, scales: Floats, reach: float, span: float = 0.0
 ) -> Generator[Step, None, Solution]:
-    """The crossing near a rough cycle; see `flow_polish.solve_onset`."""
-    centre, span = start, FIRST_SHARE * reach
+    """The crossing near a rough cycle; see `flow_polish.solve_onset`.
+
+    Parameters
+    ----------
+    span
+        How far on both sides of the rough place to look first, where that is known.
+    """
+    centre, span = start, span or FIRST_SHARE * reach
     text = f"solving for a {kind.value} of period {start.period}"
     last_step = math.inf
     for _ in range(ROUNDS):
@@ -55,12 +61,12 @@ def solve_crossing(
             raise NotFound("the crossing lies out of reach")
         step = abs(r - centre.r)
         centre = Cycle(_interpolated(rs, cycles, r, centre, span), r)
-        wanted = MULTIPLIER_SPAN * span / max(abs(slope), 1e-12)
+        wanted = min(MULTIPLIER_SPAN * span / max(abs(slope), 1e-12), reach)
         settled = 0.3 < wanted / span < 3.0
         last_step = abs(place - other) * span if settled else math.inf
         if settled and step < 0.2 * span:
             break
-        span = min(max(wanted, span / 30), 30 * span, reach)
+        span = min(max(wanted, span / 30), 30 * span)
     else:
         raise NotFound("the crossing could not be closed in on")
     return _crossing(flow, centre, scales, slope / span, last_step)
@@ -96,19 +102,23 @@ def _nodes(
     flow: FlowMap, centre: Cycle, span: float, scales: Floats, text: str
 ) -> Generator[Step, None, tuple[Floats, list[Floats], Floats]]:
     places = np.cos(np.pi * (np.arange(NODES) + 0.5) / NODES)
-    # From the middle outwards, each side by itself: the next is predicted from the centre and the last.
-    order = sorted(range(NODES), key=lambda at: (places[at] < 0, abs(places[at])))
+    # The outermost first, where the equations are regular; the others are predicted from those two.
+    order = [0, NODES - 1, *range(1, NODES - 1)]
     cycles: dict[int, Floats] = {}
     tests = np.empty(NODES)
-    lean: Floats = np.zeros_like(centre.points)
+    middle, lean = centre.points, np.zeros_like(centre.points)
     for at in order:
         yield Step(text)
         r = centre.r + span * places[at]
-        found = newton(flow, Cycle(centre.points + places[at] * lean, r), scales)
+        found = newton(flow, Cycle(middle + places[at] * lean, r), scales)
         if found is None:
             raise NotFound(flow.why() or "the branch could not be followed through the crossing")
-        lean = (found.points - centre.points) / places[at]
         cycles[at] = found.points
+        if len(cycles) == 1:
+            lean = (found.points - middle) / places[at]
+        elif len(cycles) == 2:
+            lean = (cycles[0] - found.points) / (places[0] - places[at])
+            middle = found.points - places[at] * lean
         matrix = condensed(flow, found.points, r).monodromy
         tests[at] = float(min(np.linalg.eigvals(matrix) - 1, key=abs).real)
     return centre.r + span * places, [cycles[at] for at in range(NODES)], tests

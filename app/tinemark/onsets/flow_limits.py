@@ -15,7 +15,6 @@ from tinemark.onsets.flow_search import LONGEST_PERIOD, drifts, starts
 from tinemark.onsets.flow_symmetry import Rates, true_period
 from tinemark.onsets.results import Step
 from tinemark.systems.errors import NoOnsetFound
-from tinemark.systems.exact import fraction_text
 from tinemark.systems.system import System
 
 SHORT_ORBIT = 40
@@ -58,7 +57,7 @@ def check_rates(system: System, parameter: str, value: float) -> None:
         )
     if share.numerator > 1:
         raise NoOnsetFound(
-            f"the rates repeat after {fraction_text(share)} strobe periods, not after one",
+            f"the rates repeat after {share.numerator}/{share.denominator} strobe periods, not after one",
             where=where,
             what_to_do=f'write every = "{share.numerator}*({_every(system)})/{share.denominator}"',
         )

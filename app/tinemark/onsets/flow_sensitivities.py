@@ -17,7 +17,7 @@ import numpy as np
 
 from tinemark.onsets.cycle_map import Floats
 from tinemark.onsets.decimals import decimal_places, fixed_text, leading_power, rounded
-from tinemark.onsets.flow_crossing import solve_crossing
+from tinemark.onsets.flow_crossing import MULTIPLIER_SPAN, solve_crossing
 from tinemark.onsets.flow_map import FINEST, STENCIL, FlowMap
 from tinemark.onsets.flow_polish import Solution, bordered, solve_onset, target_of
 from tinemark.onsets.flow_symmetry import symmetries
@@ -30,7 +30,7 @@ STEPS = (Fraction(1, 3000), Fraction(1, 6000))
 """Lengths of the differences, as shares of a parameter's value."""
 MOST_DIGITS, LEAST_DIGITS = 12, 2
 REGULAR = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
-NOTHING = 1e-12
+NOTHING = 1e-9
 """Derivatives that move the onset by less than this share of it, for the parameter's own size, are none."""
 REACH = 1e-3
 
@@ -103,9 +103,10 @@ def _derivative(
             total += weight * term
         results.append(total / float(share * size))
     best, other = results[-1], results[0]
-    apart = abs(best - other) + 1e-15 * abs(found.cycle.r) / float(STEPS[-1] * size)
-    if abs(best) * float(size) < NOTHING * abs(found.cycle.r) + apart * float(size):
-        return "0" if abs(best) * float(size) < 1e-9 * abs(found.cycle.r) else ""
+    # Beside the steps' own error, what the value's error makes of a difference.
+    apart = abs(best - other) + float(onset.half_width) / float(STEPS[-1] * size)
+    if abs(best) <= apart:
+        return "0" if apart * float(size) < NOTHING * abs(found.cycle.r) else ""
     digits = min(MOST_DIGITS, leading_power(Fraction(best)) - leading_power(Fraction(apart)) - 1)
     if digits < LEAST_DIGITS:
         return ""
@@ -118,8 +119,12 @@ def _moved(flow: FlowMap, onset: Onset, found: Solution, scales: Floats) -> Gene
     if found.matrix is None or found.border is None or found.rows is None:
         if not any(True for _ in symmetries(flow.many.system, onset.parameter, found.cycle.r)):
             raise NotFound("the symmetry does not stay")
-        reach = REACH * max(abs(found.cycle.r), 1e-3) * 10
-        return (yield from solve_crossing(flow, onset.kind, found.cycle, scales, reach)).cycle.r
+        reach, span = (
+            10 * REACH * max(abs(found.cycle.r), 1e-3),
+            MULTIPLIER_SPAN / max(abs(found.speed), 1e-9),
+        )
+        crossing = yield from solve_crossing(flow, onset.kind, found.cycle, scales, reach, min(span, reach))
+        return crossing.cycle.r
     yield Step(f"working out how the onset of period {found.cycle.period} moves")
     points, n = found.cycle.points, len(scales)
     parts = condense(flow.linearised(points, found.cycle.r), points)
