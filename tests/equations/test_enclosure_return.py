@@ -168,6 +168,16 @@ def test_the_first_of_several_passages_counts() -> None:
         assert encloses(found.time, arb.pi(), 1e-15)
 
 
+def test_a_start_beside_the_section_is_carried_to_it() -> None:
+    # Clearly below: the first passage is the near one. All but on it: that one is left, and the next counts.
+    rotation = rates({"x": "-y + 0*r", "y": "x"}, crosses="y")
+    below = returned(rotation, ("1", "-0.0625"), "1", bits=60)
+    on = returned(rotation, ("1", "-1e-9"), "1", bits=60)
+    with working(100):
+        assert encloses(below.time, (arb(1) / 16).atan(), 1e-15)
+        assert encloses(on.time, 2 * arb.pi() + arb(1e-9).atan(), 1e-15)
+
+
 def test_passages_are_counted_by_the_order_of_pieces() -> None:
     positive, negative, rises, falls = Course.POSITIVE, Course.NEGATIVE, Course.RISES, Course.FALLS
 

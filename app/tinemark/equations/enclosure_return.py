@@ -6,60 +6,19 @@ Derivatives in the start that a Newton test multiplies with tiny boxes are carri
 
 from __future__ import annotations
 
-import math
 from collections.abc import Generator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 from flint import arb, arb_mat
 
-from tinemark.equations.enclosure_bound import Bound, NotEnclosed, bound_of
-from tinemark.equations.enclosure_section import (
-    Grazes,
-    Local,
-    Side,
-    courses,
-    local_at,
-    passage,
-    projected,
-    projected_curve,
-)
-from tinemark.equations.enclosure_steps import (
-    LOW_ORDER,
-    Set,
-    bend_over,
-    curve_over,
-    image_over,
-    low_arc,
-    moved_set,
-    set_of,
-    slope_over,
-    turn_over,
-)
-from tinemark.equations.series import value_at, working
-from tinemark.equations.taylor_arc import LOW_BITS, Arc, LowArc, arc_from
-from tinemark.equations.taylor_rates import Rates, rate_functions, section_functions
-from tinemark.systems.errors import Unbounded
-
-GUARD_BITS = 16
-MOST_STEPS = 20_000
-"""Steps after which an orbit that has not come back is given up."""
-FINEST_STEP = 2.0**-20
-"""Steps are whole multiples of this part of a driven system's period."""
-CLOCK_UNIT = 2.0**-40
-ORDER_SHARE = 0.55
-"""Order by bits of precision: beyond, longer series cost more than longer steps save."""
-FLOOR = 2.0**-8
-"""Reach of a-priori boxes, in parts of each state's size, below which they are not made …"""
-LEAST_FLOOR = 2.0**-30
-"""… and in parts of the largest state's size."""
-RETAKES = 8
-GROW = 1.12
-"""How much longer than the last the next a-priori bound is tried …"""
-RESTART = 0.95
-"""… and with how much of its reach."""
-LONGEST = 1e3
-NOTHING = 2.0**-20
+from tinemark.equations.enclosure_passing import passing
+from tinemark.equations.enclosure_run import Run, strobe_step
+from tinemark.equations.enclosure_section import projected, projected_curve
+from tinemark.equations.enclosure_steps import LOW_ORDER, bend_over, curve_over, low_arc
+from tinemark.equations.series import working
+from tinemark.equations.taylor_arc import LOW_BITS
+from tinemark.equations.taylor_rates import Rates
 
 
 @dataclass(frozen=True)
@@ -93,179 +52,6 @@ class Carried:
     sizes: list[float]
 
 
-class _Run:
-    """A box on its way round."""
-
-    def __init__(self, rates: Rates, box: Sequence[Any], r: Any, bits: int) -> None:
-        self.rates, self.functions = rates, rate_functions(rates)
-        self.section = None if rates.section is None else section_functions(rates)
-        self.n = rates.size
-        self.bits = bits + GUARD_BITS
-        self.order = max(LOW_ORDER, math.ceil(ORDER_SHARE * self.bits))
-        self.share = 2.0 ** (-(self.bits + 8) / self.order)
-        with working(self.bits):
-            self.set: Set = set_of([arb(value) for value in box])
-            self.r = arb(r)
-            self.middle_r, self.spread_r = self.r.mid(), self.r.rad()
-            self.first = arb_mat(self.n, self.n + 1, _unit(self.n))
-        self.sizes = [abs(float(value)) for value in self.set.middle]
-        self.radius = 1.0
-        self.reach: list[float] = []
-        self.clock = 0.0
-        self.elapsed = 0.0  # time at which the present step begins
-        self.steps = 0
-        self.side = Side.START
-
-    def begin(self) -> tuple[Arc, Bound, float, list[Any]]:
-        """Polynomials and bound from where the box is, and how far a step may go."""
-        self.steps += 1
-        if self.steps > MOST_STEPS:
-            raise Unbounded(f"the orbit has not come back after {MOST_STEPS} steps of integration")
-        with working(self.bits):
-            spread = self.set.spread()
-            # The clock of a free-running system plays no part.
-            clock = arb(self.clock)
-        self.sizes = [max(a, abs(float(b))) for a, b in zip(self.sizes, self.set.middle, strict=True)]
-        largest = max(self.sizes)
-        # What is next to nothing does not tell how large it may become: then of the order of one.
-        least = FLOOR if largest < NOTHING else LEAST_FLOOR * largest
-        floors = [max(FLOOR * size, least) for size in self.sizes]
-        likely = [max(b, floor) for b, floor in zip(self.reach, floors, strict=False)]
-        guess = min(GROW * self.radius, LONGEST)
-        bound = bound_of(self.functions, self.set.middle, spread, self.r, clock, floors, guess, likely)
-        self.radius = float(bound.radius)
-        self.reach = [RESTART * float(b) for b in bound.reach]
-        arc = arc_from(
-            self.functions, self.set.middle, self.middle_r, clock, self.order, self.bits, low=LOW_ORDER
-        )
-        unit = FINEST_STEP if self.rates.section is None else CLOCK_UNIT
-        length = math.floor(self.radius * self.share / unit) * unit
-        if length <= 0:
-            raise NotEnclosed("the steps of integration became too short to go on")
-        return arc, bound, length, spread
-
-    def end(self, arc: Arc, bound: Bound, time: Any, spread: Sequence[Any], low: LowArc, slope: Any) -> Any:
-        """Move the box on by a time; returns the step's derivative in frames and the frame's inverse."""
-        with working(LOW_BITS, LOW_ORDER):
-            push = slope_over(low, slope, bound, time, spread, self.spread_r)
-        with working(self.bits):
-            image = image_over(arc, bound, time, self.order)
-            turn = turn_over(arc, bound, time, self.order, spread, self.spread_r)
-            before = self.set
-            self.set, inverse = moved_set(before, image, turn, push, self.spread_r)
-            link = inverse * turn * before.basis
-            self.first = link * self.first + _last_column(inverse * push)
-        return link, inverse
-
-    def plain(self) -> Any:
-        """Derivative of the flow so far, (n, n + 1), in the states themselves."""
-        return self.set.basis * self.first
-
-
-def _unit(n: int) -> list[int]:
-    return [int(i == j) for i in range(n) for j in range(n + 1)]
-
-
-def _last_column(column: Any) -> Any:
-    n = column.nrows()
-    values: list[Any] = []
-    for i in range(n):
-        values += [0] * n + [column[i, 0]]
-    return arb_mat(n, n + 1, values)
-
-
-def _strobe_step(run: _Run, length: float) -> float:
-    left = 1.0 - run.clock
-    if left <= length:
-        return left
-    return min(length, max(FINEST_STEP, math.ceil(left / 2 / FINEST_STEP) * FINEST_STEP))
-
-
-def _look(run: _Run, arc: Arc, bound: Bound, spread: Sequence[Any], start: float, stop: float) -> Local:
-    """The section and the rates on a stretch of a step, for the whole box."""
-    assert run.section is not None
-    with working(LOW_BITS):
-        middle, half = (start + stop) / 2, (stop - start) / 2
-        # A little wider than the stretch, for the rounding of its ends to doubles.
-        time = arb(middle, half * (1 + 2.0**-20))
-        return local_at(run.section, _states_over(run, arc, bound, spread, time), run.r)
-
-
-def _states_over(run: _Run, arc: Arc, bound: Bound, spread: Sequence[Any], time: Any) -> list[Any]:
-    """States of the whole box over a ball of times, by the first derivatives' bounds."""
-    rest = bound.rest(time.abs_upper(), run.order)
-    drift = sum((s / room for s, room in zip(spread, bound.room, strict=True)), run.spread_r / bound.room_r)
-    return [
-        value_at(row, time) + arb(0, (b * (rest + drift)).abs_upper())
-        for row, b in zip(arc.x, bound.reach, strict=True)
-    ]
-
-
-def _passing(
-    run: _Run, arc: Arc, bound: Bound, spread: Sequence[Any], length: float
-) -> tuple[float, Any | None]:
-    """How far this step goes: to its end, or to the section, then the ball of moments of passing."""
-    section = run.section
-    assert section is not None
-    for _ in range(RETAKES):
-        end = _look(run, arc, bound, spread, length, length).g
-        if end > 0 or end < 0:
-            break
-        length = math.floor(0.87 * length / CLOCK_UNIT) * CLOCK_UNIT
-    else:
-        raise Grazes("the orbit stays so near to the section that it cannot be told when it passes")
-    found = courses(lambda start, stop: _look(run, arc, bound, spread, start, stop), length)
-    run.side, stretch = passage(run.side, found, bool(end > 0))
-    if stretch is None:
-        return length, None
-    return length, _moment(run, arc, bound, spread, stretch)
-
-
-def _moment(run: _Run, arc: Arc, bound: Bound, spread: Sequence[Any], stretch: tuple[float, float]) -> Any:
-    """The ball of moments at which solutions from the box pass the section, by interval Newton."""
-    section = run.section
-    assert section is not None
-    low, high = stretch
-    with working(run.bits):
-        # Newton's method on midpoints, kept inside the stretch by halving.
-        left, right = arb(low), arb(high)
-        time = ((left + right) / 2).mid()
-        for _ in range(200):
-            states = [value_at(row, time) for row in arc.x]
-            local = local_at(section, states, run.middle_r)
-            g = local.g.mid()
-            if g < 0:
-                left = time
-            else:
-                right = time
-            following = (time - g / local.speed).mid()
-            if not left <= following <= right:
-                following = ((left + right) / 2).mid()
-            moved = abs(following - time)
-            time = following
-            if moved <= arb(2) ** (8 - run.bits):
-                break
-        image = image_over(arc, bound, time, run.order)
-        turn = turn_over(arc, bound, time, run.order, spread, run.spread_r)
-        wide = turn * run.set.basis * run.set.offset
-        drift = [(b * run.spread_r / bound.room_r).abs_upper() for b in bound.reach]
-        box = [value + wide[i, 0] + arb(0, drift[i]) for i, value in enumerate(image)]
-        here = local_at(section, box, run.r)
-        off = here.g.abs_upper()
-        size = here.speed.abs_lower()
-        if not size > 0:
-            raise Grazes("the orbit grazes the section")
-        window = (4 * off / size + arb(2) ** (4 - run.bits)).abs_upper()
-        span = arb(time, window)
-        over = local_at(section, _states_over(run, arc, bound, spread, span), run.r)
-        if not over.speed > 0:
-            raise Grazes("the orbit may pass the section at rest")
-        half = (off / over.speed.abs_lower()).abs_upper()
-        if not (half <= window and arb(low) <= time <= arb(high)):
-            raise Grazes("the moment of passing the section could not be enclosed")
-        return arb(time, half)
-
-
 def carry(
     rates: Rates, box: Sequence[Any], r: Any, bits: int, vector: Sequence[Any] | None = None
 ) -> Generator[float, None, Carried]:
@@ -290,7 +76,7 @@ def carry(
     NotEnclosed, Grazes, ArithmeticError, Unbounded, SwitchingTouched
         Why there is no enclosure.
     """
-    run = _Run(rates, box, r, bits)
+    run = Run(rates, box, r, bits)
     n = run.n
     second: Any = None
     with working(run.bits):
@@ -302,10 +88,10 @@ def carry(
         arc, bound, length, spread = run.begin()
         time: Any
         if run.section is None:
-            length = _strobe_step(run, length)
+            length = strobe_step(run, length)
             time = arb(length)
         else:
-            length, moment = _passing(run, arc, bound, spread, length)
+            length, moment = passing(run, arc, bound, spread, length)
             time = arb(length) if moment is None else moment
         low = low_arc(arc)
         with working(LOW_BITS, LOW_ORDER):
@@ -347,7 +133,7 @@ def carry_curve(
 
     For all starts in the box and all parameters in the ball r, to few bits. Yields and raises as `carry`.
     """
-    run = _Run(rates, box, r, LOW_BITS)
+    run = Run(rates, box, r, LOW_BITS)
     n = run.n
     with working(run.bits):
         # In the frame of the set, which at first is that of the states.
@@ -357,10 +143,10 @@ def carry_curve(
         arc, bound, length, spread = run.begin()
         time: Any
         if run.section is None:
-            length = _strobe_step(run, length)
+            length = strobe_step(run, length)
             time = arb(length)
         else:
-            length, moment = _passing(run, arc, bound, spread, length)
+            length, moment = passing(run, arc, bound, spread, length)
             time = arb(length) if moment is None else moment
         low = low_arc(arc)
         with working(LOW_BITS, LOW_ORDER):
