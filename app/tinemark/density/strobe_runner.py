@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from tinemark.density.strobe_source import drive_of, strobe_source, with_tangent
 from tinemark.density.tangent import tangent
+from tinemark.equations.accuracy import tuned_tolerance
 from tinemark.equations.lane_memory import LANES
 from tinemark.equations.motion import TIME, motion
 from tinemark.equations.sampler import BUILT_ON, STEP_LIMIT
@@ -215,18 +216,27 @@ def tuned(runner: Runner, swept: Floats, goal: float, stop: Cell) -> Tuned:
     states = np.ascontiguousarray(np.concatenate([noted[alive, :, -k] for k in range(1, _KEPT + 1)]).T)
     at = np.tile(swept[alive], _KEPT)
     measure = _Measure(runner, states, at, stop)
-    error = np.nan
-    for _ in range(_ROUNDS):
-        error = measure.error(steps)
-        if not np.isfinite(error) or 0.03 * goal <= error <= goal or steps.relative <= _TIGHTEST:
-            break
-        change = np.clip(0.3 * goal / max(error, 1e-300), 1e-3, 1e2)
-        steps = replace(steps, relative=max(float(steps.relative * change), _TIGHTEST))
+
+    def error(relative: float) -> float:
+        return measure.error(replace(steps, relative=relative))
+
+    relative, seen = tuned_tolerance(error, goal, steps.relative, _TIGHTEST)
+    steps = replace(steps, relative=relative)
+    best = Tuned(steps, seen)
     if driven:
-        equal = measure.equal(steps)
-        if equal.pieces:
-            return Tuned(equal, measure.error(equal))
-    return Tuned(steps, error)
+        # Equal steps are as short as the hardest part of the period asks for, and err less elsewhere: by so
+        # much coarser the tolerance may be.
+        for _ in range(2):
+            equal = measure.equal(steps)
+            if equal.pieces == 0:
+                break
+            seen = measure.error(equal)
+            if seen <= goal and (best.steps.pieces == 0 or equal.pieces < best.steps.pieces):
+                best = Tuned(equal, seen)
+            steps = replace(
+                steps, relative=steps.relative * min(max(0.6 * goal / max(seen, 1e-300), 0.1), 30.0)
+            )
+    return best
 
 
 class _Measure:
@@ -261,10 +271,10 @@ class _Measure:
             tried = replace(steps, pieces=pieces, drive=self.runner.drive(pieces))
             _, told = self.ends(tried)
             worst = float(told[0].max())
-            if _SPREAD * worst <= 1.0 and worst > 0.2:
+            if 0.6 < _SPREAD * worst <= 1.0:
                 return tried
             order = tableau(Method.EIGHT).order
-            grown = (_SPREAD * worst * 1.05) ** (1.0 / order) if np.isfinite(worst) and worst > 0.0 else 2.0
+            grown = (_SPREAD * worst) ** (1.0 / order) if np.isfinite(worst) and worst > 0.0 else 2.0
             wanted = int(np.ceil(pieces * min(max(grown, 0.5), 2.0)))
             if wanted == pieces:
                 return tried

@@ -56,7 +56,10 @@ An explicit method hovers about a resting point by a few times that. The move is
 CLOSER_LOOKS = 60.0
 """Looks after which a section met along its own direction counts as grazed."""
 
-SAFETY, SMALLEST_FACTOR, LARGEST_FACTOR = 0.9, 0.2, 5.0
+SAFETY, SMALLEST_FACTOR, LARGEST_FACTOR, WARY_BELOW = 0.86, 0.2, 5.0, 2.0
+
+ROOT_BITS = np.uint64(int(1023 * 17 / 16 * 2**52) - (1 << 46))
+"""Bits from which a sixteenth of a number's bits are taken for about the inverse of its sixteenth root."""
 
 
 @jit
@@ -143,24 +146,30 @@ def judge(W: Memory, lanes: int, checked: int, order: int) -> None:
     count = float(checked)
     for k in range(lanes):
         step, going, first, second = (
-            abs(get(W, STEP + k)),
+            get(W, STEP + k),
             get(W, GOING + k),
             get(W, FIRST_SUM + k),
             get(W, SECOND_SUM + k),
         )
         tries, refused = get(W, TRIES + k), get(W, REFUSED + k)
+        # The error's square, in units of what is allowed: a comparison needs no root.
         if order == 8:
             # What is added keeps 0 by 0 from being undefined; not-a-number stays one.
-            error = step * first / np.sqrt((first + 0.01 * second) * count + 1e-300)
-            root = np.sqrt(np.sqrt(np.sqrt(error)))
+            square = step * step * first * first / ((first + 0.01 * second) * count + 1e-300)
+            # The sixteenth root, inverted, from the bits: within a few hundredths, enough for control.
+            bits = ROOT_BITS - (np.float64(square).view(np.uint64) >> np.uint64(4))
+            factor = float(SAFETY * np.uint64(bits).view(np.float64))
         else:
-            error = step * np.sqrt(first / count)
-            root = lane_pow(error, 1.0 / order)
-        factor = SAFETY / root
+            square = step * step * first / count
+            factor = SAFETY / lane_pow(square, 0.5 / order)
         # An undefined error counts as far too large.
+        factor = factor if square < 1e60 else SMALLEST_FACTOR
         factor = factor if factor > SMALLEST_FACTOR else SMALLEST_FACTOR  # noqa: FURB136
         factor = factor if factor < LARGEST_FACTOR else LARGEST_FACTOR  # noqa: FURB136
-        accepted = going if error <= 1.0 else 0.0
+        # A step that grows a little is mostly refused next; far too small a one grows freely.
+        wary = 0.5 * factor + 0.5
+        factor = wary if 1.0 < factor < WARY_BELOW else factor
+        accepted = going if square <= 1.0 else 0.0
         put(W, TRIES + k, tries + going)
         put(W, REFUSED + k, refused + going - accepted)
         put(W, ACCEPTED + k, accepted)
@@ -187,46 +196,86 @@ def end_driven(W: Memory, lanes: int) -> None:
 @jit
 def end_flow(W: Memory, lanes: int, near: float) -> None:
     """Next steps after `judge`, and what the step means for the section; LANDED where it was reached."""
+    # Most lanes are far from the section: they are done side by side, the others are marked.
     for k in range(lanes):
-        factor, step = get(W, LANDED + k), get(W, STEP + k)
+        factor, step, wanted = get(W, LANDED + k), get(W, STEP + k), get(W, WANTED + k)
+        going, accepted, landing = get(W, GOING + k), get(W, ACCEPTED + k), get(W, LANDING + k)
+        g0, g1, d0, d1 = (
+            get(W, START_LEVEL + k),
+            get(W, LEVEL + k),
+            get(W, START_SLOPE + k),
+            get(W, SLOPE + k),
+        )
+        armed, left, looks, still = get(W, ARMED + k), get(W, LEFT + k), get(W, LOOKS + k), get(W, STILL + k)
+        steepest, highest, moved = get(W, STEEPEST + k), get(W, HIGHEST + k), get(W, MOVED + k)
+        code = get(W, CODE + k)
+        # A peak within the step, below the section or above it.
+        turned = (1.0 if d0 > 0.0 else 0.0) * (1.0 if d1 < 0.0 else 0.0)
+        met = armed * (1.0 if g1 >= 0.0 else turned)
+        marked = going * (1.0 if landing + accepted * met > 0.5 else 0.0)
+        plain = going - marked
+        taken = accepted * plain
+        wanted = step * factor if plain > 0.5 else wanted
+        still = (still + 1.0 if moved < RESTING_MOVE else 0.0) if taken > 0.5 else still
+        below = 1.0 if g1 < -near else left
+        armed = below if taken * (1.0 if g1 <= 0.0 else 0.0) > armed else armed
+        steeper = abs(d1) if abs(d1) > steepest else steepest  # noqa: FURB136
+        higher = abs(g1) if abs(g1) > highest else highest  # noqa: FURB136
+        put(W, WANTED + k, wanted)
+        put(W, STILL + k, still)
+        put(W, ARMED + k, armed)
+        put(W, LEFT + k, 1.0 if taken * (1.0 if g1 > 0.0 else 0.0) > 0.5 else left)
+        put(W, LOOKS + k, 0.0 if taken > 0.5 else looks)
+        put(W, STEEPEST + k, steeper if taken > 0.5 else steepest)
+        put(W, HIGHEST + k, higher if taken > 0.5 else highest)
+        put(W, START_LEVEL + k, g1 if taken > 0.5 else g0)
+        put(W, START_SLOPE + k, d1 if taken > 0.5 else d0)
+        put(W, CODE + k, RESTS if (still - RESTING_STEPS) > code * 1e9 else code)
+        put(W, ACCEPTED + k, taken)
         put(W, LANDED + k, 0.0)
-        if get(W, GOING + k) < 0.5:
-            continue
-        if get(W, ACCEPTED + k) < 0.5:
-            if get(W, LANDING + k) > 0.5:
-                put(W, REACH + k, abs(step) * factor)
-                put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
-            else:
-                put(W, WANTED + k, step * factor)
-        elif get(W, LANDING + k) > 0.5:
-            put(W, LANDED + k, get(W, LAST + k))
-        else:
-            put(W, ACCEPTED + k, _passed(W, k, step, factor, near))
-        if get(W, LOOKS + k) > CLOSER_LOOKS:
-            put(W, CODE + k, GRAZES)
-        elif get(W, STILL + k) > RESTING_STEPS:
-            put(W, CODE + k, RESTS)
-        if get(W, ACCEPTED + k) > 0.5:
-            put(W, START_LEVEL + k, get(W, LEVEL + k))
-            put(W, START_SLOPE + k, get(W, SLOPE + k))
+        put(W, SCALE + k, factor)
+        put(W, OUT + k, marked * (1.0 + accepted))
+    for k in range(lanes):
+        mark = get(W, OUT + k)
+        if mark > 0.5:
+            _met(W, k, mark > 1.5)
 
 
 @jit
-def _passed(W: Memory, k: int, step: float, factor: float, near: float) -> float:
-    """A step in time whose error is allowed: 1 where it is taken, 0 where a closer look is needed."""
+def _met(W: Memory, k: int, is_allowed: bool) -> None:
+    """A lane on its last way to the section, or one that may have passed it in the step."""
+    factor, step = get(W, SCALE + k), get(W, STEP + k)
+    if get(W, LANDING + k) > 0.5:
+        if is_allowed:
+            put(W, ACCEPTED + k, 1.0)
+            put(W, LANDED + k, get(W, LAST + k))
+        else:
+            put(W, REACH + k, abs(step) * factor)
+            put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
+    else:
+        put(W, ACCEPTED + k, _passed(W, k, step, factor))
+    if get(W, LOOKS + k) > CLOSER_LOOKS:
+        put(W, CODE + k, GRAZES)
+    if get(W, ACCEPTED + k) > 0.5:
+        put(W, START_LEVEL + k, get(W, LEVEL + k))
+        put(W, START_SLOPE + k, get(W, SLOPE + k))
+
+
+@jit
+def _passed(W: Memory, k: int, step: float, factor: float) -> float:
+    """An armed lane's step in time whose error is allowed: 1 where it is taken, 0 for a closer look."""
     g0, g1, d0, d1 = (
         get(W, START_LEVEL + k),
         get(W, LEVEL + k),
         get(W, START_SLOPE + k),
         get(W, SLOPE + k),
     )
-    armed = get(W, ARMED + k) > 0.5
-    if armed and g1 >= 0.0 and d1 <= 0.0:
+    if g1 >= 0.0 and d1 <= 0.0:
         # Through the section and turned round within the step.
         put(W, WANTED + k, 0.5 * step)
         put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
         return 0.0
-    if armed and g1 < 0.0 < d0 and d1 < 0.0:
+    if g1 < 0.0:
         # Highest point of the cubic through both ends and their slopes.
         two = 3.0 * (g1 - g0) - step * (2.0 * d0 + d1)
         three = 2.0 * (g0 - g1) + step * (d0 + d1)
@@ -237,17 +286,13 @@ def _passed(W: Memory, k: int, step: float, factor: float, near: float) -> float
             put(W, LOOKS + k, get(W, LOOKS + k) + 1.0)
             return 0.0
         put(W, MISSED + k, max(get(W, MISSED + k), peak))
+    else:
+        put(W, LANDING + k, 1.0)
     put(W, LOOKS + k, 0.0)
     put(W, STEEPEST + k, max(get(W, STEEPEST + k), abs(d1)))
     put(W, HIGHEST + k, max(get(W, HIGHEST + k), abs(g1)))
     put(W, STILL + k, get(W, STILL + k) + 1.0 if get(W, MOVED + k) < RESTING_MOVE else 0.0)
     put(W, WANTED + k, step * factor)
-    if armed and g1 >= 0.0:
-        put(W, LANDING + k, 1.0)
-    elif g1 > 0.0:
-        put(W, LEFT + k, 1.0)
-    elif get(W, LEFT + k) > 0.5 or g1 < -near:
-        put(W, ARMED + k, 1.0)
     return 1.0
 
 

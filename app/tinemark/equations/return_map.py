@@ -7,13 +7,14 @@ section's map has one multiplier 0, along the flow (Parker and Chua 1989; Hénon
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
+from tinemark.equations.differences import may_jump, slopes
 from tinemark.equations.motion import TIME, Motion, motion, rising_section, with_variations
 from tinemark.equations.reasons import Reason, words
 from tinemark.equations.sampler import STEP_LIMIT, Allowance, Frame, Sampled, sampled
@@ -95,6 +96,11 @@ class FloatReturnMap:
         """Whether samples are taken once a drive period."""
         return self._motion.is_driven
 
+    @cached_property
+    def has_jumps(self) -> bool:
+        """Whether rates may jump, so that derivatives are taken by differences and have fewer digits."""
+        return may_jump(self._motion.rates)
+
     def step(self, states: Floats, r: Floats | float) -> Floats:
         """States at the next sample; shape (n, lanes), nan where there is none."""
         return self._sampled(self._motion, states, r).rows
@@ -102,6 +108,11 @@ class FloatReturnMap:
     def linearised(self, points: Floats, r: Floats | float) -> Linearised:
         """The map and its first derivatives at points of shape (p, n)."""
         count, n = points.shape
+        if self.has_jumps:
+            jacobian, slope = self._by_differences(lambda moved, at: self.step(moved.T, at).T, points, r)
+            image = self.step(points.T, r).T
+            assert self.last is not None
+            return Linearised(image, jacobian, slope, self.last.times)
         rows = np.zeros((n + n * (n + 1), count))
         rows[:n] = points.T
         for column in range(n):
@@ -129,6 +140,14 @@ class FloatReturnMap:
         (p, n, n) and (p, n): the derivative of (A v)_i in state j, and in the swept parameter.
         """
         count, n = points.shape
+        if self.has_jumps:
+
+            def moved_vectors(moved: Floats, at: Floats) -> Floats:
+                along = np.repeat(vectors, len(moved) // count, axis=0)
+                product: Floats = np.einsum("pij,pj->pi", self.linearised(moved, at).jacobian, along)
+                return product
+
+            return self._by_differences(moved_vectors, points, r)
         rows = np.zeros((n + n * (n + 1) + n + n * (n + 1), count))
         rows[:n] = points.T
         for column in range(n):
@@ -162,6 +181,13 @@ class FloatReturnMap:
         if self.last is None:
             return ()
         return tuple(words(Reason(int(code)), self.limit, self.is_driven) for code in self.last.codes)
+
+    def _by_differences(
+        self, function: Callable[[Floats, Floats], Floats], points: Floats, r: Floats | float
+    ) -> tuple[Floats, Floats]:
+        swept = np.ascontiguousarray(np.broadcast_to(np.asarray(r, dtype=np.float64), (len(points),)))
+        scales = self.scales(float(swept[0]))
+        return slopes(function, points, swept, scales, self._parameter_scale())
 
     # What an integration needs beside the states.
 
