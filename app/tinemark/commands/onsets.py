@@ -14,7 +14,7 @@ from tinemark.systems.exact import Exact
 
 if TYPE_CHECKING:
     from tinemark.document.onsets_file import Found
-    from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, Onset, Step
+    from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, Onset, RefineResult, Step
     from tinemark.onsets.scaling import Scaling
     from tinemark.systems.system import System
 
@@ -227,9 +227,37 @@ def refine(options: RefineOptions) -> None:
         result = run_steps(engine.refine(request), lambda item: progress.step(item.text))
     finally:
         progress.clear()
+    result = _with_digits(result, system, options.digits)
     if not result.onsets:
         raise NoOnsetFound(result.message or "no onset was found there", where=options.system)
     found: list[Found] = [(None, onset) for onset in result.onsets]
     print_onsets(options.system, system.diagram_parameter, found, None, options.json, system)
     if result.message:
         say(result.message)
+
+
+def _with_digits(result: RefineResult, system: System, digits: int) -> RefineResult:
+    """The digits asked for, where an onset of equations was found in doubles: that takes some seconds."""
+    from tinemark.onsets import engine
+    from tinemark.onsets.results import SharpenRequest
+
+    if system.is_map:
+        return result
+    onsets, words = [], []
+    progress = Progress()
+    for onset in result.onsets:
+        if onset.digits >= digits:
+            onsets.append(onset)
+            continue
+        work = engine.sharpen(SharpenRequest(system, onset, digits))
+        try:
+            more = run_steps(work, lambda item: progress.step(item.text))
+        except NoOnsetFound as error:
+            onsets.append(onset)
+            words.append(str(error))
+        else:
+            onsets += more.onsets
+            words.append(more.message)
+        finally:
+            progress.clear()
+    return replace(result, onsets=tuple(onsets), message="; ".join(words) or result.message)

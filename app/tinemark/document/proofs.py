@@ -122,6 +122,8 @@ def with_doubts(session: Session) -> Session:
 def _doubt(verdict: Verdict | None) -> str:
     if verdict is None:
         return ""
+    if verdict.outcome is Outcome.NOT_CHECKABLE:
+        return f"its certificate is not looked at: {verdict.reason}"
     return f"its certificate does not fit it ({verdict.part.value}: {verdict.reason})"
 
 

@@ -20,12 +20,14 @@ from tinemark.onsets.results import (
     Onset,
     RefineRequest,
     RefineResult,
+    SharpenRequest,
+    Status,
     Step,
     SurveyFind,
     SurveyRequest,
     SurveyResult,
 )
-from tinemark.systems.errors import TinemarkError
+from tinemark.systems.errors import NoOnsetFound, TinemarkError
 from tinemark.systems.system import System
 
 MOST_DIGITS = 250
@@ -69,6 +71,30 @@ def refine(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     for onset in result.onsets:
         onsets += ((yield from with_sensitivities(request.system, onset)),)
     return replace(result, onsets=onsets)
+
+
+def sharpen(request: SharpenRequest) -> Generator[Step, None, RefineResult]:
+    """Raise an onset of a driven or free-running system to more digits, and prove it where that closes.
+
+    Raises
+    ------
+    NoOnsetFound
+        Why there are no more digits: the onset stands as it is.
+    """
+    from tinemark.onsets.flow_digits_row import sharpened
+    from tinemark.onsets.many_polish import NotFound
+
+    _check(request.digits)
+    if request.system.is_map:
+        raise NoOnsetFound("onsets of maps have all their digits at once")
+    try:
+        onset = yield from sharpened(request.system, request.onset, request.digits)
+    except NotFound as error:
+        raise NoOnsetFound(
+            f"no more digits were found: {error}", what_to_do="the value stands as it was"
+        ) from error
+    words = "proved" if onset.status is Status.PROVED else f"estimated ({onset.reason})"
+    return RefineResult((onset,), f"{onset.kind.value} at {onset.parameter} = {onset.value}, {words}")
 
 
 def ladder(request: LadderRequest) -> Generator[Step | LadderLevel, None, LadderResult]:

@@ -15,7 +15,7 @@ from tinemark.onsets.flow_digits import LEAST_SIZE, SAFETY, MoreDigits, more_dig
 from tinemark.onsets.flow_proofs_map import IntegratedMap, integrated_map
 from tinemark.onsets.many_map import Floats
 from tinemark.onsets.many_polish import NotFound
-from tinemark.onsets.many_texts import estimated_texts, proved_onset
+from tinemark.onsets.many_texts import estimated_texts, proved_onset, with_certificate
 from tinemark.onsets.proofs import NotProved
 from tinemark.onsets.results import Kind, Onset, Step
 from tinemark.systems.errors import SwitchingTouched, Unbounded
@@ -29,6 +29,8 @@ REACH = 1e-6
 HALF_WIDTHS = 30
 """… and in half-widths of its printed interval, whichever is more."""
 REAL = 1e-9
+MOST_DIGITS = 60
+"""The time that digits take grows with their cube."""
 ERROR_LINE = "error estimate"
 
 
@@ -54,6 +56,8 @@ def sharpened(system: System, onset: Onset, digits: int) -> Generator[Step, None
     NotFound
         Why the digits could not be had: the onset stands as it is.
     """
+    if digits > MOST_DIGITS:
+        raise NotFound(f"equations are integrated to {MOST_DIGITS} digits at most")
     if onset.kind not in KINDS:
         raise NotFound(f"a {onset.kind.value} of equations is not solved for to many digits")
     integrated = integrated_map(system, onset.parameter)
@@ -132,7 +136,10 @@ def _scales(integrated: IntegratedMap, sizes: Floats) -> Floats:
 def _onset(integrated: IntegratedMap, onset: Onset, found: MoreDigits, period: int, digits: int) -> Onset:
     places = decimal_places(max(abs(found.value), LEAST_SIZE), digits + GUARD_DIGITS)
     if found.proof is not None:
-        return proved_onset(integrated, onset.kind, found.proof, period, digits, places)
+        proved = proved_onset(integrated, onset.kind, found.proof, period, digits, places)
+        words = proved.consequence or onset.consequence
+        proved = replace(proved, consequence=words, sensitivities=onset.sensitivities)
+        return with_certificate(integrated, proved, found.proof, found.bits[0])
     low, high = found.bits
     finding = f"{float(found.half):.1e}: {SAFETY} times the last Newton step and the difference between "
     finding += f"Taylor series at {low} and {high} bits, which differ in order and steps"

@@ -178,6 +178,18 @@ class RefineRequest:
 
 
 @dataclass(frozen=True)
+class SharpenRequest:
+    """More digits of an onset of equations that was found in doubles, and its proof where that closes.
+
+    Answered by a `RefineResult` with this one onset.
+    """
+
+    system: System
+    onset: Onset
+    digits: int = 20
+
+
+@dataclass(frozen=True)
 class LadderRequest:
     """A cascade to follow from `start` to `stop` (either order gives the direction)."""
 

@@ -19,12 +19,13 @@ from tinemark.onsets.results import (
     Onset,
     RefineRequest,
     RefineResult,
+    SharpenRequest,
     SurveyRequest,
     SurveyResult,
 )
 from tinemark.systems.errors import TinemarkError
 
-OnsetRequest: TypeAlias = RefineRequest | LadderRequest | SurveyRequest | BranchRequest
+OnsetRequest: TypeAlias = RefineRequest | SharpenRequest | LadderRequest | SurveyRequest | BranchRequest
 OnsetResult: TypeAlias = RefineResult | LadderResult | SurveyResult | BranchResult
 
 

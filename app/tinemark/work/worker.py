@@ -27,6 +27,7 @@ from tinemark.onsets.results import (
     LadderLevel,
     LadderRequest,
     RefineRequest,
+    SharpenRequest,
     Step,
     SurveyFind,
     SurveyRequest,
@@ -59,6 +60,8 @@ def engine_steps(request: OnsetRequest) -> Steps:
     match request:
         case RefineRequest():
             return (yield from engine.refine(request))
+        case SharpenRequest():
+            return (yield from engine.sharpen(request))
         case LadderRequest():
             return (yield from engine.ladder(request))
         case SurveyRequest():
