@@ -165,3 +165,9 @@ def test_hundreds_of_digits() -> None:
     text = concise(value, Fraction(12, 10**200), grouped=False)
     assert text.endswith("(12)")
     assert len(text) == len("3.") + 200 + len("(12)")
+
+
+def test_decimals_shown_with_an_uncertainty_are_not_made_up() -> None:
+    """The text of the value stops where its decimals hold; the interval knows two more."""
+    found = make(Status.ESTIMATED, "0.86990869816", "0.8699086981574", "0.8699086981600")
+    assert rounding.onset_text(found, grouped=False) == "0.8699086981587(13)"

@@ -271,6 +271,18 @@ def onset_text(onset: Onset, *, full: bool = False, grouped: bool = True) -> str
         more = ELLIPSIS if grouped and text != everything else ""
         return _finish(text, grouped) + more
     if full or proved:
-        return plus_minus(onset.value_fraction, onset.half_width, grouped=grouped, rigorous=proved)
+        value = onset.value_fraction if proved else _best(onset)
+        return plus_minus(value, onset.half_width, grouped=grouped, rigorous=proved)
     eye = onset.status is Status.READ_BY_EYE
-    return concise(onset.value_fraction, onset.half_width / (1 if eye else 2), grouped=grouped)
+    return concise(_best(onset), onset.half_width / (1 if eye else 2), grouped=grouped)
+
+
+def _best(onset: Onset) -> Fraction:
+    """The value to be rounded to its uncertainty.
+
+    The text of a value holds only decimals that hold; two more are shown with an uncertainty in brackets, and
+    these must not be zeros made up: the middle of the interval has them.
+    """
+    value, lower, upper = onset.value_fraction, Fraction(onset.lower), Fraction(onset.upper)
+    middle = (lower + upper) / 2
+    return middle if abs(middle - value) <= Fraction(1, 2) / 10 ** max(_places_of(onset.value), 0) else value
