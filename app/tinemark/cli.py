@@ -246,6 +246,13 @@ def _picture_parser() -> argparse.ArgumentParser:
     parser.add_argument("--range", nargs=2, required=True, metavar=("A", "B"), help="ends of the sweep")
     parser.add_argument("--size", default="1600x1000", metavar="WxH", help="pixels (default 1600x1000)")
     parser.add_argument("-o", "--output", required=True, metavar="FILE.png", help="file to write")
+    parser.add_argument(
+        "--accuracy",
+        default="",
+        metavar="LEVEL",
+        help="of equations: error of a sample at most, picture (1e-6 of a state's size, finer where the "
+        "pixels show it), bench (1e-8) or reference (1e-11)",
+    )
     return parser
 
 
@@ -345,7 +352,9 @@ def _picture(given: argparse.Namespace) -> None:
         raise _UsageError(
             "a picture is written as PNG", where="--output", what_to_do="name the file FILE.png"
         )
-    pictures.picture(pictures.PictureOptions(given.system, start, stop, _size(given.size), output))
+    pictures.picture(
+        pictures.PictureOptions(given.system, start, stop, _size(given.size), output, given.accuracy.strip())
+    )
 
 
 def _inspect(given: argparse.Namespace) -> None:

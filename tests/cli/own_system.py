@@ -17,3 +17,20 @@ x = "r*x*(1 - x)"
 parameter = "r"
 observe = "x"
 """
+
+DRIVEN = """title = "Low pass"
+kind = "driven"
+
+[states.x]
+start = "0"
+
+[parameters.a]
+value = "1"
+range = ["0.5", "2"]
+
+[rate]
+x = "-x + a*cos(t)"
+
+[sample]
+every = "2*pi"
+"""

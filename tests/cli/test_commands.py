@@ -12,7 +12,7 @@ from decimal import Decimal
 from fractions import Fraction
 
 import pytest
-from own_system import OWN
+from own_system import DRIVEN, OWN
 
 # Onsets of the logistic map: 3, 1 + sqrt(6), and the third as in check_values.md, section 4.1 (R 55).
 LOGISTIC = ["3", "3.44948974278317809819728407470589139196594748065667", "3.54409035955192285361596598660480"]
@@ -233,6 +233,20 @@ def test_picture(tinemark, tmp_path) -> None:
     ended = tinemark("inspect", "out.png")
     assert ended.code == 0
     assert "a PNG picture of" in ended.out
+
+
+def test_a_picture_of_equations_has_an_accuracy(tinemark, tmp_path) -> None:
+    (tmp_path / "driven.toml").write_text(DRIVEN)
+    words = ("picture", "driven.toml", "--range", "0.5", "2", "--size", "200x120", "-o", "out.png")
+    ended = tinemark(*words, "--accuracy", "bench")
+    assert ended.code == 0, ended.err
+    assert " samples" in ended.out
+    ended = tinemark(*words, "--accuracy", "perfect")
+    assert ended.code == 2
+    assert "picture, bench, reference" in ended.err
+    ended = tinemark("picture", "logistic", *words[2:], "--accuracy", "bench")
+    assert ended.code == 2
+    assert "is a map" in ended.err
 
 
 def test_a_picture_deeper_than_doubles_is_exit_1(tinemark, tmp_path) -> None:

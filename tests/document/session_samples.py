@@ -17,6 +17,7 @@ from tinemark.document import session as ses
 from tinemark.document.ledger import FollowedAlpha
 from tinemark.document.session import PictureSettings, Session
 from tinemark.document.session_file import session_bytes
+from tinemark.equations.accuracy import Accuracy
 from tinemark.onsets.results import Certificate, Kind, Onset, Sensitivity, Status
 
 LOGISTIC_TEXT = """\
@@ -134,6 +135,7 @@ pictures = st.builds(
     budget=st.sampled_from(list(ses.BUDGETS)),
     tone=st.sampled_from(ses.TONES),
     palette=st.sampled_from(["", *PALETTE_NAMES]),
+    accuracy=st.sampled_from(Accuracy),
 )
 onsets = st.one_of(
     st.sampled_from(known.flips(known.LOGISTIC)),

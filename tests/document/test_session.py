@@ -32,6 +32,21 @@ from tinemark.document.views import (
 )
 from tinemark.systems.errors import FormulaError, NumberError, SystemFileError
 from tinemark.systems.library import builtin_names, builtin_system, builtin_text
+from tinemark.systems.system_file import read_system_text
+
+DRIVEN = """\
+title = "Low pass"
+kind = "driven"
+[states.x]
+start = "0"
+[parameters.a]
+value = "1"
+range = ["0.5", "2"]
+[rate]
+x = "-x + a*cos(t)"
+[sample]
+every = "2*pi"
+"""
 
 # Views
 
@@ -152,6 +167,13 @@ def test_the_session_s_own_diagram_survives_an_edit() -> None:
         ses.with_diagram(session, "q", "x")
     with pytest.raises(FormulaError):
         ses.with_diagram(session, "r", "x +")
+
+
+def test_samples_of_equations_have_a_smaller_budget_than_steps_of_maps() -> None:
+    driven = read_system_text(DRIVEN)
+    for name, steps in ses.BUDGETS.items():
+        assert ses.budget_steps(name, builtin_system("logistic")) == steps
+        assert 100 <= ses.budget_steps(name, driven) <= steps / 8
 
 
 def test_an_untouched_title_goes_with_its_system() -> None:

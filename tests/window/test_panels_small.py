@@ -13,13 +13,14 @@ from PySide6.QtWidgets import QApplication, QWidget
 
 from tinemark.density.request import SweepRule
 from tinemark.document.session import BUDGETS, PictureSettings
+from tinemark.equations.accuracy import Accuracy
 from tinemark.systems.library import builtin_system
 from tinemark.window.dressing import Dressing
 from tinemark.window.guide_pages import guide_pages, key_table
 from tinemark.window.guide_panel import GuidePanel
 from tinemark.window.panel_plot import PanelAxis, round_ticks
 from tinemark.window.probe_panel import ProbePanel, cobweb, finite_part, steps_shown
-from tinemark.window.settings_panel import SettingsPanel, swatch
+from tinemark.window.settings_panel import SettingsPanel, parts, swatch
 from tinemark.window.theme import DARK, LIGHT, apply_theme
 from tinemark.work.probe import ProbeOrbit, request_probe
 
@@ -275,6 +276,40 @@ def test_every_budget_says_its_steps(settings):
     words = [settings.budget.itemText(place) for place in range(settings.budget.count())]
     assert len(words) == len(BUDGETS)
     assert all(any(letter.isdigit() for letter in text) for text in words)
+
+
+def test_only_equations_have_an_accuracy(settings, qtbot):
+    assert settings.accuracy.isHidden()
+    settings.show_system(builtin_system("rossler"))
+    assert not settings.accuracy.isHidden()
+    assert "amples" in settings.budget.itemText(0)
+    assert "amples" in settings.transient_name.text()
+    settings.accuracy.setCurrentIndex(settings.accuracy.findData("bench"))
+    with qtbot.waitSignal(settings.settings_changed) as told:
+        settings.accuracy.activated.emit(settings.accuracy.currentIndex())
+    assert told.args == [PictureSettings(accuracy=Accuracy.BENCH)]
+    settings.show_measured(2.4e-9)
+    assert "3 parts in 1 billion" in settings.accuracy_words.text()
+    settings.show_measured(float("nan"))
+    assert "measured" not in settings.accuracy_words.text()
+    settings.show_system(builtin_system("logistic"))
+    assert settings.accuracy.isHidden()
+    assert "steps" in settings.budget.itemText(0)
+
+
+@pytest.mark.parametrize(
+    ("error", "words"),
+    [
+        (1e-6, "1 part in 1 million"),
+        (1e-11, "1 part in 100 billion"),
+        (9.6e-8, "1 part in 10 million"),
+        (3.2e-7, "4 parts in 10 million"),
+        (2e-3, "2 parts in 1000"),
+        (5e-13, "5 parts in 10 trillion"),
+    ],
+)
+def test_small_shares_in_words(error, words):
+    assert parts(error) == words
 
 
 def test_swatch_takes_bytes_and_shares(qtbot):

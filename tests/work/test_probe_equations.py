@@ -7,25 +7,11 @@ from fractions import Fraction
 
 import numpy as np
 import pytest
+from low_pass import LOW_PASS
 
 from tinemark.document.first_view import first_view
 from tinemark.systems.system_file import read_system_text
 from tinemark.work.probe import request_probe
-
-# x' = -x + a cos t has the steady answer a (cos t + sin t)/2, which is a/2 at each strobe.
-LOW_PASS = """\
-title = "Low pass"
-kind = "driven"
-[states.x]
-start = "0"
-[parameters.a]
-value = "1"
-range = ["0.5", "2"]
-[rate]
-x = "-x + a*cos(t)"
-[sample]
-every = "2*pi"
-"""
 
 
 def test_the_probe_shows_samples_of_a_driven_system() -> None:

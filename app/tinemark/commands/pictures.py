@@ -14,6 +14,7 @@ from tinemark.systems.exact import Exact
 
 if TYPE_CHECKING:
     from tinemark.document.session import Session
+    from tinemark.equations.accuracy import Accuracy
     from tinemark.systems.system import System
 
 
@@ -23,13 +24,14 @@ PALETTE = "ink"
 
 @dataclass(frozen=True)
 class PictureOptions:
-    """Arguments of `picture`."""
+    """Arguments of `picture`; no accuracy named means the usual one."""
 
     system: str
     start: Exact
     stop: Exact
     size: tuple[int, int]
     output: Path
+    accuracy: str = ""
 
 
 def picture(options: PictureOptions) -> None:
@@ -54,8 +56,35 @@ def picture(options: PictureOptions) -> None:
             what_to_do=f"write --range {options.stop.text} {options.start.text}",
         )
     session = replace(new_session(system), view=first_view(swept_over(system, left, right)))
+    if options.accuracy:
+        settings = replace(session.picture, accuracy=accuracy_named(options.accuracy, system))
+        session = replace(session, picture=settings)
     steps = draw(session, system, options.size, options.output)
-    print(f"{options.output}: {options.size[0]} x {options.size[1]} pixels, {steps} steps")
+    print(f"{options.output}: {options.size[0]} x {options.size[1]} pixels, {steps} {steps_word(system)}")
+
+
+def accuracy_named(name: str, system: System) -> Accuracy:
+    """The accuracy of a name, for a system that has a use for it.
+
+    Raises
+    ------
+    TinemarkError
+        There is none of that name, or the system is a map.
+    """
+    from tinemark.equations.accuracy import Accuracy
+
+    names = ", ".join(accuracy.value for accuracy in Accuracy)
+    if name not in {accuracy.value for accuracy in Accuracy}:
+        raise TinemarkError(
+            f'"{name}" is not one of {names}', where="--accuracy", what_to_do="write one of them"
+        )
+    if system.is_map:
+        raise TinemarkError(
+            "is for equations, and this system is a map: each step is as exact as doubles are",
+            where="--accuracy",
+            what_to_do="leave it out",
+        )
+    return Accuracy(name)
 
 
 def swept_over(system: System, left: Fraction, right: Fraction) -> System:
@@ -69,12 +98,17 @@ def swept_over(system: System, left: Fraction, right: Fraction) -> System:
     return replace(system, parameters=parameters)
 
 
+def steps_word(system: System) -> str:
+    """What a picture of a system counts."""
+    return "steps" if system.is_map else "samples"
+
+
 def draw(session: Session, system: System, size: tuple[int, int], output: Path) -> int:
     """Draw a session's view to its budget and write it with axes; returns the steps drawn."""
     from tinemark.density import renderer
     from tinemark.density.png import Frame, framed_cells, write_picture_png
     from tinemark.density.request import PictureRequest
-    from tinemark.document.session import BUDGETS
+    from tinemark.document.session import budget_steps
 
     settings = session.picture
     columns, rows = framed_cells(*size)
@@ -88,6 +122,7 @@ def draw(session: Session, system: System, size: tuple[int, int], output: Path) 
         rule=settings.rule,
         transient_steps=settings.transient_steps,
         starts=settings.starts,
+        accuracy=settings.accuracy,
     )
     if not renderer.columns_distinct(request):
         raise NoOnsetFound(
@@ -95,10 +130,11 @@ def draw(session: Session, system: System, size: tuple[int, int], output: Path) 
             what_to_do="take a wider range; refine still works there",
         )
     progress = Progress()
+    counted = steps_word(system)
     field = None
     try:
-        for field in renderer.progressive(request, BUDGETS[settings.budget]):
-            progress.step(f"{field.steps} steps drawn")
+        for field in renderer.progressive(request, budget_steps(settings.budget, system)):
+            progress.step(f"{field.steps} {counted} drawn")
     finally:
         progress.clear()
     assert field is not None

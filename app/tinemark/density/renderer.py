@@ -317,6 +317,7 @@ def _besides_view(request: PictureRequest) -> tuple[object, ...]:
         request.transient_steps,
         request.starts,
         request.seed,
+        request.accuracy,
     )
 
 

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from enum import Enum
 from fractions import Fraction
 
+from tinemark.equations.accuracy import Accuracy
 from tinemark.systems.system import System
 
 
@@ -54,6 +55,8 @@ class PictureRequest:
         Number of starts per column under `SweepRule.SEVERAL`; otherwise 1.
     seed
         Seed of the scattered starts of `SweepRule.SEVERAL`: same seed, same picture.
+    accuracy
+        Error of a sample of equations that is not exceeded, however coarse the cells are.
     """
 
     system: System
@@ -66,3 +69,4 @@ class PictureRequest:
     transient_steps: int = 500
     starts: int = 1
     seed: int = 1
+    accuracy: Accuracy = Accuracy.PICTURE

@@ -61,7 +61,7 @@ def _goal(request: PictureRequest) -> float:
     ranges = [state.range for state in request.system.states if state.range is not None]
     height = max((float(r[1].fraction - r[0].fraction) for r in ranges), default=float(request.view.height))
     up = float(request.view.height) / request.rows / height
-    return goal_of_cells(max(min(across, up), 1e-300))
+    return min(goal_of_cells(max(min(across, up), 1e-300)), request.accuracy.error)
 
 
 @lru_cache(maxsize=64)

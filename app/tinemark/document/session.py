@@ -12,6 +12,7 @@ from tinemark.document import views
 from tinemark.document.first_view import first_view
 from tinemark.document.ledger import Ledger
 from tinemark.document.views import ViewHistory
+from tinemark.equations.accuracy import Accuracy
 from tinemark.resources_path import resource
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.library import DEMO, builtin_text
@@ -20,7 +21,10 @@ from tinemark.systems.system_file import read_system_text
 from tinemark.systems.system_text import write_system_text
 
 BUDGETS = {"quick": 2_000, "standard": 20_000, "thorough": 200_000}
-"""Names of the picture budgets, and the steps per column after which the picture rests."""
+"""Names of the picture budgets, and the steps per column after which the picture of a map rests."""
+
+STEPS_A_SAMPLE = 16
+"""Steps of a map that count as much as one sample of equations, which takes a hundred times as long."""
 
 TONES = ("linear", "log", "equalised")
 
@@ -34,11 +38,13 @@ class PictureSettings:
     rule, transient_steps, starts
         As in `density.request.PictureRequest`.
     budget
-        A name from `BUDGETS`.
+        A name from `BUDGETS`; see `budget_steps`.
     tone
         One of `TONES`.
     palette
         Name of a colour map of `density.tone.palettes()`; empty means the theme's own.
+    accuracy
+        How accurately equations are integrated; maps have no use for it.
     """
 
     rule: SweepRule = SweepRule.FRESH
@@ -47,6 +53,7 @@ class PictureSettings:
     budget: str = "standard"
     tone: str = "log"
     palette: str = ""
+    accuracy: Accuracy = Accuracy.PICTURE
 
 
 @dataclass(frozen=True)
@@ -101,6 +108,17 @@ def _needed_systems(session: Session) -> tuple[tuple[str, str], ...]:
     with contextlib.suppress(TinemarkError):
         texts[read_system(session.system_text).key] = session.system_text
     return tuple((key, texts[key]) for key in needed if key in texts)
+
+
+def budget_steps(budget: str, system: System) -> int:
+    """Steps, or samples of equations, per column after which a picture of a system rests.
+
+    Parameters
+    ----------
+    budget
+        A name from `BUDGETS`.
+    """
+    return BUDGETS[budget] // (1 if system.is_map else STEPS_A_SAMPLE)
 
 
 # Beginning

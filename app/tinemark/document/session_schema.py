@@ -1,6 +1,6 @@
 """A session as plain data: what stands in `session.json`, version 3, and the limits of every field.
 
-The file knows no class of ours: these structs only check shapes, and two functions translate. A
+The file knows no class of ours but enumerations: these structs only check shapes, two functions translate. A
 change here is a new schema version with a migration from the one before.
 """
 
@@ -28,6 +28,7 @@ from tinemark.document.views import (
     view_of,
     view_text,
 )
+from tinemark.equations.accuracy import Accuracy
 from tinemark.onsets.results import Certificate, Criticality, Kind, Onset, Sensitivity, Status
 from tinemark.systems.errors import NumberError
 
@@ -69,8 +70,8 @@ class PlainHistory(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     forward: Annotated[list[PlainView], Meta(max_length=MAX_VIEWS)]
 
 
-class PlainPicture(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
-    """How the diagram is drawn."""
+class PlainPicture(msgspec.Struct, frozen=True, forbid_unknown_fields=True, omit_defaults=True):
+    """How the diagram is drawn. Files from before equations name no accuracy."""
 
     rule: SweepRule
     transient_steps: Count
@@ -78,6 +79,7 @@ class PlainPicture(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
     budget: Short
     tone: Short
     palette: Short
+    accuracy: Accuracy = Accuracy.PICTURE
 
 
 class PlainSensitivity(msgspec.Struct, frozen=True, forbid_unknown_fields=True):
@@ -217,6 +219,7 @@ def to_plain(session: Session) -> PlainSession:
             budget=session.picture.budget,
             tone=session.picture.tone,
             palette=session.picture.palette,
+            accuracy=session.picture.accuracy,
         ),
         probe=None if session.probe is None else number_text(session.probe),
         ledger=PlainLedger(
@@ -319,6 +322,7 @@ def from_plain(plain: PlainSession) -> Session:
             budget=picture.budget,
             tone=picture.tone,
             palette=picture.palette,
+            accuracy=picture.accuracy,
         ),
         ledger=_ledger(plain.ledger, plain.certified),
         systems=tuple((system.key, system.text) for system in plain.systems),

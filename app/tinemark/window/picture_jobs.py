@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 from typing import Protocol
 
@@ -11,14 +12,14 @@ from PySide6.QtCore import QElapsedTimer, QObject, Qt, QTimer, Signal
 
 from tinemark.density.request import PictureRequest, View
 from tinemark.density.sampling import columns_distinct
-from tinemark.document.session import BUDGETS, Session
+from tinemark.document.session import Session, budget_steps
 from tinemark.systems.system import System
 from tinemark.window.bridge import Bridge, Painted, image_of
 from tinemark.window.diagram import Diagram, Glimpse
 from tinemark.window.picture_tones import Tones, table
 from tinemark.window.status_line import StatusLine
 from tinemark.window.theme import current_theme
-from tinemark.work.pictures import PictureFailed, PictureWaits
+from tinemark.work.pictures import PictureFailed, PictureMeasured, PictureWaits
 
 TOO_DEEP = "Columns are closer than double precision can tell; a click still refines."
 
@@ -39,6 +40,9 @@ class DeskLike(Protocol):
 
 class PictureJobs(QObject):
     """Asks for pictures of what the session shows; the newest wins, and a stale answer is dropped."""
+
+    measured = Signal(float)
+    """Largest error of a sample of equations, as a share of a state's size; nan where it is not known."""
 
     _wants = Signal()
 
@@ -86,6 +90,7 @@ class PictureJobs(QObject):
             rule=picture.rule,
             transient_steps=picture.transient_steps,
             starts=picture.starts,
+            accuracy=picture.accuracy,
         )
         identity = f"{system!r}{session.parameter}{session.observe}"
         if identity != self._shown_system:
@@ -93,8 +98,9 @@ class PictureJobs(QObject):
             self._asked.clear()
             self._diagram.show_waiting("")
             self._diagram.forget_picture()
+            self.measured.emit(math.nan)
         self._set_tones(session)
-        wanted = (request, BUDGETS[picture.budget])
+        wanted = (request, budget_steps(picture.budget, system))
         if wanted != self._wanted:
             self._look(session.view)
             self._wanted = wanted
@@ -152,6 +158,7 @@ class PictureJobs(QObject):
             self._in_flight = 0
             self._diagram.show_notice(TOO_DEEP)
             self._status.show_steps(0)
+            self.measured.emit(math.nan)
             return
         self._diagram.show_notice("")
         number = self.desk.request(request, budget)
@@ -175,13 +182,15 @@ class PictureJobs(QObject):
         if painted.field.steps > self._waiting_steps:
             self._diagram.show_waiting("")
         self._diagram.show_picture(painted.image, painted.pixels, painted.field, request.view)
-        self._status.show_steps(painted.field.steps)
+        self._status.show_steps(painted.field.steps, "steps" if request.system.is_map else "samples")
 
     def hear(self, event: object) -> None:
         """The desk says that a picture is done or cannot be drawn; other events are not meant for us."""
         if isinstance(event, PictureWaits) and event.id in self._asked:
             self._waiting_steps = event.steps
             self._diagram.show_waiting(event.words)
+        if isinstance(event, PictureMeasured) and event.id in self._asked:
+            self.measured.emit(event.error)
         if isinstance(event, PictureFailed) and event.id in self._asked:
             self._diagram.show_waiting("")
             self._in_flight = 0

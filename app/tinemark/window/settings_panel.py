@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Mapping
 from dataclasses import replace
 
@@ -12,7 +13,9 @@ from PySide6.QtGui import QIcon, QImage, QPixmap
 from PySide6.QtWidgets import QFrame, QLabel, QPushButton, QScrollArea, QVBoxLayout, QWidget
 
 from tinemark.density.request import SweepRule
-from tinemark.document.session import BUDGETS, TONES, PictureSettings
+from tinemark.document.session import BUDGETS, TONES, PictureSettings, budget_steps
+from tinemark.equations.accuracy import Accuracy
+from tinemark.systems.system import System
 from tinemark.window.faces import FaceKeeper, wear
 from tinemark.window.field_editors import CountEdit, QuietCombo
 from tinemark.window.theme import current_theme
@@ -26,6 +29,11 @@ RULE_WORDS = {
     SweepRule.FORWARD: "Each column goes on from the one to its left, as in a slow sweep upwards.",
     SweepRule.BACKWARD: "Each column goes on from the one to its right, as in a slow sweep downwards.",
     SweepRule.SEVERAL: "Each column is drawn from several scattered starts, so that rival attractors show.",
+}
+ACCURACY_WORDS = {
+    Accuracy.PICTURE: "Enough for the eye: where pixels would show a smaller error, samples are taken finer.",
+    Accuracy.BENCH: "As fine as a good bench measurement, in every view.",
+    Accuracy.REFERENCE: "Near the end of double precision, to hold against other solvers.",
 }
 TONE_NAMES = {"linear": "Linear", "log": "Logarithmic", "equalised": "Equalised"}
 TONE_WORDS = {
@@ -66,6 +74,8 @@ class SettingsPanel(QScrollArea):
         self.setHorizontalScrollBarPolicy(Qt.ScrollBarPolicy.ScrollBarAlwaysOff)
         self.setFocusPolicy(Qt.FocusPolicy.NoFocus)
         self._settings = PictureSettings()
+        self._system: System | None = None
+        self._error = math.nan
         self._load_palettes = load_palettes
         self._palettes: Mapping[str, ArrayLike] | None = None
         page = QWidget()
@@ -85,11 +95,12 @@ class SettingsPanel(QScrollArea):
         self._field("Starts in each column", self.starts)
         self.starts_words = self._words("Only the rule “several starts” has more than one.")
         self.transient = CountEdit("Steps thrown away first", 0, MOST_TRANSIENT, 100)
-        self._field("Steps thrown away first", self.transient)
-        self._words("An orbit needs time to settle, most of all near a split. More steps draw it crisper.")
+        self.transient_name = self._field("Steps thrown away first", self.transient)
+        self.transient_words = self._words()
         self._heading("Quality")
-        self.budget = self._combo("Picture improves up to", [(_budget_words(name), name) for name in BUDGETS])
+        self.budget = self._combo("Picture improves up to", [("", name) for name in BUDGETS])
         self._words("The first picture appears at once in every case; it gets finer while the view rests.")
+        self._build_accuracy()
         self._heading("Colour")
         self.tone = self._combo("Tone", [(TONE_NAMES.get(tone, tone.capitalize()), tone) for tone in TONES])
         self.tone_words = self._words()
@@ -101,10 +112,21 @@ class SettingsPanel(QScrollArea):
         self.reset_button.clicked.connect(self._reset)
         self._page.addWidget(self.reset_button, 0, Qt.AlignmentFlag.AlignLeft)
         self._page.addStretch(1)
-        for combo in (self.rule, self.budget, self.tone, self.palette_choice):
+        for combo in (self.rule, self.budget, self.accuracy, self.tone, self.palette_choice):
             combo.activated.connect(self._changed)
         for count in (self.starts, self.transient):
             count.counted.connect(self._changed)
+
+    def _build_accuracy(self) -> None:
+        """Only equations are integrated: maps have no use for it, and do not see it."""
+        levels = [(f"{level.value.capitalize()}: {parts(level.error)}", level.value) for level in Accuracy]
+        self.accuracy = QuietCombo()
+        self.accuracy.setAccessibleName("Error of a sample at most")
+        self.accuracy.setFocusPolicy(Qt.FocusPolicy.StrongFocus)
+        for shown, name in levels:
+            self.accuracy.addItem(shown, name)
+        self.accuracy_name = self._field("Error of a sample at most", self.accuracy)
+        self.accuracy_words = self._words()
 
     def _heading(self, words: str) -> None:
         if self._page.count():
@@ -117,7 +139,7 @@ class SettingsPanel(QScrollArea):
         wear(label, "heading")
         self._page.addWidget(label)
 
-    def _field(self, words: str, editor: QWidget) -> None:
+    def _field(self, words: str, editor: QWidget) -> QLabel:
         label = QLabel(words)
         label.setBuddy(editor)
         self._page.addSpacing(4)
@@ -125,6 +147,7 @@ class SettingsPanel(QScrollArea):
         self._page.addWidget(editor)
         if isinstance(editor, CountEdit):
             self._page.addWidget(editor.trouble)
+        return label
 
     def _combo(self, words: str, items: list[tuple[str, str]]) -> QuietCombo:
         combo = QuietCombo()
@@ -147,19 +170,31 @@ class SettingsPanel(QScrollArea):
     def show_settings(self, settings: PictureSettings) -> None:
         """Show settings; nothing is emitted."""
         self._settings = settings
-        editors = (self.rule, self.starts, self.transient, self.budget, self.tone, self.palette_choice)
+        combos = (self.rule, self.budget, self.accuracy, self.tone, self.palette_choice)
+        editors = (*combos, self.starts, self.transient)
         for editor in editors:
             editor.blockSignals(True)
         _select(self.rule, settings.rule.name)
         self.starts.show_count(settings.starts)
         self.transient.show_count(settings.transient_steps)
         _select(self.budget, settings.budget)
+        _select(self.accuracy, settings.accuracy.value)
         _select(self.tone, settings.tone)
         if settings.palette:
             self.prepare()
         _select(self.palette_choice, settings.palette)
         for editor in editors:
             editor.blockSignals(False)
+        self._refresh()
+
+    def show_system(self, system: System) -> None:
+        """Say what the settings mean for a system."""
+        self._system = system
+        self._refresh()
+
+    def show_measured(self, error: float) -> None:
+        """Say how accurate the samples shown were found to be; nan where that is not known."""
+        self._error = error
         self._refresh()
 
     @property
@@ -177,6 +212,7 @@ class SettingsPanel(QScrollArea):
             starts=self._starts_for(rule),
             transient_steps=self.transient.count,
             budget=str(self.budget.currentData()),
+            accuracy=Accuracy(str(self.accuracy.currentData())),
             tone=str(self.tone.currentData()),
             palette=str(self.palette_choice.currentData() or ""),
         )
@@ -200,9 +236,30 @@ class SettingsPanel(QScrollArea):
         several = self._settings.rule is SweepRule.SEVERAL
         self.rule_words.setText(RULE_WORDS[self._settings.rule])
         self.tone_words.setText(TONE_WORDS.get(self._settings.tone, ""))
+        self._refresh_counts()
         self.starts.setEnabled(several)
         self.starts_words.setVisible(not several)
         self.reset_button.setEnabled(self._settings != PictureSettings())
+
+    def _refresh_counts(self) -> None:
+        """Maps count steps; equations count samples, and have an accuracy."""
+        is_map = self._system is None or self._system.is_map
+        what = "Steps" if is_map else "Samples"
+        self.transient_name.setText(f"{what} thrown away first")
+        self.transient.setAccessibleName(f"{what} thrown away first")
+        self.transient_words.setText(
+            f"An orbit needs time to settle, most of all near a split. More {what.lower()} draw it crisper."
+        )
+        for place in range(self.budget.count()):
+            name = str(self.budget.itemData(place))
+            steps = BUDGETS[name] if self._system is None else budget_steps(name, self._system)
+            self.budget.setItemText(place, _budget_words(name, steps, what.lower()))
+        for widget in (self.accuracy_name, self.accuracy, self.accuracy_words):
+            widget.setVisible(not is_map)
+        known = math.isfinite(self._error) and self._error > 0
+        seen = f" In this picture at most {parts(self._error)} were measured." if known else ""
+        words = f"As a share of a state's size. {ACCURACY_WORDS[self._settings.accuracy]}"
+        self.accuracy_words.setText(words + seen)
 
     def showEvent(self, event: QEvent) -> None:
         """The colour maps are read when they are first to be seen, not at the start of the program."""
@@ -245,8 +302,23 @@ def swatch(table: ArrayLike) -> QIcon:
     return QIcon(QPixmap.fromImage(image.scaled(SWATCH * 2)))
 
 
-def _budget_words(name: str) -> str:
-    return f"{name.capitalize()}: {BUDGETS[name]:,} steps a column".replace(",", "\u2009")
+def _budget_words(name: str, steps: int, what: str) -> str:
+    return f"{name.capitalize()}: {steps:,} {what} a column".replace(",", "\u2009")
+
+
+def parts(error: float) -> str:
+    """A small share in words, rounded up: 3 parts in 10 million."""
+    power = math.floor(math.log10(error) + 1e-9)
+    count = math.ceil(error / 10.0**power - 1e-9)
+    if count == 10:
+        count, power = 1, power + 1
+    return f"{count} part{'' if count == 1 else 's'} in {_tens(-power)}"
+
+
+def _tens(power: int) -> str:
+    named = ((12, "trillion"), (9, "billion"), (6, "million"))
+    least, word = next(((least, word) for least, word in named if power >= least), (0, ""))
+    return f"{10 ** max(power - least, 0)} {word}".strip()
 
 
 def _select(combo: QuietCombo, data: str) -> None:

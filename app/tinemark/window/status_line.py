@@ -72,9 +72,9 @@ class StatusLine(QWidget):
         if self.words.property("rank") in ("warning", "error"):
             self.show_words("")
 
-    def show_steps(self, steps: int) -> None:
-        """How many steps the picture is made of."""
-        self.steps.setText(f"{counted(steps)} steps drawn" if steps else "")
+    def show_steps(self, steps: int, what: str = "steps") -> None:
+        """How many steps, or samples, the picture is made of."""
+        self.steps.setText(f"{counted(steps)} {what} drawn" if steps else "")
 
     def show_busy(self, words: str, share: float | None) -> None:
         """Work under way; `share` is None where it is not known."""

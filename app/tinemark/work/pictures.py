@@ -20,6 +20,7 @@ from tinemark.work.newest import NewestWins
 if TYPE_CHECKING:
     from tinemark.density.glimpse import Glimpses
     from tinemark.density.renderer import Drawing
+    from tinemark.systems.system import System
 
 BUDGET_STEPS = 20_000
 """Steps a column after which a picture rests, where nothing else is asked."""
@@ -65,10 +66,27 @@ class PictureWaits:
     words: str
 
 
-PictureEvent: TypeAlias = PictureDone | PictureFailed | PictureWaits
+@dataclass(frozen=True)
+class PictureMeasured:
+    """How accurate the samples of a picture of equations are.
+
+    Attributes
+    ----------
+    error
+        Largest error of one sample that was seen, as a share of each state's size; nan where no orbit tried
+        has a sample.
+    """
+
+    id: int
+    request: PictureRequest
+    error: float
+
+
+PictureEvent: TypeAlias = PictureMeasured | PictureDone | PictureFailed | PictureWaits
 
 LOADING = "Loading the compiler"
 COMPILING = "Compiling the formulas, or loading them as compiled before"
+TUNING = "Compiling the equations, or loading them as compiled before, and measuring their steps"
 
 
 class PictureDesk:
@@ -99,6 +117,7 @@ class PictureDesk:
         self._threads = threads
         # Touched by the desk's thread alone.
         self._drawing: Drawing | None = None
+        self._tuned: set[tuple[System, str]] = set()
         # Made by the desk's thread, which loads the compiler; asked by any.
         self._glimpses: Glimpses | None = None
         self._desk: NewestWins[tuple[PictureRequest, int], StopFlag] = NewestWins(
@@ -148,9 +167,9 @@ class PictureDesk:
             from tinemark.density.glimpse import Glimpses, is_compiled
 
             glimpses = self._glimpses = self._glimpses or Glimpses()
-            drawing = self._kept(request) or renderer.create(request)
+            drawing = self._kept(request) or self._create(id_, request, steps, stop)
             self._drawing = drawing
-            if not is_compiled(drawing.kernels.advance):
+            if request.system.is_map and not is_compiled(drawing.kernels.advance):
                 steps = steps or self._first_look(id_, request, stop)
                 self._wait(id_, request, steps, COMPILING, stop)
             if drawing.level:
@@ -171,6 +190,23 @@ class PictureDesk:
             return
         if not stop.is_set():
             self._on_event(PictureDone(id_, request, steps))
+
+    def _create(self, id_: int, request: PictureRequest, steps: int, stop: StopFlag) -> Drawing:
+        """A new drawing. That of equations is compiled first, and its integration steps are measured."""
+        from tinemark.density import renderer
+
+        if request.system.is_map:
+            return renderer.create(request)
+        from tinemark.density.strobe_kernels import picture_error
+
+        known = (request.system, request.parameter)
+        if known not in self._tuned:
+            self._wait(id_, request, steps, TUNING, stop)
+        drawing = renderer.create(request)
+        self._tuned.add(known)
+        if not stop.is_set():
+            self._on_event(PictureMeasured(id_, request, picture_error(request)))
+        return drawing
 
     def _first_look(self, id_: int, request: PictureRequest, stop: StopFlag) -> int:
         """Hand out a picture for which nothing has to be loaded, where there is one; returns its steps."""
