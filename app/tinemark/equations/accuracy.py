@@ -25,7 +25,7 @@ PILOTS = 24
 """Orbits across the sweep that a level is measured on."""
 
 _SETTLING, _KEPT, _ROUNDS = 20, 3, 6
-_LOW, _AIM = 0.2, 0.6
+_LOW, _AIM = 0.4, 0.7
 """Errors from this share of the goal upwards are near enough to it; and the share that is aimed at."""
 
 

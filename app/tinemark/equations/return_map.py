@@ -26,6 +26,10 @@ from tinemark.systems.system import System
 
 Floats = NDArray[np.float64]
 
+MOST_BENT = 4
+"""States up to which second derivatives are integrated; beyond, their kernel would take a minute to compile,
+and they are differences of first ones, right to about eight digits."""
+
 NEAR_SHARE = 0.02
 """Share of the section formula's size within which a start below it counts as on it."""
 
@@ -140,7 +144,7 @@ class FloatReturnMap:
         (p, n, n) and (p, n): the derivative of (A v)_i in state j, and in the swept parameter.
         """
         count, n = points.shape
-        if self.has_jumps:
+        if self.has_jumps or n > MOST_BENT:
 
             def moved_vectors(moved: Floats, at: Floats) -> Floats:
                 along = np.repeat(vectors, len(moved) // count, axis=0)
