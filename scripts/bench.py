@@ -24,8 +24,12 @@ FOLDER = Path(__file__).resolve().parent / "benches"
 
 
 def names() -> list[str]:
-    """Every bench: the modules that yield figures."""
-    return sorted(path.stem for path in FOLDER.glob("*.py") if path.stem not in ("__init__", "measuring"))
+    """Every bench: the modules that yield figures, by name."""
+    return sorted(
+        path.stem.replace("_", "-")
+        for path in FOLDER.glob("*.py")
+        if path.stem not in ("__init__", "measuring")
+    )
 
 
 def main(arguments: Sequence[str]) -> int:
@@ -40,7 +44,7 @@ def main(arguments: Sequence[str]) -> int:
     for name in names() if options.name == "all" else [options.name]:
         print(f"{name}:", file=table)
         began = time.perf_counter()
-        for figure in importlib.import_module(f"benches.{name}").figures():
+        for figure in importlib.import_module(f"benches.{name.replace('-', '_')}").figures():
             figures.append(figure)
             print(line(figure), file=table, flush=True)
         print(f"  ({time.perf_counter() - began:.0f} s)", file=table)

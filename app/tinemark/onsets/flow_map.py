@@ -25,7 +25,7 @@ if TYPE_CHECKING:
 Values = NDArray[Any]
 """Real numbers, or complex ones at a Neimark-Sacker point."""
 
-DIFFERENCE = 1e-3
+DIFFERENCE = 1e-4
 """Steps of differences, as shares of a state's or the parameter's scale."""
 STENCIL = ((-2.0, 1 / 12), (-1.0, -2 / 3), (1.0, 2 / 3), (2.0, -1 / 12))
 """Places and weights of a first derivative of fourth order."""

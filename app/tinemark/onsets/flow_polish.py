@@ -30,6 +30,8 @@ from tinemark.onsets.results import Kind, Step
 MOST_STEPS = 16
 SETTLED = 3e-14
 """A Newton step that moves the parameter by less than this share of it, or of its reach, is the last."""
+FARTHEST = 0.02
+"""Scaled step that is too long for an onset that was known already."""
 STALLED = 1e-6
 """A step below this share that does not halve the one before is as good as rounding allows."""
 REAL = 1e-9
@@ -66,8 +68,8 @@ class Solution:
     matrix
         Jacobian of the defining equations f^p(x) - x = 0 and g = 0 in (first point, parameter[, angle]);
         None where branches cross.
-    border, rows
-        What g is defined by, and its derivative in each point, (p, n); None where branches cross.
+    border
+        What g is defined by; None where branches cross.
     """
 
     cycle: Cycle
@@ -79,7 +81,6 @@ class Solution:
     last_step: float
     matrix: Floats | None
     border: Border | None
-    rows: Values | None = None
 
 
 @dataclass(frozen=True)
@@ -174,7 +175,6 @@ class _Equations:
     """g, its derivatives in the first point, the parameter and mu, and what closing the gaps adds to it."""
 
     vectors: Values
-    rows: Values
     g: complex
     g_x: Values
     g_r: complex
@@ -221,7 +221,6 @@ def _equations(
     g_r = total[n] - np.sum(left * turns_r)
     return _Equations(
         vectors,
-        rows,
         solved.g,
         total[:n],
         complex(g_r),
@@ -266,9 +265,7 @@ def _solution(
     if np.iscomplexobj(eq.vectors):
         # Of a pair: how fast its modulus changes.
         speed = float(np.real(change * cmath.exp(-1j * angle)))
-    return Solution(
-        cycle, eq.vectors, angle, parts.monodromy, slope, speed, last_step, system, border, eq.rows
-    )
+    return Solution(cycle, eq.vectors, angle, parts.monodromy, slope, speed, last_step, system, border)
 
 
 def solve_again(flow: FlowMap, kind: Kind, found: Solution, reach: float) -> Generator[Step, None, Solution]:
@@ -290,7 +287,7 @@ def solve_again(flow: FlowMap, kind: Kind, found: Solution, reach: float) -> Gen
         shift = np.linalg.solve(found.matrix, -np.array(right))
         moves = parts.blocks @ np.array([*shift[: n + 1], 1.0])
         size = max(float(np.max(np.abs(moves) / scales)), abs(float(shift[n])) / max(abs(r), reach))
-        if not size < 1e-3:
+        if not size < FARTHEST:
             raise NotFound("the onset is not found at another accuracy")
         points, r = points + moves, r + float(shift[n])
         angle += float(shift[n + 1]) if kind is Kind.NEIMARK_SACKER else 0.0

@@ -1,9 +1,10 @@
-"""How an onset of equations moves with the other parameters, by implicit differentiation of what defines it.
+"""How an onset of equations moves with the other parameters.
 
-With F(x, r; q) = 0 the shooting equations and g = 0 of `flow_polish`, the derivative solves
-F_(x,r) (dx, dr)/dq = -F_q (implicit function theorem). F_q is a difference of fourth order between systems
-with neighbouring values of q, all evaluated on the same cycle; a second step length tells how many digits
-hold. A pitchfork, where F_(x,r) is singular, is solved for at the neighbouring values instead, where its
+At a few neighbouring values of a parameter the onset is solved for once more, along the direction that
+implicit differentiation of F(x, r; q) = 0 gives: with the Jacobian that is known, Newton's method needs two
+or three steps. The derivative is the difference of fourth order of the values, which no error of the Jacobian
+enters.
+A second step length, and the value's own error, tell how many digits hold. A pitchfork is followed where its
 symmetry stays.
 """
 
@@ -19,9 +20,9 @@ from tinemark.onsets.cycle_map import Floats
 from tinemark.onsets.decimals import decimal_places, fixed_text, leading_power, rounded
 from tinemark.onsets.flow_crossing import MULTIPLIER_SPAN, solve_crossing
 from tinemark.onsets.flow_map import FINEST, STENCIL, FlowMap
-from tinemark.onsets.flow_polish import Solution, bordered, solve_onset, target_of
+from tinemark.onsets.flow_polish import Solution, solve_again, solve_onset
 from tinemark.onsets.flow_symmetry import symmetries
-from tinemark.onsets.many_cycles import Cycle, condense
+from tinemark.onsets.many_cycles import Cycle
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.results import Kind, Onset, Sensitivity, Status, Step
 from tinemark.systems.system import System
@@ -115,8 +116,8 @@ def _derivative(
 
 
 def _moved(flow: FlowMap, onset: Onset, found: Solution, scales: Floats) -> Generator[Step, None, float]:
-    """Where the onset is for a neighbouring system, up to terms that a central difference removes."""
-    if found.matrix is None or found.border is None or found.rows is None:
+    """Where the onset is for a neighbouring system."""
+    if found.matrix is None:
         if not any(True for _ in symmetries(flow.many.system, onset.parameter, found.cycle.r)):
             raise NotFound("the symmetry does not stay")
         reach, span = (
@@ -125,12 +126,5 @@ def _moved(flow: FlowMap, onset: Onset, found: Solution, scales: Floats) -> Gene
         )
         crossing = yield from solve_crossing(flow, onset.kind, found.cycle, scales, reach, min(span, reach))
         return crossing.cycle.r
-    yield Step(f"working out how the onset of period {found.cycle.period} moves")
-    points, n = found.cycle.points, len(scales)
-    parts = condense(flow.linearised(points, found.cycle.r), points)
-    g = bordered(parts.monodromy, target_of(onset.kind, found.angle), found.border).g
-    g += complex(np.einsum("pj,pj->", found.rows, parts.blocks[:, :, n + 1]))
-    residual = np.array([*parts.closing[:, n + 1], g.real, g.imag][: len(found.matrix)])
-    if not np.isfinite(residual).all():
-        raise NotFound(flow.why() or "the orbit is lost")
-    return float(np.linalg.solve(found.matrix, -residual)[n])
+    again = yield from solve_again(flow, onset.kind, found, REACH * max(abs(found.cycle.r), 1e-3))
+    return again.cycle.r
