@@ -1,8 +1,9 @@
-"""Make the demo session anew: ``python3 scripts/make_demo.py [--check]``.
+"""Make the demo sessions anew: ``python3 scripts/make_demo.py [--check]``.
 
-Follows two ladders of the invented hatchery tank with the real engine and saves them as
-resources/demo/hatchery.tinemark. The same sources give the same bytes; ``--check`` only compares, and
-exits 1 when the stored file is not what the engine finds.
+Follows the ladders of the invented scenarios with the real engine and saves them in resources/demo: the
+hatchery tank, a map, and the resonator board, a driven circuit. The same sources give the same bytes on one
+machine (the board is integrated in doubles, whose last bits another processor may round otherwise);
+``--check`` only compares, and exits 1 when a stored file is not what the engine finds.
 """
 
 from __future__ import annotations
@@ -15,7 +16,7 @@ from pathlib import Path
 from typing import TypeVar
 
 ROOT = Path(__file__).resolve().parents[1]
-FILE = ROOT / "resources" / "demo" / "hatchery.tinemark"
+FOLDER = ROOT / "resources" / "demo"
 DIGITS = 20
 LEVELS = 6
 WINDOW_FOLD = Fraction("160.39")
@@ -37,6 +38,22 @@ NOTES = {
 }
 """Notes by base period and level."""
 
+BOARD_LEVELS = 5
+BOARD_SESSION_NOTES = """\
+Invented example. No such board exists; every number was chosen for the demonstration.
+
+Question: at which drive amplitude does the board stop giving the same answer in every period, and how far \
+is the working amplitude of 0.7 V from there?
+
+Found: alternate periods begin to differ at 0.845 V, so the margin is 0.145 V. The doublings end near \
+1.967 V. Which tolerance moves the first split most stands on the tolerance panel.
+"""
+BOARD_NOTES = {
+    1: "invented example: above this amplitude alternate periods differ",
+    BOARD_LEVELS: "extend the ladder to see the next levels",
+}
+"""Notes by level."""
+
 Answer = TypeVar("Answer")
 
 
@@ -50,8 +67,31 @@ def answer_of(job: Generator[object, None, Answer]) -> Answer:
             return answer
 
 
-def demo_bytes() -> bytes:
-    """The demo session, found anew."""
+def board_bytes() -> bytes:
+    """The session of the resonator board, found anew."""
+    from tinemark.document import ledger as led
+    from tinemark.document import session as ses
+    from tinemark.document.session_file import session_bytes
+    from tinemark.onsets import engine
+    from tinemark.onsets.results import LadderRequest
+    from tinemark.systems.library import builtin_text
+
+    session = ses.new_session(builtin_text("resonator_board"))
+    system = ses.system_of(session)
+    parameter = session.parameter
+    request = LadderRequest(
+        system, parameter, session.view.left, session.view.right, base_period=1, levels=BOARD_LEVELS
+    )
+    place = led.place_of(system, parameter)
+    ledger = led.add_ladder(session.ledger, answer_of(engine.ladder(request)), place)
+    for row in ledger.rows:
+        ledger = led.note(ledger, row.id, BOARD_NOTES.get(row.level or 0, ""))
+    session = ses.with_words(ses.with_ledger(session, ledger), notes=BOARD_SESSION_NOTES)
+    return session_bytes(ses.with_probe(session, system.parameter(parameter).value.fraction))
+
+
+def tank_bytes() -> bytes:
+    """The session of the hatchery tank, found anew."""
     from tinemark.document import ledger as led
     from tinemark.document import session as ses
     from tinemark.document.session_file import session_bytes
@@ -88,21 +128,24 @@ def demo_bytes() -> bytes:
 
 
 def main(arguments: Sequence[str]) -> int:
-    """Make the demo, or compare it; 0 when the file is as it should be."""
-    parser = argparse.ArgumentParser(prog="make_demo.py", description="Make the demo session anew.")
+    """Make the demos, or compare them; 0 when the files are as they should be."""
+    parser = argparse.ArgumentParser(prog="make_demo.py", description="Make the demo sessions anew.")
     parser.add_argument("--check", action="store_true", help="compare only, write nothing")
     options = parser.parse_args(arguments)
     sys.path.insert(0, str(ROOT / "app"))
-    data = demo_bytes()
-    if options.check:
-        same = FILE.is_file() and FILE.read_bytes() == data
-        print("the stored demo is up to date" if same else "the stored demo is not what the engine finds")
-        return 0 if same else 1
     from tinemark.document.atomic_file import write_whole
 
-    write_whole(FILE, data)
-    print(f"wrote {FILE.relative_to(ROOT)} ({len(data)} bytes)")
-    return 0
+    wrong = 0
+    for name, make in (("hatchery", tank_bytes), ("resonator_board", board_bytes)):
+        file, data = FOLDER / f"{name}.tinemark", make()
+        if options.check:
+            same = file.is_file() and file.read_bytes() == data
+            wrong += not same
+            print(f"{file.name} is " + ("up to date" if same else "not what the engine finds"))
+        else:
+            write_whole(file, data)
+            print(f"wrote {file.relative_to(ROOT)} ({len(data)} bytes)")
+    return 1 if wrong else 0
 
 
 if __name__ == "__main__":

@@ -388,3 +388,10 @@ def test_a_click_before_the_refinery_is_there_is_seen_and_kept(qtbot, tmp_path, 
         window.rows.pick(Fraction(3), Fraction(1, 2))
         window.onsets.attach(desks.refinery)
         assert list(window.diagram.pending) == [1] and len(desks.refinery.asked) == 1
+
+
+def test_the_other_demo_is_one_click_away(window):
+    window.hint.other.click()
+    assert window.keeper.session.title.startswith("Invented example: resonator board")
+    window.files.open_demo()
+    assert "hatchery" in window.keeper.session.title

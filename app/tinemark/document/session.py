@@ -143,16 +143,22 @@ def new_session(system: System | str) -> Session:
     )
 
 
-def demo_session() -> Session:
-    """The demo: an invented hatchery tank, with onsets that the engine proved (`scripts/make_demo.py`)."""
+def demo_session(name: str = DEMO) -> Session:
+    """A demo, an invented scenario with onsets that the engine found (`scripts/make_demo.py`).
+
+    Parameters
+    ----------
+    name
+        One of `systems.library.DEMOS`.
+    """
     from tinemark.document.session_file import open_session
 
-    file = resource("demo", f"{DEMO}.tinemark")
+    file = resource("demo", f"{name}.tinemark")
     try:
         return open_session(file)
     except TinemarkError:
         # The demo must not keep the program from starting: its system alone still shows the job.
-        return new_session(builtin_text(DEMO))
+        return new_session(builtin_text(name))
 
 
 @lru_cache(maxsize=32)

@@ -11,12 +11,22 @@ from PySide6.QtWidgets import QHBoxLayout, QLabel, QSizePolicy, QToolButton, QWi
 from tinemark.window.theme import color, current_theme
 
 WORDS = "Drag a box to zoom, click near a split to get its proved value."
+OTHER = "Other demo: resonator board"
 
 
 class HintLine(QWidget):
-    """The line, with a cross to close it."""
+    """The line, with the way to the other demonstration and a cross to close it.
+
+    Signals
+    -------
+    dismissed
+        The line has left for good.
+    other_asked
+        The other demonstration is wanted.
+    """
 
     dismissed = Signal()
+    other_asked = Signal()
 
     def __init__(self, parent: QWidget | None = None) -> None:
         super().__init__(parent)
@@ -27,9 +37,14 @@ class HintLine(QWidget):
         close.setAccessibleName("Close the hint")
         close.setToolTip("Do not show this again")
         close.clicked.connect(self.dismiss)
+        self.other = QToolButton()
+        self.other.setText(OTHER)
+        self.other.setToolTip("A second invented scenario, a driven circuit; both stand in the File menu")
+        self.other.clicked.connect(self.other_asked)
         row = QHBoxLayout(self)
         row.setContentsMargins(26, 3, 12, 3)
         row.addWidget(self.label, 1)
+        row.addWidget(self.other)
         row.addWidget(close)
         self._zoomed = self._picked = False
 

@@ -179,6 +179,7 @@ class MainWindow(QMainWindow):
         self.head.tool_chosen.connect(self.set_tool)
         self.status.cancel_wanted.connect(self.cancel)
         self.hint.dismissed.connect(lambda: self.memory.keep_flag("hint_seen", True))
+        self.hint.other_asked.connect(lambda: self.files.open_demo("resonator_board"))
         self.rows.connect_parts()
         self.survey_form.survey_wanted.connect(self._survey)
         self.survey_form.closed.connect(lambda: self.diagram.setFocus(Qt.FocusReason.OtherFocusReason))

@@ -15,7 +15,7 @@ from PySide6.QtWidgets import QFileDialog, QMenu, QMessageBox
 from tinemark.document.session import Session, demo_session, new_session
 from tinemark.document.session_file import open_session, save_session
 from tinemark.systems.errors import TinemarkError
-from tinemark.systems.library import builtin_text
+from tinemark.systems.library import DEMO, builtin_text
 from tinemark.systems.system_file import read_system_file
 from tinemark.window.axis import axis_title
 from tinemark.window.layout_memory import LayoutMemory
@@ -30,6 +30,7 @@ SUFFIX = ".tinemark"
 SESSIONS = f"Tinemark sessions (*{SUFFIX})"
 SYSTEMS = "System files (*.toml)"
 PICTURES = "Pictures (*.png)"
+DEMO_WORDS = {DEMO: "hatchery tank", "resonator_board": "resonator board"}
 MAX_SYSTEM_BYTES = 256 * 1024
 
 
@@ -64,9 +65,9 @@ class SessionFiles:
         self._memory.add_recent(path)
         return True
 
-    def open_demo(self) -> bool:
-        """Open the demonstration."""
-        return self._show(demo_session(), None, "The hatchery tank is an invented scenario.")
+    def open_demo(self, name: str = DEMO) -> bool:
+        """Open one of the demonstrations."""
+        return self._show(demo_session(name), None, f"The {DEMO_WORDS[name]} is an invented scenario.")
 
     def open_builtin(self, name: str) -> bool:
         """Put a built-in system on the card. The ledger stays, and the step can be undone."""
