@@ -274,16 +274,36 @@ def test_every_point_of_a_box_stays_inside_its_image(case: int) -> None:
     assert all(float(ball.rad()) < 1e-3 for ball in whole[: n + 1])
 
 
-def test_derivatives_are_those_of_the_image() -> None:
+LIMIT_CYCLE = {"x": "x*(r - x*x - y*y) - y", "y": "y*(r - x*x - y*y) + x"}
+SLANTED = "y - 0.4 + (x - 0.3)*x + (r - 0.25)*y"
+
+
+def test_the_multiplier_of_a_limit_cycle_does_not_depend_on_the_section() -> None:
+    # The circle of radius 1/2 at r = 1/4 passes (0.3, 0.4) on a curved section; its multiplier is exp(-pi).
+    found = returned(rates(LIMIT_CYCLE, crosses=SLANTED), ("0.3", "0.4"), "0.25")
+    with working(200):
+        assert encloses(found.time, 2 * arb.pi(), 1e-27)
+        assert encloses(found.image[0], arb("0.3"), 1e-27) and encloses(found.image[1], arb("0.4"), 1e-27)
+        assert encloses(found.jacobian[0, 0] + found.jacobian[1, 1], (-arb.pi()).exp(), 1e-26)
+        assert encloses(found.jacobian.det(), 0, 1e-26)
+
+
+@pytest.mark.parametrize("driven", [True, False])
+def test_derivatives_are_those_of_the_image(driven: bool) -> None:
     # By differences of images that are known to 1e-30.
-    of = rates({"x": "y*r - x*y", "y": "sin(x) - 0.1*y + cos(t)"}, every="2*pi/(6 + r)")
+    if driven:
+        of = rates({"x": "y*r - x*y", "y": "sin(x) - 0.1*y + cos(t)"}, every="2*pi/(6 + r)")
+        start, value = ["0.5", "-0.25"], "1.25"
+    else:
+        of = rates(LIMIT_CYCLE, crosses=SLANTED)
+        start, value = ["0.3125", "0.375"], "0.28125"
     n, step = 2, 2.0**-36
-    start, along = ["0.5", "-0.25"], [0.5, 0.25]
-    found = returned(of, start, "1.25", along)
+    along = [0.5, 0.25]
+    found = returned(of, start, value, along)
 
     def moved(k: int, sign: int) -> Carried:
         with working(220):
-            place = [arb(value) for value in (*start, "1.25")]
+            place = [arb(text) for text in (*start, value)]
             place[k] = place[k] + sign * arb(step)
         return finish(carry(of, place[:n], place[n], BITS))  # type: ignore[no-any-return]
 
