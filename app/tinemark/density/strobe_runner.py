@@ -13,16 +13,16 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from tinemark.density.strobe_compiling import Compiling
 from tinemark.density.strobe_source import drive_of, strobe_source, with_tangent
 from tinemark.density.tangent import tangent
 from tinemark.equations.accuracy import tuned_tolerance
 from tinemark.equations.lane_memory import LANES
 from tinemark.equations.motion import TIME, motion
-from tinemark.equations.sampler import BUILT_ON, STEP_LIMIT
+from tinemark.equations.sampler import STEP_LIMIT
 from tinemark.equations.scales import escape_bounds, state_scales
 from tinemark.equations.tableau import Method, tableau
 from tinemark.systems.expression import ONE
-from tinemark.systems.native import native_module
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
 
@@ -91,7 +91,10 @@ class Runner:
         n = self.motion.size
         floors = np.zeros(2 * n)
         floors[:n] = steps.relative * self.scales
-        module = self._with_tangent if has_tangent else self._plain
+        compiling = self._with_tangent if has_tangent else self._plain
+        module = compiling.module(stop)
+        if module is None:
+            return False
         first, count = columns
         done: bool = module.run(
             states, tangents, growth, swept, self.fixed, first, count, noted, measured, floors,
@@ -141,13 +144,13 @@ class Runner:
         return drive_of(with_tangent(self.motion)).parts
 
     @cached_property
-    def _with_tangent(self) -> Any:
+    def _with_tangent(self) -> Compiling:
         source = strobe_source(with_tangent(self.motion), tableau(Method.EIGHT), True)
-        return native_module(source, "strobe", BUILT_ON)
+        return Compiling(source, self.motion)
 
     @cached_property
-    def _plain(self) -> Any:
-        return native_module(strobe_source(self.motion, tableau(Method.EIGHT), False), "strobe", BUILT_ON)
+    def _plain(self) -> Compiling:
+        return Compiling(strobe_source(self.motion, tableau(Method.EIGHT), False), self.motion)
 
     def _near(self, value: float) -> float:
         if self.motion.section is None:
