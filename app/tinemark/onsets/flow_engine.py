@@ -40,6 +40,8 @@ NARROWEST = 1e-8
 """Views narrower than this share of the parameter are searched as if they were this wide."""
 IN_REACH = 0.75
 """Farther on the screen than this an onset does not count as what was meant."""
+ALIKE = 1e-6
+"""Difference of multipliers below which two cycles at one value are taken for images of each other."""
 CLOSE, CLOSE_FLOOR = 1.5, 0.02
 """A second onset is shown up to so many times the nearest one's distance, or this much of the screen."""
 LEAST_VISIBLE = 0.0015
@@ -129,6 +131,7 @@ def _candidates(
     family = ManyFamily(flow, _lengths(place, scales, request), place.width)
     screen = Screen(place.r - IN_REACH * place.width, 2 * IN_REACH * place.width, 0.0, 1.0, margin=0.01)
     branches: list[Branch] = []
+    begun: list[BranchPlace] = []
     found: list[_Candidate] = []
     for cycle in cycles:
         seen = min((item.distance for item in found if item.stable_share >= LEAST_VISIBLE), default=np.inf)
@@ -136,14 +139,24 @@ def _candidates(
         if len(branches) >= most or place.distance(flow, cycle) > max(seen, GOOD_ENOUGH):
             break
         start = family.corrected(cycle.points, cycle.r)
-        if start is None or any(lies_on(family, branch, start) for branch in branches):
+        if start is None or any(_alike(start, other) for other in begun):
             continue
+        if any(lies_on(family, branch, start) for branch in branches):
+            continue
+        begun.append(start)
         branch = yield from followed(family, screen, start, MOST_PLACES, pace=PACE, stop=_far_from_stable)
         branches.append(branch)
         passed = _passed(family, flow, branch, place)
         found += [item for item in passed if item.kind in wanted and item.distance <= IN_REACH]
         yield Step("looking at the onsets passed")
     return sorted(found, key=lambda candidate: candidate.rank)
+
+
+def _alike(a: BranchPlace, b: BranchPlace) -> bool:
+    """Whether two cycles are mirror images, or whole turns of an angle apart: they do the same things."""
+    if a.r != b.r or a.period != b.period:
+        return False
+    return bool(np.allclose(a.multipliers, b.multipliers, rtol=ALIKE, atol=ALIKE))
 
 
 def _far_from_stable(place: BranchPlace) -> bool:

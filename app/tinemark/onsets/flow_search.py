@@ -37,6 +37,9 @@ PARENTS_OF = 6
 """Of so many cycles up to that period, nearest on the screen, what they may have split from is looked for."""
 FAR_FROM_STABLE = 4.0
 """Cycles with a multiplier larger than this are looked at last."""
+UNSEEN = 0.02
+"""Cycles that are not seen, being unstable, count as so much farther away on the screen."""
+NEUTRAL = 1e-6
 PASSES = 1e-6
 """An orbit that ends closer than this to a cycle has settled on it."""
 SEED = 20240612
@@ -145,7 +148,8 @@ def drifts(history: Floats, scales: Floats) -> Iterator[tuple[int, float]]:
 
 def _order(flow: FlowMap, place: Place, cycle: Cycle) -> tuple[bool, float, int]:
     largest = max(map(abs, multipliers(flow, cycle)), default=np.inf)
-    return largest > FAR_FROM_STABLE, place.distance(flow, cycle), cycle.period
+    unseen = 0.0 if largest <= 1 + NEUTRAL else UNSEEN
+    return largest > FAR_FROM_STABLE, place.distance(flow, cycle) + unseen, cycle.period
 
 
 def _passes(cycle: Cycle, state: Floats, scales: Floats) -> bool:
