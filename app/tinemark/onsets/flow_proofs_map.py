@@ -130,6 +130,10 @@ class IntegratedMap(ManyMap):
         for vector in vectors:
             for _ in self.memory.carried(x, r, vector, bits):
                 yield Step(text)
+            if any(value.rad() > 0 for value in x):
+                # A box is that of a proof, which goes on to ask for the normal form along these vectors.
+                for _ in self.memory.curved(x, r, vector):
+                    yield Step(text)
 
     def _step(self, *values: Any) -> tuple[Any, ...]:
         n = self.size
