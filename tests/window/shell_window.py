@@ -95,7 +95,7 @@ class FakeRefinery:
         self.asked.append(request)
         return len(self.asked)
 
-    ladder = refine
+    ladder = submit = refine
 
     def cancel(self, id_: int) -> None:
         self.cancelled.append(id_)

@@ -359,6 +359,15 @@ ACTIONS: tuple[Action, ...] = (
         starts_group=True,
     ),
     Action(
+        "more_digits",
+        "Find",
+        "More digits of the selected row",
+        lambda w: w.rows.more_digits_of_selected(),
+        ("Ctrl+Alt+R",),
+        enabled=lambda w: w.rows.can_have_digits(w.rows.selected),
+        tip="Integrate the equations in higher precision, and prove the onset where that closes",
+    ),
+    Action(
         "ladder",
         "Find",
         "Follow the ladder…",

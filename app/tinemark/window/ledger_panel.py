@@ -46,7 +46,7 @@ class LedgerPanel(QWidget):
     -------
     row_selected : str
         Id of the row the user went to; empty when none is left selected.
-    refine_requested, remove_requested : list
+    refine_requested, digits_requested, remove_requested : list
         Ids of rows.
     note_edited : str, str
         Row and new note.
@@ -58,6 +58,7 @@ class LedgerPanel(QWidget):
 
     row_selected = Signal(str)
     refine_requested = Signal(list)
+    digits_requested = Signal(list)
     remove_requested = Signal(list)
     note_edited = Signal(str, str)
     copy_requested = Signal(str)
@@ -67,6 +68,7 @@ class LedgerPanel(QWidget):
         super().__init__(parent)
         self.setWindowTitle("Ledger")
         self.setAccessibleName("Ledger")
+        self.can_have_digits: Callable[[str], bool] = lambda _: False
         self._quiet = False
         self._forced_narrow = False
         self._widths: dict[Column, float] = {}
@@ -143,6 +145,9 @@ class LedgerPanel(QWidget):
         self.refine_button = self._tool(
             "Refine", "Work out the selected rows that were read by eye or estimated", self._refine
         )
+        self.digits_button = self._tool(
+            "More digits", "Integrate the equations of the selected rows to 20 digits or more", self._sharpen
+        )
         self.remove_button = self._tool(
             "Remove", "Take the selected rows out of the ledger (Delete)", self._remove
         )
@@ -152,6 +157,7 @@ class LedgerPanel(QWidget):
         for button in (
             self.extend_button,
             self.refine_button,
+            self.digits_button,
             self.copy_button,
             self.remove_button,
             self.detail_button,
@@ -293,6 +299,7 @@ class LedgerPanel(QWidget):
         self.copy_button.setEnabled(bool(self.model.entries))
         self.extend_button.setEnabled(bool(self._selected_ladder()))
         self.refine_button.setEnabled(any(e.row.onset.status in REFINABLE for e in entries))
+        self.digits_button.setVisible(any(self.can_have_digits(row_id) for row_id in ids))
         self.remove_button.setEnabled(bool(ids))
         self.detail_button.setEnabled(bool(self.model.entries))
         current = self.current_id()
@@ -316,6 +323,11 @@ class LedgerPanel(QWidget):
         ids = [e.row.id for e in self._selected_entries() if e.row.onset.status in REFINABLE]
         if ids:
             self.refine_requested.emit(ids)
+
+    def _sharpen(self) -> None:
+        ids = [row_id for row_id in self.selected_ids() if self.can_have_digits(row_id)]
+        if ids:
+            self.digits_requested.emit(ids)
 
     def _remove(self) -> None:
         ids = self.selected_ids()
@@ -364,6 +376,7 @@ class LedgerPanel(QWidget):
         for words, possible, do in (
             ("Follow the ladder further", self.extend_button.isEnabled(), self._extend),
             ("Refine", self.refine_button.isEnabled(), self._refine),
+            ("More digits", not self.digits_button.isHidden(), self._sharpen),
             ("Write a note", self.table.currentIndex().isValid(), self._edit_note),
             ("Remove", self.remove_button.isEnabled(), self._remove),
         ):

@@ -21,6 +21,7 @@ from tinemark.onsets.results import (
     Onset,
     RefineRequest,
     RefineResult,
+    SharpenRequest,
 )
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.system import System
@@ -44,6 +45,7 @@ class RefineryLike(Protocol):
 
     def refine(self, request: RefineRequest) -> int: ...  # noqa: D102
     def ladder(self, request: LadderRequest) -> int: ...  # noqa: D102
+    def submit(self, request: SharpenRequest) -> int: ...  # noqa: D102
     def cancel(self, id_: int) -> None: ...  # noqa: D102
 
 
@@ -63,7 +65,7 @@ class Job:
         Base period of the ladder that is gone on with; 0 where the request's own counts.
     """
 
-    request: RefineRequest | LadderRequest
+    request: RefineRequest | LadderRequest | SharpenRequest
     row: str = ""
     parameter: Fraction = Fraction(0)
     observed: Fraction = Fraction(0)
@@ -143,6 +145,10 @@ class OnsetJobs(QObject):
         request = RefineRequest(system, row.onset.parameter, near, width, None, None, digits_for(view))
         self.ask(Job(request, row.id, near, (view.bottom + view.top) / 2))
 
+    def sharpen_row(self, system: System, row: Row, digits: int) -> None:
+        """A row of equations to be integrated to more digits."""
+        self.ask(Job(SharpenRequest(system, row.onset, digits), row.id, row.onset.value_fraction))
+
     def ask(self, job: Job) -> None:
         """Hand a job to the refinery, now or as soon as it is there."""
         self.asked.emit()
@@ -156,6 +162,10 @@ class OnsetJobs(QObject):
             number = self.refinery.refine(job.request)
             self._diagram.add_pending(number, job.parameter, job.observed, "refining\N{HORIZONTAL ELLIPSIS}")
             self._status.show_busy("Refining\N{HORIZONTAL ELLIPSIS}", None)
+        elif isinstance(job.request, SharpenRequest):
+            number = self.refinery.submit(job.request)
+            words = f"Integrating to {job.request.digits} digits"
+            self._status.show_busy(f"{words}\N{HORIZONTAL ELLIPSIS}", None)
         else:
             number = self.refinery.ladder(job.request)
             self._status.show_busy("Following the ladder\N{HORIZONTAL ELLIPSIS}", None)

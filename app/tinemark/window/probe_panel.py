@@ -25,6 +25,7 @@ from tinemark.window.field_editors import QuietCombo
 from tinemark.window.panel_plot import PanelPlot, line_pen
 from tinemark.window.theme import current_theme
 from tinemark.work.probe import ProbeOrbit
+from tinemark.work.waveform import Waveform
 
 Floats = npt.NDArray[np.float64]
 SETTLED_STEPS = 60
@@ -62,13 +63,14 @@ class ProbePanel(QWidget):
         self.series = PanelPlot(
             across="step", up="observed", whole_across=True, name="Time series of the orbit"
         )
+        self.wave = PanelPlot(across="time", up="observed", name="Waveform of the orbit between its samples")
         self.returns = PanelPlot(across="this step", up="next step", name="Return plot of the orbit")
         self._plots = QSplitter(Qt.Orientation.Horizontal)
         self._plots.setChildrenCollapsible(False)
-        self._plots.addWidget(self.series)
-        self._plots.addWidget(self.returns)
-        self._plots.setStretchFactor(0, 3)
-        self._plots.setStretchFactor(1, 2)
+        for plot, share in ((self.series, 3), (self.wave, 3), (self.returns, 2)):
+            self._plots.addWidget(plot)
+            self._plots.setStretchFactor(self._plots.count() - 1, share)
+        self.wave.hide()
         self._empty = QLabel(EMPTY)
         self._empty.setAlignment(Qt.AlignmentFlag.AlignCenter)
         self._empty.setWordWrap(True)
@@ -165,15 +167,26 @@ class ProbePanel(QWidget):
         stepped = finite_part(np.asarray(orbit.states[:, 0], dtype=np.float64))[0] if one_state else observed
         part = steps_shown(len(observed), str(self.part.currentData()))
         observe, state = self._names
-        self.series.set_labels(across="step", up=observe)
+        what = "step" if orbit.times is None else "sample"
+        self.part.setItemText(2, f"all {what}s")
+        self.series.set_labels(across=what, up=observe)
         across = state if one_state else observe
-        self.returns.set_labels(across=f"{across} at step n", up=f"{across} at step n + 1")
-        self._draw_series(observed, part)
+        self.returns.set_labels(across=f"{across} at {what} n", up=f"{across} at {what} n + 1")
+        is_wave = orbit.wave is not None and self.part.currentData() == "settled"
+        self.wave.setVisible(is_wave)
+        self.series.setVisible(not is_wave)
+        if orbit.wave is not None and is_wave:
+            self.wave.set_labels(across="time since the start", up=observe)
+            self._draw_wave(orbit.wave, observed)
+        else:
+            self._draw_series(observed, part)
         self._draw_returns(stepped[part.start : part.stop], orbit.map_curve if one_state else None)
         if escaped:
-            seen = f"The orbit escapes after {len(observed)} steps."
+            seen = f"The orbit escapes after {len(observed)} {what}s."
+            if orbit.times is not None:
+                seen = f"The orbit has no sample after {len(observed)}: it escapes, or is sampled no more."
         else:
-            seen = repeat_words(np.asarray(orbit.states, dtype=np.float64))
+            seen = repeat_words(np.asarray(orbit.states, dtype=np.float64), what)
         said = [words for words in (self._words, seen if escaped or not self._words else "") if words]
         self.words.set_words(" ".join(said))
 
@@ -200,6 +213,24 @@ class ProbePanel(QWidget):
             symbolBrush=QColor(theme.accent),
         )
         _fit(self.series, float(steps[0]), float(steps[-1]), values)
+
+    def _draw_wave(self, wave: Waveform, observed: Floats) -> None:
+        theme = current_theme()
+        plot = self.wave.plotItem
+        plot.clear()
+        plot.plot(wave.times, wave.observed, pen=line_pen(theme.text, 1.3), antialias=True)
+        samples = observed[wave.first : wave.first + len(wave.sample_times)]
+        plot.plot(
+            wave.sample_times,
+            samples,
+            pen=None,
+            symbol="o",
+            symbolSize=6,
+            antialias=True,
+            symbolPen=None,
+            symbolBrush=QColor(theme.accent),
+        )
+        _fit(self.wave, float(wave.times[0]), float(wave.times[-1]), wave.observed)
 
     def _draw_returns(self, values: Floats, curve: tuple[Floats, Floats] | None) -> None:
         theme = current_theme()
@@ -258,8 +289,9 @@ class ProbePanel(QWidget):
             return
         values = np.linspace(0.0, 1.0, SETTLED_STEPS)
         self._draw_series(values, range(SETTLED_STEPS))
+        self._draw_wave(Waveform(values, values, 0, values), values)
         self._draw_returns(values, (values, values))
-        for plot in (self.series, self.returns):
+        for plot in (self.series, self.wave, self.returns):
             plot.plotItem.clear()
 
     def showEvent(self, event: QShowEvent) -> None:
@@ -278,6 +310,7 @@ class ProbePanel(QWidget):
 
     def _redress(self) -> None:
         self.series.redress()
+        self.wave.redress()
         self.returns.redress()
         self._draw()
 
@@ -288,7 +321,7 @@ def finite_part(values: Floats) -> tuple[Floats, bool]:
     return (values[: bad[0]], True) if len(bad) else (values, False)
 
 
-def repeat_words(states: Floats) -> str:
+def repeat_words(states: Floats, what: str = "step") -> str:
     """What is seen of an orbit's period, as a sentence.
 
     The last steps are compared with those p steps earlier, for p up to `MOST_REPEAT`; agreement to a part in
@@ -299,6 +332,8 @@ def repeat_words(states: Floats) -> str:
     ----------
     states
         Shape (steps, number of states), finite.
+    what
+        What one of them is: a step, or a sample.
     """
     steps = len(states)
     for period in range(1, min(MOST_REPEAT, steps // 4) + 1):
@@ -307,8 +342,11 @@ def repeat_words(states: Floats) -> str:
         tail = states[-span:]
         near = 1e-9 * max(float(np.abs(tail).max()), 1e-300)
         if float(np.abs(tail - states[-span - period : -period]).max()) <= near:
-            return "Settled to a steady state." if period == 1 else f"Settled to period {period}."
-    return f"Not settled to any period up to {min(MOST_REPEAT, steps // 4)} in {steps} steps."
+            steady = (
+                "Settled to a steady state." if what == "step" else "Settled to period 1: every sample alike."
+            )
+            return steady if period == 1 else f"Settled to period {period}."
+    return f"Not settled to any period up to {min(MOST_REPEAT, steps // 4)} in {steps} {what}s."
 
 
 def steps_shown(steps: int, part: str) -> range:

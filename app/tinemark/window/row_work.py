@@ -15,14 +15,34 @@ from tinemark.onsets.results import Kind, LadderResult, Onset, Status
 from tinemark.systems.system import System
 from tinemark.window.ladder_questions import further_levels, ladder_question, ladder_request
 from tinemark.window.ledger_marks import marks_of
-from tinemark.window.onset_jobs import Job, sentence
+from tinemark.window.onset_jobs import LEAST_DIGITS, Job, digits_for, sentence
+from tinemark.window.view_navigation import magnitude
 
 if TYPE_CHECKING:
     from tinemark.window.main_window import MainWindow
 
 MEASURED = "Measured rows, and rows whose system is not known any more, are left as they are."
 
+SHARPENED = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
+"""Kinds of onsets of equations that are solved for to many digits."""
+
+MOST_SHARP_DIGITS = 60
+"""The time that digits take grows with their cube."""
+
+NO_MORE_DIGITS = (
+    "More digits are worked out for estimated flips, folds and Neimark-Sacker points of equations, up to "
+    f"{MOST_SHARP_DIGITS} digits."
+)
+
 EDITED = "The system was edited while this was worked out, so the answer is left out; click again."
+
+
+def known_digits(onset: Onset) -> int:
+    """Significant digits of an onset's value that its interval leaves certain."""
+    half, value = onset.half_width, abs(onset.value_fraction)
+    if not half:
+        return MOST_SHARP_DIGITS
+    return max(magnitude(value) - magnitude(half), 0) if value else 0
 
 
 class RowWork(QObject):
@@ -44,6 +64,8 @@ class RowWork(QObject):
         window.onsets.ladder_found.connect(self._keep_ladder)
         panel.row_selected.connect(self._selection_changed)
         panel.refine_requested.connect(self.refine)
+        panel.digits_requested.connect(self.more_digits)
+        panel.can_have_digits = self.can_have_digits
         panel.remove_requested.connect(self.remove)
         panel.note_edited.connect(self._note_edited)
         panel.copy_requested.connect(self.copy)
@@ -176,6 +198,33 @@ class RowWork(QObject):
     def refine_selected(self) -> None:
         """Work out the selected rows."""
         self.refine(self._window.ledger_panel.selected_ids() or [self.selected])
+
+    def can_have_digits(self, name: str) -> bool:
+        """Whether a row is one of equations, estimated, of a kind that can be solved for to many digits."""
+        session = self._keeper.session
+        row = session.ledger.row(name)
+        if row is None or row.onset.status is not Status.ESTIMATED or row.onset.kind not in SHARPENED:
+            return False
+        system = system_of_row(session, name) if row.onset.states else None
+        return system is not None and not system.is_map and known_digits(row.onset) < MOST_SHARP_DIGITS
+
+    def more_digits(self, rows: list[str]) -> None:
+        """Integrate rows of equations to more digits, and prove them where that closes."""
+        session = self._keeper.session
+        chosen = [name for name in rows if self.can_have_digits(name)]
+        if not chosen:
+            self._window.status.show_words(NO_MORE_DIGITS, "warning")
+        for name in chosen:
+            row, system = session.ledger.row(name), system_of_row(session, name)
+            assert row is not None and system is not None
+            wanted = max(digits_for(session.view), LEAST_DIGITS)
+            if known_digits(row.onset) >= wanted:
+                wanted = known_digits(row.onset) + LEAST_DIGITS
+            self._window.onsets.sharpen_row(system, row, min(wanted, MOST_SHARP_DIGITS))
+
+    def more_digits_of_selected(self) -> None:
+        """Integrate the selected rows to more digits."""
+        self.more_digits(self._window.ledger_panel.selected_ids() or [self.selected])
 
     def remove(self, rows: list[str]) -> None:
         """Take rows out of the ledger."""

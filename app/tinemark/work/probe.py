@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import threading
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -15,11 +16,14 @@ from tinemark.systems.errors import TinemarkError
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
 from tinemark.work.newest import NewestWins
+from tinemark.work.waveform import Waveform, waveform
 
 CURVE_POINTS = 801
 MAX_STEPS = 100_000
 SAMPLE_TOLERANCE = 1e-9
 """Error of an integration step of a probed orbit, as a share of a state's size: far below what is drawn."""
+WAVE_SAMPLES = 12
+"""Samples between which the waveform of an orbit of equations is drawn, the last ones."""
 _STOP_EVERY = 64
 
 
@@ -49,12 +53,19 @@ class ProbeOrbit:
     map_curve
         (xs, ys), float64, for one state: the state and the state one step later, over the state's range and
         the orbit. None for several states.
+    times
+        float64, shape (steps,): for equations, the time of each sample since the start. None for maps.
+    wave
+        For equations, the observed quantity between the last samples; None for maps, and where it could not
+        be followed.
     """
 
     parameter_value: Fraction
     states: NDArray[np.float64]
     observed: NDArray[np.float64]
     map_curve: tuple[NDArray[np.float64], NDArray[np.float64]] | None
+    times: NDArray[np.float64] | None = None
+    wave: Waveform | None = None
 
     @property
     def escaped(self) -> bool:
@@ -103,10 +114,10 @@ def request_probe(
         for name in system.parameter_names
     ]
     step = _stepper(system, parameter, float(value), fixed)
-    states = np.full((steps, len(system.states)), np.nan)
+    states, spans = np.full((steps, len(system.states)), np.nan), np.full(steps, np.nan)
     point = [float(state.start) for state in system.states]
     for row in range(steps):
-        point = step(point)
+        point, spans[row] = step(point)
         if not np.isfinite(point).all() or (stop is not None and row % _STOP_EVERY == 0 and stop.is_set()):
             break
         states[row] = point
@@ -116,20 +127,37 @@ def request_probe(
     # A constant formula is defined everywhere, an escaped orbit is not.
     observed[np.isnan(states).any(axis=1)] = np.nan
     curve = _curve(system, states[:, 0], fixed) if system.is_map and len(system.states) == 1 else None
-    return ProbeOrbit(value, states, observed, curve)
+    if system.is_map:
+        return ProbeOrbit(value, states, observed, curve)
+    times = np.cumsum(spans)
+    sound = int(np.isfinite(states).all(axis=1).sum())
+    last = slice(max(sound - WAVE_SAMPLES - 1, 0), sound)
+    wave = waveform(system, fixed, states[last], times[last], last.start, stop)
+    return ProbeOrbit(value, states, observed, curve, times, wave)
 
 
 def _stepper(
     system: System, parameter: str, value: float, fixed: list[float]
-) -> Callable[[list[float]], list[float]]:
-    """The map itself, or the way from one sample of equations to the next."""
+) -> Callable[[list[float]], tuple[list[float], float]]:
+    """The map itself, or the way from one sample of equations to the next and the time it takes."""
     if system.is_map:
         step = plain_function(system.expressions, system.names)
-        return lambda point: [float(x) for x in step([*point, *fixed])]
+        return lambda point: ([float(x) for x in step([*point, *fixed])], 1.0)
+    from tinemark.equations.return_map import FloatReturnMap
     from tinemark.equations.returns import return_map
 
     sampled = return_map(system, parameter, SAMPLE_TOLERANCE)
-    return lambda point: [float(x) for x in sampled.step(np.array(point)[:, None], value)[:, 0]]
+    period = math.nan
+    if sampled.is_driven:
+        period = float(plain_function([system.every_expression], system.parameter_names)(fixed)[0])
+
+    def on(point: list[float]) -> tuple[list[float], float]:
+        image = [float(x) for x in sampled.step(np.array(point)[:, None], value)[:, 0]]
+        # A section leaves the time to the orbit.
+        passed = sampled.last if isinstance(sampled, FloatReturnMap) and not sampled.is_driven else None
+        return image, period if passed is None else float(passed.times[0])
+
+    return on
 
 
 def _curve(
