@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Generator
 from dataclasses import dataclass, replace
+from fractions import Fraction
 
 import numpy as np
 
@@ -26,6 +27,7 @@ from tinemark.onsets.many_ladder import base_cycle, ladder_cycles
 from tinemark.onsets.many_onset import Settled
 from tinemark.onsets.many_polish import NotFound
 from tinemark.onsets.results import Kind, LadderLevel, LadderRequest, LadderResult, Onset, Step
+from tinemark.systems.errors import NoOnsetFound
 
 LADDER = Level(8, 1e-12)
 """Deep levels lie close together: what is followed must tell them apart."""
@@ -60,21 +62,43 @@ def ladder_flow(request: LadderRequest) -> Generator[Step | LadderLevel, None, L
     flow = FlowMap(request.system, request.parameter, LADDER)
     yield from first_samples(flow, float(request.start))
     cycle = yield from base_cycle(flow, request)
-    passage = yield from _past_pitchforks(flow, request, cycle)
-    result = yield from ladder_cycles(flow, request, passage.cycle)
-    if not passage.besides:
+    levels: list[LadderLevel] = []
+    besides: list[Onset] = []
+    while True:
+        passage = yield from _past_pitchforks(flow, request, cycle)
+        besides += passage.besides
+        if levels and not passage.besides:
+            break
+        left = replace(request, base_period=cycle.period, levels=request.levels - len(levels))
+        try:
+            result = yield from _renumbered(ladder_cycles(flow, left, passage.cycle), len(levels))
+        except NoOnsetFound as error:
+            if not levels:
+                raise
+            result = replace(result, message=str(error))
+            break
+        levels += result.levels
+        if len(levels) >= request.levels or not result.levels:
+            break
+        # A doubled cycle may be its own mirror image again, as about a state of rest that is shaken.
+        following = yield from _doubled(flow, levels[-1].onset, float(request.stop))
+        if following is None:
+            break
+        cycle = following
+    result = replace(result, base_period=request.base_period, levels=tuple(levels))
+    if not besides:
         return result
     words = "; ".join(
         f"the ladder passed the pitchfork of period {onset.period_before} at {onset.parameter} = "
         f"{onset.value} and went on along one of the two branches that part there"
-        for onset in passage.besides
+        for onset in besides
     )
     message = f"{result.message}; {words}" if result.message else words
-    return replace(result, message=message, besides=(*passage.besides, *result.besides))
+    return replace(result, message=message, besides=(*besides, *result.besides))
 
 
 def _past_pitchforks(flow: FlowMap, request: LadderRequest, cycle: Cycle) -> Generator[Step, None, _Passage]:
-    start, stop = float(request.start), float(request.stop)
+    start, stop = cycle.r, float(request.stop)
     width, scales = abs(stop - start), flow.scales(start)
     family = ManyFamily(flow, scales, width)
     screen = Screen(min(start, stop), width, 0.0, 1.0, margin=0.0)
@@ -103,6 +127,45 @@ def _past_pitchforks(flow: FlowMap, request: LadderRequest, cycle: Cycle) -> Gen
         return _Passage(cycle)
     beyond = yield from _branch_beyond(flow, pitchfork, stop, width, scales)
     return _Passage(beyond or cycle, (pitchfork.onset,) if beyond else ())
+
+
+def _renumbered(
+    levels: Generator[Step | LadderLevel, None, LadderResult], before: int
+) -> Generator[Step | LadderLevel, None, LadderResult]:
+    """A ladder whose levels are counted on from those before."""
+    counted: list[LadderLevel] = []
+    while True:
+        try:
+            item = next(levels)
+        except StopIteration as done:
+            result: LadderResult = done.value
+            return replace(result, levels=tuple(counted))
+        if isinstance(item, LadderLevel):
+            item = replace(item, level=before + len(counted) + 1)
+            counted.append(item)
+        yield item
+
+
+def _doubled(flow: FlowMap, flip: Onset, stop: float) -> Generator[Step, None, Cycle | None]:
+    """The doubled cycle that orbits settle on soon after a flip, on the way to the stop."""
+    value, period = float(flip.value_fraction), flip.period_after
+    scales = flow.scales(value)
+    state = np.array([[float(Fraction(text))] for _, text in flip.states])
+    for share in SHARES:
+        r = value + share * (stop - value)
+        now = state + PUSH * scales[:, None]
+        for place in range(TRANSIENT):
+            now = flow.step(now, r)
+            if place % SLICE == 0:
+                yield Step(f"taking up the cycle of period {period}")
+        points = []
+        for _ in range(period):
+            points.append(now[:, 0])
+            now = flow.step(now, r)
+        found = polished(flow, np.array(points), r, scales) if np.isfinite(points).all() else None
+        if found is not None and found.period == period:
+            return found
+    return None
 
 
 def _branch_beyond(

@@ -28,7 +28,7 @@ from tinemark.onsets.results import Kind, Onset, Sensitivity, Status, Step
 from tinemark.systems.system import System
 
 STEPS = (Fraction(1, 3000), Fraction(1, 6000))
-"""Lengths of the differences, as shares of a parameter's value."""
+"""Lengths of the differences for a cycle of period 1, as shares of a parameter's value."""
 MOST_DIGITS, LEAST_DIGITS = 12, 2
 REGULAR = frozenset({Kind.FLIP, Kind.FOLD, Kind.NEIMARK_SACKER})
 NOTHING = 1e-9
@@ -93,7 +93,9 @@ def _derivative(
     value = flow.many.system.parameter(name).value.fraction
     size = abs(value) or Fraction(1)
     results: list[float] = []
-    for share in STEPS:
+    # Long cycles are fine structures: they change more for the same change of a parameter.
+    steps = [share / found.cycle.period for share in STEPS]
+    for share in steps:
         total = 0.0
         for place, weight in STENCIL:
             moved = value + Fraction(place) * share * size
@@ -105,7 +107,7 @@ def _derivative(
         results.append(total / float(share * size))
     best, other = results[-1], results[0]
     # Beside the steps' own error, what the value's error makes of a difference.
-    apart = abs(best - other) + float(onset.half_width) / float(STEPS[-1] * size)
+    apart = abs(best - other) + float(onset.half_width) / float(steps[-1] * size)
     if abs(best) <= apart:
         return "0" if apart * float(size) < NOTHING * abs(found.cycle.r) else ""
     digits = min(MOST_DIGITS, leading_power(Fraction(best)) - leading_power(Fraction(apart)) - 1)

@@ -69,7 +69,7 @@ def estimated(
 
 def _places_that_hold(half: Fraction) -> int:
     """Decimals such that the last one is off by at most one, rounding included."""
-    return -leading_power(half) - 1 if half > 0 else 17
+    return -leading_power(2 * half) - 1 if half > 0 else 17
 
 
 def _state_text(value: float, half: float, digits: int) -> str:
