@@ -10,12 +10,15 @@ from concurrent.futures import ThreadPoolExecutor
 import environment
 import libraries
 
+SECOND_HALF = ("equations", "onsets", "verify")
+"""Folders of tests/ that take about half of the time, and are run by a second pytest on the other core."""
+
 
 def check_everything(pytest_arguments: list[str]) -> int:
     """Run every check and print one closing line for each; 0 when all passed.
 
-    The checks that only read the sources run beside pytest, on the other core, and their words are
-    printed once it is done.
+    Without arguments the tests are divided between two runs of pytest, side by side. The second run and
+    the checks that only read the sources are told of once the first is done.
     """
     if sys.platform.startswith("linux"):
         libraries.provide(libraries.TESTS)
@@ -31,21 +34,34 @@ def check_everything(pytest_arguments: list[str]) -> int:
     surroundings = {name: value for name, value in os.environ.items() if name != "PYTHONHOME"}
     surroundings["PYTHONPATH"] = str(environment.ROOT / "app")
     surroundings.setdefault("QT_QPA_PLATFORM", "offscreen")
-    with ThreadPoolExecutor(max_workers=1) as beside:
-        running = {name: beside.submit(_read, command, surroundings) for name, command in reading.items()}
-        pytest = subprocess.run(
-            [python, "-m", "pytest", *pytest_arguments], check=False, cwd=environment.ROOT, env=surroundings
-        )
-        failed = {"pytest": pytest.returncode != 0}
+    first, second = _halves(pytest_arguments)
+    pytest = [python, "-m", "pytest"]
+    with ThreadPoolExecutor(max_workers=2) as beside:
+        running = {}
+        if second:
+            running[f"pytest {' '.join(SECOND_HALF)}"] = beside.submit(
+                _read, [*pytest, *second], surroundings
+            )
+        running |= {name: beside.submit(_read, command, surroundings) for name, command in reading.items()}
+        ended = subprocess.run([*pytest, *first], check=False, cwd=environment.ROOT, env=surroundings)
+        failed = {"pytest": ended.returncode != 0}
         for name, answer in running.items():
             finished = answer.result()
             failed[name] = finished.returncode != 0
-            if failed[name]:
+            if failed[name] or name.startswith("pytest"):
                 print(f"\n==== {name}\n{finished.stdout}", flush=True)
     print()
     for name, bad in failed.items():
         print(f"{name}: {'FAILED' if bad else 'good'}")
     return 1 if any(failed.values()) else 0
+
+
+def _halves(arguments: list[str]) -> tuple[list[str], list[str]]:
+    """Arguments of the two runs of pytest; the second is empty where the user says what to run."""
+    if arguments:
+        return arguments, []
+    folders = [f"tests/{name}" for name in SECOND_HALF]
+    return [f"--ignore={folder}" for folder in folders], folders
 
 
 def _read(command: list[str], surroundings: dict[str, str]) -> subprocess.CompletedProcess[str]:
