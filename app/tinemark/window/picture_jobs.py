@@ -98,6 +98,7 @@ class PictureJobs(QObject):
             self._asked.clear()
             self._diagram.show_waiting("")
             self._diagram.forget_picture()
+            self._status.show_steps(0)
             self.measured.emit(math.nan)
         self._set_tones(session)
         wanted = (request, budget_steps(picture.budget, system))

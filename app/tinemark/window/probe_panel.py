@@ -12,6 +12,7 @@ from PySide6.QtWidgets import (
     QLineEdit,
     QSplitter,
     QStackedLayout,
+    QStackedWidget,
     QToolButton,
     QVBoxLayout,
     QWidget,
@@ -67,10 +68,13 @@ class ProbePanel(QWidget):
         self.returns = PanelPlot(across="this step", up="next step", name="Return plot of the orbit")
         self._plots = QSplitter(Qt.Orientation.Horizontal)
         self._plots.setChildrenCollapsible(False)
-        for plot, share in ((self.series, 3), (self.wave, 3), (self.returns, 2)):
-            self._plots.addWidget(plot)
-            self._plots.setStretchFactor(self._plots.count() - 1, share)
-        self.wave.hide()
+        self._times = QStackedWidget()
+        self._times.addWidget(self.series)
+        self._times.addWidget(self.wave)
+        self._plots.addWidget(self._times)
+        self._plots.addWidget(self.returns)
+        self._plots.setStretchFactor(0, 3)
+        self._plots.setStretchFactor(1, 2)
         self._empty = QLabel(EMPTY)
         self._empty.setAlignment(Qt.AlignmentFlag.AlignCenter)
         self._empty.setWordWrap(True)
@@ -173,8 +177,7 @@ class ProbePanel(QWidget):
         across = state if one_state else observe
         self.returns.set_labels(across=f"{across} at {what} n", up=f"{across} at {what} n + 1")
         is_wave = orbit.wave is not None and self.part.currentData() == "settled"
-        self.wave.setVisible(is_wave)
-        self.series.setVisible(not is_wave)
+        self._times.setCurrentWidget(self.wave if is_wave else self.series)
         if orbit.wave is not None and is_wave:
             self.wave.set_labels(across="time since the start", up=observe)
             self._draw_wave(orbit.wave, observed)
