@@ -141,3 +141,16 @@ def test_waiting_for_the_compiler_can_be_given_up():
     broken = Compiling("raise ValueError('no module')", what)
     with pytest.raises(ValueError, match="no module"):
         broken.module(StopFlag().cell)
+
+
+def test_exponents_of_rates_that_jump_are_not_known():
+    """A tangent carried through a jump would lack what the jump does to it (Aizerman & Gantmakher 1958)."""
+    switched = DUFFING.replace("F*cos(w*t)", "(F if cos(w*t) > 0 else -F)")
+    assert switched != DUFFING
+    asked = request(made(switched, **{'parameter = "w"': 'parameter = "F"'}), "0.1", "0.15", "0", "2", 16)
+    drawing = create(replace(asked, transient_steps=64))
+    append(drawing, 512)
+    field = snapshot(drawing)
+    assert np.isnan(field.lyapunov).all()
+    # What does not need the tangent is as ever.
+    assert (field.period == 1).all() and not field.escaped.any()

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
-from functools import lru_cache
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from tinemark.density.kernels import BUFFER, Kernels
 from tinemark.density.request import PictureRequest
 from tinemark.density.strobe_runner import PILOTS, Runner, Tuned, goal_of_cells, tuned
+from tinemark.equations.differences import may_jump
 from tinemark.systems.formula import read_formula
 from tinemark.systems.native import jit
 from tinemark.systems.plain import plain_function
@@ -131,11 +132,18 @@ class _Drawn:
                 stop,
             ):
                 break
+            if measured and self._jumps:
+                # A tangent does not see what a jump of the rates does to it: what it grew by is not known.
+                growth[first : first + columns] = np.nan
             if counted:
                 places = self._seen(room, swept[first : first + columns]) * scale + offset
                 count_cells(counts, first, places)
             done += room.shape[2]
         return done
+
+    @cached_property
+    def _jumps(self) -> bool:
+        return may_jump(self.runner.motion.rates)
 
     def _seen(self, noted: Floats, swept: Floats) -> Floats:
         values = [noted[:, i, :] for i in range(noted.shape[1])]

@@ -45,6 +45,7 @@ class LyapunovStrip:
 
     def __init__(self) -> None:
         self._exponents: NDArray[np.float64] | None = None
+        self._is_known = False
         self._range = (-1.0, 0.5)
         self._drawn_for: tuple[object, ...] = ()
         self._curve: QPixmap | None = None
@@ -52,6 +53,7 @@ class LyapunovStrip:
     def show(self, exponents: NDArray[np.float64] | None) -> None:
         """Take the exponents of another field, or of none."""
         self._exponents, self._curve, self._drawn_for = exponents, None, ()
+        self._is_known = exponents is not None and not np.isnan(exponents).all()
         self._range = strip_range(exponents) if exponents is not None else (-1.0, 0.5)
 
     def paint(
@@ -116,10 +118,11 @@ class LyapunovStrip:
             if abs(centre - zero) > metrics.height() * 0.9:
                 box.moveCenter(QPointF(box.width() / 2, centre))
                 painter.drawText(box, right, f"{value:+g}".replace("-", "\N{MINUS SIGN}"))
-        tag = QRectF(0, 0, metrics.horizontalAdvance(NAME) + 6, metrics.height())
+        words = NAME if self._is_known or not named else f"{NAME}: not known"
+        tag = QRectF(0, 0, metrics.horizontalAdvance(words) + 6, metrics.height())
         tag.moveBottomLeft(QPointF(strip.left() + 4, strip.bottom() - 3))
         painter.fillRect(tag, color(theme.plot, 0.8))
-        painter.drawText(tag, Qt.AlignmentFlag.AlignCenter, NAME)
+        painter.drawText(tag, Qt.AlignmentFlag.AlignCenter, words)
 
 
 def _paint_curve(
