@@ -105,7 +105,7 @@ def test_rows_of_maps_and_of_other_kinds_have_no_more_digits(qtbot, tmp_path, de
         window.keeper.set_ledger("pick an onset", ledger)
         window.rows.select(row)
         assert window.ledger_panel.digits_button.isHidden()
-        assert not window.rows.can_have_digits(row)
+        assert not window.rows.can_have_digits(window.keeper.session.ledger.row(row))
 
 
 def test_only_kinds_that_can_be_sharpened_are(window):
@@ -113,7 +113,7 @@ def test_only_kinds_that_can_be_sharpened_are(window):
     pitchfork = replace(ROUGH, kind=Kind.PITCHFORK, value="3", lower="2.9999", upper="3.0001")
     ledger, row = ledgers.add(window.keeper.session.ledger, pitchfork, place)
     window.keeper.set_ledger("pick an onset", ledger)
-    assert not window.rows.can_have_digits(row)
+    assert not window.rows.can_have_digits(window.keeper.session.ledger.row(row))
 
 
 def test_the_probe_of_equations_draws_the_waveform_and_its_samples(qtbot):

@@ -73,6 +73,11 @@ def _has_selection(w: MainWindow) -> bool:
     return w.rows.selected_row is not None
 
 
+def _can_have_digits(w: MainWindow) -> bool:
+    row = w.rows.selected_row
+    return row is not None and w.rows.can_have_digits(row)
+
+
 ACTIONS: tuple[Action, ...] = (
     Action(
         "open",
@@ -364,7 +369,7 @@ ACTIONS: tuple[Action, ...] = (
         "More digits of the selected row",
         lambda w: w.rows.more_digits_of_selected(),
         ("Ctrl+Alt+R",),
-        enabled=lambda w: w.rows.can_have_digits(w.rows.selected),
+        enabled=_can_have_digits,
         tip="Integrate the equations in higher precision, and prove the onset where that closes",
     ),
     Action(

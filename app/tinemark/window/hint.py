@@ -11,6 +11,7 @@ from PySide6.QtWidgets import QHBoxLayout, QLabel, QSizePolicy, QToolButton, QWi
 from tinemark.window.theme import color, current_theme
 
 WORDS = "Drag a box to zoom, click near a split to get its proved value."
+WORDS_OF_EQUATIONS = "Drag a box to zoom, click near a split to get its value."
 OTHER = "Other demo: resonator board"
 
 
@@ -47,6 +48,10 @@ class HintLine(QWidget):
         row.addWidget(self.other)
         row.addWidget(close)
         self._zoomed = self._picked = False
+
+    def show_kind(self, *, is_map: bool) -> None:
+        """Say what a click gives: onsets of equations are proved on request alone."""
+        self.label.setText(WORDS if is_map else WORDS_OF_EQUATIONS)
 
     def zoomed(self) -> None:
         """The view has been zoomed for the first time."""

@@ -20,6 +20,7 @@ from PySide6.QtWidgets import (
 
 from tinemark.document.estimates import LadderEstimates
 from tinemark.document.ledger import Ledger, estimates, ladder_ids
+from tinemark.document.row import Row
 from tinemark.onsets.results import Status
 from tinemark.window.faces import FaceKeeper
 from tinemark.window.field_editors import MenuButton
@@ -68,7 +69,7 @@ class LedgerPanel(QWidget):
         super().__init__(parent)
         self.setWindowTitle("Ledger")
         self.setAccessibleName("Ledger")
-        self.can_have_digits: Callable[[str], bool] = lambda _: False
+        self.can_have_digits: Callable[[Row], bool] = lambda _: False
         self._quiet = False
         self._forced_narrow = False
         self._widths: dict[Column, float] = {}
@@ -299,7 +300,7 @@ class LedgerPanel(QWidget):
         self.copy_button.setEnabled(bool(self.model.entries))
         self.extend_button.setEnabled(bool(self._selected_ladder()))
         self.refine_button.setEnabled(any(e.row.onset.status in REFINABLE for e in entries))
-        self.digits_button.setVisible(any(self.can_have_digits(row_id) for row_id in ids))
+        self.digits_button.setVisible(any(self.can_have_digits(e.row) for e in entries))
         self.remove_button.setEnabled(bool(ids))
         self.detail_button.setEnabled(bool(self.model.entries))
         current = self.current_id()
@@ -325,7 +326,7 @@ class LedgerPanel(QWidget):
             self.refine_requested.emit(ids)
 
     def _sharpen(self) -> None:
-        ids = [row_id for row_id in self.selected_ids() if self.can_have_digits(row_id)]
+        ids = [e.row.id for e in self._selected_entries() if self.can_have_digits(e.row)]
         if ids:
             self.digits_requested.emit(ids)
 

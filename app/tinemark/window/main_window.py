@@ -240,6 +240,7 @@ class MainWindow(QMainWindow):
         )
         self.diagram.close_callout()
         self.settings_panel.show_system(system)
+        self.hint.show_kind(is_map=system.is_map)
         self.head.show_title(system.title, f"{session.observe} against {session.parameter}")
         self.system_card.show_system(session.system_text, self.keeper.builtin)
         self.workers.warm(system)

@@ -199,24 +199,24 @@ class RowWork(QObject):
         """Work out the selected rows."""
         self.refine(self._window.ledger_panel.selected_ids() or [self.selected])
 
-    def can_have_digits(self, name: str) -> bool:
+    def can_have_digits(self, row: Row) -> bool:
         """Whether a row is one of equations, estimated, of a kind that can be solved for to many digits."""
-        session = self._keeper.session
-        row = session.ledger.row(name)
-        if row is None or row.onset.status is not Status.ESTIMATED or row.onset.kind not in SHARPENED:
+        onset, system = row.onset, self._keeper.system
+        if onset.status is not Status.ESTIMATED or onset.kind not in SHARPENED or not onset.states:
             return False
-        system = system_of_row(session, name) if row.onset.states else None
-        return system is not None and not system.is_map and known_digits(row.onset) < MOST_SHARP_DIGITS
+        known = system if system.key == row.system_key else system_of_row(self._keeper.session, row.id)
+        return known is not None and not known.is_map and known_digits(onset) < MOST_SHARP_DIGITS
 
     def more_digits(self, rows: list[str]) -> None:
         """Integrate rows of equations to more digits, and prove them where that closes."""
         session = self._keeper.session
-        chosen = [name for name in rows if self.can_have_digits(name)]
+        asked = [row for name in rows if (row := session.ledger.row(name)) is not None]
+        chosen = [row for row in asked if self.can_have_digits(row)]
         if not chosen:
             self._window.status.show_words(NO_MORE_DIGITS, "warning")
-        for name in chosen:
-            row, system = session.ledger.row(name), system_of_row(session, name)
-            assert row is not None and system is not None
+        for row in chosen:
+            system = system_of_row(session, row.id)
+            assert system is not None
             wanted = max(digits_for(session.view), LEAST_DIGITS)
             if known_digits(row.onset) >= wanted:
                 wanted = known_digits(row.onset) + LEAST_DIGITS
