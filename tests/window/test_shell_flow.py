@@ -37,7 +37,10 @@ def test_look_click_prove_keep_and_reopen(window, qtbot, tmp_path):
     QTest.mouseMove(window.diagram, end)
     QTest.mouseRelease(window.diagram, *CLICK, end)
     view = window.keeper.session.view
-    qtbot.waitUntil(lambda: window.diagram.image_view == view, timeout=30_000)
+    # Of a system not drawn before, the first picture does not wait for its periods.
+    qtbot.waitUntil(
+        lambda: window.diagram.image_view == view and window.diagram.field.period.any(), timeout=60_000
+    )
     field = window.diagram.field
     assert field.counts.shape == (window.diagram.parts.rows, window.diagram.parts.columns)
     assert field.period[5] == 2 and field.period[-5] == 4

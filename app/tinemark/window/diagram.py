@@ -46,12 +46,13 @@ TOOL_WORDS = {"pick": "Pick", "read": "Read by eye", "probe": "Probe"}
 
 @dataclass(frozen=True)
 class Labels:
-    """Names and units at the axes."""
+    """Names and units at the axes, and what a column is called whose orbit is lost."""
 
     parameter: str = ""
     observe: str = ""
     parameter_unit: str = ""
     observe_unit: str = ""
+    lost: str = "escaped"
 
 
 @dataclass(frozen=True)
@@ -357,7 +358,8 @@ class Diagram(QWidget):
             painter.fillRect(plot, color(theme.plot))
             paint.paint_stretched(painter, plot, view, self.image, self.image_view)
         if self.field is not None and not self.notice:
-            paint.paint_escaped(painter, theme, plot, self.field.escaped, *self._picture_extent())
+            extent = self._picture_extent()
+            paint.paint_escaped(painter, theme, plot, self.field.escaped, *extent, self.labels.lost)
         if self.image is None and not self.notice:
             painter.setPen(color(theme.muted))
             painter.drawText(plot, Qt.AlignmentFlag.AlignCenter, "Drawing\N{HORIZONTAL ELLIPSIS}")

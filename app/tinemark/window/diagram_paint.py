@@ -88,13 +88,18 @@ def paint_periods(
 
 
 def paint_escaped(
-    painter: QPainter, theme: Theme, area: QRectF, escaped: NDArray[np.bool_], left: float, width: float
+    painter: QPainter,
+    theme: Theme,
+    area: QRectF,
+    escaped: NDArray[np.bool_],
+    left: float,
+    width: float,
+    word: str,
 ) -> None:
-    """Columns whose orbit escaped: hatched, and named where the word fits."""
+    """Columns whose orbit escaped, or has no sample: hatched, and named where the word fits."""
     if not escaped.any():
         return
     step = width / len(escaped)
-    word = "escaped"
     metrics = QFontMetricsF(painter.font())
     painter.save()
     painter.setClipRect(area)

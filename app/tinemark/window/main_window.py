@@ -235,9 +235,10 @@ class MainWindow(QMainWindow):
     def _show_system(self, session: Session, system: System) -> None:
         swept = system.parameter(session.parameter)
         observed = next((s for s in system.states if s.name == session.observe), None)
-        self.diagram.show_labels(
-            Labels(session.parameter, session.observe, swept.unit, observed.unit if observed else "")
-        )
+        # An orbit of equations may be lost in other ways: a section that is not crossed, or stiff rates.
+        lost = "escaped" if system.is_map else "no sample"
+        unit = observed.unit if observed else ""
+        self.diagram.show_labels(Labels(session.parameter, session.observe, swept.unit, unit, lost))
         self.diagram.close_callout()
         self.settings_panel.show_system(system)
         self.hint.show_kind(is_map=system.is_map)
