@@ -173,6 +173,10 @@ ARGUMENTS = {
         ["picture", "logistic", "--range", "3", "4", "--size", "big", "-o", "a.png"],
         ["--size"],
     ),
+    "picture of a size without room between the axes": (
+        ["picture", "logistic", "--range", "3", "4", "--size", "64x48", "-o", "a.png"],
+        ["--size", "95 x 95"],
+    ),
     "picture of a huge size": (
         ["picture", "logistic", "--range", "3", "4", "--size", "99999x99999", "-o", "a.png"],
         ["--size"],

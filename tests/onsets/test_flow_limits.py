@@ -11,7 +11,7 @@ from flow_problems import equations
 from running import finish
 
 from tinemark.onsets.engine import branches, ladder, refine, survey
-from tinemark.onsets.flow_limits import shorter_repeat, why_no_cycle
+from tinemark.onsets.flow_limits import first_samples, shorter_repeat, why_no_cycle
 from tinemark.onsets.flow_map import FlowMap
 from tinemark.onsets.flow_search import settled_orbits, starts
 from tinemark.onsets.flow_symmetry import Rates, symmetries, symmetry_words, true_period
@@ -62,6 +62,12 @@ def test_a_strobe_of_several_drive_periods_is_told() -> None:
     assert true_period(Rates(driven("-x + abs(sin(w*t)) + r", "2*pi/w"), "r", 1.0)) == Fraction(1, 2)
 
 
+@pytest.mark.parametrize(("every", "share"), [("2*pi/w", "1"), ("3*pi/w", "2/3"), ("4*pi/w", "1/2")])
+def test_a_drive_is_seen_beside_rates_that_are_huge(every: str, share: str) -> None:
+    for rate in ("r*cos(w*t) - exp(60*x)", "r*cos(w*t) - 1e10*(x - 3)", "-x + (r if cos(w*t) > 0.97 else 0)"):
+        assert true_period(Rates(driven(rate, every), "r", 1.0)) == Fraction(share), rate
+
+
 def test_symmetries() -> None:
     system = flow_problems.pendulum().system
     found = list(symmetries(system, "g", 1.0))
@@ -80,6 +86,31 @@ def test_orbits_that_escape() -> None:
     with pytest.raises(NoOnsetFound, match="leaves every bound") as raised:
         finish(refine(click(system, "1")))
     assert "try another start" in str(raised.value)
+
+
+def test_the_empty_side_of_a_fold_is_looked_past() -> None:
+    flow = FlowMap(driven("r - x**2", "1"), "r")
+    with pytest.raises(NoOnsetFound, match="leaves every bound"):
+        finish(first_samples(flow, -1.0))
+    finish(first_samples(flow, -1.0, 4.0))
+
+
+def test_rates_without_a_value_are_told_from_stiff_ones() -> None:
+    flow = FlowMap(driven("log(x)*r - 2", "1"), "r")
+    with pytest.raises(NoOnsetFound, match="the rates have no value") as raised:
+        finish(first_samples(flow, 1.0))
+    assert "try another start" in str(raised.value)
+    rates = {"x": "-y + r*log(-1 - y**2)", "y": "x"}
+    flow = FlowMap(equations("flow", rates, {"r": "1"}, 'crosses = "y"', ("1", "-1"), "2"), "r")
+    with pytest.raises(NoOnsetFound, match="the rates have no value"):
+        finish(first_samples(flow, 1.0))
+
+
+def test_a_branch_that_comes_to_rest_on_the_section() -> None:
+    rates = {"x": "r*x - y - x*(x**2 + y**2)", "y": "x + r*y - y*(x**2 + y**2)"}
+    system = equations("flow", rates, {"r": "0.25"}, 'crosses = "y"', ("0.5", "0.1"), "1")
+    with pytest.raises(NoOnsetFound, match="comes to rest on the section"):
+        finish(refine(click(system, "0.02", "0.2")))
 
 
 def test_rates_too_fast_to_follow() -> None:

@@ -106,11 +106,18 @@ def steps_word(system: System) -> str:
 def draw(session: Session, system: System, size: tuple[int, int], output: Path) -> int:
     """Draw a session's view to its budget and write it with axes; returns the steps drawn."""
     from tinemark.density import renderer
-    from tinemark.density.png import Frame, framed_cells, write_picture_png
+    from tinemark.density.png import Frame, framed_cells, smallest_framed, write_picture_png
     from tinemark.density.request import PictureRequest
     from tinemark.document.session import budget_steps
 
     settings = session.picture
+    least = smallest_framed()
+    if size[0] < least[0] or size[1] < least[1]:
+        raise TinemarkError(
+            f"{size[0]} x {size[1]} pixels leave no room between the axes",
+            where="--size",
+            what_to_do=f"take {least[0]} x {least[1]} or more",
+        )
     columns, rows = framed_cells(*size)
     request = PictureRequest(
         system=system,

@@ -35,6 +35,8 @@ class Ground:
 LIGHT_GROUND = Ground((255, 255, 255), (28, 34, 43), (128, 137, 150), (176, 74, 20))
 DARK_GROUND = Ground((15, 18, 24), (226, 230, 236), (118, 128, 143), (255, 158, 92))
 _STRIP_NAME = "Lyapunov"
+FEWEST_CELLS = 8
+"""Columns and rows that a framed picture is drawn with at least."""
 
 
 @dataclass(frozen=True)
@@ -61,6 +63,15 @@ def framed_cells(width: int, height: int) -> tuple[int, int]:
     """Columns and rows of the field that fills a framed image of that many pixels."""
     layout = _Layout.of(width, height)
     return layout.columns, layout.rows
+
+
+def smallest_framed() -> tuple[int, int]:
+    """Width and height below which axes, strip and names leave no room for a picture."""
+    small = _Layout.of(1, 1)
+    return (
+        small.left + FEWEST_CELLS + 3 * HEIGHT,
+        small.strip_top + small.strip_rows + 5 * HEIGHT + FEWEST_CELLS,
+    )
 
 
 def write_picture_png(

@@ -46,8 +46,11 @@ on the way, and the highest peak below zero."""
 BLOCKS = LANES * 30
 """Where the blocks of rows begin."""
 
-ESCAPED, TOO_MANY, STOPPED, GRAZES, RESTS = 1.0, 2.0, 3.0, 4.0, 5.0
+ESCAPED, TOO_MANY, STOPPED, GRAZES, RESTS, UNDEFINED = 1.0, 2.0, 3.0, 4.0, 5.0, 6.0
 """Codes, as in `Reason`."""
+
+VANISHED = 1e-200
+"""Steps shorter than this are no steps: they were refused over and over, as the rates have no value there."""
 
 RESTING_STEPS, RESTING_MOVE = 40.0, 100.0
 """Steps in a row that move less than some times what is allowed as an error: the orbit has come to rest.
@@ -91,6 +94,8 @@ def first_steps(
     W: Memory, lanes: int, X: int, F: int, states: int, allowed: Memory, relative: float, longest: float
 ) -> None:
     """A first step that moves the states by a hundredth of their size (Hairer et al. 1993, II.4)."""
+    # Rates that are zero or undefined tell nothing of the first step.
+    longest = longest if longest < np.inf else 1.0
     for k in range(lanes):
         size, speed = 1e-4, 0.0
         for i in range(states):
@@ -323,6 +328,8 @@ def watch(W: Memory, lanes: int, X: int, states: int, bounds: Memory) -> None:
             put(W, OUT + k, out if size < bound else ESCAPED)
     for k in range(lanes):
         code, going, out = get(W, CODE + k), get(W, GOING + k), get(W, OUT + k)
+        none = UNDEFINED if get(W, WANTED + k) < VANISHED else 0.0
+        out = none if out < none else out  # noqa: FURB136
         code = out if code < out else code  # noqa: FURB136
         put(W, CODE + k, code)
         put(W, GOING + k, 0.0 if code > 0.5 else going)

@@ -14,6 +14,7 @@ class Reason(IntEnum):
     STOPPED = 3
     GRAZES = 4
     RESTS = 5
+    UNDEFINED = 6
 
 
 _WORDS = {
@@ -25,6 +26,8 @@ _WORDS = {
     Reason.GRAZES: "the orbit touches the section without passing through it; try another section",
     Reason.RESTS: "the orbit comes to rest and meets the section no more; "
     "try another start or parameter value",
+    Reason.UNDEFINED: "the rates have no value, or no finite one, where the orbit goes, as a logarithm or a "
+    "division by zero has none; try another start, or write the rates for all states met",
 }
 _NEVER_CROSSED = (
     "the section is not crossed within {limit} integration steps; try another section, the other direction "

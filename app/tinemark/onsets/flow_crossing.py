@@ -120,6 +120,9 @@ def _nodes(
             lean = (cycles[0] - found.points) / (places[0] - places[at])
             middle = found.points - places[at] * lean
         matrix = condensed(flow, found.points, r).monodromy
+        if not np.isfinite(matrix).all():
+            # A resting point on the section is passed at no speed.
+            raise NotFound("the branch comes to rest on the section")
         tests[at] = float(min(np.linalg.eigvals(matrix) - 1, key=abs).real)
     return centre.r + span * places, [cycles[at] for at in range(NODES)], tests
 
@@ -142,6 +145,8 @@ def _crossing(flow: FlowMap, cycle: Cycle, scales: Floats, speed: float, last_st
     linear = flow.linearised(cycle.points, cycle.r)
     parts, n = condense(linear, cycle.points), len(scales)
     matrix = parts.monodromy
+    if not np.isfinite(matrix).all():
+        raise NotFound("the branch comes to rest on the section")
     scaled = matrix * scales / scales[:, None]
     vector = np.linalg.svd(scaled - np.eye(n))[2][-1] * scales
     vectors = [vector]

@@ -97,7 +97,7 @@ def refine_flow(request: RefineRequest) -> Generator[Step, None, RefineResult]:
     if place.width < narrowest:
         place = Place(place.r, None, narrowest, None)
     flow = FlowMap(request.system, request.parameter)
-    yield from first_samples(flow, place.r)
+    yield from first_samples(flow, place.r, place.width)
     scales = flow.scales(place.r)
     cycles, history = yield from cycles_near(flow, place, scales)
     if not cycles:

@@ -18,6 +18,8 @@ from tinemark.systems.errors import NoOnsetFound
 from tinemark.systems.system import System
 
 SHORT_ORBIT = 40
+LOOKED_AT = (0.0, -0.03, 0.03, -0.15, 0.15, -0.5, 0.5)
+"""Where a view is looked at for orbits that go on, in widths from its middle."""
 TANGENT_SAMPLES = 400
 NEUTRAL = 3e-3
 """A largest exponent a sample below this is no sign of chaos."""
@@ -90,8 +92,15 @@ def check_equations(system: System, parameter: str, value: float) -> Generator[S
     return flow
 
 
-def first_samples(flow: FlowMap, value: float) -> Generator[Step, None, None]:
+def first_samples(flow: FlowMap, value: float, width: float = 0.0) -> Generator[Step, None, None]:
     """Refuse a system whose orbits have no samples.
+
+    Parameters
+    ----------
+    value
+        Of the swept parameter.
+    width
+        Of the range around it that is searched: beside a fold there may be orbits on one side only.
 
     Raises
     ------
@@ -99,13 +108,14 @@ def first_samples(flow: FlowMap, value: float) -> Generator[Step, None, None]:
         All starts escape, are too stiff to integrate, or never cross the section; says which.
     """
     yield Step("integrating the equations")
-    begun = starts(flow, 3)
-    states, why = begun, ""
+    begun, places = starts(flow, 3), value + width * np.array(LOOKED_AT if width else (0.0,))
+    states, values = np.tile(begun, len(places)), np.repeat(places, begun.shape[1])
+    why = ""
     for place in range(SHORT_ORBIT):
-        states = flow.step(states, value)
+        states = flow.step(states, values)
         why = flow.why() or why
         alive = np.isfinite(states).all(axis=0)
-        states = states[:, alive]
+        states, values = states[:, alive], values[alive]
         if not alive.any():
             after = f"after {place} samples" if place else "before its first sample"
             reason, _, advice = why.partition("; ")

@@ -14,13 +14,17 @@ from itertools import product
 import numpy as np
 
 from tinemark.onsets.cycle_map import Floats
+from tinemark.systems.derivatives import derivative
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import TIME, System
 
-PLACES = 12
+PLACES = 60
+"""Places rates are compared at: a pulse of a tenth of the period meets a few of them."""
 SEED = 20240517
 EQUAL = 1e-9
 """Relative difference below which rates count as equal."""
+ROUNDING = 1e-12
+"""Relative change of state and time whose effect on the rates counts as rounding."""
 LONGEST_REPEAT = 12
 """Strobe periods, and parts of one, in which a repeat of the rates is looked for."""
 
@@ -42,26 +46,39 @@ class Rates:
         values[parameter] = value
         names = (*system.state_names, *system.parameter_names)
         self._parameters = [np.float64(values[name]) for name in system.parameter_names]
-        self._rates = plain_function(system.expressions, (*names, TIME))
+        # Their change in time tells a small drive beside rates that are large.
+        changes = [derivative(rate, TIME) for rate in system.expressions]
+        self._rates = plain_function((*system.expressions, *changes), (*names, TIME))
         self.period = 0.0
         if system.kind == "driven":
             (period,) = plain_function((system.every_expression,), system.parameter_names)(self._parameters)
             self.period = float(period)
         random = np.random.default_rng(SEED)
         self.states = np.array([_scattered(state, random) for state in system.states])
-        self.times = random.uniform(0.0, 1.0, PLACES) * (self.period or 1.0)
+        self.times = (np.arange(PLACES) + random.uniform(0.0, 1.0, PLACES)) / PLACES * (self.period or 1.0)
 
     def at(self, states: Floats, times: Floats) -> Floats:
-        """Rates of states (n, places)."""
-        result = np.empty_like(states)
+        """Rates of states (n, places), then how they change in time: (2 n, places)."""
+        result = np.empty((2 * len(states), states.shape[1]))
         with np.errstate(all="ignore"):
             for place, value in enumerate(self._rates([*states, *self._parameters, times])):
                 result[place] = value
         return result
 
+    def alike(self, signs: Floats, later: float) -> bool:
+        """Whether the rates of states with other signs (n, 1) are those with these signs, a time later."""
+        here, times = np.vstack([signs, signs]) * self.at(self.states, self.times), self.times + later
+        there = self.at(signs * self.states, times)
+        shaken = self.at(signs * self.states * (1 + ROUNDING), times + ROUNDING * (self.period or 1.0))
+        known = np.isfinite(here) & np.isfinite(there) & np.isfinite(shaken)
+        with np.errstate(all="ignore"):
+            # Place by place: rates that are huge somewhere say nothing of where they are small.
+            size = np.maximum(np.abs(here), np.abs(there))
+            return bool(np.all(~known | (np.abs(here - there) <= EQUAL * size + np.abs(shaken - there))))
+
     def repeat_after(self, time: float) -> bool:
         """Whether the rates are the same a time later."""
-        return _same(self.at(self.states, self.times), self.at(self.states, self.times + time))
+        return self.alike(np.ones((len(self.states), 1)), time)
 
 
 def _scattered(state: object, random: np.random.Generator) -> Floats:
@@ -70,15 +87,6 @@ def _scattered(state: object, random: np.random.Generator) -> Floats:
         return random.uniform(float(shown[0]), float(shown[1]), PLACES)
     size = abs(start) or 1.0
     return random.uniform(start - size, start + size, PLACES)
-
-
-def _same(a: Floats, b: Floats) -> bool:
-    known = np.isfinite(a) & np.isfinite(b)
-    if not known.any():
-        return True
-    # Rounding of the argument of a fast oscillation is that of its time.
-    size = np.maximum(np.max(np.abs(np.where(known, a, 0.0)), axis=1, keepdims=True), 1e-300)
-    return bool(np.all(~known | (np.abs(a - b) <= EQUAL * size)))
 
 
 def true_period(rates: Rates) -> Fraction | None:
@@ -95,14 +103,12 @@ def symmetries(system: System, parameter: str, value: float) -> Iterator[Symmetr
     """Changes of sign that the rates commute with, at once or half a strobe period later."""
     rates = Rates(system, parameter, value)
     shares = (Fraction(1, 2), Fraction(0)) if system.kind == "driven" else (Fraction(0),)
-    here = rates.at(rates.states, rates.times)
     for later in shares:
         for signs in product((-1, 1), repeat=len(system.states)):
             if all(sign == 1 for sign in signs):
                 continue
             mirror = np.array(signs, dtype=float)[:, None]
-            there = rates.at(mirror * rates.states, rates.times + float(later) * rates.period)
-            if _same(mirror * here, there):
+            if rates.alike(mirror, float(later) * rates.period):
                 yield Symmetry(signs, later)
 
 
