@@ -194,7 +194,7 @@ def _pick(
     period = 2 ** (stretch.level - 1)
     measured = yield from separations(look.grouped, len(look.knobs), period)
     measured = _doubtful_before(measured, stretch.split)
-    windows = _windows(look, stretch, measured)
+    windows = yield from _windows(look, stretch, measured)
     if not windows:
         return (
             "the settings around it hold too few samples or stand too far apart for its opening to be fitted"
@@ -228,7 +228,9 @@ def _doubtful_before(measured: Separations, split: int) -> Separations:
     return replace(measured, spread=np.hypot(measured.spread, doubt))
 
 
-def _windows(look: _Look, stretch: Stretch, measured: Separations) -> tuple[NDArray[np.int64], ...]:
+def _windows(
+    look: _Look, stretch: Stretch, measured: Separations
+) -> Generator[Step, None, tuple[NDArray[np.int64], ...]]:
     """Settings to fit, as far before the split as past it: the most that the law fits, and then fewer."""
     from scipy.special import chdtrc
 
@@ -256,6 +258,7 @@ def _windows(look: _Look, stretch: Stretch, measured: Separations) -> tuple[NDAr
             break
         fit = rough_fit(look.knobs[places], measured.squared[places], measured.spread[places])
         model = int(np.argmin(fit.criteria[:, 0]))
+        yield Step("looking for the settings that the opening law fits")
         chances.append(float(chdtrc(len(places) - fit.unknowns[model], fit.chi_squares[model, 0])))
     return tuple(found[int(np.argmax(chances)) :]) if found else ()
 

@@ -21,7 +21,7 @@ line that cycles of up to sixteen points have."""
 MOST_SAMPLES = 65536
 """Of longer settings only the last so many samples are used: they have settled best."""
 
-BATCH = 400_000
+BATCH = 100_000
 """Samples taken at once, so that no step lasts long."""
 
 STANDS_OUT = 1.5
