@@ -19,6 +19,7 @@ from tinemark.density.png import (
     Frame,
     framed_cells,
     picture_pixels,
+    smallest_framed,
     write_picture_png,
 )
 from tinemark.density.tone import colour_table, tone_map
@@ -64,6 +65,14 @@ def test_bare_picture_has_the_cells_as_they_are_toned(field: Field, tmp_path: Pa
     hatch = (pixels[:200][:, field.escaped] == DARK_GROUND.muted).all(axis=2)
     assert 0.1 < hatch.mean() < 0.15
     assert [path.name for path in tmp_path.iterdir()] == ["picture.png"]
+
+
+@pytest.mark.parametrize("size", [smallest_framed(), (639, 639), (640, 640), (700, 641)])
+def test_framed_picture_has_the_size_asked_for_where_letters_grow(size: tuple[int, int]) -> None:
+    columns, rows = framed_cells(*size)
+    blank = drawn(picture("quadratic", view("-0.5", "2.5", "-2", "2"), columns=columns, rows=rows), 1)
+    frame = Frame(view("-0.5", "2.5", "-2", "2"), "a (1)", "x", "Quadratic maximum", size)
+    assert picture_pixels(blank, "equalised", "ink", frame=frame).shape == (size[1], size[0], 3)
 
 
 def test_framed_picture_has_the_size_asked_for(field: Field) -> None:

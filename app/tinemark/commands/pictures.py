@@ -145,7 +145,7 @@ def draw(session: Session, system: System, size: tuple[int, int], output: Path) 
     finally:
         progress.clear()
     assert field is not None
-    frame = Frame(session.view, *_axis_names(system, session), session.title or system.title)
+    frame = Frame(session.view, *_axis_names(system, session), session.title or system.title, size)
     try:
         write_picture_png(field, output, settings.tone, settings.palette or PALETTE, frame=frame)
     except OSError as error:

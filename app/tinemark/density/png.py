@@ -51,12 +51,16 @@ class Frame:
         Names along the axes, with units where there are any.
     title
         A line above.
+    size
+        Width and height asked for, where the field has the cells of `framed_cells`: large letters and small
+        ones may both go round the same field.
     """
 
     view: View
     parameter: str
     observed: str
     title: str = ""
+    size: tuple[int, int] | None = None
 
 
 def framed_cells(width: int, height: int) -> tuple[int, int]:
@@ -115,7 +119,7 @@ def picture_pixels(
     if frame is None:
         strip = _strip(field, max(24, rows // 6), chosen)
         return np.vstack([cells, np.broadcast_to(_colour(chosen.muted), (1, columns, 3)), strip])
-    layout = _Layout.around(columns, rows)
+    layout = _Layout.of(*frame.size) if frame.size else _Layout.around(columns, rows)
     canvas = np.empty((layout.height, layout.width, 3), np.uint8)
     canvas[:] = chosen.surface
     _Painter(canvas, layout, chosen).paint(field, cells, frame)
