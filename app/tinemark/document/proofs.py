@@ -14,6 +14,7 @@ from tinemark.document.onsets_file import CertificateEntry, OnsetsFile
 from tinemark.document.row import Row
 from tinemark.document.session import Session, read_system
 from tinemark.onsets.results import Certificate, Onset, Status
+from tinemark.systems.system import Sample
 from tinemark.verify.claims import Claim, Outcome, Paper, Verdict
 from tinemark.verify.compare import mismatch
 
@@ -40,10 +41,11 @@ def _claim_of_row(session: Session, row: Row) -> Claim:
     onset = row.onset
     formulas: tuple[tuple[str, str], ...] | None = None
     text = dict(session.systems).get(row.system_key)
-    of_map = True
+    sample: tuple[str, str, str, str] | None = None
     if text is not None:
         system = read_system(text)
-        of_map = system.is_map
+        held = system.sample or Sample()
+        sample = (system.kind, held.every, held.crosses, held.direction)
         formulas = tuple(zip(system.state_names, system.formulas, strict=True))
     return Claim(
         name=f"{row.id}, {onset.parameter} = {onset.value[:24]}",
@@ -62,7 +64,7 @@ def _claim_of_row(session: Session, row: Row) -> Claim:
         formulas=formulas,
         values=row.fixed,
         consequence=onset.consequence,
-        of_map=of_map,
+        sample=sample,
     )
 
 

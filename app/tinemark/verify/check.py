@@ -9,6 +9,7 @@ from tinemark.verify import (
     blame,
     border,
     branch_points,
+    flow_onsets,
     many_border,
     many_branch_points,
     many_states,
@@ -76,12 +77,16 @@ def _check(claim: Claim, watch: Watch) -> None:
     paper, numbers, plain = compared(claim)
     if paper.kind not in KINDS:
         raise NotCheckable(f"a {paper.kind[:40]} is not proved, so there is nothing to check")
-    if paper.kind == NEIMARK_SACKER and len(plain.states) == 1:
+    if paper.kind == NEIMARK_SACKER and len(plain.states) == 1 and plain.sample.kind == "map":
         raise Refused(Part.KIND, "a map of one state has no Neimark-Sacker onset")
-    formulas = programs(plain, paper.parameter)
     bits = _bits(numbers, paper.period)
     if bits > MOST_BITS:
         raise NotCheckable(f"the box asks for a precision of more than {MOST_BITS} bits")
+    if plain.sample.kind != "map":
+        flow_onsets.prove(plain, paper, numbers, bits, claim.states, watch)
+        same_digest(claim, paper)
+        return
+    formulas = programs(plain, paper.parameter)
     if len(plain.states) > 1:
         many = ManyStates(formulas, plain.states, paper.parameter, watch)
         watch.expect(PASSES_MANY * paper.period * many.cost(bits, 2))

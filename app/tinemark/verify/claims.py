@@ -61,8 +61,9 @@ class Claim:
         text) pairs that the certificate's system must agree with; None where nothing is said.
     consequence
         What the row says in words of what follows; empty where it says nothing.
-    of_map
-        Whether the row's system is a map, as far as is known.
+    sample
+        What the row itself says of how its system is sampled: kind, strobe period, section and direction;
+        None where nothing is said.
     """
 
     name: str
@@ -81,7 +82,7 @@ class Claim:
     formulas: tuple[tuple[str, str], ...] | None = None
     values: tuple[tuple[str, str], ...] | None = None
     consequence: str = ""
-    of_map: bool = True
+    sample: tuple[str, str, str, str] | None = None
 
 
 @dataclass(frozen=True)

@@ -55,8 +55,6 @@ def _paper(claim: Claim) -> Paper:
     if claim.paper is None:
         if not proved:
             raise NotCheckable(f"it is {claim.status}, and claims no proof")
-        if not claim.of_map:
-            raise NotCheckable("proofs about driven and free-running systems have no certificate")
         raise Refused(Part.STATUS, "it says proved, and has no certificate; refine it to prove it again")
     if not proved and not claim.waits:
         raise Refused(Part.STATUS, f"it carries the certificate of a proof, and says {claim.status[:40]}")
@@ -112,6 +110,8 @@ def _same_system(claim: Claim, plain: Plain) -> None:
         zip(plain.states, plain.formulas, strict=True)
     ):
         raise Refused(Part.FORMULA, "the certificate's formulas are not those of the row's system")
+    if claim.sample is not None and claim.sample != plain.sample.texts:
+        raise Refused(Part.SYSTEM, "the certificate's system is sampled otherwise than the row's")
     if claim.values is not None:
         known = dict(plain.values)
         for name, text in claim.values:

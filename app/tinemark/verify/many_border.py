@@ -15,7 +15,7 @@ from tinemark.verify.claims import Claim, NotCheckable, Numbers, Paper, Part, Re
 from tinemark.verify.frames import Rows
 from tinemark.verify.intervals import ONE, ZERO, Interval
 from tinemark.verify.many_border_following import BorderSide, check_periods
-from tinemark.verify.many_cycles import Carried, Local, ManyStates, Vector
+from tinemark.verify.many_cycles import Carried, Formulas, ManyStates, Vector
 from tinemark.verify.many_states import printed_box
 from tinemark.verify.matrices import solved
 from tinemark.verify.newton import Side
@@ -90,7 +90,7 @@ class BorderEquations:
 
     def surface(self, box: Sequence[Interval], bits: int) -> tuple[Interval, Vector, Interval]:
         """The surface's formula less its level, with its derivatives in the states and in the parameter."""
-        local = Local(self.many, 1, box[-1], bits)
+        local = Formulas(self.many, 1, box[-1], bits)
         evaluate = local.evaluators[self.touched.formula]
         series = evaluate.difference(self.touched.step, local.values(box[:-1]), dict(self.sides))
         slopes = [series.get(place, ZERO) for place in local.units]
@@ -170,12 +170,12 @@ def _see_not_earlier(
 
 def _touched(many: ManyStates, box: list[Interval], bits: int) -> Touched:
     """The one switch that the box touches at its first point, whichever side is taken of it."""
-    local = Local(many, 0, box[-1], bits)
+    local = Formulas(many, 0, box[-1], bits)
     found: Touched | None = None
     waiting: list[dict[Switch, int]] = [{}]
     while waiting:
         try:
-            local.at(box[:-1], waiting.pop())
+            local.at(0, box[:-1], waiting.pop())
         except Touching as touching:
             if found is not None:
                 raise Undecided(
@@ -190,7 +190,7 @@ def _touched(many: ManyStates, box: list[Interval], bits: int) -> Touched:
     return found
 
 
-def _described(many: ManyStates, local: Local, switch: Switch, box: list[Interval]) -> Touched:
+def _described(many: ManyStates, local: Formulas, switch: Switch, box: list[Interval]) -> Touched:
     formula, step = next(
         (at, steps[switch])
         for at, program in enumerate(many.programs)
@@ -208,7 +208,7 @@ def _described(many: ManyStates, local: Local, switch: Switch, box: list[Interva
 
 def _is_beside(many: ManyStates, box: list[Interval], bits: int) -> bool:
     """Whether a switching surface is near the box's cycle point: good numbers, no proof."""
-    local = Local(many, 0, box[-1], bits)
+    local = Formulas(many, 0, box[-1], bits)
     size = max(abs(edge) for side in box[:-1] for edge in iv.ends(side))
     for evaluate, program in zip(local.evaluators, many.programs, strict=True):
         for switch, step in switches(program).items():
@@ -316,7 +316,7 @@ def _is_continuous(
         pieces = []
         for each in (equations, beyond):
             sides = dict(each.sides)
-            Local(many, 0, narrow[-1], bits).at(narrow[:-1], sides)
+            Formulas(many, 0, narrow[-1], bits).at(0, narrow[:-1], sides)
             pieces.append([algebra.value(program, values, sides) for program in many.programs])
         g = compared(algebra, many.programs[touched.formula], touched.step, values) - number(touched.level)
         for state in many.states:

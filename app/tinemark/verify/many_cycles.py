@@ -53,6 +53,18 @@ class ManyStates:
         many_at_once = float((self.size + 1) ** order) / 6
         return cost_of(self.operations + 4 * self.size**2, bits) * many_at_once
 
+    def steps_of(self, period: int) -> int:
+        """How many steps of an orbit are so many of the map."""
+        return period
+
+    def passed(self, step: int) -> int | None:
+        """How many of the map's steps are done at a step of an orbit; None within one of them."""
+        return step
+
+    def local(self, order: int, r: Interval, bits: int) -> Local:
+        """What tells the map's derivatives up to an order."""
+        return Formulas(self, order, r, bits)
+
 
 @dataclass(frozen=True)
 class Carried:
@@ -98,26 +110,30 @@ def total_degree(size: int, order: int) -> Shape:
 
 
 class Local:
-    """The map's own derivatives on a box, one evaluation a step."""
+    """Derivatives on a box of what an orbit does in one step.
+
+    Parameters
+    ----------
+    r
+        The swept parameter.
+    """
 
     def __init__(self, many: ManyStates, order: int, r: Interval, bits: int) -> None:
-        self.many, self.bits, self.order = many, bits, order
+        self.many, self.bits, self.order, self.r = many, bits, order, r
         self.shape = total_degree(many.size, order)
-        units = (
+        self.units = (
             [self.shape.place(*(int(i == j) for j in range(many.size + 1))) for i in range(many.size + 1)]
             if order
             else []
         )
-        self.units = units
-        steady: dict[str, Series] = {many.parameter: {0: r} | ({units[-1]: ONE} if order else {})}
-        self.evaluators = [
-            Evaluator(program, self.shape, bits, steady, many.states) for program in many.programs
-        ]
 
-    def at(self, box: Sequence[Interval], sides: dict[Switch, int] | None = None) -> list[Series]:
+    def at(self, step: int, box: Sequence[Interval], sides: dict[Switch, int] | None = None) -> list[Series]:
         """One series a state; `sides` as `series.Evaluator` takes it."""
-        values = self.values(box)
-        return [evaluate(values, sides) for evaluate in self.evaluators]
+        raise NotImplementedError
+
+    def parameter(self) -> Series:
+        """The swept parameter as a series."""
+        return {0: self.r} | ({self.units[-1]: ONE} if self.order else {})
 
     def values(self, box: Sequence[Interval]) -> dict[str, Series]:
         """The states as series."""
@@ -140,6 +156,23 @@ class Local:
             where = tuple(i for i, exponent in enumerate(monomial) for _ in range(exponent))
             found.append((where, values))
         return found
+
+
+class Formulas(Local):
+    """A map's own derivatives, one evaluation a step."""
+
+    def __init__(self, many: ManyStates, order: int, r: Interval, bits: int) -> None:
+        super().__init__(many, order, r, bits)
+        steady = {many.parameter: self.parameter()}
+        self.evaluators = [
+            Evaluator(program, self.shape, bits, steady, many.states) for program in many.programs
+        ]
+
+    def at(self, step: int, box: Sequence[Interval], sides: dict[Switch, int] | None = None) -> list[Series]:
+        """One series a state; every step is the same."""
+        del step
+        values = self.values(box)
+        return [evaluate(values, sides) for evaluate in self.evaluators]
 
 
 @dataclass(frozen=True)
@@ -200,16 +233,17 @@ def walk(
     size = many.size
     centre_r = iv.middle(r, bits)
     spread = iv.sub(r, centre_r, bits)
-    local, values = Local(many, order, r, bits), Local(many, 0, centre_r, bits)
+    local, values = many.local(order, r, bits), many.local(0, centre_r, bits)
     upright = frames.unit(size)
     frame = upright
     here = list(box)
     middle = [iv.middle(side, bits) for side in here]
     offsets = [iv.sub(side, point, bits) for side, point in zip(here, middle, strict=True)]
     cost = many.cost(bits, order)
-    for step in range(period):
+    steps = many.steps_of(period)
+    for step in range(steps):
         many.watch.spend(cost)
-        series = local.at(here, chosen(sides, step))
+        series = local.at(step, here, chosen(sides, step))
         slopes = local.tensor(series, 1)
         rows = [[ZERO] * size for _ in range(size)]
         push = [ZERO] * size
@@ -221,14 +255,14 @@ def walk(
                     rows[i][j] = value
         if frame is not upright:
             rows = frames.product(rows, frame, bits)
-        following = frames.turned(rows) if step < period - 1 else None
+        following = frames.turned(rows) if step < steps - 1 else None
         if following is None:
             following = back = upright
         else:
             back = frames.inverse(following, bits)
             rows = frames.product(back, rows, bits)
             push = frames.applied(back, push, bits)
-        images = [one[0] for one in values.at(middle, chosen(sides, step))]
+        images = [one[0] for one in values.at(step, middle, chosen(sides, step))]
         middle = [iv.middle(side, bits) for side in images]
         missed = [iv.sub(side, point, bits) for side, point in zip(images, middle, strict=True)]
         offsets = added(frames.applied(rows, offsets, bits), frames.applied(back, missed, bits), bits)
@@ -269,9 +303,10 @@ def carried(
     near = False
     here = list(box)
     for step, stretch in enumerate(walk(many, box, r, period, bits, 2 if second else 1, sides)):
-        if step in visits:
-            kept[step] = stretch.here
-        if look_for is not None and not near:
+        passed = many.passed(step)
+        if passed is not None and passed in visits:
+            kept[passed] = stretch.here
+        if passed is not None and look_for is not None and not near:
             near = all(iv.sign(iv.sub(x, y, bits)) == 0 for x, y in zip(stretch.here, look_for, strict=True))
         if second:
             full = [[*stretch.shown(real, column), ZERO] for column in first]

@@ -55,6 +55,11 @@ class Watch:
                 "period and precision; tinemark verify --longest MINUTES allows more"
             )
 
+    @property
+    def spent(self) -> float:
+        """Work done."""
+        return self._spent
+
     def spend(self, units: float) -> None:
         """Count work done; raises `NotCheckable` beyond the bound."""
         self._spent += units
