@@ -15,6 +15,7 @@ from tinemark.systems.system import System
 from tinemark.systems.system_file import read_system_text
 from tinemark.verify.check import check
 from tinemark.verify.claims import Claim, Outcome, Paper, Part
+from tinemark.verify.watching import Watch
 
 
 def text_of(rates: dict[str, str], value: str = "1", **sample: str) -> str:
@@ -174,3 +175,19 @@ def test_equations_that_switch_are_not_checkable() -> None:
     text = text_of({"x": "r - abs(x)"}, every="1")
     verdict = check(written(text, "fold", "0", "", x="0"))
     assert verdict.outcome is Outcome.NOT_CHECKABLE and '"abs"' in verdict.reason
+
+
+def test_a_check_of_equations_tells_of_its_progress_and_can_be_stopped_or_bounded() -> None:
+    class Stopped(Exception):
+        pass
+
+    def stop(share: float) -> None:
+        assert 0 < share < 1
+        raise Stopped
+
+    value, states = WELL
+    claim = written(text_of(DUFFING, every="2*pi/1.2"), "flip", value, "supercritical", **states)
+    with pytest.raises(Stopped):
+        check(claim, Watch(stop))
+    verdict = check(claim, Watch(minutes=0.05))
+    assert verdict.outcome is Outcome.NOT_CHECKABLE and "longer than" in verdict.reason

@@ -32,8 +32,10 @@ KINDS = tuple(TARGETS)
 ATTEMPTS = 2
 COARSE_BITS = (72, 104)
 """Precision for derivatives beyond the first, and for signs."""
-PASSES = 10
+PASSES = 6
 """Work of a whole check, in that of going once along the cycle without derivatives, for a state or none."""
+LEAST_WORK = 20_000.0
+"""Work that is expected before it is known."""
 
 
 def prove(
@@ -65,6 +67,7 @@ def prove(
     sides = [ends_of(side) for side in (*numbers.states, numbers.parameter)]
     look_for = printed_box(bare, printed, bits, numbers)
     reason = ""
+    watch.expect(LEAST_WORK)
     for attempt in range(ATTEMPTS):
         box = [hull(side, bits) for side in sides]
         coarse = min(bits, COARSE_BITS[attempt])
