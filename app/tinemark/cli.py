@@ -26,6 +26,7 @@ MAX_LEVELS = 40
 MAX_DIGITS = 150
 MAX_BASE_PERIOD = 4096
 MAX_PERIOD = 64
+MOST_BENCH_LEVELS = 8
 MIN_SIDE, MAX_SIDE, MAX_PIXELS = 16, 20_000, 100_000_000
 
 _NEGATIVE = re.compile(r"-(?:\d|\.\d|inf|nan)", re.IGNORECASE)
@@ -241,6 +242,45 @@ def _onsets_parser() -> argparse.ArgumentParser:
     return parser
 
 
+def _compare_parser() -> argparse.ArgumentParser:
+    parser = _parser(
+        "compare", "Pick the splits of a bench sweep and say whether they agree with the model's."
+    )
+    parser.add_argument(
+        "--bench", required=True, metavar="FILE.csv", help="measured sweep: text, .npy or .npz"
+    )
+    parser.add_argument(
+        "--knob", default="", metavar="COLUMN", help="column of the knob (default: the first)"
+    )
+    parser.add_argument(
+        "--sample", default="", metavar="COLUMN", help="column of the samples (default: the last)"
+    )
+    parser.add_argument("--time", default="", metavar="COLUMN", help="of a waveform: column of the time")
+    parser.add_argument("--trigger", default="", metavar="COLUMN", help="of a waveform: cut where this rises")
+    parser.add_argument("--strobe", default="0", metavar="PERIOD", help="of a waveform: cut once so often")
+    parser.add_argument(
+        "--knob-step", default="0", metavar="STEP", help="round knob values to multiples of this"
+    )
+    parser.add_argument(
+        "--knob-uncertainty", default="0", metavar="U", help="standard uncertainty of a knob setting"
+    )
+    parser.add_argument(
+        "--direction", default="up", choices=("up", "down"), help="way of the sweep looked at"
+    )
+    parser.add_argument("--levels", default="3", metavar="N", help="how many splits (default 3)")
+    parser.add_argument(
+        "--scale",
+        metavar="S",
+        help="calibration: parameter = offset + scale * knob (default: fitted to the onsets)",
+    )
+    parser.add_argument("--offset", metavar="O", help="calibration: see --scale")
+    parser.add_argument("--seed", default="1", metavar="N", help="of the resampling (default 1)")
+    parser.add_argument(
+        "--json", metavar="FILE", help="also write the comparison as JSON; - for standard output only"
+    )
+    return parser
+
+
 def _picture_parser() -> argparse.ArgumentParser:
     parser = _parser("picture", "Write the diagram as a PNG picture.")
     parser.add_argument("--range", nargs=2, required=True, metavar=("A", "B"), help="ends of the sweep")
@@ -342,6 +382,31 @@ def _onsets(given: argparse.Namespace) -> None:
     )
 
 
+def _compare(given: argparse.Namespace) -> None:
+    """Hold a bench sweep against the model."""
+    from tinemark.commands import comparison
+
+    comparison.compare(
+        comparison.CompareOptions(
+            system=given.system,
+            bench=given.bench,
+            knob=given.knob,
+            sample=given.sample,
+            time=given.time,
+            trigger=given.trigger,
+            strobe_period=_not_negative(given.strobe, "--strobe"),
+            knob_step=_not_negative(given.knob_step, "--knob-step"),
+            knob_uncertainty=_not_negative(given.knob_uncertainty, "--knob-uncertainty"),
+            direction=given.direction,
+            levels=_whole(given.levels, "--levels", MOST_BENCH_LEVELS),
+            scale=None if given.scale is None else float(_number(given.scale, "--scale")),
+            offset=None if given.offset is None else float(_number(given.offset, "--offset")),
+            seed=_whole(given.seed, "--seed", 2**31 - 1),
+            json=given.json,
+        )
+    )
+
+
 def _picture(given: argparse.Namespace) -> None:
     """Write the diagram as a PNG."""
     from tinemark.commands import pictures
@@ -385,6 +450,13 @@ def _number(text: str, option: str) -> Exact:
     return exact(text, where=option)
 
 
+def _not_negative(text: str, option: str) -> float:
+    value = float(_number(text, option))
+    if value < 0:
+        raise _UsageError(f"{text.strip()} is negative", where=option, what_to_do="give 0 or more")
+    return value
+
+
 def _whole(text: str, option: str, most: int) -> int:
     if not re.fullmatch(r"\d{1,9}", text.strip()) or not 1 <= int(text) <= most:
         raise _UsageError(
@@ -419,6 +491,7 @@ COMMANDS: dict[
     "ladder": (_ladder_parser, _ladder),
     "refine": (_refine_parser, _refine),
     "onsets": (_onsets_parser, _onsets),
+    "compare": (_compare_parser, _compare),
     "picture": (_picture_parser, _picture),
     "inspect": (_inspect_parser, _inspect),
     "verify": (_verify_parser, _verify),

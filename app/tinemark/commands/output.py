@@ -72,6 +72,11 @@ def check_target(path: Path) -> None:
         )
 
 
+def write_json(target: str, text: str) -> None:
+    """Write a JSON text to the file that --json names."""
+    _write(Path(target), text.encode())
+
+
 def _write(path: Path, data: bytes) -> None:
     from tinemark.document.atomic_file import write_whole
 
