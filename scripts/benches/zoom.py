@@ -21,6 +21,7 @@ import tempfile
 import time
 from collections.abc import Callable, Iterator
 from fractions import Fraction
+from functools import partial
 from typing import Any
 
 from benches.measuring import Figure, at_most, reading
@@ -136,7 +137,7 @@ def run_zooms() -> dict[str, list[float]]:
         # First one, then the other: whoever comes first finds the processor's memory cold.
         turn: list[Callable[[], None]] = [
             lambda: measured["blank"].append(_blank_repaint(blank, item)),
-            lambda number=number: _zoom(app, window, watch, number, measured),
+            partial(_zoom, app, window, watch, number, measured),
         ]
         for each in turn if number % 2 else reversed(turn):
             each()
