@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import hashlib
-import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
@@ -13,7 +12,6 @@ from numpy.typing import NDArray
 
 from tinemark.bench.dialect import (
     LOOKED_AT,
-    MISSING,
     WHITESPACE,
     Dialect,
     dialect_of,
@@ -268,8 +266,3 @@ class _Reader:
             dialect.words,
             source,
         )
-
-
-def missing_words() -> str:
-    """Which fields stand for no value, for the guide."""
-    return ", ".join(sorted(re.sub(r"^$", "(nothing)", word) for word in MISSING))

@@ -15,6 +15,7 @@ from tinemark.density.request import PictureRequest
 from tinemark.density.sampling import columns_distinct
 from tinemark.density.stopping import StopFlag
 from tinemark.systems.errors import TinemarkError
+from tinemark.work.loading import load_engines
 from tinemark.work.newest import NewestWins
 
 if TYPE_CHECKING:
@@ -163,6 +164,7 @@ class PictureDesk:
                 steps = self._first_look(id_, request, stop)
                 self._wait(id_, request, steps, LOADING, stop)
             # The compiler is loaded here and not with the window.
+            load_engines(request.system, drawing=True)
             from tinemark.density import renderer
             from tinemark.density.glimpse import Glimpses, is_compiled
 

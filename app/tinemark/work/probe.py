@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from tinemark.systems.errors import TinemarkError
 from tinemark.systems.plain import plain_function
 from tinemark.systems.system import System
+from tinemark.work.loading import load_engines
 from tinemark.work.newest import NewestWins
 from tinemark.work.waveform import Waveform, waveform
 
@@ -143,6 +144,7 @@ def _stepper(
     if system.is_map:
         step = plain_function(system.expressions, system.names)
         return lambda point: ([float(x) for x in step([*point, *fixed])], 1.0)
+    load_engines(system)
     from tinemark.equations.return_map import FloatReturnMap
     from tinemark.equations.returns import return_map
 
